@@ -1,0 +1,134 @@
+"""A payment as a function of the loss: pieces of straight line, with jumps where the terms jump.
+
+Every per-event term of a cover (deductible, limit, franchise, share) is such a function, and so is
+what a cover leaves and what a second cover pays of that. The engines see only this: the simulation
+evaluates it loss by loss, the exact engines push a size law through it piece by piece.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from lossagg.arrays import FloatArray
+
+
+@dataclass(frozen=True)
+class Schedule:
+    """A piecewise linear function of the loss, continuous from the left.
+
+    Piece k covers losses in (starts[k], starts[k + 1]] and pays
+    values[k] + slopes[k] * (x - starts[k]); the last piece runs to infinity. A loss of zero pays
+    zero. Left continuity is what a deductible says: a loss of exactly d does not exceed d.
+
+    Args:
+        starts: left ends of the pieces, increasing, the first 0.
+        values: payment just above each left end.
+        slopes: payment per unit of loss within each piece.
+    """
+
+    starts: tuple[float, ...]
+    values: tuple[float, ...]
+    slopes: tuple[float, ...]
+
+    @classmethod
+    def identity(cls) -> Schedule:
+        """Everything is paid: the ground-up loss itself."""
+        return cls((0.0,), (0.0,), (1.0,))
+
+    @classmethod
+    def capped(cls, limit: float) -> Schedule:
+        """min(x, limit): what is kept under a deductible, or paid under a first-euro limit."""
+        if limit == np.inf:
+            return cls.identity()
+        if limit == 0.0:
+            return cls((0.0,), (0.0,), (0.0,))
+        return cls((0.0, limit), (0.0, limit), (1.0, 0.0))
+
+    @property
+    def is_identity(self) -> bool:
+        """Whether every loss is paid in full."""
+        return self.starts == (0.0,) and self.slopes == (1.0,) and self.values == (0.0,)
+
+    @property
+    def most(self) -> float:
+        """The largest payment possible, `inf` where it grows with the loss."""
+        if self.slopes[-1] > 0:
+            return np.inf
+        ends = np.append(self.starts[1:], self.starts[-1])
+        tops = np.asarray(self.values) + np.asarray(self.slopes) * (ends - np.asarray(self.starts))
+        return float(max(tops.max(), max(self.values)))
+
+    def __call__(self, losses: FloatArray) -> FloatArray:
+        """The payment for each loss."""
+        starts, values, slopes = self.arrays()
+        piece = np.maximum(np.searchsorted(starts, losses, side="left") - 1, 0)
+        return np.where(losses > 0, values[piece] + slopes[piece] * (losses - starts[piece]), 0.0)
+
+    def arrays(self) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """(starts, values, slopes) as float64 arrays, the form kernels take."""
+        return np.asarray(self.starts), np.asarray(self.values), np.asarray(self.slopes)
+
+    def scaled(self, share: float) -> Schedule:
+        """`share` times this payment."""
+        return Schedule(
+            self.starts, tuple(share * v for v in self.values), tuple(share * s for s in self.slopes)
+        )
+
+    def __add__(self, other: Schedule) -> Schedule:
+        return self._combined(other, 1.0)
+
+    def __sub__(self, other: Schedule) -> Schedule:
+        return self._combined(other, -1.0)
+
+    def _combined(self, other: Schedule, sign: float) -> Schedule:
+        starts = tuple(sorted({*self.starts, *other.starts}))
+        pairs = [(self._just_above(start), other._just_above(start)) for start in starts]
+        return Schedule(
+            starts,
+            tuple(mine[0] + sign * theirs[0] for mine, theirs in pairs),
+            tuple(mine[1] + sign * theirs[1] for mine, theirs in pairs),
+        )._merged()
+
+    def after(self, inner: Schedule) -> Schedule:
+        """This payment applied to what `inner` gives: x -> self(inner(x)).
+
+        A falling inner piece (what a franchise leaves drops, but only by a jump) cannot occur.
+        """
+        starts: list[float] = []
+        values: list[float] = []
+        slopes: list[float] = []
+        ends = [*inner.starts[1:], np.inf]
+        for start, end, value, slope in zip(inner.starts, ends, inner.values, inner.slopes, strict=True):
+            cuts = [start]
+            if slope > 0:
+                cuts += [start + (knot - value) / slope for knot in self.starts if knot > value]
+            for cut in cuts:
+                if not start <= cut < end:
+                    continue
+                at = value + slope * (cut - start)
+                outer_value, outer_slope = (
+                    self._just_above(at) if slope > 0 else (float(self(np.array([at]))[0]), 0.0)
+                )
+                starts.append(cut)
+                values.append(outer_value)
+                slopes.append(outer_slope * slope)
+        return Schedule(tuple(starts), tuple(values), tuple(slopes))._merged()
+
+    def _just_above(self, start: float) -> tuple[float, float]:
+        """Payment and slope just to the right of an amount."""
+        piece = int(np.searchsorted(np.asarray(self.starts), start, side="right")) - 1
+        return self.values[piece] + self.slopes[piece] * (start - self.starts[piece]), self.slopes[piece]
+
+    def _merged(self) -> Schedule:
+        """The same function without pieces that only continue the one before."""
+        kept = [0]
+        for k in range(1, len(self.starts)):
+            j = kept[-1]
+            reached = self.values[j] + self.slopes[j] * (self.starts[k] - self.starts[j])
+            if not (
+                np.isclose(reached, self.values[k], rtol=1e-14, atol=0.0) and self.slopes[k] == self.slopes[j]
+            ):
+                kept.append(k)
+        return Schedule(*(tuple(part[k] for k in kept) for part in (self.starts, self.values, self.slopes)))

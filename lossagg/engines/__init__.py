@@ -1,0 +1,1 @@
+"""The engines: annual loss from counts, sizes and covers, by independent methods that must agree."""

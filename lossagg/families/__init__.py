@@ -1,0 +1,1 @@
+"""The laws: counts per year and sizes of one loss. One file per law."""
