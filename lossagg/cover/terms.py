@@ -75,7 +75,7 @@ class Cover:
             raise InputError(
                 "retained_cap limits what is kept under the deductible, and there is no deductible",
                 value=self.retained_cap,
-                remedy="Give a deductible, or use annual_retention for an amount kept of the year's payments.",
+                remedy="Give a deductible, or use annual_retention to keep part of the year's payments.",
             )
 
     @property
@@ -156,9 +156,8 @@ class Cover:
         parts = []
         if self.limit < np.inf or self.deductible > 0:
             limit = "unlimited" if self.limit == np.inf else f"{self.limit:,.0f}"
-            parts.append(
-                f"{limit} per event {'above a franchise of' if self.franchise else 'in excess of'} {self.deductible:,.0f}"
-            )
+            above = "above a franchise of" if self.franchise else "in excess of"
+            parts.append(f"{limit} per event {above} {self.deductible:,.0f}")
         if self.annual_retention > 0:
             parts.append(f"annual retention {self.annual_retention:,.0f}")
         if self.retained_cap < np.inf:

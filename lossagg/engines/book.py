@@ -117,10 +117,10 @@ class Book:
                     )
                 if cover.terms.has_event_terms and earlier[name].terms.has_annual_terms:
                     raise InputError(
-                        "event terms cannot act on what a cover with annual terms leaves: its payment belongs to the year",
+                        "event terms cannot follow a cover with annual terms: its payment belongs to the year",
                         where=f"cover {cover.name!r}",
                         value=name,
-                        remedy="Use annual terms only (annual-retention, annual-limit, share) in the later cover.",
+                        remedy="Use annual terms only (retention, limit, share) in the later cover.",
                     )
             earlier[cover.name] = cover
 
