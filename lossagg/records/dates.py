@@ -1,0 +1,145 @@
+"""Dates: ISO 8601 calendar dates, or one declared format for the whole file.
+
+Nothing is asked of the locale or the time zone: dates are days, computed from year, month and day alone.
+A date-time keeps its day; one that carries a zone does not say on which day it falls here and is set aside.
+"""
+
+from __future__ import annotations
+
+import re
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from lossagg.arrays import BoolArray
+from lossagg.errors import InputError
+from lossagg.records.amounts import is_missing
+from lossagg.records.raw import TextColumn
+
+DateArray = npt.NDArray[np.datetime64]
+
+_TIME = r"(?P<time>[T ]\d{2}:\d{2}(?::\d{2}(?:[.,]\d+)?)?)?(?P<zone> ?(?:Z|[+-]\d{2}:?\d{2}))?"
+_ISO = r"^(?P<year>\d{4})-(?P<month>\d{2})-(?P<day>\d{2})" + _TIME + "$"
+_MONTHS = ("jan", "feb", "mar", "apr", "may", "jun", "jul", "aug", "sep", "oct", "nov", "dec")
+_PARTS = {
+    "%Y": r"(?P<year>\d{4})",
+    "%m": r"(?P<month>\d{1,2})",
+    "%b": "(?P<name>[A-Za-z]{3})",
+    "%d": r"(?P<day>\d{1,2})",
+}
+
+
+@dataclass(frozen=True)
+class Dates:
+    """A column of dates with what could not be read, cell by cell; all of shape (rows,).
+
+    Args:
+        values: days; NaT where there is no date.
+        missing: True where the cell is empty or carries a marker for "not known".
+        impossible: True where year, month and day are given but there is no such day.
+        zoned: True where the cell is a date-time with a zone.
+        timed: True where the cell had a time of day, which is let go.
+        wrong: True where the cell is something else, which must stop the run.
+    """
+
+    values: DateArray
+    missing: BoolArray
+    impossible: BoolArray
+    zoned: BoolArray
+    timed: BoolArray
+    wrong: BoolArray
+
+
+def parse_dates(column: TextColumn, date_format: str | None) -> Dates:
+    """Read a column of dates; cells that held dates already need no format.
+
+    Args:
+        column: the cells as text.
+        date_format: the format of the file, made of %Y, %m (or %b, English abbreviation) and %d;
+            None for ISO dates.
+
+    Returns:
+        The dates, and the cells that are missing, impossible, zoned or wrong.
+
+    Raises:
+        InputError: a format that does not give year, month and day once each.
+    """
+    import pyarrow as pa
+    import pyarrow.compute as pc
+
+    text = pc.utf8_trim_whitespace(column.text)
+    missing = is_missing(pc.utf8_lower(text))
+    parts = _extract(text, _ISO)
+    if date_format is not None:
+        declared = _extract(text, _pattern(date_format))
+        native = np.asarray(column.native)
+        parts = {name: np.where(native, parts[name], declared[name]) for name in parts}
+    matched = parts["year"] != ""
+    zoned = matched & (parts["zone"] != "")
+    year, month, day = (_integers(parts[name]) for name in ("year", "month", "day"))
+    values, possible = _days(year, month, day)
+    good = matched & possible & ~zoned
+    values[~good] = np.datetime64("NaT")
+    clock = pc.match_substring_regex(pa.array(parts["time"]), pattern="[1-9]").to_numpy(zero_copy_only=False)
+    return Dates(
+        values,
+        missing,
+        matched & ~possible,
+        zoned & possible,
+        good & np.asarray(clock, dtype=np.bool_),
+        ~(matched | missing),
+    )
+
+
+def _pattern(date_format: str) -> str:
+    """Turn a declared format into a regular expression.
+
+    Raises:
+        InputError: see `parse_dates`.
+    """
+    pieces = re.split("(%.)", date_format)
+    codes = [piece for piece in pieces if piece.startswith("%")]
+    if sorted(codes) not in (["%Y", "%d", "%m"], ["%Y", "%b", "%d"]):
+        year = " Two-digit years do not say the century." if "%y" in codes else ""
+        raise InputError(
+            "the date format must give year, month and day once each",
+            value=date_format,
+            remedy=f'Use %Y, %m (or %b for Jan, Feb, ...) and %d, for example "%d/%m/%Y".{year}',
+        )
+    # Without a mark between them only full digits tell the parts apart.
+    tight = "" not in [piece for piece in pieces[1:-1:1] if not piece.startswith("%")]
+    body = "".join(_PARTS.get(piece) or re.escape(piece) for piece in pieces)
+    return "^" + (body if tight else body.replace("{1,2}", "{2}")) + "$"
+
+
+def _extract(text: Any, pattern: str) -> dict[str, npt.NDArray[np.object_]]:
+    import pyarrow.compute as pc
+
+    found = pc.extract_regex(text, pattern=pattern)
+    blank = np.full(len(text), "", dtype=np.object_)
+    parts = dict.fromkeys(("year", "month", "day", "time", "zone"), blank)
+    for group in found.type:
+        parts[group.name] = found.field(group.name).to_numpy(zero_copy_only=False)
+    if "name" in parts:
+        number = {name: str(index) for index, name in enumerate(_MONTHS, start=1)}
+        names = parts.pop("name")
+        parts["month"] = np.array([number.get(name.lower(), "0") for name in names], dtype=np.object_)
+    return parts
+
+
+def _integers(digits: npt.NDArray[np.object_]) -> npt.NDArray[np.int64]:
+    return np.array([int(text) if text else 0 for text in digits.tolist()], dtype=np.int64)
+
+
+def _days(
+    year: npt.NDArray[np.int64], month: npt.NDArray[np.int64], day: npt.NDArray[np.int64]
+) -> tuple[DateArray, BoolArray]:
+    """Days from year, month and day (proleptic Gregorian), and whether there is such a day."""
+    within = (year >= 1) & (month >= 1) & (month <= 12) & (day >= 1)
+    months = ((year - 1970) * 12 + np.where(within, month, 1) - 1).astype("datetime64[M]")
+    last = ((months + 1).astype("datetime64[D]") - months.astype("datetime64[D]")).astype(np.int64)
+    possible: BoolArray = within & (day <= last)
+    days: DateArray = months.astype("datetime64[D]") + (day - 1)
+    return days, possible

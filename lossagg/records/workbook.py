@@ -1,0 +1,233 @@
+"""Workbooks (.xlsx): the values last stored in one sheet, and nothing that could run or reach outside.
+
+Formulas are never computed: only the value stored beside a formula is read, and a formula without one
+stops. Macros, links to other workbooks and encrypted files are refused before any cell is looked at, and
+so are packages that unpack to far more than they weigh.
+"""
+
+from __future__ import annotations
+
+import datetime as dt
+import re
+import zipfile
+from collections.abc import Iterator, Sequence
+from itertools import islice
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from lossagg.errors import InputError, place
+from lossagg.records.headings import nearest
+from lossagg.records.raw import FIRST_ROW, Choose, Layout, RawTable, TableBuilder
+
+MOST_BYTES = 4 * 1024**3
+MOST_RATIO = 200
+_CHUNK = 10_000
+_OVERLAP = 4096
+_FORMULA = re.compile(rb"<f[ >/]")
+_MERGED = re.compile(rb"<mergeCell ")
+_HIDDEN = re.compile(rb'<(?:row|col) [^>]*hidden="(?:1|true)"')
+
+
+def read_workbook(path: Path, layout: Layout, choose: Choose) -> RawTable:
+    """Read one sheet of a workbook.
+
+    Args:
+        path: the file.
+        layout: the sheet, where declared.
+        choose: says from the headings which columns to keep.
+
+    Returns:
+        The sheet as text; cells that hold numbers or dates are marked as such.
+
+    Raises:
+        InputError: macros, external links, encryption, an unclear choice of sheet, merged cells, a
+            formula without a stored value, no rows.
+    """
+    _check_package(path)
+    book = _load(path, data_only=True)
+    try:
+        sheet = _choose_sheet(book, layout.sheet, path.name)
+        marks = _marks(path, sheet)
+        if marks["merged"]:
+            raise InputError(
+                "the sheet has merged cells",
+                where=place(file=path.name, sheet=sheet.title),
+                remedy="Unmerge them, so that each row stands on its own.",
+            )
+        return _read_sheet(path, sheet, marks, choose)
+    finally:
+        book.close()
+
+
+def _read_sheet(path: Path, sheet: Any, marks: dict[str, bool], choose: Choose) -> RawTable:
+    rows = sheet.iter_rows(values_only=True)
+    headings = _headings(next(rows, ()), path.name, sheet.title)
+    positions = choose(headings, sheet.title)
+    builder = TableBuilder(path.name, sheet.title, headings, positions)
+    if marks["hidden"] or sheet.sheet_state != "visible":
+        builder.note(
+            "hidden-cells",
+            "the sheet, or some of its rows or columns, are hidden; they are read like the others",
+            "Unhide them and check that they belong to the records.",
+            warn=True,
+        )
+    if marks["formula"]:
+        _refuse_unstored(path, sheet.title, positions)
+    number = FIRST_ROW
+    while chunk := list(islice(rows, _CHUNK)):
+        table = [_fit(row, len(headings), number + i, path.name, sheet.title) for i, row in enumerate(chunk)]
+        columns = [[_text(cell) for cell in column] for column in zip(*table, strict=True)]
+        native = {
+            name: np.array([not isinstance(row[position], str) for row in table], dtype=np.bool_)
+            for name, position in positions.items()
+        }
+        builder.add(columns, native)
+        number += len(chunk)
+    return builder.finish()
+
+
+def _headings(first: Sequence[Any], file: str, sheet: str) -> tuple[str, ...]:
+    cells = [_text(cell).strip() for cell in first]
+    while cells and not cells[-1]:
+        cells.pop()
+    if not cells:
+        raise InputError(
+            "the sheet is empty or its first row is blank",
+            where=place(file=file, sheet=sheet, row=1),
+            remedy="The first row must hold the headings, without notes above them.",
+        )
+    return tuple(cells)
+
+
+def _fit(row: Sequence[Any], width: int, number: int, file: str, sheet: str) -> tuple[Any, ...]:
+    """Cut or fill a row to the width of the headings; a value beyond them would be lost, so it stops."""
+    if any(cell is not None and _text(cell).strip() for cell in row[width:]):
+        raise InputError(
+            f"a row has values to the right of the last of {width} headings",
+            where=place(file=file, sheet=sheet, row=number),
+            remedy="Give every column a heading, or clear the cells.",
+        )
+    return (*row[:width], *([None] * (width - len(row))))
+
+
+def _text(cell: Any) -> str:
+    """Write a cell as text: numbers with a decimal point and the digits that identify them, dates as ISO."""
+    if cell is None:
+        return ""
+    if isinstance(cell, bool):
+        return "TRUE" if cell else "FALSE"
+    if isinstance(cell, float):
+        return repr(cell).removesuffix(".0")
+    if isinstance(cell, dt.datetime):
+        return cell.isoformat() if cell.time() != dt.time() else cell.date().isoformat()
+    return str(cell)
+
+
+def _check_package(path: Path) -> None:
+    try:
+        with zipfile.ZipFile(path) as package:
+            members = package.infolist()
+    except zipfile.BadZipFile as error:
+        raise InputError(
+            "the workbook is damaged or only partly written",
+            where=place(file=path.name),
+            remedy="Save it again as .xlsx.",
+        ) from error
+    names = [member.filename.lower() for member in members]
+    if "xl/workbook.xml" not in names:
+        raise InputError(
+            "the file is a zip package but no workbook", where=place(file=path.name), remedy="Save it as .xlsx."
+        )
+    if any("vbaproject" in name or "macrosheets/" in name for name in names):
+        raise InputError(
+            "the workbook contains macros",
+            where=place(file=path.name),
+            remedy="Save it as .xlsx without macros, or as CSV.",
+        )
+    if any(name.startswith("xl/externallinks/") for name in names):
+        raise InputError(
+            "the workbook links to other workbooks",
+            where=place(file=path.name),
+            remedy="Break the links (paste the values) and save it again.",
+        )
+    size = sum(member.file_size for member in members)
+    packed = max(1, sum(member.compress_size for member in members))
+    if size > MOST_BYTES or (size > 10 * 1024**2 and size / packed > MOST_RATIO):
+        raise InputError(
+            f"the workbook unpacks to {size} bytes from {packed}",
+            where=place(file=path.name),
+            remedy="Export the records as CSV or Parquet.",
+        )
+
+
+def _load(path: Path, *, data_only: bool) -> Any:
+    import openpyxl
+
+    try:
+        return openpyxl.load_workbook(path, read_only=True, data_only=data_only, keep_links=False)
+    except (zipfile.BadZipFile, SyntaxError, KeyError, ValueError, TypeError, AttributeError) as error:
+        # What the library raises for parts that are missing or no XML; none of it names the file.
+        raise InputError(
+            "the workbook is damaged", where=place(file=path.name), remedy="Save it again as .xlsx."
+        ) from error
+
+
+def _choose_sheet(book: Any, wanted: str | None, file: str) -> Any:
+    names = list(book.sheetnames)
+    if wanted is None:
+        names = [sheet.title for sheet in book.worksheets if sheet.sheet_state == "visible"]
+        if len(names) != 1:
+            raise InputError(
+                f"the workbook has {len(names)} visible sheets and none is chosen",
+                where=place(file=file),
+                value=names,
+                remedy="Name the sheet that holds the records.",
+            )
+        wanted = names[0]
+    if wanted not in names or not hasattr(book[wanted], "iter_rows"):
+        raise InputError(
+            "the sheet is not in the workbook",
+            where=place(file=file),
+            value=wanted,
+            remedy=nearest(wanted, names),
+        )
+    return book[wanted]
+
+
+def _marks(path: Path, sheet: Any) -> dict[str, bool]:
+    """Look into the stored sheet for what the fast reader hides: formulas, merged and hidden cells."""
+    found = {"formula": False, "merged": False, "hidden": False}
+    patterns = {"formula": _FORMULA, "merged": _MERGED, "hidden": _HIDDEN}
+    for window in _windows(path, sheet._worksheet_path):
+        for name, pattern in patterns.items():
+            found[name] = found[name] or pattern.search(window) is not None
+    return found
+
+
+def _windows(path: Path, member: str) -> Iterator[bytes]:
+    tail = b""
+    with zipfile.ZipFile(path) as package, package.open(member) as stream:
+        while block := stream.read(1 << 20):
+            yield tail + block
+            tail = block[-_OVERLAP:]
+
+
+def _refuse_unstored(path: Path, title: str, positions: Any) -> None:
+    """Stop at a formula whose value was never stored, in a column that is read."""
+    stored = _load(path, data_only=True)
+    written = _load(path, data_only=False)
+    try:
+        pairs = zip(stored[title].iter_rows(values_only=True), written[title].iter_rows(), strict=True)
+        for number, (values, cells) in enumerate(pairs, start=1):
+            for name, position in positions.items():
+                if position < len(values) and values[position] is None and cells[position].data_type == "f":
+                    raise InputError(
+                        "a formula has no stored value",
+                        where=place(file=path.name, sheet=title, row=number, column=name),
+                        remedy="Open the workbook, let it calculate, save it; or paste the values.",
+                    )
+    finally:
+        stored.close()
+        written.close()
