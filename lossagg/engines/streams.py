@@ -1,0 +1,33 @@
+"""Random streams: each block of years of each line has its own, derived from (seed, line, block).
+
+The line enters by a hash of its name, so the order of lines, and what other lines exist, changes
+nothing; the block by its number, so workers and their order change nothing. Seeding is numpy's
+(SeedSequence, O'Neill's hash), the generator SFC64.
+"""
+
+from __future__ import annotations
+
+import hashlib
+
+import numpy as np
+
+BLOCK_YEARS = 2**15
+
+
+def line_key(name: str) -> tuple[int, int]:
+    """Two 32-bit words that stand for a line's name, the same on every machine."""
+    digest = hashlib.sha256(name.encode("utf-8")).digest()
+    return int.from_bytes(digest[:4], "little"), int.from_bytes(digest[4:8], "little")
+
+
+def block_state(seed: int, key: tuple[int, int], block: int) -> np.ndarray:
+    """The generator's state (4 words, uint64) at the start of a block.
+
+    Args:
+        seed: the user's seed, 0 to 2**64 - 1.
+        key: the line's key, see `line_key`.
+        block: number of the block, below 2**32.
+    """
+    sequence = np.random.SeedSequence(seed, spawn_key=(*key, block))
+    state: np.ndarray = np.random.SFC64(sequence).state["state"]["state"]
+    return state
