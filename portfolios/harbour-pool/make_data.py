@@ -319,7 +319,8 @@ def write_liability(folder: Path) -> None:
     rows = claims_of(LIABILITY, "L", np.random.default_rng([SEED, LIABILITY.stream]))
     lines = [
         [r.number, r.member, f"{r.day:%d.%m.%Y}", f"{r.reported:%d.%m.%Y}", r.event, r.status,
-         text(r.paid, True), text(r.outstanding, True), text(r.amount, True), text(r.recoveries, True), f"{r.limit:.0f}"]
+         text(r.paid, True), text(r.outstanding, True), text(r.amount, True),
+         text(r.recoveries, True), f"{r.limit:.0f}"]
         for r in rows
     ]  # fmt: skip
     # planted: an amount written as n/a, a refund booked as a claim, a row exported twice
