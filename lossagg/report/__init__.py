@@ -1,0 +1,13 @@
+"""The report: reads an assessment, computes nothing.
+
+`write_assessment` puts JSON, page, workbook and manifest of an assessment into a folder. Every
+number in them is one of the assessment, shown with the digits its accuracy supports.
+"""
+
+from __future__ import annotations
+
+from lossagg.report.folder import check_destination
+from lossagg.report.manifest import RunFacts
+from lossagg.report.writing import write_assessment
+
+__all__ = ["RunFacts", "check_destination", "write_assessment"]

@@ -1,0 +1,115 @@
+"""The first page: the capital figure, what it means, and how far it can be trusted."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from lossagg.report import digits, tables
+from lossagg.report.cells import Absent, show
+from lossagg.report.reading import Assessment, Entry, engine_range_name, years_observed
+from lossagg.report.wording import MEASURES, STANDING_CAUTIONS, headline_sentence
+
+FINDING_ORDER = ("stop", "set aside", "warning", "normalised")
+
+
+def headline(assessment: Assessment) -> dict[str, Any]:
+    """The headline as the page shows it."""
+    entry, currency = assessment["headline"], assessment["portfolio"]["currency"]
+    figure = tables.totals.headline_figure(assessment)
+    view = show(figure, "money")
+    level, period = digits.percent(entry["level"]), digits.return_period(1 / (1 - entry["level"]))
+    found = not isinstance(figure, Absent)
+    return {
+        "subject": "net of all covers" if entry["subject"] == "net" else "gross, before any cover",
+        "measure": MEASURES[entry["measure"]],
+        "level": level,
+        "period": period,
+        "view": view,
+        "found": found,
+        "withheld": entry["withheld"],
+        "reason": (entry["reason"] or "").removeprefix("withheld: "),
+        "range_name": engine_range_name(entry["engine"]),
+        "engine": entry["engine"],
+        "less_mean": show(tables.totals.less_mean(assessment), "money"),
+        "sentence": headline_sentence(entry, currency, view.text, period, level) if found else "",
+    }
+
+
+def crosscheck(assessment: Assessment) -> dict[str, Any]:
+    """Verdict, comparisons and, where the engines disagree, by how much."""
+    entry = assessment["crosscheck"]
+    parted = [row for row in entry["comparisons"] if not row["agrees"]]
+    return {
+        "agrees": entry["verdict"] == "agree",
+        "summary": entry["summary"],
+        "table": tables.evidence.crosscheck(assessment),
+        "disagreements": tables.evidence.crosscheck_rows(parted, "Disagreements", "What the engines say"),
+        "spreads": [_spread(row) for row in parted],
+    }
+
+
+def _spread(row: Entry) -> str:
+    """By how much the engines differ on one measure, in a sentence."""
+    values = {name: value for name, value in row["values"].items() if value is not None}
+    where = f"{row['subject']}, {MEASURES[row['measure']]}"
+    if row["level"] is not None:
+        where += f" at {digits.percent(row['level'])}"
+    if len(values) < 2 or min(values.values()) <= 0:
+        return f"{where}: {row['note'] or 'the engines cannot be compared'}"
+    lowest, highest = min(values, key=lambda name: values[name]), max(values, key=lambda name: values[name])
+    gap = digits.chance(values[highest] / values[lowest] - 1, 2)
+    note = f" ({row['note']})" if row["note"] else ""
+    return f"{where}: {highest} is {gap} above {lowest}{note}"
+
+
+def status(assessment: Assessment) -> list[tuple[str, str, int]]:
+    """How far the figure can be trusted: term, text and the section that shows more."""
+    years, level = years_observed(assessment), assessment["headline"]["level"]
+    return [
+        ("Data", _data_status(assessment), 5),
+        ("Findings", _finding_status(assessment), 6),
+        ("Reach of the data", _reach(years, level), 1),
+        ("Cautions", _caution_status(assessment), 7),
+    ]
+
+
+def _data_status(assessment: Assessment) -> str:
+    recorded = [line for line in assessment["lines"] if line["records"] is not None]
+    given = len(assessment["lines"]) - len(recorded)
+    parts = []
+    if recorded:
+        kept = all(tables.records.reconciles(line["records"]) for line in recorded)
+        verdict = "records reconcile" if kept else "RECORDS DO NOT RECONCILE"
+        used = sum(line["records"]["used"] for line in recorded)
+        parts.append(f"{verdict} for {_plural(len(recorded), 'line')}; {_plural(used, 'record')} used")
+    if given:
+        parts.append(f"{_plural(given, 'line')} with laws given, not fitted")
+    return "; ".join(parts)
+
+
+def _finding_status(assessment: Assessment) -> str:
+    seen = [entry["severity"] for entry in assessment["findings"]]
+    counted = [f"{seen.count(kind)} {kind}" for kind in FINDING_ORDER if kind in seen]
+    return ", ".join(counted) + "" if counted else "none"
+
+
+def _reach(years: float | None, level: float) -> str:
+    period = 1 / (1 - level)
+    if years is None:
+        return "no records: every law was given"
+    text = (
+        f"the shortest record covers {digits.significant(years, 4)} years; "
+        f"the capital level is {digits.return_period(period)}"
+    )
+    if period > years:
+        return f"{text}, {digits.significant(period / years, 2)} times beyond the data"
+    return text
+
+
+def _caution_status(assessment: Assessment) -> str:
+    own = len(assessment["cautions"])
+    return f"{own} of this assessment, {len(STANDING_CAUTIONS)} standing"
+
+
+def _plural(count: int, noun: str) -> str:
+    return f"{count:,} {noun}" if count == 1 else f"{count:,} {noun}s"

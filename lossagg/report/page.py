@@ -1,0 +1,162 @@
+"""The report as one self-contained HTML page: no script, no link to anything outside."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from functools import cache
+from typing import TYPE_CHECKING, Any
+
+from lossagg.report import digits, figures, front, tables
+from lossagg.report.cells import Cell, Kind, Shown, Table, clean, show
+from lossagg.report.reading import Assessment, Entry, years_observed
+from lossagg.report.wording import STANDING_CAUTIONS
+
+if TYPE_CHECKING:
+    import jinja2
+
+
+@dataclass(frozen=True)
+class LineSection:
+    """What the page shows of one line."""
+
+    anchor: str
+    name: str
+    given: bool
+    facts: tuple[tuple[str, str], ...]
+    tables: tuple[Table, ...]
+    figures: tuple[str, ...]
+
+
+@cache
+def environment() -> jinja2.Environment:
+    """The templates, escaping everything that is put into them."""
+    import jinja2
+
+    built = jinja2.Environment(
+        loader=jinja2.PackageLoader("lossagg.report"),
+        autoescape=True,
+        undefined=jinja2.StrictUndefined,
+        trim_blocks=True,
+        lstrip_blocks=True,
+        keep_trailing_newline=True,
+    )
+    built.filters["shown"] = shown
+    built.filters["clean"] = clean
+    built.tests["numeric"] = is_numeric
+    return built
+
+
+def shown(cell: Cell, kind: Kind) -> Shown:
+    """The cell as the page shows it."""
+    return show(cell, kind)
+
+
+def is_numeric(kind: Kind) -> bool:
+    """True for kinds whose column is aligned to the right."""
+    return kind != "text"
+
+
+def render_report(assessment: Assessment) -> str:
+    """The page of one assessment.
+
+    Args:
+        assessment: the dictionary of format "lossagg.assessment/1".
+
+    Returns:
+        HTML; the same assessment gives the same text.
+    """
+    context: dict[str, Any] = {
+        "portfolio": assessment["portfolio"],
+        "run": assessment["run"],
+        "headline": front.headline(assessment),
+        "crosscheck": front.crosscheck(assessment),
+        "status": front.status(assessment),
+        "cautions": assessment["cautions"],
+        "standing": [{"code": code, "message": text} for code, text in STANDING_CAUTIONS],
+        "levels": tables.totals.levels(assessment),
+        "moments": tables.totals.moments(assessment),
+        "curve": figures.exceedance_figure(assessment),
+        "supported": years_observed(assessment),
+        "lines": tables.lines.overview(assessment),
+        "line_levels": tables.lines.levels(assessment),
+        "sections": [_section(line, index, assessment) for index, line in enumerate(assessment["lines"], 1)],
+        "cover_tables": _cover_tables(assessment),
+        "reconciliation": tables.records.reconciliation(assessment),
+        "findings": tables.evidence.findings(assessment),
+        "facts": tables.evidence.run(assessment),
+        "inputs": tables.evidence.inputs(assessment),
+    }
+    return environment().get_template("report.html").render(context)
+
+
+def render_index(facts: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) -> str:
+    """The index page of a batch: one row per portfolio with a link to its report.
+
+    Args:
+        facts: version, seed and years of the batch, and how many portfolios there are in each status.
+        rows: portfolio, status, message, headline, gross, net, verdict, cautions and link of each.
+    """
+    return environment().get_template("index.html").render(facts=facts, rows=rows)
+
+
+def _cover_tables(assessment: Assessment) -> list[Table]:
+    if not assessment["covers"]:
+        return []
+    return [
+        tables.covers.terms(assessment),
+        tables.covers.results(assessment),
+        tables.covers.levels(assessment),
+    ]
+
+
+def _section(line: Entry, index: int, assessment: Assessment) -> LineSection:
+    currency = assessment["portfolio"]["currency"]
+    built = (
+        tables.records.by_year([line], currency),
+        tables.fits.candidates([line]),
+        tables.records.steps([line], currency),
+    )
+    drawn: tuple[str | None, ...] = ()
+    if line["fit"]:
+        drawn = (
+            figures.survival_figure(line, f"line{index}-survival", currency),
+            figures.quantile_figure(line, f"line{index}-quantiles", currency),
+            figures.counts_figure(line, f"line{index}-counts"),
+        )
+    return LineSection(
+        anchor=f"line-{index}",
+        name=line["name"],
+        given=line["source"] == "given",
+        facts=tuple(_line_facts(line)),
+        tables=tuple(_without_line(table) for table in built if table.rows),
+        figures=tuple(figure for figure in drawn if figure),
+    )
+
+
+def _line_facts(line: Entry) -> list[tuple[str, str]]:
+    size, exposure = line["severity"], line["exposure"]
+    facts = [
+        ("Frequency", tables.lines.law_text(line["frequency"])),
+        ("Severity", tables.lines.law_text(size)),
+    ]
+    if line["source"] == "given":
+        return [*facts, ("Source", tables.lines.GIVEN)]
+    threshold = size["threshold"]
+    facts.append(
+        ("Threshold", "none" if threshold is None else f"{digits.significant(threshold, 9)} (trended)")
+    )
+    facts.append(
+        ("Losses fitted", f"{size['observations']:,}, of which {size['censored']:,} at a policy limit")
+    )
+    if exposure:
+        base = f" {exposure['base']}" if exposure["base"] else ""
+        facts.append(
+            ("Exposure of the forecast period", f"{digits.significant(exposure['forecast'], 6)}{base}")
+        )
+    return facts
+
+
+def _without_line(table: Table) -> Table:
+    """The table of one line without the column that would repeat its name."""
+    return Table(table.key, table.title, table.columns[1:], tuple(row[1:] for row in table.rows), table.notes)

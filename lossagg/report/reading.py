@@ -1,0 +1,114 @@
+"""Reading an assessment: from its entries to cells, with every missing number given its right words.
+
+`null` in an assessment never means zero. It means that a number does not exist (an infinite mean),
+was withheld (the engines disagree), was not computed (outside an engine's domain) or that a term is
+not there (no limit). Which of these it is follows from the entry and from the reason beside it.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from typing import Any
+
+from lossagg.errors import InputError
+from lossagg.report.cells import Absent, Cell, Estimated, Ranged
+
+Entry = Mapping[str, Any]
+Assessment = Mapping[str, Any]
+
+FORMAT = "lossagg.assessment/1"
+EXACT_ENGINES = ("fourier", "panjer")
+DOES_NOT_EXIST = "does not exist"
+WITHHELD = "withheld"
+NOT_COMPUTED = "not computed"
+
+
+def check_format(assessment: Assessment) -> None:
+    """Refuse what is not an assessment of the format this report reads.
+
+    Raises:
+        InputError: another format, or none.
+    """
+    seen = assessment.get("format")
+    if seen != FORMAT:
+        raise InputError(
+            "this is not an assessment that the report can read",
+            where="key 'format'",
+            value=seen,
+            remedy=f"Give the dictionary of an assessment of format {FORMAT!r}.",
+        )
+
+
+def absent(reason: str | None) -> Absent:
+    """The words for a missing number, from the reason beside it."""
+    if reason is None:
+        return Absent(DOES_NOT_EXIST)
+    for words in (WITHHELD, NOT_COMPUTED):
+        if reason.startswith(words):
+            return Absent(words, reason if reason != words else None)
+    return Absent(DOES_NOT_EXIST, reason if reason != DOES_NOT_EXIST else None)
+
+
+def existing(value: float | None) -> Cell:
+    """A number, or the words that it does not exist."""
+    return Absent(DOES_NOT_EXIST) if value is None else value
+
+
+def computed(value: float | None) -> Cell:
+    """A number, or the words that it was not computed."""
+    return Absent(NOT_COMPUTED) if value is None else value
+
+
+def text_or(value: object, words: str) -> Cell:
+    """A text, or `words` where there is none."""
+    return Absent(words) if value in (None, "") else str(value)
+
+
+def ranged(figure: Entry) -> Cell:
+    """A figure of an assessment with its range, or why it is missing."""
+    if figure.get("value") is None:
+        return absent(figure.get("reason"))
+    return Ranged(figure["value"], figure.get("low"), figure.get("high"))
+
+
+def estimated(value: float | None, engine: str, sd: float | None, years: int) -> Cell:
+    """A mean with the standard error that simulating `years` years leaves; exact engines leave none."""
+    if value is None:
+        return Absent(DOES_NOT_EXIST)
+    if engine in EXACT_ENGINES or not years:
+        return Estimated(value, None)
+    return Estimated(value, abs(value) / 100 if sd is None else sd / years**0.5)
+
+
+def chance(value: float | None, engine: str, years: int, words: str) -> Cell:
+    """A probability of one simulated or computed year; none seen in a simulation is not zero."""
+    if value is None:
+        return Absent(words)
+    if engine in EXACT_ENGINES or not years:
+        return Estimated(value, None)
+    if value == 0:
+        return Absent(f"none in {years:,} years")
+    return Estimated(value, (value * (1 - value) / years) ** 0.5)
+
+
+def engine_range_name(engine: str) -> str:
+    """What the range of an engine is: a guaranteed bracket or a statistical interval."""
+    return "guaranteed bracket" if engine in EXACT_ENGINES else "95% interval"
+
+
+def reasons(cells: Sequence[Cell]) -> tuple[str, ...]:
+    """The reasons of absent cells, each once, in order: the foot of a table."""
+    found = [cell.reason for cell in cells if isinstance(cell, Absent) and cell.reason]
+    return tuple(dict.fromkeys(found))
+
+
+def years_observed(assessment: Assessment) -> float | None:
+    """Years in the shortest record behind the total, or `None` when every line was given its laws.
+
+    The shortest record decides, because the total can be supported by data only where all its
+    lines are.
+    """
+    spans = [
+        sum(row["fraction"] for row in line["by_year"]) for line in assessment["lines"] if line["by_year"]
+    ]
+    return min(spans) if spans else None

@@ -1,0 +1,38 @@
+"""The tables of an assessment, each built once and shown in the page, the workbook and the console."""
+
+from __future__ import annotations
+
+from lossagg.report.cells import Table
+from lossagg.report.reading import Assessment
+from lossagg.report.tables import covers, evidence, fits, lines, records, totals
+
+__all__ = ["covers", "every_table", "evidence", "fits", "lines", "records", "totals"]
+
+
+def every_table(assessment: Assessment) -> tuple[Table, ...]:
+    """All tables of an assessment in the order of the report, for the workbook."""
+    entries, currency = assessment["lines"], assessment["portfolio"]["currency"]
+    return (
+        totals.headline(assessment),
+        totals.levels(assessment),
+        totals.moments(assessment),
+        totals.curves(assessment),
+        lines.overview(assessment),
+        lines.levels(assessment),
+        covers.terms(assessment),
+        covers.results(assessment),
+        covers.levels(assessment),
+        evidence.crosscheck(assessment),
+        records.reconciliation(assessment),
+        records.by_year(entries, currency),
+        records.steps(entries, currency),
+        fits.parameters(entries),
+        fits.candidates(entries),
+        fits.survival(entries, currency),
+        fits.quantiles(entries, currency),
+        fits.counts(entries),
+        evidence.findings(assessment),
+        evidence.cautions(assessment),
+        evidence.run(assessment),
+        evidence.inputs(assessment),
+    )

@@ -1,0 +1,109 @@
+"""Tables of the covers: terms, expected cost, probabilities, measures by level."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from lossagg.report import digits
+from lossagg.report.cells import Absent, Cell, Column, Table
+from lossagg.report.reading import Assessment, chance, estimated, reasons
+from lossagg.report.tables.totals import level_row
+
+CANNOT_EXHAUST = "cannot be exhausted"
+
+
+def _limit(value: float | None) -> Cell:
+    return Absent("no limit") if value is None else value
+
+
+def _cap(value: float | None) -> Cell:
+    return Absent("no cap") if value is None else value
+
+
+def terms(assessment: Assessment) -> Table:
+    """The terms of every cover in the order in which they act."""
+    currency = assessment["portfolio"]["currency"]
+    rows: list[tuple[Cell, ...]] = [
+        (cover["name"], *_term_cells(cover["terms"]), ", ".join(cover["lines"]), _after(cover["after"]))
+        for cover in assessment["covers"]
+    ]
+    columns = (
+        Column("Cover"),
+        Column("Deductible per event", "number"),
+        Column("Limit per event", "number"),
+        Column("Annual retention", "number"),
+        Column("Retained cap", "number"),
+        Column("Annual limit", "number"),
+        Column("Share", "level"),
+        Column("Lines"),
+        Column("Pays after"),
+    )
+    orders = tuple(dict.fromkeys(cover["order"] for cover in assessment["covers"]))
+    notes = tuple(f"Order of operations: {order}." for order in orders)
+    return Table("Cover terms", f"Covers: terms, {currency}", columns, tuple(rows), notes)
+
+
+def _term_cells(given: dict[str, Any]) -> tuple[Cell, ...]:
+    deductible: Cell = given["deductible"]
+    if given["franchise"]:
+        deductible = f"{digits.significant(given['deductible'], 15)} (franchise)"
+    return (
+        deductible,
+        _limit(given["limit"]),
+        given["annual_retention"],
+        _cap(given["retained_cap"]),
+        _limit(given["annual_limit"]),
+        given["share"],
+    )
+
+
+def _after(names: list[str]) -> str:
+    return ", ".join(names) if names else "first"
+
+
+def results(assessment: Assessment) -> Table:
+    """Expected cost of every cover, its spread, and how often it attaches and is exhausted."""
+    currency, years = assessment["portfolio"]["currency"], assessment["run"]["years"]
+    rows: list[tuple[Cell, ...]] = []
+    for cover in assessment["covers"]:
+        engine = cover["engine"]
+        rows.append(
+            (
+                cover["name"],
+                estimated(cover["expected"], engine, cover["sd"], years),
+                estimated(cover["sd"], engine, None, years),
+                chance(cover["attachment_probability"], engine, years, "not computed"),
+                chance(cover["exhaustion_probability"], engine, years, CANNOT_EXHAUST),
+                engine,
+            )
+        )
+    columns = (
+        Column("Cover"),
+        Column("Expected annual cost", "money"),
+        Column("Standard deviation", "money"),
+        Column("Attachment probability", "probability"),
+        Column("Exhaustion probability", "probability"),
+        Column("Engine"),
+    )
+    notes = (
+        "Expected annual cost is what the cover pays on average in a year, without expenses or loadings. "
+        "Attachment: the cover pays at all in a year. Exhaustion: it pays its annual limit in full.",
+    )
+    return Table("Covers", f"Covers: cost, {currency} a year", columns, tuple(rows), notes)
+
+
+def levels(assessment: Assessment) -> Table:
+    """What each cover pays in a bad year, by level."""
+    currency = assessment["portfolio"]["currency"]
+    rows = tuple(
+        (cover["name"], *level_row(row)) for cover in assessment["covers"] for row in cover["levels"]
+    )
+    columns = (
+        Column("Cover"),
+        Column("Level", "level"),
+        Column("Return period", "period"),
+        Column("VaR of payments", "money", ranged=True),
+        Column("TVaR of payments", "money", ranged=True),
+    )
+    notes = reasons([cell for row in rows for cell in row])
+    return Table("Cover levels", f"Covers by level, {currency}", columns, rows, notes)

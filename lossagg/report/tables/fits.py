@@ -1,0 +1,122 @@
+"""Tables of the fits: parameters, candidates, and the numbers behind the fit figures."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from lossagg.report.cells import Absent, Cell, Column, Estimated, Table
+from lossagg.report.reading import Entry, computed
+from lossagg.report.tables.lines import GIVEN, law_text
+
+LAWS = (("frequency", "Frequency"), ("severity", "Severity"))
+
+
+def parameters(lines: Sequence[Entry]) -> Table:
+    """Every parameter with its standard error, one row each."""
+    rows: list[tuple[Cell, ...]] = []
+    for line in lines:
+        for key, title in LAWS:
+            law = line[key]
+            errors = law["standard_errors"] or {}
+            for name, value in law["parameters"].items():
+                error = errors.get(name)
+                shown = Absent(_no_error(law)) if error is None else error
+                rows.append(
+                    (line["name"], title, law["family"], name, Estimated(value, error), shown, law["source"])
+                )
+    columns = (
+        Column("Line"),
+        Column("Law of"),
+        Column("Family"),
+        Column("Parameter"),
+        Column("Value", "number"),
+        Column("Standard error", "number"),
+        Column("Source"),
+    )
+    return Table("Parameters", "Parameters", columns, tuple(rows))
+
+
+def _no_error(law: Entry) -> str:
+    return GIVEN if law["source"] == "given" else "fixed, not estimated"
+
+
+def candidates(lines: Sequence[Entry]) -> Table:
+    """The families tried, with log-likelihood and information criteria; the chosen one is marked."""
+    rows: list[tuple[Cell, ...]] = []
+    for line in lines:
+        for key, title in LAWS:
+            for tried in line[key]["candidates"]:
+                mark = "chosen" if tried["chosen"] else ""
+                if tried.get("refused"):
+                    mark = f"refused: {tried['refused']}"
+                likelihood = (tried["log_likelihood"], tried["aic"], tried["bic"])
+                cells = tuple(computed(value) for value in likelihood)
+                rows.append((line["name"], title, law_text(tried), *cells, mark))
+    columns = (
+        Column("Line"),
+        Column("Law of"),
+        Column("Candidate"),
+        Column("Log-likelihood", "amount"),
+        Column("AIC", "amount"),
+        Column("BIC", "amount"),
+        Column("Choice"),
+    )
+    notes = ("AIC and BIC: lower is better. They compare candidates fitted to the same losses only.",)
+    return Table("Candidates", "Candidates", columns, tuple(rows), notes)
+
+
+def survival(lines: Sequence[Entry], currency: str) -> Table:
+    """Observed and fitted probability that a loss exceeds an amount."""
+    rows = tuple(
+        (
+            line["name"],
+            point["amount"],
+            point["empirical"],
+            point["fitted"],
+            computed(point.get("low")),
+            computed(point.get("high")),
+        )
+        for line in lines
+        if line["fit"]
+        for point in line["fit"]["survival"]
+    )
+    columns = (
+        Column("Line"),
+        Column("Amount", "amount"),
+        Column("Observed exceedance", "probability"),
+        Column("Fitted exceedance", "probability"),
+        Column("Low", "probability"),
+        Column("High", "probability"),
+    )
+    return Table("Fit survival", f"Size of loss: observed and fitted exceedance, {currency}", columns, rows)
+
+
+def quantiles(lines: Sequence[Entry], currency: str) -> Table:
+    """Observed losses against the fitted quantiles of the same rank."""
+    rows = tuple(
+        (line["name"], point["observed"], point["fitted"])
+        for line in lines
+        if line["fit"]
+        for point in line["fit"]["quantiles"]
+    )
+    columns = (Column("Line"), Column("Observed", "amount"), Column("Fitted", "amount"))
+    return Table("Fit quantiles", f"Size of loss: observed and fitted quantiles, {currency}", columns, rows)
+
+
+def counts(lines: Sequence[Entry]) -> Table:
+    """Observed number of losses by year against the fitted law."""
+    rows = tuple(
+        (line["name"], str(point["year"]), point["observed"], point["fitted"], point["low"], point["high"])
+        for line in lines
+        if line["fit"]
+        for point in line["fit"]["counts"]
+    )
+    columns = (
+        Column("Line"),
+        Column("Year"),
+        Column("Observed", "count"),
+        Column("Fitted", "number"),
+        Column("Low", "number"),
+        Column("High", "number"),
+    )
+    return Table("Fit counts", "Losses by year: observed and fitted", columns, rows)

@@ -1,0 +1,79 @@
+"""Tables of the lines: their laws, expected annual loss and measures by level."""
+
+from __future__ import annotations
+
+from lossagg.report import digits
+from lossagg.report.cells import Absent, Cell, Column, Estimated, Table, clean
+from lossagg.report.reading import Assessment, Entry, existing, reasons
+from lossagg.report.tables.totals import level_row
+
+GIVEN = "given, not estimated"
+
+
+def law_text(law: Entry) -> str:
+    """A law with its parameters and their standard errors in one short text."""
+    errors = law["standard_errors"] or {}
+    parts = []
+    for name, value in law["parameters"].items():
+        error = errors.get(name)
+        text = f"{name} {digits.estimated(value, error) if error else digits.significant(value, 6)}"
+        parts.append(f"{text} ± {digits.significant(error, 2)}" if error else text)
+    return clean(f"{law['family']}: {', '.join(parts)}")
+
+
+def overview(assessment: Assessment) -> Table:
+    """Every line with its laws, expected number of losses, expected annual loss and spread."""
+    currency = assessment["portfolio"]["currency"]
+    rows: list[tuple[Cell, ...]] = []
+    for line in assessment["lines"]:
+        count, size = line["frequency"], line["severity"]
+        rows.append(
+            (
+                line["name"],
+                law_text(count),
+                law_text(size),
+                count["mean"],
+                existing(size["mean"]),
+                existing(line["mean"]),
+                existing(line["sd"]),
+                _tail(size),
+            )
+        )
+    columns = (
+        Column("Line"),
+        Column("Frequency"),
+        Column("Severity"),
+        Column("Losses a year", "number"),
+        Column("Mean loss", "money"),
+        Column("Expected annual loss", "money"),
+        Column("Standard deviation", "money"),
+        Column("Tail index", "number"),
+    )
+    notes = (
+        f"Amounts in {currency}, gross, at the exposure of the forecast period. ± is one standard error.",
+        "Tail index: moments of this order and above do not exist.",
+    )
+    return Table("Lines", f"Lines, {currency}", columns, tuple(rows), notes)
+
+
+def _tail(size: Entry) -> Cell:
+    value = size["tail_index"]
+    if value is None:
+        return Absent("all moments exist")
+    errors = size["standard_errors"] or {}
+    return Estimated(value, errors.get("alpha") or errors.get("shape"))
+
+
+def levels(assessment: Assessment) -> Table:
+    """Value at risk and tail value at risk of each line by itself, gross."""
+    currency = assessment["portfolio"]["currency"]
+    rows = tuple((line["name"], *level_row(row)) for line in assessment["lines"] for row in line["levels"])
+    columns = (
+        Column("Line"),
+        Column("Level", "level"),
+        Column("Return period", "period"),
+        Column("VaR", "money", ranged=True),
+        Column("TVaR", "money", ranged=True),
+    )
+    notes = (*reasons([cell for row in rows for cell in row]), "Lines stand alone here; they do not add up.")
+    return Table("Line levels", f"Lines by level, gross, {currency}", columns, rows, notes)

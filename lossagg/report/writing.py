@@ -1,0 +1,46 @@
+"""Writing an assessment: four files in one folder, published in one step."""
+
+from __future__ import annotations
+
+from datetime import UTC, datetime
+from pathlib import Path
+
+from lossagg.report.canonical import canonical_json
+from lossagg.report.folder import check_destination, publish
+from lossagg.report.manifest import RunFacts, build_manifest
+from lossagg.report.reading import Assessment, check_format
+
+
+def write_assessment(assessment: Assessment, out: str | Path, *, facts: RunFacts | None = None) -> Path:
+    """Write an assessment into a folder: assessment.json, report.html, tables.xlsx, manifest.json.
+
+    The first three depend on the assessment alone: the same assessment gives the same bytes. They
+    appear together, or not at all.
+
+    Args:
+        assessment: the dictionary of format "lossagg.assessment/1", see `Assessment.to_dict`.
+        out: the folder. It may be absent, empty, or hold an earlier result, which is replaced.
+        facts: when and how the run was started, for the manifest.
+
+    Returns:
+        The folder written, as an absolute path.
+
+    Raises:
+        InputError: another format, a number JSON lacks, or a folder with files of someone else.
+        EnvironmentFault: no space or no permission; nothing is left half-written.
+    """
+    from lossagg.report.page import render_report
+    from lossagg.report.tables import every_table
+    from lossagg.report.workbook import render_workbook
+
+    known = facts or RunFacts()
+    check_format(assessment)
+    target = check_destination(Path(out))
+    files = {
+        "assessment.json": canonical_json(assessment).encode(),
+        "report.html": render_report(assessment).encode(),
+        "tables.xlsx": render_workbook(every_table(assessment), assessment["portfolio"]["valuation_date"]),
+    }
+    manifest = build_manifest(assessment, known, files, datetime.now(UTC))
+    publish(target, {**files, "manifest.json": canonical_json(manifest).encode()})
+    return target
