@@ -277,7 +277,9 @@ class SizeLaw(Law):
         def ratio(d: FloatArray) -> FloatArray:
             survival = np.asarray(self.sf(np.maximum(d, 0.0)))
             excess = np.asarray(self.expected_excess(d))
-            return np.divide(excess, survival, out=np.full(d.shape, np.nan), where=survival > 0)
+            out = np.full(d.shape, np.nan)
+            np.divide(excess, survival, out=out, where=survival > 0)
+            return out
 
         return elementwise(ratio, deductible, "deductible")
 

@@ -151,7 +151,7 @@ class Burr(SizeLaw):
         part = whole[panel] + integral(knots[panel], reach)
         with np.errstate(over="ignore"):
             beyond = np.exp(growth * end) * exponential_integral(growth, np.maximum(y - end, 0.0))
-        return self._series(np.zeros(1), b)[0] + b * (part + beyond)
+        return np.asarray(self._series(np.zeros(1), b) + b * (part + beyond))
 
     def _expected_excess(self, x: FloatArray) -> FloatArray:
         b = 1 / self.gamma

@@ -65,7 +65,7 @@ class Exponential(SizeLaw):
         return self._mean * self._cdf(limit)
 
     def _limited_second_moment(self, limit: FloatArray) -> FloatArray:
-        return 2.0 * self._mean**2 * np.asarray(special.gammainc(2.0, limit / self._mean))
+        return np.asarray(2.0 * self._mean**2 * special.gammainc(2.0, limit / self._mean))
 
     def _expected_excess(self, x: FloatArray) -> FloatArray:
         return self._mean * self._sf(x)

@@ -70,10 +70,10 @@ class Gamma(SizeLaw):
         return np.where(t > 0, weight * self.shape / (positive * self.scale), at_zero)
 
     def _ppf(self, q: FloatArray) -> FloatArray:
-        return self.scale * np.asarray(special.gammaincinv(self.shape, q))
+        return np.asarray(self.scale * special.gammaincinv(self.shape, q))
 
     def _isf(self, p: FloatArray) -> FloatArray:
-        return self.scale * np.asarray(special.gammainccinv(self.shape, p))
+        return np.asarray(self.scale * special.gammainccinv(self.shape, p))
 
     def _limited_mean(self, limit: FloatArray) -> FloatArray:
         below = self.mean() * special.gammainc(self.shape + 1, limit / self.scale)

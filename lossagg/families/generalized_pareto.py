@@ -85,9 +85,14 @@ class GeneralizedPareto(SizeLaw):
     def _t(self, x: FloatArray) -> FloatArray:
         """-log S(x): 0 up to the threshold, `inf` from the largest loss on."""
         unit = np.maximum(x - self.threshold, 0.0) / self.scale
-        v = np.maximum(self.shape * unit, -1.0)
-        with np.errstate(divide="ignore", invalid="ignore"):
-            return np.where(v == 0, unit, unit * (np.log1p(v) / np.where(v == 0, 1.0, v)))
+        v = self.shape * unit
+        near = np.maximum(v, -0.5)
+        t = unit * np.where(near == 0, 1.0, np.log1p(near) / np.where(near == 0, 1.0, near))
+        if self.shape < 0:  # the distance to the largest loss, exact where 1 + v is not
+            room = np.maximum(self.support[1] - x, 0.0) * (-self.shape / self.scale)
+            with np.errstate(divide="ignore"):
+                t = np.where(v < -0.5, np.log(room) / self.shape, t)
+        return t
 
     def _cdf(self, x: FloatArray) -> FloatArray:
         return -np.expm1(-self._t(x))

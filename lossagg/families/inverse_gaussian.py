@@ -23,6 +23,9 @@ from lossagg.families.mills import mills, mills_difference, mills_fall_differenc
 
 # Below this a (or -a) the Mills ratio is large and Phi itself is the better form.
 _EDGE = -5.0
+# Below this c = sqrt(shape x) / mean the closed form of the second moment cancels.
+_WIDE_BELOW = 0.5
+_NODES, _WEIGHTS = np.polynomial.legendre.leggauss(64)
 
 
 @dataclass(frozen=True, init=False, repr=False)
@@ -63,34 +66,45 @@ class InverseGaussian(SizeLaw):
         return InverseGaussian(mean=self._mean * times, shape=self.shape * times)
 
     def _ends(self, x: FloatArray) -> tuple[FloatArray, FloatArray]:
-        root = np.sqrt(self.shape / self._floored(x))
-        return root * (x / self._mean - 1.0), root * (x / self._mean + 1.0)
+        """p = sqrt(shape / x) and c = sqrt(shape x) / mean: a = c - p, b = c + p."""
+        floored = self._floored(x)
+        return np.sqrt(self.shape / floored), np.sqrt(self.shape * floored) / self._mean
+
+    def _a(self, x: FloatArray) -> FloatArray:
+        floored = self._floored(x)
+        return np.sqrt(self.shape / floored) * ((floored - self._mean) / self._mean)
 
     def _floored(self, x: FloatArray) -> FloatArray:
         # Far below this the density is exp(-5e7): no loss is that small, but its reciprocal overflows.
         return np.maximum(x, 1e-8 * self.shape)
 
     def _cdf(self, x: FloatArray) -> FloatArray:
-        a, b = self._ends(x)
-        return np.minimum(special.ndtr(a) + normal_density(a) * mills(b), 1.0)
+        p, c = self._ends(x)
+        a = self._a(x)
+        return np.minimum(special.ndtr(a) + normal_density(a) * mills(c + p), 1.0)
 
     def _sf(self, x: FloatArray) -> FloatArray:
-        a, b = self._ends(x)
-        return _upper(a, b)
+        p, _ = self._ends(x)
+        return _upper(self._a(x), 2.0 * p)
+
+    def _partial_mean(self, x: FloatArray) -> FloatArray:
+        """E[X; X <= x] / mean."""
+        _, c = self._ends(x)
+        return _upper(-self._a(x), 2.0 * c)
 
     def _pdf(self, x: FloatArray) -> FloatArray:
-        a, _ = self._ends(x)
         floored = self._floored(x)
-        return normal_density(a) * np.sqrt(self.shape / floored) / floored
+        return normal_density(self._a(x)) * np.sqrt(self.shape / floored) / floored
 
     def _ppf(self, q: FloatArray) -> FloatArray:
-        return self._inverse(q, q <= 0.5, 1.0)
+        return self._inverse(q, 1.0)
 
     def _isf(self, p: FloatArray) -> FloatArray:
-        return self._inverse(p, p <= 0.5, -1.0)
+        return self._inverse(p, -1.0)
 
-    def _inverse(self, p: FloatArray, own: np.ndarray, sign: float) -> FloatArray:
+    def _inverse(self, p: FloatArray, sign: float) -> FloatArray:
         # The half in which the target is small; 1 - p is exact in the other.
+        own = p <= 0.5
         result = np.empty(p.shape)
         for chosen, target, slope in ((own, p[own], sign), (~own, 1.0 - p[~own], -sign)):
             tail = self._cdf if slope > 0 else self._sf
@@ -99,34 +113,53 @@ class InverseGaussian(SizeLaw):
         return result
 
     def _limited_mean(self, limit: FloatArray) -> FloatArray:
-        a, b = self._ends(limit)
-        return self._mean * _upper(-a, b) + limit * _upper(a, b)
+        return self._mean * self._partial_mean(limit) + limit * self._sf(limit)
 
     def _limited_second_moment(self, limit: FloatArray) -> FloatArray:
-        a, b = self._ends(limit)
-        below = (
-            self._cdf(limit)
-            + self._mean / self.shape * _upper(-a, b)
-            - 2.0 * np.sqrt(limit / self.shape) * normal_density(a)
-        )
-        return self._mean**2 * np.maximum(below, 0.0) + limit * (limit * _upper(a, b))
+        p, c = self._ends(limit)
+        density = normal_density(self._a(limit))
+        below = self._cdf(limit) + self._mean / self.shape * self._partial_mean(limit) - 2.0 / p * density
+        wide = c < _WIDE_BELOW
+        below[wide] = density[wide] * _wide_second(p[wide], c[wide])
+        return self._mean**2 * np.maximum(below, 0.0) + limit * (limit * self._sf(limit))
 
     def _expected_excess(self, x: FloatArray) -> FloatArray:
-        a, b = self._ends(x)
+        p, _ = self._ends(x)
+        a = self._a(x)
         low = a < _EDGE
         result = np.empty(x.shape)
-        at, al, bl = x[low], a[low], b[low]
-        result[low] = self._mean - at + at * self._cdf(at) - self._mean * _upper(-al, bl)
-        at, ah, bh = x[~low], a[~low], b[~low]
-        rise = mills_fall_difference(ah, bh) * np.sqrt(at / self.shape)
-        result[~low] = self._mean * normal_density(ah) * rise
+        at = x[low]
+        result[low] = self._mean - at + at * self._cdf(at) - self._mean * self._partial_mean(at)
+        rise = mills_fall_difference(a[~low], 2.0 * p[~low]) / p[~low]
+        result[~low] = self._mean * normal_density(a[~low]) * rise
         return result
 
 
-def _upper(a: FloatArray, b: FloatArray) -> FloatArray:
-    """Phi(-a) - phi(a) R(b) for |a| <= b."""
+def _upper(a: FloatArray, width: FloatArray) -> FloatArray:
+    """Phi(-a) - phi(a) R(a + width), with a + width >= |a|."""
     low = a < _EDGE
     result = np.empty(a.shape)
-    result[low] = special.ndtr(-a[low]) - normal_density(a[low]) * mills(b[low])
-    result[~low] = normal_density(a[~low]) * mills_difference(a[~low], b[~low])
+    result[low] = special.ndtr(-a[low]) - normal_density(a[low]) * mills(a[low] + width[low])
+    result[~low] = normal_density(a[~low]) * mills_difference(a[~low], width[~low])
     return result
+
+
+def _wide_second(p: FloatArray, c: FloatArray) -> FloatArray:
+    """R(p-c) + R(p+c) + (R(p-c) - R(p+c)) / (c p) - 2/p for small c, where it is of order c**2.
+
+    With R(t) the integral of exp(-t u - u**2 / 2) over u > 0, two integrations by parts give
+    (2/p) times the integral of exp(-p u - u**2 / 2) ((1 + c**2) sinh(c u) / c - u cosh(c u)), whose
+    bracket is c**2 times a series in (c u)**2.
+    """
+    reach = np.minimum(13.0, 45.0 / p)
+    u = 0.5 * reach[:, None] * (1.0 + _NODES)
+    square = (c[:, None] * u) ** 2
+    hyperbolic, drop = np.zeros_like(u), np.zeros_like(u)
+    for k in range(25, 0, -1):
+        step = square / ((2 * k) * (2 * k + 1))
+        hyperbolic = (hyperbolic + 1.0) * step
+        # drop: sum of 2k / (2k+1)! square**(k-1), by the same nesting
+        drop = drop * square / ((2 * k + 2) * (2 * k + 3)) + 2.0 * k
+    bracket_over_c2 = u * (1.0 + hyperbolic) - u**3 * drop / 6.0
+    integral = 0.5 * reach * ((np.exp(-p[:, None] * u - 0.5 * u * u) * bracket_over_c2) @ _WEIGHTS)
+    return np.asarray(2.0 * c * c / p * integral)

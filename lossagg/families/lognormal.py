@@ -115,7 +115,7 @@ class Lognormal(SizeLaw):
         result[wide] = above - x[wide] * special.ndtr(-z[wide])
         rest = ~low & ~wide
         at = z[rest]
-        result[rest] = x[rest] * normal_density(at) * mills_difference(at - self.sigma, at)
+        result[rest] = x[rest] * normal_density(at) * mills_difference(at - self.sigma, np.full(at.shape, self.sigma))
         return result
 
 

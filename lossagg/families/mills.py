@@ -50,26 +50,25 @@ def mills_bend(t: FloatArray) -> FloatArray:
     return np.where(t < _FRACTION_FROM, (1.0 + t * t) * mills(t) - t, mills(t) * k * rest)
 
 
-def mills_difference(low: FloatArray, high: FloatArray) -> FloatArray:
-    """R(low) - R(high) for low <= high, to nearly full accuracy."""
-    return _difference(mills, mills_fall, low, high)
+def mills_difference(low: FloatArray, width: FloatArray) -> FloatArray:
+    """R(low) - R(low + width) for width >= 0, to nearly full accuracy."""
+    return _difference(mills, mills_fall, low, width)
 
 
-def mills_fall_difference(low: FloatArray, high: FloatArray) -> FloatArray:
-    """-R'(low) + R'(high) for low <= high, to nearly full accuracy."""
-    return _difference(mills_fall, mills_bend, low, high)
+def mills_fall_difference(low: FloatArray, width: FloatArray) -> FloatArray:
+    """-R'(low) + R'(low + width) for width >= 0, to nearly full accuracy."""
+    return _difference(mills_fall, mills_bend, low, width)
 
 
 def _difference(
     function: Callable[[FloatArray], FloatArray],
     slope: Callable[[FloatArray], FloatArray],
     low: FloatArray,
-    high: FloatArray,
+    width: FloatArray,
 ) -> FloatArray:
-    width = high - low
     short = width < 1.0
     result = np.empty(np.shape(low))
-    result[~short] = function(low[~short]) - function(high[~short])
+    result[~short] = function(low[~short]) - function(low[~short] + width[~short])
     nodes = low[short][:, None] + 0.5 * width[short][:, None] * (1.0 + _NODES)
     result[short] = 0.5 * width[short] * (slope(nodes) @ _WEIGHTS)
     return result

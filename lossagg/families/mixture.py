@@ -8,7 +8,7 @@ from typing import ClassVar
 
 import numpy as np
 
-from lossagg.arrays import FloatArray, require_positive
+from lossagg.arrays import FloatArray, Floats, require_positive
 from lossagg.errors import InputError
 from lossagg.families.base import SizeLaw
 from lossagg.families.inversion import invert_tail
@@ -66,8 +66,8 @@ class Mixture(SizeLaw):
             named |= {f"part.{k}.{name}": value for name, value in part.parameters.items()}
         return named
 
-    def _sum(self, values: Sequence[object]) -> FloatArray:
-        total = np.zeros(np.shape(values[0]))  # type: ignore[arg-type]
+    def _sum(self, values: Sequence[Floats]) -> FloatArray:
+        total = np.zeros(np.shape(values[0]))
         for weight, value in zip(normalised(self.weights), values, strict=True):
             total = total + weight * np.asarray(value)
         return total

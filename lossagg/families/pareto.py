@@ -59,7 +59,7 @@ class Pareto(SizeLaw):
 
     def _log(self, x: FloatArray) -> FloatArray:
         """log(x / minimum), 0 below the minimum."""
-        return np.asarray(np.log(np.maximum(x / self.minimum, 1.0)))
+        return np.asarray(np.log1p(np.maximum(x - self.minimum, 0.0) / self.minimum))
 
     def _cdf(self, x: FloatArray) -> FloatArray:
         return -np.expm1(-self.alpha * self._log(x))

@@ -138,26 +138,26 @@ class SizeTable(SizeLaw):
         return np.searchsorted(self._atoms[0], x, side="right")
 
     def _cdf(self, x: FloatArray) -> FloatArray:
-        return np.append(0.0, self._sums[0])[self._count(x)]
+        return np.append(0.0, self._sums[0]).take(self._count(x))
 
     def _sf(self, x: FloatArray) -> FloatArray:
-        return np.append(1.0, self._sums[1])[self._count(x)]
+        return np.append(1.0, self._sums[1]).take(self._count(x))
 
     def _pdf(self, x: FloatArray) -> FloatArray:
         return np.zeros(x.shape)
 
     def _ppf(self, q: FloatArray) -> FloatArray:
-        return self._atoms[0][np.searchsorted(self._sums[0], q, side="left")]
+        return self._atoms[0].take(np.searchsorted(self._sums[0], q, side="left"))
 
     def _isf(self, p: FloatArray) -> FloatArray:
         place = len(self._atoms[0]) - np.searchsorted(self._sums[1][::-1], p, side="right")
-        return self._atoms[0][place]
+        return self._atoms[0].take(place)
 
     def _limited_mean(self, limit: FloatArray) -> FloatArray:
-        return self._partial_moments[0][self._count(limit)] + limit * self._sf(limit)
+        return self._partial_moments[0].take(self._count(limit)) + limit * self._sf(limit)
 
     def _limited_second_moment(self, limit: FloatArray) -> FloatArray:
-        return self._partial_moments[1][self._count(limit)] + limit * limit * self._sf(limit)
+        return self._partial_moments[1].take(self._count(limit)) + limit * limit * self._sf(limit)
 
     def _expected_excess(self, x: FloatArray) -> FloatArray:
         sizes, _ = self._atoms

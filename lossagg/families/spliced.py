@@ -106,7 +106,7 @@ class Spliced(SizeLaw):
         """The second moment, `inf` where the tail's is."""
         u, tail = self.threshold, self.tail
         above = tail.second_moment() - float(tail.limited_second_moment(u)) + u * u * self._tail_weight
-        return self._body_factor * self._body_second(np.array(u)) + self._tail_factor * above
+        return self._body_factor * float(self._body_second(np.array(u))) + self._tail_factor * above
 
     @property
     def tail_index(self) -> float:

@@ -90,7 +90,7 @@ class Weibull(SizeLaw):
 
     def _expected_excess(self, x: FloatArray) -> FloatArray:
         # The recurrence of the incomplete gamma function takes x S(x) out of the difference.
-        return self.mean() * np.asarray(special.gammaincc(1 / self.shape, self._t(x)))
+        return np.asarray(self.mean() * special.gammaincc(1 / self.shape, self._t(x)))
 
 
 def _squared_variation(inverse: float) -> float:
