@@ -113,7 +113,14 @@ def _cubics(law: SizeLaw, left: FloatArray, width: FloatArray, *, upper: bool) -
     exact = _quantile(law, t, upper=upper)
     at_nodes = np.column_stack([exact[:-1].reshape(-1, 3), np.append(exact[3:-1:3], exact[-1])])
     with np.errstate(over="ignore", under="ignore", invalid="ignore"):
-        return np.ascontiguousarray(at_nodes @ np.linalg.inv(np.vander(NODES, increasing=True)).T)
+        cubics: FloatArray = np.ascontiguousarray(
+            at_nodes @ np.linalg.inv(np.vander(NODES, increasing=True)).T
+        )
+    # an atom must come out as the very amount: terms may jump there
+    constant = (at_nodes == at_nodes[:, :1]).all(axis=1)
+    cubics[constant] = 0.0
+    cubics[constant, 0] = at_nodes[constant, 0]
+    return cubics
 
 
 def _errors(

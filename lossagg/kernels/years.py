@@ -15,6 +15,7 @@ from lossagg.kernels.compile import compiled
 from lossagg.kernels.draws import SizeArrays, draw_sizes
 
 BUFFER = 4096
+SPARSE = 2  # losses a year up to which `add_sparse` is faster, as measured
 
 
 @compiled
@@ -63,14 +64,33 @@ def add_events(years: IntArray, sizes: FloatArray, ramps: FloatArray, annual: Fl
 
 
 @compiled
-def places_to_years(places: IntArray, left: IntArray, year: int) -> None:
-    """Replace places in a run of losses (increasing) by their years; `year` is that of place 0."""
-    reached = left[year]
-    for i in range(places.shape[0]):
-        while places[i] >= reached:
-            year += 1
-            reached += left[year]
-        places[i] = year
+def years_of(left: IntArray, year: int, after: int, owner: IntArray) -> None:
+    """Write the year of every loss of the years from `year` up to `after` into `owner`.
+
+    No branch depends on a count: where many years have no loss or one, the processor would guess
+    each of them wrong.
+    """
+    total = owner.shape[0]
+    owner[:] = 0
+    place = 0
+    for y in range(year, after):
+        if place < total:
+            owner[place] = y
+        place += left[y]
+    reached = year
+    for i in range(total):
+        reached = max(reached, owner[i])
+        owner[i] = reached
+
+
+@compiled
+def add_sparse(sizes: FloatArray, owner: IntArray, ramp: FloatArray, annual: FloatArray) -> None:
+    """As `add_ramp`, for years with few losses: `owner` holds the year of each loss."""
+    column = np.int64(ramp[0])
+    start, end, slope, jump = ramp[1], ramp[2], ramp[3], ramp[4]
+    for i in range(sizes.shape[0]):
+        paid = slope * max(min(sizes[i], end) - start, 0.0)
+        annual[column, owner[i]] += paid + jump * (sizes[i] > start)
 
 
 @compiled
@@ -99,24 +119,29 @@ def add_years(
     Returns:
         The next year, and how many losses are flagged.
     """
-    sizes = np.empty(BUFFER)
+    sizes, owner = np.empty(BUFFER), np.empty(BUFFER, np.int64)
     found = 0
     while year < left.shape[0] and found + BUFFER <= flagged.shape[0]:
         total, after = 0, year
         while after < left.shape[0] and total + left[after] <= BUFFER:
             total += left[after]
             after += 1
-        part = 0
-        if after == year:
-            part = BUFFER
+        within_a_year = after == year
+        if within_a_year:
             total = BUFFER
         before = found
         found = draw_sizes(state, table, sizes[:total], flagged, probability, found)
-        if found > before:
-            places_to_years(flagged[before:found], left, year)
+        sparse = total <= SPARSE * (after - year)
+        if sparse or found > before:
+            years_of(left, year, max(after, year + 1), owner[:total])
+        for i in range(before, found):
+            flagged[i] = owner[flagged[i]]
         for r in range(ramps.shape[0]):
-            add_ramp(sizes[:total], left, year, ramps[r], annual)
-        if part > 0:
-            left[year] -= part
+            if sparse:
+                add_sparse(sizes[:total], owner[:total], ramps[r], annual)
+            else:
+                add_ramp(sizes[:total], left, year, ramps[r], annual)
+        if within_a_year:
+            left[year] -= BUFFER
         year = after
     return year, found
