@@ -1,0 +1,120 @@
+"""The binomial fit: whole trials, given or by profile likelihood; the probability is closed."""
+
+from __future__ import annotations
+
+import numpy as np
+from scipy import special
+
+from lossagg.errors import FitError, InputError
+from lossagg.families import Binomial
+from lossagg.fitting.counts import Counts
+from lossagg.fitting.negative_binomial import JUST_EQUAL, rising_by_terms
+from lossagg.fitting.results import FrequencyFit
+
+_MOST_TRIALS = 2.0**40
+
+
+def fit_binomial(sample: Counts, held: float | None) -> FrequencyFit:
+    """Fit the probability, and the trials unless held; see `fit_frequency`."""
+    if sample.losses == 0:
+        raise FitError(
+            "a binomial law cannot be fitted to years without losses",
+            value=f"0 losses in {sample.years} years",
+            remedy='Fit "poisson", which gives a bound.',
+        )
+    trials = _estimated_trials(sample) if held is None else _held_trials(sample, held)
+    probability = sample.losses / (trials * sample.exposure)
+    notes: tuple[str, ...] = ()
+    if held is None:
+        notes = (
+            f"Trials {trials} were chosen by the likelihood over whole numbers; the standard error of the "
+            "probability takes them as known, and they count as one parameter in AIC and BIC.",
+        )
+    variance = probability * (1 - probability) / (trials * sample.exposure)
+    return FrequencyFit(
+        family="binomial",
+        model=Binomial(trials=trials, probability=probability),
+        parameters={"trials": float(trials), "probability": probability},
+        covariance=np.diag([0.0, variance]),
+        fixed=("trials",),
+        log_likelihood=_binomial_profile(sample, float(trials)) - sample.log_factorials(),
+        estimated=1 if held is not None else 2,
+        observations=sample.years,
+        gradient_norm=0.0,
+        ranges={"probability": "probability"},
+        notes=notes,
+        losses=sample.losses,
+        exposure=sample.exposure,
+        maximum_likelihood_mean=trials * probability,
+    )
+
+
+def _binomial_profile(sample: Counts, trials: float) -> float:
+    """Log-likelihood plus log n! at these trials (at exposure 1) and the best probability."""
+    each = trials * sample.exposures
+    probability = sample.losses / (trials * sample.exposure)
+    ways = special.gammaln(each + 1) - special.gammaln(each - sample.numbers + 1)
+    chance = special.xlogy(sample.numbers, probability) + special.xlog1py(each - sample.numbers, -probability)
+    return float(np.sum(sample.weights * (ways + chance)))
+
+
+def _held_trials(sample: Counts, held: float) -> int:
+    each = held * sample.exposures
+    whole = np.abs(each - np.round(each)) <= 1e-9 * each
+    if not (held == round(held) and held >= 1 and whole.all() and (sample.numbers <= each + 0.5).all()):
+        raise InputError(
+            "fixed trials must be a whole number, whole at every exposure and not below a count",
+            value=held,
+            remedy=f"The largest count is {sample.numbers.max():g}; with uneven exposures fit another law.",
+        )
+    return round(held)
+
+
+def _estimated_trials(sample: Counts) -> int:
+    """The whole number of trials of highest likelihood, which has one peak in the trials."""
+    if (sample.exposures != 1).any():
+        raise FitError(
+            "the trials of a binomial law cannot be estimated with exposures other than 1",
+            value=f"exposures {sample.exposures.min():g} to {sample.exposures.max():g}",
+            remedy='Give fixed={"trials": n}, or fit "poisson" or "negative-binomial".',
+        )
+    low = int(sample.numbers.max())
+    if sample.rate == low:
+        raise FitError(
+            "every year has the same count, so the binomial probability is 1",
+            value=low,
+            remedy='Check the counts; fit "poisson" if they are right.',
+        )
+    step = 1
+    while step < _MOST_TRIALS and _gain(sample, low + 2 * step) > _gain(sample, low + step):
+        step *= 2
+    first, last = low + step // 2, low + 2 * step
+    if _gain(sample, low) >= _gain(sample, low + 1):
+        first = last = low
+    while first < last:
+        middle = (first + last) // 2
+        if _gain(sample, middle) < _gain(sample, middle + 1):
+            first = middle + 1
+        else:
+            last = middle
+    if _gain(sample, first) <= JUST_EQUAL:
+        raise FitError(
+            "the counts vary at least as much as Poisson counts, so the binomial fit ends at endless trials",
+            value=f"{sample.losses} losses in {sample.years} years",
+            remedy='Fit "poisson" or "negative-binomial".',
+            tried=(f"trials from {low} to {low + 2 * step}",),
+        )
+    return first
+
+
+def _gain(sample: Counts, trials: int) -> float:
+    """Log-likelihood of binomial less Poisson counts of the same mean, all exposures 1.
+
+    The factorials of the trials are taken as a sum of log(1 - k / trials), so that endless trials give 0
+    and not the difference of two huge numbers.
+    """
+    mean = sample.rate
+    chance = mean / trials
+    ways = rising_by_terms(-1.0 / trials, sample.numbers, sample.weights)[0]
+    none = trials * (special.log1p(-chance) + chance)
+    return float(ways + sample.years * none - sample.losses * special.log1p(-chance))

@@ -1,0 +1,131 @@
+"""Fit several families to the same losses or counts and rank those that have a fit."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Generic, TypeVar
+
+from lossagg.arrays import Floats
+from lossagg.errors import FitError, InputError
+from lossagg.fitting.frequency import fit_frequency
+from lossagg.fitting.results import Fit, FrequencyFit, SeverityFit
+from lossagg.fitting.severity import fit_severity
+from lossagg.fitting.spliced import fit_spliced
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+AnyFit = TypeVar("AnyFit", bound=Fit)
+
+
+@dataclass(frozen=True)
+class Candidates(Generic[AnyFit]):
+    """The fits of several families to the same data, best first by AIC.
+
+    AIC ranks; it does not say that the best is good. Look at the survival and quantile plots, above
+    all in the tail, before using it.
+
+    Attributes:
+        fits: certified fits, lowest AIC first.
+        refused: family name to the reason why it has no fit.
+    """
+
+    fits: tuple[AnyFit, ...]
+    refused: Mapping[str, str]
+
+    @property
+    def chosen(self) -> AnyFit:
+        """The fit of lowest AIC (Akaike 1974)."""
+        return self.fits[0]
+
+    def to_frame(self) -> pd.DataFrame:
+        """One row per family, refused ones last: log-likelihood, AIC, BIC, whether chosen, why refused."""
+        import pandas as pd
+
+        rows: list[dict[str, object]] = [
+            {
+                "family": fit.family,
+                "estimated": fit.estimated,
+                "log_likelihood": fit.log_likelihood,
+                "aic": fit.aic,
+                "bic": fit.bic,
+                "chosen": fit is self.chosen,
+                "refused": None,
+            }
+            for fit in self.fits
+        ]
+        rows += [{"family": name, "chosen": False, "refused": why} for name, why in self.refused.items()]
+        return pd.DataFrame(rows).set_index("family")
+
+
+def compare_severities(
+    losses: Floats,
+    families: Sequence[str],
+    truncation: Floats | None = None,
+    censored: object = None,
+    *,
+    tail_threshold: float | None = None,
+    tail: str = "generalized-pareto",
+) -> Candidates[SeverityFit]:
+    """Fit each severity family and rank the fits by AIC.
+
+    Args:
+        losses, truncation, censored: as for `fit_severity`.
+        families: names of families, each once.
+        tail_threshold: if given, each family is fitted as the body of a spliced law with this splice
+            point; see `fit_spliced`.
+        tail: family of the tail above `tail_threshold`.
+
+    Raises:
+        InputError: unusable data, no family, or an unknown one.
+        FitError: no family has a fit; `tried` gives the reason of each.
+    """
+
+    def fit(family: str) -> SeverityFit:
+        if tail_threshold is None:
+            return fit_severity(losses, family, truncation, censored)
+        return fit_spliced(losses, family, tail_threshold, truncation, censored, tail)
+
+    return _ranked(families, fit, "severity")
+
+
+def compare_frequencies(
+    counts: Floats, families: Sequence[str], exposure: Floats | None = None
+) -> Candidates[FrequencyFit]:
+    """Fit each frequency family and rank the fits by AIC.
+
+    Args:
+        counts, exposure: as for `fit_frequency`.
+        families: names of families, each once.
+
+    Raises:
+        InputError: unusable data, no family, or an unknown one.
+        FitError: no family has a fit; `tried` gives the reason of each.
+    """
+    return _ranked(families, lambda family: fit_frequency(counts, family, exposure), "frequency")
+
+
+def _ranked(families: Sequence[str], fit: Callable[[str], AnyFit], what: str) -> Candidates[AnyFit]:
+    names = [families] if isinstance(families, str) else list(families)
+    if not names or len(set(names)) != len(names):
+        raise InputError(
+            f"{what} families must be a list of different names",
+            value=names,
+            remedy="Name each family to compare once.",
+        )
+    fits: list[AnyFit] = []
+    refused: dict[str, str] = {}
+    for name in names:
+        try:
+            fits.append(fit(name))
+        except FitError as refusal:
+            refused[name] = str(refusal)
+    if not fits:
+        raise FitError(
+            f"none of the {what} families can be fitted",
+            value=names,
+            remedy="Read the reasons, name other families, or give the law.",
+            tried=tuple(f"{name}: {why}" for name, why in refused.items()),
+        )
+    return Candidates(tuple(sorted(fits, key=lambda candidate: candidate.aic)), refused)

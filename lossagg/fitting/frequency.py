@@ -1,0 +1,90 @@
+"""Fit the number of losses per year by maximum likelihood, with the exposure of each year."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+import numpy as np
+
+from lossagg.arrays import Floats
+from lossagg.errors import InputError
+from lossagg.families import Poisson
+from lossagg.fitting.binomial import fit_binomial
+from lossagg.fitting.counts import Counts, counts_of, poisson_at_rate
+from lossagg.fitting.negative_binomial import fit_negative_binomial
+from lossagg.fitting.results import FrequencyFit
+
+FAMILIES = ("poisson", "negative-binomial", "binomial")
+
+
+def fit_frequency(
+    counts: Floats,
+    family: str,
+    exposure: Floats | None = None,
+    *,
+    fixed: Mapping[str, float] | None = None,
+) -> FrequencyFit:
+    """Fit a count law to the losses counted per year.
+
+    The law it hands back is for a year of exposure 1; `fit.model_for(exposure)` gives any other. A
+    record without a single loss never gives rate 0: the Poisson fit then uses the mean of the
+    posterior under Jeffreys' prior, (losses + 1/2) / exposure, says so, and `upper_rate()` bounds it.
+
+    Args:
+        counts: losses per year, whole numbers, shape (n,); 0 for a year without losses.
+        family: "poisson", "negative-binomial" or "binomial".
+        exposure: exposure of each year, above 0, shape (n,); None where all years are alike.
+        fixed: {"trials": n} for "binomial", the trials at exposure 1; else they are estimated.
+
+    Raises:
+        InputError: counts or exposures that cannot be used, or an unknown family.
+        FitError: the law is not supported by the counts; the message names one that is.
+    """
+    sample = counts_of(counts, exposure)
+    held = dict(fixed or {})
+    if family not in FAMILIES:
+        raise InputError(
+            "unknown frequency family", value=family, remedy=f"Choose one of {', '.join(FAMILIES)}."
+        )
+    if set(held) - ({"trials"} if family == "binomial" else set()):
+        raise InputError(
+            f"the {family} fit cannot hold this fixed",
+            value=sorted(held),
+            remedy='Only {"trials": n} of the binomial law can be held fixed.',
+        )
+    if family == "poisson":
+        return _poisson(sample)
+    if family == "negative-binomial":
+        return fit_negative_binomial(sample)
+    return fit_binomial(sample, held.get("trials"))
+
+
+def _poisson(sample: Counts) -> FrequencyFit:
+    losses, exposure = sample.losses, sample.exposure
+    notes: tuple[str, ...] = ()
+    rate, variance = sample.rate, losses / exposure**2
+    if losses == 0:
+        rate, variance = 0.5 / exposure, 0.5 / exposure**2  # Gamma(1/2) posterior: Jeffreys 1946
+        upper = -np.log(0.05) / exposure
+        notes = (
+            f"No loss in {sample.years} years: the estimate of maximum likelihood is 0 and is not used. "
+            f"The model uses {rate:.4g}, the mean under Jeffreys' prior; the one-sided 95 % upper bound "
+            f"is {upper:.5g}.",
+        )
+    elif losses < 10:
+        notes = (f"Only {losses} losses: the rate is known to within a factor, see its interval.",)
+    return FrequencyFit(
+        family="poisson",
+        model=Poisson(mean=rate),
+        parameters={"mean": rate},
+        covariance=np.array([[variance]]),
+        log_likelihood=poisson_at_rate(sample, rate) - sample.log_factorials(),
+        estimated=1,
+        observations=sample.years,
+        gradient_norm=0.0,
+        ranges={"mean": "positive"},
+        notes=notes,
+        losses=losses,
+        exposure=exposure,
+        maximum_likelihood_mean=sample.rate,
+    )

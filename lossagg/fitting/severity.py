@@ -1,0 +1,235 @@
+"""Fit the size of one loss by maximum likelihood, with truncation and censoring taken as they are."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+
+import numpy as np
+
+from lossagg.arrays import Floats
+from lossagg.errors import FitError, InputError
+from lossagg.fitting.classic_laws import (
+    ExponentialLikelihood,
+    GammaLikelihood,
+    InverseGaussianLikelihood,
+    LognormalLikelihood,
+    ParetoLikelihood,
+)
+from lossagg.fitting.excess_laws import (
+    BurrLikelihood,
+    GeneralizedParetoLikelihood,
+    LomaxLikelihood,
+    WeibullLikelihood,
+)
+from lossagg.fitting.jets import Jet, variables
+from lossagg.fitting.likelihood import SizeLikelihood, log_likelihood
+from lossagg.fitting.maximise import Maximum, Objective, evaluate, maximise
+from lossagg.fitting.notes import severity_notes
+from lossagg.fitting.results import SeverityFit
+from lossagg.fitting.sample import Sample, checked_losses, sample_of
+
+FAMILIES = (
+    "exponential",
+    "lognormal",
+    "pareto",
+    "lomax",
+    "generalized-pareto",
+    "gamma",
+    "weibull",
+    "inverse-gaussian",
+    "burr",
+)
+_ORIGINS = {"pareto": "minimum", "generalized-pareto": "threshold"}
+_SEVERAL_STARTS = 20_000  # losses above which only the best start climbs, unless it fails
+
+
+def fit_severity(
+    losses: Floats,
+    family: str,
+    truncation: Floats | None = None,
+    censored: object = None,
+    *,
+    fixed: Mapping[str, float] | None = None,
+) -> SeverityFit:
+    """Fit a size law to losses by maximum likelihood.
+
+    Use it on ground-up amounts in the money of one date. The law it hands back is ground-up too:
+    losses below the reporting threshold, which nobody recorded, are part of it. Standard errors come
+    from the observed information at the maximum. A fit is returned only when its maximum is
+    certified: information positive definite and gradient zero to rounding.
+
+    Args:
+        losses: amounts above 0, shape (n,); for a censored loss, the amount at which it stopped.
+        family: "exponential", "lognormal", "pareto", "lomax", "generalized-pareto", "gamma",
+            "weibull", "inverse-gaussian" or "burr".
+        truncation: the reporting threshold, one number or one per loss; None or 0 where every loss
+            was recorded. A loss equal to its threshold counts as recorded.
+        censored: one boolean per loss, True where the amount stopped at a policy limit.
+        fixed: {"minimum": m} for "pareto" or {"threshold": u} for "generalized-pareto". Without it
+            they are the smallest reporting threshold, or the smallest loss where there is none.
+
+    Raises:
+        InputError: losses, thresholds or marks that cannot be used, or an unknown family.
+        FitError: the likelihood has no maximum the data can support; `tried` tells what was tried.
+
+    Source: Klugman, Panjer & Willmot, Loss Models, chapters on maximum likelihood with truncated and
+    censored data.
+    """
+    amounts, thresholds, marks = checked_losses(losses, truncation, censored)
+    sample = sample_of(amounts, thresholds, marks)
+    likelihood, borrowed = likelihood_of(family, sample, fixed or {})
+    require_support(sample, family, len(likelihood.ranges))
+    maximum = climb(
+        lambda point: log_likelihood(likelihood, sample, point),
+        likelihood.starts(sample),
+        sample.observations,
+        family,
+        likelihood,
+    )
+    inner = likelihood.inner(variables(maximum.point))
+    held = likelihood.fixed(sample.scale)
+    parameters, covariance = natural_parameters(likelihood.natural(inner, sample.scale), maximum)
+    names = [*likelihood.ranges, *held]
+    complete = np.zeros((len(names), len(names)))
+    complete[: len(covariance), : len(covariance)] = covariance
+    values = dict(zip(names, [*parameters, *held.values()], strict=True))
+    model = likelihood.law(**values)
+    return SeverityFit(
+        family=family,
+        model=model,
+        parameters=values,
+        covariance=complete,
+        fixed=tuple(held),
+        log_likelihood=maximum.value - sample.count * float(np.log(sample.scale)),
+        estimated=len(likelihood.ranges) + borrowed,
+        observations=sample.observations,
+        gradient_norm=maximum.distance,
+        ranges=likelihood.ranges,
+        censored=sample.censored,
+        truncation=threshold_range(sample),
+        notes=severity_notes(model, sample, values, complete, _ORIGINS[family] if borrowed else ""),
+    )
+
+
+def likelihood_of(family: str, sample: Sample, fixed: Mapping[str, float]) -> tuple[SizeLikelihood, bool]:
+    """The likelihood of a family, and whether a fixed parameter was read off the smallest loss."""
+    unknown = set(fixed) - {_ORIGINS.get(family, "")}
+    if unknown:
+        allowed = f"only {_ORIGINS[family]!r}" if family in _ORIGINS else "none of its parameters"
+        raise InputError(
+            f"the {family} fit holds {allowed} fixed", value=sorted(unknown), remedy="Remove the others."
+        )
+    if family in _ORIGINS:
+        return _with_origin(family, sample, fixed)
+    spread = float(np.sqrt(sample.log_squares / sample.count)) or 1.0
+    makers: dict[str, Callable[[], SizeLikelihood]] = {
+        "exponential": ExponentialLikelihood,
+        "lognormal": lambda: LognormalLikelihood(sample.log_sum / sample.count, spread),
+        "lomax": LomaxLikelihood,
+        "gamma": GammaLikelihood,
+        "weibull": WeibullLikelihood,
+        "inverse-gaussian": InverseGaussianLikelihood,
+        "burr": BurrLikelihood,
+    }
+    if family not in makers:
+        raise InputError(
+            "unknown severity family", value=family, remedy=f"Choose one of {', '.join(FAMILIES)}."
+        )
+    return makers[family](), False
+
+
+def _with_origin(family: str, sample: Sample, fixed: Mapping[str, float]) -> tuple[SizeLikelihood, bool]:
+    name = _ORIGINS[family]
+    borrowed = not fixed and sample.floor == 0
+    given = float(fixed[name]) / sample.scale if fixed else sample.floor
+    origin = sample.smallest if borrowed else given
+    low_enough = origin > 0 if family == "pareto" else origin >= 0
+    if not low_enough or not origin <= sample.smallest:
+        raise InputError(
+            f"the {name} of the {family} fit must be {'above 0' if family == 'pareto' else '0 or above'}, "
+            "and no loss may lie below it",
+            value=origin * sample.scale,
+            remedy=f"Pass only losses above the {name}; the smallest is {sample.smallest * sample.scale:g}.",
+        )
+    maker = ParetoLikelihood if family == "pareto" else GeneralizedParetoLikelihood
+    return maker(origin), borrowed
+
+
+def require_support(sample: Sample, family: str, parameters: int) -> None:
+    """Refuse losses too few or too equal for the number of parameters.
+
+    Raises:
+        FitError: fewer distinct uncensored losses than parameters, or all losses equal.
+    """
+    distinct = len(np.unique(sample.exact))
+    if distinct < parameters:
+        raise FitError(
+            f"the {family} law has {parameters} free parameters and the uncensored losses have "
+            f"{distinct} distinct amount{'s' if distinct != 1 else ''}",
+            value=f"{sample.count} uncensored losses",
+            remedy="Use a law with fewer parameters, pool with similar lines, or give the law.",
+        )
+    if distinct == 1 and sample.observations > 1 and not sample.censored:
+        raise FitError(
+            "all losses are equal",
+            value=float(sample.exact[0] * sample.scale),
+            remedy="Check for a limit or a placeholder in the records; a fixed amount is a SizeTable.",
+        )
+    if sample.exact[-1] <= sample.floor:
+        raise FitError(
+            "every uncensored loss equals the reporting threshold",
+            value=float(sample.floor * sample.scale),
+            remedy="The size above the threshold does not show: check the amounts and the threshold.",
+        )
+
+
+def climb(
+    objective: Objective,
+    starts: list[np.ndarray],
+    observations: int,
+    family: str,
+    likelihood: SizeLikelihood,
+) -> Maximum:
+    """The highest certified maximum reached from the best starts.
+
+    Raises:
+        FitError: no start led to one; `tried` names each start's end.
+    """
+    ranked = sorted(starts, key=lambda start: -evaluate(objective, start))[:4]
+    certified: list[Maximum] = []
+    tried: list[str] = []
+    for start in ranked:
+        maximum = maximise(objective, start)
+        with np.errstate(all="ignore"):
+            objection = likelihood.objection(likelihood.inner(variables(maximum.point)))
+        failure = objection or maximum.failure
+        tried.append(
+            f"from {np.round(start, 3).tolist()}: {failure or f'log-likelihood {maximum.value:.6f}'}"
+        )
+        if not failure:
+            certified.append(maximum)
+            if observations > _SEVERAL_STARTS:
+                break
+    highest = max(certified, key=lambda maximum: maximum.value, default=None)
+    if highest is None:
+        reason = tried[0].split(": ", 1)[1]
+        raise FitError(
+            f"the {family} likelihood has no maximum on these losses: {reason}",
+            value=f"{observations} losses",
+            remedy=f"Fit {likelihood.nearest} instead, or use more losses or a lower threshold.",
+            tried=tuple(tried),
+        )
+    return highest
+
+
+def natural_parameters(parameters: tuple[Jet, ...], maximum: Maximum) -> tuple[list[float], np.ndarray]:
+    """Estimates with their covariance by the delta method, from jets at the maximum."""
+    slopes = np.stack([parameter.gradient[:, 0] for parameter in parameters])
+    return [float(parameter.value[0]) for parameter in parameters], slopes @ maximum.covariance @ slopes.T
+
+
+def threshold_range(sample: Sample) -> tuple[float, float] | None:
+    """Smallest and largest reporting threshold in money; None where there is none."""
+    if not len(sample.thresholds.points):
+        return None
+    return sample.floor * sample.scale, float(sample.thresholds.points[-1]) * sample.scale
