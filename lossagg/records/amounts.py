@@ -55,7 +55,7 @@ class NumberStyle:
             self.thousands not in _THOUSANDS or self.thousands == self.decimal
         ):
             raise InputError(
-                "the thousands mark must be a comma, a point, a space or an apostrophe, and not the decimal mark",
+                "the thousands mark must be a comma, point, space or apostrophe, and not the decimal mark",
                 value=self.thousands,
                 remedy='Declare it as written in the file, for example thousands = ",".',
             )

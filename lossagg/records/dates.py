@@ -108,10 +108,10 @@ def _pattern(date_format: str) -> str:
             value=date_format,
             remedy=f'Use %Y, %m (or %b for Jan, Feb, ...) and %d, for example "%d/%m/%Y".{year}',
         )
-    # Without a mark between them only full digits tell the parts apart.
-    tight = "" not in [piece for piece in pieces[1:-1:1] if not piece.startswith("%")]
     body = "".join(_PARTS.get(piece) or re.escape(piece) for piece in pieces)
-    return "^" + (body if tight else body.replace("{1,2}", "{2}")) + "$"
+    # Without a mark between them only full digits tell the parts apart.
+    separated = "" not in pieces[2:-1:2]
+    return "^" + (body if separated else body.replace("{1,2}", "{2}")) + "$"
 
 
 def _extract(text: Any, pattern: str) -> dict[str, npt.NDArray[np.object_]]:
@@ -138,8 +138,8 @@ def _days(
 ) -> tuple[DateArray, BoolArray]:
     """Days from year, month and day (proleptic Gregorian), and whether there is such a day."""
     within = (year >= 1) & (month >= 1) & (month <= 12) & (day >= 1)
-    months = ((year - 1970) * 12 + np.where(within, month, 1) - 1).astype("datetime64[M]")
-    last = ((months + 1).astype("datetime64[D]") - months.astype("datetime64[D]")).astype(np.int64)
-    possible: BoolArray = within & (day <= last)
-    days: DateArray = months.astype("datetime64[D]") + (day - 1)
-    return days, possible
+    month_number = (year - 1970) * 12 + np.where(within, month, 1) - 1
+    first = month_number.astype("datetime64[M]").astype("datetime64[D]").astype(np.int64)
+    after = (month_number + 1).astype("datetime64[M]").astype("datetime64[D]").astype(np.int64)
+    possible: BoolArray = within & (day <= after - first)
+    return (first + day - 1).astype("datetime64[D]"), possible

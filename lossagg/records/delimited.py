@@ -64,7 +64,9 @@ def read_delimited(data: bytes, file: str, layout: Layout, choose: Choose) -> Ra
     headings = _headings(reader, decoded.text, delimiter, file)
     builder = TableBuilder(file, None, headings, choose(headings, None))
     if decoded.mark:
-        builder.note("byte-order-mark", f"a byte order mark says {decoded.mark}; it is not data", "None needed.")
+        builder.note(
+            "byte-order-mark", f"a byte order mark says {decoded.mark}; it is not data", "None needed."
+        )
     if delimiter != ",":
         name = DELIMITERS.get(delimiter, repr(delimiter))
         builder.note("delimiter", f"the fields are divided by a {name}", "None needed.")
@@ -203,7 +205,7 @@ def _refuse_nul(text: str, file: str) -> None:
         raise InputError(
             "the file contains a NUL character",
             where=f"{place(file=file)}, line {text.count(chr(10), 0, at) + 1}",
-            remedy="The file is damaged, not text, or in UTF-16 without a byte order mark: declare its encoding.",
+            remedy="The file is damaged or no text; if it is UTF-16 without a byte order mark, declare that.",
         )
 
 
@@ -219,7 +221,7 @@ def _check_delimiter(delimiter: str, file: str) -> None:
 
 def _sniff(text: str, file: str) -> str:
     """Find the only delimiter that divides the headings and every one of the next rows alike."""
-    candidates = [d for d in DELIMITERS if _shape(text, d, 1) > {1}]
+    candidates = [d for d in DELIMITERS if max(_shape(text, d, 1)) > 1]
     if len(candidates) > 1:
         candidates = [d for d in candidates if len(_shape(text, d, _SNIFFED)) == 1] or candidates
     if len(candidates) == 1:
@@ -240,5 +242,5 @@ def _shape(text: str, delimiter: str, rows: int) -> set[int]:
     try:
         widths = [len(row) for row in islice(_reader(text, delimiter), rows) if row]
     except csv.Error:
-        return {0, 1}
+        return {1, 0}
     return set(widths) or {1}

@@ -171,5 +171,5 @@ def _missing(name: str, headings: Sequence[str], where: str) -> InputError:
     if any(_LIKE_DATA.match(heading) for heading in headings):
         remedy = "The first row looks like data: add a row of headings above it."
     else:
-        remedy = f"{nearest(name, headings)} Rename the heading or map it: {name} = \"...\"."
+        remedy = f'{nearest(name, headings)} Rename the heading or map it: {name} = "...".'
     return InputError(f"the required column {name!r} is missing", where=where, remedy=remedy)

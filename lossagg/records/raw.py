@@ -55,6 +55,7 @@ class RawTable:
 
     Args:
         headings: every heading, as it stands in the file.
+        positions: {canonical name: position of its column from 0}.
         columns: {canonical name: column}.
         row: row of the file, headings being row 1; shape (rows,).
         empty: True for rows without any content; shape (rows,).
@@ -65,6 +66,7 @@ class RawTable:
     """
 
     headings: tuple[str, ...]
+    positions: Mapping[str, int]
     columns: Mapping[str, TextColumn]
     row: IntArray
     empty: BoolArray
@@ -130,6 +132,7 @@ class TableBuilder:
         }
         return RawTable(
             self.headings,
+            self.positions,
             columns,
             np.arange(FIRST_ROW, FIRST_ROW + rows, dtype=np.int64),
             empty[:rows],

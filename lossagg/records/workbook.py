@@ -138,7 +138,9 @@ def _check_package(path: Path) -> None:
     names = [member.filename.lower() for member in members]
     if "xl/workbook.xml" not in names:
         raise InputError(
-            "the file is a zip package but no workbook", where=place(file=path.name), remedy="Save it as .xlsx."
+            "the file is a zip package but no workbook",
+            where=place(file=path.name),
+            remedy="Save it as .xlsx.",
         )
     if any("vbaproject" in name or "macrosheets/" in name for name in names):
         raise InputError(

@@ -1,0 +1,135 @@
+"""Claims of one event are one loss: they are summed before any threshold, limit or deductible applies."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from lossagg.arrays import BoolArray, FloatArray, IntArray
+from lossagg.records.dates import DateArray
+from lossagg.records.money import DecimalArray, exact_sum
+from lossagg.records.table import LossTable
+
+OPEN = ("open", "reopened", "re-opened")
+CLOSED = ("closed", "settled", "final")
+
+
+@dataclass(frozen=True)
+class Events:
+    """Events made of the used rows of one table, in no particular order; arrays of shape (events,).
+
+    Args:
+        index: event of each used row; shape (used rows,).
+        identifier: event as named in the file, "" for a row that is its own event.
+        date: date of the earliest claim.
+        last: date of the latest claim.
+        amount: the nearest float64 of the exact sum of the claims.
+        exact: exact sum of the claims.
+        threshold: largest threshold recorded for a claim of the event, NaN where none is.
+        censored: True where a claim of the event reached its policy limit.
+        claims: number of claims.
+        open: number of claims whose status is open.
+    """
+
+    index: IntArray
+    identifier: npt.NDArray[np.object_]
+    date: DateArray
+    last: DateArray
+    amount: FloatArray
+    exact: DecimalArray
+    threshold: FloatArray
+    censored: BoolArray
+    claims: IntArray
+    open: IntArray
+
+    def __len__(self) -> int:
+        """Number of events."""
+        return len(self.amount)
+
+
+def group_events(table: LossTable, used: BoolArray) -> Events:
+    """Sum the claims of each event over the rows that are used.
+
+    Rows without an event identifier are their own event. Rows of different lines never share one:
+    give the rows of one line, or rows whose `line` tells them apart.
+
+    Args:
+        table: the records.
+        used: True for the rows to use; shape (rows,).
+
+    Returns:
+        The events. Sums are exact, so they do not depend on the order of the rows.
+    """
+    rows = np.flatnonzero(used)
+    index, first = _number_events(table, rows)
+    size = len(first)
+    claims = np.bincount(index, minlength=size).astype(np.int64)
+    exact, amount = _sums(table, rows, index, first, claims)
+    date = table.date[rows].astype(np.int64)
+    threshold = np.full(size, -np.inf)
+    np.maximum.at(threshold, index, _or(table.number("threshold")[rows], -np.inf))
+    limit = table.number("policy-limit")[rows]
+    reached = table.amount[rows] >= limit
+    return Events(
+        index=index,
+        identifier=table.word("event")[rows[first]] if size else np.zeros(0, dtype=np.object_),
+        date=_extreme(np.minimum, date, index, size),
+        last=_extreme(np.maximum, date, index, size),
+        amount=amount,
+        exact=exact,
+        threshold=np.where(np.isinf(threshold), np.nan, threshold),
+        censored=np.bincount(index, weights=reached, minlength=size) > 0,
+        claims=claims,
+        open=np.bincount(index, weights=is_open(table)[rows], minlength=size).astype(np.int64),
+    )
+
+
+def is_open(table: LossTable) -> BoolArray:
+    """True for rows whose status says that the claim is open; shape (rows,)."""
+    return np.array([text.casefold() in OPEN for text in table.word("status").tolist()], dtype=np.bool_)
+
+
+def _number_events(table: LossTable, rows: IntArray) -> tuple[IntArray, IntArray]:
+    """Number the events; return the event of each row and the first row of each event."""
+    identifiers = table.word("event")[rows].tolist()
+    lines = table.word("line")[rows].tolist()
+    known: dict[tuple[str, str], int] = {}
+    index = np.empty(len(rows), dtype=np.int64)
+    first: list[int] = []
+    for at, key in enumerate(zip(identifiers, lines, strict=True)):
+        number = known.get(key) if key[0] else None
+        if number is None:
+            number = len(first)
+            first.append(at)
+            if key[0]:
+                known[key] = number
+        index[at] = number
+    return index, np.array(first, dtype=np.int64)
+
+
+def _sums(
+    table: LossTable, rows: IntArray, index: IntArray, first: IntArray, claims: IntArray
+) -> tuple[DecimalArray, FloatArray]:
+    exact = table.exact[rows][first]
+    amount = table.amount[rows][first].copy()
+    several = claims > 1
+    parts: dict[int, list[int]] = {}
+    for at in np.flatnonzero(several[index]).tolist():
+        parts.setdefault(int(index[at]), []).append(at)
+    for event, members in parts.items():
+        exact[event] = exact_sum(table.exact[rows[members]])
+        amount[event] = float(exact[event])
+    return exact, amount
+
+
+def _extreme(function: np.ufunc, date: IntArray, index: IntArray, size: int) -> DateArray:
+    far = np.iinfo(np.int64)
+    result = np.full(size, far.max if function is np.minimum else far.min, dtype=np.int64)
+    function.at(result, index, date)
+    return result.astype("datetime64[D]")
+
+
+def _or(values: FloatArray, other: float) -> FloatArray:
+    return np.where(np.isnan(values), other, values)

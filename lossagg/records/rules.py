@@ -1,0 +1,347 @@
+"""The rules for rows: each names the rows at fault and what becomes of them.
+
+The rules stand in the order in which they claim a row: a row is set aside once, for the first reason.
+Bounds are common practice of the trade, without a source, unless one is named.
+"""
+
+from __future__ import annotations
+
+import datetime as dt
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from lossagg.arrays import BoolArray
+from lossagg.records.events import CLOSED, OPEN, group_events, is_open
+from lossagg.records.faults import Fault
+from lossagg.records.headings import nearest
+from lossagg.records.table import LossTable
+
+CENT = 0.01
+LARGEST = 1e18
+EARLIEST = np.datetime64("1900-01-01")
+
+
+@dataclass(frozen=True, kw_only=True)
+class CheckTerms:
+    """What the records are checked against.
+
+    Args:
+        valuation_date: last day the records describe.
+        currency: currency of the portfolio.
+        lines: names of the lines that share the file; None when all rows are of one line.
+        first_years: {line: first year of its observation window}, where declared; the key is "" when
+            all rows are of one line.
+        tolerance: largest share of rows, and of money, that may be set aside for faults.
+    """
+
+    valuation_date: dt.date
+    currency: str
+    lines: tuple[str, ...] | None
+    first_years: Mapping[str, int]
+    tolerance: float
+
+    def first_year_of(self, line: str | None) -> int | None:
+        """First year of the observation window of a line, None when it is not declared."""
+        if line is None and self.lines is not None and len(self.lines) == 1:
+            line = self.lines[0]
+        return self.first_years.get(line or "")
+
+
+def row_faults(table: LossTable, terms: CheckTerms) -> list[Fault]:
+    """Apply every rule that looks at one row alone, and the rules on repeated rows.
+
+    Returns:
+        The faults, those of reading first; only those with rows at fault.
+    """
+    live = ~table.blank
+    faults = [
+        *table.faults,
+        *_words(table, terms, live),
+        *_amounts(table, live),
+        *_dates(table, terms, live),
+        *_money(table, live),
+        *_status(table, live),
+        *_repeated(table, live),
+    ]
+    return [fault for fault in faults if fault.mask.any()]
+
+
+def below_threshold(table: LossTable, used: BoolArray, default: float = 0.0) -> Fault:
+    """Find the events that are smaller than their reporting threshold, which contradicts it.
+
+    Args:
+        table: the records.
+        used: True for the rows used so far; shape (rows,).
+        default: threshold of the rows that carry none.
+
+    Returns:
+        The fault; it takes all rows of such an event.
+    """
+    mask = np.zeros(len(table), dtype=np.bool_)
+    if default > 0 or "threshold" in table.numbers:
+        events = group_events(table, used)
+        threshold = np.where(np.isnan(events.threshold), default, events.threshold)
+        mask[used] = (events.amount < threshold)[events.index]
+    return Fault(
+        "below-threshold",
+        "set aside",
+        "amount",
+        mask,
+        "the loss (all claims of its event) is below its reporting threshold",
+        "Records below the threshold contradict it; lower the threshold if they are complete.",
+    )
+
+
+def _amounts(table: LossTable, live: BoolArray) -> list[Fault]:
+    amount = table.amount
+    finite = np.isfinite(amount) & live
+    return [
+        Fault(
+            "negative-amount",
+            "set aside",
+            "amount",
+            finite & (amount < 0),
+            "the amount is negative",
+            "Give recoveries in their own column and amounts gross of them.",
+        ),
+        Fault(
+            "nil-claim",
+            "set aside",
+            "amount",
+            finite & (amount == 0),
+            "the amount is zero: closed without payment, counted apart and no loss",
+            "None needed; frequency and severity are those of losses above zero.",
+            tolerated=True,
+        ),
+        Fault(
+            "large-amount",
+            "set aside",
+            "amount",
+            finite & (amount > LARGEST),
+            f"the amount is above {LARGEST:g}",
+            "Correct it, or give amounts in a larger unit.",
+        ),
+    ]
+
+
+def _dates(table: LossTable, terms: CheckTerms, live: BoolArray) -> list[Fault]:
+    date = table.date
+    valuation = np.datetime64(terms.valuation_date)
+    faults = [
+        Fault(
+            "early-date",
+            "set aside",
+            "date",
+            live & (date < EARLIEST),
+            "the date is before 1900",
+            "Correct it.",
+        ),
+        Fault(
+            "future-date",
+            "set aside",
+            "date",
+            live & (date > valuation),
+            f"the date is after the valuation date {terms.valuation_date.isoformat()}",
+            "Correct it, or the valuation date.",
+        ),
+    ]
+    for first_year in sorted(set(terms.first_years.values())):
+        lines = [line for line, year in terms.first_years.items() if year == first_year]
+        mine = np.isin(table.word("line").astype(str), lines)
+        begins = np.datetime64(f"{first_year:04d}-01-01")
+        faults.append(
+            Fault(
+                "outside-window",
+                "set aside",
+                "date",
+                live & mine & (date < begins),
+                f"the date is before the observation window, which begins in {first_year}",
+                "None needed if the window is meant so.",
+                tolerated=True,
+            )
+        )
+    if "reported" in table.dates:
+        reported = table.dates["reported"]
+        faults += [
+            Fault(
+                "reported-early",
+                "set aside",
+                "reported",
+                live & (reported < date),
+                "the loss is reported before it occurred",
+                "Correct one of the dates.",
+            ),
+            Fault(
+                "reported-late",
+                "set aside",
+                "reported",
+                live & (reported > valuation),
+                f"the loss is reported after the valuation date {terms.valuation_date.isoformat()}",
+                "Correct it, or the valuation date.",
+            ),
+        ]
+    return faults
+
+
+def _money(table: LossTable, live: BoolArray) -> list[Fault]:
+    amount = table.amount
+    parts = table.number("paid") + table.number("outstanding")
+    # A float64 sum of two amounts is off by a few parts in 1e16, which is no difference in money.
+    slack = CENT * (1 + 1e-6) + 1e-12 * np.abs(amount)
+    return [
+        Fault(
+            "negative-threshold",
+            "set aside",
+            "threshold",
+            live & (table.number("threshold") < 0),
+            "the threshold is negative",
+            "Correct it.",
+        ),
+        Fault(
+            "above-limit",
+            "set aside",
+            "amount",
+            live & (amount > table.number("policy-limit")),
+            "the amount is above its policy limit",
+            "Correct one of them; if amounts are before the limit, leave the limit out.",
+        ),
+        Fault(
+            "recoveries-above-gross",
+            "set aside",
+            "recoveries",
+            live & (table.number("recoveries") > amount),
+            "the recoveries exceed the gross amount",
+            "Give amounts gross of recoveries.",
+        ),
+        Fault(
+            "negative-recoveries",
+            "warn",
+            "recoveries",
+            live & (table.number("recoveries") < 0),
+            "the recoveries are negative",
+            "Give recoveries as positive numbers; amounts are used gross of them in any case.",
+        ),
+        Fault(
+            "parts-differ",
+            "set aside",
+            "amount",
+            live & (np.abs(parts - amount) > slack),
+            f"paid and outstanding do not add to the amount within {CENT}",
+            "Correct one of the three.",
+        ),
+    ]
+
+
+def _status(table: LossTable, live: BoolArray) -> list[Fault]:
+    if "status" not in table.words:
+        return []
+    status = [text.casefold() for text in table.words["status"].tolist()]
+    known = np.array([text in (*OPEN, *CLOSED, "") for text in status], dtype=np.bool_)
+    closed = np.array([text in CLOSED for text in status], dtype=np.bool_)
+    return [
+        Fault(
+            "unknown-status",
+            "warn",
+            "status",
+            live & ~known,
+            "the status is not understood and counts as not open",
+            f"Use {', '.join((*OPEN, *CLOSED))}.",
+        ),
+        Fault(
+            "closed-with-reserve",
+            "warn",
+            "outstanding",
+            live & closed & (table.number("outstanding") > 0),
+            "the claim is closed but has an outstanding amount",
+            "Correct the status or the reserve.",
+        ),
+        Fault(
+            "open-without-reserve",
+            "warn",
+            "outstanding",
+            live & is_open(table) & (table.number("outstanding") == 0),
+            "the claim is open but nothing is outstanding",
+            "Check that the amount is not final only in appearance.",
+        ),
+    ]
+
+
+def _words(table: LossTable, terms: CheckTerms, live: BoolArray) -> list[Fault]:
+    faults = []
+    if "currency" in table.words:
+        written = table.words["currency"]
+        other = np.array([w.upper() != terms.currency.upper() for w in written.tolist()], dtype=np.bool_)
+        empty = written == ""
+        faults = [
+            Fault(
+                "other-currency",
+                "stop",
+                "currency",
+                live & other & ~empty,
+                f"the currency is not that of the portfolio, {terms.currency}",
+                "Convert the amounts at dated rates first, or split the file.",
+            ),
+            Fault(
+                "missing-currency",
+                "set aside",
+                "currency",
+                live & empty,
+                "the currency is missing",
+                "Supply it, or leave the column out if all amounts are in one currency.",
+            ),
+        ]
+    return faults
+
+
+def line_faults(table: LossTable, lines: tuple[str, ...]) -> list[Fault]:
+    """Find the rows whose line is not one of the portfolio, name by name; all of them stop."""
+    if "line" not in table.words:
+        return []
+    written, live = table.words["line"].tolist(), ~table.blank
+    known = canonical_lines(lines)
+    unknown = np.array([word.casefold() not in known for word in written], dtype=np.bool_)
+    names = sorted({written[index] for index in np.flatnonzero(live & unknown).tolist()})
+    faults = []
+    for name in names:
+        mask = live & np.array([word == name for word in written], dtype=np.bool_)
+        message = "the line is not one of the portfolio" if name else "the line is missing"
+        faults.append(Fault("unknown-line", "stop", "line", mask, message, nearest(name, lines)))
+    return faults
+
+
+def canonical_lines(lines: Sequence[str]) -> Mapping[str, str]:
+    """{line as compared: line as the portfolio names it}."""
+    return {name.strip().casefold(): name for name in lines}
+
+
+def _repeated(table: LossTable, live: BoolArray) -> list[Fault]:
+    """Rows equal in every column: with an event identifier a copy, without one perhaps a twin."""
+    marks = table.fingerprint
+    cells = [table.date.astype(np.int64), np.nan_to_num(table.amount, nan=-1.0), marks]
+    order = np.lexsort((np.arange(len(table)), *cells))
+    same = np.ones(max(len(table) - 1, 0), dtype=np.bool_)
+    for cell in cells:
+        same &= cell[order][1:] == cell[order][:-1]
+    again = np.zeros(len(table), dtype=np.bool_)
+    again[order[1:]] = same
+    named = table.word("event") != ""
+    return [
+        Fault(
+            "duplicate-row",
+            "set aside",
+            "event" if "event" in table.words else None,
+            live & again & named,
+            "the row repeats an earlier one of the same event in every column",
+            "If both are claims of their own, give them an identifier that tells them apart.",
+        ),
+        Fault(
+            "twin-row",
+            "warn",
+            None,
+            live & again & ~named,
+            "the row repeats an earlier one in every column; without an event both are used",
+            "Give events identifiers, or delete the copy.",
+        ),
+    ]

@@ -1,0 +1,269 @@
+"""Loss records read from a file: typed columns beside the text they came from."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from lossagg.arrays import BoolArray, FloatArray, IntArray
+from lossagg.records.amounts import NumberStyle
+from lossagg.records.dates import DateArray
+from lossagg.records.faults import Fault, Rows, list_faults
+from lossagg.records.findings import Finding, raise_stops
+from lossagg.records.headings import Wanted, heading_findings, locate_columns
+from lossagg.records.money import DecimalArray, exact_sum
+from lossagg.records.raw import Choose, Layout, RawTable
+from lossagg.records.sources import Source, read_source
+from lossagg.records.typed import TypedColumns, WordArray, type_columns
+
+COLUMNS: Mapping[str, str] = {
+    "amount": "number",
+    "date": "date",
+    "event": "word",
+    "status": "word",
+    "paid": "number",
+    "outstanding": "number",
+    "recoveries": "number",
+    "reported": "date",
+    "threshold": "number",
+    "policy-limit": "number",
+    "line": "word",
+    "currency": "word",
+}
+_WANTED = Wanted(COLUMNS, ("amount", "date"))
+_TOTAL = re.compile(r"^(grand |sub ?-?)?(totals?|sum|somme|summe|gesamt|totale|total general)\b[ :.]*$", re.I)
+_SCIENTIFIC = r"^\d(\.\d+)?[eE]\+?\d+$"
+
+
+@dataclass(frozen=True)
+class LossTable:
+    """Loss records as read: one element per row of the file in every array.
+
+    Get one from `read_losses`; hand it to `check_losses`.
+
+    Args:
+        file: name of the file, without its folder.
+        sheet: sheet of the workbook, None for other files.
+        sha256: digest of the file.
+        row: row of the file, headings being row 1; shape (rows,).
+        headings: {canonical name: heading in the file}.
+        texts: {canonical name: cells as read}, Arrow arrays of shape (rows,).
+        numbers: {canonical name: float64}, NaN where there is no number; shape (rows,).
+        dates: {canonical name: days}, NaT where there is no date; shape (rows,).
+        words: {canonical name: text}, "" where there is none; shape (rows,).
+        exact: the amounts as written, as decimals, zero where there is none; shape (rows,).
+        unreadable: True where the amount is no number; shape (rows,).
+        blank: True for rows that carry no record: blank rows and a row of totals; shape (rows,).
+        fingerprint: equal for rows equal in every column of the file; shape (rows,).
+        faults: faults found in reading the cells.
+        findings: findings about the file as a whole.
+    """
+
+    file: str
+    sheet: str | None
+    sha256: str
+    row: IntArray
+    headings: Mapping[str, str]
+    texts: Mapping[str, Any]
+    numbers: Mapping[str, FloatArray]
+    dates: Mapping[str, DateArray]
+    words: Mapping[str, WordArray]
+    exact: DecimalArray
+    unreadable: BoolArray
+    blank: BoolArray
+    fingerprint: IntArray
+    faults: tuple[Fault, ...]
+    findings: tuple[Finding, ...]
+
+    def __len__(self) -> int:
+        """Number of rows read."""
+        return len(self.row)
+
+    def __repr__(self) -> str:
+        """One line: the file, its rows and the columns read."""
+        return f"LossTable({self.file!r}, rows={len(self)}, columns={sorted(self.headings)})"
+
+    @property
+    def rows(self) -> int:
+        """Number of rows read, without headings and without blank rows at the foot."""
+        return len(self)
+
+    @property
+    def amount(self) -> FloatArray:
+        """Amounts, gross of recoveries; NaN where missing; shape (rows,)."""
+        return self.numbers["amount"]
+
+    @property
+    def date(self) -> DateArray:
+        """Loss dates; NaT where missing; shape (rows,)."""
+        return self.dates["date"]
+
+    def number(self, name: str) -> FloatArray:
+        """A column of numbers, all NaN when the file does not have it; shape (rows,)."""
+        return self.numbers.get(name, np.full(len(self), np.nan))
+
+    def word(self, name: str) -> WordArray:
+        """A column of words, all empty when the file does not have it; shape (rows,)."""
+        return self.words.get(name, np.full(len(self), "", dtype=np.object_))
+
+    def places(self) -> Rows:
+        """What findings need to know of this table."""
+        return Rows(self.file, self.sheet, self.row, self.headings, self.texts, self.exact)
+
+
+def read_losses(
+    path: str | Path,
+    *,
+    columns: Mapping[str, str] | None = None,
+    sheet: str | None = None,
+    encoding: str | None = None,
+    delimiter: str | None = None,
+    decimal: str = ".",
+    thousands: str | None = None,
+    date_format: str | None = None,
+) -> LossTable:
+    """Read loss records from a CSV, TSV, XLSX or Parquet file, one row per loss.
+
+    `amount` and `date` are required; the other names of `COLUMNS` are understood. What is ambiguous is
+    not guessed: declare it.
+
+    Args:
+        path: the file.
+        columns: {canonical name: heading} where the file uses other headings.
+        sheet: sheet of a workbook with several.
+        encoding: encoding of a text file that is neither UTF-8 nor marked.
+        delimiter: delimiter of a text file where it is not clear.
+        decimal: decimal mark, "." or ",".
+        thousands: mark between groups of three digits, if any.
+        date_format: format of the dates unless ISO, made of %Y, %m (or %b) and %d.
+
+    Returns:
+        The table with the faults seen so far; check it with `check_losses`.
+
+    Raises:
+        InputError: the file cannot be read as declared (see the readers of each kind).
+        RecordsError: cells that are no numbers or dates in the declared form; names the first ones.
+        EnvironmentFault: the file cannot be opened.
+    """
+    style = NumberStyle(decimal, thousands)
+    path = Path(path)
+    layout = Layout(sheet=sheet, encoding=encoding, delimiter=delimiter)
+    source = read_source(path, layout, chooser(path.name, _WANTED, columns or {}))
+    raw = source.table
+    typed = type_columns(raw, COLUMNS, style, date_format, raw.empty)
+    total = _total_row(raw, typed)
+    if total.any():
+        typed = type_columns(raw, COLUMNS, style, date_format, raw.empty | total)
+    return _assemble(source, typed, total)
+
+
+def chooser(file: str, wanted: Wanted, mapping: Mapping[str, str]) -> Choose:
+    """Make the function that tells a reader which columns to keep, see `locate_columns`."""
+
+    def choose(headings: Sequence[str], sheet: str | None) -> Mapping[str, int]:
+        return locate_columns(headings, wanted, mapping, file, sheet)
+
+    return choose
+
+
+def file_findings(source: Source, wanted: Wanted) -> list[Finding]:
+    """Findings about the file as a whole: its repairs and the columns that are not read."""
+    raw = source.table
+    unread = heading_findings(raw.headings, raw.positions, wanted, source.file, raw.sheet)
+    return [*raw.findings, *unread]
+
+
+def _assemble(source: Source, typed: TypedColumns, total: BoolArray) -> LossTable:
+    raw = source.table
+    amount = typed.numbers["amount"]
+    unreadable = ~np.isfinite(amount.values)
+    faults = [*_row_faults(raw, typed, total), *typed.faults]
+    table = LossTable(
+        file=source.file,
+        sheet=raw.sheet,
+        sha256=source.sha256,
+        row=raw.row,
+        headings={name: raw.headings[position] for name, position in raw.positions.items()},
+        texts={name: column.text for name, column in raw.columns.items()},
+        numbers=typed.values,
+        dates=typed.dates,
+        words=typed.words,
+        exact=amount.exact(),
+        unreadable=unreadable,
+        blank=raw.empty | total,
+        fingerprint=raw.fingerprint,
+        faults=tuple(fault for fault in faults if fault.mask.any()),
+        findings=tuple(file_findings(source, _WANTED)),
+    )
+    raise_stops(list_faults([fault for fault in table.faults if fault.action == "stop"], table.places()))
+    return table
+
+
+def _row_faults(raw: RawTable, typed: TypedColumns, total: BoolArray) -> list[Fault]:
+    amount = typed.numbers["amount"]
+    live = ~(raw.empty | total)
+    faults = [
+        Fault("blank-row", "set aside", None, raw.empty, "the row is blank", "Delete it.", tolerated=True),
+        Fault(
+            "totals-row",
+            "set aside",
+            "amount",
+            total,
+            "the last row is a total of the others and would count every loss twice",
+            "Delete it.",
+            tolerated=True,
+        ),
+        Fault(
+            "missing-amount",
+            "set aside",
+            "amount",
+            amount.missing & live,
+            "the amount is missing",
+            "Supply it; a missing amount is not zero.",
+        ),
+        Fault(
+            "infinite-amount",
+            "set aside",
+            "amount",
+            amount.infinite & live,
+            "the amount is not finite",
+            "Correct it.",
+        ),
+    ]
+    if "event" in raw.columns:
+        import pyarrow.compute as pc
+
+        mask = pc.match_substring_regex(raw.columns["event"].text, pattern=_SCIENTIFIC)
+        faults.append(
+            Fault(
+                "identifier-form",
+                "warn",
+                "event",
+                np.asarray(mask.to_numpy(zero_copy_only=False), dtype=np.bool_) & live,
+                "the event looks like an identifier that a spreadsheet turned into a number",
+                "Export identifiers as text; different ones may have become the same.",
+            )
+        )
+    return faults
+
+
+def _total_row(raw: RawTable, typed: TypedColumns) -> BoolArray:
+    """Recognise a row of totals at the foot.
+
+    It is one if it is labelled so and lacks a date or equals the sum, or if it equals the sum of all
+    other amounts exactly and lacks a date or sums at least five.
+    """
+    total = np.zeros(len(raw.row), dtype=np.bool_)
+    amount = typed.numbers["amount"]
+    exact = amount.exact()
+    others = int(np.count_nonzero(np.isfinite(amount.values[:-1])))
+    undated = bool(np.isnat(typed.dates["date"][-1]))
+    is_sum = others >= 2 and exact[-1] != 0 and exact[-1] == exact_sum(exact[:-1])
+    labelled = any(_TOTAL.match(cell.strip()) for cell in raw.foot)
+    total[-1] = (labelled and (undated or is_sum)) or (is_sum and (undated or others >= 5))
+    return total
