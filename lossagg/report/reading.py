@@ -49,9 +49,14 @@ def absent(reason: str | None) -> Absent:
     return Absent(DOES_NOT_EXIST, reason if reason != DOES_NOT_EXIST else None)
 
 
-def existing(value: float | None) -> Cell:
-    """A number, or the words that it does not exist."""
-    return Absent(DOES_NOT_EXIST) if value is None else value
+def missing(assessment: Assessment) -> Absent:
+    """The words for a missing moment: withheld when the headline is, else it does not exist."""
+    return Absent(WITHHELD if assessment["headline"]["withheld"] else DOES_NOT_EXIST)
+
+
+def existing(value: float | None, missing: Absent) -> Cell:
+    """A number, or the words for its absence."""
+    return missing if value is None else value
 
 
 def computed(value: float | None) -> Cell:
@@ -71,19 +76,19 @@ def ranged(figure: Entry) -> Cell:
     return Ranged(figure["value"], figure.get("low"), figure.get("high"))
 
 
-def estimated(value: float | None, engine: str, sd: float | None, years: int) -> Cell:
+def estimated(value: float | None, engine: str, sd: float | None, years: int, missing: Absent) -> Cell:
     """A mean with the standard error that simulating `years` years leaves; exact engines leave none."""
     if value is None:
-        return Absent(DOES_NOT_EXIST)
+        return missing
     if engine in EXACT_ENGINES or not years:
         return Estimated(value, None)
     return Estimated(value, abs(value) / 100 if sd is None else sd / years**0.5)
 
 
-def chance(value: float | None, engine: str, years: int, words: str) -> Cell:
+def chance(value: float | None, engine: str, years: int, missing: Absent) -> Cell:
     """A probability of one simulated or computed year; none seen in a simulation is not zero."""
     if value is None:
-        return Absent(words)
+        return missing
     if engine in EXACT_ENGINES or not years:
         return Estimated(value, None)
     if value == 0:

@@ -6,7 +6,7 @@ from typing import Any
 
 from lossagg.report import digits
 from lossagg.report.cells import Absent, Cell, Column, Table
-from lossagg.report.reading import Assessment, chance, estimated, reasons
+from lossagg.report.reading import Assessment, chance, estimated, missing, reasons
 from lossagg.report.tables.totals import level_row
 
 CANNOT_EXHAUST = "cannot be exhausted"
@@ -64,16 +64,17 @@ def _after(names: list[str]) -> str:
 def results(assessment: Assessment) -> Table:
     """Expected cost of every cover, its spread, and how often it attaches and is exhausted."""
     currency, years = assessment["portfolio"]["currency"], assessment["run"]["years"]
-    rows: list[tuple[Cell, ...]] = []
+    gone, rows = missing(assessment), list[tuple[Cell, ...]]()
+    unlimited = gone if assessment["headline"]["withheld"] else Absent(CANNOT_EXHAUST)
     for cover in assessment["covers"]:
         engine = cover["engine"]
         rows.append(
             (
                 cover["name"],
-                estimated(cover["expected"], engine, cover["sd"], years),
-                estimated(cover["sd"], engine, None, years),
-                chance(cover["attachment_probability"], engine, years, "not computed"),
-                chance(cover["exhaustion_probability"], engine, years, CANNOT_EXHAUST),
+                estimated(cover["expected"], engine, cover["sd"], years, gone),
+                estimated(cover["sd"], engine, None, years, gone),
+                chance(cover["attachment_probability"], engine, years, gone),
+                chance(cover["exhaustion_probability"], engine, years, unlimited),
                 engine,
             )
         )
@@ -87,7 +88,8 @@ def results(assessment: Assessment) -> Table:
     )
     notes = (
         "Expected annual cost is what the cover pays on average in a year, without expenses or loadings. "
-        "Attachment: the cover pays at all in a year. Exhaustion: it pays its annual limit in full.",
+        "Attachment: the cover pays at all in a year. Exhaustion: it pays its annual limit in full; without "
+        "one, some event uses up the limit per event.",
     )
     return Table("Covers", f"Covers: cost, {currency} a year", columns, tuple(rows), notes)
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 from lossagg.report.cells import Absent, Cell, Column, Estimated, Ranged, Table
 from lossagg.report.reading import Assessment, Entry, text_or
@@ -14,9 +15,13 @@ ENGINES = ("fourier", "panjer", "simulation")
 def crosscheck(assessment: Assessment) -> Table:
     """What each engine says of each measure, and whether they agree."""
     currency = assessment["portfolio"]["currency"]
-    return crosscheck_rows(
-        assessment["crosscheck"]["comparisons"], "Crosscheck", f"Crosscheck of the engines, {currency}"
+    check = assessment["crosscheck"]
+    table = crosscheck_rows(check["comparisons"], "Crosscheck", f"Crosscheck of the engines, {currency}")
+    outside = tuple(
+        f"{entry['engine']} does not compute {entry['subject']}: {entry['reason']}."
+        for entry in check.get("refused", ())
     )
+    return replace(table, notes=(*table.notes, *outside))
 
 
 def crosscheck_rows(comparisons: Sequence[Entry], key: str, title: str) -> Table:

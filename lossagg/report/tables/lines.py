@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from lossagg.report import digits
 from lossagg.report.cells import Absent, Cell, Column, Estimated, Table, clean
-from lossagg.report.reading import Assessment, Entry, existing, reasons
+from lossagg.report.reading import Assessment, Entry, existing, missing, reasons
 from lossagg.report.tables.totals import level_row
 
 GIVEN = "given, not estimated"
@@ -24,7 +24,7 @@ def law_text(law: Entry) -> str:
 def overview(assessment: Assessment) -> Table:
     """Every line with its laws, expected number of losses, expected annual loss and spread."""
     currency = assessment["portfolio"]["currency"]
-    rows: list[tuple[Cell, ...]] = []
+    gone, rows = missing(assessment), list[tuple[Cell, ...]]()
     for line in assessment["lines"]:
         count, size = line["frequency"], line["severity"]
         rows.append(
@@ -33,9 +33,9 @@ def overview(assessment: Assessment) -> Table:
                 law_text(count),
                 law_text(size),
                 count["mean"],
-                existing(size["mean"]),
-                existing(line["mean"]),
-                existing(line["sd"]),
+                existing(size["mean"], Absent("does not exist")),
+                existing(line["mean"], gone),
+                existing(line["sd"], gone),
                 _tail(size),
             )
         )

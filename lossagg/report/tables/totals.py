@@ -9,6 +9,7 @@ from lossagg.report.reading import (
     absent,
     engine_range_name,
     estimated,
+    missing,
     ranged,
     reasons,
 )
@@ -39,9 +40,8 @@ def headline(assessment: Assessment) -> Table:
     """The capital figure and what it is measured on, one row."""
     entry, currency = assessment["headline"], assessment["portfolio"]["currency"]
     years = assessment["run"]["years"]
-    expected = estimated(
-        entry["mean"], assessment[entry["subject"]]["engine"], assessment[entry["subject"]]["sd"], years
-    )
+    total = assessment[entry["subject"]]
+    expected = estimated(entry["mean"], total["engine"], total["sd"], years, missing(assessment))
     cells: tuple[Cell, ...] = (
         assessment["portfolio"]["name"],
         entry["subject"],
@@ -101,14 +101,14 @@ def _range_notes(assessment: Assessment) -> tuple[str, ...]:
 def moments(assessment: Assessment) -> Table:
     """Expected annual loss and its standard deviation, gross and net."""
     currency, years = assessment["portfolio"]["currency"], assessment["run"]["years"]
-    rows: list[tuple[Cell, ...]] = []
+    gone, rows = missing(assessment), list[tuple[Cell, ...]]()
     for title, subject in SUBJECTS:
         entry = assessment[subject]
         rows.append(
             (
                 title,
-                estimated(entry["mean"], entry["engine"], entry["sd"], years),
-                estimated(entry["sd"], entry["engine"], None, years),
+                estimated(entry["mean"], entry["engine"], entry["sd"], years, gone),
+                estimated(entry["sd"], entry["engine"], None, years, gone),
                 entry["engine"],
                 "exact" if entry["exact"] else "simulated",
                 entry["note"] or "",
