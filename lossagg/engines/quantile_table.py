@@ -6,12 +6,13 @@ For each half of the distribution and each octave [2**-k-1, 2**-k) of the tail p
 needed). Since a quantile behaves like a power of t, the relative error is the same in every octave,
 about 0.004 a (a + 1) (a + 2) (a + 3) (cells)**-4 for t**-a.
 
-The error is measured at three points between the nodes of every cell. A cell is flagged, and its
-draws are evaluated by the law itself, where the size is off by more than 1e-8 of it and the tail
-probability by more than 1e-8 of it, and wherever an atom, a splice point or an end of the support
-falls. So is everything beyond the table, t < 2**-23, two losses in ten million. The traps: a kink
-hides between points of measurement, hence the law's own breakpoints; atoms of a law that is discrete
-throughout would flag everything, hence its exact search table.
+The error is measured at three points between the nodes of every cell. A cell fails where the size is
+off by more than 1e-8 of it and the tail probability by more than 1e-8 of it, and wherever an atom, a
+splice point or an end of the support falls. It is then split in 64; parts that fail again are
+flagged, and their draws evaluated by the law itself. So is everything beyond the table, t < 2**-23,
+two losses in ten million. The traps: a kink hides between points of measurement, hence the law's own
+breakpoints; atoms of a law that is discrete throughout would flag everything, hence its exact search
+table; an atom must come out as the very amount, since terms may jump there.
 """
 
 from __future__ import annotations
@@ -23,11 +24,11 @@ import numpy as np
 from lossagg.arrays import BoolArray, FloatArray
 from lossagg.engines.search_table import search_table
 from lossagg.families.base import SizeLaw
-from lossagg.kernels.draws import SizeArrays
+from lossagg.kernels.simulation import REFINED, SizeArrays
 
 DEPTH = 22
-SUB_BITS = (6, 7, 8)
-ENOUGH_UNFLAGGED = 0.005
+SUB_BITS = 6
+PARTS = int(REFINED)
 TOLERANCE = 1e-8
 LARGEST_SIZE = 1e300
 NODES = np.array([0.0, 0.25, 0.75, 1.0])
@@ -65,18 +66,12 @@ class QuantileTable:
 
 
 def quantile_table(law: SizeLaw) -> QuantileTable:
-    """The table of a law, as fine as it needs to be to leave few draws to exact evaluation."""
+    """The table of a law: cubics, or an exact search where every size is an atom."""
     if law.atoms and np.isclose(sum(p for _, p in law.atoms), 1.0, rtol=0.0, atol=1e-12):
         values = np.array(sorted(amount for amount, _ in law.atoms))
         first, survival = search_table(np.asarray(law.sf(values)))
         return QuantileTable(law, SizeArrays(np.empty((0, 4)), 0, 0, first, survival, values), 0.0, 0.0)
-    best = _cubic_table(law, SUB_BITS[0])
-    for sub_bits in SUB_BITS[1:]:
-        if best.flagged <= ENOUGH_UNFLAGGED:
-            break
-        finer = _cubic_table(law, sub_bits)
-        best = finer if finer.flagged < best.flagged else best
-    return best
+    return _cubic_table(law)
 
 
 def _quantile(law: SizeLaw, t: FloatArray, *, upper: bool) -> FloatArray:
@@ -88,35 +83,56 @@ def _quantile(law: SizeLaw, t: FloatArray, *, upper: bool) -> FloatArray:
     return np.minimum(sizes, LARGEST_SIZE)
 
 
-def _cubic_table(law: SizeLaw, sub_bits: int) -> QuantileTable:
-    cells = 2**sub_bits
+def _cubic_table(law: SizeLaw) -> QuantileTable:
+    cells = 2**SUB_BITS
     octaves = 2.0 ** np.arange(-1 - DEPTH, -1)
     left = (octaves[:, None] * (1.0 + np.arange(cells) / cells)).ravel()
     width = np.repeat(octaves / cells, cells)
-    halves, flagged, error = [], 0.0, 0.0
+    rows, flagged, error = [], 2.0 * float(octaves[0]), 0.0
+    failed = {}
     for upper in (True, False):
-        cubics = _cubics(law, left, width, upper=upper)
-        errors = _errors(law, cubics, left, width, upper=upper)
-        bad = ~(errors <= TOLERANCE) | _holds_a_break(law, left, width, upper=upper)
-        cubics[bad] = np.nan
-        flagged += float(width[bad].sum()) + float(octaves[0])
-        error = max(error, float(errors[~bad].max(initial=0.0)))
-        halves += [np.full((1, 4), np.nan), cubics]
+        cubics, bad, worst = _checked_cubics(law, left, width, upper=upper)
+        rows += [np.full((1, 4), np.nan), cubics]
+        failed[upper], error = np.flatnonzero(bad), max(error, worst)
+    base = 0
+    used = sum(part.shape[0] for part in rows)
+    table = np.concatenate(rows)
+    refined = [table]
+    for upper in (True, False):
+        cell = failed[upper]
+        part_left = (left[cell, None] + width[cell, None] * np.arange(PARTS) / PARTS).ravel()
+        part_width = np.repeat(width[cell] / PARTS, PARTS)
+        cubics, bad, worst = _checked_cubics(law, part_left, part_width, upper=upper)
+        table[base + 1 + cell, 1] = used + PARTS * np.arange(cell.size)
+        refined.append(cubics)
+        flagged, error = flagged + float(part_width[bad].sum()), max(error, worst)
+        base, used = base + 1 + left.size, used + cubics.shape[0]
     none = np.empty(0)
-    arrays = SizeArrays(np.concatenate(halves), sub_bits, DEPTH, np.empty(0, np.int64), none, none)
+    arrays = SizeArrays(np.concatenate(refined), SUB_BITS, DEPTH, np.empty(0, np.int64), none, none)
     return QuantileTable(law, arrays, flagged, error)
+
+
+def _checked_cubics(
+    law: SizeLaw, left: FloatArray, width: FloatArray, *, upper: bool
+) -> tuple[FloatArray, BoolArray, float]:
+    """(cubics with NaN where they fail, which fail, largest error of the others) of some cells."""
+    if left.size == 0:
+        return np.empty((0, 4)), np.empty(0, dtype=np.bool_), 0.0
+    cubics = _cubics(law, left, width, upper=upper)
+    errors = _errors(law, cubics, left, width, upper=upper)
+    bad = ~(errors <= TOLERANCE) | _holds_a_break(law, left, width, upper=upper)
+    cubics[bad] = np.nan
+    return cubics, bad, float(errors[~bad].max(initial=0.0))
 
 
 def _cubics(law: SizeLaw, left: FloatArray, width: FloatArray, *, upper: bool) -> FloatArray:
     """Coefficients by powers of the position in the cell, shape (cells, 4)."""
-    t = np.append((left[:, None] + width[:, None] * NODES[:3]).ravel(), left[-1] + width[-1])
-    exact = _quantile(law, t, upper=upper)
-    at_nodes = np.column_stack([exact[:-1].reshape(-1, 3), np.append(exact[3:-1:3], exact[-1])])
+    t = left[:, None] + width[:, None] * NODES
+    at_nodes = _quantile(law, t.ravel(), upper=upper).reshape(t.shape)
     with np.errstate(over="ignore", under="ignore", invalid="ignore"):
         cubics: FloatArray = np.ascontiguousarray(
             at_nodes @ np.linalg.inv(np.vander(NODES, increasing=True)).T
         )
-    # an atom must come out as the very amount: terms may jump there
     constant = (at_nodes == at_nodes[:, :1]).all(axis=1)
     cubics[constant] = 0.0
     cubics[constant, 0] = at_nodes[constant, 0]
@@ -148,12 +164,10 @@ def _holds_a_break(law: SizeLaw, left: FloatArray, width: FloatArray, *, upper: 
     holds = np.zeros(left.shape, dtype=np.bool_)
     if amounts.size == 0:
         return holds
-    ends = np.append(left, left[-1] + width[-1])
     below = np.nextafter(amounts, 0.0)
     for points in (amounts, below):
         t = np.asarray((law.sf if upper else law.cdf)(points))
-        cell = np.searchsorted(ends, t, side="right") - 1
-        inside = (cell >= 0) & (cell < left.size)
-        inside[inside] &= t[inside] > left[cell[inside]]
-        holds[cell[inside]] = True
+        cell = np.searchsorted(left, t, side="left") - 1
+        cell, t = cell[cell >= 0], t[cell >= 0]
+        holds[cell[t < left[cell] + width[cell]]] = True
     return holds

@@ -15,7 +15,7 @@ import numpy as np
 from lossagg.arrays import FloatArray, IntArray
 from lossagg.errors import EngineError
 from lossagg.families.base import CountLaw
-from lossagg.kernels.draws import draw_discrete, draw_uniforms
+from lossagg.kernels.simulation import draw_discrete, draw_uniforms
 
 CELLS = 2048
 SMALLEST = 2.0**-54

@@ -27,8 +27,7 @@ from lossagg.engines.yearly import LineColumns, annual_amounts, growth, line_col
 from lossagg.errors import EngineError, InputError
 from lossagg.families.base import CountLaw, SizeLaw
 from lossagg.kernels.compile import awaits_compilation
-from lossagg.kernels.draws import draw_sizes
-from lossagg.kernels.years import add_events, add_years
+from lossagg.kernels.simulation import add_events, add_years, draw_sizes
 
 MOST_YEARS = 10**10
 MOST_LOSSES = 1e13
