@@ -323,8 +323,9 @@ def write_liability(folder: Path) -> None:
          text(r.recoveries, True), f"{r.limit:.0f}"]
         for r in rows
     ]  # fmt: skip
-    # planted: an amount written as n/a, a refund booked as a claim, a row exported twice
-    unknown, refund, twice = len(lines) // 3, 3 * len(lines) // 4, 9 * len(lines) // 10
+    # planted: an amount written as n/a, a refund booked as a claim, a row of an event exported twice
+    unknown, refund = len(lines) // 3, 3 * len(lines) // 4
+    twice = next(i for i in range(9 * len(lines) // 10, len(lines)) if rows[i].event)
     lines[unknown][6:9] = ["", "", "n/a"]
     lines[refund][6:10] = ["-1250,00", "0,00", "-1250,00", "0,00"]
     lines.insert(twice + 1, list(lines[twice]))

@@ -158,8 +158,8 @@ def planted(rows: list[Loss]) -> list[Loss]:
     rows[small] = replace(rows[small], amount=8_450)  # below the threshold of its cell
     rows[late] = replace(rows[late], day=date(2026, 10, 14))  # booked after the valuation date
     rows[back] = replace(rows[back], amount=-12_600, recoveries=0)  # a correction entered as a loss
-    twice = of[3][200]
-    rows.insert(twice + 1, rows[twice])  # the same row delivered twice
+    twice = next(i for i in of[3][200:] if rows[i].event)
+    rows.insert(twice + 1, rows[twice])  # one part of a root event delivered twice
     return rows
 
 
