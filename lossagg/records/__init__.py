@@ -4,7 +4,8 @@ from lossagg.records.check import CheckedLosses, check_losses
 from lossagg.records.exposure import ExposureTable, read_exposure
 from lossagg.records.findings import Finding, RecordsError
 from lossagg.records.money import Reconciliation
-from lossagg.records.prepare import PreparedLosses, Step, prepare_losses
+from lossagg.records.prepare import PreparedLosses, prepare_losses
+from lossagg.records.steps import Step
 from lossagg.records.table import LossTable, read_losses
 from lossagg.records.trend import midpoint
 from lossagg.records.years import YearTable

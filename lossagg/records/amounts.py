@@ -23,6 +23,7 @@ MISSING = (
     *("#ref!", "#n/a", "#value!", "#div/0!", "#name?", "#num!", "#null!", "#getting_data"),
 )
 MOST_CHARACTERS = 60
+_DIGITS_KEPT = 15
 _PLAIN = r"^[+-]?(\d+(\.\d*)?|\.\d+)([eE][+-]?\d{1,4})?$"
 _INFINITE = r"^[+-]?inf(inity)?$"
 _DECIMALS = (".", ",")
@@ -84,6 +85,7 @@ class Numbers:
         values: the nearest float64; NaN where there is no number, infinite where the cell says so or
             the number is beyond float64.
         text: the number with a decimal point, empty where there is no finite number.
+        lossy: True where float64 keeps fewer digits than were written.
         missing: True where the cell is empty or carries a marker for "not known".
         infinite: True where the number is not finite.
         wrong: True where the cell is something else, which must stop the run.
@@ -91,23 +93,16 @@ class Numbers:
 
     values: FloatArray
     text: list[str]
+    lossy: BoolArray
     missing: BoolArray
     infinite: BoolArray
     wrong: BoolArray
 
     def exact(self) -> DecimalArray:
         """The numbers as written, as decimals; zero where there is no finite number."""
-        zero = Decimal(0)
         exact = np.empty(len(self.text), dtype=np.object_)
-        exact[:] = [Decimal(text) if text else zero for text in self.text]
+        exact[:] = [Decimal(text or "0") for text in self.text]
         return exact
-
-    def rounded(self) -> BoolArray:
-        """True where float64 keeps fewer digits than were written (more than 15 to 17 of them)."""
-        lossy = np.zeros(len(self.text), dtype=np.bool_)
-        for index in [i for i, text in enumerate(self.text) if len(text) > 16]:
-            lossy[index] = Decimal(repr(float(self.text[index]))) != Decimal(self.text[index])
-        return lossy
 
 
 def parse_numbers(column: TextColumn, style: NumberStyle) -> Numbers:
@@ -130,7 +125,7 @@ def parse_numbers(column: TextColumn, style: NumberStyle) -> Numbers:
     good = _mask(pc.match_substring_regex(plain, pattern=_PLAIN))
     good &= _mask(pc.less_equal(pc.utf8_length(plain), MOST_CHARACTERS))
     cells = np.where(good, plain.to_numpy(zero_copy_only=False), "").tolist()
-    values = np.array([float(cell) if cell else np.nan for cell in cells], dtype=np.float64)
+    values = np.array([cell or "nan" for cell in cells], dtype=np.object_).astype(np.float64)
     beyond = np.isinf(values)
     for index in np.flatnonzero(beyond).tolist():
         cells[index] = ""
@@ -138,7 +133,17 @@ def parse_numbers(column: TextColumn, style: NumberStyle) -> Numbers:
     for index in np.flatnonzero(infinite).tolist():
         values[index] = float(lower_cells[index])
     infinite |= beyond
-    return Numbers(values, cells, missing, infinite, ~(good | missing | infinite))
+    long = _mask(pc.greater(pc.utf8_length(plain), _DIGITS_KEPT))
+    return Numbers(values, cells, _lossy(cells, long), missing, infinite, ~(good | missing | infinite))
+
+
+def _lossy(cells: list[str], long: BoolArray) -> BoolArray:
+    """True where the nearest float64, written shortest, is not the number that was written."""
+    lossy = np.zeros(len(cells), dtype=np.bool_)
+    for index in np.flatnonzero(long).tolist():
+        text = cells[index] or "0"
+        lossy[index] = Decimal(repr(float(text))) != Decimal(text)
+    return lossy
 
 
 def is_missing(lower: Any) -> BoolArray:

@@ -12,18 +12,15 @@ import numpy as np
 from lossagg.arrays import BoolArray, IntArray, require_probability
 from lossagg.errors import InputError, place
 from lossagg.records.faults import Fault, list_faults
-from lossagg.records.findings import Finding, RecordsError, raise_stops
+from lossagg.records.findings import Finding, raise_stops
 from lossagg.records.headings import nearest
-from lossagg.records.money import Reconciliation, exact_sum, reconcile
-from lossagg.records.rules import (
-    CheckTerms,
-    below_threshold,
-    canonical_lines,
-    line_faults,
-    row_faults,
-)
+from lossagg.records.money import Reconciliation, reconcile
+from lossagg.records.rules import CheckTerms, below_threshold, row_faults
 from lossagg.records.shape import shape_findings
 from lossagg.records.table import LossTable
+from lossagg.records.tolerance import check_tolerance
+from lossagg.records.typed import by_word
+from lossagg.records.word_rules import canonical_lines, line_faults
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -40,8 +37,8 @@ class CheckedLosses:
         member: True for the rows that belong to this line, or to the file; shape (rows,).
         reason: position in `faults` of the fault that set the row aside, `USED` where none did;
             shape (rows,).
-        faults: the faults that set rows aside.
-        findings: everything found, the gravest first.
+        faults: the faults of the rows, those that set aside first; each row is claimed by one of these.
+        general: findings about the line or the file rather than about rows.
         terms: what the records were checked against.
         line: name of the line; None for the whole file.
         reconciliation: rows and money read, used and excluded.
@@ -51,7 +48,7 @@ class CheckedLosses:
     member: BoolArray
     reason: IntArray
     faults: tuple[Fault, ...]
-    findings: tuple[Finding, ...]
+    general: tuple[Finding, ...]
     terms: CheckTerms
     line: str | None
     reconciliation: Reconciliation
@@ -66,6 +63,14 @@ class CheckedLosses:
         """True for the rows that are used; shape (rows,)."""
         used: BoolArray = self.member & (self.reason == USED)
         return used
+
+    @property
+    def findings(self) -> tuple[Finding, ...]:
+        """Everything found: rows set aside, warnings, repairs, then the file as a whole."""
+        listed = list_faults(self.faults, self.table.places())
+        if self.terms.lines is not None:
+            listed = [replace(finding, line=self.line) for finding in listed]
+        return (*listed, *self.general)
 
     def for_line(self, name: str | None) -> CheckedLosses:
         """The records of one line, reconciled on their own.
@@ -90,7 +95,8 @@ class CheckedLosses:
             self,
             member=member,
             line=name,
-            findings=tuple(finding for finding in self.findings if self._concerns(finding, member, name)),
+            faults=tuple(replace(fault, mask=fault.mask & member) for fault in self.faults),
+            general=tuple(found for found in self.general if found.line in (None, name)),
             reconciliation=self._reconcile(member),
         )
 
@@ -111,11 +117,6 @@ class CheckedLosses:
     def _reconcile(self, member: BoolArray) -> Reconciliation:
         table, used = self.table, self.reason[member] == USED
         return reconcile(table.exact[member], used, table.unreadable[member])
-
-    def _concerns(self, finding: Finding, member: BoolArray, name: str | None) -> bool:
-        if finding.row is None:
-            return finding.line in (None, name)
-        return bool(member[finding.row - int(self.table.row[0])])
 
 
 def check_losses(
@@ -161,74 +162,20 @@ def check_losses(
         reason[small.mask] = len(aside) - 1
     claimed = [replace(fault, mask=reason == number) for number, fault in enumerate(aside)]
     used = reason == USED
-    others = [replace(fault, mask=fault.mask & used) for fault in faults if fault.action == "warn"]
-    repairs = [fault for fault in faults if fault.action == "normalise"]
-    findings = [
-        *list_faults([*claimed, *others], places),
-        *_shapes(table, used, terms),
-        *list_faults(repairs, places),
-        *table.findings,
-    ]
-    check_tolerance(table, claimed, used, terms.tolerance, findings)
-    return CheckedLosses(
+    warned = [replace(fault, mask=fault.mask & used) for fault in faults if fault.action == "warn"]
+    repaired = [fault for fault in faults if fault.action == "normalise"]
+    checked = CheckedLosses(
         table=table,
         member=np.ones(len(table), dtype=np.bool_),
         reason=reason,
-        faults=tuple(claimed),
-        findings=tuple(findings),
+        faults=(*claimed, _incomplete_events(table, used, claimed), *warned, *repaired),
+        general=(*_shapes(table, used, terms), *table.findings),
         terms=terms,
         line=None,
         reconciliation=reconcile(table.exact, used, table.unreadable),
     )
-
-
-def check_tolerance(
-    table: LossTable,
-    aside: Sequence[Fault],
-    used: BoolArray,
-    tolerance: float,
-    findings: Sequence[Finding],
-    line: str | None = None,
-) -> None:
-    """Stop when too much is set aside for faults, in rows or in money (by absolute amount).
-
-    Raises:
-        RecordsError: with all findings, the share and the main reasons.
-    """
-    faulty = np.zeros(len(table), dtype=np.bool_)
-    for fault in aside:
-        if not fault.tolerated:
-            faulty |= fault.mask
-    count = int(np.count_nonzero(faulty))
-    kept = exact_sum(abs(amount) for amount in table.exact[used])
-    lost = exact_sum(abs(amount) for amount in table.exact[faulty])
-    shares = {
-        "rows": count / max(1, count + int(np.count_nonzero(used))),
-        "the money": float(lost / (kept + lost)) if lost else 0.0,
-    }
-    worst = max(shares, key=lambda name: shares[name])
-    if shares[worst] <= tolerance:
-        return
-    numbers = {fault.code: int(np.count_nonzero(fault.mask)) for fault in aside if not fault.tolerated}
-    reasons = ", ".join(f"{code} {number}" for code, number in numbers.items() if number)
-    first = int(np.flatnonzero(faulty)[0])
-    of_line = f" of line {line!r}" if line else ""
-    stop = Finding(
-        "set-aside-share",
-        "stop",
-        table.file,
-        None,
-        None,
-        None,
-        f"{shares[worst]:.1%} of {worst}{of_line} ({count} rows) would be set aside for faults, more than "
-        f"the tolerance of {tolerance:.1%}",
-        f"Repair the file (first at row {table.row[first]}; by reason: {reasons}), or raise the tolerance.",
-        sheet=table.sheet,
-        line=line,
-        count=count,
-        amount=float(lost),
-    )
-    raise RecordsError([stop, *findings])
+    check_tolerance(table, claimed, used, terms.tolerance, checked.findings)
+    return checked
 
 
 def _reasons(aside: Sequence[Fault], rows: int) -> IntArray:
@@ -237,6 +184,24 @@ def _reasons(aside: Sequence[Fault], rows: int) -> IntArray:
     for number, fault in enumerate(aside):
         reason[fault.mask & (reason == USED)] = number
     return reason
+
+
+def _incomplete_events(table: LossTable, used: BoolArray, claimed: Sequence[Fault]) -> Fault:
+    """Find the used rows of events that have lost a claim to a fault, and with it part of their amount."""
+    lost = np.zeros(len(table), dtype=np.bool_)
+    for fault in claimed:
+        if not fault.tolerated and fault.code != "duplicate-row":
+            lost |= fault.mask
+    event = table.word("event")
+    names = set(event[lost].tolist()) - {""}
+    return Fault(
+        "incomplete-event",
+        "warn",
+        "event",
+        used & by_word(event, lambda name: name in names),
+        "another claim of the event is set aside, so the event counts for less than it was",
+        "Repair the claim that is set aside.",
+    )
 
 
 def _shapes(table: LossTable, used: BoolArray, terms: CheckTerms) -> list[Finding]:

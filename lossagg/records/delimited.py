@@ -86,20 +86,28 @@ def _fill(builder: TableBuilder, reader: Reader, text: str, delimiter: str) -> i
     width = len(builder.headings)
     records = 1
     for chunk in _chunks(reader, text, delimiter, builder.file):
-        for index, record in enumerate(chunk):
-            if len(record) != width:
-                if not "".join(record).strip() and len(record) <= 1:
-                    chunk[index] = [""] * width
-                    continue
-                line = _line_of(text, delimiter, records + index)
+        if set(map(len, chunk)) != {width}:
+            ragged = _fill_blank(chunk, width)
+            if ragged is not None:
+                line = _line_of(text, delimiter, records + ragged)
                 raise InputError(
-                    f"a row has {len(record)} fields where the headings have {width}",
-                    where=f"{place(file=builder.file, row=records + index + 1)}, line {line}",
+                    f"a row has {len(chunk[ragged])} fields where the headings have {width}",
+                    where=f"{place(file=builder.file, row=records + ragged + 1)}, line {line}",
                     remedy="Quote fields that contain the delimiter, or repair the row.",
                 )
         builder.add(list(zip(*chunk, strict=True)))
         records += len(chunk)
     return records
+
+
+def _fill_blank(chunk: list[list[str]], width: int) -> int | None:
+    """Give blank lines their empty cells; return the first row that is ragged, if any."""
+    for index, record in enumerate(chunk):
+        if len(record) != width:
+            if len(record) > 1 or "".join(record).strip():
+                return index
+            chunk[index] = [""] * width
+    return None
 
 
 def _chunks(reader: Reader, text: str, delimiter: str, file: str) -> Iterator[list[list[str]]]:
@@ -221,6 +229,7 @@ def _check_delimiter(delimiter: str, file: str) -> None:
 
 def _sniff(text: str, file: str) -> str:
     """Find the only delimiter that divides the headings and every one of the next rows alike."""
+    text = _beginning(text)
     candidates = [d for d in DELIMITERS if max(_shape(text, d, 1)) > 1]
     if len(candidates) > 1:
         candidates = [d for d in candidates if len(_shape(text, d, _SNIFFED)) == 1] or candidates
@@ -234,6 +243,16 @@ def _sniff(text: str, file: str) -> str:
         where=place(file=file, row=1),
         remedy=f"Declare the delimiter; lossagg looks for {', '.join(DELIMITERS.values())}.",
     )
+
+
+def _beginning(text: str) -> str:
+    """The first lines of a text, enough to tell its delimiter; whole when they are very long."""
+    end = 0
+    for _ in range(2 * _SNIFFED):
+        end = text.find("\n", end) + 1
+        if not end:
+            return text
+    return text[:end]
 
 
 def _shape(text: str, delimiter: str, rows: int) -> set[int]:

@@ -11,6 +11,7 @@ from lossagg.arrays import BoolArray, FloatArray, IntArray
 from lossagg.records.dates import DateArray
 from lossagg.records.money import DecimalArray, exact_sum
 from lossagg.records.table import LossTable
+from lossagg.records.typed import by_word, word_codes
 
 OPEN = ("open", "reopened", "re-opened")
 CLOSED = ("closed", "settled", "final")
@@ -88,25 +89,20 @@ def group_events(table: LossTable, used: BoolArray) -> Events:
 
 def is_open(table: LossTable) -> BoolArray:
     """True for rows whose status says that the claim is open; shape (rows,)."""
-    return np.array([text.casefold() in OPEN for text in table.word("status").tolist()], dtype=np.bool_)
+    return by_word(table.word("status"), lambda status: status.casefold() in OPEN)
 
 
 def _number_events(table: LossTable, rows: IntArray) -> tuple[IntArray, IntArray]:
     """Number the events; return the event of each row and the first row of each event."""
-    identifiers = table.word("event")[rows].tolist()
-    lines = table.word("line")[rows].tolist()
-    known: dict[tuple[str, str], int] = {}
-    index = np.empty(len(rows), dtype=np.int64)
-    first: list[int] = []
-    for at, key in enumerate(zip(identifiers, lines, strict=True)):
-        number = known.get(key) if key[0] else None
-        if number is None:
-            number = len(first)
-            first.append(at)
-            if key[0]:
-                known[key] = number
-        index[at] = number
-    return index, np.array(first, dtype=np.int64)
+    alone = np.arange(len(rows), dtype=np.int64)
+    if "event" not in table.words:
+        return alone, alone
+    identifiers = table.words["event"][rows]
+    key = word_codes(identifiers) * (len(rows) + 1) + word_codes(table.word("line")[rows])
+    nameless = identifiers == ""
+    key[nameless] = -1 - alone[nameless]
+    _, first, index = np.unique(key, return_index=True, return_inverse=True)
+    return index.astype(np.int64), first.astype(np.int64)
 
 
 def _sums(

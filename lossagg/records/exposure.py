@@ -19,10 +19,10 @@ from lossagg.records.findings import Finding, raise_stops
 from lossagg.records.headings import Wanted, heading_findings, nearest
 from lossagg.records.money import DecimalArray
 from lossagg.records.raw import Layout, RawTable
-from lossagg.records.rules import canonical_lines
 from lossagg.records.sources import read_source
 from lossagg.records.table import chooser
 from lossagg.records.typed import TypedColumns, type_columns
+from lossagg.records.word_rules import canonical_lines
 
 JUMP = 10.0
 YEARS = (1900, 2200)

@@ -8,7 +8,6 @@ from __future__ import annotations
 
 import datetime as dt
 from dataclasses import dataclass, fields, replace
-from math import fsum
 from typing import TypeVar
 
 import numpy as np
@@ -16,14 +15,16 @@ import numpy.typing as npt
 
 from lossagg.arrays import BoolArray, FloatArray, IntArray, require_positive
 from lossagg.errors import InputError, place
-from lossagg.records.check import CheckedLosses, check_tolerance
+from lossagg.records.check import CheckedLosses
 from lossagg.records.dates import DateArray
 from lossagg.records.events import Events, group_events
 from lossagg.records.exposure import ExposureTable
 from lossagg.records.faults import list_fault
 from lossagg.records.findings import Finding
-from lossagg.records.money import Reconciliation, exact_sum, reconcile
+from lossagg.records.money import Reconciliation, reconcile
 from lossagg.records.rules import below_threshold
+from lossagg.records.steps import Step, log_steps, open_claims_caution, window_caution
+from lossagg.records.tolerance import check_tolerance
 from lossagg.records.trend import check_trend, trend_factor
 from lossagg.records.years import (
     Window,
@@ -35,31 +36,6 @@ from lossagg.records.years import (
 )
 
 Scalar = TypeVar("Scalar", bound=np.generic)
-
-
-@dataclass(frozen=True)
-class Step:
-    """One step from records to losses, with what stood before and after it.
-
-    Args:
-        step: name of the step.
-        count_before: rows or events before.
-        count_after: rows or events after.
-        amount_before: money before.
-        amount_after: money after.
-        note: what the step did, in words.
-    """
-
-    step: str
-    count_before: int
-    count_after: int
-    amount_before: float
-    amount_after: float
-    note: str
-
-    def to_dict(self) -> dict[str, object]:
-        """The step as plain values."""
-        return dict(vars(self))
 
 
 @dataclass(frozen=True)
@@ -167,8 +143,8 @@ def prepare_losses(
         claims=_frozen(events.claims),
         years=years,
         largest_threshold=complete_from(window, base, forecast_midpoint, trend),
-        steps=_steps(checked, used, events, amount, trend),
-        findings=(*findings, *found, *_open_claims(checked, years)),
+        steps=log_steps(checked, used, events, amount, trend),
+        findings=(*findings, *found, *open_claims_caution(checked, years)),
         reconciliation=reconcile(table.exact[member], used[member], table.unreadable[member]),
         base=exposure.base if exposure else None,
     )
@@ -192,7 +168,7 @@ def _above_threshold(checked: CheckedLosses, default: float) -> tuple[BoolArray,
     used: BoolArray = checked.used & ~small.mask
     listed = list_fault(small, table.places())
     findings = [*checked.findings, *(replace(finding, line=line) for finding in listed)]
-    aside = [replace(fault, mask=fault.mask & checked.member) for fault in checked.faults]
+    aside = [fault for fault in checked.faults if fault.action == "set aside"]
     check_tolerance(table, [*aside, small], used, checked.terms.tolerance, findings, line)
     return used, findings
 
@@ -222,7 +198,7 @@ def _window(
         starts = [int(exposure.year.min())]
     found = []
     if not starts and len(events):
-        found = [_window_warning(checked, int(_year(events.date).min()))]
+        found = [window_caution(checked, int(_year(events.date).min()))]
     if declared is None and len(events):
         starts.append(int(_year(events.date).min()))
     if not starts:
@@ -232,52 +208,6 @@ def _window(
             remedy="Give an exposure file or declare the first year; then a year without losses counts.",
         )
     return Window(min(*starts, last), terms.valuation_date), found
-
-
-def _window_warning(checked: CheckedLosses, first: int) -> Finding:
-    return Finding(
-        "window-from-first-loss",
-        "warn",
-        checked.table.file,
-        None,
-        checked.table.headings.get("date"),
-        None,
-        f"the observation window is taken to begin in {first}, the year of the first loss",
-        "Declare the first year, or give exposures: earlier years without losses would lower the frequency.",
-        sheet=checked.table.sheet,
-        line=checked.line,
-        count=0,
-    )
-
-
-def _open_claims(checked: CheckedLosses, years: YearTable) -> list[Finding]:
-    """Caution that amounts of open claims are not final, or that it is not known which are."""
-    table, count = checked.table, int(years.open.sum())
-    if "status" not in table.words:
-        message = "the records do not say which claims are open; all amounts are taken as final"
-        remedy = (
-            "Give the status of each claim; open claims tend to grow, and late ones are not yet reported."
-        )
-    elif count:
-        message = f"{count} claims are open and their amounts are taken as they stand, without development"
-        remedy = "Expect recent years to grow; use developed amounts if you have them."
-    else:
-        return []
-    return [
-        Finding(
-            "open-claims",
-            "warn",
-            table.file,
-            None,
-            table.headings.get("status"),
-            None,
-            message,
-            remedy,
-            sheet=table.sheet,
-            line=checked.line,
-            count=count,
-        )
-    ]
 
 
 def _years(
@@ -300,42 +230,6 @@ def _years(
         trended_amount=_frozen(trended),
         largest=_frozen(largest),
         threshold=_frozen(threshold),
-    )
-
-
-def _steps(
-    checked: CheckedLosses, used: BoolArray, events: Events, amount: FloatArray, trend: float
-) -> tuple[Step, ...]:
-    table, before = checked.table, checked.reconciliation
-    all_events = len(group_events(table, checked.used)) if (checked.used & ~used).any() else len(events)
-    read, kept = float(before.amount_read), float(before.amount_used)
-    left = float(exact_sum(table.exact[used]))
-    recovered = fsum(np.nan_to_num(table.number("recoveries")[used]).tolist())
-    gross = f"; amounts are gross, recoveries of {recovered:,.2f} are kept apart" if recovered else ""
-    apart = all_events - len(events)
-    return (
-        Step("read", before.read, before.read, read, read, f"rows of {table.file}{gross}"),
-        Step(
-            "check", before.read, before.used, read, kept, f"{before.excluded} rows set aside, see findings"
-        ),
-        Step("events", before.used, all_events, kept, kept, "claims of one event summed into one loss"),
-        Step(
-            "threshold",
-            all_events,
-            len(events),
-            kept,
-            left,
-            f"{apart} events below the reporting threshold set aside; it is compared with the sum of an "
-            "event, so claims that were left out one by one are not seen",
-        ),
-        Step(
-            "trend",
-            len(events),
-            len(events),
-            left,
-            fsum(amount.tolist()),
-            f"{trend:+.2%} a year from each loss date to the midpoint of the forecast period",
-        ),
     )
 
 

@@ -153,6 +153,9 @@ class TableBuilder:
         # Rows with a first chosen cell are not empty; only the others need a look at every cell.
         chosen = columns[next(iter(self.positions.values()))]
         empty = np.zeros(len(rows), dtype=np.bool_)
-        for index in [i for i, cell in enumerate(chosen) if not cell or cell.isspace()]:
-            empty[index] = not any(cell.strip() for cell in rows[index])
+        if all(map(str.strip, chosen)):
+            return empty
+        for index, cell in enumerate(chosen):
+            if not cell.strip():
+                empty[index] = not any(map(str.strip, rows[index]))
         return empty

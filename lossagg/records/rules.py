@@ -7,16 +7,16 @@ Bounds are common practice of the trade, without a source, unless one is named.
 from __future__ import annotations
 
 import datetime as dt
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
 
 from lossagg.arrays import BoolArray
-from lossagg.records.events import CLOSED, OPEN, group_events, is_open
+from lossagg.records.events import group_events
 from lossagg.records.faults import Fault
-from lossagg.records.headings import nearest
 from lossagg.records.table import LossTable
+from lossagg.records.word_rules import repeated_faults, status_faults, word_faults
 
 CENT = 0.01
 LARGEST = 1e18
@@ -58,12 +58,12 @@ def row_faults(table: LossTable, terms: CheckTerms) -> list[Fault]:
     live = ~table.blank
     faults = [
         *table.faults,
-        *_words(table, terms, live),
+        *word_faults(table, terms.currency, live),
         *_amounts(table, live),
         *_dates(table, terms, live),
         *_money(table, live),
-        *_status(table, live),
-        *_repeated(table, live),
+        *status_faults(table, live),
+        *repeated_faults(table, live),
     ]
     return [fault for fault in faults if fault.mask.any()]
 
@@ -147,9 +147,10 @@ def _dates(table: LossTable, terms: CheckTerms, live: BoolArray) -> list[Fault]:
             "Correct it, or the valuation date.",
         ),
     ]
+    word = table.word("line").astype(str)
     for first_year in sorted(set(terms.first_years.values())):
         lines = [line for line, year in terms.first_years.items() if year == first_year]
-        mine = np.isin(table.word("line").astype(str), lines)
+        mine = np.isin(word, lines)
         begins = np.datetime64(f"{first_year:04d}-01-01")
         faults.append(
             Fault(
@@ -230,118 +231,5 @@ def _money(table: LossTable, live: BoolArray) -> list[Fault]:
             live & (np.abs(parts - amount) > slack),
             f"paid and outstanding do not add to the amount within {CENT}",
             "Correct one of the three.",
-        ),
-    ]
-
-
-def _status(table: LossTable, live: BoolArray) -> list[Fault]:
-    if "status" not in table.words:
-        return []
-    status = [text.casefold() for text in table.words["status"].tolist()]
-    known = np.array([text in (*OPEN, *CLOSED, "") for text in status], dtype=np.bool_)
-    closed = np.array([text in CLOSED for text in status], dtype=np.bool_)
-    return [
-        Fault(
-            "unknown-status",
-            "warn",
-            "status",
-            live & ~known,
-            "the status is not understood and counts as not open",
-            f"Use {', '.join((*OPEN, *CLOSED))}.",
-        ),
-        Fault(
-            "closed-with-reserve",
-            "warn",
-            "outstanding",
-            live & closed & (table.number("outstanding") > 0),
-            "the claim is closed but has an outstanding amount",
-            "Correct the status or the reserve.",
-        ),
-        Fault(
-            "open-without-reserve",
-            "warn",
-            "outstanding",
-            live & is_open(table) & (table.number("outstanding") == 0),
-            "the claim is open but nothing is outstanding",
-            "Check that the amount is not final only in appearance.",
-        ),
-    ]
-
-
-def _words(table: LossTable, terms: CheckTerms, live: BoolArray) -> list[Fault]:
-    faults = []
-    if "currency" in table.words:
-        written = table.words["currency"]
-        other = np.array([w.upper() != terms.currency.upper() for w in written.tolist()], dtype=np.bool_)
-        empty = written == ""
-        faults = [
-            Fault(
-                "other-currency",
-                "stop",
-                "currency",
-                live & other & ~empty,
-                f"the currency is not that of the portfolio, {terms.currency}",
-                "Convert the amounts at dated rates first, or split the file.",
-            ),
-            Fault(
-                "missing-currency",
-                "set aside",
-                "currency",
-                live & empty,
-                "the currency is missing",
-                "Supply it, or leave the column out if all amounts are in one currency.",
-            ),
-        ]
-    return faults
-
-
-def line_faults(table: LossTable, lines: tuple[str, ...]) -> list[Fault]:
-    """Find the rows whose line is not one of the portfolio, name by name; all of them stop."""
-    if "line" not in table.words:
-        return []
-    written, live = table.words["line"].tolist(), ~table.blank
-    known = canonical_lines(lines)
-    unknown = np.array([word.casefold() not in known for word in written], dtype=np.bool_)
-    names = sorted({written[index] for index in np.flatnonzero(live & unknown).tolist()})
-    faults = []
-    for name in names:
-        mask = live & np.array([word == name for word in written], dtype=np.bool_)
-        message = "the line is not one of the portfolio" if name else "the line is missing"
-        faults.append(Fault("unknown-line", "stop", "line", mask, message, nearest(name, lines)))
-    return faults
-
-
-def canonical_lines(lines: Sequence[str]) -> Mapping[str, str]:
-    """{line as compared: line as the portfolio names it}."""
-    return {name.strip().casefold(): name for name in lines}
-
-
-def _repeated(table: LossTable, live: BoolArray) -> list[Fault]:
-    """Rows equal in every column: with an event identifier a copy, without one perhaps a twin."""
-    marks = table.fingerprint
-    cells = [table.date.astype(np.int64), np.nan_to_num(table.amount, nan=-1.0), marks]
-    order = np.lexsort((np.arange(len(table)), *cells))
-    same = np.ones(max(len(table) - 1, 0), dtype=np.bool_)
-    for cell in cells:
-        same &= cell[order][1:] == cell[order][:-1]
-    again = np.zeros(len(table), dtype=np.bool_)
-    again[order[1:]] = same
-    named = table.word("event") != ""
-    return [
-        Fault(
-            "duplicate-row",
-            "set aside",
-            "event" if "event" in table.words else None,
-            live & again & named,
-            "the row repeats an earlier one of the same event in every column",
-            "If both are claims of their own, give them an identifier that tells them apart.",
-        ),
-        Fault(
-            "twin-row",
-            "warn",
-            None,
-            live & again & ~named,
-            "the row repeats an earlier one in every column; without an event both are used",
-            "Give events identifiers, or delete the copy.",
         ),
     ]

@@ -156,10 +156,11 @@ def read_losses(
     source = read_source(path, layout, chooser(path.name, _WANTED, columns or {}))
     raw = source.table
     typed = type_columns(raw, COLUMNS, style, date_format, raw.empty)
-    total = _total_row(raw, typed)
+    exact = typed.numbers["amount"].exact()
+    total = _total_row(raw, typed, exact)
     if total.any():
         typed = type_columns(raw, COLUMNS, style, date_format, raw.empty | total)
-    return _assemble(source, typed, total)
+    return _assemble(source, typed, exact, total)
 
 
 def chooser(file: str, wanted: Wanted, mapping: Mapping[str, str]) -> Choose:
@@ -178,7 +179,7 @@ def file_findings(source: Source, wanted: Wanted) -> list[Finding]:
     return [*raw.findings, *unread]
 
 
-def _assemble(source: Source, typed: TypedColumns, total: BoolArray) -> LossTable:
+def _assemble(source: Source, typed: TypedColumns, exact: DecimalArray, total: BoolArray) -> LossTable:
     raw = source.table
     amount = typed.numbers["amount"]
     unreadable = ~np.isfinite(amount.values)
@@ -193,7 +194,7 @@ def _assemble(source: Source, typed: TypedColumns, total: BoolArray) -> LossTabl
         numbers=typed.values,
         dates=typed.dates,
         words=typed.words,
-        exact=amount.exact(),
+        exact=exact,
         unreadable=unreadable,
         blank=raw.empty | total,
         fingerprint=raw.fingerprint,
@@ -252,7 +253,7 @@ def _row_faults(raw: RawTable, typed: TypedColumns, total: BoolArray) -> list[Fa
     return faults
 
 
-def _total_row(raw: RawTable, typed: TypedColumns) -> BoolArray:
+def _total_row(raw: RawTable, typed: TypedColumns, exact: DecimalArray) -> BoolArray:
     """Recognise a row of totals at the foot.
 
     It is one if it is labelled so and lacks a date or equals the sum, or if it equals the sum of all
@@ -260,7 +261,6 @@ def _total_row(raw: RawTable, typed: TypedColumns) -> BoolArray:
     """
     total = np.zeros(len(raw.row), dtype=np.bool_)
     amount = typed.numbers["amount"]
-    exact = amount.exact()
     others = int(np.count_nonzero(np.isfinite(amount.values[:-1])))
     undated = bool(np.isnat(typed.dates["date"][-1]))
     is_sum = others >= 2 and exact[-1] != 0 and exact[-1] == exact_sum(exact[:-1])

@@ -5,14 +5,14 @@ The same typing serves loss records and exposures.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
-from lossagg.arrays import BoolArray, FloatArray
+from lossagg.arrays import BoolArray, FloatArray, IntArray
 from lossagg.records.amounts import Numbers, NumberStyle, is_missing, parse_numbers
 from lossagg.records.dates import DateArray, parse_dates
 from lossagg.records.faults import Fault
@@ -71,6 +71,23 @@ def type_columns(
     return typed
 
 
+def word_codes(words: WordArray) -> IntArray:
+    """Number the different words of a column from 0, in the order in which they appear; shape (rows,)."""
+    import pyarrow as pa
+
+    codes: IntArray = pa.array(words, pa.string()).dictionary_encode().indices.to_numpy().astype(np.int64)
+    return codes
+
+
+def by_word(words: WordArray, test: Callable[[str], bool]) -> BoolArray:
+    """Apply a test to a column of words, once for each different word; shape (rows,)."""
+    import pyarrow as pa
+
+    codes = pa.array(words, pa.string()).dictionary_encode()
+    answers = np.array([test(word) for word in codes.dictionary.to_pylist()], dtype=np.bool_)
+    return answers[codes.indices.to_numpy()] if len(words) else np.zeros(0, dtype=np.bool_)
+
+
 def _number(typed: TypedColumns, name: str, column: TextColumn, style: NumberStyle, live: BoolArray) -> None:
     numbers = parse_numbers(column, style)
     typed.numbers[name] = numbers
@@ -87,7 +104,7 @@ def _number(typed: TypedColumns, name: str, column: TextColumn, style: NumberSty
             "precision",
             "warn",
             name,
-            numbers.rounded() & live,
+            numbers.lossy & live,
             f"the {name} has more digits than a float64 keeps",
             "The reconciliation counts every digit; the models use the nearest float64.",
         ),
