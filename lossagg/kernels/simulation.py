@@ -101,6 +101,22 @@ def draw_discrete(
 
 
 @compiled
+def refined_size(cubics: FloatArray, row: int, f: float) -> float:
+    """The size at position f of a cell in parts; NaN where the part, or the cell, has no answer.
+
+    Apart from the loop that calls it: within it, it made every draw three times slower.
+    """
+    first = cubics[row, 1]
+    if not first >= 0.0:
+        return np.nan
+    place = f * REFINED
+    part = np.int64(place)
+    c = cubics[np.int64(first) + part]
+    g = place - part
+    return float(c[0] + g * (c[1] + g * (c[2] + g * c[3])))
+
+
+@compiled
 def draw_sizes(
     state: np.ndarray,
     table: SizeArrays,
@@ -141,16 +157,13 @@ def draw_sizes(
         row = (cell if cell >= 0 else -1) + 1 + lower * rows
         f = np.float64(np.int64(pattern & below)) * unit
         x = cubics[row, 0] + f * (cubics[row, 1] + f * (cubics[row, 2] + f * cubics[row, 3]))
-        if x != x and cubics[row, 1] >= 0.0:
-            f *= REFINED
-            row = np.int64(cubics[row, 1]) + np.int64(f)
-            f -= np.floor(f)
-            x = cubics[row, 0] + f * (cubics[row, 1] + f * (cubics[row, 2] + f * cubics[row, 3]))
         if x != x:
-            x = 0.0
-            flagged[found] = i
-            probability[found] = -t if lower else t
-            found += 1
+            x = refined_size(cubics, row, f)
+            if x != x:
+                x = 0.0
+                flagged[found] = i
+                probability[found] = -t if lower else t
+                found += 1
         out[i] = x
     state[0], state[1], state[2], state[3] = a, b, c, count
     return found

@@ -1,0 +1,215 @@
+"""Speed as ratios in one run: what lossagg takes against what it is compared with, on this machine.
+
+Both sides of a row are timed in turns and the medians compared, so that a machine that slows down
+slows both. Rows are built by the functions below; a row that cannot be measured says why.
+
+    python validation/speed.py [--workers 2] [--repetitions 5]
+
+Leaves with exit code 1 when a row misses the figure asked of it.
+"""
+
+from __future__ import annotations
+
+import argparse
+import statistics
+import subprocess
+import sys
+import tempfile
+import time
+from collections.abc import Callable, Iterator
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
+from pathlib import Path
+
+import numpy as np
+import plain_simulation as plain
+
+import lossagg
+from lossagg.engines.simulation import Simulation
+
+ROOT = Path(__file__).resolve().parent.parent
+CASES = ((1_000_000, 10.0), (200_000, 100.0), (5_000_000, 0.5))
+LAYER = lossagg.Cover(deductible=plain.DEDUCTIBLE, limit=plain.LIMIT)
+LOGNORMAL = lossagg.Lognormal(mu=plain.MU, sigma=plain.SIGMA)
+LAWS = {
+    "lognormal": (LOGNORMAL, plain.lognormal),
+    "spliced": (
+        lossagg.Spliced(
+            body=LOGNORMAL,
+            tail=lossagg.GeneralizedPareto(
+                shape=plain.TAIL_SHAPE, scale=plain.TAIL_SCALE, threshold=plain.THRESHOLD
+            ),
+            threshold=plain.THRESHOLD,
+            tail_probability=plain.TAIL_PROBABILITY,
+        ),
+        plain.spliced,
+    ),
+}
+Work = Callable[[], object]
+
+
+@dataclass(frozen=True)
+class Row:
+    """One comparison.
+
+    Attributes:
+        name: what is measured against what.
+        ours: does the work of lossagg once.
+        reference: does the work compared with once; None where the bound is in seconds.
+        times: "faster": ours must be at least `bound` times faster; "slower": at most `bound` times
+            slower; "seconds": ours must take at most `bound` seconds.
+        bound: the figure asked; 0 where none is.
+        repetitions: how often each side is timed; 0 leaves it to the command line.
+    """
+
+    name: str
+    ours: Work
+    reference: Work | None
+    times: str
+    bound: float
+    repetitions: int = 0
+
+
+class CannotMeasureError(Exception):
+    """Something a row needs is not there."""
+
+
+def simulation_rows(workers: int) -> Iterator[Row]:
+    """Simulated years of a layer per event, against the plain script."""
+    for years, mean_count in CASES:
+        for name, (law, draw) in LAWS.items():
+            engine = Simulation(years=years, seed=1, workers=workers)
+            frequency = lossagg.Poisson(mean=mean_count)
+            random = np.random.default_rng(1)
+            yield Row(
+                f"simulation, {years:,} years x {mean_count:g}, {name}, against plain NumPy",
+                lambda e=engine, f=frequency, s=law: e.annual_loss(f, s, LAYER),  # type: ignore[misc]
+                lambda y=years, m=mean_count, d=draw, r=random: plain.annual_payments(y, m, d, r),  # type: ignore[misc]
+                "faster",
+                4.0 if mean_count == 10.0 else 0.0,
+            )
+
+
+def fill_rows(workers: int) -> Iterator[Row]:
+    """The same simulation against merely filling as many doubles with numpy's SFC64, on as many threads."""
+    for years, mean_count in CASES[:2]:
+        engine = Simulation(years=years, seed=1, workers=workers)
+        frequency = lossagg.Poisson(mean=mean_count)
+
+        def fill(number: int = int(years * mean_count)) -> None:
+            def one(seed: int) -> None:
+                random, out = np.random.Generator(np.random.SFC64(seed)), np.empty(2**16)
+                for _ in range(number // workers // out.size):
+                    random.random(out=out)
+
+            with ThreadPoolExecutor(workers) as pool:
+                list(pool.map(one, range(workers)))
+
+        yield Row(
+            f"simulation, {years:,} years x {mean_count:g}, lognormal, against filling uniforms",
+            lambda e=engine, f=frequency: e.annual_loss(f, LOGNORMAL, LAYER),  # type: ignore[misc]
+            fill,
+            "slower",
+            0.0,
+        )
+
+
+def assessment_rows(workers: int) -> Iterator[Row]:
+    """The whole demo assessment at a million years, warm."""
+    del workers
+    portfolios = sorted(path.parent for path in (ROOT / "portfolios").glob("*/portfolio.toml"))
+    if not portfolios:
+        raise CannotMeasureError("demo assessment: there is no portfolio in portfolios/ yet")
+    command = _command("assess")
+    folder = tempfile.TemporaryDirectory()
+    for portfolio in portfolios:
+        out = Path(folder.name) / portfolio.name
+        run = [*command, "assess", str(portfolio), "--out", str(out), "--years", "1000000"]
+        yield Row(
+            f"lossagg assess {portfolio.name}, 1,000,000 years",
+            lambda r=run, keep=folder: _run(r),  # type: ignore[misc]
+            None,
+            "seconds",
+            20.0,
+            repetitions=1,
+        )
+
+
+def help_rows(workers: int) -> Iterator[Row]:
+    """The command's help against starting Python with NumPy."""
+    del workers
+    run = [*_command("--help"), "--help"]
+    start = [sys.executable, "-c", "import numpy"]
+    yield Row(
+        "lossagg --help, against python -c 'import numpy'",
+        lambda: _run(run),
+        lambda: _run(start),
+        "slower",
+        3.0,
+    )
+
+
+def _command(needed: str) -> list[str]:
+    command = Path(sys.executable).with_name("lossagg")
+    if not command.exists():
+        raise CannotMeasureError(f"lossagg {needed}: the command is not installed beside {sys.executable}")
+    shown = subprocess.run([str(command), "--help"], capture_output=True, text=True, check=False)
+    if shown.returncode != 0 or needed not in shown.stdout:
+        raise CannotMeasureError(f"lossagg {needed}: the command does not work yet")
+    return [str(command)]
+
+
+def _run(command: list[str]) -> None:
+    done = subprocess.run(command, capture_output=True, text=True, check=False)
+    if done.returncode not in (0, 1):
+        raise CannotMeasureError(
+            f"{' '.join(command)} left with {done.returncode}: {done.stderr.strip()[-200:]}"
+        )
+
+
+def seconds(work: Work) -> float:
+    """Wall time of doing the work once."""
+    start = time.perf_counter()
+    work()
+    return time.perf_counter() - start
+
+
+def measure(row: Row, repetitions: int) -> tuple[str, bool]:
+    """The row as printed, and whether it meets its bound."""
+    ours, reference = [], []
+    row.ours()
+    for _ in range(row.repetitions or repetitions):
+        if row.reference is not None:
+            reference.append(seconds(row.reference))
+        ours.append(seconds(row.ours))
+    mine, other = statistics.median(ours), statistics.median(reference) if reference else float("nan")
+    figure = {"faster": other / mine, "slower": mine / other, "seconds": mine}[row.times]
+    met = not row.bound or (figure >= row.bound if row.times == "faster" else figure <= row.bound)
+    unit = "s" if row.times == "seconds" else f"times {row.times}"
+    asked = f"{'at least' if row.times == 'faster' else 'at most'} {row.bound:g}" if row.bound else "-"
+    against = f"{other:9.3f}" if reference else f"{'-':>9}"
+    verdict = "" if met else "  MISSED"
+    return f"{row.name:<72} {mine:9.3f} {against} {figure:8.2f} {unit:<13} {asked}{verdict}", met
+
+
+def main() -> int:
+    """Measure every row and print the table."""
+    parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawTextHelpFormatter)
+    parser.add_argument("--workers", type=int, default=2)
+    parser.add_argument("--repetitions", type=int, default=5)
+    given = parser.parse_args()
+    print(f"{'':<72} {'lossagg s':>9} {'against s':>9} {'figure':>8} {'':<13} asked")
+    all_met = True
+    for rows in (simulation_rows, fill_rows, help_rows, assessment_rows):
+        try:
+            for row in rows(given.workers):
+                text, met = measure(row, given.repetitions)
+                all_met &= met
+                print(text, flush=True)
+        except CannotMeasureError as error:
+            print(f"not measured: {error}", flush=True)
+    return 0 if all_met else 1
+
+
+if __name__ == "__main__":
+    sys.exit(main())
