@@ -154,12 +154,16 @@ class Burr(SizeLaw):
         return np.asarray(self._series(np.zeros(1), b) + b * (part + beyond))
 
     def _expected_excess(self, x: FloatArray) -> FloatArray:
-        b = 1 / self.gamma
+        return self.mean() * self._upper_share(x, 1)
+
+    def _second_excess(self, x: FloatArray) -> FloatArray:
+        above = self.second_moment() * self._upper_share(x, 2)
+        return np.maximum(above - 2.0 * x * self._expected_excess(x), 0.0)
+
+    def _upper_share(self, x: FloatArray, order: int) -> FloatArray:
+        """The share of E[X**order] that `order` times the integral of y**(order-1) S(y) over (x, inf) is."""
+        b = order / self.gamma
         rest = self.alpha - b
         y = self._log(x)
-        share = np.where(
-            y <= 0,
-            special.betaincc(b, rest, special.expit(y)),
-            special.betainc(rest, b, special.expit(-y)),
-        )
-        return self.scale * b * float(special.beta(b, rest)) * np.asarray(share)
+        low = special.betaincc(b, rest, special.expit(y))
+        return np.where(y <= 0, low, special.betainc(rest, b, special.expit(-y)))

@@ -69,3 +69,6 @@ class Exponential(SizeLaw):
 
     def _expected_excess(self, x: FloatArray) -> FloatArray:
         return self._mean * self._sf(x)
+
+    def _second_excess(self, x: FloatArray) -> FloatArray:
+        return 2.0 * self._mean**2 * self._sf(x)

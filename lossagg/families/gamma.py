@@ -13,9 +13,9 @@ from typing import ClassVar
 import numpy as np
 from scipy import special
 
-from lossagg.arrays import FloatArray, require_positive
+from lossagg.arrays import BoolArray, FloatArray, require_positive
 from lossagg.families.base import SizeLaw
-from lossagg.families.saddle import poisson_probability
+from lossagg.families.saddle import lower_gamma, poisson_probability
 
 _FRACTION_TERMS = 400
 
@@ -57,7 +57,7 @@ class Gamma(SizeLaw):
         return Gamma(shape=self.shape, scale=self.scale * require_positive(factor, "factor"))
 
     def _cdf(self, x: FloatArray) -> FloatArray:
-        return np.asarray(special.gammainc(self.shape, x / self.scale))
+        return lower_gamma(self.shape, x / self.scale)
 
     def _sf(self, x: FloatArray) -> FloatArray:
         return np.asarray(special.gammaincc(self.shape, x / self.scale))
@@ -76,22 +76,35 @@ class Gamma(SizeLaw):
         return np.asarray(self.scale * special.gammainccinv(self.shape, p))
 
     def _limited_mean(self, limit: FloatArray) -> FloatArray:
-        below = self.mean() * special.gammainc(self.shape + 1, limit / self.scale)
+        below = self.mean() * lower_gamma(self.shape + 1, limit / self.scale)
         return np.asarray(below + limit * self._sf(limit))
 
     def _limited_second_moment(self, limit: FloatArray) -> FloatArray:
-        below = special.gammainc(self.shape + 2, limit / self.scale) * (self.shape + 1) * self.shape
+        below = lower_gamma(self.shape + 2, limit / self.scale) * (self.shape + 1) * self.shape
         return np.asarray(below * self.scale**2 + limit * (limit * self._sf(limit)))
 
     def _expected_excess(self, x: FloatArray) -> FloatArray:
         t = x / self.scale
         result = self.shape * np.asarray(special.gammaincc(self.shape + 1, t)) - t * self._sf(x)
-        far = t > self.shape + 2.0 * np.sqrt(self.shape) + 2.0
-        result[far] = self._sf(x[far]) * self._far_mean_excess(t[far])
+        far = self._far(t)
+        result[far] = self._sf(x[far]) * (1.0 + (self.shape - 1.0) * self._fraction(t[far]))
         return self.scale * np.maximum(result, 0.0)
 
-    def _far_mean_excess(self, t: FloatArray) -> FloatArray:
+    def _far(self, t: FloatArray) -> BoolArray:
+        return np.asarray(t > self.shape + 2.0 * np.sqrt(self.shape) + 2.0)
+
+    def _fraction(self, t: FloatArray) -> FloatArray:
+        """U(2, shape + 1, t) / U(1, shape + 1, t)."""
         quotient = np.zeros_like(t)
         for k in range(_FRACTION_TERMS, 1, -1):
             quotient = 1.0 / (t + 2 * k - self.shape - 1 - k * (k - self.shape) * quotient)
-        return 1.0 + (self.shape - 1.0) * quotient
+        return quotient
+
+    def _second_excess(self, x: FloatArray) -> FloatArray:
+        a, t = self.shape, x / self.scale
+        upper = [np.asarray(special.gammaincc(a + k, t)) for k in range(3)]
+        result = a * (a + 1) * upper[2] - 2.0 * a * t * upper[1] + t * t * upper[0]
+        far = self._far(t)
+        at = t[far]
+        result[far] = upper[0][far] * (1.0 + a - (at - 1.0 - a) * (a - 1.0) * self._fraction(at))
+        return self.scale**2 * np.maximum(result, 0.0)

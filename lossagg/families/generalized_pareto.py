@@ -137,3 +137,9 @@ class GeneralizedPareto(SizeLaw):
         below = np.maximum(self.threshold - x, 0.0)
         tail = np.exp((self.shape - 1) * self._t(x)) * (self.scale / (1 - self.shape))
         return np.asarray(below + tail)
+
+    def _second_excess(self, x: FloatArray) -> FloatArray:
+        below = np.maximum(self.threshold - x, 0.0)
+        first = self.scale / (1 - self.shape)
+        tail = 2.0 * first * self.scale / (1 - 2 * self.shape) * np.exp((2 * self.shape - 1) * self._t(x))
+        return np.asarray(below**2 + 2.0 * below * first + tail)

@@ -134,6 +134,12 @@ class InverseGaussian(SizeLaw):
         result[~low] = self._mean * normal_density(a[~low]) * rise
         return result
 
+    def _second_excess(self, x: FloatArray) -> FloatArray:
+        p, _ = self._ends(x)
+        survival, excess = self._sf(x), self._expected_excess(x)
+        above = survival + (excess + x * survival) / self.shape + 2.0 / p * normal_density(self._a(x))
+        return np.maximum(self._mean**2 * above - 2.0 * x * excess - x * (x * survival), 0.0)
+
 
 def _upper(a: FloatArray, width: FloatArray) -> FloatArray:
     """Phi(-a) - phi(a) R(a + width), with a + width >= |a|."""

@@ -115,7 +115,25 @@ class Lognormal(SizeLaw):
         result[wide] = above - x[wide] * special.ndtr(-z[wide])
         rest = ~low & ~wide
         at = z[rest]
-        result[rest] = x[rest] * normal_density(at) * mills_difference(at - self.sigma, np.full(at.shape, self.sigma))
+        result[rest] = (
+            x[rest] * normal_density(at) * mills_difference(at - self.sigma, np.full(at.shape, self.sigma))
+        )
+        return result
+
+    def _second_excess(self, x: FloatArray) -> FloatArray:
+        s, z = self.sigma, self._z(x)
+        result = self.variance() + (self.mean() - x) ** 2  # where all of the loss exceeds x
+        wide = (z >= -8.0) & (z - 2 * s < -8.0)
+        at, above = z[wide], x[wide]
+        result[wide] = (
+            np.exp(2 * self.mu + 2 * s * s + special.log_ndtr(2 * s - at))
+            - 2.0 * above * np.exp(self.mu + 0.5 * s * s + special.log_ndtr(s - at))
+            + above * (above * special.ndtr(-at))
+        )
+        rest = (z >= -8.0) & ~wide
+        at, width = z[rest], np.full(int(rest.sum()), s)
+        bend = mills_difference(at - 2 * s, width) - mills_difference(at - s, width)
+        result[rest] = x[rest] * (x[rest] * normal_density(at) * bend)
         return result
 
 

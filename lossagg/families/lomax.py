@@ -83,3 +83,7 @@ class Lomax(SizeLaw):
 
     def _expected_excess(self, x: FloatArray) -> FloatArray:
         return np.asarray(np.exp((1 - self.alpha) * self._log(x)) * (self.scale / (self.alpha - 1)))
+
+    def _second_excess(self, x: FloatArray) -> FloatArray:
+        level = 2.0 * self.scale**2 / ((self.alpha - 1) * (self.alpha - 2))
+        return np.asarray(level * np.exp((2 - self.alpha) * self._log(x)))

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from typing import ClassVar
 
 import numpy as np
+import numpy.typing as npt
 
 from lossagg.arrays import FloatArray, Floats, require_positive
 from lossagg.errors import InputError
@@ -143,28 +144,28 @@ class Mixture(SizeLaw):
         Jumps and gaps sit at known points. The function is evaluated there, which either gives the
         answer (an atom) or a bracket without jumps.
         """
-        tail = self._cdf if sign > 0 else self._sf
-        low, high = of_parts.min(axis=0), of_parts.max(axis=0)
-        ends = [end for part in self.parts for end in part.support]
-        points = np.array(sorted({*self.breakpoints, *(a for a, _ in self.atoms), *ends} - {np.inf}))
-        reached = _reached(tail(points), p, sign)
-        first = np.argmax(reached, axis=1)
-        some = reached.any(axis=1)
-        upper = np.where(some, points[first], np.inf)
-        lower = np.where(some, points[np.maximum(first - 1, 0)], points[-1])
-        low = np.maximum(low, np.where(some & (first == 0), 0.0, lower))
-        high = np.minimum(high, upper)
-        jumps = dict(self.atoms)
-        before = tail(points) - sign * np.array([jumps.get(float(point), 0.0) for point in points])
-        atom = some & ~_reached(before, p, sign)[np.arange(p.size), first]
+        points, at, before = self._steps(sign)
+        last = points.size - 1
+        first = _first_reached(at, p, sign)
+        place = np.minimum(first, last)
+        low = np.maximum(of_parts.min(axis=0), np.where(first > 0, points[np.maximum(first - 1, 0)], 0.0))
+        high = np.minimum(of_parts.max(axis=0), np.where(first <= last, points[place], np.inf))
+        # An atom is the answer where the tail just before it had not reached p.
+        atom = (first <= last) & (sign * before[place] < sign * p)
+        settled = atom | (high <= low)
+        result = np.where(atom, points[place], high)
         tiny = np.finfo(float).tiny
-        result = np.where(atom | (high <= low), high, 0.0)
-        free = result == 0
-        if free.any():
-            result[free] = self._solve(
-                p[free], np.maximum(low[free], tiny), np.maximum(high[free], tiny), sign
-            )
+        free = ~settled
+        result[free] = self._solve(p[free], np.maximum(low[free], tiny), np.maximum(high[free], tiny), sign)
         return result
+
+    def _steps(self, sign: float) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """Where the law jumps, kinks or has gaps; its cdf (sign 1) or sf there, and just before."""
+        jumps = dict(self.atoms)
+        ends = {end for part in self.parts for end in part.support}
+        points = np.array(sorted((ends | set(self.breakpoints) | set(jumps)) - {np.inf}))
+        at = self._cdf(points) if sign > 0 else self._sf(points)
+        return points, at, at - sign * np.array([jumps.get(float(point), 0.0) for point in points])
 
     def _solve(self, p: FloatArray, low: FloatArray, high: FloatArray, sign: float) -> FloatArray:
         result = np.empty(p.shape)
@@ -174,7 +175,13 @@ class Mixture(SizeLaw):
             result[chosen] = invert_tail(tail, self._pdf, target, low[chosen], high[chosen], slope)
         return result
 
+    def _second_excess(self, x: FloatArray) -> FloatArray:
+        return self._sum([part.second_excess(x) for part in self.parts])
 
-def _reached(values: FloatArray, p: FloatArray, sign: float) -> np.ndarray:
-    """Whether the quantile of each p (rows) lies at or below each point (columns)."""
-    return sign * values[None, :] >= sign * p[:, None]
+
+def _first_reached(values: FloatArray, p: FloatArray, sign: float) -> npt.NDArray[np.int64]:
+    """Index of the first point whose cdf is at least p (sign 1), or whose sf is at most p (sign -1)."""
+    if sign > 0:
+        return np.asarray(np.searchsorted(np.maximum.accumulate(values), p, side="left"))
+    falling = np.minimum.accumulate(values)
+    return np.asarray(values.size - np.searchsorted(falling[::-1], p, side="right"))

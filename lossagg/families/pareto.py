@@ -92,3 +92,9 @@ class Pareto(SizeLaw):
     def _expected_excess(self, x: FloatArray) -> FloatArray:
         tail = np.exp((1 - self.alpha) * self._log(x)) * self.minimum / (self.alpha - 1)
         return np.asarray(np.maximum(self.minimum - x, 0.0) + tail)
+
+    def _second_excess(self, x: FloatArray) -> FloatArray:
+        below = np.maximum(self.minimum - x, 0.0)
+        first = self.minimum / (self.alpha - 1)
+        tail = 2.0 * first * self.minimum / (self.alpha - 2) * np.exp((2 - self.alpha) * self._log(x))
+        return np.asarray(below**2 + 2.0 * below * first + tail)

@@ -10,7 +10,7 @@ from scipy import special
 
 from lossagg.arrays import FloatArray, require_positive, require_probability
 from lossagg.families.base import ComplexArray, CountLaw
-from lossagg.families.saddle import poisson_probability
+from lossagg.families.saddle import lower_gamma, poisson_probability
 
 
 @dataclass(frozen=True, init=False, repr=False)
@@ -60,7 +60,7 @@ class Poisson(CountLaw):
         return np.asarray(special.gammaincc(n + 1.0, self._mean))
 
     def _sf(self, n: FloatArray) -> FloatArray:
-        return np.asarray(special.gammainc(n + 1.0, self._mean))
+        return lower_gamma(n + 1.0, self._mean)
 
     def _pgf(self, z: ComplexArray) -> ComplexArray:
         return np.asarray(np.exp(self._log_pgf(z)))

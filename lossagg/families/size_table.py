@@ -98,6 +98,14 @@ class SizeTable(SizeLaw):
         steps = (np.diff(sizes) * self._sums[1][:-1])[::-1]
         return np.append(running_sums(steps)[::-1], 0.0)
 
+    @cached_property
+    def _second_excesses(self) -> FloatArray:
+        """E[((X - k-th atom)+)**2], summed from the top."""
+        sizes, _ = self._atoms
+        gaps = np.diff(sizes)
+        steps = (2.0 * gaps * self._excesses[1:] + gaps**2 * self._sums[1][:-1])[::-1]
+        return np.append(running_sums(steps)[::-1], 0.0)
+
     def mean(self) -> float:
         """The mean."""
         return float(self._partial_moments[0][-1])
@@ -164,4 +172,12 @@ class SizeTable(SizeLaw):
         after = self._count(x)
         upper = np.minimum(after, len(sizes) - 1)
         cost = self._excesses[upper] + (sizes[upper] - x) * self._sf(x)
+        return np.where(after < len(sizes), cost, 0.0)
+
+    def _second_excess(self, x: FloatArray) -> FloatArray:
+        sizes, _ = self._atoms
+        after = self._count(x)
+        upper = np.minimum(after, len(sizes) - 1)
+        gap = sizes[upper] - x
+        cost = self._second_excesses[upper] + 2.0 * gap * self._excesses[upper] + gap * gap * self._sf(x)
         return np.where(after < len(sizes), cost, 0.0)

@@ -92,21 +92,30 @@ class Spliced(SizeLaw):
     def _tail_factor(self) -> float:
         return self.tail_probability / self._tail_weight
 
+    def _given_parts(self) -> tuple[float, float, float, float]:
+        """Mean and variance of the body given a loss up to the threshold, of the tail given one above."""
+        u = self.threshold
+        weight, rest = self._body_weight, float(self.body.sf(u))
+        body_mean = (float(self.body.limited_mean(u)) - u * rest) / weight
+        body_second = (float(self.body.limited_second_moment(u)) - u * u * rest) / weight
+        excess = float(self.tail.mean_excess(u))
+        spread = np.inf
+        if self.tail_index > 2:
+            spread = float(self.tail.second_excess(u)) / self._tail_weight - excess**2
+        return body_mean, max(body_second - body_mean**2, 0.0), u + excess, max(spread, 0.0)
+
     def mean(self) -> float:
         """The mean, `inf` where the tail's is."""
-        u, q = self.threshold, self.tail_probability
-        below = float(self.body.limited_mean(u)) - u * float(self.body.sf(u))
-        return self._body_factor * below + q * (u + float(self.tail.mean_excess(u)))
+        body_mean, _, tail_mean, _ = self._given_parts()
+        return (1 - self.tail_probability) * body_mean + self.tail_probability * tail_mean
 
     def variance(self) -> float:
-        """The variance, `inf` where the tail's is."""
-        return self.second_moment() - self.mean() ** 2 if self.tail_index > 2 else np.inf
-
-    def second_moment(self) -> float:
-        """The second moment, `inf` where the tail's is."""
-        u, tail = self.threshold, self.tail
-        above = tail.second_moment() - float(tail.limited_second_moment(u)) + u * u * self._tail_weight
-        return self._body_factor * float(self._body_second(np.array(u))) + self._tail_factor * above
+        """The variance, `inf` where the tail's is: within the parts and between them."""
+        if self.tail_index <= 2:
+            return np.inf
+        body_mean, body_variance, tail_mean, tail_variance = self._given_parts()
+        q = self.tail_probability
+        return (1 - q) * body_variance + q * tail_variance + q * (1 - q) * (tail_mean - body_mean) ** 2
 
     @property
     def tail_index(self) -> float:
@@ -194,20 +203,29 @@ class Spliced(SizeLaw):
         layer = self._tail_factor * np.asarray(self.tail.layer_mean(self.threshold, high))
         return self._body_factor * body + self.tail_probability * low + layer
 
-    def _body_second(self, low: FloatArray) -> FloatArray:
-        """E[min(B, low)**2; B <= u] for low <= u."""
-        moment = np.asarray(self.body.limited_second_moment(low))
-        return moment - low * low * float(self.body.sf(self.threshold))
-
     def _limited_second_moment(self, limit: FloatArray) -> FloatArray:
+        u, q = self.threshold, self.tail_probability
         low, high, _ = self._split(limit)
-        moments = self.tail.limited_second_moment(high), self.tail.limited_second_moment(self.threshold)
-        above = self._tail_factor * np.maximum(np.asarray(moments[0]) - float(moments[1]), 0.0)
-        return self._body_factor * self._body_second(low) + self.tail_probability * low * low + above
+        body = np.asarray(self.body.limited_second_moment(low)) - low * low * float(self.body.sf(u))
+        above = np.asarray(self.tail.layer_second_moment(u, high)) + 2.0 * u * np.asarray(
+            self.tail.layer_mean(u, high)
+        )
+        return self._body_factor * body + q * low * low + self._tail_factor * above
 
     def _expected_excess(self, x: FloatArray) -> FloatArray:
         low, high, _ = self._split(x)
-        body = np.asarray(self.body.layer_mean(low, self.threshold))
-        body = body - (self.threshold - low) * float(self.body.sf(self.threshold))
+        room = self.threshold - low
+        body = np.asarray(self.body.layer_mean(low, self.threshold)) - room * float(
+            self.body.sf(self.threshold)
+        )
         tail = self._tail_factor * np.asarray(self.tail.expected_excess(high))
-        return self._body_factor * body + self.tail_probability * (self.threshold - low) + tail
+        return self._body_factor * np.maximum(body, 0.0) + self.tail_probability * room + tail
+
+    def _second_excess(self, x: FloatArray) -> FloatArray:
+        u, q = self.threshold, self.tail_probability
+        low, high, _ = self._split(x)
+        room = u - low
+        body = np.asarray(self.body.layer_second_moment(low, u)) - room * room * float(self.body.sf(u))
+        tail = np.asarray(self.tail.second_excess(high)) + 2.0 * room * self.tail.expected_excess(high)
+        rest = q * room * room + self._tail_factor * tail
+        return np.asarray(self._body_factor * np.maximum(body, 0.0) + rest)

@@ -92,6 +92,10 @@ class Weibull(SizeLaw):
         # The recurrence of the incomplete gamma function takes x S(x) out of the difference.
         return np.asarray(self.mean() * special.gammaincc(1 / self.shape, self._t(x)))
 
+    def _second_excess(self, x: FloatArray) -> FloatArray:
+        above = self.second_moment() * special.gammaincc(2 / self.shape, self._t(x))
+        return np.maximum(above - 2.0 * x * self._expected_excess(x), 0.0)
+
 
 def _squared_variation(inverse: float) -> float:
     """Gamma(1 + 2y) / Gamma(1 + y)**2 - 1; for small y from the series of log Gamma (zeta values),
