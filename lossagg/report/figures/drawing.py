@@ -48,13 +48,17 @@ _STYLE: dict[Any, Any] = {
 
 
 @contextmanager
-def canvas(width: float, height: float, salt: str) -> Iterator[tuple[Figure, Axes]]:
-    """A figure of `width` by `height` inches with one pair of axes, in the style of the report."""
+def canvas(width: float, height: float, salt: str, left: float) -> Iterator[tuple[Figure, Axes]]:
+    """A figure of `width` by `height` inches with one pair of axes, in the style of the report.
+
+    `left` is the room for the labels of the vertical axis, in inches.
+    """
     import matplotlib
     from matplotlib.figure import Figure
 
     with matplotlib.rc_context({**_STYLE, "svg.hashsalt": salt}):
-        figure = Figure(figsize=(width, height), layout="constrained")
+        figure = Figure(figsize=(width, height))
+        figure.subplots_adjust(left / width, 0.5 / height, 1 - 0.12 / width, 1 - 0.1 / height)
         yield figure, figure.add_subplot()
 
 
@@ -101,15 +105,15 @@ def thinned(count: int) -> list[int]:
 
 def log_amounts(axis: Axes, *, which: str) -> None:
     """Make an axis logarithmic with amounts as labels."""
-    from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter
+    from matplotlib.ticker import FuncFormatter, LogLocator, NullLocator
 
     if which in ("x", "both"):
         axis.set_xscale("log")
         axis.xaxis.set_major_locator(LogLocator(numticks=8))
         axis.xaxis.set_major_formatter(FuncFormatter(amount_label))
-        axis.xaxis.set_minor_formatter(NullFormatter())
+        axis.xaxis.set_minor_locator(NullLocator())
     if which in ("y", "both"):
         axis.set_yscale("log")
         axis.yaxis.set_major_locator(LogLocator(numticks=8))
         axis.yaxis.set_major_formatter(FuncFormatter(amount_label))
-        axis.yaxis.set_minor_formatter(NullFormatter())
+        axis.yaxis.set_minor_locator(NullLocator())

@@ -22,7 +22,7 @@ def exceedance_figure(assessment: Assessment) -> str | None:
     curves = {subject: _drawable(assessment[subject]["curve"]) for subject in ("gross", "net")}
     if not any(curves.values()):
         return None
-    with canvas(7.6, 4.1, "exceedance") as (figure, axis):
+    with canvas(7.6, 4.1, "exceedance", 1.7) as (figure, axis):
         axis.set_yscale("log")
         if _wide(curves):
             log_amounts(axis, which="x")

@@ -32,7 +32,7 @@ def survival_figure(line: Entry, name: str, currency: str) -> str | None:
     if len(points) < 2:
         return None
     amounts = [point["amount"] for point in points]
-    with canvas(*SIZE, name) as (figure, axis):
+    with canvas(*SIZE, name, 0.72) as (figure, axis):
         log_amounts(axis, which="x")
         axis.set_yscale("log")
         banded = [point for point in points if point.get("low") and point.get("high")]
@@ -63,12 +63,12 @@ def survival_figure(line: Entry, name: str, currency: str) -> str | None:
 
 
 def _chances(axis: Axes, smallest: float) -> None:
-    from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter
+    from matplotlib.ticker import FuncFormatter, LogLocator, NullLocator
 
     axis.set_ylim(smallest / 3, 1.3)
     axis.yaxis.set_major_locator(LogLocator(numticks=6))
     axis.yaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{100 * value:g}%"))
-    axis.yaxis.set_minor_formatter(NullFormatter())
+    axis.yaxis.set_minor_locator(NullLocator())
 
 
 def quantile_figure(line: Entry, name: str, currency: str) -> str | None:
@@ -82,7 +82,7 @@ def quantile_figure(line: Entry, name: str, currency: str) -> str | None:
         return None
     points.sort(key=lambda point: (point["fitted"], point["observed"]))
     drawn = [points[index] for index in thinned(len(points))]
-    with canvas(*SIZE, name) as (figure, axis):
+    with canvas(*SIZE, name, 0.72) as (figure, axis):
         log_amounts(axis, which="both")
         fitted = [point["fitted"] for point in drawn]
         observed = [point["observed"] for point in drawn]
@@ -105,7 +105,7 @@ def counts_figure(line: Entry, name: str) -> str | None:
     from matplotlib.ticker import FuncFormatter, MaxNLocator
 
     years = [point["year"] for point in points]
-    with canvas(*SIZE, name) as (figure, axis):
+    with canvas(*SIZE, name, 0.72) as (figure, axis):
         axis.bar(
             years,
             [point["observed"] for point in points],

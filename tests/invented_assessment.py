@@ -275,7 +275,7 @@ def cover_row(name: str, **terms: Any) -> dict[str, Any]:
         "description": f"{name}: in words",
         "lines": ["Cargo handling", "Berths and structures"],
         "after": [] if full["limit"] else ["Working layer"],
-        "order": "per event: deductible, then limit; per year: annual retention, then annual limit; then share",
+        "order": "per event: deductible, then limit; per year: retention, then limit; then share",
         "expected": mean,
         "sd": mean * 0.81,
         "attachment_probability": 0.9713 if full["limit"] else 0.1047,
@@ -410,6 +410,15 @@ def sample_assessment() -> dict[str, Any]:
         ],
     }
     return deepcopy(document)
+
+
+def small_assessment() -> dict[str, Any]:
+    """One line of given laws and no cover: quick to write."""
+    document = sample_assessment()
+    document["lines"], document["covers"] = document["lines"][2:], []
+    for subject in ("gross", "net"):
+        document[subject]["curve"] = document[subject]["curve"][::12]
+    return document
 
 
 def withheld_assessment() -> dict[str, Any]:
