@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
@@ -9,11 +10,15 @@ from typing import Any
 import numpy as np
 
 from lossagg.arrays import BoolArray, IntArray
+from lossagg.records.amounts import MISSING
 from lossagg.records.findings import Action, Finding, rows_in_words
 from lossagg.records.money import DecimalArray, exact_sum
 
 LISTED = 20
 _SHOWN = 40
+_MONTHS = "january|february|march|april|june|july|august|sept|september|october|november|december"
+_WORDS = re.compile(rf"\b(?!(?:{_MONTHS})\b)[^\W\d_]{{4,}}", re.IGNORECASE)
+_INFINITE = re.compile(r"[+-]?inf(inity)?$", re.IGNORECASE)
 
 
 @dataclass(frozen=True)
@@ -92,8 +97,9 @@ def show(text: str) -> str:
     A name in the amount column means that the mapping is wrong, and it must not reach a log.
     """
     clean = text.strip()
-    prose = len(clean) > 6 and not any(character.isdigit() for character in clean)
-    if prose or len(clean) > _SHOWN:
+    prose = _WORDS.search(clean) or (clean[:1].isalpha() and not any(map(str.isdigit, clean)))
+    known = clean.lower() in MISSING or _INFINITE.match(clean)
+    if len(clean) > _SHOWN or (prose and not known):
         return f"<text of {len(clean)} characters>"
     return clean
 

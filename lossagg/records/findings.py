@@ -128,8 +128,8 @@ def _others(stops: Sequence[Finding]) -> str:
     groups = list(by_fault.values())
     text = ""
     total = sum(finding.count for finding in groups[0])
-    if total > 1:
-        rows = [finding.row for finding in groups[0] if finding.row is not None]
+    rows = [finding.row for finding in groups[0] if finding.row is not None]
+    if rows and total > 1:
         text += f" {total} rows have this fault: {rows_in_words(rows, total)}."
     for group in groups[1:FAULTS_NAMED]:
         rows = [finding.row for finding in group if finding.row is not None]

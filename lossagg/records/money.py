@@ -63,7 +63,8 @@ class Reconciliation:
     unvalued: int = 0
 
     def __post_init__(self) -> None:
-        balance = exact_sum([self.amount_used, self.amount_excluded, -self.amount_read])
+        # copy_negate: a plain minus would round to the precision of the surrounding context.
+        balance = exact_sum([self.amount_used, self.amount_excluded, self.amount_read.copy_negate()])
         if self.read != self.used + self.excluded or balance != 0:
             raise LossaggError(
                 "the reconciliation does not hold",

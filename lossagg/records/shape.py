@@ -128,7 +128,8 @@ def _near_duplicates(table: LossTable, used: BoolArray) -> list[tuple[str, str, 
     rows = np.flatnonzero(used)
     date, amount = table.date[rows].astype(np.int64), table.amount[rows]
     mark = table.fingerprint[rows]
-    order = np.lexsort((rows, mark, amount, date))
+    # Not sorted by fingerprint: its order changes from run to run, and findings must not.
+    order = np.lexsort((rows, amount, date))
     date, amount, mark = date[order], amount[order], mark[order]
     twin = (date[1:] == date[:-1]) & (amount[1:] == amount[:-1]) & (mark[1:] != mark[:-1])
     if not twin.any():

@@ -33,8 +33,8 @@ def check_tolerance(
     if not faulty.any():
         return
     count = int(np.count_nonzero(faulty))
-    kept = exact_sum(abs(amount) for amount in table.exact[used])
-    lost = exact_sum(abs(amount) for amount in table.exact[faulty])
+    kept = exact_sum(amount.copy_abs() for amount in table.exact[used])
+    lost = exact_sum(amount.copy_abs() for amount in table.exact[faulty])
     shares = {
         "rows": count / max(1, count + int(np.count_nonzero(used))),
         "the money": float(lost / (kept + lost)) if lost else 0.0,
