@@ -27,7 +27,7 @@ from lossagg.engines.yearly import LineColumns, annual_amounts, growth, line_col
 from lossagg.errors import EngineError, InputError
 from lossagg.families.base import CountLaw, SizeLaw
 from lossagg.kernels.compile import awaits_compilation
-from lossagg.kernels.simulation import add_events, add_years, draw_sizes
+from lossagg.kernels.simulation import add_events, add_years, draw_sizes, draw_uniforms
 
 MOST_YEARS = 10**10
 MOST_LOSSES = 1e13
@@ -170,15 +170,33 @@ def line_sums(line: PreparedLine, *, seed: int, block: int, years: int) -> Float
     return annual
 
 
-def block_events(line: PreparedLine, *, seed: int, block: int, years: int) -> tuple[IntArray, FloatArray]:
-    """The very losses that `line_sums` adds up: (counts per year, sizes in the order of the years)."""
+def block_events(
+    line: PreparedLine, *, seed: int, block: int, first: int, last: int
+) -> tuple[IntArray, FloatArray]:
+    """The very losses that `line_sums` adds up, for a replay of single years.
+
+    Args:
+        line: the line.
+        seed: the seed of the run.
+        block: number of the block.
+        first: first year asked for, counted from the start of the block.
+        last: the year after the last.
+
+    Returns:
+        Counts per year, shape (last - first,), and sizes in the order of the years.
+    """
     state = block_state(seed, line.key, block)
-    counts = line.counts.draw(state, BLOCK_YEARS)[:years]
-    sizes = np.empty(int(counts.sum()))
+    counts = line.counts.draw(state, BLOCK_YEARS)
+    before = int(counts[:first].sum())
+    passed = np.empty(min(before, NOTES))
+    while before > 0:
+        draw_uniforms(state, passed[:before])
+        before -= passed.size
+    sizes = np.empty(int(counts[first:last].sum()))
     flagged, probability = np.empty(sizes.size, dtype=np.int64), np.empty(sizes.size)
     found = draw_sizes(state, line.sizes.arrays, sizes, flagged, probability, 0)
     sizes[flagged[:found]] = line.sizes.exact(probability[:found])
-    return counts, sizes
+    return counts[first:last], sizes
 
 
 def require_resources(years: int, subjects: int, book: Book, memory: int) -> None:

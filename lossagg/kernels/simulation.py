@@ -101,7 +101,7 @@ def draw_discrete(
 
 
 @compiled
-def refined_size(cubics: FloatArray, row: int, f: float) -> float:
+def refined_size(cubics: FloatArray, row: np.int64, f: float) -> float:
     """The size at position f of a cell in parts; NaN where the part, or the cell, has no answer.
 
     Apart from the loop that calls it: within it, it made every draw three times slower.

@@ -110,8 +110,21 @@ def test_the_seed_and_the_name_change_the_losses():
 
 
 def events_by_year(book, line, years):
-    counts, sizes = block_events(prepare_line(line, book, book.subjects), seed=1, block=0, years=years)
+    prepared = prepare_line(line, book, book.subjects)
+    counts, sizes = block_events(prepared, seed=1, block=0, first=0, last=years)
     return np.split(sizes, np.cumsum(counts)[:-1])
+
+
+def test_single_years_are_replayed_alone():
+    """A year's losses, far into a later block, add up to its annual figure; what was passed over to
+    reach them is passed over exactly."""
+    years = amounts(OTHER, years=BLOCK_YEARS + 30_000)
+    for line in OTHER.lines:
+        prepared = prepare_line(line, OTHER, OTHER.subjects)
+        counts, sizes = block_events(prepared, seed=1, block=1, first=29_000, last=29_400)
+        own = [part.sum() for part in np.split(sizes, np.cumsum(counts)[:-1])]
+        there = years[Subject("line", line.name)][BLOCK_YEARS + 29_000 : BLOCK_YEARS + 29_400]
+        np.testing.assert_allclose(own, there, rtol=1e-12)
 
 
 def cover_event(cover, x):
