@@ -10,10 +10,12 @@ from __future__ import annotations
 import datetime as dt
 import re
 import zipfile
+import zlib
 from collections.abc import Iterator, Sequence
+from contextlib import closing, contextmanager
 from itertools import islice
 from pathlib import Path
-from typing import Any
+from typing import Any, BinaryIO
 
 import numpy as np
 
@@ -46,8 +48,7 @@ def read_workbook(path: Path, layout: Layout, choose: Choose) -> RawTable:
             formula without a stored value, no rows.
     """
     _check_package(path)
-    book = _load(path, data_only=True)
-    try:
+    with _opened(path, data_only=True) as book:
         sheet = _choose_sheet(book, layout.sheet, path.name)
         marks = _marks(path, sheet)
         if marks["merged"]:
@@ -57,8 +58,6 @@ def read_workbook(path: Path, layout: Layout, choose: Choose) -> RawTable:
                 remedy="Unmerge them, so that each row stands on its own.",
             )
         return _read_sheet(path, sheet, marks, choose)
-    finally:
-        book.close()
 
 
 def _read_sheet(path: Path, sheet: Any, marks: dict[str, bool], choose: Choose) -> RawTable:
@@ -164,16 +163,30 @@ def _check_package(path: Path) -> None:
         )
 
 
-def _load(path: Path, *, data_only: bool) -> Any:
+@contextmanager
+def _opened(path: Path, *, data_only: bool) -> Iterator[Any]:
+    """Open a workbook for reading; the file is ours to close, whatever part of it was read."""
+    with path.open("rb") as stream:
+        try:
+            with closing(_load(stream, path.name, data_only)) as book:
+                yield book
+        except (zipfile.BadZipFile, zlib.error, SyntaxError, EOFError) as error:
+            # Sheets are parsed while they are read: damage shows only then, as broken XML or a bad checksum.
+            raise _damaged(path.name) from error
+
+
+def _load(stream: BinaryIO, file: str, data_only: bool) -> Any:
     import openpyxl
 
     try:
-        return openpyxl.load_workbook(path, read_only=True, data_only=data_only, keep_links=False)
-    except (zipfile.BadZipFile, SyntaxError, KeyError, ValueError, TypeError, AttributeError) as error:
-        # What the library raises for parts that are missing or no XML; none of it names the file.
-        raise InputError(
-            "the workbook is damaged", where=place(file=path.name), remedy="Save it again as .xlsx."
-        ) from error
+        return openpyxl.load_workbook(stream, read_only=True, data_only=data_only, keep_links=False)
+    except (KeyError, ValueError, TypeError, AttributeError) as error:
+        # What the library raises for parts that are missing; none of it names the file.
+        raise _damaged(file) from error
+
+
+def _damaged(file: str) -> InputError:
+    return InputError("the workbook is damaged", where=place(file=file), remedy="Save it again as .xlsx.")
 
 
 def _choose_sheet(book: Any, wanted: str | None, file: str) -> Any:
@@ -218,9 +231,7 @@ def _windows(path: Path, member: str) -> Iterator[bytes]:
 
 def _refuse_unstored(path: Path, title: str, positions: Any) -> None:
     """Stop at a formula whose value was never stored, in a column that is read."""
-    stored = _load(path, data_only=True)
-    written = _load(path, data_only=False)
-    try:
+    with _opened(path, data_only=True) as stored, _opened(path, data_only=False) as written:
         pairs = zip(stored[title].iter_rows(values_only=True), written[title].iter_rows(), strict=True)
         for number, (values, cells) in enumerate(pairs, start=1):
             for name, position in positions.items():
@@ -230,6 +241,3 @@ def _refuse_unstored(path: Path, title: str, positions: Any) -> None:
                         where=place(file=path.name, sheet=title, row=number, column=name),
                         remedy="Open the workbook, let it calculate, save it; or paste the values.",
                     )
-    finally:
-        stored.close()
-        written.close()
