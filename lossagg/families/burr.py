@@ -142,7 +142,7 @@ class Burr(SizeLaw):
             width = stop - start
             nodes = start[:, None] + 0.5 * width[:, None] * (1.0 + _NODES)
             values = np.exp(growth * nodes - self.alpha * np.log1p(np.exp(-nodes)))
-            return np.asarray(0.5 * width * (values @ _WEIGHTS))
+            return np.asarray(0.5 * width * np.sum(values * _WEIGHTS, axis=-1))
 
         knots = _PANEL * np.arange(_PANELS + 1.0)
         whole = np.concatenate([[0.0], np.cumsum(integral(knots[:-1], knots[1:]))])

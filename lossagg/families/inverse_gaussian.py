@@ -167,5 +167,6 @@ def _wide_second(p: FloatArray, c: FloatArray) -> FloatArray:
         # drop: sum of 2k / (2k+1)! square**(k-1), by the same nesting
         drop = drop * square / ((2 * k + 2) * (2 * k + 3)) + 2.0 * k
     bracket_over_c2 = u * (1.0 + hyperbolic) - u**3 * drop / 6.0
-    integral = 0.5 * reach * ((np.exp(-p[:, None] * u - 0.5 * u * u) * bracket_over_c2) @ _WEIGHTS)
+    values = np.exp(-p[:, None] * u - 0.5 * u * u) * bracket_over_c2
+    integral = 0.5 * reach * np.sum(values * _WEIGHTS, axis=-1)
     return np.asarray(2.0 * c * c / p * integral)

@@ -70,7 +70,7 @@ def _difference(
     result = np.empty(np.shape(low))
     result[~short] = function(low[~short]) - function(low[~short] + width[~short])
     nodes = low[short][:, None] + 0.5 * width[short][:, None] * (1.0 + _NODES)
-    result[short] = 0.5 * width[short] * (slope(nodes) @ _WEIGHTS)
+    result[short] = 0.5 * width[short] * np.sum(slope(nodes) * _WEIGHTS, axis=-1)
     return result
 
 

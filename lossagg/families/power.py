@@ -12,6 +12,8 @@ from scipy import special
 
 from lossagg.arrays import FloatArray
 
+# Weighted values are summed, here and in the other laws, not multiplied as matrices: a matrix product
+# may round differently with the number of rows, and a law must give one amount one answer.
 _NODES, _WEIGHTS = np.polynomial.legendre.leggauss(32)
 
 
@@ -38,7 +40,7 @@ def limited_excess_second_moment(shape: float, t: FloatArray) -> FloatArray:
     result = np.empty(t.shape)
     nodes = 0.5 * t[short][:, None] * (1.0 + _NODES)
     values = excess_at(shape, nodes) * np.exp((shape - 1.0) * nodes)
-    result[short] = t[short] * (values @ _WEIGHTS)
+    result[short] = t[short] * np.sum(values * _WEIGHTS, axis=-1)
     long = t[~short]
     with np.errstate(over="ignore"):
         if shape < 0.5:  # by parts
