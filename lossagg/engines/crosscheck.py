@@ -1,0 +1,209 @@
+"""The gate: a figure is printed only where independent engines agree on it.
+
+Two kinds of evidence are compared, each on its own terms. The exact engines carry guaranteed
+brackets: each one's value must lie inside the other's bracket. The simulation carries chance: it must
+lie within four of its own standard errors of the reference. For VaR this is judged in probability,
+not in money: the number of simulated years beyond the reference's bracket is binomial, whatever the
+tail (so it holds where no variance exists), and atoms are no obstacle.
+
+Four standard errors is a chance of 6e-5 per comparison, so a clean assessment with a hundred
+comparisons is withheld by bad luck less than once in a hundred seeds.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from lossagg.engines.book import Book, Subject
+from lossagg.engines.result import AnnualLoss, BookResult, BracketedAnnualLoss
+from lossagg.errors import DoesNotExistError
+
+STANDARD_ERRORS = 4.0
+ROUND_OFF = 1e-9
+TOLERANCE = (
+    f"exact engines inside each other's bracket; simulation within {STANDARD_ERRORS:g} standard errors"
+)
+
+Bracket = tuple[float, float]
+
+
+@dataclass(frozen=True, kw_only=True)
+class Comparison:
+    """One figure as each engine has it.
+
+    Attributes:
+        subject: whose figure.
+        measure: "mean", "sd", "value_at_risk" or "tail_value_at_risk".
+        level: level of the last two, else None.
+        values: the figure by engine; engines that cannot compute the subject are absent.
+        brackets: the bracket by exact engine.
+        standard_error: of the simulated figure; None where it does not exist.
+        agrees: whether all engines agree.
+        note: what disagrees and by how much, or what could not be compared.
+    """
+
+    subject: Subject
+    measure: str
+    level: float | None
+    values: Mapping[str, float]
+    brackets: Mapping[str, Bracket]
+    standard_error: float | None
+    agrees: bool
+    note: str | None = None
+
+
+@dataclass(frozen=True, kw_only=True)
+class Crosscheck:
+    """Every comparison, and the verdict.
+
+    Attributes:
+        comparisons: in the order of the book's subjects.
+        refused: by engine, why it left a subject out.
+    """
+
+    comparisons: tuple[Comparison, ...]
+    refused: Mapping[str, Mapping[Subject, str]] = field(default_factory=dict)
+
+    @property
+    def agrees(self) -> bool:
+        """Whether every comparison agrees."""
+        return all(comparison.agrees for comparison in self.comparisons)
+
+    @property
+    def summary(self) -> str:
+        """One sentence: how many comparisons agree, or the widest disagreement."""
+        wrong = [comparison for comparison in self.comparisons if not comparison.agrees]
+        if not wrong:
+            return f"All {len(self.comparisons)} comparisons between the engines agree."
+        worst = max(wrong, key=_relative_gap)
+        at = "" if worst.level is None else f" at {worst.level:.4%}".rstrip("0").rstrip(".")
+        return (
+            f"{len(wrong)} of {len(self.comparisons)} comparisons disagree; the widest gap is the "
+            f"{worst.measure.replace('_', ' ')}{at} of {worst.subject}: {worst.note}."
+        )
+
+
+def crosscheck(book: Book, results: Mapping[str, BookResult], levels: Sequence[float]) -> Crosscheck:
+    """Compare the engines on every subject: mean, sd, and VaR and TVaR at each level.
+
+    Args:
+        book: the book all engines computed.
+        results: what each engine made of it, by engine name.
+        levels: levels of VaR and TVaR, in (0, 1).
+
+    Returns:
+        The comparisons and the verdict. A subject that only one engine can compute appears with its
+        single value and a note; it cannot agree or disagree.
+    """
+    asked: list[tuple[str, float | None]] = [("mean", None), ("sd", None)]
+    asked += [(measure, level) for level in levels for measure in ("value_at_risk", "tail_value_at_risk")]
+    comparisons = []
+    for subject in book.subjects:
+        losses = {
+            name: result.losses[subject] for name, result in results.items() if subject in result.losses
+        }
+        comparisons += [_compare(subject, measure, level, losses) for measure, level in asked]
+    return Crosscheck(
+        comparisons=tuple(comparisons),
+        refused={name: result.refused for name, result in results.items() if result.refused},
+    )
+
+
+def _compare(
+    subject: Subject, measure: str, level: float | None, losses: Mapping[str, AnnualLoss]
+) -> Comparison:
+    exact = {name: loss for name, loss in losses.items() if isinstance(loss, BracketedAnnualLoss)}
+    simulated = {name: loss for name, loss in losses.items() if name not in exact}
+    values = {name: loss.measure(measure, level) for name, loss in losses.items()}
+    brackets = {name: loss.accuracy(measure, level) for name, loss in exact.items()}
+    faults = _exact_faults(values, brackets)
+    notes = ["only one engine can compute this"] if len(losses) == 1 else []
+    error = None
+    for name, loss in simulated.items():
+        error = _standard_error(loss, measure, level)
+        for reference, bracket in brackets.items():
+            if not all(np.isfinite([values[name], values[reference]])):
+                if np.isfinite(values[name]) != np.isfinite(values[reference]):
+                    faults.append(f"{name} and {reference} differ on whether it exists")
+            elif measure == "value_at_risk" and level is not None:
+                faults += _quantile_faults(name, loss, reference, bracket, level)
+            elif error is None:
+                notes.append("not compared with the simulation: its standard error does not exist")
+            else:
+                faults += _moment_faults((name, values[name]), (reference, values[reference]), bracket, error)
+    return Comparison(
+        subject=subject,
+        measure=measure,
+        level=level,
+        values=values,
+        brackets=brackets,
+        standard_error=error,
+        agrees=not faults,
+        note="; ".join(faults or dict.fromkeys(notes)) or None,
+    )
+
+
+def _exact_faults(values: Mapping[str, float], brackets: Mapping[str, Bracket]) -> list[str]:
+    """Pairs of exact engines of which one's value lies outside the other's bracket."""
+    faults = []
+    for name in brackets:
+        for other, (low, high) in brackets.items():
+            if name == other:
+                continue
+            slack = ROUND_OFF * abs(high) if np.isfinite(high) else 0.0
+            if not low - slack <= values[name] <= high + slack:
+                faults.append(
+                    f"{name} {values[name]:.6g} is outside {other}'s bracket [{low:.6g}, {high:.6g}]"
+                )
+    return faults
+
+
+def _quantile_faults(
+    name: str, loss: AnnualLoss, reference: str, bracket: Bracket, level: float
+) -> list[str]:
+    """Whether the simulated years beyond the bracketed quantile are as many as chance allows.
+
+    P(S > VaR) <= 1 - level <= P(S >= VaR), so too many years above the bracket, or too few at or
+    above its lower end, is a fault.
+    """
+    years = loss.years  # type: ignore[attr-defined]
+    expected = years * (1.0 - level)
+    allowed = STANDARD_ERRORS * np.sqrt(years * level * (1.0 - level)) + 1.0
+    low, high = bracket
+    above = years * float(loss.sf(high * (1 + ROUND_OFF)))
+    at_or_above = years * float(loss.sf(low * (1 - ROUND_OFF) - 1e-300)) if low > 0 else years
+    if above > expected + allowed:
+        return [f"{name} has {above:.0f} years above {reference}'s {high:.6g}, {expected:.0f} expected"]
+    if at_or_above < expected - allowed:
+        return [
+            f"{name} has {at_or_above:.0f} years from {reference}'s {low:.6g} up, {expected:.0f} expected"
+        ]
+    return []
+
+
+def _moment_faults(
+    simulated: tuple[str, float], exact: tuple[str, float], bracket: Bracket, error: float
+) -> list[str]:
+    """Whether a simulated mean, sd or TVaR is within four standard errors of the bracketed value."""
+    (name, value), (reference, centre) = simulated, exact
+    low, high = min(bracket[0], centre), max(bracket[1], centre)
+    gap = max(low - value, value - high, 0.0)
+    if gap <= STANDARD_ERRORS * error + ROUND_OFF * abs(centre):
+        return []
+    size = f"{gap / error:.1f} standard errors" if error > 0 else f"{gap:.6g}"
+    return [f"{name} {value:.6g} is {size} from {reference} {centre:.6g}"]
+
+
+def _standard_error(loss: AnnualLoss, measure: str, level: float | None) -> float | None:
+    try:
+        return float(loss.standard_error(measure, level))  # type: ignore[attr-defined]
+    except DoesNotExistError:
+        return None
+
+
+def _relative_gap(comparison: Comparison) -> float:
+    finite = [value for value in comparison.values.values() if np.isfinite(value)]
+    return (max(finite) - min(finite)) / max(max(finite), 1e-300) if finite else np.inf

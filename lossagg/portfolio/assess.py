@@ -1,0 +1,102 @@
+"""From lines and covers to an assessment: three engines, the crosscheck, and the figures."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+
+from lossagg.cover.terms import ORDER_OF_OPERATIONS
+from lossagg.engines import Fourier, Panjer, Simulation
+from lossagg.engines.book import GROSS, NET, Book, Subject
+from lossagg.engines.crosscheck import crosscheck
+from lossagg.engines.result import AnnualLoss, BookResult
+from lossagg.portfolio.assessment import (
+    Data,
+    cover_of,
+    crosscheck_of,
+    headline_of,
+    levels_of,
+    number,
+    subject_of,
+)
+from lossagg.portfolio.evidence import line_evidence
+from lossagg.portfolio.line import LineModel
+
+Progress = Callable[[str, float], None]
+"""Called with what is being done and the fraction of the whole that is done."""
+
+
+def silent(stage: str, done: float) -> None:
+    """No progress shown."""
+
+
+def compute(
+    book: Book, *, years: int, seed: int, workers: int | None, progress: Progress = silent
+) -> dict[str, BookResult]:
+    """What each engine makes of the book, by engine name."""
+    simulation = Simulation(years=years, seed=seed, workers=workers)
+    progress("simulating", 0.2)
+    results = {"simulation": simulation.book(book)}
+    progress("Fourier transforms", 0.5)
+    results["fourier"] = Fourier().book(book)
+    progress("Panjer recursion", 0.7)
+    results["panjer"] = Panjer().book(book)
+    progress("crosscheck", 0.85)
+    return {name: results[name] for name in ("fourier", "panjer", "simulation")}
+
+
+def figures(
+    book: Book,
+    lines: Sequence[LineModel],
+    results: dict[str, BookResult],
+    levels: Sequence[float],
+    capital_level: float,
+) -> Data:
+    """Lines, gross, net, covers, crosscheck and headline of the assessment."""
+    asked = tuple(sorted({*levels, capital_level}))
+    check = crosscheck(book, results, asked)
+    withheld = not check.agrees
+    best = {subject: _best(results, subject) for subject in book.subjects}
+
+    def whole(subject: Subject) -> Data:
+        loss, exact = best[subject]
+        note = None if exact else results["fourier"].refused.get(subject)
+        return subject_of(loss, levels, exact=exact, withheld=withheld, note=note)
+
+    headline = NET if book.covers else GROSS
+    return {
+        "headline": headline_of(headline, best[headline][0], capital_level, check),
+        "lines": [
+            _line(model, best[Subject("line", model.name)][0], levels, withheld=withheld) for model in lines
+        ],
+        "gross": whole(GROSS),
+        "net": whole(NET),
+        "covers": [
+            cover_of(
+                book,
+                cover,
+                best[Subject("cover", cover.name)][0],
+                levels,
+                ORDER_OF_OPERATIONS,
+                withheld=withheld,
+            )
+            for cover in book.covers
+        ],
+        "crosscheck": crosscheck_of(check),
+    }
+
+
+def _line(model: LineModel, loss: AnnualLoss, levels: Sequence[float], *, withheld: bool) -> Data:
+    return {
+        **line_evidence(model),
+        "mean": None if withheld else number(loss.mean()),
+        "sd": None if withheld else number(loss.sd()),
+        "levels": levels_of(loss, levels, withheld=withheld),
+    }
+
+
+def _best(results: dict[str, BookResult], subject: Subject) -> tuple[AnnualLoss, bool]:
+    """The result reported for a subject, and whether it comes from an exact engine."""
+    for name in ("fourier", "panjer"):
+        if subject in results[name].losses:
+            return results[name].losses[subject], True
+    return results["simulation"].losses[subject], False

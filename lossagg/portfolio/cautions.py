@@ -1,0 +1,95 @@
+"""What a reader must know before relying on the figures: always the standing cautions, then what this
+portfolio triggers."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+
+from lossagg.portfolio.line import LineModel
+from lossagg.records import PreparedLosses
+
+Caution = dict[str, str]
+
+STANDING = {
+    "not-an-opinion": "These are estimates from a model. They are not an actuarial opinion, a "
+    "certification or a regulatory filing, and not legal, tax or accounting advice;"
+    " a qualified person must take responsibility for their use. Local rules and "
+    "licensed practice prevail.",
+    "model-error": "The laws of frequency and severity are choices. Other laws that fit the same "
+    "records can give very different figures beyond the largest losses seen.",
+    "parameter-error": "The figures take the fitted parameters as known. Brackets and intervals bound"
+    " the error of the calculation only, not that of the parameters: see the "
+    "standard errors of each fit.",
+    "changed-world": "Past terms, reporting practice, inflation and exposure differ from those to "
+    "come; only the trend and exposure stated for each line are adjusted for.",
+}
+INDEPENDENCE = (
+    "The lines are taken as independent of each other. Years in which several go wrong together are "
+    "more likely than that; compare the total with the sum of the lines' own figures."
+)
+INFINITE_MEAN = (
+    "the severity has tail index {index:.3g}, at or below 1, so its mean does not exist. No mean, no "
+    "TVaR and no uncapped premium is printed where it enters. Limit the loss by a policy limit or a "
+    "cover, bound it by a scenario, or review the tail."
+)
+INFINITE_VARIANCE = (
+    "the severity has tail index {index:.3g}, at or below 2, so its variance does not exist: no "
+    "standard deviation is printed, and sample means are unreliable."
+)
+GIVEN = "frequency and severity are given, not fitted: the figures rest on that judgement."
+FEW_LOSSES = 30
+
+
+def cautions(lines: Sequence[LineModel], levels: Sequence[float]) -> list[Caution]:
+    """The standing cautions, then those the lines trigger.
+
+    Args:
+        lines: the lines of the portfolio, modelled.
+        levels: every level at which a figure is printed.
+    """
+    found = [_caution(code, message) for code, message in STANDING.items()]
+    if len(lines) > 1:
+        found.append(_caution("independence", INDEPENDENCE))
+    for line in lines:
+        found += [
+            _caution(code, f"Line {line.name!r}: {message}") for code, message in _of_line(line, levels)
+        ]
+    return found
+
+
+def _caution(code: str, message: str) -> Caution:
+    return {"code": code, "message": message}
+
+
+def _of_line(line: LineModel, levels: Sequence[float]) -> Iterator[tuple[str, str]]:
+    index = line.severity.tail_index
+    if line.severity.mean() == float("inf"):
+        yield "infinite-mean", INFINITE_MEAN.format(index=index)
+    elif line.severity.variance() == float("inf"):
+        yield "infinite-variance", INFINITE_VARIANCE.format(index=index)
+    if line.prepared is None:
+        yield "given-parameters", GIVEN
+    else:
+        yield from _of_records(line.prepared, levels)
+    for note in line.fit_notes:
+        yield "fit", note
+
+
+def _of_records(prepared: PreparedLosses, levels: Sequence[float]) -> Iterator[tuple[str, str]]:
+    years = float(prepared.years.fraction.sum())
+    top = max(levels)
+    if 1.0 / (1.0 - top) > years * (1.0 + 1e-9):
+        yield (
+            "extrapolation",
+            f"{years:.4g} years of records support levels up to {max(1 - 1 / years, 0):.3g}; the "
+            f"figures at {top:.6g} extrapolate {1.0 / (1.0 - top) / years:.0f} times beyond the data.",
+        )
+    if len(prepared) < FEW_LOSSES:
+        yield "few-losses", f"the fit rests on {len(prepared)} losses; its tail is mostly assumption."
+    still_open = int(prepared.years.open.sum())
+    if still_open:
+        yield (
+            "open-claims",
+            f"{still_open} claims are open and are taken at their recorded amounts; neither counts nor"
+            " amounts are developed to ultimate.",
+        )

@@ -1,0 +1,144 @@
+"""What the assessment says about one line: its records, its fits and how well they fit."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+
+from lossagg.fitting import Candidates, Fit, count_points, quantile_points, survival_points
+from lossagg.portfolio.assessment import Data, number
+from lossagg.portfolio.line import LineModel
+from lossagg.records import PreparedLosses
+
+
+def line_evidence(model: LineModel) -> Data:
+    """The line's entry in the assessment, less its annual figures."""
+    prepared = model.prepared
+    return {
+        "name": model.name,
+        "source": "given" if prepared is None else "records",
+        "records": None if prepared is None else _records(prepared),
+        "by_year": [] if prepared is None else _by_year(prepared),
+        "steps": [] if prepared is None else [step.to_dict() for step in prepared.steps],
+        "exposure": None
+        if prepared is None
+        else {"forecast": model.forecast_exposure, "base": prepared.base},
+        "frequency": _frequency(model),
+        "severity": _severity(model),
+        "fit": None if prepared is None else _fit_points(model, prepared),
+    }
+
+
+def _records(prepared: PreparedLosses) -> Data:
+    keys = ("read", "used", "excluded", "amount_read", "amount_used", "amount_excluded")
+    reconciled = prepared.reconciliation.to_dict()
+    return {key: reconciled[key] for key in keys}
+
+
+def _by_year(prepared: PreparedLosses) -> list[Data]:
+    years = prepared.years
+    columns = (
+        "year",
+        "exposure",
+        "fraction",
+        "losses",
+        "claims",
+        "open",
+        "amount",
+        "trended_amount",
+        "largest",
+        "threshold",
+    )
+    return [{column: getattr(years, column)[k].item() for column in columns} for k in range(len(years))]
+
+
+def _frequency(model: LineModel) -> Data:
+    law, tried = model.frequency, model.frequencies
+    entry: Data = {
+        "family": law.family,
+        "parameters": law.parameters,
+        "standard_errors": None,
+        "source": "given" if tried is None else "fitted",
+        "mean": law.mean(),
+        "variance": law.variance(),
+        "candidates": [],
+    }
+    if tried is not None:
+        fit = tried.chosen
+        at_forecast = {**fit.standard_errors}
+        at_forecast["mean"] = at_forecast["mean"] * model.forecast_exposure
+        entry |= {"standard_errors": at_forecast, "candidates": _candidates(tried), "notes": list(fit.notes)}
+    return entry
+
+
+def _severity(model: LineModel) -> Data:
+    law, tried, prepared = model.severity, model.severities, model.prepared
+    entry: Data = {
+        "family": law.family,
+        "parameters": law.parameters,
+        "standard_errors": None,
+        "source": "given" if tried is None else "fitted",
+        "mean": number(law.mean()),
+        "sd": number(law.sd()),
+        "tail_index": number(law.tail_index),
+        "threshold": None,
+        "observations": None,
+        "censored": None,
+        "candidates": [],
+    }
+    if tried is not None and prepared is not None:
+        fit = tried.chosen
+        entry |= {
+            "standard_errors": fit.standard_errors,
+            "threshold": float(prepared.threshold.min()) if prepared.threshold.size else None,
+            "observations": fit.observations,
+            "censored": fit.censored,
+            "candidates": _candidates(tried),
+            "notes": list(fit.notes),
+        }
+    return entry
+
+
+def _candidates(tried: Candidates[Any]) -> list[Data]:
+    """Every family tried, best first, refused ones last with their reason."""
+    fitted = [_candidate(fit, chosen=fit is tried.chosen) for fit in tried.fits]
+    blank = dict.fromkeys(("parameters", "standard_errors", "log_likelihood", "aic", "bic"))
+    return fitted + [
+        {"family": family, **blank, "chosen": False, "refused": reason}
+        for family, reason in tried.refused.items()
+    ]
+
+
+def _candidate(fit: Fit, *, chosen: bool) -> Data:
+    return {
+        "family": fit.family,
+        "parameters": dict(fit.parameters),
+        "standard_errors": fit.standard_errors,
+        "log_likelihood": fit.log_likelihood,
+        "aic": fit.aic,
+        "bic": fit.bic,
+        "chosen": chosen,
+        "refused": None,
+    }
+
+
+def _fit_points(model: LineModel, prepared: PreparedLosses) -> Data | None:
+    """Points of the fit plots; None where neither law was fitted."""
+    points: Data = {"survival": [], "quantiles": [], "counts": []}
+    if model.severities is not None:
+        fit = model.severities.chosen
+        losses = (prepared.amount, fit, prepared.threshold, prepared.censored)
+        points["survival"] = _rows(survival_points(*losses))
+        points["quantiles"] = _rows(quantile_points(*losses))
+    if model.frequencies is not None and model.seen is not None:
+        counts = count_points(prepared.years.losses, model.frequencies.chosen, model.seen)
+        years = prepared.years.year.tolist()
+        points["counts"] = [{"year": year, **row} for year, row in zip(years, _rows(counts), strict=True)]
+    return points if any(points.values()) else None
+
+
+def _rows(table: Any) -> list[Data]:
+    """A table of equal-length arrays as one dictionary per row."""
+    columns = {name: np.asarray(values).tolist() for name, values in vars(table).items()}
+    return [dict(zip(columns, row, strict=True)) for row in zip(*columns.values(), strict=True)]

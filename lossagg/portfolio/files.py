@@ -1,0 +1,161 @@
+"""The files of a portfolio folder: each is read once, also where several lines share it."""
+
+from __future__ import annotations
+
+import hashlib
+from dataclasses import dataclass
+from pathlib import Path
+
+from lossagg.errors import InputError, place
+from lossagg.portfolio.assessment import Data
+from lossagg.portfolio.schema import LineSection, PortfolioFile
+from lossagg.records import (
+    CheckedLosses,
+    ExposureTable,
+    LossTable,
+    check_losses,
+    read_exposure,
+    read_losses,
+)
+
+PORTFOLIO_FILE = "portfolio.toml"
+
+
+@dataclass(frozen=True)
+class LineRecords:
+    """The checked records of one line, and its exposure where it has one."""
+
+    losses: CheckedLosses
+    exposure: ExposureTable | None
+
+
+def portfolio_file(path: Path) -> tuple[Path, Path]:
+    """The folder and the portfolio file meant by a path to either.
+
+    Raises:
+        InputError: there is no such folder or file.
+    """
+    if path.is_dir():
+        return path, path / PORTFOLIO_FILE
+    if path.is_file():
+        return path.parent, path
+    raise InputError(
+        "there is no such portfolio", value=str(path), remedy=f"Name a folder that holds {PORTFOLIO_FILE}."
+    )
+
+
+def read_records(folder: Path, file: PortfolioFile) -> tuple[dict[str, LineRecords], tuple[Data, ...]]:
+    """Read and check the records and exposures of every line.
+
+    Returns:
+        The records by line, and path, SHA-256 and rows of every file read, the portfolio file first.
+
+    Raises:
+        InputError: a file outside the folder, missing, or read by two lines in two ways; anything the
+            checks of the records stop at.
+    """
+    inputs = [_portfolio_input(folder)]
+    checked: dict[str, CheckedLosses] = {}
+    for name, sharers in _by_file(file.line, "records").items():
+        table = _read_losses(folder, name, sharers[0], file)
+        inputs.append({"path": name, "sha256": table.sha256, "rows": table.rows})
+        checked |= _check(table, sharers, file)
+    exposures: dict[str, ExposureTable] = {}
+    for name, sharers in _by_file(file.line, "exposure").items():
+        exposure = _read_exposure(folder, name, sharers, file)
+        inputs.append({"path": name, "sha256": exposure.sha256, "rows": exposure.rows})
+        exposures |= {line.name: exposure.for_line(line.name) for line in sharers}
+    records = {name: LineRecords(losses, exposures.get(name)) for name, losses in checked.items()}
+    return records, tuple(inputs)
+
+
+def _portfolio_input(folder: Path) -> Data:
+    content = (folder / PORTFOLIO_FILE).read_bytes()
+    return {
+        "path": PORTFOLIO_FILE,
+        "sha256": hashlib.sha256(content).hexdigest(),
+        "rows": content.count(b"\n"),
+    }
+
+
+def _by_file(lines: tuple[LineSection, ...], kind: str) -> dict[str, list[LineSection]]:
+    """The lines that share each file, in the order of the portfolio file."""
+    sharers: dict[str, list[LineSection]] = {}
+    for line in lines:
+        name = getattr(line, kind)
+        if name is not None:
+            sharers.setdefault(name, []).append(line)
+    return sharers
+
+
+def _inside(folder: Path, name: str, key: str) -> Path:
+    """The path of a file that must lie in the portfolio folder."""
+    path = folder / name
+    if not path.resolve().is_relative_to(folder.resolve()):
+        raise InputError(
+            "a file of the portfolio must lie in its folder",
+            where=place(file=PORTFOLIO_FILE, key=key),
+            value=name,
+            remedy="Copy it there and give its name.",
+        )
+    if not path.is_file():
+        raise InputError(
+            "there is no such file",
+            where=place(file=PORTFOLIO_FILE, key=key),
+            value=name,
+            remedy="Names are relative to the portfolio folder.",
+        )
+    return path
+
+
+_READING = ("columns", "sheet", "delimiter", "encoding", "decimal", "thousands", "date_format")
+
+
+def _read_losses(folder: Path, name: str, line: LineSection, file: PortfolioFile) -> LossTable:
+    for other in file.line:
+        if other.records == name and any(getattr(other, part) != getattr(line, part) for part in _READING):
+            raise InputError(
+                "two lines read the same file in two ways",
+                where=place(file=PORTFOLIO_FILE, key="records"),
+                value=f"{line.name}, {other.name}",
+                remedy="Give both the same columns, sheet, delimiter, encoding and formats.",
+            )
+    return read_losses(
+        _inside(folder, name, "records"),
+        columns={**file.columns, **line.columns},
+        sheet=line.sheet,
+        encoding=line.encoding,
+        delimiter=line.delimiter,
+        decimal=line.decimal,
+        thousands=line.thousands,
+        date_format=line.date_format,
+    )
+
+
+def _check(table: LossTable, sharers: list[LineSection], file: PortfolioFile) -> dict[str, CheckedLosses]:
+    section = file.portfolio
+    names = [line.name for line in sharers]
+    checked = check_losses(
+        table,
+        valuation_date=section.valuation_date,
+        currency=section.currency,
+        lines=names if len(names) > 1 else None,
+        first_year={line.name: line.first_year for line in sharers}
+        if len(names) > 1
+        else sharers[0].first_year,
+        tolerance=section.tolerance,
+    )
+    if len(names) == 1:
+        return {names[0]: checked}
+    return {name: checked.for_line(name) for name in names}
+
+
+def _read_exposure(folder: Path, name: str, sharers: list[LineSection], file: PortfolioFile) -> ExposureTable:
+    columns = {**sharers[0].exposure_columns}
+    if len(sharers) > 1 and "line" in file.columns:
+        columns.setdefault("line", file.columns["line"])
+    return read_exposure(
+        _inside(folder, name, "exposure"),
+        columns=columns,
+        lines=[line.name for line in file.line] if len(sharers) > 1 else None,
+    )

@@ -1,0 +1,110 @@
+"""One line of a portfolio: its records prepared, its laws fitted or given.
+
+Severity is fitted first, above the reporting threshold and below the policy limits; frequency second,
+because the records count only losses above the threshold: each year's exposure is multiplied by the
+survival of the fitted severity at that year's threshold, and the rate that results is ground-up.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from lossagg.arrays import FloatArray
+from lossagg.engines.book import Line
+from lossagg.families.base import CountLaw, SizeLaw
+from lossagg.fitting import Candidates, FrequencyFit, SeverityFit, compare_frequencies, compare_severities
+from lossagg.portfolio.laws import given_frequency, given_severity
+from lossagg.portfolio.schema import LineSection
+from lossagg.records import PreparedLosses
+
+
+@dataclass(frozen=True, kw_only=True)
+class LineModel:
+    """A line with its laws for the forecast year, and the evidence for them.
+
+    Attributes:
+        name: its name.
+        frequency: the count law of the forecast year, ground-up.
+        severity: the size law, in money of the forecast year.
+        prepared: the losses it was fitted to; None where both laws are given and no records exist.
+        frequencies: the count laws tried; None where the law is given.
+        severities: the size laws tried; None where the law is given.
+        seen: per year, exposure times the probability that a loss exceeds the threshold.
+        forecast_exposure: exposure of the forecast year.
+    """
+
+    name: str
+    frequency: CountLaw
+    severity: SizeLaw
+    prepared: PreparedLosses | None = None
+    frequencies: Candidates[FrequencyFit] | None = None
+    severities: Candidates[SeverityFit] | None = None
+    seen: FloatArray | None = None
+    forecast_exposure: float = 1.0
+
+    @property
+    def line(self) -> Line:
+        """What the engines need of it."""
+        return Line(name=self.name, frequency=self.frequency, severity=self.severity)
+
+    @property
+    def fit_notes(self) -> tuple[str, ...]:
+        """What the fits say about themselves."""
+        fits = [c.chosen for c in (self.severities, self.frequencies) if c is not None]
+        return tuple(note for fit in fits for note in fit.notes)
+
+
+def build_line(section: LineSection, prepared: PreparedLosses | None, key: str) -> LineModel:
+    """Fit or take over the laws of one line.
+
+    Args:
+        section: its table of the portfolio file.
+        prepared: its losses, where it has records.
+        key: the name of the table in messages, `line[2]`.
+
+    Raises:
+        FitError: no candidate could be fitted; carries why for each.
+        InputError: given parameters out of range.
+    """
+    severities = None
+    if section.severity.fit is None:
+        severity = given_severity(section.severity, f"{key}.severity")
+    else:
+        assert prepared is not None
+        severities = compare_severities(
+            prepared.amount,
+            section.severity.fit,
+            truncation=prepared.threshold,
+            censored=prepared.censored,
+            tail_threshold=section.severity.tail_threshold,
+        )
+        severity = severities.chosen.model
+    if section.frequency.fit is None or prepared is None:
+        return LineModel(
+            name=section.name,
+            frequency=given_frequency(section.frequency, f"{key}.frequency"),
+            severity=severity,
+            prepared=prepared,
+            severities=severities,
+        )
+    years = prepared.years
+    seen = years.exposure * years.fraction * np.asarray(severity.sf(years.threshold))
+    frequencies = compare_frequencies(years.losses, section.frequency.fit, exposure=seen)
+    exposure = section.forecast_exposure or _last_full_exposure(prepared)
+    return LineModel(
+        name=section.name,
+        frequency=frequencies.chosen.model_for(exposure),
+        severity=severity,
+        prepared=prepared,
+        frequencies=frequencies,
+        severities=severities,
+        seen=seen,
+        forecast_exposure=exposure,
+    )
+
+
+def _last_full_exposure(prepared: PreparedLosses) -> float:
+    """Exposure of the last calendar year: that of the whole year, also where it was observed in part."""
+    return float(prepared.years.exposure[-1])

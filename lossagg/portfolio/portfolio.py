@@ -1,0 +1,148 @@
+"""A portfolio folder: its file, its records, and the way to an assessment."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+
+from lossagg import __version__
+from lossagg.engines.book import Book
+from lossagg.portfolio.assess import Progress, compute, figures, silent
+from lossagg.portfolio.assessment import FORMAT, Assessment, Data, Writer
+from lossagg.portfolio.cautions import cautions
+from lossagg.portfolio.files import PORTFOLIO_FILE, LineRecords, portfolio_file, read_records
+from lossagg.portfolio.laws import placed_cover
+from lossagg.portfolio.line import LineModel, build_line
+from lossagg.portfolio.schema import PortfolioFile, read_portfolio_file
+from lossagg.records import PreparedLosses, midpoint, prepare_losses
+
+
+@dataclass(frozen=True)
+class Portfolio:
+    """A portfolio read and checked, not yet modelled.
+
+    Attributes:
+        folder: where it lies.
+        file: its portfolio file.
+        records: the checked records and exposures of each line that has any, by line name.
+        inputs: path within the folder, SHA-256 and rows of every file read.
+        writer: how its assessments are written.
+    """
+
+    folder: Path
+    file: PortfolioFile
+    records: dict[str, LineRecords]
+    inputs: tuple[Data, ...]
+    writer: Writer | None = None
+
+    @property
+    def name(self) -> str:
+        """The name in the portfolio file."""
+        return self.file.portfolio.name
+
+    def __repr__(self) -> str:
+        return f"<Portfolio {self.name!r}: {len(self.file.line)} lines, {len(self.file.cover)} covers>"
+
+    def prepare(self) -> dict[str, PreparedLosses]:
+        """The losses of each line as they are modelled: events, trend, thresholds, exposure."""
+        middle = midpoint(*self.file.portfolio.forecast)
+        return {
+            line.name: prepare_losses(
+                self.records[line.name].losses,
+                exposure=self.records[line.name].exposure,
+                forecast_midpoint=middle,
+                reporting_threshold=line.reporting_threshold,
+                trend=line.trend,
+            )
+            for line in self.file.line
+            if line.name in self.records
+        }
+
+    def models(self) -> tuple[LineModel, ...]:
+        """Every line with its laws for the forecast year, fitted or given.
+
+        Raises:
+            FitError: a line whose records support none of the laws asked for.
+            InputError: a given law whose parameters are out of range.
+        """
+        prepared = self.prepare()
+        return tuple(
+            build_line(line, prepared.get(line.name), f"line[{k}]")
+            for k, line in enumerate(self.file.line, start=1)
+        )
+
+    def assess(
+        self,
+        *,
+        years: int = 1_000_000,
+        seed: int = 1,
+        workers: int | None = None,
+        progress: Progress = silent,
+    ) -> Assessment:
+        """Compute annual loss, capital and cover costs by three engines that must agree.
+
+        Args:
+            years: simulated years.
+            seed: seed of the simulation, 0 to 2**64 - 1; the same seed gives the same bytes.
+            workers: threads; all processors by default. The results do not depend on it.
+            progress: called with the stage and the fraction done.
+
+        Returns:
+            The assessment; its headline is withheld where the engines disagree.
+
+        Raises:
+            InputError: a value of the portfolio file that cannot be used.
+            FitError: records that support none of the laws asked for.
+            EngineError: a book beyond the resources of the exact engines.
+        """
+        progress("preparing and fitting", 0.0)
+        models = self.models()
+        section = self.file.portfolio
+        covers = tuple(placed_cover(cover, f"cover[{k}]") for k, cover in enumerate(self.file.cover, start=1))
+        book = Book(lines=tuple(model.line for model in models), covers=covers)
+        results = compute(book, years=years, seed=seed, workers=workers, progress=progress)
+        findings = [finding for model in models if model.prepared for finding in model.prepared.findings]
+        data: Data = {
+            "format": FORMAT,
+            "portfolio": self._description(),
+            "run": {"version": __version__, "seed": seed, "years": years, "inputs": list(self.inputs)},
+            **figures(book, models, results, section.levels, section.capital_level),
+            "findings": [finding.to_dict() for finding in dict.fromkeys(findings)],
+            "cautions": cautions(models, sorted({*section.levels, section.capital_level})),
+        }
+        progress("done", 1.0)
+        return Assessment(data, self.writer)
+
+    def _description(self) -> Data:
+        section = self.file.portfolio
+        start, end = section.forecast
+        return {
+            "name": section.name,
+            "currency": section.currency,
+            "valuation_date": section.valuation_date.isoformat(),
+            "description": section.description,
+            "levels": list(section.levels),
+            "capital_level": section.capital_level,
+            "forecast": {"start": start.isoformat(), "end": end.isoformat()},
+        }
+
+
+def read_portfolio(path: str | Path, *, writer: Writer | None = None) -> Portfolio:
+    """Read a portfolio folder: its file, every key checked, and its records, every row checked.
+
+    Args:
+        path: the folder, or its portfolio file.
+        writer: what `Assessment.write` calls.
+
+    Raises:
+        InputError: a file, key, row or value that cannot be used, with its place and the remedy.
+    """
+    folder, file = portfolio_file(Path(path))
+    content = read_portfolio_file(file)
+    for k, cover in enumerate(content.cover, start=1):
+        placed_cover(cover, f"cover[{k}]")
+    records, inputs = read_records(folder, content)
+    return Portfolio(folder, content, records, inputs, writer)
+
+
+__all__ = ["PORTFOLIO_FILE", "Portfolio", "read_portfolio"]

@@ -1,0 +1,303 @@
+"""The portfolio file: its keys, their types and ranges, and what is said when one is wrong.
+
+Keys are those of the Python surface with hyphens. An unknown key stops the run and names its nearest
+match; a value out of range names the key, what is allowed and what was seen.
+"""
+
+from __future__ import annotations
+
+import difflib
+import tomllib
+from datetime import date, timedelta
+from pathlib import Path
+from typing import Annotated, Any, get_args
+
+from pydantic import BaseModel, ConfigDict, Field, ValidationError, field_validator, model_validator
+from pydantic.fields import FieldInfo
+
+from lossagg.errors import InputError, place
+
+Amount = Annotated[float, Field(ge=0, allow_inf_nan=False)]
+Positive = Annotated[float, Field(gt=0, allow_inf_nan=False)]
+Probability = Annotated[float, Field(gt=0, lt=1)]
+Name = Annotated[str, Field(min_length=1, max_length=120)]
+
+AMBIGUOUS = {"annual-aggregate-deductible", "aggregate-deductible", "annual-deductible"}
+
+
+def hyphenated(name: str) -> str:
+    """The key of a field: words joined by hyphens."""
+    return name.replace("_", "-")
+
+
+class Section(BaseModel):
+    """A table of the portfolio file: unknown keys are errors, text is not taken for numbers."""
+
+    model_config = ConfigDict(
+        alias_generator=hyphenated, extra="forbid", strict=True, frozen=True, populate_by_name=False
+    )
+
+
+class PortfolioSection(Section):
+    """`[portfolio]`: what the portfolio is and at which levels it is reported."""
+
+    name: Name
+    currency: Annotated[str, Field(pattern="^[A-Z]{3}$")]
+    valuation_date: date
+    levels: Annotated[tuple[Probability, ...], Field(min_length=1, strict=False)] = (
+        0.9,
+        0.95,
+        0.99,
+        0.995,
+        0.999,
+    )
+    capital_level: Probability = 0.995
+    description: str | None = None
+    forecast_start: date | None = None
+    tolerance: Annotated[float, Field(ge=0, lt=1)] = 0.05
+
+    @field_validator("levels")
+    @classmethod
+    def _ascending(cls, levels: tuple[float, ...]) -> tuple[float, ...]:
+        if list(levels) != sorted(set(levels)):
+            raise ValueError("levels must increase | List them from the lowest to the highest, each once.")
+        return levels
+
+    @property
+    def forecast(self) -> tuple[date, date]:
+        """First and last day of the year that is forecast."""
+        start = self.forecast_start or self.valuation_date + timedelta(days=1)
+        try:
+            end = start.replace(year=start.year + 1)
+        except ValueError:  # 29 February
+            end = start.replace(year=start.year + 1, day=28)
+        return start, end - timedelta(days=1)
+
+
+class Law(Section):
+    """A law given by family and parameters, or families to be fitted to the records."""
+
+    model_config = ConfigDict(alias_generator=hyphenated, extra="allow", strict=True, frozen=True)
+
+    family: str | None = None
+    fit: Annotated[tuple[str, ...], Field(min_length=1, strict=False)] | None = None
+
+    @model_validator(mode="after")
+    def _one_of_two(self) -> Law:
+        if (self.family is None) == (self.fit is None):
+            raise ValueError(
+                "a law needs either a family or a fit | "
+                'Write family = "..." with its parameters, or fit = ["...", ...].'
+            )
+        if self.fit is not None and self.given:
+            raise ValueError(
+                f"unknown key {next(iter(self.given))!r} beside fit | A fit takes no parameters."
+            )
+        return self
+
+    @property
+    def given(self) -> dict[str, Any]:
+        """The parameters, by name with underscores."""
+        return {key.replace("-", "_"): value for key, value in (self.model_extra or {}).items()}
+
+
+class Severity(Law):
+    """The severity of a line; a fit may splice a generalized Pareto tail above a threshold."""
+
+    tail_threshold: Positive | None = None
+
+    @model_validator(mode="after")
+    def _tail_belongs_to_a_fit(self) -> Severity:
+        if self.tail_threshold is not None and self.fit is None:
+            raise ValueError('tail-threshold belongs to a fit | For given parameters use family = "spliced".')
+        return self
+
+
+class FileOptions(Section):
+    """How a file of records or exposures is written."""
+
+    columns: dict[str, str] = {}
+    sheet: str | None = None
+    delimiter: Annotated[str, Field(min_length=1, max_length=1)] | None = None
+    encoding: str | None = None
+    decimal: Annotated[str, Field(pattern="^[.,]$")] = "."
+    thousands: Annotated[str, Field(min_length=1, max_length=1)] | None = None
+    date_format: str | None = None
+
+
+class LineSection(FileOptions):
+    """`[[line]]`: one class of business, from records or from given laws."""
+
+    name: Name
+    records: str | None = None
+    exposure: str | None = None
+    exposure_columns: dict[str, str] = {}
+    reporting_threshold: Amount | None = None
+    trend: Annotated[float, Field(gt=-0.5, lt=1.0)] = 0.0
+    first_year: Annotated[int, Field(ge=1900, le=2200)] | None = None
+    forecast_exposure: Positive | None = None
+    frequency: Law
+    severity: Severity
+
+    @model_validator(mode="after")
+    def _fit_needs_records(self) -> LineSection:
+        if self.records is None:
+            for part, law in (("frequency", self.frequency), ("severity", self.severity)):
+                if law.fit is not None:
+                    raise ValueError(
+                        f"{part} is to be fitted, but the line has no records | Add records = ..."
+                    )
+            if self.exposure is not None:
+                raise ValueError("an exposure file needs records beside it | Add records = ...")
+        return self
+
+
+class CoverSection(Section):
+    """`[[cover]]`: terms under which someone pays part of the losses."""
+
+    name: Name
+    lines: Annotated[tuple[str, ...], Field(min_length=1, strict=False)] | None = None
+    after: Annotated[tuple[str, ...], Field(strict=False)] = ()
+    deductible: Amount = 0.0
+    limit: Positive | None = None
+    franchise: bool = False
+    share: Annotated[float, Field(gt=0, le=1)] = 1.0
+    annual_retention: Amount = 0.0
+    annual_limit: Positive | None = None
+    retained_cap: Amount | None = None
+
+    @model_validator(mode="before")
+    @classmethod
+    def _two_meanings(cls, values: Any) -> Any:
+        for key in AMBIGUOUS & set(values if isinstance(values, dict) else ()):
+            raise ValueError(
+                f"{key!r} has two opposite meanings in the trade | Write annual-retention for an amount "
+                "kept of the year's payments before the cover pays, or retained-cap for the most the "
+                "insured keeps per year under the deductible."
+            )
+        return values
+
+
+class PortfolioFile(Section):
+    """The whole portfolio file."""
+
+    portfolio: PortfolioSection
+    columns: dict[str, str] = {}
+    line: Annotated[tuple[LineSection, ...], Field(min_length=1, strict=False)]
+    cover: Annotated[tuple[CoverSection, ...], Field(strict=False)] = ()
+
+
+def read_portfolio_file(path: Path) -> PortfolioFile:
+    """Read and check a portfolio file.
+
+    Args:
+        path: the TOML file.
+
+    Raises:
+        InputError: the file is missing or is not TOML, a key is unknown or missing, or a value is out
+            of range; all faults of the file are listed at once.
+    """
+    try:
+        content = tomllib.loads(path.read_text(encoding="utf-8-sig"))
+    except FileNotFoundError as error:
+        raise InputError(
+            "there is no portfolio file",
+            where=place(file=path.name),
+            remedy="Name a folder that holds portfolio.toml.",
+        ) from error
+    except UnicodeDecodeError as error:
+        raise InputError(
+            f"the portfolio file is not UTF-8 at byte {error.start}",
+            where=place(file=path.name),
+            remedy="Save it as UTF-8.",
+        ) from error
+    except tomllib.TOMLDecodeError as error:
+        raise InputError(
+            f"the portfolio file is not valid TOML: {error}",
+            where=place(file=path.name),
+            remedy="Repair that line.",
+        ) from error
+    try:
+        return PortfolioFile.model_validate(content)
+    except ValidationError as error:
+        raise _all_faults([_fault(detail) for detail in _own_faults(error)], path.name) from error
+
+
+def _all_faults(faults: list[tuple[str, str, object, str]], file: str) -> InputError:
+    key, what, value, remedy = faults[0]
+    others = "".join(f"\n  also {other_key}: {other_what}." for other_key, other_what, _, _ in faults[1:])
+    return InputError(what, where=place(file=file, key=key), value=value, remedy=remedy + others)
+
+
+def _own_faults(error: ValidationError) -> list[Any]:
+    """The faults found, less "too short" of a list whose items have faults of their own."""
+    details = error.errors()
+    return [
+        detail
+        for detail in details
+        if detail["type"] != "too_short"
+        or not any(
+            len(d["loc"]) > len(detail["loc"]) and d["loc"][: len(detail["loc"])] == detail["loc"]
+            for d in details
+        )
+    ]
+
+
+def _fault(detail: Any) -> tuple[str, str, object, str]:
+    """(key, what, value seen, remedy) of one fault found by the schema."""
+    location = detail["loc"]
+    key, kind, value = _key(location), detail["type"], detail["input"]
+    if kind == "extra_forbidden":
+        return key, "unknown key", str(location[-1]), _nearest(str(location[-1]), _known_keys(location))
+    if kind == "missing":
+        return key, "missing key", "nothing", f"Add {location[-1]} = ..."
+    if kind == "value_error":
+        what, _, remedy = str(detail["ctx"]["error"]).partition(" | ")
+        return key, what, _named(value), remedy
+    seen = _named(value)
+    return key, detail["msg"][0].lower() + detail["msg"][1:], seen, _range_remedy(key, value)
+
+
+def _range_remedy(key: str, value: object) -> str:
+    last = key.rsplit(".", 1)[-1]
+    if isinstance(value, int | float) and 1 < value < 100 and any(word in key for word in ("level", "share")):
+        return f"Write {value / 100:g} for {value:g} %."
+    if isinstance(value, str) and value.replace(".", "").replace(",", "").isdigit():
+        return f"Write the number without quotes: {last} = {value}."
+    return "Give a value in that range."
+
+
+def _named(value: object) -> object:
+    if isinstance(value, dict):
+        return value.get("name", "a table")
+    return "a list" if isinstance(value, list | tuple) else value
+
+
+def _key(location: tuple[int | str, ...]) -> str:
+    """`line[2].frequency.mean`, counting tables from 1 as a reader does."""
+    text = ""
+    for part in location:
+        text += f"[{part + 1}]" if isinstance(part, int) else f".{part}" if text else part
+    return text
+
+
+def _known_keys(location: tuple[int | str, ...]) -> list[str]:
+    """Keys allowed in the table in which an unknown one was found."""
+    model: type[BaseModel] = PortfolioFile
+    for part in location[:-1]:
+        if isinstance(part, str):
+            field = next(f for f in model.model_fields.values() if f.alias == part)
+            model = _model_of(field)
+    return [field.alias or "" for field in model.model_fields.values()]
+
+
+def _model_of(field: FieldInfo) -> type[BaseModel]:
+    annotation: Any = field.annotation
+    while not (isinstance(annotation, type) and issubclass(annotation, BaseModel)):
+        annotation = get_args(annotation)[0]
+    return annotation
+
+
+def _nearest(word: str, known: list[str]) -> str:
+    close = difflib.get_close_matches(word, known, n=1, cutoff=0.5)
+    return f"Did you mean {close[0]!r}?" if close else f"Keys here: {', '.join(known)}."
