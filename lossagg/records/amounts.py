@@ -84,7 +84,7 @@ class Numbers:
     Args:
         values: the nearest float64; NaN where there is no number, infinite where the cell says so or
             the number is beyond float64.
-        text: the number with a decimal point, empty where there is no finite number.
+        text: the number with a decimal point, "0" where there is no finite number; an Arrow array.
         lossy: True where float64 keeps fewer digits than were written.
         missing: True where the cell is empty or carries a marker for "not known".
         infinite: True where the number is not finite.
@@ -92,7 +92,7 @@ class Numbers:
     """
 
     values: FloatArray
-    text: list[str]
+    text: Any
     lossy: BoolArray
     missing: BoolArray
     infinite: BoolArray
@@ -101,7 +101,7 @@ class Numbers:
     def exact(self) -> DecimalArray:
         """The numbers as written, as decimals; zero where there is no finite number."""
         exact = np.empty(len(self.text), dtype=np.object_)
-        exact[:] = [Decimal(text or "0") for text in self.text]
+        exact[:] = list(map(Decimal, self.text.to_pylist()))
         return exact
 
 
@@ -115,33 +115,39 @@ def parse_numbers(column: TextColumn, style: NumberStyle) -> Numbers:
     Returns:
         The numbers, and the cells that are missing, infinite or wrong.
     """
+    import pyarrow as pa
     import pyarrow.compute as pc
 
     text = pc.utf8_trim_whitespace(column.text)
     lower = pc.utf8_lower(text)
     missing = is_missing(lower)
-    infinite = _mask(pc.match_substring_regex(lower, pattern=_INFINITE))
+    written = as_mask(pc.match_substring_regex(lower, pattern=_INFINITE))
     plain = text if style.plain else _to_plain(text, column.native, style)
-    good = _mask(pc.match_substring_regex(plain, pattern=_PLAIN))
-    good &= _mask(pc.less_equal(pc.utf8_length(plain), MOST_CHARACTERS))
-    cells = np.where(good, plain.to_numpy(zero_copy_only=False), "").tolist()
-    values = np.array([cell or "nan" for cell in cells], dtype=np.object_).astype(np.float64)
-    beyond = np.isinf(values)
-    for index in np.flatnonzero(beyond).tolist():
-        cells[index] = ""
-    lower_cells = lower.to_numpy(zero_copy_only=False)
-    for index in np.flatnonzero(infinite).tolist():
-        values[index] = float(lower_cells[index])
-    infinite |= beyond
-    long = _mask(pc.greater(pc.utf8_length(plain), _DIGITS_KEPT))
-    return Numbers(values, cells, _lossy(cells, long), missing, infinite, ~(good | missing | infinite))
+    good = as_mask(pc.match_substring_regex(plain, pattern=_PLAIN))
+    good &= as_mask(pc.less_equal(pc.utf8_length(plain), MOST_CHARACTERS))
+    nearest = pc.cast(pc.if_else(pa.array(good), plain, "nan"), pa.float64())
+    values = np.array(nearest.to_numpy(zero_copy_only=False))
+    negative = as_mask(pc.starts_with(lower, "-"))
+    values[written] = np.where(negative[written], -np.inf, np.inf)
+    finite = np.isfinite(values)
+    digits = pc.if_else(pa.array(finite), plain, "0")
+    return Numbers(
+        values=values,
+        text=digits,
+        lossy=_lossy(digits),
+        missing=missing,
+        infinite=np.isinf(values),
+        wrong=~(good | missing | written),
+    )
 
 
-def _lossy(cells: list[str], long: BoolArray) -> BoolArray:
+def _lossy(digits: Any) -> BoolArray:
     """True where the nearest float64, written shortest, is not the number that was written."""
-    lossy = np.zeros(len(cells), dtype=np.bool_)
-    for index in np.flatnonzero(long).tolist():
-        text = cells[index] or "0"
+    import pyarrow.compute as pc
+
+    lossy = as_mask(pc.greater(pc.utf8_length(digits), _DIGITS_KEPT))
+    for index in np.flatnonzero(lossy).tolist():
+        text = digits[index].as_py()
         lossy[index] = Decimal(repr(float(text))) != Decimal(text)
     return lossy
 
@@ -151,7 +157,7 @@ def is_missing(lower: Any) -> BoolArray:
     import pyarrow as pa
     import pyarrow.compute as pc
 
-    return _mask(pc.is_in(lower, value_set=pa.array(MISSING)))
+    return as_mask(pc.is_in(lower, value_set=pa.array(MISSING)))
 
 
 def _to_plain(text: Any, native: BoolArray, style: NumberStyle) -> Any:
@@ -168,6 +174,7 @@ def _to_plain(text: Any, native: BoolArray, style: NumberStyle) -> Any:
     return pc.if_else(pa.array(native), text, plain)
 
 
-def _mask(values: Any) -> BoolArray:
+def as_mask(values: Any) -> BoolArray:
+    """An Arrow array of booleans as a writable array; shape (rows,)."""
     mask: BoolArray = np.array(values.to_numpy(zero_copy_only=False), dtype=np.bool_)
     return mask

@@ -198,7 +198,7 @@ def _incomplete_events(table: LossTable, used: BoolArray, claimed: Sequence[Faul
         "incomplete-event",
         "warn",
         "event",
-        used & by_word(event, lambda name: name in names),
+        used & by_word(event, names.__contains__) if names else np.zeros(len(table), dtype=np.bool_),
         "another claim of the event is set aside, so the event counts for less than it was",
         "Repair the claim that is set aside.",
     )

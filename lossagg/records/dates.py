@@ -13,9 +13,9 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from lossagg.arrays import BoolArray
+from lossagg.arrays import BoolArray, IntArray
 from lossagg.errors import InputError
-from lossagg.records.amounts import is_missing
+from lossagg.records.amounts import as_mask, is_missing
 from lossagg.records.raw import TextColumn
 
 DateArray = npt.NDArray[np.datetime64]
@@ -73,23 +73,21 @@ def parse_dates(column: TextColumn, date_format: str | None) -> Dates:
     missing = is_missing(pc.utf8_lower(text))
     parts = _extract(text, _ISO)
     if date_format is not None:
-        declared = _extract(text, _pattern(date_format))
-        native = np.asarray(column.native)
-        parts = {name: np.where(native, parts[name], declared[name]) for name in parts}
-    matched = parts["year"] != ""
-    zoned = matched & (parts["zone"] != "")
+        declared, native = _extract(text, _pattern(date_format)), pa.array(column.native)
+        parts = {name: pc.if_else(native, parts[name], declared[name]) for name in parts}
+    matched = as_mask(pc.not_equal(parts["year"], ""))
+    zoned = as_mask(pc.not_equal(parts["zone"], ""))
     year, month, day = (_integers(parts[name]) for name in ("year", "month", "day"))
     values, possible = _days(year, month, day)
     good = matched & possible & ~zoned
     values[~good] = np.datetime64("NaT")
-    clock = pc.match_substring_regex(pa.array(parts["time"]), pattern="[1-9]").to_numpy(zero_copy_only=False)
     return Dates(
-        values,
-        missing,
-        matched & ~possible,
-        zoned & possible,
-        good & np.asarray(clock, dtype=np.bool_),
-        ~(matched | missing),
+        values=values,
+        missing=missing,
+        impossible=matched & ~possible,
+        zoned=zoned & possible,
+        timed=good & as_mask(pc.match_substring_regex(parts["time"], pattern="[1-9]")),
+        wrong=~(matched | missing),
     )
 
 
@@ -114,28 +112,31 @@ def _pattern(date_format: str) -> str:
     return "^" + (body if separated else body.replace("{1,2}", "{2}")) + "$"
 
 
-def _extract(text: Any, pattern: str) -> dict[str, npt.NDArray[np.object_]]:
+def _extract(text: Any, pattern: str) -> dict[str, Any]:
+    """The parts of each date as Arrow arrays of digits, empty where the text is not of the pattern."""
+    import pyarrow as pa
     import pyarrow.compute as pc
 
     found = pc.extract_regex(text, pattern=pattern)
-    blank = np.full(len(text), "", dtype=np.object_)
+    blank = pa.repeat("", len(text))
     parts = dict.fromkeys(("year", "month", "day", "time", "zone"), blank)
     for group in found.type:
-        parts[group.name] = found.field(group.name).to_numpy(zero_copy_only=False)
+        parts[group.name] = found.field(group.name)
     if "name" in parts:
-        number = {name: str(index) for index, name in enumerate(_MONTHS, start=1)}
-        names = parts.pop("name")
-        parts["month"] = np.array([number.get(name.lower(), "0") for name in names], dtype=np.object_)
+        number = pc.add(pc.index_in(pc.utf8_lower(parts.pop("name")), value_set=pa.array(_MONTHS)), 1)
+        parts["month"] = pc.cast(pc.fill_null(number, 0), pa.string())
     return parts
 
 
-def _integers(digits: npt.NDArray[np.object_]) -> npt.NDArray[np.int64]:
-    return np.array([int(text) if text else 0 for text in digits.tolist()], dtype=np.int64)
+def _integers(digits: Any) -> IntArray:
+    import pyarrow as pa
+    import pyarrow.compute as pc
+
+    number = pc.cast(pc.if_else(pc.equal(digits, ""), "0", digits), pa.int64())
+    return np.asarray(number.to_numpy(zero_copy_only=False), dtype=np.int64)
 
 
-def _days(
-    year: npt.NDArray[np.int64], month: npt.NDArray[np.int64], day: npt.NDArray[np.int64]
-) -> tuple[DateArray, BoolArray]:
+def _days(year: IntArray, month: IntArray, day: IntArray) -> tuple[DateArray, BoolArray]:
     """Days from year, month and day (proleptic Gregorian), and whether there is such a day."""
     within = (year >= 1) & (month >= 1) & (month <= 12) & (day >= 1)
     month_number = (year - 1970) * 12 + np.where(within, month, 1) - 1

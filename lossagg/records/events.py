@@ -89,6 +89,8 @@ def group_events(table: LossTable, used: BoolArray) -> Events:
 
 def is_open(table: LossTable) -> BoolArray:
     """True for rows whose status says that the claim is open; shape (rows,)."""
+    if "status" not in table.words:
+        return np.zeros(len(table), dtype=np.bool_)
     return by_word(table.word("status"), lambda status: status.casefold() in OPEN)
 
 

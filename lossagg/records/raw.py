@@ -6,7 +6,7 @@ every column can be told from rows that merely agree in the columns that are rea
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Hashable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -91,21 +91,33 @@ class TableBuilder:
     _fingerprint: list[IntArray] = field(default_factory=list)
     _foot: tuple[str, ...] = ()
 
-    def add(self, columns: Sequence[Sequence[str]], native: Mapping[str, BoolArray] | None = None) -> None:
-        """Add a chunk, given column by column over all columns of the file."""
+    def add(
+        self,
+        columns: Sequence[Sequence[str]],
+        native: Mapping[str, BoolArray] | None = None,
+        rows: Sequence[Hashable] | None = None,
+    ) -> None:
+        """Add a chunk.
+
+        Args:
+            columns: every column of the file, as text.
+            native: {canonical name: True where the file held a number or a date}; None: nowhere.
+            rows: what identifies each row in all its columns; None: its cells.
+        """
         import pyarrow as pa
 
-        rows = list(zip(*columns, strict=True))
-        empty = self._empty_rows(columns, rows)
+        count = len(columns[0])
+        empty = self._empty_rows(columns)
         for name, position in self.positions.items():
             self._text.setdefault(name, []).append(pa.array(columns[position], pa.string()))
-            marks = native[name] if native else np.zeros(len(rows), dtype=np.bool_)
+            marks = native[name] if native else np.zeros(count, dtype=np.bool_)
             self._native.setdefault(name, []).append(marks)
         self._empty.append(empty)
-        self._fingerprint.append(np.fromiter(map(hash, rows), dtype=np.int64, count=len(rows)))
+        marked = map(hash, zip(*columns, strict=True) if rows is None else rows)
+        self._fingerprint.append(np.fromiter(marked, dtype=np.int64, count=count))
         filled = np.flatnonzero(~empty)
         if filled.size:
-            self._foot = rows[int(filled[-1])]
+            self._foot = tuple(column[int(filled[-1])] for column in columns)
 
     def finish(self) -> RawTable:
         """Close the table, without the blank rows at its foot.
@@ -149,13 +161,13 @@ class TableBuilder:
             Finding(code, action, self.file, None, None, None, message, remedy, sheet=self.sheet, count=0)  # type: ignore[arg-type]
         )
 
-    def _empty_rows(self, columns: Sequence[Sequence[str]], rows: list[tuple[str, ...]]) -> BoolArray:
+    def _empty_rows(self, columns: Sequence[Sequence[str]]) -> BoolArray:
         # Rows with a first chosen cell are not empty; only the others need a look at every cell.
         chosen = columns[next(iter(self.positions.values()))]
-        empty = np.zeros(len(rows), dtype=np.bool_)
+        empty = np.zeros(len(chosen), dtype=np.bool_)
         if all(map(str.strip, chosen)):
             return empty
         for index, cell in enumerate(chosen):
             if not cell.strip():
-                empty[index] = not any(map(str.strip, rows[index]))
+                empty[index] = not any(column[index].strip() for column in columns)
         return empty

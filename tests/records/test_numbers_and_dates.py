@@ -1,5 +1,7 @@
 """Numbers and dates: exact where plain or declared, stopped where ambiguous, set aside where unknown."""
 
+import random
+import struct
 from decimal import Decimal
 
 import numpy as np
@@ -115,6 +117,17 @@ def test_infinite_amounts_are_set_aside(check, text: str) -> None:
     checked = check(f"amount,date\n5,2024-01-01\n{text},2024-01-01\n")
     assert [(f.code, f.value) for f in checked.findings if f.row] == [("infinite-amount", text)]
     assert checked.reconciliation.amount_read == 5
+
+
+def test_every_number_is_the_nearest_float64_as_python_reads_it(read) -> None:
+    """Independent check of the fast conversion: `float` of the standard library, over all magnitudes."""
+    rng = random.Random(3)
+    texts = [repr(struct.unpack("<d", rng.randbytes(8))[0]) for _ in range(3000)]
+    texts += [f"{rng.randrange(10**25)}.{rng.randrange(10**20)}" for _ in range(500)]
+    texts = [text for text in texts if text not in ("nan", "inf", "-inf")]
+    table = read("amount,date\n" + "".join(f"{text},2024-01-01\n" for text in texts))
+    assert table.amount.tolist() == [float(text) for text in texts]
+    assert table.exact.tolist() == [Decimal(text) for text in texts]
 
 
 def test_huge_amounts_are_set_aside_and_still_valued_exactly(check) -> None:

@@ -5,6 +5,8 @@ import hashlib
 
 import numpy as np
 import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
 
 from lossagg.errors import InputError
 from lossagg.records import read_losses
@@ -193,3 +195,38 @@ def test_options_that_do_not_apply_are_not_ignored(read, name: str, options: dic
     content = PLAIN if name == "a.csv" else b"PAR1"
     with pytest.raises(InputError, match="does not apply to this kind of file"):
         read(content, name, **options)
+
+
+@settings(derandomize=True, deadline=None, max_examples=60)
+@given(
+    rows=st.lists(
+        st.tuples(
+            st.sampled_from(["1", "2.50", "", " 3", "x;y"]),
+            st.sampled_from(["2024-01-02", "", "N/A", "2024-02-31"]),
+            st.text(st.characters(exclude_characters='",\r\n\0', exclude_categories=["Cs"]), max_size=6),
+        ),
+        min_size=1,
+        max_size=8,
+    ),
+    end=st.sampled_from(["\n", "\r\n", "\r"]),
+    closed=st.booleans(),
+)
+def test_text_without_quotes_is_read_as_the_strict_reader_reads_it(
+    tmp_path_factory, rows, end: str, closed: bool
+) -> None:
+    """Independent check of the short way through text without quotes: one quoted heading closes it."""
+    body = end.join(",".join(row) for row in rows) + (end if closed else "")
+    seen = []
+    for heading in ("amount,date,event", '"amount",date,event'):
+        path = tmp_path_factory.mktemp("ways") / "losses.csv"
+        path.write_bytes((heading + end + body).encode())
+        try:
+            table = read_losses(path, delimiter=",")
+        except InputError as error:
+            seen.append(str(error))
+        else:
+            cells = {name: text.to_pylist() for name, text in table.texts.items()}
+            seen.append((table.row.tolist(), cells, table.blank.tolist(), repr(table.findings)))
+            different = len(set(rows[: len(table)]))
+            assert len(set(table.fingerprint.tolist())) == different
+    assert seen[0] == seen[1]
