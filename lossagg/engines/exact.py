@@ -1,0 +1,128 @@
+"""What the exact engines have in common: covers as event payments and annual terms, and their brackets.
+
+How a payment is put on a lattice and how payments are added up is each engine's own.
+"""
+
+from __future__ import annotations
+
+from abc import ABC, abstractmethod
+from dataclasses import dataclass
+
+import numpy as np
+
+from lossagg.arrays import FloatArray
+from lossagg.cover import Cover, Schedule
+from lossagg.engines.book import Book, Line, PlacedCover, Subject
+from lossagg.engines.bound import LatticeBound
+from lossagg.engines.compound import CompoundSum
+from lossagg.engines.result import AnnualLoss, BookResult, TransformedAnnualLoss
+from lossagg.errors import EngineError
+from lossagg.families.base import CountLaw, SizeLaw
+
+
+class ExactEngine(ABC):
+    """An engine that computes the distribution of an annual sum, with a guaranteed bracket."""
+
+    @property
+    @abstractmethod
+    def name(self) -> str:
+        """The engine's name, as users write it."""
+
+    @abstractmethod
+    def solve(self, compound: CompoundSum) -> AnnualLoss:
+        """The distribution of an annual sum of payments.
+
+        Raises:
+            EngineError: a count law outside the engine's domain, or a lattice beyond its resources.
+        """
+
+    def annual_loss(self, frequency: CountLaw, severity: SizeLaw, cover: Cover | None = None) -> AnnualLoss:
+        """The annual loss of one line, or what a cover pays of it.
+
+        Raises:
+            EngineError: as `solve`; also a retained cap, which needs the simulation.
+        """
+        line = Line(name="loss", frequency=frequency, severity=severity)
+        covers = () if cover is None else (PlacedCover(name="cover", terms=cover),)
+        book = Book(lines=(line,), covers=covers)
+        plan = book.plan(Subject("line", "loss") if cover is None else Subject("cover", "cover"))
+        return _paid(self.solve(CompoundSum.of(book.lines, plan.events)), plan.annual)
+
+    def book(self, book: Book) -> BookResult:
+        """Every subject of a book; the reason in place of the result where the engine cannot do it.
+
+        Subjects that add up the same event payments share one distribution.
+        """
+        sums: dict[frozenset[tuple[str, Schedule]], AnnualLoss | EngineError] = {}
+        losses: dict[Subject, AnnualLoss] = {}
+        refused: dict[Subject, str] = {}
+        for subject in book.subjects:
+            try:
+                plan = book.plan(subject)
+                key = frozenset(plan.events.items())
+                if key not in sums:
+                    sums[key] = self._solved(book, plan.events)
+                base = sums[key]
+                if isinstance(base, EngineError):
+                    raise base
+                losses[subject] = _paid(base, plan.annual)
+            except EngineError as error:
+                refused[subject] = str(error)
+        return BookResult(losses, refused)
+
+    def _solved(self, book: Book, events: dict[str, Schedule]) -> AnnualLoss | EngineError:
+        try:
+            return self.solve(CompoundSum.of(book.lines, events))
+        except EngineError as error:
+            return error
+
+
+@dataclass(frozen=True)
+class Rounded:
+    """A sum of rounded payments, and how well it is known.
+
+    Args:
+        least: lower bound of P(S > kh) of the rounded sum, non-increasing, shape (n,).
+        most: upper bound of the same, shape (n,).
+        inside: expected yearly sum of the rounded payments that lie on the lattice.
+    """
+
+    least: FloatArray
+    most: FloatArray
+    inside: float
+
+
+def bracket(
+    engine: str, compound: CompoundSum, step: float, down: Rounded, up: Rounded
+) -> tuple[LatticeBound, LatticeBound]:
+    """The two sides of the bracket, from the sums of payments rounded down and rounded up.
+
+    What is left beyond the lattice is the mean of the rounded sum less the integral on the lattice. A
+    payment beyond the lattice loses or gains less than one step by rounding.
+    """
+    points = len(down.least)
+    top, last = step * points, step * (points - 1)
+    beyond, above = compound.layer_cost(top, np.inf), float(compound.exceedances(np.array([top]))[0])
+    low_mean = down.inside + top * above + max(beyond - step * above, 0.0)
+    beyond, above = compound.layer_cost(last, np.inf), float(compound.exceedances(np.array([last]))[0])
+    high_mean = up.inside + beyond + (last + step) * above
+    means = (
+        max(low_mean - step * float(down.most.sum()), 0.0),
+        max(high_mean - step * float(up.least.sum()), 0.0),
+    )
+    if compound.variance == np.inf:
+        squares = (np.inf, np.inf)
+    else:
+        odd = step**2 * (2.0 * np.arange(points) + 1.0)
+        squares = (
+            max(compound.second_moment - float(odd @ up.most) - 2.0 * top * means[1], 0.0),
+            max(compound.second_moment - float(odd @ down.least) - 2.0 * top * means[0], 0.0),
+        )
+    return (
+        LatticeBound(engine, compound, False, step, down.least, means[0], squares[0]),
+        LatticeBound(engine, compound, True, step, up.most, means[1], squares[1]),
+    )
+
+
+def _paid(base: AnnualLoss, annual: Schedule) -> AnnualLoss:
+    return base if annual.is_identity else TransformedAnnualLoss(base, annual)

@@ -1,0 +1,99 @@
+"""Where the quantiles of an annual sum lie, roughly: what a lattice is chosen from.
+
+Only the choice of the lattice rests on this; the figures and their brackets come from the pass on the
+lattice chosen.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+
+from lossagg.arrays import FloatArray
+from lossagg.engines.compound import CompoundSum
+from lossagg.errors import EngineError
+
+# Amounts exceeded with these probabilities are candidates for the end of a lattice.
+LEAST_REACH = 1e-4
+REACHES = (1e-8, 1e-7, 1e-6, 1e-5, 3e-5, LEAST_REACH, 2e-4, 4e-4)
+# Levels whose brackets are watched, and how many times the accuracy each may be wide.
+LEVELS = ((0.995, 1.0), (0.999, 2.0))
+_TRIES = 60
+
+
+@dataclass(frozen=True, eq=False)
+class Quantiles:
+    """The survival function of an annual sum on few points.
+
+    Args:
+        compound: the sum.
+        step: distance of the points.
+        survival: P(S > kh), non-increasing.
+    """
+
+    compound: CompoundSum
+    step: float
+    survival: FloatArray
+
+    @classmethod
+    def located(
+        cls, compound: CompoundSum, points: int, survive: Callable[[float, int], FloatArray]
+    ) -> Quantiles:
+        """Look over longer or shorter ranges until the amount exceeded once in 10,000 years is well inside.
+
+        Args:
+            compound: the sum.
+            points: number of points of each look.
+            survive: the engine's survival function on a lattice of a step and a number of points.
+
+        Raises:
+            EngineError: the range was not found.
+        """
+        reach = compound.reach(REACHES[0])
+        for _ in range(_TRIES):
+            step = reach / (points - 1)
+            survival = np.minimum.accumulate(np.clip(survive(step, points), 0.0, 1.0))
+            index = int(np.sum(survival > LEAST_REACH))
+            if index == points:
+                reach *= 8.0
+            elif index < points // 32 and 1.0 - compound.no_payment > LEAST_REACH:
+                reach = 4.0 * (index + 2) * step
+            else:
+                return cls(compound, step, survival)
+        raise EngineError(
+            "the quantiles of the annual loss could not be located",
+            value=reach,
+            remedy="Give points and step, or use the simulation.",
+        )
+
+    def amount(self, exceedance: float) -> float:
+        """The amount exceeded with this probability, to the coarse step; at least one coarse step."""
+        return self.step * max(int(np.sum(self.survival > exceedance)), 1)
+
+    def points(self, step: float, exceedance: float) -> int:
+        """Points of a lattice of this step that reach the amount exceeded with this probability."""
+        return int(min(np.ceil((self.amount(exceedance) + self.step) / step), 2.0**62)) + 2
+
+    def far_points(self, step: float, *, easy: int, most: int) -> int:
+        """Points that reach as far as is easy, and to once in 2,500 years at least, within the most."""
+        for exceedance in REACHES:
+            points = self.points(step, exceedance)
+            inside = self.survival[-1] <= exceedance
+            if inside and points <= (easy if exceedance < LEAST_REACH else most):
+                return points
+        return most
+
+    def scale(self, level: float) -> float:
+        """The amount that the width of a bracket is judged against."""
+        return max(self.amount(1.0 - level), 0.01 * self.amount(LEAST_REACH))
+
+    def step_for(self, accuracy: float) -> float:
+        """The step expected to give brackets of this accuracy; `inf` where nothing is rounded."""
+        off_lattice = tuple(payment.continuous_mass for _, payment in self.compound.parts)
+        steps = [np.inf]
+        for level, factor in LEVELS:
+            events = self.compound.rounded_events(self.amount(1.0 - level), off_lattice)
+            steps.append(0.9 * factor * accuracy * self.scale(level) / max(events, 1.0))
+        return float(min(steps))
