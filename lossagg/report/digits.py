@@ -76,11 +76,24 @@ def estimated(value: float, error: float | None, *, probability: bool = False) -
     """A figure to the second digit of its standard error; five digits when no error is known."""
     if probability:
         return _estimated_chance(value, error)
+    unit = _error_unit(value, error)
+    return significant(value, DIGITS_WITHOUT_RANGE) if unit is None else rounded(value, unit)
+
+
+def with_error(value: float, error: float | None) -> str:
+    """A figure and its standard error, both to the second digit of the error: 1.346 ± 0.030."""
+    unit = _error_unit(value, error)
+    if unit is None or error is None:
+        return significant(value, MOST_DIGITS)
+    return f"{rounded(value, unit)} ± {rounded(error, unit)}"
+
+
+def _error_unit(value: float, error: float | None) -> Decimal | None:
     if error is None or error <= 0 or value == 0:
-        return significant(value, DIGITS_WITHOUT_RANGE)
+        return None
     place = min(_magnitude(error) - 1, _magnitude(value))
     place = max(place, _magnitude(value) - MOST_DIGITS + 1, 0 if abs(value) >= 100 else place)
-    return rounded(value, Decimal(1).scaleb(place))
+    return Decimal(1).scaleb(place)
 
 
 def _estimated_chance(value: float, error: float | None) -> str:

@@ -6,8 +6,8 @@ from typing import Any
 
 from lossagg.report import digits, tables
 from lossagg.report.cells import Absent, show
-from lossagg.report.reading import Assessment, Entry, engine_range_name, years_observed
-from lossagg.report.wording import MEASURES, STANDING_CAUTIONS, headline_sentence
+from lossagg.report.reading import Assessment, Entry, engine_range_name, every_caution, years_observed
+from lossagg.report.wording import MEASURES, headline_sentence
 
 FINDING_ORDER = ("stop", "set aside", "warning", "normalised")
 
@@ -42,7 +42,7 @@ def crosscheck(assessment: Assessment) -> dict[str, Any]:
     return {
         "agrees": entry["verdict"] == "agree",
         "summary": entry["summary"],
-        "table": tables.evidence.crosscheck(assessment),
+        "table": tables.evidence.crosscheck_of_totals(assessment),
         "disagreements": tables.evidence.crosscheck_rows(parted, "Disagreements", "What the engines say"),
         "spreads": [_spread(row) for row in parted],
     }
@@ -107,8 +107,7 @@ def _reach(years: float | None, level: float) -> str:
 
 
 def _caution_status(assessment: Assessment) -> str:
-    own = len(assessment["cautions"])
-    return f"{own} of this assessment, {len(STANDING_CAUTIONS)} standing"
+    return ", ".join(code for code, _ in every_caution(assessment))
 
 
 def _plural(count: int, noun: str) -> str:

@@ -9,8 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 from lossagg.report import digits, figures, front, tables
 from lossagg.report.cells import Cell, Kind, Shown, Table, clean, show
-from lossagg.report.reading import Assessment, Entry, years_observed
-from lossagg.report.wording import STANDING_CAUTIONS
+from lossagg.report.reading import Assessment, Entry, every_caution, years_observed
 
 if TYPE_CHECKING:
     import jinja2
@@ -72,8 +71,7 @@ def render_report(assessment: Assessment) -> str:
         "headline": front.headline(assessment),
         "crosscheck": front.crosscheck(assessment),
         "status": front.status(assessment),
-        "cautions": assessment["cautions"],
-        "standing": [{"code": code, "message": text} for code, text in STANDING_CAUTIONS],
+        "cautions": every_caution(assessment),
         "levels": tables.totals.levels(assessment),
         "moments": tables.totals.moments(assessment),
         "curve": figures.exceedance_figure(assessment),
@@ -128,13 +126,13 @@ def _section(line: Entry, index: int, assessment: Assessment) -> LineSection:
         anchor=f"line-{index}",
         name=line["name"],
         given=line["source"] == "given",
-        facts=tuple(_line_facts(line)),
+        facts=tuple(_line_facts(line, currency)),
         tables=tuple(_without_line(table) for table in built if table.rows),
         figures=tuple(figure for figure in drawn if figure),
     )
 
 
-def _line_facts(line: Entry) -> list[tuple[str, str]]:
+def _line_facts(line: Entry, currency: str) -> list[tuple[str, str]]:
     size, exposure = line["severity"], line["exposure"]
     facts = [
         ("Frequency", tables.lines.law_text(line["frequency"])),
@@ -143,17 +141,15 @@ def _line_facts(line: Entry) -> list[tuple[str, str]]:
     if line["source"] == "given":
         return [*facts, ("Source", tables.lines.GIVEN)]
     threshold = size["threshold"]
-    facts.append(
-        ("Threshold", "none" if threshold is None else f"{digits.significant(threshold, 9)} (trended)")
-    )
+    facts.append(("Threshold", f"{threshold:,.2f} {currency}, trended" if threshold else "none"))
     facts.append(
         ("Losses fitted", f"{size['observations']:,}, of which {size['censored']:,} at a policy limit")
     )
     if exposure:
         base = f" {exposure['base']}" if exposure["base"] else ""
-        facts.append(
-            ("Exposure of the forecast period", f"{digits.significant(exposure['forecast'], 6)}{base}")
-        )
+        forecast = f"{digits.significant(exposure['forecast'], 6)}{base}"
+        facts.append(("Exposure of the forecast period", forecast))
+    facts += [("Note", note) for law in (line["frequency"], size) for note in law.get("notes", ())]
     return facts
 
 

@@ -12,6 +12,7 @@ from typing import Any
 
 from lossagg.errors import InputError
 from lossagg.report.cells import Absent, Cell, Estimated, Ranged
+from lossagg.report.wording import STANDING_CAUTIONS
 
 Entry = Mapping[str, Any]
 Assessment = Mapping[str, Any]
@@ -76,13 +77,27 @@ def ranged(figure: Entry) -> Cell:
     return Ranged(figure["value"], figure.get("low"), figure.get("high"))
 
 
-def estimated(value: float | None, engine: str, sd: float | None, years: int, missing: Absent) -> Cell:
-    """A mean with the standard error that simulating `years` years leaves; exact engines leave none."""
+def moment(assessment: Assessment, subject: str, measure: str, value: float | None, engine: str) -> Cell:
+    """A mean or standard deviation with the accuracy that the crosscheck states for it.
+
+    Args:
+        assessment: the whole assessment.
+        subject: "gross", "net", "line NAME" or "cover NAME", as in the crosscheck.
+        measure: "mean" or "sd".
+        value: the figure, `None` where there is none.
+        engine: the engine it comes from.
+    """
     if value is None:
-        return missing
-    if engine in EXACT_ENGINES or not years:
-        return Estimated(value, None)
-    return Estimated(value, abs(value) / 100 if sd is None else sd / years**0.5)
+        return missing(assessment)
+    for row in assessment["crosscheck"]["comparisons"]:
+        if row["subject"] != subject or row["measure"] != measure:
+            continue
+        low, high = row["bracket"].get(engine) or (None, None)
+        if low is not None and high is not None and low <= value <= high:
+            return Ranged(value, low, high)
+        if engine not in EXACT_ENGINES:
+            return Estimated(value, row["standard_error"])
+    return Estimated(value, None)
 
 
 def chance(value: float | None, engine: str, years: int, missing: Absent) -> Cell:
@@ -117,3 +132,16 @@ def years_observed(assessment: Assessment) -> float | None:
         sum(row["fraction"] for row in line["by_year"]) for line in assessment["lines"] if line["by_year"]
     ]
     return min(spans) if spans else None
+
+
+def every_caution(assessment: Assessment) -> list[tuple[str, tuple[str, ...]]]:
+    """Code and texts of every caution: those of the assessment first, then the standing ones.
+
+    A standing caution is left to the assessment where it brings its own under the same code.
+    """
+    found: dict[str, tuple[str, ...]] = {}
+    for entry in assessment["cautions"]:
+        found[entry["code"]] = (*found.get(entry["code"], ()), entry["message"])
+    standing = dict(STANDING_CAUTIONS)
+    own = [(code, texts) for code, texts in found.items() if code not in standing]
+    return own + [(code, found.get(code, (text,))) for code, text in standing.items()]

@@ -9,7 +9,8 @@ from pathlib import Path
 from lossagg.report import front, tables
 from lossagg.report.cells import Cell, Shown, Table, clean, show
 from lossagg.report.folder import FILES
-from lossagg.report.reading import Assessment
+from lossagg.report.reading import Assessment, every_caution
+from lossagg.report.wording import STANDING_CAUTIONS
 
 MOST_CAUTIONS = 4
 
@@ -75,17 +76,26 @@ def _headline(assessment: Assessment) -> list[str]:
 def _remarks(assessment: Assessment) -> list[str]:
     check = assessment["crosscheck"]
     verdict = "Engines agree" if check["verdict"] == "agree" else "ENGINES DISAGREE"
-    cautions = assessment["cautions"]
     texts = [f"{verdict}. {check['summary']}"]
     texts += [f"{term}: {text}" for term, text, _ in front.status(assessment) if term != "Cautions"]
-    texts += [f"Caution: {entry['message']}" for entry in cautions[:MOST_CAUTIONS]]
-    if len(cautions) > MOST_CAUTIONS:
-        texts.append(f"{len(cautions) - MOST_CAUTIONS} more cautions in the report.")
+    texts += _main_cautions(assessment)
     texts.append(
         "The error of models and parameters is not in these ranges. This is not an actuarial opinion, "
         "a certification or a filing; local rules and licensed practice prevail."
     )
     return texts
+
+
+def _main_cautions(assessment: Assessment) -> list[str]:
+    """The first caution of each kind that is not a standing one."""
+    standing = dict(STANDING_CAUTIONS)
+    kinds = [(code, texts) for code, texts in every_caution(assessment) if code not in standing]
+    shown = [
+        f"Caution: {texts[0]}" + (f" ({len(texts) - 1} more like it)" if len(texts) > 1 else "")
+        for _, texts in kinds[:MOST_CAUTIONS]
+    ]
+    hidden = len(kinds) - len(shown)
+    return [*shown, f"More kinds of caution in the report: {hidden}."] if hidden else shown
 
 
 def plain_table(table: Table) -> list[str]:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from typing import Any
 
 MEASURES = {
@@ -42,7 +43,9 @@ STANDING_CAUTIONS: tuple[tuple[str, str], ...] = (
 )
 
 
-def headline_sentence(headline: dict[str, Any], currency: str, figure: str, period: str, level: str) -> str:
+def headline_sentence(
+    headline: Mapping[str, Any], currency: str, figure: str, period: str, level: str
+) -> str:
     """What the headline means, in one sentence a committee can repeat."""
     subject = "after all covers" if headline["subject"] == "net" else "before any cover"
     chance = f"once{period.removeprefix('1')} on average"

@@ -56,6 +56,8 @@ def test_estimates_end_at_the_second_digit_of_their_error() -> None:
     assert digits.estimated(1.34567, 0.000297) == "1.34567"
     assert digits.estimated(41_233.7, 1_278.0) == "41,200"
     assert digits.estimated(3.0, None) == "3"
+    assert digits.with_error(1.34567, 0.0297) == "1.346 ± 0.030"
+    assert digits.with_error(0.4, None) == "0.4"
 
 
 def test_probabilities_show_what_the_simulation_saw() -> None:

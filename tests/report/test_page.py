@@ -178,6 +178,20 @@ def test_cautions_cannot_be_switched_off() -> None:
     assert "licensed practice prevail" in text
 
 
+def test_caution_of_the_assessment_takes_the_place_of_the_standing_one() -> None:
+    """One text per caution: never the general and the particular one side by side."""
+    assessment = sample_assessment()
+    assessment["cautions"] = [
+        {"code": "extrapolation", "message": "first line"},
+        {"code": "extrapolation", "message": "second line"},
+    ]
+    text = Page(render_report(assessment)).text
+    cautions = text[text.index("7. Cautions") :]
+    assert cautions.count("extrapolation") == 1
+    assert "first line second line" in cautions
+    assert "reaches beyond the data; the figure there" not in cautions
+
+
 @pytest.mark.parametrize("assessment", [sample_assessment(), withheld_assessment()])
 def test_output_is_called_nothing_it_is_not(assessment) -> None:
     text = Page(render_report(assessment)).text.lower()
@@ -212,3 +226,10 @@ def test_portfolio_of_given_laws_without_covers() -> None:
     assert "net equals gross" in page.text
     assert "every law was given" in page.text
     assert page.open == []
+
+
+def test_moments_show_no_more_digits_than_their_bracket() -> None:
+    """The mean of gross is known to within 850 in the crosscheck, so it ends at the hundreds."""
+    text = Page(render_report(sample_assessment())).text
+    moments = text[text.index("Expected annual loss, EUR Annual loss") :][:400]
+    assert "Gross 4,182,300 4,181,400 to 4,183,200" in moments

@@ -129,6 +129,7 @@ def counts_figure(line: Entry, name: str) -> str | None:
         axis.yaxis.set_major_locator(MaxNLocator(integer=True, nbins=6))
         axis.yaxis.set_major_formatter(FuncFormatter(amount_label))
         axis.set_ylim(0, 1.25 * max(max(point["observed"], point["high"]) for point in points) or 1)
+        axis.set_xlim(years[0] - 0.8, years[-1] + 0.8)
         axis.set_xlabel("year")
         axis.set_ylabel("losses observed")
         axis.legend(loc="upper left", ncols=2, fontsize=8)

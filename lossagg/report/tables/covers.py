@@ -6,7 +6,7 @@ from typing import Any
 
 from lossagg.report import digits
 from lossagg.report.cells import Absent, Cell, Column, Table
-from lossagg.report.reading import Assessment, chance, estimated, missing, reasons
+from lossagg.report.reading import Assessment, chance, missing, moment, reasons
 from lossagg.report.tables.totals import level_row
 
 CANNOT_EXHAUST = "cannot be exhausted"
@@ -67,12 +67,12 @@ def results(assessment: Assessment) -> Table:
     gone, rows = missing(assessment), list[tuple[Cell, ...]]()
     unlimited = gone if assessment["headline"]["withheld"] else Absent(CANNOT_EXHAUST)
     for cover in assessment["covers"]:
-        engine = cover["engine"]
+        engine, subject = cover["engine"], f"cover {cover['name']}"
         rows.append(
             (
                 cover["name"],
-                estimated(cover["expected"], engine, cover["sd"], years, gone),
-                estimated(cover["sd"], engine, None, years, gone),
+                moment(assessment, subject, "mean", cover["expected"], engine),
+                moment(assessment, subject, "sd", cover["sd"], engine),
                 chance(cover["attachment_probability"], engine, years, gone),
                 chance(cover["exhaustion_probability"], engine, years, unlimited),
                 engine,
@@ -80,8 +80,8 @@ def results(assessment: Assessment) -> Table:
         )
     columns = (
         Column("Cover"),
-        Column("Expected annual cost", "money"),
-        Column("Standard deviation", "money"),
+        Column("Expected annual cost", "money", ranged=True),
+        Column("Standard deviation", "money", ranged=True),
         Column("Attachment probability", "probability"),
         Column("Exhaustion probability", "probability"),
         Column("Engine"),

@@ -6,10 +6,11 @@ from collections.abc import Sequence
 from dataclasses import replace
 
 from lossagg.report.cells import Absent, Cell, Column, Estimated, Ranged, Table
-from lossagg.report.reading import Assessment, Entry, text_or
-from lossagg.report.wording import MEASURES, STANDING_CAUTIONS
+from lossagg.report.reading import Assessment, Entry, every_caution, text_or
+from lossagg.report.wording import MEASURES
 
 ENGINES = ("fourier", "panjer", "simulation")
+TOTALS = ("gross", "net")
 
 
 def crosscheck(assessment: Assessment) -> Table:
@@ -24,15 +25,32 @@ def crosscheck(assessment: Assessment) -> Table:
     return replace(table, notes=(*table.notes, *outside))
 
 
+def crosscheck_of_totals(assessment: Assessment) -> Table:
+    """The same for gross and net only, and for whatever disagrees."""
+    check, currency = assessment["crosscheck"], assessment["portfolio"]["currency"]
+    shown = [row for row in check["comparisons"] if row["subject"] in TOTALS or not row["agrees"]]
+    return crosscheck_rows(shown, "Crosscheck", f"Crosscheck of the engines, {currency}")
+
+
 def crosscheck_rows(comparisons: Sequence[Entry], key: str, title: str) -> Table:
     """The same for some of the comparisons."""
     rows: list[tuple[Cell, ...]] = []
     for entry in comparisons:
         level = Absent("n/a") if entry["level"] is None else entry["level"]
         values = tuple(_engine_cell(entry, engine) for engine in ENGINES)
+        error = entry["standard_error"]
+        spread: Cell = Absent("n/a") if error is None else float(f"{error:.2g}")
         verdict = "agree" if entry["agrees"] else "DISAGREE"
         rows.append(
-            (entry["subject"], MEASURES[entry["measure"]], level, *values, verdict, entry["note"] or "")
+            (
+                entry["subject"],
+                MEASURES[entry["measure"]],
+                level,
+                *values,
+                spread,
+                verdict,
+                entry["note"] or "",
+            )
         )
     columns = (
         Column("Subject"),
@@ -41,6 +59,7 @@ def crosscheck_rows(comparisons: Sequence[Entry], key: str, title: str) -> Table
         Column("fourier", "money", ranged=True),
         Column("panjer", "money", ranged=True),
         Column("simulation", "money"),
+        Column("Standard error", "number"),
         Column("Verdict"),
         Column("Note"),
     )
@@ -60,28 +79,47 @@ def _engine_cell(entry: Entry, engine: str) -> Cell:
 
 
 def findings(assessment: Assessment) -> Table:
-    """What was found in the input, where, and what to do about it."""
-    rows: tuple[tuple[Cell, ...], ...] = tuple(
-        (
-            entry["severity"],
-            entry["code"],
-            entry["file"] or "",
-            "" if entry["row"] is None else str(entry["row"]),
-            entry["column"] or "",
-            "" if entry["value"] is None else str(entry["value"]),
-            entry["message"],
-            entry["remedy"] or "",
-        )
-        for entry in assessment["findings"]
+    """What was found in the input, where, how much of it, and what to do about it."""
+    rows = tuple(_finding_cells(entry) for entry in assessment["findings"])
+    columns = (
+        Column("Severity"),
+        Column("Code"),
+        Column("Where"),
+        Column("Value"),
+        Column("What"),
+        Column("Remedy"),
+        Column("Rows", "count"),
+        Column(f"Amount, {assessment['portfolio']['currency']}", "amount"),
     )
-    headings = ("Severity", "Code", "File", "Row", "Column", "Value", "What", "Remedy")
-    return Table("Findings", "Findings in the input", tuple(Column(text) for text in headings), rows)
+    return Table("Findings", "Findings in the input", columns, rows)
+
+
+def _finding_cells(entry: Entry) -> tuple[Cell, ...]:
+    sheet = entry.get("sheet")
+    parts = (
+        entry["file"] or "",
+        f"sheet {sheet}" if sheet else "",
+        "" if entry["row"] is None else f"row {entry['row']}",
+        f"column {entry['column']}" if entry["column"] else "",
+    )
+    seen = "" if entry["value"] is None else str(entry["value"])
+    count, amount = entry.get("count"), entry.get("amount")
+    return (
+        entry["severity"],
+        entry["code"],
+        ", ".join(part for part in parts if part),
+        seen,
+        entry["message"],
+        entry["remedy"] or "",
+        "" if count is None else count,
+        "" if amount is None else amount,
+    )
 
 
 def cautions(assessment: Assessment) -> Table:
-    """The cautions of this assessment, then the standing ones that no setting removes."""
-    own = tuple((entry["code"], entry["message"]) for entry in assessment["cautions"])
-    return Table("Cautions", "Cautions", (Column("Code"), Column("Caution")), own + STANDING_CAUTIONS)
+    """The cautions of this assessment, then the standing ones; no setting removes them."""
+    rows = tuple((code, text) for code, texts in every_caution(assessment) for text in texts)
+    return Table("Cautions", "Cautions", (Column("Code"), Column("Caution")), rows)
 
 
 def run(assessment: Assessment) -> Table:

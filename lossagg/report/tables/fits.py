@@ -61,7 +61,10 @@ def candidates(lines: Sequence[Entry]) -> Table:
         Column("BIC", "amount"),
         Column("Choice"),
     )
-    notes = ("AIC and BIC: lower is better. They compare candidates fitted to the same losses only.",)
+    notes = (
+        "AIC and BIC: lower is better. They compare candidates fitted to the same losses only.",
+        "Frequency candidates as fitted: with an exposure, their mean is per unit of exposure.",
+    )
     return Table("Candidates", "Candidates", columns, tuple(rows), notes)
 
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from lossagg.report import digits
 from lossagg.report.cells import Absent, Cell, Column, Estimated, Table, clean
-from lossagg.report.reading import Assessment, Entry, existing, missing, reasons
+from lossagg.report.reading import Assessment, Entry, existing, moment, reasons
 from lossagg.report.tables.totals import level_row
 
 GIVEN = "given, not estimated"
@@ -12,30 +12,31 @@ GIVEN = "given, not estimated"
 
 def law_text(law: Entry) -> str:
     """A law with its parameters and their standard errors in one short text."""
+    if law["parameters"] is None:
+        return clean(law["family"])
     errors = law["standard_errors"] or {}
-    parts = []
-    for name, value in law["parameters"].items():
-        error = errors.get(name)
-        text = f"{name} {digits.estimated(value, error) if error else digits.significant(value, 6)}"
-        parts.append(f"{text} ± {digits.significant(error, 2)}" if error else text)
+    parts = [
+        f"{name} {digits.with_error(value, errors.get(name))}" for name, value in law["parameters"].items()
+    ]
     return clean(f"{law['family']}: {', '.join(parts)}")
 
 
 def overview(assessment: Assessment) -> Table:
     """Every line with its laws, expected number of losses, expected annual loss and spread."""
     currency = assessment["portfolio"]["currency"]
-    gone, rows = missing(assessment), list[tuple[Cell, ...]]()
+    rows: list[tuple[Cell, ...]] = []
     for line in assessment["lines"]:
         count, size = line["frequency"], line["severity"]
+        engine, subject = line["levels"][0]["var"]["engine"], f"line {line['name']}"
         rows.append(
             (
                 line["name"],
                 law_text(count),
                 law_text(size),
-                count["mean"],
+                Estimated(count["mean"], (count["standard_errors"] or {}).get("mean")),
                 existing(size["mean"], Absent("does not exist")),
-                existing(line["mean"], gone),
-                existing(line["sd"], gone),
+                moment(assessment, subject, "mean", line["mean"], engine),
+                moment(assessment, subject, "sd", line["sd"], engine),
                 _tail(size),
             )
         )
@@ -45,8 +46,8 @@ def overview(assessment: Assessment) -> Table:
         Column("Severity"),
         Column("Losses a year", "number"),
         Column("Mean loss", "money"),
-        Column("Expected annual loss", "money"),
-        Column("Standard deviation", "money"),
+        Column("Expected annual loss", "money", ranged=True),
+        Column("Standard deviation", "money", ranged=True),
         Column("Tail index", "number"),
     )
     notes = (

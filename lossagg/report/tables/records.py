@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from lossagg.report.cells import Absent, Cell, Column, Table
-from lossagg.report.reading import Assessment, Entry
+from lossagg.report.reading import Assessment, Entry, computed
 
 CENT = 0.005
 
@@ -52,10 +52,12 @@ def by_year(lines: Sequence[Entry], currency: str) -> Table:
             _given(row["exposure"]),
             row["fraction"],
             row["losses"],
+            computed(row.get("claims")),
+            computed(row.get("open")),
             row["amount"],
             row["trended_amount"],
             row["largest"],
-            _given(row["threshold"]),
+            row["threshold"] or Absent("none"),
         )
         for line in lines
         for row in line["by_year"]
@@ -66,6 +68,8 @@ def by_year(lines: Sequence[Entry], currency: str) -> Table:
         Column("Exposure", "number"),
         Column("Part of year observed", "number"),
         Column("Events", "count"),
+        Column("Claims", "count"),
+        Column("Open claims", "count"),
         Column("Amount as recorded", "amount"),
         Column("Amount trended", "amount"),
         Column("Largest event", "amount"),

@@ -8,8 +8,7 @@ from lossagg.report.reading import (
     Entry,
     absent,
     engine_range_name,
-    estimated,
-    missing,
+    moment,
     ranged,
     reasons,
 )
@@ -39,9 +38,8 @@ def less_mean(assessment: Assessment) -> Cell:
 def headline(assessment: Assessment) -> Table:
     """The capital figure and what it is measured on, one row."""
     entry, currency = assessment["headline"], assessment["portfolio"]["currency"]
-    years = assessment["run"]["years"]
     total = assessment[entry["subject"]]
-    expected = estimated(entry["mean"], total["engine"], total["sd"], years, missing(assessment))
+    expected = moment(assessment, entry["subject"], "mean", entry["mean"], total["engine"])
     cells: tuple[Cell, ...] = (
         assessment["portfolio"]["name"],
         entry["subject"],
@@ -59,7 +57,7 @@ def headline(assessment: Assessment) -> Table:
         Column("Measure"),
         Column("Level", "level"),
         Column(f"Capital figure, {currency}", "money", ranged=True),
-        Column(f"Expected annual loss, {currency}", "money"),
+        Column(f"Expected annual loss, {currency}", "money", ranged=True),
         Column(f"Capital less expected, {currency}", "money", ranged=True),
         Column("Engine"),
         Column("Crosscheck"),
@@ -100,15 +98,14 @@ def _range_notes(assessment: Assessment) -> tuple[str, ...]:
 
 def moments(assessment: Assessment) -> Table:
     """Expected annual loss and its standard deviation, gross and net."""
-    currency, years = assessment["portfolio"]["currency"], assessment["run"]["years"]
-    gone, rows = missing(assessment), list[tuple[Cell, ...]]()
+    currency, rows = assessment["portfolio"]["currency"], list[tuple[Cell, ...]]()
     for title, subject in SUBJECTS:
         entry = assessment[subject]
         rows.append(
             (
                 title,
-                estimated(entry["mean"], entry["engine"], entry["sd"], years, gone),
-                estimated(entry["sd"], entry["engine"], None, years, gone),
+                moment(assessment, subject, "mean", entry["mean"], entry["engine"]),
+                moment(assessment, subject, "sd", entry["sd"], entry["engine"]),
                 entry["engine"],
                 "exact" if entry["exact"] else "simulated",
                 entry["note"] or "",
@@ -116,8 +113,8 @@ def moments(assessment: Assessment) -> Table:
         )
     columns = (
         Column("Annual loss"),
-        Column(f"Expected, {currency}", "money"),
-        Column(f"Standard deviation, {currency}", "money"),
+        Column(f"Expected, {currency}", "money", ranged=True),
+        Column(f"Standard deviation, {currency}", "money", ranged=True),
         Column("Engine"),
         Column("Kind"),
         Column("Note"),
