@@ -20,7 +20,7 @@ from lossagg.records.shape import shape_findings
 from lossagg.records.table import LossTable
 from lossagg.records.tolerance import check_tolerance
 from lossagg.records.typed import by_word
-from lossagg.records.word_rules import canonical_lines, line_faults
+from lossagg.records.word_rules import canonical_lines, line_faults, pooled_lines
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -150,6 +150,7 @@ def check_losses(
     """
     terms = _terms(valuation_date, currency, lines, first_year, tolerance)
     lines_at_fault = line_faults(table, terms.lines) if terms.lines is not None else []
+    pooled = pooled_lines(table) if terms.lines is None else []
     table = _with_lines(table, terms)
     faults = [*lines_at_fault, *row_faults(table, terms)]
     places = table.places()
@@ -169,7 +170,7 @@ def check_losses(
         member=np.ones(len(table), dtype=np.bool_),
         reason=reason,
         faults=(*claimed, _incomplete_events(table, used, claimed), *warned, *repaired),
-        general=(*_shapes(table, used, terms), *table.findings),
+        general=(*pooled, *_shapes(table, used, terms), *table.findings),
         terms=terms,
         line=None,
         reconciliation=reconcile(table.exact, used, table.unreadable),

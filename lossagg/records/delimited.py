@@ -16,6 +16,7 @@ from itertools import islice
 from typing import TYPE_CHECKING
 
 from lossagg.errors import InputError, place
+from lossagg.records.findings import counted
 from lossagg.records.raw import Choose, Layout, RawTable, TableBuilder
 
 if TYPE_CHECKING:
@@ -76,9 +77,10 @@ def read_delimited(data: bytes, file: str, layout: Layout, choose: Choose) -> Ra
         return builder.finish()
     records = _fill(builder, reader, decoded.text, delimiter)
     if reader.line_num > records:
+        breaks = counted(reader.line_num - records, "line break")
         builder.note(
             "line-breaks",
-            f"{reader.line_num - records} line breaks stand inside quoted cells; rows are counted by record",
+            f"{breaks} inside quoted cells; rows are counted by record",
             "Check that no quote swallows records.",
             warn=True,
         )

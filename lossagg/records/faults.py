@@ -11,7 +11,7 @@ import numpy as np
 
 from lossagg.arrays import BoolArray, IntArray
 from lossagg.records.amounts import MISSING
-from lossagg.records.findings import Action, Finding, rows_in_words
+from lossagg.records.findings import Action, Finding, counted, rows_in_words
 from lossagg.records.money import DecimalArray, exact_sum
 
 LISTED = 20
@@ -76,7 +76,7 @@ def list_fault(fault: Fault, rows: Rows) -> list[Finding]:
                 None,
                 rows.headings.get(fault.column or ""),
                 None,
-                f"{fault.message}: {len(rest)} further rows ({words})",
+                f"{fault.message}: {counted(len(rest), 'further row')} ({words})",
                 fault.remedy,
                 sheet=rows.sheet,
                 count=len(rest),

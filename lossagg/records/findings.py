@@ -113,6 +113,11 @@ def raise_stops(findings: Sequence[Finding]) -> None:
         raise RecordsError(findings)
 
 
+def counted(number: int, noun: str) -> str:
+    """A number with its noun: "1 row", "3 rows"."""
+    return f"{number} {noun}{'' if number == 1 else 's'}"
+
+
 def rows_in_words(rows: Sequence[int], total: int) -> str:
     """Name a few rows and say how many there are in all: "rows 4, 9, 12 and 88 more"."""
     named = ", ".join(str(row) for row in rows[:PLACES_NAMED])

@@ -14,7 +14,7 @@ import numpy as np
 
 from lossagg.arrays import BoolArray, IntArray
 from lossagg.errors import InputError
-from lossagg.records.findings import Finding
+from lossagg.records.findings import Finding, counted
 
 Choose = Callable[[Sequence[str], "str | None"], Mapping[str, int]]
 FIRST_ROW = 2
@@ -137,7 +137,9 @@ class TableBuilder:
             )
         rows = int(filled[-1]) + 1
         if rows < len(empty):
-            self.note("blank-foot", f"{len(empty) - rows} blank rows at the foot are ignored", "None needed.")
+            self.note(
+                "blank-foot", f"{counted(len(empty) - rows, 'blank row')} at the foot ignored", "None needed."
+            )
         columns = {
             name: TextColumn(pa.concat_arrays(chunks)[:rows], np.concatenate(self._native[name])[:rows])
             for name, chunks in self._text.items()

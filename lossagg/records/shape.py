@@ -9,7 +9,7 @@ import numpy as np
 
 from lossagg.arrays import BoolArray, FloatArray, IntArray
 from lossagg.records.events import Events, group_events
-from lossagg.records.findings import Finding, rows_in_words
+from lossagg.records.findings import Finding, counted, rows_in_words
 from lossagg.records.table import LossTable
 
 DOMINANT = 0.95
@@ -156,7 +156,7 @@ def _long_events(events: Events, rows: IntArray) -> list[tuple[str, str, str, in
     return [
         (
             "long-event",
-            f"{len(long)} events last longer than a year "
+            f"{counted(len(long), 'event')} of more than a year "
             f"({rows_in_words(sorted(int(row) for row in at), len(at))})",
             "Is the event column a policy or a customer rather than an occurrence? Map another one.",
             len(at),

@@ -10,7 +10,7 @@ import numpy as np
 from lossagg.arrays import BoolArray, FloatArray
 from lossagg.records.check import CheckedLosses
 from lossagg.records.events import Events, group_events
-from lossagg.records.findings import Finding
+from lossagg.records.findings import Finding, counted
 from lossagg.records.money import exact_sum
 from lossagg.records.years import YearTable
 
@@ -65,7 +65,12 @@ def log_steps(
     return (
         Step("read", before.read, before.read, read, read, f"rows of {table.file}{gross}"),
         Step(
-            "check", before.read, before.used, read, kept, f"{before.excluded} rows set aside, see findings"
+            "check",
+            before.read,
+            before.used,
+            read,
+            kept,
+            f"{counted(before.excluded, 'row')} set aside, see findings",
         ),
         Step("events", before.used, all_events, kept, kept, "claims of one event summed into one loss"),
         Step(
@@ -74,8 +79,8 @@ def log_steps(
             len(events),
             kept,
             left,
-            f"{apart} events below the reporting threshold set aside; it is compared with the sum of an "
-            "event, so claims that were left out one by one are not seen",
+            f"{counted(apart, 'event')} below the reporting threshold set aside; it is compared with the sum "
+            "of an event, so claims that were left out one by one are not seen",
         ),
         Step(
             "trend",
@@ -114,7 +119,7 @@ def open_claims_caution(checked: CheckedLosses, years: YearTable) -> list[Findin
             "Give the status of each claim; open claims tend to grow, and late ones are not yet reported."
         )
     elif count:
-        message = f"{count} claims are open and their amounts are taken as they stand, without development"
+        message = f"{counted(count, 'open claim')}, taken at the amounts as they stand, without development"
         remedy = "Expect recent years to grow; use developed amounts if you have them."
     else:
         return []

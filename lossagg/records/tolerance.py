@@ -8,7 +8,7 @@ import numpy as np
 
 from lossagg.arrays import BoolArray
 from lossagg.records.faults import Fault
-from lossagg.records.findings import Finding, RecordsError
+from lossagg.records.findings import Finding, RecordsError, counted
 from lossagg.records.money import exact_sum
 from lossagg.records.table import LossTable
 
@@ -53,8 +53,8 @@ def check_tolerance(
         None,
         None,
         None,
-        f"{shares[worst]:.1%} of {worst}{of_line} ({count} rows) would be set aside for faults, more than "
-        f"the tolerance of {tolerance:.1%}",
+        f"{shares[worst]:.1%} of {worst}{of_line} ({counted(count, 'row')}) would be set aside for faults, more "
+        f"than the tolerance of {tolerance:.1%}",
         f"Repair the file (first at row {table.row[first]}; by reason: {reasons}), or raise the tolerance.",
         sheet=table.sheet,
         line=line,

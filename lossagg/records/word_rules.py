@@ -9,6 +9,7 @@ import numpy as np
 from lossagg.arrays import BoolArray
 from lossagg.records.events import CLOSED, OPEN, is_open
 from lossagg.records.faults import Fault
+from lossagg.records.findings import Finding
 from lossagg.records.headings import nearest
 from lossagg.records.table import LossTable
 from lossagg.records.typed import by_word
@@ -91,6 +92,27 @@ def line_faults(table: LossTable, lines: tuple[str, ...]) -> list[Fault]:
         message = "the line is not one of the portfolio" if name else "the line is missing"
         faults.append(Fault("unknown-line", "stop", "line", mask, message, nearest(name, lines)))
     return faults
+
+
+def pooled_lines(table: LossTable) -> list[Finding]:
+    """Warn when a file taken for one line names several."""
+    names = sorted(set(table.word("line")[~table.blank].tolist()))
+    if len(names) < 2:
+        return []
+    return [
+        Finding(
+            "lines-pooled",
+            "warn",
+            table.file,
+            None,
+            table.headings["line"],
+            None,
+            f"the rows are taken for one line but name {len(names)}",
+            "Let every line of the portfolio that it holds read this file, and its rows are told apart.",
+            sheet=table.sheet,
+            count=len(table),
+        )
+    ]
 
 
 def canonical_lines(lines: Sequence[str]) -> Mapping[str, str]:

@@ -100,7 +100,7 @@ def test_threshold_is_that_of_the_event_and_small_events_are_counted(prepare) ->
     step = losses.steps[3]
     assert (step.step, step.count_before, step.count_after) == ("threshold", 4, 3)
     assert (step.amount_before, step.amount_after) == (10800.0, 10700.0)
-    assert step.note.startswith("1 events below the reporting threshold set aside")
+    assert step.note.startswith("1 event below the reporting threshold set aside")
 
 
 def test_too_many_below_the_reporting_threshold_stop(prepare) -> None:
@@ -142,7 +142,7 @@ def test_years_without_losses_stay_and_the_last_is_observed_in_part(prepare) -> 
     assert years.trended_amount[0] == fsum(losses.amount[:2])
     assert losses.supported_level == 0.75
     codes = {f.code: f.message for f in losses.findings}
-    assert codes["open-claims"].startswith("1 claims are open and their amounts are taken as they stand")
+    assert codes["open-claims"].startswith("1 open claim, taken at the amounts as they stand")
     assert "begin in 2021, the year of the first loss" in codes["window-from-first-loss"]
     assert set(years.to_dicts()[0]) >= {
         *("year", "exposure", "fraction", "losses", "amount", "trended_amount", "largest", "threshold")

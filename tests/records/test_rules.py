@@ -277,7 +277,7 @@ def test_ordinary_amounts_raise_no_warning(check) -> None:
 def test_an_event_that_lasts_too_long_is_warned_of(check) -> None:
     checked = check("amount,date,event\n5,2022-01-01,E\n6,2024-01-01,E\n7,2024-01-01,F\n")
     found = next(f for f in checked.findings if f.code == "long-event")
-    assert found.message == "1 events last longer than a year (rows 2, 3)"
+    assert found.message == "1 event of more than a year (rows 2, 3)"
 
 
 def test_an_event_that_lost_a_claim_is_warned_of(check) -> None:
@@ -346,7 +346,7 @@ def test_too_much_set_aside_stops_with_the_share_and_the_reasons(check) -> None:
 
 def test_the_share_of_money_counts_too(check) -> None:
     text = "amount,date\n" + f"{GOOD}\n" * 99 + "-200,2024-01-01\n"
-    with pytest.raises(RecordsError, match=r"16\.8% of the money \(1 rows\)"):
+    with pytest.raises(RecordsError, match=r"16\.8% of the money \(1 row\)"):
         check(text, tolerance=0.05)
 
 
@@ -382,6 +382,16 @@ def test_lines_are_reconciled_apart_and_add_up(check) -> None:
         assert sum(getattr(part, name) for part in parts) == getattr(whole, name)
     with pytest.raises(InputError, match=r"not checked for this line.*Did you mean 'Motor'\?"):
         checked.for_line("Moto")
+
+
+def test_a_file_taken_for_one_line_that_names_several_is_warned_of(check) -> None:
+    found = [
+        f for f in check(f"amount,date,line\n{GOOD},A\n11,2024-01-01,B\n").findings if f.action == "warn"
+    ]
+    assert [(f.code, f.message) for f in found] == [
+        ("lines-pooled", "the rows are taken for one line but name 2")
+    ]
+    assert check(f"amount,date,line\n{GOOD},A\n11,2024-01-01,A\n").findings == ()
 
 
 def test_first_years_by_line(check) -> None:
