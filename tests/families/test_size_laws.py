@@ -22,6 +22,12 @@ LOWER = (1e-300, 1e-30, 1e-6, 0.05)
 every_law = pytest.mark.parametrize("law", SIZES, ids=name)
 
 
+@pytest.fixture(autouse=True)
+def digits():
+    with mp.workdps(120):
+        yield
+
+
 def sample_points(law: SizeLaw) -> list[float]:
     """Amounts from the far lower to the far upper tail, strictly inside the support."""
     low, high = law.support

@@ -1,4 +1,4 @@
-"""The size laws as textbooks write them, in 120-digit arithmetic: the measure of lossagg's accuracy.
+"""The size laws as textbooks write them, for 120-digit arithmetic: the measure of lossagg's accuracy.
 
 Plain formulas with all their cancellations, which 120 digits absorb; nothing here is shared with the
 package. Formulas: Klugman, Panjer and Willmot, Loss Models, appendix A (from memory); the generalised
@@ -12,8 +12,6 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 import mpmath as mp
-
-mp.mp.dps = 120
 
 
 @dataclass(frozen=True)
