@@ -33,14 +33,16 @@ def compute(
     book: Book, *, years: int, seed: int, workers: int | None, progress: Progress = silent
 ) -> dict[str, BookResult]:
     """What each engine makes of the book, by engine name."""
-    simulation = Simulation(years=years, seed=seed, workers=workers)
-    progress("simulating", 0.2)
-    results = {"simulation": simulation.book(book)}
+    results = {
+        "simulation": Simulation(years=years, seed=seed, workers=workers).book(
+            book, lambda done: progress("simulation", 0.1 + 0.4 * done)
+        )
+    }
     progress("Fourier transforms", 0.5)
     results["fourier"] = Fourier().book(book)
-    progress("Panjer recursion", 0.7)
+    progress("Panjer recursion", 0.75)
     results["panjer"] = Panjer().book(book)
-    progress("crosscheck", 0.85)
+    progress("crosscheck", 0.9)
     return {name: results[name] for name in ("fourier", "panjer", "simulation")}
 
 

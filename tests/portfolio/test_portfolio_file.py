@@ -157,5 +157,5 @@ def test_laws_that_cannot_be_meant(tmp_path: Path, severity: str, message: str) 
 
 def test_cover_terms_that_contradict_each_other_name_the_cover(tmp_path: Path) -> None:
     file = read(tmp_path, cover="retained-cap = 5")
-    with pytest.raises(InputError, match=r"cover\[1\].*there is no deductible"):
+    with pytest.raises(InputError, match=r"there is no deductible.*cover\[1\]"):
         placed_cover(file.cover[0], "cover[1]")
