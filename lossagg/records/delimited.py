@@ -67,7 +67,9 @@ def read_delimited(data: bytes, file: str, layout: Layout, choose: Choose) -> Ra
     builder = TableBuilder(file, None, headings, choose(headings, None))
     if decoded.mark:
         builder.note(
-            "byte-order-mark", f"a byte order mark says {decoded.mark}; it is not data", "None needed."
+            "byte-order-mark",
+            f"a byte order mark says {decoded.mark.removesuffix('-sig')}; it is not data",
+            "None needed.",
         )
     if delimiter != ",":
         name = DELIMITERS.get(delimiter, repr(delimiter))

@@ -53,8 +53,8 @@ def check_tolerance(
         None,
         None,
         None,
-        f"{shares[worst]:.1%} of {worst}{of_line} ({counted(count, 'row')}) would be set aside for faults, more "
-        f"than the tolerance of {tolerance:.1%}",
+        f"{shares[worst]:.1%} of {worst}{of_line} ({counted(count, 'row')}) would be set aside for "
+        f"faults, more than the tolerance of {tolerance:.1%}",
         f"Repair the file (first at row {table.row[first]}; by reason: {reasons}), or raise the tolerance.",
         sheet=table.sheet,
         line=line,
