@@ -9,6 +9,8 @@ from __future__ import annotations
 import importlib
 from typing import TYPE_CHECKING
 
+from lossagg.version import __version__
+
 if TYPE_CHECKING:
     from pathlib import Path
 
@@ -34,8 +36,6 @@ if TYPE_CHECKING:
     )
     from lossagg.fitting import fit_frequency, fit_severity
     from lossagg.portfolio import Portfolio
-
-__version__ = "0.1.0"
 
 _ROOMS = {
     "families": (
@@ -69,6 +69,7 @@ __all__ = [
     "SizeTable",
     "Spliced",
     "Weibull",
+    "__version__",
     "annual_loss",
     "fit_frequency",
     "fit_severity",
@@ -102,4 +103,4 @@ def __getattr__(name: str) -> object:
 
 
 def __dir__() -> list[str]:
-    return sorted([*__all__, "__version__"])
+    return sorted(__all__)

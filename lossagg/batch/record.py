@@ -10,7 +10,7 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-from lossagg import __version__
+from lossagg.version import __version__
 from lossagg.errors import InputError
 from lossagg.report.folder import disk_errors, write_flushed
 

@@ -6,7 +6,7 @@ from typing import Annotated
 
 import typer
 
-from lossagg import __version__
+from lossagg.version import __version__
 from lossagg.commands.assess import assess
 from lossagg.commands.batch import batch
 

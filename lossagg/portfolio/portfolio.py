@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from pathlib import Path
 
-from lossagg import __version__
+from lossagg.version import __version__
 from lossagg.engines.book import Book
 from lossagg.portfolio.assess import Progress, compute, figures, silent
 from lossagg.portfolio.assessment import FORMAT, Assessment, Data, Writer

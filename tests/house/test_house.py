@@ -82,5 +82,5 @@ def test_help_loads_no_numerics() -> None:
 def test_public_surface_is_complete() -> None:
     import lossagg
 
-    for name in lossagg.__all__:
+    for name in set(lossagg.__all__) - {"__version__"}:
         assert getattr(lossagg, name).__doc__, name
