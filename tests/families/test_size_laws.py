@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import pickle
 
 import mpmath as mp
@@ -128,16 +129,14 @@ def pieces(law: SizeLaw, low: float, high: float) -> list[float]:
 
 
 def quadrature(function, cuts: list[float]) -> float:
+    """Gauss-Legendre on each piece, in the logarithm where a piece spans decades, as the tails do."""
     nodes, weights = np.polynomial.legendre.leggauss(40)
     total = 0.0
-    for low, high in zip(cuts[:-1], cuts[1:], strict=True):
-        # In the logarithm where a piece spans decades, as the tails do.
+    for low, high in itertools.pairwise(cuts):
         if low > 0 and high > 4 * low:
-            for a, b in zip(
-                *(lambda g: (g[:-1], g[1:]))(np.linspace(np.log(low), np.log(high), 9)), strict=True
-            ):
-                y = 0.5 * (b - a) * (nodes + 1) + a
-                total += 0.5 * (b - a) * weights @ (function(np.exp(y)) * np.exp(y))
+            for a, b in itertools.pairwise(np.linspace(np.log(low), np.log(high), 9)):
+                x = np.exp(0.5 * (b - a) * (nodes + 1) + a)
+                total += 0.5 * (b - a) * weights @ (function(x) * x)
         else:
             x = 0.5 * (high - low) * (nodes + 1) + low
             total += 0.5 * (high - low) * weights @ function(x)
