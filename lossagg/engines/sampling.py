@@ -10,7 +10,7 @@ from lossagg.arrays import FloatArray, IntArray
 from lossagg.engines.payment import PaymentLaw
 from lossagg.engines.span import places
 
-_STEEP = 0.05
+_STEEP = 0.1
 _STEEP_CELLS = 4
 
 
