@@ -54,9 +54,15 @@ def index_row(entry: Entry) -> dict[str, Any]:
         "headline": f"{figure}, {view['measure']} at {view['level']}, {found['headline']['subject']}",
         "gross": _at_capital_level(found, "gross"),
         "net": _at_capital_level(found, "net"),
-        "verdict": found["crosscheck"]["verdict"],
+        "verdict": _verdict(found),
         "cautions": str(len(found["cautions"])),
     }
+
+
+def _verdict(assessment: dict[str, Any]) -> str:
+    if assessment["crosscheck"]["verdict"] == "agree" and front.compared_engines(assessment) < 2:
+        return "capital not crosschecked"
+    return str(assessment["crosscheck"]["verdict"])
 
 
 def _at_capital_level(assessment: dict[str, Any], subject: str) -> str:

@@ -10,9 +10,9 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-from lossagg.version import __version__
 from lossagg.errors import InputError
 from lossagg.report.folder import disk_errors, write_flushed
+from lossagg.version import __version__
 
 FORMAT = "lossagg.batch/1"
 RECORD = "batch.json"

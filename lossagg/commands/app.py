@@ -6,9 +6,9 @@ from typing import Annotated
 
 import typer
 
-from lossagg.version import __version__
 from lossagg.commands.assess import assess
 from lossagg.commands.batch import batch
+from lossagg.version import __version__
 
 ABOUT = (
     "From loss records to capital, layer costs and a report.\n\n"

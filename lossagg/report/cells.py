@@ -41,11 +41,15 @@ class Absent:
 
 @dataclass(frozen=True)
 class Ranged:
-    """A figure with the range that travels with it: a guaranteed bracket or a statistical interval."""
+    """A figure with the range that travels with it: a guaranteed bracket or a statistical interval.
+
+    `reason` says why a figure that should have a range has none.
+    """
 
     value: float
     low: float | None
     high: float | None
+    reason: str | None = None
 
 
 @dataclass(frozen=True)
@@ -112,6 +116,8 @@ def show(cell: Cell, kind: Kind) -> Shown:
 
 
 def _show_ranged(cell: Ranged) -> Shown:
+    if cell.reason is not None:
+        return Shown(digits.unsupported(cell.value), "no interval", repr(float(cell.value)), numeric=True)
     unit = digits.supported_unit(cell.value, cell.low, cell.high)
     limits = "" if cell.low is None or cell.high is None else digits.enclosing(cell.low, cell.high, unit)
     return Shown(digits.rounded(cell.value, unit), limits, repr(float(cell.value)), numeric=True)

@@ -1,9 +1,11 @@
 """How many digits of a figure are shown.
 
-One rule everywhere: the last digit shown is the first that the accuracy puts in doubt. A figure
-known to within 340 is shown in hundreds; its range is rounded outwards, so the range on paper still
-holds the range computed. Six significant digits at most, because no input supports more; money of
-100 and more in whole units. Decimal arithmetic, so that a figure never changes by how it is written.
+One rule everywhere: the digits end where the accuracy puts them in doubt. The accuracy, the half-width
+of a range or a standard error, keeps two digits when it begins with 10 to 35 and one otherwise, and
+the figure ends at the same place (the rounding rule of the Particle Data Group, Review of Particle
+Physics, introduction; from memory). A range is rounded outwards, so the range on paper still holds
+the range computed. Six significant digits at most, because no input supports more; money of 100 and
+more in whole units. Decimal arithmetic, so that a figure never changes by how it is written.
 """
 
 from __future__ import annotations
@@ -12,10 +14,19 @@ from decimal import ROUND_CEILING, ROUND_FLOOR, ROUND_HALF_EVEN, Decimal
 
 MOST_DIGITS = 6
 DIGITS_WITHOUT_RANGE = 5
+DIGITS_WITHOUT_ACCURACY = 2
+TWO_DIGITS_BELOW = Decimal("3.55")
 
 
 def _magnitude(value: float) -> int:
     return Decimal(repr(float(value))).adjusted()
+
+
+def _last_place(accuracy: float) -> int:
+    """The place at which a figure of this accuracy ends, as a power of ten."""
+    place = _magnitude(accuracy)
+    leading = Decimal(repr(float(accuracy))).scaleb(-place)
+    return place - 1 if leading < TWO_DIGITS_BELOW else place
 
 
 def supported_unit(value: float, low: float | None, high: float | None) -> Decimal:
@@ -32,7 +43,7 @@ def supported_unit(value: float, low: float | None, high: float | None) -> Decim
     if low is not None and high is not None:
         width = max(value - low, high - value)
         if width > 0:
-            place = max(place, min(_magnitude(width), _magnitude(value)))
+            place = max(place, min(_last_place(width), _magnitude(value)))
     if abs(value) >= 100:
         place = max(place, 0)
     return Decimal(1).scaleb(place)
@@ -73,7 +84,7 @@ def significant(value: float, count: int) -> str:
 
 
 def estimated(value: float, error: float | None, *, probability: bool = False) -> str:
-    """A figure to the second digit of its standard error; five digits when no error is known."""
+    """A figure to the place its standard error supports; five digits when no error is known."""
     if probability:
         return _estimated_chance(value, error)
     unit = _error_unit(value, error)
@@ -81,7 +92,7 @@ def estimated(value: float, error: float | None, *, probability: bool = False) -
 
 
 def with_error(value: float, error: float | None) -> str:
-    """A figure and its standard error, both to the second digit of the error: 1.346 ± 0.030."""
+    """A figure and its standard error, both to the place the error supports: 1.346 ± 0.030."""
     unit = _error_unit(value, error)
     if unit is None or error is None:
         return significant(value, MOST_DIGITS)
@@ -91,7 +102,7 @@ def with_error(value: float, error: float | None) -> str:
 def _error_unit(value: float, error: float | None) -> Decimal | None:
     if error is None or error <= 0 or value == 0:
         return None
-    place = min(_magnitude(error) - 1, _magnitude(value))
+    place = min(_last_place(error), _magnitude(value))
     place = max(place, _magnitude(value) - MOST_DIGITS + 1, 0 if abs(value) >= 100 else place)
     return Decimal(1).scaleb(place)
 
@@ -101,6 +112,13 @@ def _estimated_chance(value: float, error: float | None) -> str:
         return chance(value)
     kept = _magnitude(value) - _magnitude(error) + 1
     return chance(value, max(1, min(3, kept)))
+
+
+def unsupported(value: float) -> str:
+    """A figure whose accuracy cannot be stated: two significant digits."""
+    if value == 0:
+        return "0"
+    return rounded(value, Decimal(1).scaleb(_magnitude(value) - DIGITS_WITHOUT_ACCURACY + 1))
 
 
 def percent(level: float) -> str:

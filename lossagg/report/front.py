@@ -41,11 +41,35 @@ def crosscheck(assessment: Assessment) -> dict[str, Any]:
     parted = [row for row in entry["comparisons"] if not row["agrees"]]
     return {
         "agrees": entry["verdict"] == "agree",
+        "verdict": verdict(assessment),
         "summary": entry["summary"],
         "table": tables.evidence.crosscheck_of_totals(assessment),
         "disagreements": tables.evidence.crosscheck_rows(parted, "Disagreements", "What the engines say"),
         "spreads": [_spread(row) for row in parted],
     }
+
+
+def verdict(assessment: Assessment) -> str:
+    """The verdict of the crosscheck, and a warning where the capital figure took no part in it."""
+    entry = assessment["crosscheck"]
+    if entry["verdict"] != "agree":
+        return "ENGINES DISAGREE."
+    if compared_engines(assessment) >= 2:
+        return "Engines agree."
+    engine = assessment["headline"]["engine"]
+    return (
+        f"CAPITAL FIGURE NOT CROSSCHECKED: only the engine {engine} can compute it. "
+        "On everything that more than one engine can compute, the engines agree."
+    )
+
+
+def compared_engines(assessment: Assessment) -> int:
+    """How many engines computed the capital figure."""
+    headline = assessment["headline"]
+    for row in assessment["crosscheck"]["comparisons"]:
+        if all(row[key] == headline[key] for key in ("subject", "measure", "level")):
+            return sum(value is not None for value in row["values"].values())
+    return 0
 
 
 def _spread(row: Entry) -> str:

@@ -22,6 +22,7 @@ EXACT_ENGINES = ("fourier", "panjer")
 DOES_NOT_EXIST = "does not exist"
 WITHHELD = "withheld"
 NOT_COMPUTED = "not computed"
+NO_INTERVAL = "the accuracy of this figure cannot be stated"
 
 
 def check_format(assessment: Assessment) -> None:
@@ -74,7 +75,10 @@ def ranged(figure: Entry) -> Cell:
     """A figure of an assessment with its range, or why it is missing."""
     if figure.get("value") is None:
         return absent(figure.get("reason"))
-    return Ranged(figure["value"], figure.get("low"), figure.get("high"))
+    low, high = figure.get("low"), figure.get("high")
+    if low is None or high is None:
+        return Ranged(figure["value"], low, high, figure.get("reason") or NO_INTERVAL)
+    return Ranged(figure["value"], low, high)
 
 
 def moment(assessment: Assessment, subject: str, measure: str, value: float | None, engine: str) -> Cell:
@@ -95,8 +99,10 @@ def moment(assessment: Assessment, subject: str, measure: str, value: float | No
         low, high = row["bracket"].get(engine) or (None, None)
         if low is not None and high is not None and low <= value <= high:
             return Ranged(value, low, high)
-        if engine not in EXACT_ENGINES:
+        if engine not in EXACT_ENGINES and row["standard_error"] is not None:
             return Estimated(value, row["standard_error"])
+        if engine not in EXACT_ENGINES:
+            return Ranged(value, None, None, NO_INTERVAL)
     return Estimated(value, None)
 
 
@@ -117,9 +123,13 @@ def engine_range_name(engine: str) -> str:
 
 
 def reasons(cells: Sequence[Cell]) -> tuple[str, ...]:
-    """The reasons of absent cells, each once, in order: the foot of a table."""
-    found = [cell.reason for cell in cells if isinstance(cell, Absent) and cell.reason]
+    """The reasons of absent cells and ranges, each once, in order: the foot of a table."""
+    found = [_footnote(cell) for cell in cells if isinstance(cell, (Absent, Ranged)) and cell.reason]
     return tuple(dict.fromkeys(found))
+
+
+def _footnote(cell: Absent | Ranged) -> str:
+    return f"no interval: {cell.reason}" if isinstance(cell, Ranged) else str(cell.reason)
 
 
 def years_observed(assessment: Assessment) -> float | None:

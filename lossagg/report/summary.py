@@ -74,9 +74,7 @@ def _headline(assessment: Assessment) -> list[str]:
 
 
 def _remarks(assessment: Assessment) -> list[str]:
-    check = assessment["crosscheck"]
-    verdict = "Engines agree" if check["verdict"] == "agree" else "ENGINES DISAGREE"
-    texts = [f"{verdict}. {check['summary']}"]
+    texts = [f"{front.verdict(assessment)} {assessment['crosscheck']['summary']}"]
     texts += [f"{term}: {text}" for term, text, _ in front.status(assessment) if term != "Cautions"]
     texts += _main_cautions(assessment)
     texts.append(

@@ -97,7 +97,7 @@ def test_done_is_0_with_a_plain_summary_and_four_files(tmp_path: Path, stand_in)
     }
     assert sorted(path.name for path in (tmp_path / "out").iterdir()) == sorted(FILES)
     assert "Kestrel Haven port pool" in result.stdout
-    assert "EUR 9,270,000" in result.stdout
+    assert "EUR 9,271,000" in result.stdout
     assert "\x1b" not in result.output
     assert not set("│─━┃╭") & set(result.output)
     assert result.stderr == ""

@@ -13,7 +13,7 @@ def test_summary_says_what_the_figure_means() -> None:
     summary = summarise(sample_assessment(), Path("out"))
     assert summary.title == "Kestrel Haven port pool, valuation date 2026-09-30, amounts in EUR"
     assert summary.headline[0].startswith(
-        "Capital figure, value at risk at 99.5% (1 in 200 years), net of all covers: EUR 9,270,000 (95% int"
+        "Capital figure, value at risk at 99.5% (1 in 200 years), net of all covers: EUR 9,271,000 (95% int"
     )
     assert "exceeds it once in 200 years on average, if the model holds" in summary.headline[1]
     assert [Path(name).name for name in summary.files] == [
@@ -39,7 +39,7 @@ def test_plain_table_is_aligned_ascii_columns() -> None:
     lines = plain_table(summarise(sample_assessment(), None).tables[0])
     assert lines[0] == "Annual loss by level, EUR"
     assert lines[1].split()[:5] == ["Level", "Return", "period", "Gross", "VaR"]
-    assert "11,684,000 [11,681,000 to 11,687,000]" in lines[5]
+    assert "11,684,000 [11,681,600 to 11,686,400]" in lines[5]
     assert len({len(line) for line in lines[1:]}) == 1
 
 

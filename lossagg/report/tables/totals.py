@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from lossagg.report.cells import Absent, Cell, Column, Ranged, Table, show
 from lossagg.report.reading import (
+    NO_INTERVAL,
     Assessment,
     Entry,
     absent,
@@ -31,7 +32,7 @@ def less_mean(assessment: Assessment) -> Cell:
     if entry["less_mean"] is None:
         return absent(entry["reason"] if entry["withheld"] else None)
     if entry["low"] is None or entry["high"] is None:
-        return Ranged(entry["less_mean"], None, None)
+        return Ranged(entry["less_mean"], None, None, NO_INTERVAL)
     return Ranged(entry["less_mean"], entry["low"] - entry["mean"], entry["high"] - entry["mean"])
 
 
@@ -119,7 +120,8 @@ def moments(assessment: Assessment) -> Table:
         Column("Kind"),
         Column("Note"),
     )
-    return Table("Moments", f"Expected annual loss, {currency}", columns, tuple(rows))
+    notes = reasons([cell for row in rows for cell in row])
+    return Table("Moments", f"Expected annual loss, {currency}", columns, tuple(rows), notes)
 
 
 def curves(assessment: Assessment) -> Table:
