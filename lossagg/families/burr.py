@@ -17,9 +17,9 @@ from scipy import special
 from lossagg.arrays import FloatArray, require_positive
 from lossagg.families.base import SizeLaw
 from lossagg.families.power import exponential_integral
+from lossagg.families.quadrature import interval_integrals
 
-_PANEL, _PANELS = 2.0, 20
-_NODES, _WEIGHTS = np.polynomial.legendre.leggauss(24)
+_PANEL, _PANELS, _POINTS = 2.0, 20, 24
 
 
 @dataclass(frozen=True, kw_only=True, repr=False)
@@ -138,17 +138,17 @@ class Burr(SizeLaw):
         growth = b - self.alpha
         end = _PANEL * _PANELS
 
-        def integral(start: FloatArray, stop: FloatArray) -> FloatArray:
-            width = stop - start
-            nodes = start[:, None] + 0.5 * width[:, None] * (1.0 + _NODES)
-            values = np.exp(growth * nodes - self.alpha * np.log1p(np.exp(-nodes)))
-            return np.asarray(0.5 * width * np.sum(values * _WEIGHTS, axis=-1))
+        def integrand(u: FloatArray, _: slice) -> FloatArray:
+            return np.asarray(np.exp(growth * u - self.alpha * np.log1p(np.exp(-u))))
 
         knots = _PANEL * np.arange(_PANELS + 1.0)
-        whole = np.concatenate([[0.0], np.cumsum(integral(knots[:-1], knots[1:]))])
+        whole = np.concatenate(
+            [[0.0], np.cumsum(interval_integrals(integrand, knots[:-1], np.diff(knots), _POINTS))]
+        )
         reach = np.minimum(y, end)
         panel = np.minimum((reach / _PANEL).astype(np.int64), _PANELS - 1)
-        part = whole[panel] + integral(knots[panel], reach)
+        start = knots[panel]
+        part = whole[panel] + interval_integrals(integrand, start, reach - start, _POINTS)
         with np.errstate(over="ignore"):
             beyond = np.exp(growth * end) * exponential_integral(growth, np.maximum(y - end, 0.0))
         return np.asarray(self._series(np.zeros(1), b) + b * (part + beyond))

@@ -20,12 +20,13 @@ from lossagg.arrays import FloatArray, require_positive
 from lossagg.families.base import SizeLaw
 from lossagg.families.inversion import bracket, invert_tail
 from lossagg.families.mills import mills, mills_difference, mills_fall_difference, normal_density
+from lossagg.families.quadrature import interval_integrals
 
 # Below this a (or -a) the Mills ratio is large and Phi itself is the better form.
 _EDGE = -5.0
 # Below this c = sqrt(shape x) / mean the closed form of the second moment cancels.
 _WIDE_BELOW = 0.5
-_NODES, _WEIGHTS = np.polynomial.legendre.leggauss(64)
+_POINTS = 64
 
 
 @dataclass(frozen=True, init=False, repr=False)
@@ -157,16 +158,16 @@ def _wide_second(p: FloatArray, c: FloatArray) -> FloatArray:
     (2/p) times the integral of exp(-p u - u**2 / 2) ((1 + c**2) sinh(c u) / c - u cosh(c u)), whose
     bracket is c**2 times a series in (c u)**2.
     """
+
+    def integrand(u: FloatArray, rows: slice) -> FloatArray:
+        square = (c[rows][:, None] * u) ** 2
+        sinh, drop = np.zeros_like(u), np.zeros_like(u)
+        for k in range(25, 0, -1):
+            # sinh(y) / y - 1, and the sum of 2k / (2k+1)! y**(2k-2), nested, with y = c u
+            sinh = (sinh + 1.0) * square / ((2 * k) * (2 * k + 1))
+            drop = drop * square / ((2 * k + 2) * (2 * k + 3)) + 2.0 * k
+        bracket = u * (1.0 + sinh) - u**3 * drop / 6.0
+        return np.asarray(np.exp(-p[rows][:, None] * u - 0.5 * u * u) * bracket)
+
     reach = np.minimum(13.0, 45.0 / p)
-    u = 0.5 * reach[:, None] * (1.0 + _NODES)
-    square = (c[:, None] * u) ** 2
-    hyperbolic, drop = np.zeros_like(u), np.zeros_like(u)
-    for k in range(25, 0, -1):
-        step = square / ((2 * k) * (2 * k + 1))
-        hyperbolic = (hyperbolic + 1.0) * step
-        # drop: sum of 2k / (2k+1)! square**(k-1), by the same nesting
-        drop = drop * square / ((2 * k + 2) * (2 * k + 3)) + 2.0 * k
-    bracket_over_c2 = u * (1.0 + hyperbolic) - u**3 * drop / 6.0
-    values = np.exp(-p[:, None] * u - 0.5 * u * u) * bracket_over_c2
-    integral = 0.5 * reach * np.sum(values * _WEIGHTS, axis=-1)
-    return np.asarray(2.0 * c * c / p * integral)
+    return 2.0 * c * c / p * interval_integrals(integrand, np.zeros(p.shape), reach, _POINTS)

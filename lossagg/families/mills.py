@@ -19,10 +19,11 @@ import numpy as np
 from scipy import special
 
 from lossagg.arrays import FloatArray
+from lossagg.families.quadrature import interval_integrals
 
 _FRACTION_FROM = 4.0
 _FRACTION_TERMS = 80
-_NODES, _WEIGHTS = np.polynomial.legendre.leggauss(20)
+_POINTS = 20
 _ROOT_TWO_PI = 2.5066282746310005024
 _ROOT_HALF_PI = 1.2533141373155002512
 
@@ -69,8 +70,7 @@ def _difference(
     short = width < 1.0
     result = np.empty(np.shape(low))
     result[~short] = function(low[~short]) - function(low[~short] + width[~short])
-    nodes = low[short][:, None] + 0.5 * width[short][:, None] * (1.0 + _NODES)
-    result[short] = 0.5 * width[short] * np.sum(slope(nodes) * _WEIGHTS, axis=-1)
+    result[short] = interval_integrals(lambda t, _: slope(t), low[short], width[short], _POINTS)
     return result
 
 

@@ -11,10 +11,9 @@ import numpy as np
 from scipy import special
 
 from lossagg.arrays import FloatArray
+from lossagg.families.quadrature import interval_integrals
 
-# Weighted values are summed, here and in the other laws, not multiplied as matrices: a matrix product
-# may round differently with the number of rows, and a law must give one amount one answer.
-_NODES, _WEIGHTS = np.polynomial.legendre.leggauss(32)
+_POINTS = 32
 
 
 def exponential_integral(rate: float, t: FloatArray) -> FloatArray:
@@ -38,9 +37,11 @@ def limited_excess_second_moment(shape: float, t: FloatArray) -> FloatArray:
     * exp((shape - 1) u) over (0, t)."""
     short = t * (1.0 + abs(shape)) < 4.0
     result = np.empty(t.shape)
-    nodes = 0.5 * t[short][:, None] * (1.0 + _NODES)
-    values = excess_at(shape, nodes) * np.exp((shape - 1.0) * nodes)
-    result[short] = t[short] * np.sum(values * _WEIGHTS, axis=-1)
+
+    def integrand(u: FloatArray, _: slice) -> FloatArray:
+        return np.asarray(2.0 * excess_at(shape, u) * np.exp((shape - 1.0) * u))
+
+    result[short] = interval_integrals(integrand, np.zeros(int(short.sum())), t[short], _POINTS)
     long = t[~short]
     with np.errstate(over="ignore"):
         if shape < 0.5:  # by parts

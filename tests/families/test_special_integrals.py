@@ -14,6 +14,7 @@ from lossagg.families.power import (
     limited_excess,
     limited_excess_second_moment,
 )
+from lossagg.families.quadrature import interval_integrals
 from lossagg.families.saddle import deviance, lower_gamma, poisson_probability, stirling_error
 from lossagg.families.tables import running_sums
 
@@ -145,3 +146,17 @@ def test_inversion_of_a_step_and_of_a_smooth_tail():
         -1.0,
     )
     assert x == pytest.approx(3.7, rel=1e-14)
+
+
+def test_interval_integrals_do_not_depend_on_their_company():
+    # More intervals than one block holds; each must come out as if it were alone, to the last bit.
+    low = np.linspace(0.0, 3.0, 20_000)
+    width = np.linspace(0.1, 1.0, 20_000)
+    together = interval_integrals(lambda x, _: np.exp(-x), low, width, 20)
+    np.testing.assert_allclose(together, np.exp(-low) - np.exp(-low - width), rtol=1e-13)
+    for k in (0, 8191, 8192, 19_999):
+        alone = interval_integrals(lambda x, _: np.exp(-x), low[k : k + 1], width[k : k + 1], 20)
+        assert alone[0] == together[k]
+    factors = np.arange(20_000.0)
+    scaled = interval_integrals(lambda x, rows: factors[rows][:, None] * x, low, width, 2)
+    np.testing.assert_allclose(scaled, factors * (low * width + width**2 / 2), rtol=1e-13)
