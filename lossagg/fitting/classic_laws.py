@@ -1,6 +1,6 @@
-"""Likelihoods of the exponential, Pareto, lognormal, gamma and inverse Gaussian laws.
+"""Likelihoods of the exponential, Pareto, gamma and inverse Gaussian laws.
 
-All five have sufficient statistics: the uncensored losses enter through two or three sums taken
+All four have sufficient statistics: the uncensored losses enter through two or three sums taken
 once, so a step of the climb costs as much as there are distinct thresholds and censoring points.
 """
 
@@ -14,7 +14,7 @@ from typing import ClassVar
 import numpy as np
 
 from lossagg.arrays import FloatArray
-from lossagg.families import Exponential, Gamma, InverseGaussian, Lognormal, Pareto
+from lossagg.families import Exponential, Gamma, InverseGaussian, Pareto
 from lossagg.families.base import SizeLaw
 from lossagg.fitting.jet_functions import (
     log_gamma_function,
@@ -24,7 +24,7 @@ from lossagg.fitting.jet_functions import (
     log_one_minus_exp,
 )
 from lossagg.fitting.jets import Jet, exp, log
-from lossagg.fitting.likelihood import Range, SizeLikelihood
+from lossagg.fitting.likelihood import NEGLIGIBLE, Range, SizeLikelihood
 from lossagg.fitting.sample import Sample
 
 _HALF_LOG_TWO_PI = float(0.5 * np.log(2 * np.pi))
@@ -88,49 +88,6 @@ class ParetoLikelihood(SizeLikelihood):
         return [np.log([sample.count / risk])]
 
 
-@dataclass(frozen=True)
-class LognormalLikelihood(SizeLikelihood):
-    """log X is normal. Coordinates: the natural parameters of the exponential family about the centre
-    of the logarithms, (mu - centre) / sigma**2 and log(1 / sigma**2), in units of their spread.
-
-    Above a threshold the family has the Pareto law as its limit, at a finite first and a second
-    coordinate running to minus infinity, and no maximum where the losses are at least as heavy as
-    that (Castillo 1994, Ann. Inst. Statist. Math. 46, on the truncated normal law).
-    """
-
-    law: ClassVar[type[SizeLaw]] = Lognormal
-    ranges: ClassVar[dict[str, Range]] = {"mu": "real", "sigma": "positive"}
-    nearest: ClassVar[str] = "pareto, lomax or generalized-pareto"
-
-    centre: float
-    spread: float
-
-    def inner(self, point: tuple[Jet, ...]) -> tuple[Jet, ...]:
-        sigma = exp(-0.5 * point[1]) * self.spread
-        return self.centre + point[0] * (sigma * sigma) * (1 / self.spread), sigma
-
-    def natural(self, inner: tuple[Jet, ...], scale: float) -> tuple[Jet, ...]:
-        return inner[0] + np.log(scale), inner[1]
-
-    def log_density(self, inner: tuple[Jet, ...], sample: Sample) -> Jet:
-        mu, sigma = inner
-        apart = mu - sample.log_sum / sample.count
-        squares = (sample.log_squares + sample.count * apart * apart) / (2 * sigma * sigma)
-        constant = sample.log_sum + sample.count * _HALF_LOG_TWO_PI
-        return -(sample.count * log(sigma) + squares + constant)
-
-    def log_survival(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
-        return log_normal_survival((np.log(points) - inner[0]) / inner[1])
-
-    def starts(self, sample: Sample) -> list[FloatArray]:
-        points = [np.zeros(2)]
-        if sample.censored or len(sample.thresholds.points):
-            for wider in (1.2, 1.6, 2.5, 4.0):
-                for shift in (-2.0, -0.7, 0.0, 0.5):  # of the median, in units of the wider sigma
-                    points.append(np.array([shift / wider, -2 * np.log(wider)]))
-        return points
-
-
 class GammaLikelihood(SizeLikelihood):
     """Coordinates: log shape and log mean, which are orthogonal for complete losses."""
 
@@ -152,6 +109,11 @@ class GammaLikelihood(SizeLikelihood):
 
     def log_survival(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
         return log_gamma_survival(inner[0], np.log(points) - log(inner[1]))
+
+    def runaway(self, inner: tuple[Jet, ...]) -> str:
+        if inner[0].value[0] > NEGLIGIBLE:
+            return ""
+        return "above the threshold the losses are heavier than any gamma law, and its shape falls to 0"
 
     def starts(self, sample: Sample) -> list[FloatArray]:
         mean = sample.sum / sample.count
@@ -193,6 +155,11 @@ class InverseGaussianLikelihood(SizeLikelihood):
         root = exp(0.5 * log(shape)) * (1 / np.sqrt(points))
         near, far = root * (points / mean - 1.0), root * (points / mean + 1.0)
         return log_normal_survival(near) + log_one_minus_exp(log_mills(far) - log_mills(near))
+
+    def runaway(self, inner: tuple[Jet, ...]) -> str:
+        if inner[0].value[0] < 1 / NEGLIGIBLE and inner[1].value[0] > NEGLIGIBLE:
+            return ""
+        return "its mean grows without bound or its shape falls to 0"
 
     def starts(self, sample: Sample) -> list[FloatArray]:
         mean = sample.sum / sample.count

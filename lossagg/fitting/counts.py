@@ -7,10 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 from scipy import special
 
-from lossagg.arrays import FloatArray, Floats, as_floats, require_positive
+from lossagg.arrays import FloatArray, Floats, as_floats
 from lossagg.errors import InputError
-from lossagg.families import Binomial, NegativeBinomial, Poisson
-from lossagg.families.base import CountLaw
 
 
 @dataclass(frozen=True, eq=False)
@@ -94,33 +92,6 @@ def poisson_at_rate(sample: Counts, rate: float) -> float:
     """The part of the Poisson log-likelihood that depends on the rate."""
     means = rate * sample.exposures
     return float(np.sum(sample.weights * (special.xlogy(sample.numbers, means) - means)))
-
-
-def at_exposure(model: CountLaw, exposure: float) -> CountLaw:
-    """The count law of a year with this exposure, from the law at exposure 1.
-
-    Raises:
-        InputError: an exposure not above 0, or one that makes binomial trials a fraction.
-    """
-    factor = require_positive(exposure, "exposure")
-    if isinstance(model, Poisson):
-        return Poisson(mean=model.mean() * factor)
-    if isinstance(model, NegativeBinomial):
-        return NegativeBinomial(mean=model.mean() * factor, dispersion=model.dispersion)
-    if isinstance(model, Binomial):
-        trials = model.trials * factor
-        if abs(trials - round(trials)) > 1e-9 * trials or round(trials) < 1:
-            raise InputError(
-                "a binomial count needs a whole number of trials at this exposure",
-                value=trials,
-                remedy="Use a Poisson or negative binomial count, which scale with any exposure.",
-            )
-        return Binomial(trials=round(trials), probability=model.probability)
-    raise InputError(
-        "this count law does not scale with exposure",
-        value=model.family,
-        remedy="Use poisson, negative-binomial or binomial.",
-    )
 
 
 def _refuse(values: FloatArray, bad: np.ndarray, what: str, remedy: str) -> None:

@@ -15,7 +15,8 @@ import numpy as np
 from scipy import special
 
 from lossagg.arrays import BoolArray, FloatArray, Floats
-from lossagg.fitting.counts import at_exposure, counts_of
+from lossagg.families.base import CountLaw
+from lossagg.fitting.counts import counts_of
 from lossagg.fitting.results import FrequencyFit, SeverityFit
 from lossagg.fitting.sample import checked_losses
 
@@ -94,11 +95,14 @@ def _product_limit(amounts: FloatArray, thresholds: FloatArray, marks: BoolArray
     entered = np.searchsorted(np.sort(thresholds), points, side="right")
     left = np.searchsorted(np.sort(amounts), points, side="left")
     at_risk = (entered - left).astype(np.float64)
-    after = np.cumprod(1 - events / at_risk, dtype=np.float64)
+    # Where all at risk end while others enter later, the curve would fall to 0 and stay there. Such
+    # a step says nothing about the later losses: it is left out.
+    early = (events == at_risk) & (points < points[-1])
+    deaths = np.where(early, 0.0, events)
+    after = np.cumprod(1 - deaths / at_risk, dtype=np.float64)
     before = np.concatenate([[1.0], after[:-1]])
-    remaining = at_risk - events
     with np.errstate(divide="ignore"):
-        variance = np.cumsum(events / (at_risk * remaining))
+        variance = np.cumsum(deaths / (at_risk * (at_risk - deaths)))
     return _ProductLimit(points, before, after, variance)
 
 
@@ -107,8 +111,8 @@ def survival_points(
 ) -> SurvivalPoints:
     """Observed and fitted survival curve of losses above their thresholds.
 
-    With thresholds that differ, the lowest amounts may be seen in few records; the curve starts anew
-    wherever all losses seen so far have ended, and its interval is wide there.
+    With thresholds that differ, the lowest amounts may be at risk in few records and the curve starts
+    with wide steps; a step at which every loss at risk ends while others enter later is left out.
 
     Args:
         losses, truncation, censored: as given to the fit.
@@ -163,26 +167,21 @@ def count_points(counts: Floats, fit: FrequencyFit, exposure: Floats | None = No
     counts_of(counts, exposure)
     observed = np.atleast_1d(np.asarray(counts, dtype=np.float64))
     exposures = np.broadcast_to(np.asarray(1.0 if exposure is None else exposure), observed.shape)
-    rows = []
-    for number in exposures:
-        law = at_exposure(fit.model, float(number))
-        low, high = (_count_quantile(law, level) for level in (0.025, 0.975))
-        rows.append((law.mean(), low, high))
-    fitted, low, high = np.array(rows, dtype=np.float64).T
+    distinct, places = np.unique(exposures, return_inverse=True)
+    laws = [fit.model.with_exposure(float(number)) for number in distinct]
+    fitted = np.array([law.mean() for law in laws])[places]
+    low, high = (np.array([_count_quantile(law, level) for law in laws])[places] for level in (0.025, 0.975))
     return CountPoints(observed, fitted, low, high)
 
 
-def _count_quantile(law: object, level: float) -> float:
+def _count_quantile(law: CountLaw, level: float) -> float:
     """Smallest n with P(N <= n) >= level, by doubling and bisection."""
-    cdf = law.cdf  # type: ignore[attr-defined]
-    if cdf(0) >= level:
-        return 0.0
-    low, high = 0, 1
-    while cdf(high) < level:
-        low, high = high, 2 * high
+    low, high = -1, 0
+    while law.cdf(high) < level:
+        low, high = high, 2 * high + 1
     while high - low > 1:
         middle = (low + high) // 2
-        low, high = (low, middle) if cdf(middle) >= level else (middle, high)
+        low, high = (low, middle) if law.cdf(middle) >= level else (middle, high)
     return float(high)
 
 

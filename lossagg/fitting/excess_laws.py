@@ -20,10 +20,11 @@ from lossagg.families import Burr, GeneralizedPareto, Lomax, Weibull
 from lossagg.families.base import SizeLaw
 from lossagg.fitting.jet_functions import excess_partials, log_excess
 from lossagg.fitting.jets import Jet, compose, exp, log
-from lossagg.fitting.likelihood import Range, SizeLikelihood
+from lossagg.fitting.likelihood import NEGLIGIBLE, Range, SizeLikelihood
 from lossagg.fitting.sample import Sample
 
-_SMALLEST_SHAPE = 1e-8  # of xi: under it the law cannot be told from its limit
+_LARGEST_LOG = 500.0  # of a scale in units of order one: beyond, it leaves the range of float64
+_POWER_LAW = "above the threshold the losses follow a power law, and the scale falls to 0"
 _LIGHTEST_SHAPE = -0.25  # of xi for Lomax and Burr: far enough below 0 to know that the maximum is there
 
 
@@ -96,48 +97,93 @@ class LomaxLikelihood(GeneralizedParetoLikelihood):
     def admissible(self, inner: tuple[Jet, ...]) -> bool:
         return bool(inner[0].value[0] > _LIGHTEST_SHAPE)
 
+    def runaway(self, inner: tuple[Jet, ...]) -> str:
+        return _POWER_LAW if inner[1].value[0] > -np.log(NEGLIGIBLE) else ""
+
     def objection(self, inner: tuple[Jet, ...]) -> str:
-        if inner[0].value[0] > _SMALLEST_SHAPE:
-            return ""
-        return "the tail of the losses is not heavier than exponential, so alpha grows without bound"
+        if inner[0].value[0] <= NEGLIGIBLE:
+            return "the tail of the losses is not heavier than exponential, so alpha grows without bound"
+        return self.runaway(inner)
 
 
+@dataclass(frozen=True)
 class WeibullLikelihood(SizeLikelihood):
-    """S(x) = exp(-(x / scale)**shape). Coordinates: log shape and level = -shape * log scale."""
+    """S(x) = exp(-(x / scale)**shape). Coordinates: log shape and level, where log w = shape * (log x -
+    reference) + level.
+
+    Above a threshold shape to 0 is the Pareto law, with w without bound at the reference point; the
+    ratio S(x) / S(t) is formed from w less its value there, so that w itself never appears.
+
+    Attributes:
+        reference: log of the smallest threshold, or the mean logarithm where a loss has none.
+    """
 
     law: ClassVar[type[SizeLaw]] = Weibull
     ranges: ClassVar[dict[str, Range]] = {"shape": "positive", "scale": "positive"}
     nearest: ClassVar[str] = "pareto, lomax or lognormal"
+
+    reference: float
+
+    @classmethod
+    def about(cls, sample: Sample) -> WeibullLikelihood:
+        """The likelihood with the reference point of a sample."""
+        centre = sample.log_sum / sample.count
+        return cls(float(np.log(sample.floor)) if sample.floor > 0 else centre)
 
     def inner(self, point: tuple[Jet, ...]) -> tuple[Jet, ...]:
         return exp(point[0]), point[1]
 
     def natural(self, inner: tuple[Jet, ...], scale: float) -> tuple[Jet, ...]:
         power, level = inner
-        return power, exp(-level / power) * scale
+        return power, exp(-level / power) * (scale * float(np.exp(self.reference)))
 
     def log_density(self, inner: tuple[Jet, ...], sample: Sample) -> Jet:
-        power, level = inner
-        w = np.exp(power.value * sample.logs + level.value)
-        zero, one, two = (float(np.sum(w * sample.logs**k)) for k in range(3))
-        first, second = np.array([one, zero]), np.array([[two, one], [one, zero]])
-        log_slopes = sample.count * (log(power) + level) + (power - 1.0) * sample.log_sum
-        return log_slopes - compose((power, level), zero, first, second)
+        return self._density(inner, sample) - sample.count * exp(inner[1])
 
     def log_survival(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
-        return -exp(np.log(points) * inner[0] + inner[1])
+        return -exp((np.log(points) - self.reference) * inner[0] + inner[1])
+
+    def total(self, inner: tuple[Jet, ...], sample: Sample) -> Jet:
+        total = self._density(inner, sample) - sample.untied * exp(inner[1])
+        for group, sign in ((sample.stopped, 1.0), (sample.thresholds, -1.0)):
+            if len(group.points):
+                apart = np.log(group.points) - self.reference
+                total = total - self._growth(inner, apart, sign * group.weights)
+        return total
+
+    def runaway(self, inner: tuple[Jet, ...]) -> str:
+        power, level = (float(part.value[0]) for part in inner)
+        if power > NEGLIGIBLE and abs(level) < _LARGEST_LOG * power:
+            return ""
+        return "above the threshold the losses follow a power law, and the shape falls to 0"
 
     def starts(self, sample: Sample) -> list[FloatArray]:
         spread = np.sqrt(sample.log_squares / sample.count)
         guesses = (1.2826 / spread, 1.0, 0.5, 0.25, 2.0)  # sd of the logs is pi / sqrt(6) / shape
         return [np.array([np.log(power), self._level(power, sample)]) for power in guesses]
 
-    @staticmethod
-    def _level(power: float, sample: Sample) -> float:
+    def _density(self, inner: tuple[Jet, ...], sample: Sample) -> Jet:
+        """log f + w(reference), summed."""
+        power, level = inner
+        apart = sample.logs - self.reference
+        log_slopes = sample.count * (log(power) + level) + power * float(np.sum(apart)) - sample.log_sum
+        return log_slopes - self._growth(inner, apart, np.ones(1))
+
+    def _growth(self, inner: tuple[Jet, ...], apart: FloatArray, weights: FloatArray) -> Jet:
+        """Weighted sum of w - w(reference) = exp(level) * (exp(power * apart) - 1)."""
+        power, level = (float(part.value[0]) for part in inner)
+        base = np.exp(level)
+        growth = base * np.sum(weights * np.expm1(power * apart))
+        w = weights * np.exp(power * apart + level)
+        one, two = np.sum(w * apart), np.sum(w * apart**2)
+        return compose(inner, float(growth), np.array([one, growth]), np.array([[two, one], [one, growth]]))
+
+    def _level(self, power: float, sample: Sample) -> float:
         """The closed maximum in the level for a given power."""
-        risk = float(np.sum(np.exp(power * sample.logs)))
+        risk = float(np.sum(np.exp(power * (sample.logs - self.reference))))
         for group, sign in ((sample.stopped, 1.0), (sample.thresholds, -1.0)):
-            risk += sign * float(np.sum(group.weights * group.points**power))
+            apart = np.log(group.points) - self.reference
+            risk += sign * float(np.sum(group.weights * np.exp(power * apart)))
         return float(np.log(sample.count / risk)) if risk > 0 else 0.0
 
 
@@ -158,10 +204,16 @@ class BurrLikelihood(SizeLikelihood):
     def admissible(self, inner: tuple[Jet, ...]) -> bool:
         return bool(inner[0].value[0] > _LIGHTEST_SHAPE)
 
+    def runaway(self, inner: tuple[Jet, ...]) -> str:
+        shape, power, level = (float(part.value[0]) for part in inner)
+        if power < NEGLIGIBLE or abs(level) > _LARGEST_LOG * power:
+            return "its gamma falls to 0"
+        return _POWER_LAW if shape * np.exp(min(level, 700.0)) > 1 / NEGLIGIBLE else ""
+
     def objection(self, inner: tuple[Jet, ...]) -> str:
-        if inner[0].value[0] > _SMALLEST_SHAPE:
-            return ""
-        return "the tail of the losses is not heavier than Weibull, so alpha grows without bound"
+        if inner[0].value[0] <= NEGLIGIBLE:
+            return "the tail of the losses is not heavier than Weibull, so alpha grows without bound"
+        return self.runaway(inner)
 
     def log_density(self, inner: tuple[Jet, ...], sample: Sample) -> Jet:
         shape, power, level = inner

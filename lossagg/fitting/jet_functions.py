@@ -13,6 +13,7 @@ from lossagg.arrays import FloatArray
 from lossagg.fitting.jets import Jet, lift, lift_pair
 
 _HALF_LOG_TWO_PI = 0.5 * np.log(2 * np.pi)
+_FRACTION_FROM, _FRACTION_TERMS = 3.0, 40
 _SERIES_TERMS = 12
 _SERIES_REACH = 0.05  # below: the power series; 0.05**12 is under rounding. Above: the closed form.
 # Central differences of order eight at offsets 1..4 steps (Fornberg 1988, Math. Comp. 51, table 1).
@@ -23,17 +24,18 @@ _SECOND_CENTRE = -205 / 72
 
 def log_normal_survival(z: Jet) -> Jet:
     """log P(Z > z) of the standard normal law."""
-    hazard = _normal_hazard(z.value)
-    return lift(z, special.log_ndtr(-z.value), -hazard, -hazard * (hazard - z.value))
+    excess, _ = _hazard_excess(z.value)
+    hazard = z.value + excess
+    return lift(z, special.log_ndtr(-z.value), -hazard, -hazard * excess)
 
 
 def log_mills(z: Jet) -> Jet:
     """log of Mills' ratio P(Z > z) / phi(z) of the standard normal law."""
-    hazard = _normal_hazard(z.value)
+    excess, bend = _hazard_excess(z.value)
     value = special.log_ndtr(-z.value) + 0.5 * z.value**2 + _HALF_LOG_TWO_PI
     positive = z.value > 0  # there the two terms above cancel, and erfcx does not
     value[positive] = np.log(special.erfcx(z.value[positive] / np.sqrt(2))) + 0.5 * np.log(np.pi / 2)
-    return lift(z, value, z.value - hazard, 1 - hazard * (hazard - z.value))
+    return lift(z, value, -excess, bend)
 
 
 def log_one_minus_exp(a: Jet) -> Jet:
@@ -148,8 +150,20 @@ def _log_gamma_sf_far(a: float, z: FloatArray) -> FloatArray:
     return np.asarray(a * np.log(z) - z - special.gammaln(a) - np.log(tail))
 
 
-def _normal_hazard(z: FloatArray) -> FloatArray:
+def _hazard_excess(z: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """h - z and 1 - h (h - z), with h the hazard rate phi(z) / P(Z > z) of the standard normal law.
+
+    Far out h - z is about 1/z: there Laplace's continued fraction h = z + 1/(z + 2/(z + 3/(z + ...)))
+    (Abramowitz & Stegun 1964, 26.2.14) gives both without cancellation.
+    """
     hazard: FloatArray = np.exp(-0.5 * z**2 - _HALF_LOG_TWO_PI - special.log_ndtr(-z))
-    positive = z > 0
-    hazard[positive] = np.sqrt(2 / np.pi) / special.erfcx(z[positive] / np.sqrt(2))
-    return hazard
+    excess = hazard - z
+    bend = 1 - hazard * excess
+    far = z > _FRACTION_FROM
+    if far.any():
+        inner = np.zeros_like(z[far])
+        for k in range(_FRACTION_TERMS, 1, -1):
+            inner = k / (z[far] + inner)
+        excess[far] = 1 / (z[far] + inner)
+        bend[far] = excess[far] * (inner - excess[far])
+    return excess, bend

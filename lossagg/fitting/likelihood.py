@@ -19,6 +19,8 @@ from lossagg.families.base import SizeLaw
 from lossagg.fitting.jets import Jet
 from lossagg.fitting.sample import Sample
 
+NEGLIGIBLE = 1e-8  # a departure from a limit law this small, in units of order one, is none
+
 Range = Literal["real", "positive", "probability"]
 
 
@@ -55,6 +57,18 @@ class SizeLikelihood(ABC):
     def starts(self, sample: Sample) -> list[FloatArray]:
         """Starting points, best guesses first."""
 
+    def total(self, inner: tuple[Jet, ...], sample: Sample) -> Jet:
+        """Sum of log f(x)/S(t) over uncensored and log S(x)/S(t) over censored losses, as one number.
+
+        A family overrides it where numerator and denominator are both tiny far below the threshold and
+        their ratio must be formed without cancellation.
+        """
+        total = self.log_density(inner, sample)
+        for group, sign in ((sample.stopped, 1.0), (sample.thresholds, -1.0)):
+            if len(group.points):
+                total = total + self.log_survival(inner, group.points).total(sign * group.weights)
+        return total
+
     def fixed(self, scale: float) -> dict[str, float]:
         """Parameters of the law that are not estimated, in money."""
         return {}
@@ -63,19 +77,20 @@ class SizeLikelihood(ABC):
         """Whether the formulas hold at these parameters; outside, the likelihood counts as zero."""
         return True
 
+    def runaway(self, inner: tuple[Jet, ...]) -> str:
+        """Why a climb that came this far is on its way to a limit law and may stop; empty while it is not."""
+        return ""
+
     def objection(self, inner: tuple[Jet, ...]) -> str:
         """Why a maximum at these parameters is no law of the family; empty where it is one."""
-        return ""
+        return self.runaway(inner)
 
 
 def log_likelihood(likelihood: SizeLikelihood, sample: Sample, point: tuple[Jet, ...]) -> Jet:
-    """Sum of log f(x)/S(t) over uncensored and log S(x)/S(t) over censored losses, x and t in units of
-    the sample's scale."""
+    """The log-likelihood at coordinates, `-inf` where the formulas do not hold; amounts in units of the
+    sample's scale."""
     inner = likelihood.inner(point)
-    total = likelihood.log_density(inner, sample)
-    for group, sign in ((sample.stopped, 1.0), (sample.thresholds, -1.0)):
-        if len(group.points):
-            total = total + likelihood.log_survival(inner, group.points).total(sign * group.weights)
+    total = likelihood.total(inner, sample)
     if not likelihood.admissible(inner):
         return Jet(np.array([-np.inf]), total.gradient, total.hessian)
     return total

@@ -18,12 +18,12 @@ from lossagg.arrays import FloatArray
 from lossagg.fitting.jets import Jet, variables
 
 _LONGEST_STEP = 2.0
-_STEPS = 200
+_STEPS = 120
 _HALVINGS = 40
 _FARTHEST = 60.0  # coordinates are logarithms or of order one: beyond, a parameter has run away
 _STEP_TOLERANCE = 1e-6  # in coordinates
 _DISTANCE_TOLERANCE = 1e-5  # in standard errors
-_SMALLEST_CURVATURE = 1e-12  # smallest eigenvalue of the scaled information
+_SMALLEST_CURVATURE = 1e-10  # of the information scaled to unit diagonal: below, it is rounding
 
 Objective = Callable[[tuple[Jet, ...]], Jet]
 
@@ -65,8 +65,16 @@ def evaluate(objective: Objective, point: FloatArray) -> float:
     return _look(objective, point).value
 
 
-def maximise(objective: Objective, start: FloatArray) -> Maximum:
-    """Climb from a starting point to the nearest maximum, and certify it or say why not."""
+def maximise(
+    objective: Objective, start: FloatArray, runaway: Callable[[FloatArray], str] | None = None
+) -> Maximum:
+    """Climb from a starting point to the nearest maximum, and certify it or say why not.
+
+    Args:
+        objective: the log-likelihood as a jet of its coordinates.
+        start: coordinates to start from, shape (p,).
+        runaway: says of coordinates why a climb that reached them may stop; empty where it may not.
+    """
     place = _look(objective, start)
     if not place.usable:
         return _refused(place, "the likelihood is not defined at the start")
@@ -80,6 +88,9 @@ def maximise(objective: Objective, start: FloatArray) -> Maximum:
         place = following
         if np.max(np.abs(place.point)) > _FARTHEST:
             return _refused(place, "a parameter ran towards its boundary")
+        reason = runaway(place.point) if runaway else ""
+        if reason:
+            return _refused(place, reason)
     return _certified(place)
 
 
@@ -116,12 +127,11 @@ def _search(objective: Objective, place: _Place, step: FloatArray) -> _Place | N
 def _certified(place: _Place) -> Maximum:
     spread = np.sqrt(np.maximum(np.diag(-place.hessian), 0))
     if (spread == 0).any():
-        return _refused(place, "the likelihood is flat or rising in one direction")
-    scaled = -place.hessian / np.outer(spread, spread)
-    smallest = float(np.linalg.eigvalsh(scaled)[0])
-    if smallest < _SMALLEST_CURVATURE:
-        return _refused(place, "the information matrix is not positive definite")
-    covariance = np.linalg.inv(scaled) / np.outer(spread, spread)
+        return _refused(place, "it is flat or rising in one direction")
+    values, vectors = np.linalg.eigh(-place.hessian / np.outer(spread, spread))
+    if values[0] < _SMALLEST_CURVATURE:
+        return _refused(place, "its information matrix is not positive definite")
+    covariance = (vectors / values) @ vectors.T / np.outer(spread, spread)
     step = covariance @ place.gradient
     distance = float(np.sqrt(max(float(place.gradient @ step), 0.0)))
     failure = ""

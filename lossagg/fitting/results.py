@@ -12,7 +12,6 @@ from scipy import special
 from lossagg.arrays import FloatArray, require_probability
 from lossagg.errors import InputError
 from lossagg.families.base import CountLaw, Law, SizeLaw
-from lossagg.fitting.counts import at_exposure
 from lossagg.fitting.likelihood import Range
 
 if TYPE_CHECKING:
@@ -50,6 +49,9 @@ class Fit:
     gradient_norm: float
     ranges: Mapping[str, Range] = field(default_factory=dict)
     notes: tuple[str, ...] = ()
+
+    def __post_init__(self) -> None:
+        self.covariance.setflags(write=False)
 
     @property
     def standard_errors(self) -> dict[str, float]:
@@ -176,7 +178,7 @@ class FrequencyFit(Fit):
             InputError: an exposure that is not above 0, or for the binomial law one that does not
                 give a whole number of trials.
         """
-        return at_exposure(self.model, exposure)
+        return self.model.with_exposure(exposure)
 
     def upper_rate(self, level: float = 0.95) -> float:
         """One-sided upper confidence bound of the mean at exposure 1.

@@ -42,6 +42,7 @@ class Sample:
         thresholds: reporting thresholds above zero with their weights.
         scale: the unit, in money.
         observations: number of losses, censored ones included.
+        beyond: how many of them lie above their threshold, and so tell of the size above it.
     """
 
     exact: FloatArray
@@ -49,6 +50,7 @@ class Sample:
     thresholds: Weighted
     scale: float
     observations: int
+    beyond: int
 
     @property
     def count(self) -> int:
@@ -68,9 +70,14 @@ class Sample:
     @property
     def floor(self) -> float:
         """Smallest reporting threshold over all losses; 0 where one loss has none."""
-        if self.thresholds.weights.sum() < self.observations:
+        if self.untied:
             return 0.0
         return float(self.thresholds.points[0])
+
+    @property
+    def untied(self) -> int:
+        """Losses without a reporting threshold."""
+        return self.observations - int(self.thresholds.weights.sum())
 
     @cached_property
     def logs(self) -> FloatArray:
@@ -174,6 +181,7 @@ def sample_of(amounts: FloatArray, thresholds: FloatArray, censored: BoolArray) 
         thresholds=Weighted.of(above_zero / scale),
         scale=scale,
         observations=amounts.size,
+        beyond=int((amounts > thresholds).sum()),
     )
 
 

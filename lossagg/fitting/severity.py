@@ -12,7 +12,6 @@ from lossagg.fitting.classic_laws import (
     ExponentialLikelihood,
     GammaLikelihood,
     InverseGaussianLikelihood,
-    LognormalLikelihood,
     ParetoLikelihood,
 )
 from lossagg.fitting.excess_laws import (
@@ -23,6 +22,7 @@ from lossagg.fitting.excess_laws import (
 )
 from lossagg.fitting.jets import Jet, variables
 from lossagg.fitting.likelihood import SizeLikelihood, log_likelihood
+from lossagg.fitting.lognormal import LognormalLikelihood
 from lossagg.fitting.maximise import Maximum, Objective, evaluate, maximise
 from lossagg.fitting.notes import severity_notes
 from lossagg.fitting.results import SeverityFit
@@ -40,6 +40,7 @@ FAMILIES = (
     "burr",
 )
 _ORIGINS = {"pareto": "minimum", "generalized-pareto": "threshold"}
+_MOST_STARTS = 4
 _SEVERAL_STARTS = 20_000  # losses above which only the best start climbs, unless it fails
 
 
@@ -121,13 +122,12 @@ def likelihood_of(family: str, sample: Sample, fixed: Mapping[str, float]) -> tu
         )
     if family in _ORIGINS:
         return _with_origin(family, sample, fixed)
-    spread = float(np.sqrt(sample.log_squares / sample.count)) or 1.0
     makers: dict[str, Callable[[], SizeLikelihood]] = {
         "exponential": ExponentialLikelihood,
-        "lognormal": lambda: LognormalLikelihood(sample.log_sum / sample.count, spread),
+        "lognormal": lambda: LognormalLikelihood.about(sample),
         "lomax": LomaxLikelihood,
         "gamma": GammaLikelihood,
-        "weibull": WeibullLikelihood,
+        "weibull": lambda: WeibullLikelihood.about(sample),
         "inverse-gaussian": InverseGaussianLikelihood,
         "burr": BurrLikelihood,
     }
@@ -151,6 +151,12 @@ def _with_origin(family: str, sample: Sample, fixed: Mapping[str, float]) -> tup
             value=origin * sample.scale,
             remedy=f"Pass only losses above the {name}; the smallest is {sample.smallest * sample.scale:g}.",
         )
+    if borrowed and sample.exact[-1] == origin and not sample.censored:
+        raise FitError(
+            f"a {family} law needs its {name} when all losses are equal",
+            value=origin * sample.scale,
+            remedy=f'Give fixed={{"{name}": ...}} or the reporting threshold.',
+        )
     maker = ParetoLikelihood if family == "pareto" else GeneralizedParetoLikelihood
     return maker(origin), borrowed
 
@@ -159,7 +165,8 @@ def require_support(sample: Sample, family: str, parameters: int) -> None:
     """Refuse losses too few or too equal for the number of parameters.
 
     Raises:
-        FitError: fewer distinct uncensored losses than parameters, or all losses equal.
+        FitError: fewer distinct uncensored losses than parameters, all losses equal, or all at
+            their thresholds.
     """
     distinct = len(np.unique(sample.exact))
     if distinct < parameters:
@@ -175,10 +182,10 @@ def require_support(sample: Sample, family: str, parameters: int) -> None:
             value=float(sample.exact[0] * sample.scale),
             remedy="Check for a limit or a placeholder in the records; a fixed amount is a SizeTable.",
         )
-    if sample.exact[-1] <= sample.floor:
+    if sample.beyond == 0:
         raise FitError(
-            "every uncensored loss equals the reporting threshold",
-            value=float(sample.floor * sample.scale),
+            "every loss equals its reporting threshold",
+            value=float(sample.exact[0] * sample.scale),
             remedy="The size above the threshold does not show: check the amounts and the threshold.",
         )
 
@@ -195,14 +202,17 @@ def climb(
     Raises:
         FitError: no start led to one; `tried` names each start's end.
     """
-    ranked = sorted(starts, key=lambda start: -evaluate(objective, start))[:4]
+    count = len(likelihood.ranges)  # a splice climbs in one coordinate more than its body has
+
+    def inner(point: np.ndarray) -> tuple[Jet, ...]:
+        return likelihood.inner(variables(point)[:count])
+
+    ranked = sorted(starts, key=lambda start: -evaluate(objective, start))[:_MOST_STARTS]
     certified: list[Maximum] = []
     tried: list[str] = []
     for start in ranked:
-        maximum = maximise(objective, start)
-        with np.errstate(all="ignore"):
-            objection = likelihood.objection(likelihood.inner(variables(maximum.point)))
-        failure = objection or maximum.failure
+        maximum = maximise(objective, start, lambda point: likelihood.runaway(inner(point)))
+        failure = likelihood.objection(inner(maximum.point)) or maximum.failure
         tried.append(
             f"from {np.round(start, 3).tolist()}: {failure or f'log-likelihood {maximum.value:.6f}'}"
         )
