@@ -230,6 +230,40 @@ def test_batch_prints_a_table_and_leaves_with_1_when_one_failed(tmp_path: Path) 
     assert "Traceback" not in result.output
 
 
+def test_from_portfolio_file_to_the_same_bytes_with_any_number_of_workers(tmp_path: Path) -> None:
+    """Nothing stood in for: a real portfolio file, the real engines, twice."""
+    (tmp_path / "pool").mkdir()
+    (tmp_path / "pool" / "portfolio.toml").write_text(
+        """
+[portfolio]
+name = "Two quays"
+currency = "EUR"
+valuation-date = 2026-09-30
+levels = [0.9, 0.99]
+capital-level = 0.99
+
+[[line]]
+name = "Quays"
+frequency = { family = "poisson", mean = 3.0 }
+severity = { family = "exponential", mean = 1000.0 }
+
+[[cover]]
+name = "Layer"
+deductible = 500
+limit = 2000
+"""
+    )
+    for workers in (1, 2):
+        out = tmp_path / f"out-{workers}"
+        result = run("assess", tmp_path / "pool", "--out", out, "--years", 20000, "--workers", workers)
+        assert result.exit_code == 0, result.output
+    one, two = (
+        {name: (tmp_path / f"out-{workers}" / name).read_bytes() for name in FILES} for workers in (1, 2)
+    )
+    assert [name for name in FILES if one[name] != two[name]] == ["manifest.json"]
+    assert "Two quays" in one["report.html"].decode()
+
+
 def process(*arguments: str) -> subprocess.CompletedProcess[str]:
     command = [sys.executable, "-m", "lossagg", *arguments]
     environment = {name: value for name, value in os.environ.items() if name != "LOSSAGG_DEBUG"}
