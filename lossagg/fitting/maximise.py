@@ -80,7 +80,7 @@ def maximise(
         return _refused(place, "the likelihood is not defined at the start")
     for _ in range(_STEPS):
         step = _newton_step(place)
-        if np.max(np.abs(step)) < 1e-13:
+        if not np.max(np.abs(step)) > 1e-13:
             break
         following = _search(objective, place, step)
         if following is None:
@@ -101,6 +101,7 @@ def _look(objective: Objective, point: FloatArray) -> _Place:
     return _Place(point, value if np.isfinite(value) else -np.inf, jet.gradient[:, 0], jet.hessian[:, :, 0])
 
 
+@np.errstate(all="ignore")  # a flat direction overflows; the certificate refuses what comes of it
 def _newton_step(place: _Place) -> FloatArray:
     spread = np.sqrt(np.abs(np.diag(place.hessian)))
     spread[spread == 0] = 1.0
@@ -108,8 +109,8 @@ def _newton_step(place: _Place) -> FloatArray:
     floor = 1e-10 * max(float(np.max(np.abs(values))), 1e-300)
     sizes = np.maximum(np.abs(values), floor)
     step = vectors @ ((vectors.T @ (place.gradient / spread)) / sizes) / spread
-    longest = np.max(np.abs(step))
-    return np.asarray(step * min(1.0, _LONGEST_STEP / longest)) if longest > 0 else np.asarray(step)
+    longest = float(np.max(np.abs(step)))
+    return np.asarray(step * min(1.0, _LONGEST_STEP / longest)) if 0 < longest < np.inf else 0 * place.point
 
 
 def _search(objective: Objective, place: _Place, step: FloatArray) -> _Place | None:

@@ -42,7 +42,6 @@ class Sample:
         thresholds: reporting thresholds above zero with their weights.
         scale: the unit, in money.
         observations: number of losses, censored ones included.
-        beyond: how many of them lie above their threshold, and so tell of the size above it.
     """
 
     exact: FloatArray
@@ -50,7 +49,6 @@ class Sample:
     thresholds: Weighted
     scale: float
     observations: int
-    beyond: int
 
     @property
     def count(self) -> int:
@@ -181,7 +179,6 @@ def sample_of(amounts: FloatArray, thresholds: FloatArray, censored: BoolArray) 
         thresholds=Weighted.of(above_zero / scale),
         scale=scale,
         observations=amounts.size,
-        beyond=int((amounts > thresholds).sum()),
     )
 
 

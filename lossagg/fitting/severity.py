@@ -6,7 +6,7 @@ from collections.abc import Callable, Mapping
 
 import numpy as np
 
-from lossagg.arrays import Floats
+from lossagg.arrays import FloatArray, Floats
 from lossagg.errors import FitError, InputError
 from lossagg.fitting.classic_laws import (
     ExponentialLikelihood,
@@ -79,7 +79,9 @@ def fit_severity(
     amounts, thresholds, marks = checked_losses(losses, truncation, censored)
     sample = sample_of(amounts, thresholds, marks)
     likelihood, borrowed = likelihood_of(family, sample, fixed or {})
+    held = likelihood.fixed(sample.scale)
     require_support(sample, family, len(likelihood.ranges))
+    _require_excess(amounts, np.maximum(thresholds, max(held.values(), default=0.0)))
     maximum = climb(
         lambda point: log_likelihood(likelihood, sample, point),
         likelihood.starts(sample),
@@ -88,7 +90,6 @@ def fit_severity(
         likelihood,
     )
     inner = likelihood.inner(variables(maximum.point))
-    held = likelihood.fixed(sample.scale)
     parameters, covariance = natural_parameters(likelihood.natural(inner, sample.scale), maximum)
     names = [*likelihood.ranges, *held]
     complete = np.zeros((len(names), len(names)))
@@ -151,12 +152,6 @@ def _with_origin(family: str, sample: Sample, fixed: Mapping[str, float]) -> tup
             value=origin * sample.scale,
             remedy=f"Pass only losses above the {name}; the smallest is {sample.smallest * sample.scale:g}.",
         )
-    if borrowed and sample.exact[-1] == origin and not sample.censored:
-        raise FitError(
-            f"a {family} law needs its {name} when all losses are equal",
-            value=origin * sample.scale,
-            remedy=f'Give fixed={{"{name}": ...}} or the reporting threshold.',
-        )
     maker = ParetoLikelihood if family == "pareto" else GeneralizedParetoLikelihood
     return maker(origin), borrowed
 
@@ -165,8 +160,7 @@ def require_support(sample: Sample, family: str, parameters: int) -> None:
     """Refuse losses too few or too equal for the number of parameters.
 
     Raises:
-        FitError: fewer distinct uncensored losses than parameters, all losses equal, or all at
-            their thresholds.
+        FitError: fewer distinct uncensored losses than parameters, or all losses equal.
     """
     distinct = len(np.unique(sample.exact))
     if distinct < parameters:
@@ -182,10 +176,13 @@ def require_support(sample: Sample, family: str, parameters: int) -> None:
             value=float(sample.exact[0] * sample.scale),
             remedy="Check for a limit or a placeholder in the records; a fixed amount is a SizeTable.",
         )
-    if sample.beyond == 0:
+
+
+def _require_excess(amounts: FloatArray, floors: FloatArray) -> None:
+    if not (amounts > floors).any():
         raise FitError(
-            "every loss equals its reporting threshold",
-            value=float(sample.exact[0] * sample.scale),
+            "every loss equals its reporting threshold or the smallest loss the law allows",
+            value=float(amounts[0]),
             remedy="The size above the threshold does not show: check the amounts and the threshold.",
         )
 

@@ -123,15 +123,9 @@ def fit_spliced(
     )
     values, joint = natural_parameters(free, maximum)
     parts = len(likelihood.ranges)
-    names = [f"body.{name}" for name in likelihood.ranges]
-    parameters = dict(zip(names, values[:parts], strict=True))
-    parameters |= {f"tail.{name}": value for name, value in tail_fit.parameters.items()}
-    parameters |= {"threshold": float(threshold), "tail_probability": values[parts]}
-    ranges: dict[str, Range] = {f"body.{name}": kind for name, kind in likelihood.ranges.items()}
-    ranges |= {f"tail.{name}": kind for name, kind in tail_fit.ranges.items()}
-    ranges |= {"tail_probability": "probability"}
+    body_values = dict(zip(likelihood.ranges, values[:parts], strict=True))
     model = Spliced(
-        body=likelihood.law(**dict(zip(likelihood.ranges, values[:parts], strict=True))),
+        body=likelihood.law(**body_values),
         tail=tail_fit.model,
         threshold=float(threshold),
         tail_probability=values[parts],
@@ -140,14 +134,14 @@ def fit_spliced(
     return SeverityFit(
         family=f"spliced {body} and {tail}",
         model=model,
-        parameters=parameters,
+        parameters=model.parameters,
         covariance=_joined(joint, tail_fit.covariance, parts),
         fixed=(*(f"tail.{name}" for name in tail_fit.fixed), "threshold"),
         log_likelihood=maximum.value - below_scale + tail_fit.log_likelihood,
         estimated=parts + 1 + tail_fit.estimated,
         observations=amounts.size,
         gradient_norm=float(np.hypot(maximum.distance, tail_fit.gradient_norm)),
-        ranges=ranges,
+        ranges=_ranges(likelihood, tail_fit),
         censored=int(marks.sum()),
         truncation=(float(reported.min()), float(reported.max())) if reported.any() else None,
         notes=_notes(model, tail_fit, threshold),
@@ -210,6 +204,12 @@ def _log_shares(odds: Jet) -> tuple[Jet, Jet]:
     return lift(odds, special.log_expit(odds.value), 1 - q, bend), lift(
         odds, special.log_expit(-odds.value), -q, bend
     )
+
+
+def _ranges(likelihood: SizeLikelihood, tail_fit: SeverityFit) -> dict[str, Range]:
+    ranges: dict[str, Range] = {f"body.{name}": kind for name, kind in likelihood.ranges.items()}
+    ranges |= {f"tail.{name}": kind for name, kind in tail_fit.ranges.items()}
+    return ranges | {"tail_probability": "probability"}
 
 
 def _start_odds(amounts: FloatArray, threshold: float) -> float:
