@@ -12,6 +12,7 @@ import numpy as np
 
 from lossagg.arrays import BoolArray, FloatArray, IntArray
 from lossagg.records.amounts import NumberStyle
+from lossagg.records.changes import Change
 from lossagg.records.dates import DateArray
 from lossagg.records.faults import Fault, Rows, list_faults
 from lossagg.records.findings import Finding, raise_stops
@@ -34,6 +35,9 @@ COLUMNS: Mapping[str, str] = {
     "policy-limit": "number",
     "line": "word",
     "currency": "word",
+    "deductible": "number",
+    "claim": "word",
+    "valuation": "date",
 }
 _WANTED = Wanted(COLUMNS, ("amount", "date"))
 _TOTAL = re.compile(r"^(grand |sub ?-?)?(totals?|sum|somme|summe|gesamt|totale|total general)\b[ :.]*$", re.I)
@@ -62,6 +66,8 @@ class LossTable:
         fingerprint: equal for rows equal in every column of the file; shape (rows,).
         faults: faults found in reading the cells.
         findings: findings about the file as a whole.
+        changes: what was done to the amounts since they were read, in order: conversion to the currency
+            of the portfolio, deductibles added back.
     """
 
     file: str
@@ -79,6 +85,7 @@ class LossTable:
     fingerprint: IntArray
     faults: tuple[Fault, ...]
     findings: tuple[Finding, ...]
+    changes: tuple[Change, ...] = ()
 
     def __len__(self) -> int:
         """Number of rows read."""
