@@ -11,6 +11,7 @@ from lossagg.fitting.diagnostics import (
 )
 from lossagg.fitting.frequency import fit_frequency
 from lossagg.fitting.goodness import Goodness, goodness
+from lossagg.fitting.notes import Note
 from lossagg.fitting.overdispersion import Overdispersion, overdispersion
 from lossagg.fitting.results import Fit, FrequencyFit, SeverityFit
 from lossagg.fitting.severity import fit_severity
@@ -22,6 +23,7 @@ __all__ = [
     "Fit",
     "FrequencyFit",
     "Goodness",
+    "Note",
     "Overdispersion",
     "QuantilePoints",
     "SeverityFit",

@@ -9,6 +9,7 @@ from lossagg.errors import FitError, InputError
 from lossagg.families import Binomial
 from lossagg.fitting.counts import Counts
 from lossagg.fitting.negative_binomial import JUST_EQUAL, rising_by_terms
+from lossagg.fitting.notes import Note
 from lossagg.fitting.results import FrequencyFit
 
 _MOST_TRIALS = 2.0**40
@@ -24,12 +25,13 @@ def fit_binomial(sample: Counts, held: float | None) -> FrequencyFit:
         )
     trials = _estimated_trials(sample) if held is None else _held_trials(sample, held)
     probability = sample.losses / (trials * sample.exposure)
-    notes: tuple[str, ...] = ()
+    notes: tuple[Note, ...] = ()
     if held is None:
-        notes = (
+        text = (
             f"Trials {trials} were chosen by the likelihood over whole numbers; the standard error of the "
-            "probability takes them as known, and they count as one parameter in AIC and BIC.",
+            "probability takes them as known, and they count as one parameter in AIC and BIC."
         )
+        notes = (Note("borrowed-parameter", text),)
     variance = probability * (1 - probability) / (trials * sample.exposure)
     return FrequencyFit(
         family="binomial",

@@ -6,6 +6,8 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Generic, TypeVar
 
+import numpy as np
+
 from lossagg.arrays import Floats
 from lossagg.errors import FitError, InputError
 from lossagg.fitting.frequency import fit_frequency
@@ -67,6 +69,7 @@ def compare_severities(
     *,
     tail_threshold: float | None = None,
     tail: str = "generalized-pareto",
+    least_seen: float = 0.0,
 ) -> Candidates[SeverityFit]:
     """Fit each severity family and rank the fits by AIC.
 
@@ -76,6 +79,8 @@ def compare_severities(
         tail_threshold: if given, each family is fitted as the body of a spliced law with this splice
             point; see `fit_spliced`.
         tail: family of the tail above `tail_threshold`.
+        least_seen: refuse a fit that puts less than this share of all losses above the smallest
+            reporting threshold; a ground-up count would be the observed one divided by that share.
 
     Raises:
         InputError: unusable data, no family, or an unknown one.
@@ -84,8 +89,17 @@ def compare_severities(
 
     def fit(family: str) -> SeverityFit:
         if tail_threshold is None:
-            return fit_severity(losses, family, truncation, censored)
-        return fit_spliced(losses, family, tail_threshold, truncation, censored, tail)
+            made = fit_severity(losses, family, truncation, censored)
+        else:
+            made = fit_spliced(losses, family, tail_threshold, truncation, censored, tail)
+        seen = 1.0 if made.truncation is None else float(made.model.sf(np.nextafter(made.truncation[0], 0.0)))
+        if seen < least_seen:
+            raise FitError(
+                f"the fit puts only {seen:.2g} of all losses above the reporting threshold",
+                value=family,
+                remedy='Use a law that begins there ("pareto", "generalized-pareto"), or a lighter one.',
+            )
+        return made
 
     return _ranked(families, fit, "severity")
 

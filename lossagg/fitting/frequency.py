@@ -12,6 +12,7 @@ from lossagg.families import Poisson
 from lossagg.fitting.binomial import fit_binomial
 from lossagg.fitting.counts import Counts, counts_of, poisson_at_rate
 from lossagg.fitting.negative_binomial import fit_negative_binomial
+from lossagg.fitting.notes import Note
 from lossagg.fitting.results import FrequencyFit
 
 FAMILIES = ("poisson", "negative-binomial", "binomial")
@@ -61,18 +62,20 @@ def fit_frequency(
 
 def _poisson(sample: Counts) -> FrequencyFit:
     losses, exposure = sample.losses, sample.exposure
-    notes: tuple[str, ...] = ()
+    notes: tuple[Note, ...] = ()
     rate, variance = sample.rate, losses / exposure**2
     if losses == 0:
         rate, variance = 0.5 / exposure, 0.5 / exposure**2  # Gamma(1/2) posterior: Jeffreys 1946
         upper = -np.log(0.05) / exposure
-        notes = (
+        text = (
             f"No loss in {sample.years} years: the estimate of maximum likelihood is 0 and is not used. "
             f"The model uses {rate:.4g}, the mean under Jeffreys' prior; the one-sided 95 % upper bound "
-            f"is {upper:.5g}.",
+            f"is {upper:.5g}."
         )
+        notes = (Note("no-losses", text),)
     elif losses < 10:
-        notes = (f"Only {losses} losses: the rate is known to within a factor, see its interval.",)
+        text = f"Only {losses} losses: the rate is known to within a factor, see its interval."
+        notes = (Note("few-losses", text),)
     return FrequencyFit(
         family="poisson",
         model=Poisson(mean=rate),

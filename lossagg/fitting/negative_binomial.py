@@ -17,6 +17,7 @@ from lossagg.fitting.counts import Counts, poisson_at_rate
 from lossagg.fitting.jet_functions import log_excess
 from lossagg.fitting.jets import Jet, compose, exp
 from lossagg.fitting.maximise import Maximum, evaluate, maximise
+from lossagg.fitting.notes import Note
 from lossagg.fitting.results import FrequencyFit
 
 _TABLE = 4096  # counts up to here sum log(1 + d k) term by term; above, gamma functions do
@@ -71,9 +72,8 @@ def fit_negative_binomial(sample: Counts) -> FrequencyFit:
     covariance = maximum.covariance * np.outer(slopes, slopes)
     notes = []
     if np.sqrt(covariance[1, 1]) > dispersion:
-        notes.append(
-            "The standard error of the dispersion exceeds its estimate: the counts hardly determine it."
-        )
+        text = "The standard error of the dispersion exceeds its estimate: the counts hardly determine it."
+        notes.append(Note("loose-parameter", text))
     return FrequencyFit(
         family="negative-binomial",
         model=NegativeBinomial(mean=mean, dispersion=dispersion),

@@ -13,6 +13,7 @@ from lossagg.arrays import FloatArray, require_probability
 from lossagg.errors import InputError
 from lossagg.families.base import CountLaw, Law, SizeLaw
 from lossagg.fitting.likelihood import Range
+from lossagg.fitting.notes import Note
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -48,7 +49,7 @@ class Fit:
     observations: int
     gradient_norm: float
     ranges: Mapping[str, Range] = field(default_factory=dict)
-    notes: tuple[str, ...] = ()
+    notes: tuple[Note, ...] = ()
 
     def __post_init__(self) -> None:
         self.covariance.setflags(write=False)

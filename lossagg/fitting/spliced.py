@@ -20,7 +20,7 @@ from lossagg.families import Spliced
 from lossagg.fitting.jet_functions import log_one_minus_exp, log_sum_exp
 from lossagg.fitting.jets import Jet, lift, variables
 from lossagg.fitting.likelihood import Range, SizeLikelihood
-from lossagg.fitting.notes import FEW, tail_notes
+from lossagg.fitting.notes import FEW, Note, tail_notes
 from lossagg.fitting.results import SeverityFit
 from lossagg.fitting.sample import Sample, Weighted, checked_losses, sample_of
 from lossagg.fitting.severity import (
@@ -227,15 +227,15 @@ def _joined(joint: FloatArray, tail: FloatArray, parts: int) -> FloatArray:
     return covariance
 
 
-def _notes(model: Spliced, tail_fit: SeverityFit, threshold: float) -> tuple[str, ...]:
-    shape = tail_fit.parameters["shape"] if tail_fit.family == "generalized-pareto" else None
-    notes = tail_notes(model, shape)
+def _notes(model: Spliced, tail_fit: SeverityFit, threshold: float) -> tuple[Note, ...]:
+    notes = tail_notes(model, tail_fit.family, tail_fit.parameters, tail_fit.covariance)
     exact = tail_fit.observations - tail_fit.censored
     if exact < FEW:
-        notes.append(
+        text = (
             f"Only {exact} uncensored losses lie above the threshold {threshold:g}: the tail is uncertain; "
             "compare the fit with neighbouring thresholds."
         )
+        notes.append(Note("few-losses", text))
     return tuple(notes)
 
 

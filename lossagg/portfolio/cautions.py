@@ -37,7 +37,6 @@ INFINITE_VARIANCE = (
     "standard deviation is printed, and sample means are unreliable."
 )
 GIVEN = "frequency and severity are given, not fitted: the figures rest on that judgement."
-FEW_LOSSES = 30
 
 
 def cautions(lines: Sequence[LineModel], levels: Sequence[float]) -> list[Caution]:
@@ -62,17 +61,18 @@ def _caution(code: str, message: str) -> Caution:
 
 
 def _of_line(line: LineModel, levels: Sequence[float]) -> Iterator[tuple[str, str]]:
-    index = line.severity.tail_index
-    if line.severity.mean() == float("inf"):
-        yield "infinite-mean", INFINITE_MEAN.format(index=index)
-    elif line.severity.variance() == float("inf"):
-        yield "infinite-variance", INFINITE_VARIANCE.format(index=index)
+    for note in line.fit_notes:
+        yield note.code, note
+    if line.severities is None:
+        index = line.severity.tail_index
+        if line.severity.mean() == float("inf"):
+            yield "infinite-mean", INFINITE_MEAN.format(index=index)
+        elif line.severity.variance() == float("inf"):
+            yield "infinite-variance", INFINITE_VARIANCE.format(index=index)
     if line.prepared is None:
         yield "given-parameters", GIVEN
     else:
         yield from _of_records(line.prepared, levels)
-    for note in line.fit_notes:
-        yield "fit", note
 
 
 def _of_records(prepared: PreparedLosses, levels: Sequence[float]) -> Iterator[tuple[str, str]]:
@@ -84,8 +84,6 @@ def _of_records(prepared: PreparedLosses, levels: Sequence[float]) -> Iterator[t
             f"{years:.4g} years of records support levels up to {max(1 - 1 / years, 0):.3g}; the "
             f"figures at {top:.6g} extrapolate {1.0 / (1.0 - top) / years:.0f} times beyond the data.",
         )
-    if len(prepared) < FEW_LOSSES:
-        yield "few-losses", f"the fit rests on {len(prepared)} losses; its tail is mostly assumption."
     still_open = int(prepared.years.open.sum())
     if still_open:
         yield (

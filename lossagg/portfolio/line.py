@@ -14,10 +14,21 @@ import numpy as np
 from lossagg.arrays import FloatArray
 from lossagg.engines.book import Line
 from lossagg.families.base import CountLaw, SizeLaw
-from lossagg.fitting import Candidates, FrequencyFit, SeverityFit, compare_frequencies, compare_severities
+from lossagg.fitting import (
+    Candidates,
+    FrequencyFit,
+    Note,
+    SeverityFit,
+    compare_frequencies,
+    compare_severities,
+)
 from lossagg.portfolio.laws import given_frequency, given_severity
 from lossagg.portfolio.schema import LineSection
 from lossagg.records import PreparedLosses
+
+LEAST_SEEN = 0.01
+"""Least share of all losses above the reporting threshold: a ground-up count beyond a hundred times the
+observed one is extrapolation, not evidence (our choice, no source)."""
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -50,7 +61,7 @@ class LineModel:
         return Line(name=self.name, frequency=self.frequency, severity=self.severity)
 
     @property
-    def fit_notes(self) -> tuple[str, ...]:
+    def fit_notes(self) -> tuple[Note, ...]:
         """What the fits say about themselves."""
         fits = [c.chosen for c in (self.severities, self.frequencies) if c is not None]
         return tuple(note for fit in fits for note in fit.notes)
@@ -79,6 +90,7 @@ def build_line(section: LineSection, prepared: PreparedLosses | None, key: str) 
             truncation=prepared.threshold,
             censored=prepared.censored,
             tail_threshold=section.severity.tail_threshold,
+            least_seen=LEAST_SEEN,
         )
         severity = severities.chosen.model
     if section.frequency.fit is None or prepared is None:
