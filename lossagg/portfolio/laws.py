@@ -12,6 +12,7 @@ from lossagg.errors import InputError, LossaggError, place
 from lossagg.families import make_count_law, make_size_law
 from lossagg.families.base import CountLaw, SizeLaw
 from lossagg.portfolio.schema import CoverSection, Law
+from lossagg.portfolio.sections import Terms
 
 
 def given_frequency(law: Law, key: str) -> CountLaw:
@@ -66,8 +67,22 @@ def placed_cover(section: CoverSection, key: str) -> PlacedCover:
     Raises:
         InputError: terms that contradict each other, with the key of the table.
     """
+    return PlacedCover(
+        name=section.name,
+        terms=given_terms(section, key),
+        lines=section.lines or (),
+        after=section.after,
+    )
+
+
+def given_terms(section: Terms, key: str) -> Cover:
+    """The terms of a `[[cover]]` or `[[option]]` table.
+
+    Raises:
+        InputError: terms that contradict each other, with the key of the table.
+    """
     try:
-        terms = Cover(
+        return Cover(
             deductible=section.deductible,
             limit=np.inf if section.limit is None else section.limit,
             franchise=section.franchise,
@@ -78,7 +93,6 @@ def placed_cover(section: CoverSection, key: str) -> PlacedCover:
         )
     except InputError as error:
         raise _at(error, key) from error
-    return PlacedCover(name=section.name, terms=terms, lines=section.lines or (), after=section.after)
 
 
 def _at(error: Exception, key: str) -> InputError:

@@ -5,7 +5,6 @@ from __future__ import annotations
 from dataclasses import dataclass
 from pathlib import Path
 
-from lossagg.version import __version__
 from lossagg.engines.book import Book
 from lossagg.portfolio.assess import Progress, compute, figures, silent
 from lossagg.portfolio.assessment import FORMAT, Assessment, Data, Writer
@@ -15,6 +14,7 @@ from lossagg.portfolio.laws import placed_cover
 from lossagg.portfolio.line import LineModel, build_line
 from lossagg.portfolio.schema import PortfolioFile, read_portfolio_file
 from lossagg.records import PreparedLosses, midpoint, prepare_losses
+from lossagg.version import __version__
 
 
 @dataclass(frozen=True)

@@ -16,26 +16,7 @@ from pydantic import BaseModel, ConfigDict, Field, ValidationError, field_valida
 from pydantic.fields import FieldInfo
 
 from lossagg.errors import InputError, place
-
-Amount = Annotated[float, Field(ge=0, allow_inf_nan=False)]
-Positive = Annotated[float, Field(gt=0, allow_inf_nan=False)]
-Probability = Annotated[float, Field(gt=0, lt=1)]
-Name = Annotated[str, Field(min_length=1, max_length=120)]
-
-AMBIGUOUS = {"annual-aggregate-deductible", "aggregate-deductible", "annual-deductible"}
-
-
-def hyphenated(name: str) -> str:
-    """The key of a field: words joined by hyphens."""
-    return name.replace("_", "-")
-
-
-class Section(BaseModel):
-    """A table of the portfolio file: unknown keys are errors, text is not taken for numbers."""
-
-    model_config = ConfigDict(
-        alias_generator=hyphenated, extra="forbid", strict=True, frozen=True, populate_by_name=False
-    )
+from lossagg.portfolio.sections import Amount, Name, Positive, Probability, Section, Terms, hyphenated
 
 
 class PortfolioSection(Section):
@@ -116,7 +97,7 @@ class Severity(Law):
 class FileOptions(Section):
     """How a file of records or exposures is written."""
 
-    columns: dict[str, str] = {}
+    columns: dict[str, str] = Field(default_factory=dict)
     sheet: str | None = None
     delimiter: Annotated[str, Field(min_length=1, max_length=1)] | None = None
     encoding: str | None = None
@@ -131,7 +112,7 @@ class LineSection(FileOptions):
     name: Name
     records: str | None = None
     exposure: str | None = None
-    exposure_columns: dict[str, str] = {}
+    exposure_columns: dict[str, str] = Field(default_factory=dict)
     reporting_threshold: Amount | None = None
     trend: Annotated[float, Field(gt=-0.5, lt=1.0)] = 0.0
     first_year: Annotated[int, Field(ge=1900, le=2200)] | None = None
@@ -152,37 +133,19 @@ class LineSection(FileOptions):
         return self
 
 
-class CoverSection(Section):
+class CoverSection(Terms):
     """`[[cover]]`: terms under which someone pays part of the losses."""
 
     name: Name
     lines: Annotated[tuple[str, ...], Field(min_length=1, strict=False)] | None = None
     after: Annotated[tuple[str, ...], Field(strict=False)] = ()
-    deductible: Amount = 0.0
-    limit: Positive | None = None
-    franchise: bool = False
-    share: Annotated[float, Field(gt=0, le=1)] = 1.0
-    annual_retention: Amount = 0.0
-    annual_limit: Positive | None = None
-    retained_cap: Amount | None = None
-
-    @model_validator(mode="before")
-    @classmethod
-    def _two_meanings(cls, values: Any) -> Any:
-        for key in AMBIGUOUS & set(values if isinstance(values, dict) else ()):
-            raise ValueError(
-                f"{key!r} has two opposite meanings in the trade | Write annual-retention for an amount "
-                "kept of the year's payments before the cover pays, or retained-cap for the most the "
-                "insured keeps per year under the deductible."
-            )
-        return values
 
 
 class PortfolioFile(Section):
     """The whole portfolio file."""
 
     portfolio: PortfolioSection
-    columns: dict[str, str] = {}
+    columns: dict[str, str] = Field(default_factory=dict)
     line: Annotated[tuple[LineSection, ...], Field(min_length=1, strict=False)]
     cover: Annotated[tuple[CoverSection, ...], Field(strict=False)] = ()
 
