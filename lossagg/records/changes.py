@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from lossagg.arrays import BoolArray
-from lossagg.records.money import DecimalArray
+from lossagg.records.money import Money
 
 
 @dataclass(frozen=True)
@@ -14,12 +14,12 @@ class Change:
 
     Args:
         step: name of the step, "currency" for example.
-        before: amounts before it, as decimals; shape (rows,).
+        before: amounts before it; shape (rows,).
         rows: True for the rows whose amount changed; shape (rows,).
         note: what was done, in words.
     """
 
     step: str
-    before: DecimalArray
+    before: Money
     rows: BoolArray
     note: str

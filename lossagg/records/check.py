@@ -19,8 +19,8 @@ from lossagg.records.rules import CheckTerms, below_threshold, row_faults
 from lossagg.records.shape import shape_findings
 from lossagg.records.table import LossTable
 from lossagg.records.tolerance import check_tolerance
-from lossagg.records.typed import by_word
 from lossagg.records.word_rules import canonical_lines, line_faults, pooled_lines
+from lossagg.records.words import WordArray
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -110,7 +110,7 @@ class CheckedLosses:
                 "row": self.table.row[at],
                 "code": [self.faults[reason].code for reason in self.reason[at].tolist()],
                 "reason": [self.faults[reason].message for reason in self.reason[at].tolist()],
-                "amount": self.table.exact[at],
+                "amount": self.table.exact[at].tolist(),
             }
         )
 
@@ -194,12 +194,12 @@ def _incomplete_events(table: LossTable, used: BoolArray, claimed: Sequence[Faul
         if not fault.tolerated and fault.code != "duplicate-row":
             lost |= fault.mask
     event = table.word("event")
-    names = set(event[lost].tolist()) - {""}
+    names = set(event[lost].present()) - {""}
     return Fault(
         "incomplete-event",
         "warn",
         "event",
-        used & by_word(event, names.__contains__) if names else np.zeros(len(table), dtype=np.bool_),
+        used & event.is_in(names),
         "another claim of the event is set aside, so the event counts for less than it was",
         "Repair the claim that is set aside.",
     )
@@ -216,22 +216,27 @@ def _with_lines(table: LossTable, terms: CheckTerms) -> LossTable:
     """Name each row's line as the portfolio does; without several lines the column says nothing."""
     words = {name: column for name, column in table.words.items() if name != "line"}
     if terms.lines is not None:
-        known = canonical_lines(terms.lines)
-        if "line" in table.words:
-            names = [known.get(word.casefold(), "") for word in table.words["line"].tolist()]
-        elif len(terms.lines) == 1:
-            names = [terms.lines[0]] * len(table)
-        else:
-            raise InputError(
-                "several lines share the file but no column tells them apart",
-                where=place(file=table.file),
-                value=list(terms.lines),
-                remedy="Map the column that names the line, or give each line its own file.",
-            )
-        column = np.array(names, dtype=np.object_)
-        column[table.blank] = ""
-        words["line"] = column
+        words["line"] = _named_lines(table, terms.lines)
     return replace(table, words=words)
+
+
+def _named_lines(table: LossTable, lines: tuple[str, ...]) -> WordArray:
+    """The line of each row by its name in the portfolio, "" for rows that carry no record."""
+    known = canonical_lines(lines)
+    if "line" in table.words:
+        written = table.words["line"]
+        to_line = [known.get(word.casefold(), "") for word in written.names.to_pylist()]
+    elif len(lines) == 1:
+        written, to_line = WordArray.empty(len(table)), [lines[0]]
+    else:
+        raise InputError(
+            "several lines share the file but no column tells them apart",
+            where=place(file=table.file),
+            value=list(lines),
+            remedy="Map the column that names the line, or give each line its own file.",
+        )
+    named = written.rename(np.ones(len(to_line), dtype=np.bool_), to_line)
+    return named.without(table.blank)
 
 
 def _terms(

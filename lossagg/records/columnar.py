@@ -1,15 +1,15 @@
-"""Parquet tables, read batch by batch; every type is written as text that identifies its value exactly."""
+"""Parquet tables, read batch by batch; numbers and days stay as stored, anything else becomes text."""
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 
 from lossagg.errors import InputError, place
-from lossagg.records.raw import Choose, RawTable, TableBuilder
+from lossagg.records.raw import Choose, RawTable, TableBuilder, cell_text
 
 _BATCH = 100_000
 
@@ -54,12 +54,8 @@ def _fill(builder: TableBuilder, source: Any, schema: Any, positions: Mapping[st
 
     try:
         for batch in source.iter_batches(batch_size=_BATCH):
-            columns = [_texts(column) for column in batch.columns]
-            native = {
-                name: np.full(len(batch), not _is_text(schema.field(position).type), dtype=np.bool_)
-                for name, position in positions.items()
-            }
-            builder.add(columns, native)
+            columns = [_plain(column) for column in batch.columns]
+            builder.add(columns, _native(schema, positions, len(batch)))
     except (pa.ArrowInvalid, OSError) as error:
         raise InputError(
             "the Parquet file is damaged",
@@ -68,30 +64,28 @@ def _fill(builder: TableBuilder, source: Any, schema: Any, positions: Mapping[st
         ) from error
 
 
-def _texts(column: Any) -> Sequence[str]:
-    """Write one batch of a column as text, nulls as empty cells."""
+def _native(schema: Any, positions: Mapping[str, int], rows: int) -> dict[str, Any]:
+    kinds = {name: schema.field(position).type for name, position in positions.items()}
+    return {name: np.full(rows, not _is_text(kind), dtype=np.bool_) for name, kind in kinds.items()}
+
+
+def _plain(column: Any) -> Any:
+    """A batch of a column as it is kept: numbers and days as they are, anything else as text."""
     import pyarrow as pa
     import pyarrow.compute as pc
 
     kind = column.type
     if pa.types.is_dictionary(kind):
-        return _texts(column.dictionary_decode())
-    if pa.types.is_floating(kind):
-        values = column.fill_null(float("nan")).to_numpy(zero_copy_only=False)
-        nulls = column.is_null().to_numpy(zero_copy_only=False)
-        return [
-            "" if null else text
-            for null, text in zip(nulls.tolist(), values.astype(str).tolist(), strict=True)
-        ]
-    if pa.types.is_integer(kind) or pa.types.is_date32(kind) or pa.types.is_string(kind):
-        return pc.cast(column, pa.string()).fill_null("").to_pylist()  # type: ignore[no-any-return]
-    return [_text(value) for value in column.to_pylist()]
-
-
-def _text(value: Any) -> str:
-    if value is None:
-        return ""
-    return value.isoformat() if hasattr(value, "isoformat") else str(value)
+        return _plain(column.dictionary_decode())
+    if pa.types.is_string(kind) or pa.types.is_large_string(kind):
+        return pc.cast(column, pa.string()).fill_null("")
+    if any(test(kind) for test in (pa.types.is_integer, pa.types.is_floating, pa.types.is_date32)):
+        return column
+    if pa.types.is_decimal(kind):
+        return column
+    if pa.types.is_timestamp(kind) and kind.tz is None:
+        return pc.cast(column, pa.string()).fill_null("")
+    return pa.array(map(cell_text, column.to_pylist()), pa.string())
 
 
 def _is_text(kind: Any) -> bool:

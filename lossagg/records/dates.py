@@ -7,7 +7,7 @@ A date-time keeps its day; one that carries a zone does not say on which day it 
 from __future__ import annotations
 
 import re
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
 from typing import Any
 
 import numpy as np
@@ -16,7 +16,8 @@ import numpy.typing as npt
 from lossagg.arrays import BoolArray, IntArray
 from lossagg.errors import InputError
 from lossagg.records.amounts import as_mask, is_missing
-from lossagg.records.raw import TextColumn
+from lossagg.records.raw import Column
+from lossagg.records.words import WordArray
 
 DateArray = npt.NDArray[np.datetime64]
 
@@ -52,11 +53,11 @@ class Dates:
     wrong: BoolArray
 
 
-def parse_dates(column: TextColumn, date_format: str | None) -> Dates:
+def parse_dates(column: Column, date_format: str | None) -> Dates:
     """Read a column of dates; cells that held dates already need no format.
 
     Args:
-        column: the cells as text.
+        column: the cells.
         date_format: the format of the file, made of %Y, %m (or %b, English abbreviation) and %d;
             None for ISO dates.
 
@@ -66,15 +67,46 @@ def parse_dates(column: TextColumn, date_format: str | None) -> Dates:
     Raises:
         InputError: a format that does not give year, month and day once each.
     """
+    pattern = _pattern(date_format) if date_format is not None else None
+    if not column.is_text and _is_days(column.cells):
+        return _native_days(column.cells)
+    # Files have few different days and many rows: each different cell is read once.
+    cells = WordArray.of(column.as_text())
+    native = column.native if column.is_text else ~np.zeros(len(cells), dtype=np.bool_)
+    as_iso = _parse_texts(cells.names, None)
+    if pattern is None or native.all():
+        return _spread(as_iso, cells.codes)
+    declared = _spread(_parse_texts(cells.names, pattern), cells.codes)
+    if not native.any():
+        return declared
+    iso = _spread(as_iso, cells.codes)
+    names = (field.name for field in fields(Dates))
+    return Dates(**{name: np.where(native, getattr(iso, name), getattr(declared, name)) for name in names})
+
+
+def _is_days(cells: Any) -> bool:
     import pyarrow as pa
+
+    return bool(pa.types.is_date32(cells.type))
+
+
+def _native_days(cells: Any) -> Dates:
+    none = np.zeros(len(cells), dtype=np.bool_)
+    days = cells.to_numpy(zero_copy_only=False).astype("datetime64[D]")
+    return Dates(days, np.isnat(days), none, none, none, none)
+
+
+def _spread(dates: Dates, codes: npt.NDArray[np.int32]) -> Dates:
+    """The dates of every row from those of the different cells."""
+    return Dates(**{field.name: getattr(dates, field.name)[codes] for field in fields(Dates)})
+
+
+def _parse_texts(texts: Any, pattern: str | None) -> Dates:
     import pyarrow.compute as pc
 
-    text = pc.utf8_trim_whitespace(column.text)
+    text = pc.utf8_trim_whitespace(texts)
     missing = is_missing(pc.utf8_lower(text))
-    parts = _extract(text, _ISO)
-    if date_format is not None:
-        declared, native = _extract(text, _pattern(date_format)), pa.array(column.native)
-        parts = {name: pc.if_else(native, parts[name], declared[name]) for name in parts}
+    parts = _extract(text, pattern or _ISO)
     matched = as_mask(pc.not_equal(parts["year"], ""))
     zoned = as_mask(pc.not_equal(parts["zone"], ""))
     year, month, day = (_integers(parts[name]) for name in ("year", "month", "day"))

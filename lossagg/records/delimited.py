@@ -17,6 +17,7 @@ from typing import TYPE_CHECKING
 
 from lossagg.errors import InputError, place
 from lossagg.records.findings import counted
+from lossagg.records.plain_text import parse_plain
 from lossagg.records.raw import Choose, Layout, RawTable, TableBuilder
 
 if TYPE_CHECKING:
@@ -36,8 +37,10 @@ _MARKS = (
 
 
 @dataclass(frozen=True)
-class _Decoded:
-    text: str
+class _Coding:
+    """Python's name of the encoding, and of the one a byte order mark says."""
+
+    name: str
     mark: str | None
 
 
@@ -57,27 +60,40 @@ def read_delimited(data: bytes, file: str, layout: Layout, choose: Choose) -> Ra
         InputError: a file that is empty, of another kind, in another encoding, with NUL characters,
             an ambiguous delimiter, ragged rows or an open quote.
     """
-    decoded = _decode(data, file, layout.encoding)
-    _refuse_nul(decoded.text, file)
-    delimiter = layout.delimiter or _sniff(decoded.text, file)
+    coding = _coding(data, file, layout.encoding)
+    body = _as_utf8(data, coding, file)
+    _refuse_nul(body, file)
+    start = _beginning(body, file)
+    delimiter = layout.delimiter or _sniff(start, file)
     _check_delimiter(delimiter, file)
-    lines = _unquoted(decoded.text, delimiter)
-    reader = _reader(decoded.text if lines is None else lines[0], delimiter)
-    headings = _headings(reader, decoded.text, delimiter, file)
+    headings = _headings(_reader(start, delimiter), start, delimiter, file)
     builder = TableBuilder(file, None, headings, choose(headings, None))
-    if decoded.mark:
+    _note_layout(builder, coding, delimiter)
+    batches = parse_plain(body, delimiter, len(headings))
+    if batches is None:
+        _fill_strictly(builder, _text(body, file), delimiter)
+    else:
+        for batch in batches:
+            builder.add(batch.columns)
+    return builder.finish()
+
+
+def _note_layout(builder: TableBuilder, coding: _Coding, delimiter: str) -> None:
+    if coding.mark:
         builder.note(
             "byte-order-mark",
-            f"a byte order mark says {decoded.mark.removesuffix('-sig')}; it is not data",
+            f"a byte order mark says {coding.mark.removesuffix('-sig')}; it is not data",
             "None needed.",
         )
     if delimiter != ",":
         name = DELIMITERS.get(delimiter, repr(delimiter))
         builder.note("delimiter", f"the fields are divided by a {name}", "None needed.")
-    if lines is not None:
-        _fill_unquoted(builder, lines, delimiter)
-        return builder.finish()
-    records = _fill(builder, reader, decoded.text, delimiter)
+
+
+def _fill_strictly(builder: TableBuilder, text: str, delimiter: str) -> None:
+    reader = _reader(text, delimiter)
+    next(reader)
+    records = _fill(builder, reader, text, delimiter)
     if reader.line_num > records:
         breaks = counted(reader.line_num - records, "line break")
         builder.note(
@@ -86,34 +102,12 @@ def read_delimited(data: bytes, file: str, layout: Layout, choose: Choose) -> Ra
             "Check that no quote swallows records.",
             warn=True,
         )
-    return builder.finish()
-
-
-def _unquoted(text: str, delimiter: str) -> list[str] | None:
-    """The lines of a text that has no quotes and the same number of fields in every line, else None.
-
-    Such a text, as most are, can be split without looking at every character; all others go through the
-    strict reader, which finds what is wrong with them.
-    """
-    if '"' in text:
-        return None
-    lines = text.replace("\r\n", "\n").replace("\r", "\n").split("\n")
-    if not lines[-1]:
-        lines.pop()
-    even = len({line.count(delimiter) for line in lines}) == 1
-    return lines if even and lines[0].strip() else None
-
-
-def _fill_unquoted(builder: TableBuilder, lines: list[str], delimiter: str) -> None:
-    width = len(builder.headings)
-    for start in range(1, len(lines), _CHUNK):
-        chunk = lines[start : start + _CHUNK]
-        cells = delimiter.join(chunk).split(delimiter)
-        builder.add([cells[column::width] for column in range(width)], rows=chunk)
 
 
 def _fill(builder: TableBuilder, reader: Reader, text: str, delimiter: str) -> int:
     """Read the body; return how many records the file has, headings included."""
+    import pyarrow as pa
+
     width = len(builder.headings)
     records = 1
     for chunk in _chunks(reader, text, delimiter, builder.file):
@@ -126,7 +120,7 @@ def _fill(builder: TableBuilder, reader: Reader, text: str, delimiter: str) -> i
                     where=f"{place(file=builder.file, row=records + ragged + 1)}, line {line}",
                     remedy="Quote fields that contain the delimiter, or repair the row.",
                 )
-        builder.add(list(zip(*chunk, strict=True)))
+        builder.add([pa.array(column, pa.string()) for column in zip(*chunk, strict=True)])
         records += len(chunk)
     return records
 
@@ -194,11 +188,11 @@ def _line_of(text: str, delimiter: str, record: int) -> int:
     return reader.line_num + 1
 
 
-def _decode(data: bytes, file: str, encoding: str | None) -> _Decoded:
+def _coding(data: bytes, file: str, encoding: str | None) -> _Coding:
+    """The encoding of the file: declared, or by its mark, else UTF-8."""
     if not data.strip():
         raise InputError("the file is empty", where=place(file=file), remedy="Export the records again.")
     mark = next((name for bytes_, name in _MARKS if data.startswith(bytes_)), None)
-    chosen = encoding or mark or "utf-8"
     marked = (mark or "").removesuffix("-sig")
     if mark and encoding and not codecs_name(encoding, file).startswith(marked):
         raise InputError(
@@ -207,17 +201,36 @@ def _decode(data: bytes, file: str, encoding: str | None) -> _Decoded:
             value=encoding,
             remedy="Declare the encoding of the file, or none.",
         )
+    return _Coding(mark or codecs_name(encoding or "utf-8", file), mark)
+
+
+def _as_utf8(data: bytes, coding: _Coding, file: str) -> bytes:
+    """The bytes of the text in UTF-8, without a byte order mark; those of UTF-8 are checked later."""
+    if coding.name == "utf-8":
+        return data
+    if coding.name == "utf-8-sig":
+        return data[len(codecs.BOM_UTF8) :]
     try:
-        codecs_name(chosen, file)
-        return _Decoded(data.decode(mark or chosen), mark)
+        return data.decode(coding.name).encode()
+    except UnicodeError as error:
+        raise _undecodable(data, coding.name, file, getattr(error, "start", 0)) from error
+
+
+def _text(body: bytes, file: str) -> str:
+    try:
+        return body.decode()
     except UnicodeDecodeError as error:
-        line = data.count(b"\n", 0, error.start) + 1
-        raise InputError(
-            f"the bytes are not {chosen.removesuffix('-sig')}",
-            where=f"{place(file=file)}, line {line}, byte {error.start}",
-            value=data[error.start : error.start + 1],
-            remedy='Declare the encoding the file was written in, for example encoding = "cp1252".',
-        ) from error
+        raise _undecodable(body, "utf-8", file, error.start) from error
+
+
+def _undecodable(data: bytes, encoding: str, file: str, at: int) -> InputError:
+    line = data.count(b"\n", 0, at) + 1
+    return InputError(
+        f"the bytes are not {encoding}",
+        where=f"{place(file=file)}, line {line}, byte {at}",
+        value=data[at : at + 1],
+        remedy='Declare the encoding the file was written in, for example encoding = "cp1252".',
+    )
 
 
 def codecs_name(encoding: str, file: str) -> str:
@@ -238,12 +251,13 @@ def codecs_name(encoding: str, file: str) -> str:
         ) from error
 
 
-def _refuse_nul(text: str, file: str) -> None:
-    at = text.find("\0")
+def _refuse_nul(body: bytes, file: str) -> None:
+    at = body.find(b"\0")
     if at >= 0:
+        line = body.count(b"\n", 0, at) + 1
         raise InputError(
             "the file contains a NUL character",
-            where=f"{place(file=file)}, line {text.count(chr(10), 0, at) + 1}",
+            where=f"{place(file=file)}, line {line}, byte {at}",
             remedy="The file is damaged or no text; if it is UTF-16 without a byte order mark, declare that.",
         )
 
@@ -260,7 +274,6 @@ def _check_delimiter(delimiter: str, file: str) -> None:
 
 def _sniff(text: str, file: str) -> str:
     """Find the only delimiter that divides the headings and every one of the next rows alike."""
-    text = _beginning(text)
     candidates = [d for d in DELIMITERS if max(_shape(text, d, 1)) > 1]
     if len(candidates) > 1:
         candidates = [d for d in candidates if len(_shape(text, d, _SNIFFED)) == 1] or candidates
@@ -276,14 +289,18 @@ def _sniff(text: str, file: str) -> str:
     )
 
 
-def _beginning(text: str) -> str:
-    """The first lines of a text, enough to tell its delimiter; whole when they are very long."""
+def _beginning(body: bytes, file: str) -> str:
+    """The first lines, enough to tell the delimiter and the headings; everything when they are very long."""
     end = 0
     for _ in range(2 * _SNIFFED):
-        end = text.find("\n", end) + 1
+        end = body.find(b"\n", end) + 1
         if not end:
-            return text
-    return text[:end]
+            return _text(body, file)
+    # Bytes are cut behind a line end, which is never part of another character in UTF-8.
+    try:
+        return body[:end].decode()
+    except UnicodeDecodeError:
+        return _text(body, file)
 
 
 def _shape(text: str, delimiter: str, rows: int) -> set[int]:

@@ -5,16 +5,16 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-import numpy.typing as npt
 
 from lossagg.arrays import BoolArray, FloatArray, IntArray
 from lossagg.records.dates import DateArray
-from lossagg.records.money import DecimalArray, exact_sum
+from lossagg.records.money import Money
 from lossagg.records.table import LossTable
-from lossagg.records.typed import by_word, word_codes
+from lossagg.records.words import WordArray, by_word, word_codes
 
 OPEN = ("open", "reopened", "re-opened")
 CLOSED = ("closed", "settled", "final")
+_DENSE = 8
 
 
 @dataclass(frozen=True)
@@ -35,11 +35,11 @@ class Events:
     """
 
     index: IntArray
-    identifier: npt.NDArray[np.object_]
+    identifier: WordArray
     date: DateArray
     last: DateArray
     amount: FloatArray
-    exact: DecimalArray
+    exact: Money
     threshold: FloatArray
     censored: BoolArray
     claims: IntArray
@@ -75,7 +75,7 @@ def group_events(table: LossTable, used: BoolArray) -> Events:
     reached = table.amount[rows] >= limit
     return Events(
         index=index,
-        identifier=table.word("event")[rows[first]] if size else np.zeros(0, dtype=np.object_),
+        identifier=table.word("event")[rows[first]],
         date=_extreme(np.minimum, date, index, size),
         last=_extreme(np.maximum, date, index, size),
         amount=amount,
@@ -99,27 +99,33 @@ def _number_events(table: LossTable, rows: IntArray) -> tuple[IntArray, IntArray
     alone = np.arange(len(rows), dtype=np.int64)
     if "event" not in table.words:
         return alone, alone
-    identifiers = table.words["event"][rows]
-    key = word_codes(identifiers) * (len(rows) + 1) + word_codes(table.word("line")[rows])
+    identifiers, lines = table.words["event"][rows], table.word("line")[rows]
+    key = word_codes(identifiers) * max(1, len(lines.names)) + word_codes(lines)
+    keys = len(identifiers.names) * max(1, len(lines.names))
     nameless = identifiers == ""
-    key[nameless] = -1 - alone[nameless]
-    _, first, index = np.unique(key, return_index=True, return_inverse=True)
-    return index.astype(np.int64), first.astype(np.int64)
+    if nameless.any():
+        key[nameless] = keys + alone[nameless]
+        keys += len(rows)
+    if keys > _DENSE * (len(rows) + 1):
+        _, first, index = np.unique(key, return_index=True, return_inverse=True)
+        return index.astype(np.int64), first.astype(np.int64)
+    occurs = np.zeros(keys, dtype=np.bool_)
+    occurs[key] = True
+    index = (np.cumsum(occurs) - 1)[key]
+    first = np.empty(int(np.count_nonzero(occurs)), dtype=np.int64)
+    first[index[::-1]] = alone[::-1]
+    return index, first
 
 
 def _sums(
     table: LossTable, rows: IntArray, index: IntArray, first: IntArray, claims: IntArray
-) -> tuple[DecimalArray, FloatArray]:
-    exact = table.exact[rows][first]
-    amount = table.amount[rows][first].copy()
-    several = claims > 1
-    parts: dict[int, list[int]] = {}
-    for at in np.flatnonzero(several[index]).tolist():
-        parts.setdefault(int(index[at]), []).append(at)
-    for event, members in parts.items():
-        exact[event] = exact_sum(table.exact[rows[members]])
-        amount[event] = float(exact[event])
-    return exact, amount
+) -> tuple[Money, FloatArray]:
+    """The exact sum of each event and its nearest float64; one claim alone is its own sum."""
+    amounts = table.exact[rows]
+    if len(first) == len(rows):
+        return amounts[first], table.amount[rows][first]
+    exact = amounts.by_group(index, len(first))
+    return exact, np.where(claims > 1, exact.to_floats(), table.amount[rows][first])
 
 
 def _extreme(function: np.ufunc, date: IntArray, index: IntArray, size: int) -> DateArray:

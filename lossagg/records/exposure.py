@@ -17,12 +17,13 @@ from lossagg.records.amounts import NumberStyle
 from lossagg.records.faults import Fault, Rows, list_faults
 from lossagg.records.findings import Finding, raise_stops
 from lossagg.records.headings import Wanted, heading_findings, nearest
-from lossagg.records.money import DecimalArray
+from lossagg.records.money import Money
 from lossagg.records.raw import Layout, RawTable
 from lossagg.records.sources import read_source
 from lossagg.records.table import chooser
 from lossagg.records.typed import TypedColumns, type_columns
 from lossagg.records.word_rules import canonical_lines
+from lossagg.records.words import WordArray
 
 JUMP = 10.0
 YEARS = (1900, 2200)
@@ -147,7 +148,7 @@ def read_exposure(
     raise_stops(list_faults(_faults(raw, typed, lines), places))
     live = np.flatnonzero(~raw.empty)
     year = typed.numbers["year"].values[live].astype(np.int64)
-    words = typed.words.get("line", np.full(len(raw.row), "", dtype=np.object_))[live]
+    words = np.asarray(typed.words.get("line", WordArray.empty(len(raw.row))))[live]
     order = np.lexsort((year, words.astype(str)))
     table = ExposureTable(
         source.file,
@@ -162,10 +163,9 @@ def read_exposure(
 
 
 def _places(raw: RawTable, file: str) -> Rows:
-    none: DecimalArray = np.zeros(len(raw.row), dtype=np.object_)
     headings = {name: raw.headings[position] for name, position in raw.positions.items()}
-    texts = {name: column.text for name, column in raw.columns.items()}
-    return Rows(file, raw.sheet, raw.row, headings, texts, none)
+    cells = {name: column.cells for name, column in raw.columns.items()}
+    return Rows(file, raw.sheet, raw.row, headings, cells, Money.zeros(len(raw.row)))
 
 
 def _faults(raw: RawTable, typed: TypedColumns, lines: Sequence[str] | None) -> list[Fault]:
@@ -202,7 +202,9 @@ def _faults(raw: RawTable, typed: TypedColumns, lines: Sequence[str] | None) -> 
     ]
     if lines is not None and "line" in typed.words:
         known = canonical_lines(lines)
-        for name in sorted({word for word in typed.words["line"][live] if word.casefold() not in known}):
+        for name in sorted(
+            {word for word in typed.words["line"][live].present() if word.casefold() not in known}
+        ):
             mask = live & (typed.words["line"] == name)
             message = "the line is not one of the portfolio" if name else "the line is missing"
             faults.append(Fault("unknown-line", "stop", "line", mask, message, nearest(name, lines)))
@@ -210,7 +212,7 @@ def _faults(raw: RawTable, typed: TypedColumns, lines: Sequence[str] | None) -> 
 
 
 def _repeated(year: FloatArray, typed: TypedColumns, live: BoolArray) -> BoolArray:
-    words = typed.words.get("line", np.full(len(year), "", dtype=np.object_))
+    words = typed.words.get("line", WordArray.empty(len(year))).tolist()
     seen: set[tuple[float, str]] = set()
     repeated = np.zeros(len(year), dtype=np.bool_)
     for index in np.flatnonzero(live).tolist():

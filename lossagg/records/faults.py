@@ -12,7 +12,8 @@ import numpy as np
 from lossagg.arrays import BoolArray, IntArray
 from lossagg.records.amounts import MISSING
 from lossagg.records.findings import Action, Finding, counted, rows_in_words
-from lossagg.records.money import DecimalArray, exact_sum
+from lossagg.records.money import Money, exact_sum
+from lossagg.records.raw import cell_text
 
 LISTED = 20
 _SHOWN = 40
@@ -53,8 +54,8 @@ class Rows:
     sheet: str | None
     row: IntArray
     headings: Mapping[str, str]
-    texts: Mapping[str, Any]
-    exact: DecimalArray
+    cells: Mapping[str, Any]
+    exact: Money
 
 
 def list_fault(fault: Fault, rows: Rows) -> list[Finding]:
@@ -106,8 +107,8 @@ def show(text: str) -> str:
 
 def _one_row(fault: Fault, rows: Rows, index: int) -> Finding:
     value = None
-    if fault.column is not None and fault.column in rows.texts:
-        cell = rows.texts[fault.column][index].as_py()
+    if fault.column is not None and fault.column in rows.cells:
+        cell = cell_text(rows.cells[fault.column][index].as_py())
         value = cell.strip()[:_SHOWN] if fault.column in ("event", "line", "currency") else show(cell)
     if fault.column == "status":
         value = None

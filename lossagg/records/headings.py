@@ -12,7 +12,7 @@ from lossagg.errors import InputError, place
 from lossagg.records.findings import Finding
 
 MOST_COLUMNS = 10_000
-_INVISIBLE = re.compile("[\u200b\u200c\u200d\u2060\ufeff\u00ad]")
+INVISIBLE = re.compile("[\u200b\u200c\u200d\u2060\ufeff\u00ad]")
 _LIKE_DATA = re.compile(r"^[+-]?\d[\d.,]*$|^\d{1,4}[-/.]\d{1,2}[-/.]\d{1,4}")
 
 
@@ -26,7 +26,7 @@ class Wanted:
 
 def clean_text(text: str) -> str:
     """Bring text to one form: composed characters, no invisible ones, single spaces, none at the ends."""
-    return " ".join(_INVISIBLE.sub("", unicodedata.normalize("NFC", text)).split())
+    return " ".join(INVISIBLE.sub("", unicodedata.normalize("NFC", text)).split())
 
 
 def heading_key(heading: str) -> str:

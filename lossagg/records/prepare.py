@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import datetime as dt
 from dataclasses import dataclass, fields, replace
-from typing import TypeVar
+from typing import Any, TypeVar
 
 import numpy as np
 import numpy.typing as npt
@@ -26,6 +26,7 @@ from lossagg.records.rules import below_threshold
 from lossagg.records.steps import Step, log_steps, open_claims_caution, window_caution
 from lossagg.records.tolerance import check_tolerance
 from lossagg.records.trend import check_trend, trend_factor
+from lossagg.records.words import WordArray
 from lossagg.records.years import (
     Window,
     YearTable,
@@ -177,13 +178,18 @@ def _in_order(events: Events) -> Events:
     """Sort events by what they are, so that nothing later depends on the order of the rows."""
     keys = ("identifier", "claims", "censored", "threshold", "amount", "date")
     columns = [getattr(events, key) for key in keys]
-    order = np.lexsort([column.astype(str) if column.dtype == object else column for column in columns])
+    order = np.lexsort([_sortable(column) for column in columns])
     place_of = np.empty(len(order), dtype=np.int64)
     place_of[order] = np.arange(len(order))
     sorted_columns = {
         field.name: getattr(events, field.name)[order] for field in fields(events) if field.name != "index"
     }
     return Events(index=place_of[events.index], **sorted_columns)
+
+
+def _sortable(column: WordArray | npt.NDArray[Any]) -> npt.NDArray[Any]:
+    """Words in their alphabetical order, as numbers; anything else as it is."""
+    return column.ranks() if isinstance(column, WordArray) else column
 
 
 def _window(

@@ -1,4 +1,4 @@
-"""A table as read: text, row numbers and nothing interpreted. Every kind of file is brought to this form.
+"""A table as read: cells, row numbers and nothing interpreted. Every kind of file is brought to this form.
 
 Only the chosen columns are kept; of the others a fingerprint per row remains, so that rows repeated in
 every column can be told from rows that merely agree in the columns that are read.
@@ -6,15 +6,17 @@ every column can be told from rows that merely agree in the columns that are rea
 
 from __future__ import annotations
 
-from collections.abc import Callable, Hashable, Mapping, Sequence
+import datetime as dt
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
 
 from lossagg.arrays import BoolArray, IntArray
-from lossagg.errors import InputError
-from lossagg.records.findings import Finding, counted
+from lossagg.errors import InputError, place
+from lossagg.records.findings import Action, Finding, counted
+from lossagg.records.marks import as_marks, mark_column
 
 Choose = Callable[[Sequence[str], "str | None"], Mapping[str, int]]
 FIRST_ROW = 2
@@ -36,22 +38,50 @@ class Layout:
 
 
 @dataclass(frozen=True)
-class TextColumn:
-    """One column as text.
+class Column:
+    """One column as read.
 
     Args:
-        text: Arrow array of strings, without nulls; shape (rows,).
-        native: True where the file held a number or a date rather than text, written here with a
-            decimal point or as an ISO date whatever formats are declared; shape (rows,).
+        cells: Arrow array, shape (rows,): of strings without nulls, or of numbers or dates where the
+            file itself says that all cells are.
+        native: True where a cell written as text held a number or a date in the file, written here with
+            a decimal point or as an ISO date whatever formats are declared; shape (rows,).
     """
 
-    text: Any
+    cells: Any
     native: BoolArray
+
+    @property
+    def is_text(self) -> bool:
+        """Whether the cells are strings."""
+        import pyarrow as pa
+
+        return bool(pa.types.is_string(self.cells.type))
+
+    def as_text(self) -> Any:
+        """The cells as an Arrow array of strings, "" for nulls."""
+        import pyarrow as pa
+
+        return self.cells if self.is_text else pa.array(map(cell_text, self.cells.to_pylist()), pa.string())
+
+
+def cell_text(cell: Any) -> str:
+    """Write a cell as text: numbers with a decimal point and the digits that identify them, dates as ISO."""
+    if cell is None:
+        return ""
+    if isinstance(cell, bool):
+        return "TRUE" if cell else "FALSE"
+    if isinstance(cell, float):
+        return repr(cell).removesuffix(".0")
+    if isinstance(cell, dt.datetime):
+        plain = cell.time() == dt.time() and cell.tzinfo is None
+        return cell.date().isoformat() if plain else cell.isoformat()
+    return str(cell)
 
 
 @dataclass(frozen=True)
 class RawTable:
-    """The body of a table: chosen columns as text, with what the checks need to know of the rest.
+    """The body of a table: chosen columns, with what the checks need to know of the rest.
 
     Args:
         headings: every heading, as it stands in the file.
@@ -67,7 +97,7 @@ class RawTable:
 
     headings: tuple[str, ...]
     positions: Mapping[str, int]
-    columns: Mapping[str, TextColumn]
+    columns: Mapping[str, Column]
     row: IntArray
     empty: BoolArray
     fingerprint: IntArray
@@ -85,39 +115,33 @@ class TableBuilder:
     headings: tuple[str, ...]
     positions: Mapping[str, int]
     findings: list[Finding] = field(default_factory=list)
-    _text: dict[str, list[Any]] = field(default_factory=dict)
+    _cells: dict[str, list[Any]] = field(default_factory=dict)
     _native: dict[str, list[BoolArray]] = field(default_factory=dict)
     _empty: list[BoolArray] = field(default_factory=list)
     _fingerprint: list[IntArray] = field(default_factory=list)
     _foot: tuple[str, ...] = ()
 
-    def add(
-        self,
-        columns: Sequence[Sequence[str]],
-        native: Mapping[str, BoolArray] | None = None,
-        rows: Sequence[Hashable] | None = None,
-    ) -> None:
+    def add(self, columns: Sequence[Any], native: Mapping[str, BoolArray] | None = None) -> None:
         """Add a chunk.
 
         Args:
-            columns: every column of the file, as text.
-            native: {canonical name: True where the file held a number or a date}; None: nowhere.
-            rows: what identifies each row in all its columns; None: its cells.
+            columns: every column of the file, Arrow arrays of one length.
+            native: {canonical name: True where a cell of text held a number or a date}; None: nowhere.
         """
-        import pyarrow as pa
-
         count = len(columns[0])
-        empty = self._empty_rows(columns)
+        marks = np.zeros(count, dtype=np.uint64)
+        for column in columns:
+            mark_column(marks, column)
+        self._fingerprint.append(as_marks(marks))
         for name, position in self.positions.items():
-            self._text.setdefault(name, []).append(pa.array(columns[position], pa.string()))
-            marks = native[name] if native else np.zeros(count, dtype=np.bool_)
-            self._native.setdefault(name, []).append(marks)
+            self._cells.setdefault(name, []).append(columns[position])
+            held = native[name] if native else np.zeros(count, dtype=np.bool_)
+            self._native.setdefault(name, []).append(held)
+        empty = self._empty_rows(columns)
         self._empty.append(empty)
-        marked = map(hash, zip(*columns, strict=True) if rows is None else rows)
-        self._fingerprint.append(np.fromiter(marked, dtype=np.int64, count=count))
         filled = np.flatnonzero(~empty)
         if filled.size:
-            self._foot = tuple(column[int(filled[-1])] for column in columns)
+            self._foot = tuple(cell_text(column[int(filled[-1])].as_py()) for column in columns)
 
     def finish(self) -> RawTable:
         """Close the table, without the blank rows at its foot.
@@ -132,7 +156,7 @@ class TableBuilder:
         if not filled.size:
             raise InputError(
                 "the table has headings but no rows",
-                where=f"file {self.file}" + (f", sheet {self.sheet!r}" if self.sheet else ""),
+                where=place(file=self.file, sheet=self.sheet),
                 remedy="Export the records again; a portfolio without any loss needs no records file.",
             )
         rows = int(filled[-1]) + 1
@@ -140,10 +164,10 @@ class TableBuilder:
             self.note(
                 "blank-foot", f"{counted(len(empty) - rows, 'blank row')} at the foot ignored", "None needed."
             )
-        columns = {
-            name: TextColumn(pa.concat_arrays(chunks)[:rows], np.concatenate(self._native[name])[:rows])
-            for name, chunks in self._text.items()
-        }
+        columns = {}
+        for name in self.positions:
+            cells = pa.concat_arrays(self._cells.pop(name))[:rows]
+            columns[name] = Column(cells, np.concatenate(self._native.pop(name))[:rows])
         return RawTable(
             self.headings,
             self.positions,
@@ -158,18 +182,31 @@ class TableBuilder:
 
     def note(self, code: str, message: str, remedy: str, warn: bool = False) -> None:
         """Keep a finding about the file as a whole."""
-        action = "warn" if warn else "normalise"
+        action: Action = "warn" if warn else "normalise"
         self.findings.append(
-            Finding(code, action, self.file, None, None, None, message, remedy, sheet=self.sheet, count=0)  # type: ignore[arg-type]
+            Finding(code, action, self.file, None, None, None, message, remedy, sheet=self.sheet, count=0)
         )
 
-    def _empty_rows(self, columns: Sequence[Sequence[str]]) -> BoolArray:
+    def _empty_rows(self, columns: Sequence[Any]) -> BoolArray:
         # Rows with a first chosen cell are not empty; only the others need a look at every cell.
-        chosen = columns[next(iter(self.positions.values()))]
-        empty = np.zeros(len(chosen), dtype=np.bool_)
-        if all(map(str.strip, chosen)):
-            return empty
-        for index, cell in enumerate(chosen):
-            if not cell.strip():
-                empty[index] = not any(column[index].strip() for column in columns)
+        first = columns[next(iter(self.positions.values()))]
+        empty = _is_blank(first)
+        for column in columns:
+            at = np.flatnonzero(empty)
+            if not at.size:
+                break
+            empty[at] = _is_blank(column.take(at))
         return empty
+
+
+def _is_blank(column: Any) -> BoolArray:
+    """True where a cell is null or has no visible character; shape (rows,)."""
+    import pyarrow as pa
+    import pyarrow.compute as pc
+
+    if pa.types.is_string(column.type):
+        blank = pc.equal(pc.binary_length(pc.utf8_trim_whitespace(column)), 0).fill_null(True)
+    else:
+        blank = column.is_null()
+    mask: BoolArray = np.array(blank.to_numpy(zero_copy_only=False), dtype=np.bool_)
+    return mask

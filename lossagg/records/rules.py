@@ -147,10 +147,10 @@ def _dates(table: LossTable, terms: CheckTerms, live: BoolArray) -> list[Fault]:
             "Correct it, or the valuation date.",
         ),
     ]
-    word = table.word("line").astype(str)
+    word = table.word("line")
     for first_year in sorted(set(terms.first_years.values())):
         lines = [line for line, year in terms.first_years.items() if year == first_year]
-        mine = np.isin(word, lines)
+        mine = word.is_in(lines)
         begins = np.datetime64(f"{first_year:04d}-01-01")
         faults.append(
             Fault(

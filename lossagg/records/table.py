@@ -11,16 +11,17 @@ from typing import Any
 import numpy as np
 
 from lossagg.arrays import BoolArray, FloatArray, IntArray
-from lossagg.records.amounts import NumberStyle
+from lossagg.records.amounts import NumberStyle, as_mask
 from lossagg.records.changes import Change
 from lossagg.records.dates import DateArray
 from lossagg.records.faults import Fault, Rows, list_faults
 from lossagg.records.findings import Finding, raise_stops
 from lossagg.records.headings import Wanted, heading_findings, locate_columns
-from lossagg.records.money import DecimalArray, exact_sum
+from lossagg.records.money import Money, exact_sum
 from lossagg.records.raw import Choose, Layout, RawTable
 from lossagg.records.sources import Source, read_source
-from lossagg.records.typed import TypedColumns, WordArray, type_columns
+from lossagg.records.typed import TypedColumns, type_columns
+from lossagg.records.words import WordArray
 
 COLUMNS: Mapping[str, str] = {
     "amount": "number",
@@ -56,11 +57,11 @@ class LossTable:
         sha256: digest of the file.
         row: row of the file, headings being row 1; shape (rows,).
         headings: {canonical name: heading in the file}.
-        texts: {canonical name: cells as read}, Arrow arrays of shape (rows,).
+        cells: {canonical name: cells as read}, Arrow arrays of shape (rows,).
         numbers: {canonical name: float64}, NaN where there is no number; shape (rows,).
         dates: {canonical name: days}, NaT where there is no date; shape (rows,).
         words: {canonical name: text}, "" where there is none; shape (rows,).
-        exact: the amounts as written, as decimals, zero where there is none; shape (rows,).
+        exact: the amounts exactly as written, zero where there is none; shape (rows,).
         unreadable: True where the amount is no number; shape (rows,).
         blank: True for rows that carry no record: blank rows and a row of totals; shape (rows,).
         fingerprint: equal for rows equal in every column of the file; shape (rows,).
@@ -75,17 +76,22 @@ class LossTable:
     sha256: str
     row: IntArray
     headings: Mapping[str, str]
-    texts: Mapping[str, Any]
+    cells: Mapping[str, Any]
     numbers: Mapping[str, FloatArray]
     dates: Mapping[str, DateArray]
     words: Mapping[str, WordArray]
-    exact: DecimalArray
+    exact: Money
     unreadable: BoolArray
     blank: BoolArray
     fingerprint: IntArray
     faults: tuple[Fault, ...]
     findings: tuple[Finding, ...]
     changes: tuple[Change, ...] = ()
+
+    def __post_init__(self) -> None:
+        # Words may come as arrays of objects from a step that rewrote them; they are kept as codes.
+        words = {n: w if isinstance(w, WordArray) else WordArray.of(w) for n, w in self.words.items()}
+        object.__setattr__(self, "words", words)
 
     def __len__(self) -> int:
         """Number of rows read."""
@@ -116,11 +122,11 @@ class LossTable:
 
     def word(self, name: str) -> WordArray:
         """A column of words, all empty when the file does not have it; shape (rows,)."""
-        return self.words.get(name, np.full(len(self), "", dtype=np.object_))
+        return self.words[name] if name in self.words else WordArray.empty(len(self))
 
     def places(self) -> Rows:
         """What findings need to know of this table."""
-        return Rows(self.file, self.sheet, self.row, self.headings, self.texts, self.exact)
+        return Rows(self.file, self.sheet, self.row, self.headings, self.cells, self.exact)
 
 
 def read_losses(
@@ -186,7 +192,7 @@ def file_findings(source: Source, wanted: Wanted) -> list[Finding]:
     return [*raw.findings, *unread]
 
 
-def _assemble(source: Source, typed: TypedColumns, exact: DecimalArray, total: BoolArray) -> LossTable:
+def _assemble(source: Source, typed: TypedColumns, exact: Money, total: BoolArray) -> LossTable:
     raw = source.table
     amount = typed.numbers["amount"]
     unreadable = ~np.isfinite(amount.values)
@@ -197,7 +203,7 @@ def _assemble(source: Source, typed: TypedColumns, exact: DecimalArray, total: B
         sha256=source.sha256,
         row=raw.row,
         headings={name: raw.headings[position] for name, position in raw.positions.items()},
-        texts={name: column.text for name, column in raw.columns.items()},
+        cells={name: column.cells for name, column in raw.columns.items()},
         numbers=typed.values,
         dates=typed.dates,
         words=typed.words,
@@ -246,13 +252,15 @@ def _row_faults(raw: RawTable, typed: TypedColumns, total: BoolArray) -> list[Fa
     if "event" in raw.columns:
         import pyarrow.compute as pc
 
-        mask = pc.match_substring_regex(raw.columns["event"].text, pattern=_SCIENTIFIC)
+        words = typed.words["event"]
+        codes = np.flatnonzero(as_mask(pc.match_substring_regex(words.names, pattern=_SCIENTIFIC)))
+        mask = np.isin(words.codes, codes) if codes.size else np.zeros(len(words), dtype=np.bool_)
         faults.append(
             Fault(
                 "identifier-form",
                 "warn",
                 "event",
-                np.asarray(mask.to_numpy(zero_copy_only=False), dtype=np.bool_) & live,
+                mask & live,
                 "the event looks like an identifier that a spreadsheet turned into a number",
                 "Export identifiers as text; different ones may have become the same.",
             )
@@ -260,7 +268,7 @@ def _row_faults(raw: RawTable, typed: TypedColumns, total: BoolArray) -> list[Fa
     return faults
 
 
-def _total_row(raw: RawTable, typed: TypedColumns, exact: DecimalArray) -> BoolArray:
+def _total_row(raw: RawTable, typed: TypedColumns, exact: Money) -> BoolArray:
     """Recognise a row of totals at the foot.
 
     It is one if it is labelled so and lacks a date or equals the sum, or if it equals the sum of all

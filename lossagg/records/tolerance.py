@@ -9,7 +9,6 @@ import numpy as np
 from lossagg.arrays import BoolArray
 from lossagg.records.faults import Fault
 from lossagg.records.findings import Finding, RecordsError, counted
-from lossagg.records.money import exact_sum
 from lossagg.records.table import LossTable
 
 
@@ -33,8 +32,8 @@ def check_tolerance(
     if not faulty.any():
         return
     count = int(np.count_nonzero(faulty))
-    kept = exact_sum(amount.copy_abs() for amount in table.exact[used])
-    lost = exact_sum(amount.copy_abs() for amount in table.exact[faulty])
+    kept = table.exact[used].absolute().total()
+    lost = table.exact[faulty].absolute().total()
     shares = {
         "rows": count / max(1, count + int(np.count_nonzero(used))),
         "the money": float(lost / (kept + lost)) if lost else 0.0,

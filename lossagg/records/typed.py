@@ -5,20 +5,20 @@ The same typing serves loss records and exposures.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+import unicodedata
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
-import numpy as np
-import numpy.typing as npt
-
-from lossagg.arrays import BoolArray, FloatArray, IntArray
-from lossagg.records.amounts import Numbers, NumberStyle, is_missing, parse_numbers
+from lossagg.arrays import BoolArray, FloatArray
+from lossagg.records.amounts import MISSING, Numbers, NumberStyle, as_mask, is_missing, parse_numbers
 from lossagg.records.dates import DateArray, parse_dates
 from lossagg.records.faults import Fault
-from lossagg.records.raw import RawTable, TextColumn
-
-WordArray = npt.NDArray[np.object_]
+from lossagg.records.headings import INVISIBLE
+from lossagg.records.raw import Column, RawTable
+from lossagg.records.words import WordArray as WordArray
+from lossagg.records.words import by_word as by_word
+from lossagg.records.words import word_codes as word_codes
 
 _NUMBER_REMEDY = (
     'Write plain numbers with a decimal point, or declare the marks of the file: decimal = "," or '
@@ -71,24 +71,7 @@ def type_columns(
     return typed
 
 
-def word_codes(words: WordArray) -> IntArray:
-    """Number the different words of a column from 0, in the order in which they appear; shape (rows,)."""
-    import pyarrow as pa
-
-    codes: IntArray = pa.array(words, pa.string()).dictionary_encode().indices.to_numpy().astype(np.int64)
-    return codes
-
-
-def by_word(words: WordArray, test: Callable[[str], bool]) -> BoolArray:
-    """Apply a test to a column of words, once for each different word; shape (rows,)."""
-    import pyarrow as pa
-
-    codes = pa.array(words, pa.string()).dictionary_encode()
-    answers = np.array([test(word) for word in codes.dictionary.to_pylist()], dtype=np.bool_)
-    return answers[codes.indices.to_numpy()] if len(words) else np.zeros(0, dtype=np.bool_)
-
-
-def _number(typed: TypedColumns, name: str, column: TextColumn, style: NumberStyle, live: BoolArray) -> None:
+def _number(typed: TypedColumns, name: str, column: Column, style: NumberStyle, live: BoolArray) -> None:
     numbers = parse_numbers(column, style)
     typed.numbers[name] = numbers
     typed.faults += [
@@ -111,9 +94,7 @@ def _number(typed: TypedColumns, name: str, column: TextColumn, style: NumberSty
     ]
 
 
-def _date(
-    typed: TypedColumns, name: str, column: TextColumn, date_format: str | None, live: BoolArray
-) -> None:
+def _date(typed: TypedColumns, name: str, column: Column, date_format: str | None, live: BoolArray) -> None:
     dates = parse_dates(column, date_format)
     typed.dates[name] = dates.values
     form = f"in the declared format {date_format!r}" if date_format else "a date written YYYY-MM-DD"
@@ -157,36 +138,43 @@ def _date(
         )
 
 
-def _word(typed: TypedColumns, name: str, column: TextColumn, live: BoolArray) -> None:
-    import pyarrow as pa
+def _word(typed: TypedColumns, name: str, column: Column, live: BoolArray) -> None:
+    written = WordArray.of(column.as_text())
+    odd = _odd_words(written.names)
+    plain = {word: _plain_word(word) for word in written.names.filter(_arrow(odd)).to_pylist()}
+    marker = {word: text.lower() in MISSING for word, text in plain.items()}
+    typed.words[name] = written.rename(odd, ["" if marker[word] else text for word, text in plain.items()])
+    for code, message, words in (
+        (
+            "word-form",
+            f"the {name} is compared without outer spaces and invisible characters",
+            {word for word, text in plain.items() if text != word and not marker[word]},
+        ),
+        (
+            "marker",
+            f"the {name} carries a marker for 'not known' and counts as empty",
+            {word for word, text in plain.items() if marker[word] and text},
+        ),
+    ):
+        mask = written.is_in(words) & live
+        typed.faults.append(Fault(code, "normalise", name, mask, message, "None needed."))
+
+
+def _plain_word(word: str) -> str:
+    return INVISIBLE.sub("", unicodedata.normalize("NFC", word).strip())
+
+
+def _odd_words(names: Any) -> BoolArray:
+    """True for words that need a look: outer spaces, characters beyond ASCII, a marker for "not known"."""
     import pyarrow.compute as pc
 
-    text = pc.utf8_trim_whitespace(pc.utf8_normalize(column.text, form="NFC"))
-    visible = pc.replace_substring_regex(
-        text, pattern="[\u200b\u200c\u200d\u2060\ufeff\u00ad]", replacement=""
-    )
-    marker = is_missing(pc.utf8_lower(visible))
-    words: Any = pc.if_else(pa.array(marker), "", visible).to_numpy(zero_copy_only=False)
-    typed.words[name] = words
-    changed = np.asarray(pc.not_equal(column.text, visible).to_numpy(zero_copy_only=False), dtype=np.bool_)
-    written = np.asarray(
-        pc.greater(pc.utf8_length(visible), 0).to_numpy(zero_copy_only=False), dtype=np.bool_
-    )
-    typed.faults += [
-        Fault(
-            "word-form",
-            "normalise",
-            name,
-            changed & ~marker & live,
-            f"the {name} is compared without outer spaces and invisible characters",
-            "None needed.",
-        ),
-        Fault(
-            "marker",
-            "normalise",
-            name,
-            marker & written & live,
-            f"the {name} carries a marker for 'not known' and counts as empty",
-            "None needed.",
-        ),
-    ]
+    odd = ~as_mask(pc.string_is_ascii(names))
+    odd |= as_mask(pc.not_equal(pc.utf8_trim_whitespace(names), names))
+    odd |= is_missing(pc.utf8_lower(names))
+    return odd
+
+
+def _arrow(mask: BoolArray) -> Any:
+    import pyarrow as pa
+
+    return pa.array(mask)

@@ -12,7 +12,7 @@ from lossagg.records.faults import Fault
 from lossagg.records.findings import Finding
 from lossagg.records.headings import nearest
 from lossagg.records.table import LossTable
-from lossagg.records.typed import by_word
+from lossagg.records.words import by_word
 
 
 def status_faults(table: LossTable, live: BoolArray) -> list[Fault]:
@@ -85,7 +85,7 @@ def line_faults(table: LossTable, lines: tuple[str, ...]) -> list[Fault]:
     written, live = table.words["line"], ~table.blank
     known = canonical_lines(lines)
     unknown = by_word(written, lambda word: word.casefold() not in known)
-    names = sorted(set(written[live & unknown].tolist()))
+    names = written[live & unknown].present()
     faults = []
     for name in names:
         mask = live & (written == name)
@@ -96,7 +96,7 @@ def line_faults(table: LossTable, lines: tuple[str, ...]) -> list[Fault]:
 
 def pooled_lines(table: LossTable) -> list[Finding]:
     """Warn when a file taken for one line names several."""
-    names = sorted(set(table.word("line")[~table.blank].tolist()))
+    names = table.word("line")[~table.blank].present()
     if len(names) < 2:
         return []
     return [

@@ -7,7 +7,6 @@ so are packages that unpack to far more than they weigh.
 
 from __future__ import annotations
 
-import datetime as dt
 import re
 import zipfile
 import zlib
@@ -21,7 +20,7 @@ import numpy as np
 
 from lossagg.errors import InputError, place
 from lossagg.records.headings import nearest
-from lossagg.records.raw import FIRST_ROW, Choose, Layout, RawTable, TableBuilder
+from lossagg.records.raw import FIRST_ROW, Choose, Layout, RawTable, TableBuilder, cell_text
 
 MOST_BYTES = 4 * 1024**3
 MOST_RATIO = 200
@@ -61,6 +60,8 @@ def read_workbook(path: Path, layout: Layout, choose: Choose) -> RawTable:
 
 
 def _read_sheet(path: Path, sheet: Any, marks: dict[str, bool], choose: Choose) -> RawTable:
+    import pyarrow as pa
+
     rows = sheet.iter_rows(values_only=True)
     headings = _headings(next(rows, ()), path.name, sheet.title)
     positions = choose(headings, sheet.title)
@@ -77,7 +78,7 @@ def _read_sheet(path: Path, sheet: Any, marks: dict[str, bool], choose: Choose) 
     number = FIRST_ROW
     while chunk := list(islice(rows, _CHUNK)):
         table = [_fit(row, len(headings), number + i, path.name, sheet.title) for i, row in enumerate(chunk)]
-        columns = [[_text(cell) for cell in column] for column in zip(*table, strict=True)]
+        columns = [pa.array(map(cell_text, column), pa.string()) for column in zip(*table, strict=True)]
         native = {
             name: np.array([not isinstance(row[position], str) for row in table], dtype=np.bool_)
             for name, position in positions.items()
@@ -88,7 +89,7 @@ def _read_sheet(path: Path, sheet: Any, marks: dict[str, bool], choose: Choose) 
 
 
 def _headings(first: Sequence[Any], file: str, sheet: str) -> tuple[str, ...]:
-    cells = [_text(cell).strip() for cell in first]
+    cells = [cell_text(cell).strip() for cell in first]
     while cells and not cells[-1]:
         cells.pop()
     if not cells:
@@ -102,26 +103,13 @@ def _headings(first: Sequence[Any], file: str, sheet: str) -> tuple[str, ...]:
 
 def _fit(row: Sequence[Any], width: int, number: int, file: str, sheet: str) -> tuple[Any, ...]:
     """Cut or fill a row to the width of the headings; a value beyond them would be lost, so it stops."""
-    if any(cell is not None and _text(cell).strip() for cell in row[width:]):
+    if any(cell is not None and cell_text(cell).strip() for cell in row[width:]):
         raise InputError(
             f"a row has values to the right of the last of {width} headings",
             where=place(file=file, sheet=sheet, row=number),
             remedy="Give every column a heading, or clear the cells.",
         )
     return (*row[:width], *([None] * (width - len(row))))
-
-
-def _text(cell: Any) -> str:
-    """Write a cell as text: numbers with a decimal point and the digits that identify them, dates as ISO."""
-    if cell is None:
-        return ""
-    if isinstance(cell, bool):
-        return "TRUE" if cell else "FALSE"
-    if isinstance(cell, float):
-        return repr(cell).removesuffix(".0")
-    if isinstance(cell, dt.datetime):
-        return cell.isoformat() if cell.time() != dt.time() else cell.date().isoformat()
-    return str(cell)
 
 
 def _check_package(path: Path) -> None:

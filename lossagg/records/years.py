@@ -13,7 +13,7 @@ import numpy.typing as npt
 from lossagg.arrays import FloatArray, IntArray
 from lossagg.errors import InputError, place
 from lossagg.records.exposure import ExposureTable
-from lossagg.records.money import DecimalArray, exact_sum
+from lossagg.records.money import Money
 from lossagg.records.trend import trend_factor
 
 Moments = npt.NDArray[np.datetime64]
@@ -120,21 +120,21 @@ def exposures_of(window: Window, exposure: ExposureTable | None) -> FloatArray:
 
 
 def sum_by_year(
-    window: Window, year: IntArray, exact: DecimalArray, trended: FloatArray
+    window: Window, year: IntArray, exact: Money, trended: FloatArray
 ) -> tuple[FloatArray, FloatArray]:
     """Sums of the events of each year: as recorded, exact and rounded once; and trended.
 
     Args:
         window: the years.
         year: year of each event; shape (events,).
-        exact: events as recorded, as decimals; shape (events,).
+        exact: events as recorded, exactly; shape (events,).
         trended: events trended; shape (events,).
 
     Returns:
         Recorded and trended sums, each of shape (years,).
     """
     parts = [np.flatnonzero(year == each) for each in window.years]
-    recorded = np.array([float(exact_sum(exact[at])) for at in parts])
+    recorded = exact.by_group(year - window.first_year, len(window.years)).to_floats()
     return recorded, np.array([fsum(trended[at].tolist()) for at in parts])
 
 

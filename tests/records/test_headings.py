@@ -64,17 +64,15 @@ def test_doubled_heading_stops(read) -> None:
 
 
 def test_unread_columns_are_named_and_their_cells_never_shown(check) -> None:
-    checked = check(
-        "amount,date,person,recoverys\n1,2024-01-01,Jane Miller,0\n-5,2024-01-01,John Smith,0\n"
-    )
+    checked = check("amount,date,person,recoverys\n1,2024-01-01,Jane Miller,0\n-5,2024-01-01,John Smith,0\n")
     finding = next(f for f in checked.findings if f.code == "unread-columns")
     assert finding.message == "2 columns are not read: 'person', 'recoverys'"
     assert finding.remedy == "'recoverys' looks like 'recoveries': map it if it is."
     text = " ".join(f"{f} {f.to_dict()}" for f in checked.findings)
     assert "Miller" not in text
     assert "Smith" not in text
-    assert not hasattr(checked.table.texts, "person")
-    assert "person" not in checked.table.texts
+    assert not hasattr(checked.table.cells, "person")
+    assert "person" not in checked.table.cells
 
 
 def test_a_name_mapped_to_the_amount_is_not_echoed(read) -> None:

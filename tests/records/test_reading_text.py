@@ -225,7 +225,7 @@ def test_text_without_quotes_is_read_as_the_strict_reader_reads_it(
         except InputError as error:
             seen.append(str(error))
         else:
-            cells = {name: text.to_pylist() for name, text in table.texts.items()}
+            cells = {name: text.to_pylist() for name, text in table.cells.items()}
             seen.append((table.row.tolist(), cells, table.blank.tolist(), repr(table.findings)))
             different = len(set(rows[: len(table)]))
             assert len(set(table.fingerprint.tolist())) == different
