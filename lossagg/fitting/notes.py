@@ -32,10 +32,15 @@ class Note(str):
 
 
 def severity_notes(
-    model: SizeLaw, sample: Sample, values: Mapping[str, float], covariance: FloatArray, borrowed: str
+    model: SizeLaw,
+    sample: Sample,
+    values: Mapping[str, float],
+    covariance: FloatArray,
+    borrowed: str,
+    index_interval: tuple[float, float],
 ) -> tuple[Note, ...]:
     """Notes on a fit of one law; `borrowed` names a parameter read off the smallest loss, or is empty."""
-    notes = tail_notes(model, model.family, values, covariance)
+    notes = tail_notes(model, model.family, values, index_interval)
     if borrowed:
         text = (
             f"The {borrowed} {values[borrowed]:g} was read off the smallest loss; it counts as one "
@@ -60,19 +65,19 @@ def severity_notes(
 
 
 def tail_notes(
-    model: SizeLaw, family: str, values: Mapping[str, float], covariance: FloatArray, prefix: str = ""
+    model: SizeLaw, family: str, values: Mapping[str, float], index_interval: tuple[float, float]
 ) -> list[Note]:
     """Cautions about moments that do not exist and standard errors that are not regular.
 
     Args:
         model: the fitted law.
         family: family of its tail.
-        values, covariance: estimates by name and their covariance.
-        prefix: what the names of the tail's parameters begin with, "tail." in a splice.
+        values: estimates by name.
+        index_interval: 95 % interval of the tail index.
     """
     notes = []
     index = model.tail_index
-    low, high = tail_index_interval(family, values, covariance, prefix)
+    low, high = index_interval
     span = f"95 % interval {low:.3g} to {high:.3g}"
     if index <= 1:
         text = (
@@ -95,7 +100,7 @@ def tail_notes(
             "variance."
         )
         notes.append(Note("infinite-variance-possible", text))
-    shape = values.get(prefix + "shape") if family == "generalized-pareto" else None
+    shape = values.get("shape") if family == "generalized-pareto" else None
     if shape is not None and shape <= -0.5:
         text = (
             f"Shape {shape:.3g} is at most -0.5: maximum likelihood is not regular there and the "

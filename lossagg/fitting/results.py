@@ -14,6 +14,7 @@ from lossagg.errors import InputError
 from lossagg.families.base import CountLaw, Law, SizeLaw
 from lossagg.fitting.likelihood import Range
 from lossagg.fitting.notes import Note
+from lossagg.fitting.solution import Solution
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -137,11 +138,45 @@ class SeverityFit(Fit):
         model: the fitted size law, ground-up.
         censored: how many of the losses were censored at a policy limit.
         truncation: smallest and largest reporting threshold, or None where every loss was recorded.
+        solution: the likelihood and its maximum, for further questions; that of the tail in a splice.
+        tail_prefix: what the names of the solution's parameters begin with, "tail." in a splice.
     """
 
     model: SizeLaw
     censored: int
     truncation: tuple[float, float] | None
+    solution: Solution
+    tail_prefix: str = ""
+
+    def profile_interval(self, name: str, level: float = 0.95) -> tuple[float, float]:
+        """Interval of one parameter from the profile likelihood; prefer it to `interval` for few losses.
+
+        It is not symmetric, and it is open (`inf`) where the losses do not bound the parameter.
+
+        Args:
+            name: an estimated parameter; in a splice, one of the tail.
+            level: probability that the interval covers the parameter.
+
+        Raises:
+            InputError: a parameter held fixed, unknown, or of the body of a splice; a bad level.
+
+        Source: Venzon & Moolgavkar 1988, Applied Statistics 37.
+        """
+        known = [self.tail_prefix + parameter for parameter in self.solution.likelihood.ranges]
+        if name not in known:
+            raise InputError(
+                f"the {self.family} fit has no profile interval of this parameter",
+                value=name,
+                remedy=f"Choose one of {', '.join(known)}.",
+            )
+        return self.solution.interval(name.removeprefix(self.tail_prefix), level)
+
+    def tail_shape(self, level: float = 0.95) -> tuple[float, float, float] | None:
+        """1 / tail index, with its profile-likelihood interval: at 1 the mean, at 1/2 the variance ends.
+
+        None for a law whose moments all exist whatever its parameters.
+        """
+        return self.solution.tail_shape(level)
 
     def __repr__(self) -> str:
         text = f"SeverityFit({self.family}: {self._estimates()}; {self.observations} losses"

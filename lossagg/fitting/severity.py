@@ -24,9 +24,10 @@ from lossagg.fitting.jets import Jet, variables
 from lossagg.fitting.likelihood import SizeLikelihood, log_likelihood
 from lossagg.fitting.lognormal import LognormalLikelihood
 from lossagg.fitting.maximise import Maximum, Objective, evaluate, maximise
-from lossagg.fitting.notes import severity_notes
+from lossagg.fitting.notes import severity_notes, tail_index_interval
 from lossagg.fitting.results import SeverityFit
 from lossagg.fitting.sample import Sample, checked_losses, sample_of
+from lossagg.fitting.solution import Solution
 
 FAMILIES = (
     "exponential",
@@ -96,6 +97,8 @@ def fit_severity(
     complete[: len(covariance), : len(covariance)] = covariance
     values = dict(zip(names, [*parameters, *held.values()], strict=True))
     model = likelihood.law(**values)
+    solution = Solution(likelihood, sample, maximum)
+    span = index_interval(solution, values, complete)
     return SeverityFit(
         family=family,
         model=model,
@@ -109,8 +112,23 @@ def fit_severity(
         ranges=likelihood.ranges,
         censored=sample.censored,
         truncation=threshold_range(sample),
-        notes=severity_notes(model, sample, values, complete, _ORIGINS[family] if borrowed else ""),
+        solution=solution,
+        notes=severity_notes(model, sample, values, complete, _ORIGINS[family] if borrowed else "", span),
     )
+
+
+def index_interval(
+    solution: Solution, values: Mapping[str, float], covariance: FloatArray
+) -> tuple[float, float]:
+    """95 % interval of the tail index: from the profile likelihood, and from the standard errors where there
+    are so many losses that the two agree."""
+    if solution.sample.observations > _SEVERAL_STARTS:
+        return tail_index_interval(solution.likelihood.law.family, values, covariance)
+    shape = solution.tail_shape(0.95)
+    if shape is None:
+        return np.inf, np.inf
+    _, low, high = shape
+    return (1 / high if high > 0 else np.inf), (1 / low if low > 0 else np.inf)
 
 
 def likelihood_of(family: str, sample: Sample, fixed: Mapping[str, float]) -> tuple[SizeLikelihood, bool]:

@@ -26,6 +26,7 @@ from lossagg.fitting.sample import Sample, Weighted, checked_losses, sample_of
 from lossagg.fitting.severity import (
     climb,
     fit_severity,
+    index_interval,
     likelihood_of,
     natural_parameters,
     require_support,
@@ -144,6 +145,8 @@ def fit_spliced(
         ranges=_ranges(likelihood, tail_fit),
         censored=int(marks.sum()),
         truncation=(float(reported.min()), float(reported.max())) if reported.any() else None,
+        solution=tail_fit.solution,
+        tail_prefix="tail.",
         notes=_notes(model, tail_fit, threshold),
     )
 
@@ -228,7 +231,8 @@ def _joined(joint: FloatArray, tail: FloatArray, parts: int) -> FloatArray:
 
 
 def _notes(model: Spliced, tail_fit: SeverityFit, threshold: float) -> tuple[Note, ...]:
-    notes = tail_notes(model, tail_fit.family, tail_fit.parameters, tail_fit.covariance)
+    span = index_interval(tail_fit.solution, tail_fit.parameters, tail_fit.covariance)
+    notes = tail_notes(model, tail_fit.family, tail_fit.parameters, span)
     exact = tail_fit.observations - tail_fit.censored
     if exact < FEW:
         text = (

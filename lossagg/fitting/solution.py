@@ -1,0 +1,75 @@
+"""What a fit was made from and where it ended: enough to ask the likelihood further questions."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from lossagg.fitting.classic_laws import ParetoLikelihood
+from lossagg.fitting.excess_laws import (
+    BurrLikelihood,
+    GeneralizedParetoLikelihood,
+    LomaxLikelihood,
+)
+from lossagg.fitting.jets import Jet, exp, log, variables
+from lossagg.fitting.likelihood import SizeLikelihood, log_likelihood
+from lossagg.fitting.maximise import Maximum
+from lossagg.fitting.profile import profile_interval
+from lossagg.fitting.sample import Sample
+
+
+@dataclass(frozen=True, eq=False, repr=False)
+class Solution:
+    """A likelihood, the losses it was maximised on, and the certified maximum.
+
+    Attributes:
+        likelihood: of the family, in its own coordinates.
+        sample: the losses, in units of the sample's scale.
+        maximum: where the climb ended.
+    """
+
+    likelihood: SizeLikelihood
+    sample: Sample
+    maximum: Maximum
+
+    def objective(self, point: tuple[Jet, ...]) -> Jet:
+        """The log-likelihood as a jet of the coordinates."""
+        return log_likelihood(self.likelihood, self.sample, point)
+
+    def interval(self, name: str, level: float) -> tuple[float, float]:
+        """Profile-likelihood interval of one estimated parameter, in money where it is an amount.
+
+        A parameter above zero is profiled by its logarithm, and the alpha of the Lomax and the Burr law by
+        its inverse, whose zero is the limit of endless alpha: that end is `inf` then.
+        """
+        place = list(self.likelihood.ranges).index(name)
+        kind = self.likelihood.ranges[name]
+        inverse = name == "alpha" and isinstance(self.likelihood, LomaxLikelihood | BurrLikelihood)
+
+        def quantity(point: tuple[Jet, ...]) -> Jet:
+            inner = self.likelihood.inner(point)
+            if inverse:
+                return inner[0]
+            value = self.likelihood.natural(inner, self.sample.scale)[place]
+            return log(value) if kind == "positive" else value
+
+        low, high = profile_interval(self.objective, quantity, self.maximum, level)
+        if inverse:
+            return 1.0 / high, (1.0 / low if low > 0 else np.inf)
+        return (float(np.exp(low)), float(np.exp(high))) if kind == "positive" else (low, high)
+
+    def tail_shape(self, level: float) -> tuple[float, float, float] | None:
+        """The extreme value index of the law (1 / tail index) with its profile interval; None for families
+        whose moments all exist whatever their parameters."""
+        if not isinstance(self.likelihood, ParetoLikelihood | GeneralizedParetoLikelihood | BurrLikelihood):
+            return None
+
+        def quantity(point: tuple[Jet, ...]) -> Jet:
+            inner = self.likelihood.inner(point)
+            if isinstance(self.likelihood, ParetoLikelihood):
+                return exp(-log(inner[0]))
+            return inner[0] / inner[1] if isinstance(self.likelihood, BurrLikelihood) else inner[0]
+
+        value = float(quantity(variables(self.maximum.point)).value[0])
+        return (value, *profile_interval(self.objective, quantity, self.maximum, level))
