@@ -190,7 +190,7 @@ def _line_of(text: str, delimiter: str, record: int) -> int:
 
 def _coding(data: bytes, file: str, encoding: str | None) -> _Coding:
     """The encoding of the file: declared, or by its mark, else UTF-8."""
-    if not data.strip():
+    if not data or data.isspace():
         raise InputError("the file is empty", where=place(file=file), remedy="Export the records again.")
     mark = next((name for bytes_, name in _MARKS if data.startswith(bytes_)), None)
     marked = (mark or "").removesuffix("-sig")

@@ -101,7 +101,7 @@ def _number_events(table: LossTable, rows: IntArray) -> tuple[IntArray, IntArray
         return alone, alone
     identifiers, lines = table.words["event"][rows], table.word("line")[rows]
     key = word_codes(identifiers) * max(1, len(lines.names)) + word_codes(lines)
-    keys = len(identifiers.names) * max(1, len(lines.names))
+    keys = len(identifiers.names) * max(1, len(lines.names)) + 1
     nameless = identifiers == ""
     if nameless.any():
         key[nameless] = keys + alone[nameless]

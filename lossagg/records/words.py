@@ -5,7 +5,7 @@ Files have few lines, statuses and currencies and many rows; rules look at each 
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable
+from collections.abc import Callable, Iterable, Iterator
 from dataclasses import dataclass
 from typing import Any, overload
 
@@ -82,6 +82,10 @@ class WordArray:
         """The words as a NumPy array of a kind; shape (rows,)."""
         return self.__array__(kind)
 
+    def __iter__(self) -> Iterator[str]:
+        """The words, row by row."""
+        return iter(self.tolist())
+
     def tolist(self) -> list[str]:
         """The words, row by row."""
         words: list[str] = self.__array__().tolist()
@@ -150,8 +154,13 @@ class WordArray:
 
 
 def word_codes(words: WordArray) -> IntArray:
-    """A number from 0 for each different word of a column; shape (rows,)."""
-    return words.codes.astype(np.int64)
+    """Number the different words of a column from 0, without gaps; shape (rows,)."""
+    occurs = np.zeros(len(words.names), dtype=np.bool_)
+    occurs[words.codes] = True
+    if occurs.all():
+        return words.codes.astype(np.int64)
+    codes: IntArray = (np.cumsum(occurs) - 1)[words.codes]
+    return codes
 
 
 def by_word(words: WordArray, test: Callable[[str], bool]) -> BoolArray:
