@@ -31,6 +31,7 @@ _COARSE_POINTS = 2**13
 _LEAST_POINTS = 2**15
 _EASY_POINTS = 2**18
 _PASSES = 4
+_CLOSE = 1.1
 
 
 class BracketWarning(LossaggWarning):
@@ -114,7 +115,7 @@ class Fourier(ExactEngine):
         if span is not None and coarse.points(span, LEAST_REACH) <= MOST_POINTS:
             return _Pass.over(compound, span, _far_points(coarse, span)).loss()
         best = self._refined(compound, coarse)
-        missed = [miss for miss in best.widths(coarse) if miss[1] > miss[2] * self.accuracy]
+        missed = [miss for miss in best.widths(coarse) if miss[1] > _CLOSE * miss[2] * self.accuracy]
         if missed:
             level, width, factor = max(missed, key=lambda miss: miss[1] / miss[2])
             warnings.warn(
@@ -151,10 +152,10 @@ class Fourier(ExactEngine):
                 fitted = step
             current = _Pass.over(compound, fitted, _far_points(coarse, fitted))
             worst = max(width / (factor * self.accuracy) for _, width, factor in current.widths(coarse))
-            if best is not None and worst > 0.8 * shortfall:
+            if best is not None and worst > max(0.8 * shortfall, _CLOSE):
                 return best if worst >= shortfall else current
             best, shortfall = current, worst
-            if worst <= 1.0 or current.points > 0.9 * MOST_POINTS:
+            if worst <= _CLOSE or current.points > 0.9 * MOST_POINTS:
                 return current
             step = 0.9 * current.step / worst
         return best if best is not None else current

@@ -25,6 +25,7 @@ from lossagg.engines.running import running_sums
 from lossagg.engines.tail import Tail
 
 _ON_POINT = 1e-9
+_JUMP = 0.25
 
 
 @dataclass(frozen=True, repr=False, eq=False)
@@ -84,30 +85,48 @@ class LatticeLoss(BracketedAnnualLoss):
         k = self.points - int(np.searchsorted(self._survival[::-1], tail + self.tie, side="right"))
         if k == 0 or self._survival[k] + self.atoms[k] > tail + self.tie:
             return k * self.step
-        return (k - 1 + self._crossing(k - 1, tail - float(self._atoms_above[k - 1]))) * self.step
+        value = (k - 1 + self._crossing(k - 1, tail - float(self._atoms_above[k - 1]))) * self.step
+        return min(max(value, self.low.value_at_risk(level)), self.high.value_at_risk(level))
+
+    def tail_value_at_risk(self, level: float) -> float:
+        """VaR + E[(S - VaR)+] / (1 - level), inside its bracket; `inf` where the mean is."""
+        value = super().tail_value_at_risk(level)
+        return min(max(value, self.low.tail_value_at_risk(level)), self.high.tail_value_at_risk(level))
 
     def layer_mean(self, low: float, high: float = np.inf) -> float:
         """E[min((S - low)+, high - low)]; with `high` infinite, the exact mean less the integral below."""
-        if high == np.inf and low < self.top:
-            return max(self.compound.mean - self._area(low), 0.0)
-        inside = self._area(min(high, self.top)) - self._area(min(low, self.top))
-        return max(inside, 0.0) + self._tail.layer_mean(max(low, self.top), high)
+        value = self._layer_mean(low, high)
+        return min(max(value, self.low.layer_mean(low, high)), self.high.layer_mean(low, high))
+
+    def _layer_mean(self, low: float, high: float) -> float:
+        if low >= self.top:
+            return self._tail.layer_mean(low, high)
+        if high <= self.top:
+            return self._area(high) - self._area(low)
+        if self.compound.mean == np.inf:
+            if high == np.inf:
+                return np.inf
+            return self._area(self.top) - self._area(low) + self._tail.layer_mean(self.top, high)
+        return self.compound.mean - self._area(low) - self._tail.layer_mean(high, np.inf)
 
     def layer_second_moment(self, low: float, high: float = np.inf) -> float:
         """E[min((S - low)+, high - low)**2]; with `high` infinite, from the exact second moment."""
-        if high == np.inf and low < self.top:
-            if self.compound.variance == np.inf:
-                return np.inf
-            square = self.compound.second_moment - self._moment(low) - 2.0 * low * self.layer_mean(low)
+        if low >= self.top:
+            return self._tail.layer_second_moment(low, high)
+        if high <= self.top:
+            square = self._moment(high) - self._moment(low) - 2.0 * low * self.layer_mean(low, high)
             return max(square, 0.0)
-        split = float(np.clip(self.top, low, high))
-        inside = 0.0
-        if low < split:
-            inside = (
-                self._moment(split) - self._moment(low) - 2.0 * low * (self._area(split) - self._area(low))
-            )
-        across = 2.0 * (split - low) * self._tail.layer_mean(split, high) if low < split < high else 0.0
-        return max(inside, 0.0) + across + self._tail.layer_second_moment(split, high)
+        if self.compound.variance == np.inf:
+            if high == np.inf:
+                return np.inf
+            across = 2.0 * (self.top - low) * self._tail.layer_mean(self.top, high)
+            beyond = self._tail.layer_second_moment(self.top, high)
+            return self.layer_second_moment(low, self.top) + across + beyond
+        square = self.compound.second_moment - self._moment(low) - 2.0 * low * self.layer_mean(low)
+        if high < np.inf:
+            square -= self._tail.layer_second_moment(high, np.inf)
+            square -= 2.0 * (high - low) * self._tail.layer_mean(high, np.inf)
+        return max(square, 0.0)
 
     @cached_property
     def _atoms_above(self) -> FloatArray:
@@ -122,13 +141,24 @@ class LatticeLoss(BracketedAnnualLoss):
         return self.continuous - self.below[0] - running_sums(self.density)
 
     @cached_property
+    def _density_right(self) -> FloatArray:
+        """The density just right of the points: at a point where it jumps, that of the next point."""
+        after = np.append(self.density[1:], self.density[-1])
+        jumps = np.abs(after - self.density) > _JUMP * np.abs(self.density)
+        return np.where(jumps, np.maximum(after, 0.0), self.density)
+
+    @cached_property
     def _rest_above(self) -> FloatArray:
         """P(S > kh and S is no atom), non-increasing."""
         density = self.density
         before = np.concatenate(([self.below[0]], density[:-1]))
         after = np.append(density[1:], density[-1])
-        above = self._density_above + density / 2 + (after - before) / 24
+        right = self._density_right
+        slope = np.where(right == density, after - before, 0.0)
+        above = self._density_above + right / 2 + slope / 24
         above[0] = self.continuous
+        # Where the density is too steep for the step, the bracket still knows where the function runs.
+        above = np.clip(above, self.low.survival - self._atoms_above, self.high.survival - self._atoms_above)
         return np.minimum.accumulate(np.clip(above, 0.0, self.continuous))
 
     @cached_property
@@ -148,7 +178,7 @@ class LatticeLoss(BracketedAnnualLoss):
     def _areas(self) -> FloatArray:
         """E[min(S, kh)], the integral of the survival function from 0 to each point."""
         above = self._density_above + self._atoms_above
-        areas = self.below[1] + running_sums(above) - above - self.density / 12
+        areas = self.below[1] + running_sums(above) - above - self._density_right / 12
         areas[0] = 0.0
         return np.maximum(self.step * areas, 0.0)
 
@@ -157,7 +187,7 @@ class LatticeLoss(BracketedAnnualLoss):
         """E[min(S, kh)**2], the integral of 2 z P(S > z) from 0 to each point."""
         index = np.arange(float(self.points))
         odd = (2.0 * index + 1.0) * (self._density_above + self._atoms_above)
-        moments = self.below[2] + running_sums(odd) - odd - index * self.density / 6
+        moments = self.below[2] + running_sums(odd) - odd - index * self._density_right / 6
         moments[0] = 0.0
         return np.maximum(self.step**2 * moments, 0.0)
 

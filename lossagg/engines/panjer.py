@@ -94,7 +94,7 @@ class Panjer(ExactEngine):
             below=(0.0, 0.0, 0.0),
             atoms=atoms,
             continuous=continuous,
-            tie=slack,
+            tie=slack / 64.0,
             low=low,
             high=high,
         )

@@ -2,8 +2,7 @@
 
 Where the payment is a straight line of the loss, its distribution is the size law's, moved and
 stretched, and every integral of it is a difference of limited means or expected excesses of the size
-law. Of the two the expected excess keeps the digits of the far tail; the limited mean is taken where
-the mean is infinite or so far out that it would swallow the digits of the body.
+law.
 """
 
 from __future__ import annotations
@@ -16,7 +15,6 @@ import numpy as np
 from lossagg.arrays import FloatArray
 from lossagg.families.base import SizeLaw
 
-_HEAVY = 1.2
 _ALL_ATOMS = 1e-12
 
 
@@ -52,18 +50,46 @@ class ContinuousPart:
         above = np.append(np.cumsum(chances[::-1])[::-1], 0.0)
         return np.asarray(np.maximum(survival - above[np.searchsorted(amounts, x, side="right")], 0.0))
 
-    def primitive(self, x: FloatArray) -> FloatArray:
-        """A function whose differences are the integrals of `sf`."""
-        amounts, chances = self.atoms
-        if self.severity.tail_index < _HEAVY:
-            primitive = np.asarray(self.severity.limited_mean(x))
-            for amount, chance in zip(amounts, chances, strict=True):
-                primitive = primitive - chance * np.minimum(x, amount)
-            return primitive
-        primitive = -np.asarray(self.severity.expected_excess(x))
-        for amount, chance in zip(amounts, chances, strict=True):
-            primitive = primitive + chance * np.maximum(amount - x, 0.0)
-        return primitive
+    def areas(self, x: FloatArray) -> FloatArray:
+        """The integral of `sf` over each interval between monotone amounts, shape (n - 1,).
+
+        Differences of the limited mean where that is the smaller, of the expected excess beyond: each
+        keeps the digits that the other would lose.
+        """
+        near = x <= self._half
+        split = int(near.sum())
+        if split in (0, len(x)):
+            return np.abs(np.diff(self._limited_mean(x) if split else self._expected_excess(x)))
+        if not near[0]:
+            return self.areas(x[::-1])[::-1]
+        below = np.diff(self._limited_mean(x[: split + 1]))
+        return np.append(below, -np.diff(self._expected_excess(x[split:])))
+
+    @cached_property
+    def _half(self) -> float:
+        """The amount up to which half the mean comes from, roughly; `inf` for an infinite mean."""
+        mean = self.severity.mean()
+        if mean == np.inf:
+            return np.inf
+        low, high = 0.0, mean
+        for _ in range(30):
+            middle = (low + high) / 2
+            low, high = (
+                (low, middle) if float(self.severity.limited_mean(middle)) > mean / 2 else (middle, high)
+            )
+        return high
+
+    def _limited_mean(self, x: FloatArray) -> FloatArray:
+        limited = np.asarray(self.severity.limited_mean(x))
+        for amount, chance in zip(*self.atoms, strict=True):
+            limited = limited - chance * np.minimum(x, amount)
+        return limited
+
+    def _expected_excess(self, x: FloatArray) -> FloatArray:
+        excess = np.asarray(self.severity.expected_excess(x))
+        for amount, chance in zip(*self.atoms, strict=True):
+            excess = excess - chance * np.maximum(amount - x, 0.0)
+        return excess
 
     def limited_second_moment(self, x: float) -> float:
         """E[min(X, x)**2; X is no atom]; `inf` for an infinite x where the moment does not exist."""
@@ -132,7 +158,7 @@ class Stretch:
         if last - first < 2:
             return area
         payments = np.clip(edges[first:last], low, high)
-        inside = np.abs(self.slope * np.diff(self.losses.primitive(self._loss_at(payments))))
+        inside = abs(self.slope) * self.losses.areas(self._loss_at(payments))
         if self.slope < 0:
             inside = self.above_start * np.diff(payments) - inside
         elif self.above_end > 0:
@@ -145,7 +171,7 @@ class Stretch:
         if self.end == np.inf and self.losses.severity.tail_index <= 2:
             return np.inf
         edges = np.array([self.start, self.end])
-        first = float(np.diff(self.losses.primitive(edges))[0])
+        first = float(self.losses.areas(edges)[0])
         squares = self.losses.limited_second_moment(self.end) - self.losses.limited_second_moment(self.start)
         if self.above_end > 0:
             first -= (self.end - self.start) * self.above_end
