@@ -288,7 +288,8 @@ def _places_of_text(text: Any) -> npt.NDArray[np.int8]:
     point = pc.find_substring(text, ".").to_numpy(zero_copy_only=False)
     places = np.where(point < 0, 0, length - point - 1)
     certain = (length <= _DIGITS_KEPT) & (places >= 0)
-    certain &= ~as_mask(pc.match_substring_regex(text, pattern="[eE]"))
+    for exponent in ("e", "E"):
+        certain &= pc.find_substring(text, exponent).to_numpy(zero_copy_only=False) < 0
     return np.where(certain, places, -1).astype(np.int8)
 
 

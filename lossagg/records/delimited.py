@@ -24,7 +24,7 @@ if TYPE_CHECKING:
     from _csv import Reader
 
 DELIMITERS = {",": "comma", ";": "semicolon", "\t": "tab", "|": "bar"}
-MOST_BYTES = 4 * 1024**3
+MOST_BYTES = 2 * 1024**3
 _CHUNK = 50_000
 _SNIFFED = 200
 _MARKS = (

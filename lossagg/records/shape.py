@@ -125,11 +125,9 @@ def _is_round(amounts: FloatArray) -> BoolArray:
 
 def _near_duplicates(table: LossTable, used: BoolArray) -> list[tuple[str, str, str, int]]:
     """Rows of one date and amount that are not the same row, whatever their event."""
-    rows = np.flatnonzero(used)
+    rows = table.alike[used[table.alike]]
     date, amount = table.date[rows].astype(np.int64), table.amount[rows]
     mark = table.fingerprint[rows]
-    again = _repeated(date, amount)
-    rows, date, amount, mark = rows[again], date[again], amount[again], mark[again]
     order = np.lexsort((rows, amount, date))
     date, amount, mark = date[order], amount[order], mark[order]
     twin = (date[1:] == date[:-1]) & (amount[1:] == amount[:-1]) & (mark[1:] != mark[:-1])
@@ -146,18 +144,6 @@ def _near_duplicates(table: LossTable, used: BoolArray) -> list[tuple[str, str, 
             len(at),
         )
     ]
-
-
-def _repeated(date: IntArray, amount: FloatArray) -> IntArray:
-    """Positions that may share date and amount with another one: few, found by one number for both."""
-    # 2**64 over the golden ratio spreads the days over all bits (Knuth 1998, vol. 3, 6.4).
-    key = amount.view(np.uint64) ^ (date.view(np.uint64) * np.uint64(0x9E3779B97F4A7C15))
-    order = np.argsort(key)
-    same = key[order][1:] == key[order][:-1]
-    twin = np.zeros(len(key), dtype=np.bool_)
-    twin[order[1:][same]] = True
-    twin[order[:-1][same]] = True
-    return np.flatnonzero(twin)
 
 
 def _long_events(events: Events, rows: IntArray) -> list[tuple[str, str, str, int]]:

@@ -3,8 +3,12 @@
 from __future__ import annotations
 
 import hashlib
+import os
+from collections.abc import Iterator
+from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
+from typing import BinaryIO
 
 from lossagg.errors import EnvironmentFault, InputError, place
 from lossagg.records.delimited import MOST_BYTES, read_delimited
@@ -47,17 +51,12 @@ def read_source(path: Path, layout: Layout, choose: Choose) -> Source:
     """
     suffix = path.suffix.lower()
     kind = _kind(suffix, path.name)
-    head, digest, size = _inspect(path)
+    if kind == "text":
+        return _read_text(path, layout, choose)
+    head, digest, _ = _inspect(path)
     _check_content(head, kind, path.name)
     _check_layout(layout, kind, path.name)
-    if kind == "text":
-        if size > MOST_BYTES:
-            raise InputError(
-                f"the file has {size} bytes", where=place(file=path.name), remedy="Convert it to Parquet."
-            )
-        data = path.read_bytes()
-        table = read_delimited(data, path.name, layout, choose)
-    elif kind == "workbook":
+    if kind == "workbook":
         from lossagg.records.workbook import read_workbook
 
         table = read_workbook(path, layout, choose)
@@ -66,12 +65,38 @@ def read_source(path: Path, layout: Layout, choose: Choose) -> Source:
 
         table = read_parquet(path, choose)
     if _inspect(path)[1] != digest:
-        raise InputError(
-            "the file changed while it was read",
-            where=place(file=path.name),
-            remedy="Wait until it is written completely, then run again.",
-        )
+        raise _unsettled(path.name)
     return Source(path.name, digest, table)
+
+
+def _read_text(path: Path, layout: Layout, choose: Choose) -> Source:
+    """Read a text file in one go: what is parsed is what the digest is of."""
+    before = _status(path)
+    _check_layout(layout, "text", path.name)
+    if before.st_size > MOST_BYTES:
+        raise InputError(
+            f"the file has {before.st_size} bytes",
+            where=place(file=path.name),
+            remedy=f"Convert it to Parquet; text is read up to {MOST_BYTES} bytes.",
+        )
+    with _opened(path) as stream:
+        data = stream.read()
+    _check_content(data[:16], "text", path.name)
+    table = read_delimited(data, path.name, layout, choose)
+    after = _status(path)
+    if (after.st_size, after.st_mtime_ns) != (before.st_size, before.st_mtime_ns) or len(
+        data
+    ) != after.st_size:
+        raise _unsettled(path.name)
+    return Source(path.name, hashlib.sha256(data).hexdigest(), table)
+
+
+def _unsettled(file: str) -> InputError:
+    return InputError(
+        "the file changed while it was read",
+        where=place(file=file),
+        remedy="Wait until it is written completely, then run again.",
+    )
 
 
 def _kind(suffix: str, file: str) -> str:
@@ -98,12 +123,24 @@ def _kind(suffix: str, file: str) -> str:
 
 def _inspect(path: Path) -> tuple[bytes, str, int]:
     """The first bytes, the digest and the size of a file, read in blocks."""
+    with _opened(path) as stream:
+        head = stream.read(16)
+        stream.seek(0)
+        digest = hashlib.file_digest(stream, "sha256").hexdigest()
+        return head, digest, stream.tell()
+
+
+def _status(path: Path) -> os.stat_result:
+    with _opened(path) as stream:
+        return os.fstat(stream.fileno())
+
+
+@contextmanager
+def _opened(path: Path) -> Iterator[BinaryIO]:
+    """Open a file for reading; what the system says against it becomes an error a reader can act on."""
     try:
         with path.open("rb") as stream:
-            head = stream.read(16)
-            stream.seek(0)
-            digest = hashlib.file_digest(stream, "sha256").hexdigest()
-            return head, digest, stream.tell()
+            yield stream
     except (FileNotFoundError, IsADirectoryError, NotADirectoryError) as error:
         raise InputError(
             "there is no such file", where=place(file=path.name), remedy="Check its name and folder."

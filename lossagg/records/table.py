@@ -5,6 +5,7 @@ from __future__ import annotations
 import re
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from functools import cached_property
 from pathlib import Path
 from typing import Any
 
@@ -115,6 +116,17 @@ class LossTable:
     def date(self) -> DateArray:
         """Loss dates; NaT where missing; shape (rows,)."""
         return self.dates["date"]
+
+    @cached_property
+    def alike(self) -> IntArray:
+        """Positions of the rows that share date and amount with another row, in their order."""
+        # One number for both; 2**64 over the golden ratio spreads the days over all bits (Knuth 1998,
+        # The Art of Computer Programming, vol. 3, 6.4).
+        days = self.date.astype(np.int64).view(np.uint64) * np.uint64(0x9E3779B97F4A7C15)
+        key = np.nan_to_num(self.amount, nan=-1.0).view(np.uint64) ^ days
+        ordered = np.sort(key)
+        again = ordered[1:][ordered[1:] == ordered[:-1]]
+        return np.flatnonzero(np.isin(key, again)) if again.size else np.zeros(0, dtype=np.int64)
 
     def number(self, name: str) -> FloatArray:
         """A column of numbers, all NaN when the file does not have it; shape (rows,)."""

@@ -122,14 +122,16 @@ def canonical_lines(lines: Sequence[str]) -> Mapping[str, str]:
 
 def repeated_faults(table: LossTable, live: BoolArray) -> list[Fault]:
     """Rows equal in every column: with an event identifier a copy, without one perhaps a twin."""
-    marks = table.fingerprint
-    order = np.argsort(marks, kind="stable")
-    same = np.ones(len(table) - 1, dtype=np.bool_)
+    rows = table.alike
+    date, amount = table.date[rows].astype(np.int64), np.nan_to_num(table.amount[rows], nan=-1.0)
+    marks = table.fingerprint[rows]
+    order = np.lexsort((rows, marks))
+    same = np.ones(max(len(rows) - 1, 0), dtype=np.bool_)
     # The date and the amount guard against two different rows whose fingerprints agree by chance.
-    for cells in (marks, table.date.astype(np.int64), np.nan_to_num(table.amount, nan=-1.0)):
+    for cells in (marks, date, amount):
         same &= cells[order][1:] == cells[order][:-1]
     again = np.zeros(len(table), dtype=np.bool_)
-    again[order[1:]] = same
+    again[rows[order[1:][same]]] = True
     named = table.word("event") != ""
     return [
         Fault(
