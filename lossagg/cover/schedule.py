@@ -38,6 +38,16 @@ class Schedule:
         return cls((0.0,), (0.0,), (1.0,))
 
     @classmethod
+    def proportional(cls, slope: float) -> Schedule:
+        """`slope` times the loss."""
+        return cls((0.0,), (0.0,), (slope,))
+
+    @classmethod
+    def excess(cls, amount: float) -> Schedule:
+        """(x - amount)+: what exceeds an amount."""
+        return cls((0.0, amount), (0.0, 0.0), (0.0, 1.0)) if amount > 0 else cls.identity()
+
+    @classmethod
     def capped(cls, limit: float) -> Schedule:
         """min(x, limit): what is kept under a deductible, or paid under a first-euro limit."""
         if limit == np.inf:
@@ -94,7 +104,8 @@ class Schedule:
     def after(self, inner: Schedule) -> Schedule:
         """This payment applied to what `inner` gives: x -> self(inner(x)).
 
-        A falling inner piece (what a franchise leaves drops, but only by a jump) cannot occur.
+        Where `inner` falls (what a disappearing deductible leaves), amounts just below a knot of this
+        payment belong to the piece that ends there.
         """
         starts: list[float] = []
         values: list[float] = []
@@ -104,17 +115,24 @@ class Schedule:
             cuts = [start]
             if slope > 0:
                 cuts += [start + (knot - value) / slope for knot in self.starts if knot > value]
+            elif slope < 0:
+                cuts += [start + (knot - value) / slope for knot in self.starts[::-1] if 0 < knot < value]
             for cut in cuts:
                 if not start <= cut < end:
                     continue
-                at = value + slope * (cut - start)
-                outer_value, outer_slope = (
-                    self._just_above(at) if slope > 0 else (float(self(np.array([at]))[0]), 0.0)
-                )
+                outer_value, outer_slope = self._towards(value + slope * (cut - start), slope)
                 starts.append(cut)
                 values.append(outer_value)
                 slopes.append(outer_slope * slope)
         return Schedule(tuple(starts), tuple(values), tuple(slopes))._merged()
+
+    def _towards(self, amount: float, direction: float) -> tuple[float, float]:
+        """Payment and slope at an amount, as seen going up, going down, or staying there."""
+        if direction > 0:
+            return self._just_above(amount)
+        piece = max(int(np.searchsorted(np.asarray(self.starts), amount, side="left")) - 1, 0)
+        value = self.values[piece] + self.slopes[piece] * (amount - self.starts[piece]) if amount > 0 else 0.0
+        return value, self.slopes[piece] if direction < 0 else 0.0
 
     def _just_above(self, start: float) -> tuple[float, float]:
         """Payment and slope just to the right of an amount."""
