@@ -7,53 +7,14 @@ the covers named there leave of each event.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
-from typing import NamedTuple
 
-from lossagg.cover import Cover, Schedule
-from lossagg.errors import EngineError, InputError
-from lossagg.families.base import CountLaw, SizeLaw
+from lossagg.cover import Schedule
+from lossagg.engines.placed import GROSS, NET, Line, PlacedCover, Subject, check_lines, check_places
+from lossagg.errors import EngineError
 
-
-class Subject(NamedTuple):
-    """Whose annual amount a result is: kind "line", "gross", "cover" or "net", and its name."""
-
-    kind: str
-    name: str = ""
-
-    def __str__(self) -> str:
-        return f"{self.kind} {self.name}".strip()
-
-
-GROSS = Subject("gross")
-NET = Subject("net")
-
-
-@dataclass(frozen=True, kw_only=True)
-class Line:
-    """One class of business: the law of its counts per year and of the size of one loss."""
-
-    name: str
-    frequency: CountLaw
-    severity: SizeLaw
-
-
-@dataclass(frozen=True, kw_only=True)
-class PlacedCover:
-    """A cover, the lines it covers, and the covers it comes after.
-
-    Args:
-        name: its name in reports.
-        terms: its terms.
-        lines: names of the lines it covers; empty means every line.
-        after: names of covers that pay first; this one sees what they leave.
-    """
-
-    name: str
-    terms: Cover
-    lines: tuple[str, ...] = ()
-    after: tuple[str, ...] = ()
+__all__ = ["GROSS", "NET", "Book", "Line", "PlacedCover", "Plan", "Subject"]
 
 
 @dataclass(frozen=True)
@@ -83,46 +44,8 @@ class Book:
     covers: tuple[PlacedCover, ...] = ()
 
     def __post_init__(self) -> None:
-        if not self.lines:
-            raise InputError("a book needs at least one line", remedy="Add a line.")
-        for kind, names in (
-            ("line", [line.name for line in self.lines]),
-            ("cover", [cover.name for cover in self.covers]),
-        ):
-            for name in names:
-                if names.count(name) > 1:
-                    raise InputError(
-                        f"two {kind}s have the same name",
-                        value=name,
-                        remedy=f"Give every {kind} its own name.",
-                    )
-        line_names = {line.name for line in self.lines}
-        earlier: dict[str, PlacedCover] = {}
-        for cover in self.covers:
-            for name in cover.lines:
-                if name not in line_names:
-                    raise InputError(
-                        "the cover names a line that does not exist",
-                        where=f"cover {cover.name!r}",
-                        value=name,
-                        remedy=f"Lines: {', '.join(sorted(line_names))}.",
-                    )
-            for name in cover.after:
-                if name not in earlier:
-                    raise InputError(
-                        "the cover comes after a cover that is not listed before it",
-                        where=f"cover {cover.name!r}",
-                        value=name,
-                        remedy="List the covers in the order in which they pay.",
-                    )
-                if cover.terms.has_event_terms and earlier[name].terms.has_annual_terms:
-                    raise InputError(
-                        "event terms cannot follow a cover with annual terms: its payment belongs to the year",
-                        where=f"cover {cover.name!r}",
-                        value=name,
-                        remedy="Use annual terms only (retention, limit, share) in the later cover.",
-                    )
-            earlier[cover.name] = cover
+        check_lines(self.lines)
+        check_places(self.lines, self.covers)
 
     @cached_property
     def subjects(self) -> tuple[Subject, ...]:
@@ -134,6 +57,10 @@ class Book:
     def cover(self, name: str) -> PlacedCover:
         """The cover of this name."""
         return next(cover for cover in self.covers if cover.name == name)
+
+    def line(self, name: str) -> Line:
+        """The line of this name."""
+        return next(line for line in self.lines if line.name == name)
 
     def covers_line(self, cover: PlacedCover, line: str) -> bool:
         """Whether a cover covers a line."""
@@ -148,21 +75,28 @@ class Book:
         """
         if not self.covers_line(cover, line):
             return None
-        return cover.terms.event_schedule().after(self._left_by(cover.after, line))
+        left, expense = self._left_by(cover.after, line)
+        return cover.terms.event_schedule(expense, self.line(line).sum_insured).after(left)
 
     def event_retained(self, cover: PlacedCover, line: str) -> Schedule | None:
         """What one event adds to the amount kept under the cover's deductible; None as above."""
         if not self.covers_line(cover, line):
             return None
-        return cover.terms.retained_schedule().after(self._left_by(cover.after, line))
+        left, expense = self._left_by(cover.after, line)
+        return cover.terms.retained_schedule(expense, self.line(line).sum_insured).after(left)
 
     def annual_covers_before(self, cover: PlacedCover) -> tuple[PlacedCover, ...]:
         """Covers named in `after` whose payment is taken off the year, not off single events."""
         return tuple(self.cover(name) for name in cover.after if self.cover(name).terms.has_annual_terms)
 
     def event_net(self, line: str) -> Schedule:
-        """What all covers without annual terms leave of one event of a line."""
-        return self._left_by(tuple(c.name for c in self.covers if not c.terms.has_annual_terms), line)
+        """What all covers without annual terms leave of one event of a line and its expense."""
+        left = self.line(line).cost
+        for cover in self.covers:
+            paid = None if cover.terms.has_annual_terms else self.event_payment(cover, line)
+            if paid is not None:
+                left = left - paid.scaled(cover.terms.year_share)
+        return left
 
     def plan(self, subject: Subject) -> Plan:
         """How an exact engine computes a subject: event payments line by line, then one annual function.
@@ -171,9 +105,9 @@ class Book:
             EngineError: the subject is no function of one annual sum; the simulation computes it.
         """
         if subject.kind == "line":
-            return Plan({subject.name: Schedule.identity()}, Schedule.identity())
+            return Plan({subject.name: self.line(subject.name).cost}, Schedule.identity())
         if subject == GROSS:
-            return Plan({line.name: Schedule.identity() for line in self.lines}, Schedule.identity())
+            return Plan({line.name: line.cost for line in self.lines}, Schedule.identity())
         if subject == NET:
             return self._net_plan()
         cover = self.cover(subject.name)
@@ -207,14 +141,26 @@ class Book:
                 annual = annual - paid.annual
         return Plan(events, annual)
 
-    def _left_by(self, names: tuple[str, ...], line: str) -> Schedule:
-        left = Schedule.identity()
+    def _left_by(self, names: tuple[str, ...], line: str) -> tuple[Schedule, float]:
+        """The loss that these covers leave of one event, and its expense as a ratio to what is left."""
+        left, expense = Schedule.identity(), self.line(line).expense
         for name in names:
             cover = self.cover(name)
-            paid = None if cover.terms.has_annual_terms else self.event_payment(cover, line)
+            paid = None if cover.terms.has_annual_terms else self._loss_paid(cover, line)
             if paid is not None:
-                left = left - paid.scaled(cover.terms.share)
-        return left
+                left = left - paid.scaled(cover.terms.year_share)
+                expense = 0.0 if cover.terms.expense_basis == "outside" else expense
+        return left, expense
+
+    def _loss_paid(self, cover: PlacedCover, line: str) -> Schedule | None:
+        """What a cover pays of one event's loss, without its expense."""
+        if not self.covers_line(cover, line):
+            return None
+        left, expense = self._left_by(cover.after, line)
+        sum_insured = self.line(line).sum_insured
+        if expense == 0.0 or cover.terms.expense_basis == "outside":
+            return replace(cover.terms, expense_basis=None).event_schedule(0.0, sum_insured).after(left)
+        return cover.terms.event_schedule(expense, sum_insured).after(left).scaled(1.0 / (1.0 + expense))
 
 
 def _simulated_only(subject: Subject, why: str) -> EngineError:

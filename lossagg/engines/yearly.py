@@ -40,7 +40,7 @@ def line_columns(book: Book, line: str, subjects: tuple[Subject, ...]) -> LineCo
     """The columns that these subjects need of a line; equal schedules share one."""
     needed: dict[tuple[str, str], Schedule] = {}
     if GROSS in subjects or NET in subjects or Subject("line", line) in subjects:
-        needed[LOSS] = Schedule.identity()
+        needed[LOSS] = book.line(line).cost
     for cover in needed_covers(book, subjects):
         paid, kept = book.event_payment(cover, line), book.event_retained(cover, line)
         if paid is None or kept is None:
@@ -121,31 +121,34 @@ def annual_amounts(
 
 
 def growth(book: Book, subject: Subject, line: str) -> float:
-    """By how much a subject's annual amount grows per unit of one huge loss of a line, 0 to 1.
+    """By how much a subject's annual amount grows per unit of one huge loss of a line.
 
     Zero means that the subject is bounded in that loss, so its moments exist whatever the line's tail.
     """
     if subject.kind == "line":
-        return float(subject.name == line)
+        return book.line(line).cost.slopes[-1] * float(subject.name == line)
     if subject == GROSS:
-        return 1.0
+        return book.line(line).cost.slopes[-1]
     slopes: dict[str, float] = {}
     for cover in book.covers:
         slopes[cover.name] = _cover_growth(book, cover, line, slopes)
     if subject == NET:
-        left = 1.0 - sum(slopes.values())
+        left = book.line(line).cost.slopes[-1] - sum(slopes.values())
         return left if left > 1e-12 else 0.0
     return slopes[subject.name]
 
 
 def _cover_growth(book: Book, cover: PlacedCover, line: str, earlier: Mapping[str, float]) -> float:
     paid, kept = book.event_payment(cover, line), book.event_retained(cover, line)
-    if paid is None or kept is None or cover.terms.annual_limit < np.inf:
+    if paid is None or kept is None:
         return 0.0
+    terms = cover.terms.year_terms
     slope = paid.slopes[-1] - sum(earlier[before.name] for before in book.annual_covers_before(cover))
-    if cover.terms.retained_cap < np.inf:
+    slope *= terms.payments.slopes[-1]
+    if terms.kept is not None:
         slope += kept.slopes[-1]
-    return cover.terms.share * slope if slope > 1e-12 else 0.0
+    slope *= terms.beyond.slopes[-1]
+    return slope if slope > 1e-12 else 0.0
 
 
 def _require_same_ground(book: Book, cover: PlacedCover, before: PlacedCover) -> None:
@@ -164,7 +167,7 @@ def _paid(cover: PlacedCover, seen: FloatArray, kept: FloatArray | None) -> Floa
     terms = cover.terms
     if terms.has_annual_terms or cover.after:
         return terms.annual_payment(seen, kept)
-    return seen if terms.share == 1.0 else terms.share * seen
+    return seen if terms.year_share == 1.0 else terms.year_share * seen
 
 
 def _over_lines(sums: Mapping[str, Mapping[tuple[str, str], FloatArray]], key: tuple[str, str]) -> FloatArray:
