@@ -2,9 +2,14 @@
 
 Two kinds of evidence are compared, each on its own terms. The exact engines carry guaranteed
 brackets: each one's value must lie inside the other's bracket. The simulation carries chance: it must
-lie within four of its own standard errors of the reference. For VaR this is judged in probability,
-not in money: the number of simulated years beyond the reference's bracket is binomial, whatever the
-tail (so it holds where no variance exists), and atoms are no obstacle.
+lie within four standard errors of the reference.
+
+* A simulated VaR is judged in probability, not in money: the number of simulated years beyond the
+  reference's bracket is binomial, whatever the tail, and atoms are no obstacle.
+* A simulated mean or TVaR is judged up to the amount c that twenty simulated years are expected to
+  exceed: E[min((S - v)+, c - v)], with v zero or the reference's VaR. It is estimated without bias, and
+  its variance exists and follows from the reference's moments. Beyond c a single year can carry the
+  whole average: under a heavy tail the full average says nothing, or raises false alarms.
 
 Four standard errors is a chance of 6e-5 per comparison, so a clean assessment with a hundred
 comparisons is withheld by bad luck less than once in a hundred seeds.
@@ -22,9 +27,11 @@ from lossagg.engines.result import AnnualLoss, BookResult, BracketedAnnualLoss
 from lossagg.errors import DoesNotExistError
 
 STANDARD_ERRORS = 4.0
+YEARS_BEYOND = 20
 ROUND_OFF = 1e-9
 TOLERANCE = (
-    f"exact engines inside each other's bracket; simulation within {STANDARD_ERRORS:g} standard errors"
+    f"exact engines inside each other's bracket; simulation within {STANDARD_ERRORS:g} standard errors, "
+    f"its mean and TVaR up to the amount that {YEARS_BEYOND} simulated years are expected to exceed"
 )
 
 Bracket = tuple[float, float]
@@ -40,7 +47,7 @@ class Comparison:
         level: level of the last two, else None.
         values: the figure by engine; engines that cannot compute the subject are absent.
         brackets: the bracket by exact engine.
-        standard_error: of the simulated figure; None where it does not exist.
+        standard_error: of what was compared with the simulation, in money; None where it does not exist.
         agrees: whether all engines agree.
         note: what disagrees and by how much, or what could not be compared.
     """
@@ -123,17 +130,18 @@ def _compare(
     notes = ["only one engine can compute this"] if len(losses) == 1 else []
     error = None
     for name, loss in simulated.items():
-        error = _standard_error(loss, measure, level)
-        for reference, bracket in brackets.items():
-            if not all(np.isfinite([values[name], values[reference]])):
-                if np.isfinite(values[name]) != np.isfinite(values[reference]):
-                    faults.append(f"{name} and {reference} differ on whether it exists")
+        error = _own_error(loss, measure, level)
+        for reference, known in exact.items():
+            if np.isfinite(values[name]) != np.isfinite(values[reference]):
+                faults.append(f"{name} and {reference} differ on whether it exists")
             elif measure == "value_at_risk" and level is not None:
-                faults += _quantile_faults(name, loss, reference, bracket, level)
-            elif error is None:
-                notes.append("not compared with the simulation: its standard error does not exist")
+                faults += _quantile_faults(name, loss, reference, brackets[reference], level)
+            elif measure == "sd":
+                found = _sd_evidence((name, values[name]), (reference, values[reference]), error)
+                (faults if error is not None else notes).extend(found)
             else:
-                faults += _moment_faults((name, values[name]), (reference, values[reference]), bracket, error)
+                found, error = _average_evidence(name, loss, reference, known, level)
+                (faults if error is not None else notes).extend(found)
     return Comparison(
         subject=subject,
         measure=measure,
@@ -184,20 +192,48 @@ def _quantile_faults(
     return []
 
 
-def _moment_faults(
-    simulated: tuple[str, float], exact: tuple[str, float], bracket: Bracket, error: float
-) -> list[str]:
-    """Whether a simulated mean, sd or TVaR is within four standard errors of the bracketed value."""
+def _average_evidence(
+    name: str, loss: AnnualLoss, reference: str, known: BracketedAnnualLoss, level: float | None
+) -> tuple[list[str], float | None]:
+    """Faults of a simulated mean (level None) or TVaR, with the standard error they are measured in;
+    or, with no standard error, why there is nothing to compare."""
+    years = loss.years  # type: ignore[attr-defined]
+    start, share = (0.0, 1.0) if level is None else (known.value_at_risk(level), 1.0 - level)
+    if years * share < 2 * YEARS_BEYOND:
+        beyond = f"it has only {years * share:.3g} years beyond the level"
+        return [f"not compared with the simulation: {beyond}"], None
+    cap = known.value_at_risk(1.0 - YEARS_BEYOND / years)
+    if cap <= start:
+        return [], 0.0
+    excess = known.layer_mean(start, cap)
+    variance = max(known.layer_second_moment(start, cap) - excess**2, 0.0)
+    error = float(np.sqrt(variance / years)) / share
+    centre, value = excess / share, loss.layer_mean(start, cap) / share
+    low, high = (bound.layer_mean(start, cap) / share for bound in known.bounds())
+    gap = max(min(low, centre) - value, value - max(high, centre), 0.0)
+    if gap <= STANDARD_ERRORS * error + ROUND_OFF * abs(centre + start):
+        return [], error
+    size = f"{gap / error:.1f} standard errors" if error > 0 else f"{gap:.6g}"
+    figures = f"{value + start:.6g}, not {centre + start:.6g}"
+    return [f"{name} is {size} from {reference}, up to {cap:.6g}: {figures}"], error
+
+
+def _sd_evidence(simulated: tuple[str, float], exact: tuple[str, float], error: float | None) -> list[str]:
+    """Faults of a simulated standard deviation, or why it cannot be compared; `error` is the sample's."""
     (name, value), (reference, centre) = simulated, exact
-    low, high = min(bracket[0], centre), max(bracket[1], centre)
-    gap = max(low - value, value - high, 0.0)
+    if not np.isfinite(centre):
+        return []
+    if error is None:
+        return ["not compared with the simulation: its standard error does not exist"]
+    gap = abs(value - centre)
     if gap <= STANDARD_ERRORS * error + ROUND_OFF * abs(centre):
         return []
     size = f"{gap / error:.1f} standard errors" if error > 0 else f"{gap:.6g}"
     return [f"{name} {value:.6g} is {size} from {reference} {centre:.6g}"]
 
 
-def _standard_error(loss: AnnualLoss, measure: str, level: float | None) -> float | None:
+def _own_error(loss: AnnualLoss, measure: str, level: float | None) -> float | None:
+    """The simulation's own standard error; None where the moments it needs do not exist."""
     try:
         return float(loss.standard_error(measure, level))  # type: ignore[attr-defined]
     except DoesNotExistError:

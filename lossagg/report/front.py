@@ -131,7 +131,9 @@ def _reach(years: float | None, level: float) -> str:
 
 
 def _caution_status(assessment: Assessment) -> str:
-    return ", ".join(code for code, _ in every_caution(assessment))
+    """Each caution by name, with how many lines it concerns."""
+    named = [(code.replace("-", " "), len(texts)) for code, texts in every_caution(assessment)]
+    return ", ".join(name if count == 1 else f"{name} ({count})" for name, count in named)
 
 
 def _plural(count: int, noun: str) -> str:
