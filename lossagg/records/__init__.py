@@ -1,28 +1,42 @@
 """Loss records: read, checked, reconciled, prepared. Knows no laws and no portfolio file."""
 
+from lossagg.records.basis import ground_up_losses, undeclared_deductibles
 from lossagg.records.check import CheckedLosses, check_losses
+from lossagg.records.currency import RateTable, convert_losses, read_rates
+from lossagg.records.development import Development
 from lossagg.records.exposure import ExposureTable, read_exposure
 from lossagg.records.findings import Finding, RecordsError
+from lossagg.records.index_file import read_trend_index
 from lossagg.records.money import Reconciliation
 from lossagg.records.prepare import PreparedLosses, prepare_losses
 from lossagg.records.steps import Step
 from lossagg.records.table import LossTable, read_losses
-from lossagg.records.trend import midpoint
+from lossagg.records.trend import TrendIndex, midpoint
+from lossagg.records.ultimate import Developed
 from lossagg.records.years import YearTable
 
 __all__ = [
     "CheckedLosses",
+    "Developed",
+    "Development",
     "ExposureTable",
     "Finding",
     "LossTable",
     "PreparedLosses",
+    "RateTable",
     "Reconciliation",
     "RecordsError",
     "Step",
+    "TrendIndex",
     "YearTable",
     "check_losses",
+    "convert_losses",
+    "ground_up_losses",
     "midpoint",
     "prepare_losses",
     "read_exposure",
     "read_losses",
+    "read_rates",
+    "read_trend_index",
+    "undeclared_deductibles",
 ]

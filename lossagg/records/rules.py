@@ -15,6 +15,7 @@ import numpy as np
 from lossagg.arrays import BoolArray
 from lossagg.records.events import group_events
 from lossagg.records.faults import Fault
+from lossagg.records.revisions import valuation_faults
 from lossagg.records.table import LossTable
 from lossagg.records.word_rules import repeated_faults, status_faults, word_faults
 
@@ -64,6 +65,7 @@ def row_faults(table: LossTable, terms: CheckTerms) -> list[Fault]:
         *_money(table, live),
         *status_faults(table, live),
         *repeated_faults(table, live),
+        *valuation_faults(table, np.datetime64(terms.valuation_date), live),
     ]
     return [fault for fault in faults if fault.mask.any()]
 
@@ -84,6 +86,11 @@ def below_threshold(table: LossTable, used: BoolArray, default: float = 0.0) -> 
         events = group_events(table, used)
         threshold = np.where(np.isnan(events.threshold), default, events.threshold)
         mask[used] = (events.amount < threshold)[events.index]
+    return threshold_fault(mask)
+
+
+def threshold_fault(mask: BoolArray) -> Fault:
+    """The fault of rows whose event is below its reporting threshold; mask of shape (rows,)."""
     return Fault(
         "below-threshold",
         "set aside",

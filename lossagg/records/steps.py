@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import datetime as dt
 from dataclasses import dataclass
 from math import fsum
 
@@ -9,9 +10,11 @@ import numpy as np
 
 from lossagg.arrays import BoolArray, FloatArray
 from lossagg.records.check import CheckedLosses
-from lossagg.records.events import Events, group_events
+from lossagg.records.events import Events
 from lossagg.records.findings import Finding, counted
-from lossagg.records.money import exact_sum
+from lossagg.records.money import Reconciliation, exact_sum
+from lossagg.records.trend import Trend, describe_trend
+from lossagg.records.ultimate import Developed
 from lossagg.records.years import YearTable
 
 
@@ -40,56 +43,153 @@ class Step:
         return dict(vars(self))
 
 
-def log_steps(
-    checked: CheckedLosses, used: BoolArray, events: Events, amount: FloatArray, trend: float
-) -> tuple[Step, ...]:
-    """Log the way from the rows of a line to its trended losses.
+@dataclass(frozen=True)
+class Trail:
+    """What the steps are written from.
 
     Args:
         checked: the records of the line after the checks.
         used: True for the rows that reach the model; shape (rows,).
-        events: the events made of them.
-        amount: their amounts, trended; shape (events,).
-        trend: rate per year.
+        everything: the events of all rows that passed the checks, as they are modelled.
+        events: the events that reach the model.
+        net: amounts net of recoveries, None where they are gross; shape (rows,).
+        trend: rate per year, or index.
+        midpoint: midpoint of the forecast period.
+        hours_window: longest duration of one event, None without end.
+        open_claims: what was done with open claims.
+    """
+
+    checked: CheckedLosses
+    used: BoolArray
+    everything: Events
+    events: Events
+    net: FloatArray | None
+    trend: Trend
+    midpoint: dt.date
+    hours_window: int | None
+    open_claims: str
+
+
+def log_steps(
+    trail: Trail, whole: Reconciliation, years: YearTable, developed: Developed | None
+) -> tuple[Step, ...]:
+    """Log the way from the rows of a line to its trended losses.
+
+    Args:
+        trail: what was done.
+        whole: the reconciliation at the end.
+        years: the history by year.
+        developed: the years at ultimate, None without development.
 
     Returns:
         The steps in their order; each begins with what the one before left.
     """
-    table, before = checked.table, checked.reconciliation
-    all_events = len(group_events(table, checked.used)) if (checked.used & ~used).any() else len(events)
-    read, kept = float(before.amount_read), float(before.amount_used)
-    left = float(exact_sum(table.exact[used]))
-    recovered = fsum(np.nan_to_num(table.number("recoveries")[used]).tolist())
+    kept = float(trail.checked.reconciliation.amount_used)
+    steps = [*_before_checks(trail.checked), _check_step(trail.checked)]
+    if trail.net is not None:
+        steps.append(_recoveries(trail, kept))
+    steps.append(_events_step(trail, steps[-1].amount_after))
+    if trail.open_claims != "as-recorded":
+        steps.append(_open_step(trail, steps[-1].amount_after))
+    as_recorded = trail.net is None and trail.open_claims != "develop"
+    left = float(whole.amount_used) if as_recorded else fsum(trail.events.amount.tolist())
+    steps.append(_threshold_step(trail, steps[-1].amount_after, left))
+    count, trended = len(trail.events), fsum(years.trended_amount.tolist())
+    steps.append(Step("trend", count, count, left, trended, describe_trend(trail.trend, trail.midpoint)))
+    if developed is not None:
+        steps.append(_development_step(count, trended, years, developed))
+    return tuple(steps)
+
+
+def _before_checks(checked: CheckedLosses) -> list[Step]:
+    """Reading, and what changed the amounts of the table before the checks."""
+    table, member, read = checked.table, checked.member, checked.reconciliation.read
+    states = [*(change.before for change in table.changes), table.exact]
+    sums = [float(exact_sum(state[member])) for state in states[:-1]]
+    sums.append(float(checked.reconciliation.amount_read))
+    recoveries = table.numbers.get("recoveries")
+    recovered = 0.0 if recoveries is None else fsum(np.nan_to_num(recoveries[checked.used]).tolist())
     gross = f"; amounts are gross, recoveries of {recovered:,.2f} are kept apart" if recovered else ""
-    apart = all_events - len(events)
-    return (
-        Step("read", before.read, before.read, read, read, f"rows of {table.file}{gross}"),
-        Step(
-            "check",
-            before.read,
-            before.used,
-            read,
-            kept,
-            f"{counted(before.excluded, 'row')} set aside, see findings",
-        ),
-        Step("events", before.used, all_events, kept, kept, "claims of one event summed into one loss"),
-        Step(
-            "threshold",
-            all_events,
-            len(events),
-            kept,
-            left,
-            f"{counted(apart, 'event')} below the reporting threshold set aside; it is compared with the sum "
-            "of an event, so claims that were left out one by one are not seen",
-        ),
-        Step(
-            "trend",
-            len(events),
-            len(events),
-            left,
-            fsum(amount.tolist()),
-            f"{trend:+.2%} a year from each loss date to the midpoint of the forecast period",
-        ),
+    steps = [Step("read", read, read, sums[0], sums[0], f"rows of {table.file}{gross}")]
+    for number, change in enumerate(table.changes):
+        rows = int(np.count_nonzero(change.rows & member))
+        if rows:
+            note = f"{counted(rows, 'row')} {change.note}"
+            steps.append(Step(change.step, read, read, sums[number], sums[number + 1], note))
+    return steps
+
+
+def _check_step(checked: CheckedLosses) -> Step:
+    sums = checked.reconciliation
+    note = f"{counted(sums.excluded, 'row')} set aside, see findings"
+    return Step("check", sums.read, sums.used, float(sums.amount_read), float(sums.amount_used), note)
+
+
+def _recoveries(trail: Trail, kept: float) -> Step:
+    assert trail.net is not None
+    count = int(np.count_nonzero(trail.checked.used))
+    return Step(
+        "recoveries",
+        count,
+        count,
+        kept,
+        fsum(trail.net[trail.checked.used].tolist()),
+        "recoveries taken off, as asked for: the losses are net of them, and covers act on net losses",
+    )
+
+
+def _events_step(trail: Trail, before: float) -> Step:
+    note = "claims of one event summed into one loss"
+    if trail.hours_window is not None:
+        named = trail.everything.identifier[trail.everything.identifier != ""]
+        parts = len(named) - len(np.unique(named.codes))
+        note += (
+            f"; events longer than {trail.hours_window} hours divided from their first claim on: "
+            f"{parts} more {'loss' if parts == 1 else 'losses'}"
+        )
+    rows = int(np.count_nonzero(trail.checked.used))
+    return Step("events", rows, len(trail.everything), before, before, note)
+
+
+def _open_step(trail: Trail, before: float) -> Step:
+    everything = trail.everything
+    count, size = int(everything.open.sum()), len(everything)
+    if trail.open_claims == "censor":
+        note = (
+            f"{counted(count, 'open claim')} taken as at least what is recorded (right-censored); claims that"
+            " stay open are often the large ones, which censoring does not know"
+        )
+        return Step("open claims", size, size, before, before, note)
+    after = fsum(everything.amount.tolist())
+    note = f"{counted(count, 'open claim')} brought to ultimate by the factor of the age of its year"
+    return Step("open claims", size, size, before, after, note)
+
+
+def _threshold_step(trail: Trail, before: float, after: float) -> Step:
+    apart = len(trail.everything) - len(trail.events)
+    return Step(
+        "threshold",
+        len(trail.everything),
+        len(trail.events),
+        before,
+        after,
+        f"{counted(apart, 'event')} below the reporting threshold set aside; it is compared with the sum "
+        "of an event, so claims that were left out one by one are not seen",
+    )
+
+
+def _development_step(count: int, trended: float, years: YearTable, developed: Developed) -> Step:
+    reported, ultimate = int(years.losses.sum()), fsum(years.ultimate_losses.tolist())
+    money, whole = fsum(years.amount.tolist()), fsum(years.ultimate_amount.tolist())
+    return Step(
+        "development",
+        count,
+        count,
+        trended,
+        trended,
+        f"factors {developed.factors.source}, {developed.method}: {counted(reported, 'event')} reported "
+        f"stand for {ultimate:,.1f}, {money:,.2f} recorded for {whole:,.2f}; the exposure of each year "
+        "counts for the part of its events that is reported, no loss is invented",
     )
 
 
