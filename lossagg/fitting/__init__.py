@@ -11,6 +11,7 @@ from lossagg.fitting.diagnostics import (
 )
 from lossagg.fitting.frequency import fit_frequency
 from lossagg.fitting.goodness import Goodness, goodness
+from lossagg.fitting.goodness_test import GoodnessTest, goodness_test
 from lossagg.fitting.notes import Note
 from lossagg.fitting.overdispersion import Overdispersion, overdispersion
 from lossagg.fitting.results import Fit, FrequencyFit, SeverityFit
@@ -23,6 +24,7 @@ __all__ = [
     "Fit",
     "FrequencyFit",
     "Goodness",
+    "GoodnessTest",
     "Note",
     "Overdispersion",
     "QuantilePoints",
@@ -35,6 +37,7 @@ __all__ = [
     "fit_severity",
     "fit_spliced",
     "goodness",
+    "goodness_test",
     "overdispersion",
     "quantile_points",
     "survival_points",

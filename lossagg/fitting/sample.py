@@ -159,8 +159,14 @@ def checked_losses(
     return amounts, thresholds, marks
 
 
-def sample_of(amounts: FloatArray, thresholds: FloatArray, censored: BoolArray) -> Sample:
+def sample_of(
+    amounts: FloatArray, thresholds: FloatArray, censored: BoolArray, scale: float | None = None
+) -> Sample:
     """Scale, sort and sum checked losses.
+
+    Args:
+        amounts, thresholds, censored: as `checked_losses` gives them.
+        scale: the unit, in money; without it a power of two near the median.
 
     Raises:
         FitError: every loss is censored.
@@ -171,7 +177,7 @@ def sample_of(amounts: FloatArray, thresholds: FloatArray, censored: BoolArray) 
             value=f"{amounts.size} censored losses",
             remedy="A size shows only below its policy limit: add uncensored losses, or give the law.",
         )
-    scale = float(2.0 ** np.round(np.log2(np.median(amounts))))
+    scale = scale or float(2.0 ** np.round(np.log2(np.median(amounts))))
     above_zero = thresholds[thresholds > 0]
     return Sample(
         exact=np.sort(amounts[~censored] / scale),

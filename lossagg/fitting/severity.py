@@ -41,7 +41,7 @@ FAMILIES = (
     "burr",
 )
 _ORIGINS = {"pareto": "minimum", "generalized-pareto": "threshold"}
-_MOST_STARTS = 4
+MOST_STARTS = 4
 _SEVERAL_STARTS = 20_000  # losses above which only the best start climbs, unless it fails
 
 
@@ -211,8 +211,9 @@ def climb(
     observations: int,
     family: str,
     likelihood: SizeLikelihood,
+    most: int = MOST_STARTS,
 ) -> Maximum:
-    """The highest certified maximum reached from the best starts.
+    """The highest certified maximum reached from the best `most` starts.
 
     Raises:
         FitError: no start led to one; `tried` names each start's end.
@@ -222,7 +223,7 @@ def climb(
     def inner(point: np.ndarray) -> tuple[Jet, ...]:
         return likelihood.inner(variables(point)[:count])
 
-    ranked = sorted(starts, key=lambda start: -evaluate(objective, start))[:_MOST_STARTS]
+    ranked = sorted(starts, key=lambda start: -evaluate(objective, start))[:most]
     certified: list[Maximum] = []
     tried: list[str] = []
     for start in ranked:

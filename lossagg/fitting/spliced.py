@@ -17,13 +17,16 @@ from scipy import special
 from lossagg.arrays import BoolArray, FloatArray, Floats, require_positive
 from lossagg.errors import FitError, InputError
 from lossagg.families import Spliced
+from lossagg.families.base import SizeLaw
 from lossagg.fitting.jet_functions import log_one_minus_exp, log_sum_exp
 from lossagg.fitting.jets import Jet, lift, variables
 from lossagg.fitting.likelihood import Range, SizeLikelihood
+from lossagg.fitting.maximise import Maximum
 from lossagg.fitting.notes import FEW, Note, tail_notes
 from lossagg.fitting.results import SeverityFit
 from lossagg.fitting.sample import Sample, Weighted, checked_losses, sample_of
 from lossagg.fitting.severity import (
+    MOST_STARTS,
     climb,
     fit_severity,
     index_interval,
@@ -108,28 +111,14 @@ def fit_spliced(
     require_positive(threshold, "threshold")
     amounts, reported, marks = checked_losses(losses, truncation, censored)
     tail_fit = _fit_tail(amounts, reported, marks, threshold, tail)
-    objective, sample = _body_objective(amounts, reported, marks, threshold, body)
-    starts = [
-        np.append(start, _start_odds(amounts, threshold))
-        for start in objective.likelihood.starts(objective.below)
-    ]
-    likelihood = objective.likelihood
-    maximum = climb(objective, starts, amounts.size, f"{body} body", likelihood)
-    *coordinates, odds = variables(maximum.point)
-    inner = likelihood.inner(tuple(coordinates))
-    share = special.expit(odds.value)
-    free = (
-        *likelihood.natural(inner, sample.scale),
-        lift(odds, share, share * (1 - share), np.zeros(1)),
-    )
-    values, joint = natural_parameters(free, maximum)
-    parts = len(likelihood.ranges)
-    body_values = dict(zip(likelihood.ranges, values[:parts], strict=True))
+    law, share, made = body_and_share(amounts, reported, marks, threshold, body)
+    likelihood, maximum, sample = made.objective.likelihood, made.maximum, made.objective.below
+    joint, parts = made.covariance, len(likelihood.ranges)
     model = Spliced(
-        body=likelihood.law(**body_values),
+        body=law,
         tail=tail_fit.model,
         threshold=float(threshold),
-        tail_probability=values[parts],
+        tail_probability=share,
     )
     below_scale = sample.count * float(np.log(sample.scale))
     return SeverityFit(
@@ -151,9 +140,53 @@ def fit_spliced(
     )
 
 
-def _fit_tail(
-    amounts: FloatArray, reported: FloatArray, marks: BoolArray, threshold: float, tail: str
-) -> SeverityFit:
+@dataclass(frozen=True, eq=False)
+class _FittedBody:
+    objective: _Body
+    maximum: Maximum
+    covariance: FloatArray  # of the body's parameters and the tail probability
+
+
+def body_and_share(
+    amounts: FloatArray,
+    reported: FloatArray,
+    marks: BoolArray,
+    threshold: float,
+    body: str,
+    most: int = MOST_STARTS,
+) -> tuple[SizeLaw, float, _FittedBody]:
+    """Fit the body and the tail probability: the law, the probability, and how they were found.
+
+    Args:
+        amounts, reported, marks: checked losses, their thresholds and censoring marks.
+        threshold: the splice point.
+        body: family of the body.
+        most: how many starts climb.
+
+    Raises:
+        FitError: no loss below the threshold, or no maximum.
+    """
+    objective, sample = _body_objective(amounts, reported, marks, threshold, body)
+    likelihood = objective.likelihood
+    starts = [np.append(start, _start_odds(amounts, threshold)) for start in likelihood.starts(sample)]
+    maximum = climb(objective, starts, amounts.size, f"{body} body", likelihood, most)
+    *coordinates, odds = variables(maximum.point)
+    inner = likelihood.inner(tuple(coordinates))
+    share = special.expit(odds.value)
+    free = (*likelihood.natural(inner, sample.scale), lift(odds, share, share * (1 - share), np.zeros(1)))
+    values, joint = natural_parameters(free, maximum)
+    law = likelihood.law(**dict(zip(likelihood.ranges, values[:-1], strict=True)))
+    return law, values[-1], _FittedBody(objective, maximum, joint)
+
+
+def losses_above(
+    amounts: FloatArray, reported: FloatArray, marks: BoolArray, threshold: float
+) -> tuple[BoolArray, FloatArray]:
+    """Which losses belong to the tail, and the threshold from which each of them is seen there.
+
+    Raises:
+        FitError: too few uncensored ones for a tail.
+    """
     # A loss censored at the threshold itself says only that it lies above, which the share tells.
     above = amounts > threshold
     exact = int((above & ~marks).sum())
@@ -163,11 +196,18 @@ def _fit_tail(
             value=float(threshold),
             remedy=f"Lower the threshold until {_FEWEST_IN_TAIL}, better {FEW}, lie above it.",
         )
+    return above, np.maximum(reported[above], threshold)
+
+
+def _fit_tail(
+    amounts: FloatArray, reported: FloatArray, marks: BoolArray, threshold: float, tail: str
+) -> SeverityFit:
+    above, entered = losses_above(amounts, reported, marks, threshold)
     name = "minimum" if tail == "pareto" else "threshold"
     return fit_severity(
         amounts[above],
         tail,
-        np.maximum(reported[above], threshold),
+        entered,
         marks[above],
         fixed={name: float(threshold)},
     )

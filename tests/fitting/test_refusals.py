@@ -226,10 +226,11 @@ def test_comparisons_without_a_fit():
         compare_frequencies([1, 2], ["poisson", "poisson"])
 
 
-def test_goodness_of_many_limits_is_refused():
-    fit = fit_severity(LOSSES, "exponential")
-    with pytest.raises(InputError, match="all censored losses to stop at one limit"):
-        goodness(LOSSES, fit.model, censored=[True, False, True, False, False, False])
+def test_goodness_of_losses_the_law_cannot_have_is_refused():
+    law = fit_severity([120.0, 130.0, 180.0, 400.0], "generalized-pareto", fixed={"threshold": 100.0}).model
+    short = type(law)(shape=-1.0, scale=50.0, threshold=100.0)
+    with pytest.raises(InputError, match="no probability to losses above a threshold"):
+        goodness([120.0, 220.0], short, truncation=[110.0, 200.0])
 
 
 def test_asking_for_another_parameter():
