@@ -15,7 +15,7 @@ if TYPE_CHECKING:
     from pathlib import Path
 
     from lossagg.cover import Cover
-    from lossagg.engines import Fourier, Panjer, Simulation, annual_loss
+    from lossagg.engines import FarTail, Fourier, Panjer, Simulation, annual_loss
     from lossagg.families import (
         Binomial,
         Burr,
@@ -44,7 +44,7 @@ _ROOMS = {
     ),
     "cover": "Cover",
     "fitting": "fit_severity fit_frequency",
-    "engines": "annual_loss Fourier Panjer Simulation",
+    "engines": "annual_loss FarTail Fourier Panjer Simulation",
 }
 _HOME = {name: room for room, names in _ROOMS.items() for name in names.split()}
 
@@ -54,6 +54,7 @@ __all__ = [
     "CountTable",
     "Cover",
     "Exponential",
+    "FarTail",
     "Fourier",
     "Gamma",
     "GeneralizedPareto",

@@ -10,13 +10,20 @@ from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
     from lossagg.engines.annual import annual_loss
+    from lossagg.engines.far_tail import FarTail
     from lossagg.engines.fourier import Fourier
     from lossagg.engines.panjer import Panjer
     from lossagg.engines.simulation import Simulation
 
-__all__ = ["Fourier", "Panjer", "Simulation", "annual_loss"]
+__all__ = ["FarTail", "Fourier", "Panjer", "Simulation", "annual_loss"]
 
-_HOME = {"Fourier": "fourier", "Panjer": "panjer", "Simulation": "simulation", "annual_loss": "annual"}
+_HOME = {
+    "FarTail": "far_tail",
+    "Fourier": "fourier",
+    "Panjer": "panjer",
+    "Simulation": "simulation",
+    "annual_loss": "annual",
+}
 
 
 def __getattr__(name: str) -> object:

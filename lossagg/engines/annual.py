@@ -7,7 +7,7 @@ from lossagg.engines.result import AnnualLoss, Engine
 from lossagg.errors import InputError
 from lossagg.families.base import CountLaw, SizeLaw
 
-ENGINE_NAMES = ("fourier", "panjer", "simulation")
+ENGINE_NAMES = ("fourier", "panjer", "simulation", "far-tail")
 
 
 def annual_loss(
@@ -24,7 +24,8 @@ def annual_loss(
         cover: terms of a cover; the result is then what the cover pays in the year. Without it, the
             ground-up losses.
         engine: "fourier" (exact, any count law), "panjer" (exact by recursion), "simulation" (any
-            cover), or an engine object that carries its settings, such as `Fourier(step=100.0)`.
+            cover), "far-tail" (conditional Monte Carlo for levels such as 99.99 % and beyond), or an
+            engine object that carries its settings, such as `Fourier(step=100.0)`.
 
     Returns:
         The annual loss with its measures and their accuracy.
@@ -74,4 +75,8 @@ def engine_of(engine: str | Engine) -> Engine:
         from lossagg.engines.simulation import Simulation
 
         return Simulation()
+    if engine == "far-tail":
+        from lossagg.engines.far_tail import FarTail
+
+        return FarTail()
     raise InputError("unknown engine", value=engine, remedy=f"Use one of: {', '.join(ENGINE_NAMES)}.")
