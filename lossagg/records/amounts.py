@@ -242,23 +242,30 @@ def exact_amounts(text: Any, values: FloatArray) -> Money:
         text: Arrow array of plain numbers as text, or of numbers.
         values: their nearest float64; cells that are not finite count as zero; shape (rows,).
     """
+    money = Money.zeros(len(values))
+    for start in range(0, len(values), _CHUNK):
+        part = slice(start, start + _CHUNK)
+        _put_amounts(money, start, text[part], values[part])
+    return money
+
+
+def _put_amounts(money: Money, start: int, text: Any, values: FloatArray) -> None:
+    """Set a stretch of amounts that begins at a row."""
     import pyarrow as pa
 
     finite = np.isfinite(values)
     places = _places_of_text(text) if pa.types.is_string(text.type) else _places_of_floats(text, values)
-    money = Money.zeros(len(values))
     certain = finite & (places >= 0)
-    money.places[certain] = places[certain]
-    scale = np.power(10.0, np.arange(_DIGITS_KEPT + 1))
-    scaled = np.rint(np.where(certain, values, 0.0) * scale[np.where(certain, places, 0)])
-    money.units[:] = scaled.astype(np.int64)
+    places = np.where(certain, places, 0).astype(np.int8)
+    scaled = np.rint(np.where(certain, values, 0.0) * np.power(10.0, np.arange(_DIGITS_KEPT + 1))[places])
+    money.places[start : start + len(values)] = places
+    money.units[start : start + len(values)] = scaled.astype(np.int64)
     rest = np.flatnonzero(finite & ~certain)
-    for start in range(0, len(rest), _CHUNK):
-        _put_long(money, rest[start : start + _CHUNK], text, values)
-    return money
+    if rest.size:
+        _put_long(money, start, rest, text, values)
 
 
-def _put_long(money: Money, at: IntArray, cells: Any, values: FloatArray) -> None:
+def _put_long(money: Money, start: int, at: IntArray, cells: Any, values: FloatArray) -> None:
     """Convert cells of up to 18 digits together, by their digits; longer ones and exponents one by one."""
     import pyarrow as pa
     import pyarrow.compute as pc
@@ -274,10 +281,10 @@ def _put_long(money: Money, at: IntArray, cells: Any, values: FloatArray) -> Non
     units = pc.cast(pc.if_else(pa.array(plain), digits, "0"), pa.int64()).to_numpy(zero_copy_only=False)
     point = pc.find_substring(text, ".").to_numpy(zero_copy_only=False)
     length = pc.binary_length(text).to_numpy(zero_copy_only=False)
-    money.units[at] = units
-    money.places[at] = np.where(plain & (point >= 0), length - point - 1, 0)
+    money.units[start + at] = units
+    money.places[start + at] = np.where(plain & (point >= 0), length - point - 1, 0)
     for index in np.flatnonzero(~plain).tolist():
-        money.put(int(at[index]), Decimal(text[index].as_py()))
+        money.put(start + int(at[index]), Decimal(text[index].as_py()))
 
 
 def _places_of_text(text: Any) -> npt.NDArray[np.int8]:

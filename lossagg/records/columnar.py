@@ -6,8 +6,6 @@ from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
 
-import numpy as np
-
 from lossagg.errors import InputError, place
 from lossagg.records.raw import Choose, RawTable, TableBuilder, cell_text
 
@@ -45,28 +43,23 @@ def read_parquet(path: Path, choose: Choose) -> RawTable:
         positions = choose(headings, None)
         _check_types(schema, positions, path.name)
         builder = TableBuilder(path.name, None, headings, positions)
-        _fill(builder, source, schema, positions)
+        _fill(builder, source)
     return builder.finish()
 
 
-def _fill(builder: TableBuilder, source: Any, schema: Any, positions: Mapping[str, int]) -> None:
+def _fill(builder: TableBuilder, source: Any) -> None:
     import pyarrow as pa
 
     try:
         for batch in source.iter_batches(batch_size=_BATCH):
             columns = [_plain(column) for column in batch.columns]
-            builder.add(columns, _native(schema, positions, len(batch)))
+            builder.add(columns)
     except (pa.ArrowInvalid, OSError) as error:
         raise InputError(
             "the Parquet file is damaged",
             where=place(file=builder.file),
             remedy="Export the records again.",
         ) from error
-
-
-def _native(schema: Any, positions: Mapping[str, int], rows: int) -> dict[str, Any]:
-    kinds = {name: schema.field(position).type for name, position in positions.items()}
-    return {name: np.full(rows, not _is_text(kind), dtype=np.bool_) for name, kind in kinds.items()}
 
 
 def _plain(column: Any) -> Any:
@@ -86,14 +79,6 @@ def _plain(column: Any) -> Any:
     if pa.types.is_timestamp(kind) and kind.tz is None:
         return pc.cast(column, pa.string()).fill_null("")
     return pa.array(map(cell_text, column.to_pylist()), pa.string())
-
-
-def _is_text(kind: Any) -> bool:
-    import pyarrow as pa
-
-    if pa.types.is_dictionary(kind):
-        return _is_text(kind.value_type)
-    return bool(pa.types.is_string(kind) or pa.types.is_large_string(kind) or pa.types.is_boolean(kind))
 
 
 def _check_types(schema: Any, positions: Mapping[str, int], file: str) -> None:

@@ -23,6 +23,7 @@ from lossagg.errors import LossaggError
 _DIGITS = 1200
 _ZERO = Decimal(0)
 _HALF = 32
+_CHUNK = 1_000_000
 _MOST_PLACES = 100
 _MOST_UNITS = 2**62
 _FLOAT_UNITS, _FLOAT_PLACES = 2**53, 22
@@ -115,13 +116,16 @@ class Money:
 
     def total(self) -> Decimal:
         """The exact sum, zero for no amounts."""
-        parts = list(self.odd.values())
-        for places in np.flatnonzero(np.bincount(self.places, minlength=1)).tolist():
-            units = self.units[self.places == places]
-            # Two halves, since a sum of 62-bit integers may leave 64 bits.
-            whole = (int((units >> _HALF).sum()) << _HALF) + int((units & (2**_HALF - 1)).sum())
-            parts.append(_scaled(whole, places))
-        return exact_sum(parts)
+        by_places = dict.fromkeys(range(_MOST_PLACES + 1), 0)
+        for start in range(0, len(self), _CHUNK):
+            units, places = self.units[start : start + _CHUNK], self.places[start : start + _CHUNK]
+            for count in np.flatnonzero(np.bincount(places)).tolist():
+                some = units[places == count]
+                # Two halves, since a sum of 62-bit integers may leave 64 bits.
+                high, low = int((some >> _HALF).sum()), int((some & (2**_HALF - 1)).sum())
+                by_places[count] += (high << _HALF) + low
+        parts = [_scaled(units, count) for count, units in by_places.items() if units]
+        return exact_sum([*parts, *self.odd.values()])
 
     def by_group(self, group: IntArray, groups: int) -> Money:
         """Exact sums by group.

@@ -135,8 +135,8 @@ class TableBuilder:
         self._fingerprint.append(as_marks(marks))
         for name, position in self.positions.items():
             self._cells.setdefault(name, []).append(columns[position])
-            held = native[name] if native else np.zeros(count, dtype=np.bool_)
-            self._native.setdefault(name, []).append(held)
+            if native is not None:
+                self._native.setdefault(name, []).append(native[name])
         empty = self._empty_rows(columns)
         self._empty.append(empty)
         filled = np.flatnonzero(~empty)
@@ -167,7 +167,7 @@ class TableBuilder:
         columns = {}
         for name in self.positions:
             cells = pa.concat_arrays(self._cells.pop(name))[:rows]
-            columns[name] = Column(cells, np.concatenate(self._native.pop(name))[:rows])
+            columns[name] = Column(cells, self._natives(name, rows))
         return RawTable(
             self.headings,
             self.positions,
@@ -179,6 +179,11 @@ class TableBuilder:
             tuple(self.findings),
             self.sheet,
         )
+
+    def _natives(self, name: str, rows: int) -> BoolArray:
+        chunks = self._native.pop(name, None)
+        # A view of one False, not a byte for each of what may be ten million rows.
+        return np.broadcast_to(np.False_, rows) if chunks is None else np.concatenate(chunks)[:rows]
 
     def note(self, code: str, message: str, remedy: str, warn: bool = False) -> None:
         """Keep a finding about the file as a whole."""

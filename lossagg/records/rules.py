@@ -15,11 +15,11 @@ import numpy as np
 from lossagg.arrays import BoolArray
 from lossagg.records.events import group_events
 from lossagg.records.faults import Fault
+from lossagg.records.money_rules import money_faults
 from lossagg.records.revisions import valuation_faults
 from lossagg.records.table import LossTable
 from lossagg.records.word_rules import repeated_faults, status_faults, word_faults
 
-CENT = 0.01
 LARGEST = 1e18
 EARLIEST = np.datetime64("1900-01-01")
 
@@ -62,7 +62,7 @@ def row_faults(table: LossTable, terms: CheckTerms) -> list[Fault]:
         *word_faults(table, terms.currency, live),
         *_amounts(table, live),
         *_dates(table, terms, live),
-        *_money(table, live),
+        *money_faults(table, live),
         *status_faults(table, live),
         *repeated_faults(table, live),
         *valuation_faults(table, np.datetime64(terms.valuation_date), live),
@@ -191,52 +191,3 @@ def _dates(table: LossTable, terms: CheckTerms, live: BoolArray) -> list[Fault]:
             ),
         ]
     return faults
-
-
-def _money(table: LossTable, live: BoolArray) -> list[Fault]:
-    amount = table.amount
-    parts = table.number("paid") + table.number("outstanding")
-    # A float64 sum of two amounts is off by a few parts in 1e16, which is no difference in money.
-    slack = CENT * (1 + 1e-6) + 1e-12 * np.abs(amount)
-    return [
-        Fault(
-            "negative-threshold",
-            "set aside",
-            "threshold",
-            live & (table.number("threshold") < 0),
-            "the threshold is negative",
-            "Correct it.",
-        ),
-        Fault(
-            "above-limit",
-            "set aside",
-            "amount",
-            live & (amount > table.number("policy-limit")),
-            "the amount is above its policy limit",
-            "Correct one of them; if amounts are before the limit, leave the limit out.",
-        ),
-        Fault(
-            "recoveries-above-gross",
-            "set aside",
-            "recoveries",
-            live & (table.number("recoveries") > amount),
-            "the recoveries exceed the gross amount",
-            "Give amounts gross of recoveries.",
-        ),
-        Fault(
-            "negative-recoveries",
-            "warn",
-            "recoveries",
-            live & (table.number("recoveries") < 0),
-            "the recoveries are negative",
-            "Give recoveries as positive numbers; amounts are used gross of them in any case.",
-        ),
-        Fault(
-            "parts-differ",
-            "set aside",
-            "amount",
-            live & (np.abs(parts - amount) > slack),
-            f"paid and outstanding do not add to the amount within {CENT}",
-            "Correct one of the three.",
-        ),
-    ]

@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 import hashlib
+import io
 import os
 from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
-from typing import BinaryIO
 
 from lossagg.errors import EnvironmentFault, InputError, place
 from lossagg.records.delimited import MOST_BYTES, read_delimited
@@ -136,7 +136,7 @@ def _status(path: Path) -> os.stat_result:
 
 
 @contextmanager
-def _opened(path: Path) -> Iterator[BinaryIO]:
+def _opened(path: Path) -> Iterator[io.BufferedReader]:
     """Open a file for reading; what the system says against it becomes an error a reader can act on."""
     try:
         with path.open("rb") as stream:

@@ -42,6 +42,7 @@ COLUMNS: Mapping[str, str] = {
     "valuation": "date",
 }
 _WANTED = Wanted(COLUMNS, ("amount", "date"))
+_STRETCH = 1_000_000
 _TOTAL = re.compile(r"^(grand |sub ?-?)?(totals?|sum|somme|summe|gesamt|totale|total general)\b[ :.]*$", re.I)
 _SCIENTIFIC = r"^\d(\.\d+)?[eE]\+?\d+$"
 
@@ -125,8 +126,16 @@ class LossTable:
         days = self.date.astype(np.int64).view(np.uint64) * np.uint64(0x9E3779B97F4A7C15)
         key = np.nan_to_num(self.amount, nan=-1.0).view(np.uint64) ^ days
         ordered = np.sort(key)
-        again = ordered[1:][ordered[1:] == ordered[:-1]]
-        return np.flatnonzero(np.isin(key, again)) if again.size else np.zeros(0, dtype=np.int64)
+        again = np.unique(ordered[1:][ordered[1:] == ordered[:-1]])
+        del ordered
+        if not again.size:
+            return np.zeros(0, dtype=np.int64)
+        parts = []
+        for start in range(0, len(key), _STRETCH):
+            some = key[start : start + _STRETCH]
+            near = np.minimum(np.searchsorted(again, some), len(again) - 1)
+            parts.append(start + np.flatnonzero(again[near] == some))
+        return np.concatenate(parts)
 
     def number(self, name: str) -> FloatArray:
         """A column of numbers, all NaN when the file does not have it; shape (rows,)."""
