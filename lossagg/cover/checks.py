@@ -148,6 +148,12 @@ def _check_reinstatements(cover: Cover) -> None:
             value=clause.number,
             remedy="Give limit; without one, state an annual_limit or leave the year unlimited.",
         )
+    if cover.expense_basis in ("outside", "pro-rata"):
+        raise InputError(
+            "reinstatements count what is used of the limit, and expense paid beside the limit is not",
+            value=cover.expense_basis,
+            remedy='Use the expense basis "inside", or state an annual_limit instead of reinstatements.',
+        )
     agreed = cover.year_limit
     if cover.annual_limit < np.inf and not np.isclose(cover.annual_limit, agreed, rtol=1e-9, atol=0.0):
         raise InputError(

@@ -40,7 +40,7 @@ class Line:
         sum_insured: of every risk of the line, for a surplus; None where it is not known.
 
     Raises:
-        InputError: an expense that is negative or above 10, a sum insured that is not above 0.
+        InputError: an expense that is negative or above 1, a sum insured that is not above 0.
     """
 
     name: str
@@ -50,7 +50,7 @@ class Line:
     sum_insured: float | None = None
 
     def __post_init__(self) -> None:
-        if require_positive(self.expense, "expense", zero=True) > 10:
+        if require_positive(self.expense, "expense", zero=True) > 1:
             raise InputError(
                 "expense is a ratio to the loss",
                 where=f"line {self.name!r}",
@@ -75,12 +75,18 @@ class PlacedCover:
         terms: its terms.
         lines: names of the lines it covers; empty means every line.
         after: names of covers that pay first; this one sees what they leave.
+        stated: how the terms were stated, where that is in other words: loss ratios, another currency.
     """
 
     name: str
     terms: Cover
     lines: tuple[str, ...] = ()
     after: tuple[str, ...] = ()
+    stated: str = ""
+
+    def describe(self) -> str:
+        """The terms in one line, and how they were stated."""
+        return self.terms.describe() + (f" ({self.stated})" if self.stated else "")
 
 
 def check_lines(lines: Sequence[Line]) -> None:

@@ -6,7 +6,7 @@ from typing import Any
 
 import numpy as np
 
-from lossagg.cover import Cover
+from lossagg.cover import Corridor, Cover, Reinstatements, Surplus
 from lossagg.engines.book import PlacedCover
 from lossagg.errors import InputError, LossaggError, place
 from lossagg.families import make_count_law, make_size_law
@@ -72,6 +72,7 @@ def placed_cover(section: CoverSection, key: str) -> PlacedCover:
         terms=given_terms(section, key),
         lines=section.lines or (),
         after=section.after,
+        stated=_stated(section),
     )
 
 
@@ -82,17 +83,61 @@ def given_terms(section: Terms, key: str) -> Cover:
         InputError: terms that contradict each other, with the key of the table.
     """
     try:
-        return Cover(
-            deductible=section.deductible,
-            limit=np.inf if section.limit is None else section.limit,
-            franchise=section.franchise,
-            share=section.share,
-            annual_retention=section.annual_retention,
-            annual_limit=np.inf if section.annual_limit is None else section.annual_limit,
-            retained_cap=np.inf if section.retained_cap is None else section.retained_cap,
-        )
+        return _terms(section)
     except InputError as error:
         raise _at(error, key) from error
+
+
+def _terms(section: Terms) -> Cover:
+    def unlimited(value: float | None) -> float:
+        return np.inf if value is None else value
+
+    corridor, surplus, stop = section.corridor, section.surplus, section.stop_loss
+    retention, most = section.annual_retention, unlimited(section.annual_limit)
+    if stop is not None:
+        stated = Cover.stop_loss(
+            premium=stop.premium, retention_ratio=stop.retention, limit_ratio=unlimited(stop.limit)
+        )
+        retention, most = stated.annual_retention, stated.annual_limit
+    terms = Cover(
+        deductible=section.deductible,
+        limit=unlimited(section.limit),
+        franchise=section.franchise,
+        share=section.share,
+        annual_retention=retention,
+        annual_limit=most,
+        retained_cap=unlimited(section.retained_cap),
+        disappears_at=unlimited(section.disappears_at),
+        limit_includes_deductible=section.limit_includes_deductible,
+        self_insured=section.self_insured,
+        surplus=None if surplus is None else Surplus(kept_line=surplus.kept_line, lines=surplus.lines),
+        corridor=None
+        if corridor is None
+        else Corridor(low=corridor.low, high=unlimited(corridor.high), share=corridor.share),
+        reinstatements=_reinstatements(section),
+        expense_basis=section.expense_basis,
+        order=section.order,
+    )
+    return terms if section.scale == 1.0 else terms.scaled(section.scale)
+
+
+def _reinstatements(section: Terms) -> Reinstatements | None:
+    if section.reinstatements is None:
+        return None
+    rates = section.reinstatement_rate
+    return Reinstatements(number=section.reinstatements, rates=rates[0] if len(rates) == 1 else rates)
+
+
+def _stated(section: Terms) -> str:
+    """What the file states in other words than the terms: loss ratios, a scale."""
+    parts = []
+    if section.stop_loss is not None:
+        stop = section.stop_loss
+        limit = "" if stop.limit is None else f"{100 * stop.limit:.4g} % "
+        parts.append(f"{limit}in excess of {100 * stop.retention:.4g} % of a premium of {stop.premium:,.0f}")
+    if section.scale != 1.0:
+        parts.append(f"amounts of the file times {section.scale:.10g}")
+    return "; ".join(parts)
 
 
 def _at(error: Exception, key: str) -> InputError:

@@ -7,7 +7,7 @@ survival of the fitted severity at that year's threshold, and the rate that resu
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -42,8 +42,12 @@ class LineModel:
         prepared: the losses it was fitted to; None where both laws are given and no records exist.
         frequencies: the count laws tried; None where the law is given.
         severities: the size laws tried; None where the law is given.
-        seen: per year, exposure times the probability that a loss exceeds the threshold.
+        seen: per year, the exposure of the forecast period that would show as many losses: what was
+            observed, for the part that is reported, at the frequency of the forecast period, times the
+            probability that a loss exceeds the threshold.
         forecast_exposure: exposure of the forecast year.
+        expense: adjustment expense that comes with every loss, as a ratio to it.
+        sum_insured: of every risk of the line, where a surplus needs it.
     """
 
     name: str
@@ -54,11 +58,19 @@ class LineModel:
     severities: Candidates[SeverityFit] | None = None
     seen: FloatArray | None = None
     forecast_exposure: float = 1.0
+    expense: float = 0.0
+    sum_insured: float | None = None
 
     @property
     def line(self) -> Line:
         """What the engines need of it."""
-        return Line(name=self.name, frequency=self.frequency, severity=self.severity)
+        return Line(
+            name=self.name,
+            frequency=self.frequency,
+            severity=self.severity,
+            expense=self.expense,
+            sum_insured=self.sum_insured,
+        )
 
     @property
     def fit_notes(self) -> tuple[Note, ...]:
@@ -79,6 +91,11 @@ def build_line(section: LineSection, prepared: PreparedLosses | None, key: str) 
         FitError: no candidate could be fitted; carries why for each.
         InputError: given parameters out of range.
     """
+    model = _modelled(section, prepared, key)
+    return replace(model, expense=section.expense, sum_insured=section.sum_insured)
+
+
+def _modelled(section: LineSection, prepared: PreparedLosses | None, key: str) -> LineModel:
     severities = None
     if section.severity.fit is None:
         severity = given_severity(section.severity, f"{key}.severity")
@@ -102,7 +119,7 @@ def build_line(section: LineSection, prepared: PreparedLosses | None, key: str) 
             severities=severities,
         )
     years = prepared.years
-    seen = years.exposure * years.fraction * np.asarray(severity.sf(years.threshold))
+    seen = years.forecast_exposure * _survival(prepared, severity)
     frequencies = compare_frequencies(years.losses, section.frequency.fit, exposure=seen)
     exposure = section.forecast_exposure or _last_full_exposure(prepared)
     return LineModel(
@@ -115,6 +132,22 @@ def build_line(section: LineSection, prepared: PreparedLosses | None, key: str) 
         seen=seen,
         forecast_exposure=exposure,
     )
+
+
+def _survival(prepared: PreparedLosses, severity: SizeLaw) -> FloatArray:
+    """Per year, the probability that a loss exceeds the threshold above which it was recorded.
+
+    Where events of a year have thresholds of their own, each stands for the 1 / S(threshold) losses of
+    which it was the one to be seen (Horvitz and Thompson 1952), so the year saw the ratio of the two.
+    """
+    years = prepared.years
+    survival = np.array(severity.sf(years.threshold), dtype=np.float64)
+    if years.mixed.any():
+        at = prepared.year - int(years.year[0])
+        stands_for = 1.0 / np.asarray(severity.sf(prepared.threshold), dtype=np.float64)
+        losses = np.bincount(at, weights=stands_for, minlength=len(years))
+        survival[years.mixed] = years.losses[years.mixed] / losses[years.mixed]
+    return survival
 
 
 def _last_full_exposure(prepared: PreparedLosses) -> float:

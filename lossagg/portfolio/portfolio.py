@@ -10,8 +10,8 @@ from lossagg.portfolio.assess import Progress, compute, figures, silent
 from lossagg.portfolio.assessment import FORMAT, Assessment, Data, Writer
 from lossagg.portfolio.cautions import cautions
 from lossagg.portfolio.files import PORTFOLIO_FILE, LineRecords, portfolio_file, read_records
-from lossagg.portfolio.laws import placed_cover
 from lossagg.portfolio.line import LineModel, build_line
+from lossagg.portfolio.places import placed_covers, tower_cautions
 from lossagg.portfolio.schema import PortfolioFile, read_portfolio_file
 from lossagg.records import PreparedLosses, midpoint, prepare_losses
 from lossagg.version import __version__
@@ -51,8 +51,9 @@ class Portfolio:
                 self.records[line.name].losses,
                 exposure=self.records[line.name].exposure,
                 forecast_midpoint=middle,
-                reporting_threshold=line.reporting_threshold,
-                trend=line.trend,
+                reporting_threshold=line.lowest_recorded,
+                trend=self.records[line.name].index or line.trend,
+                **line.preparation(),
             )
             for line in self.file.line
             if line.name in self.records
@@ -98,8 +99,7 @@ class Portfolio:
         progress("preparing and fitting", 0.0)
         models = self.models()
         section = self.file.portfolio
-        covers = tuple(placed_cover(cover, f"cover[{k}]") for k, cover in enumerate(self.file.cover, start=1))
-        book = Book(lines=tuple(model.line for model in models), covers=covers)
+        book = Book(lines=tuple(model.line for model in models), covers=placed_covers(self.file))
         results = compute(book, years=years, seed=seed, workers=workers, progress=progress)
         findings = [finding for model in models if model.prepared for finding in model.prepared.findings]
         data: Data = {
@@ -108,7 +108,10 @@ class Portfolio:
             "run": {"version": __version__, "seed": seed, "years": years, "inputs": list(self.inputs)},
             **figures(book, models, results, section.levels, section.capital_level),
             "findings": [finding.to_dict() for finding in dict.fromkeys(findings)],
-            "cautions": cautions(models, sorted({*section.levels, section.capital_level})),
+            "cautions": [
+                *cautions(models, sorted({*section.levels, section.capital_level})),
+                *tower_cautions(self.file.tower),
+            ],
         }
         progress("done", 1.0)
         return Assessment(data, self.writer)
@@ -139,8 +142,7 @@ def read_portfolio(path: str | Path, *, writer: Writer | None = None) -> Portfol
     """
     folder, file = portfolio_file(Path(path))
     content = read_portfolio_file(file)
-    for k, cover in enumerate(content.cover, start=1):
-        placed_cover(cover, f"cover[{k}]")
+    placed_covers(content)
     records, inputs = read_records(folder, content)
     return Portfolio(folder, content, records, inputs, writer)
 

@@ -17,6 +17,7 @@ from pydantic.fields import FieldInfo
 
 from lossagg.errors import InputError, place
 from lossagg.portfolio.sections import Amount, Name, Positive, Probability, Section, Terms, hyphenated
+from lossagg.portfolio.tower_sections import TowerSection
 
 
 class PortfolioSection(Section):
@@ -117,6 +118,8 @@ class LineSection(FileOptions):
     trend: Annotated[float, Field(gt=-0.5, lt=1.0)] = 0.0
     first_year: Annotated[int, Field(ge=1900, le=2200)] | None = None
     forecast_exposure: Positive | None = None
+    expense: Annotated[float, Field(ge=0, le=1)] = 0.0
+    sum_insured: Positive | None = None
     frequency: Law
     severity: Severity
 
@@ -148,6 +151,7 @@ class PortfolioFile(Section):
     columns: dict[str, str] = Field(default_factory=dict)
     line: Annotated[tuple[LineSection, ...], Field(min_length=1, strict=False)]
     cover: Annotated[tuple[CoverSection, ...], Field(strict=False)] = ()
+    tower: Annotated[tuple[TowerSection, ...], Field(strict=False)] = ()
 
 
 def read_portfolio_file(path: Path) -> PortfolioFile:
@@ -223,7 +227,8 @@ def _fault(detail: Any) -> tuple[str, str, object, str]:
 
 def _range_remedy(key: str, value: object) -> str:
     last = key.rsplit(".", 1)[-1]
-    if isinstance(value, int | float) and 1 < value < 100 and any(word in key for word in ("level", "share")):
+    percent = any(word in last for word in ("level", "share", "expense"))
+    if isinstance(value, int | float) and 1 < value < 100 and percent:
         return f"Write {value / 100:g} for {value:g} %."
     if isinstance(value, str) and value.replace(".", "").replace(",", "").isdigit():
         return f"Write the number without quotes: {last} = {value}."
