@@ -24,6 +24,7 @@ def line_evidence(model: LineModel) -> Data:
         "exposure": None
         if prepared is None
         else {"forecast": model.forecast_exposure, "base": prepared.base},
+        "development": prepared.developed.to_dict() if prepared and prepared.developed else None,
         "frequency": _frequency(model),
         "severity": _severity(model),
         "fit": None if prepared is None else _fit_points(model, prepared),
@@ -49,6 +50,10 @@ def _by_year(prepared: PreparedLosses) -> list[Data]:
         "trended_amount",
         "largest",
         "threshold",
+        "frequency_trend",
+        "reported",
+        "ultimate_losses",
+        "ultimate_amount",
     )
     return [{column: getattr(years, column)[k].item() for column in columns} for k in range(len(years))]
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import hashlib
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 from lossagg.errors import InputError, place
@@ -13,9 +13,17 @@ from lossagg.records import (
     CheckedLosses,
     ExposureTable,
     LossTable,
+    RateTable,
+    TrendIndex,
     check_losses,
+    convert_losses,
+    ground_up_losses,
+    line_rows,
     read_exposure,
     read_losses,
+    read_rates,
+    read_trend_index,
+    undeclared_deductibles,
 )
 
 PORTFOLIO_FILE = "portfolio.toml"
@@ -23,10 +31,11 @@ PORTFOLIO_FILE = "portfolio.toml"
 
 @dataclass(frozen=True)
 class LineRecords:
-    """The checked records of one line, and its exposure where it has one."""
+    """The checked records of one line, with its exposure and its index of trend where it has them."""
 
     losses: CheckedLosses
     exposure: ExposureTable | None
+    index: TrendIndex | None = None
 
 
 def portfolio_file(path: Path) -> tuple[Path, Path]:
@@ -55,17 +64,27 @@ def read_records(folder: Path, file: PortfolioFile) -> tuple[dict[str, LineRecor
             checks of the records stop at.
     """
     inputs = [_portfolio_input(folder)]
+    rates = _read_rates(folder, file)
     checked: dict[str, CheckedLosses] = {}
     for name, sharers in _by_file(file.line, "records").items():
         table = _read_losses(folder, name, sharers[0], file)
         inputs.append({"path": name, "sha256": table.sha256, "rows": table.rows})
-        checked |= _check(table, sharers, file)
+        checked |= _check(_as_modelled(table, sharers, file, rates), sharers, file)
     exposures: dict[str, ExposureTable] = {}
     for name, sharers in _by_file(file.line, "exposure").items():
         exposure = _read_exposure(folder, name, sharers, file)
         inputs.append({"path": name, "sha256": exposure.sha256, "rows": exposure.rows})
         exposures |= {line.name: exposure.for_line(line.name) for line in sharers}
-    records = {name: LineRecords(losses, exposures.get(name)) for name, losses in checked.items()}
+    indices: dict[str, TrendIndex] = {}
+    for name, sharers in _by_file(file.line, "trend_index").items():
+        index = _read_index(folder, name, sharers)
+        inputs.append({"path": name, "sha256": index.sha256, "rows": index.rows})
+        indices |= {line.name: index for line in sharers}
+    if rates is not None:
+        inputs.append({"path": file.portfolio.rates, "sha256": rates.sha256, "rows": rates.rows})
+    records = {
+        name: LineRecords(losses, exposures.get(name), indices.get(name)) for name, losses in checked.items()
+    }
     return records, tuple(inputs)
 
 
@@ -130,6 +149,41 @@ def _read_losses(folder: Path, name: str, line: LineSection, file: PortfolioFile
         thousands=line.thousands,
         date_format=line.date_format,
     )
+
+
+def _read_rates(folder: Path, file: PortfolioFile) -> RateTable | None:
+    section = file.portfolio
+    if section.rates is None:
+        return None
+    path = _inside(folder, section.rates, "portfolio.rates")
+    return read_rates(path, currency=section.currency, columns=section.rates_columns)
+
+
+def _read_index(folder: Path, name: str, sharers: list[LineSection]) -> TrendIndex:
+    if any(line.trend_index_columns != sharers[0].trend_index_columns for line in sharers):
+        raise InputError(
+            "two lines read the same index in two ways",
+            where=place(file=PORTFOLIO_FILE, key="trend-index-columns"),
+            value=", ".join(line.name for line in sharers),
+            remedy="Give all of them the same columns, or each a file of its own.",
+        )
+    return read_trend_index(_inside(folder, name, "trend-index"), columns=sharers[0].trend_index_columns)
+
+
+def _as_modelled(
+    table: LossTable, sharers: list[LineSection], file: PortfolioFile, rates: RateTable | None
+) -> LossTable:
+    """The table in the currency of the portfolio and from the ground up, before it is checked."""
+    if rates is not None and "currency" in table.words:
+        table = convert_losses(table, rates, file.portfolio.currency)
+    for line in sharers:
+        if line.amount_basis == "excess":
+            rows = line_rows(table, line.name if len(sharers) > 1 else None)
+            threshold = line.reporting_threshold or 0.0
+            table = ground_up_losses(table, rows, deductible=line.deductible, reporting_threshold=threshold)
+    if all(line.amount_basis is None for line in sharers):
+        table = replace(table, findings=(*table.findings, *undeclared_deductibles(table)))
+    return table
 
 
 def _check(table: LossTable, sharers: list[LineSection], file: PortfolioFile) -> dict[str, CheckedLosses]:

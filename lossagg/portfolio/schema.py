@@ -16,6 +16,7 @@ from pydantic import BaseModel, ConfigDict, Field, ValidationError, field_valida
 from pydantic.fields import FieldInfo
 
 from lossagg.errors import InputError, place
+from lossagg.portfolio.preparing import PreparingKeys
 from lossagg.portfolio.sections import Amount, Name, Positive, Probability, Section, Terms, hyphenated
 from lossagg.portfolio.tower_sections import TowerSection
 
@@ -37,6 +38,8 @@ class PortfolioSection(Section):
     description: str | None = None
     forecast_start: date | None = None
     tolerance: Annotated[float, Field(ge=0, lt=1)] = 0.05
+    rates: str | None = None
+    rates_columns: dict[str, str] = Field(default_factory=dict)
 
     @field_validator("levels")
     @classmethod
@@ -107,8 +110,12 @@ class FileOptions(Section):
     date_format: str | None = None
 
 
-class LineSection(FileOptions):
-    """`[[line]]`: one class of business, from records or from given laws."""
+class LineSection(FileOptions, PreparingKeys):
+    """`[[line]]`: one class of business, from records or from given laws.
+
+    Without `forecast-exposure` the forecast year has the exposure of the last year, that of the whole year
+    also where it was observed in part.
+    """
 
     name: Name
     records: str | None = None
@@ -122,6 +129,13 @@ class LineSection(FileOptions):
     sum_insured: Positive | None = None
     frequency: Law
     severity: Severity
+
+    @property
+    def lowest_recorded(self) -> float | None:
+        """Threshold, from the ground up, of losses that carry none: also what the amounts are net of."""
+        if self.deductible is None:
+            return self.reporting_threshold
+        return max(self.reporting_threshold or 0.0, self.deductible)
 
     @model_validator(mode="after")
     def _fit_needs_records(self) -> LineSection:

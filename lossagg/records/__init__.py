@@ -1,6 +1,6 @@
 """Loss records: read, checked, reconciled, prepared. Knows no laws and no portfolio file."""
 
-from lossagg.records.basis import ground_up_losses, undeclared_deductibles
+from lossagg.records.basis import ground_up_losses, line_rows, undeclared_deductibles
 from lossagg.records.check import CheckedLosses, check_losses
 from lossagg.records.currency import RateTable, convert_losses, read_rates
 from lossagg.records.development import Development
@@ -32,6 +32,7 @@ __all__ = [
     "check_losses",
     "convert_losses",
     "ground_up_losses",
+    "line_rows",
     "midpoint",
     "prepare_losses",
     "read_exposure",

@@ -79,6 +79,13 @@ def ground_up_losses(
     )
 
 
+def line_rows(table: LossTable, line: str | None) -> BoolArray:
+    """True for the rows of one line, whatever its case; all rows for None; shape (rows,)."""
+    if line is None or "line" not in table.words:
+        return np.ones(len(table), dtype=np.bool_)
+    return table.words["line"].select(lambda word: word.casefold() == line.strip().casefold())
+
+
 def undeclared_deductibles(table: LossTable) -> list[Finding]:
     """Warn that the records carry deductibles but nobody said what the amounts are net of."""
     carried = ~table.blank & (np.nan_to_num(table.number("deductible")) > 0)
