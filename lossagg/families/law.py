@@ -26,6 +26,13 @@ class Law(ABC):
         """
         return {name: float(value) for name, value in self._given() if isinstance(value, int | float)}
 
+    def to_dict(self) -> dict[str, Any]:
+        """The family and every argument of the constructor, laws within laws included, as plain data.
+
+        `make_count_law(**data)` and `make_size_law(**data)` make the same law again, to the last bit.
+        """
+        return {"family": self.family, **{name: _plain(value) for name, value in self._given()}}
+
     def _given(self) -> list[tuple[str, Any]]:
         # A parameter called as a method is (`mean`) is kept in a field with an underscore before it.
         return [(f.name.removeprefix("_"), getattr(self, f.name)) for f in fields(self)]  # type: ignore[arg-type]
@@ -60,6 +67,14 @@ def within(
     inside = (x >= 0) & (x < np.inf)
     result[inside] = function(x[inside])
     return result
+
+
+def _plain(value: Any) -> Any:
+    if isinstance(value, Law):
+        return value.to_dict()
+    if isinstance(value, list | tuple):
+        return [_plain(item) for item in value]
+    return value
 
 
 def _shown(value: object) -> str:
