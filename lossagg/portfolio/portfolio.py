@@ -51,9 +51,8 @@ class Portfolio:
                 self.records[line.name].losses,
                 exposure=self.records[line.name].exposure,
                 forecast_midpoint=middle,
-                reporting_threshold=line.lowest_recorded,
-                trend=self.records[line.name].index or line.trend,
-                **line.preparation(),
+                reporting_threshold=line.reporting_threshold,
+                trend=line.trend,
             )
             for line in self.file.line
             if line.name in self.records
