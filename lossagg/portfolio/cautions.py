@@ -39,6 +39,22 @@ INFINITE_VARIANCE = (
 GIVEN = "frequency and severity are given, not fitted: the figures rest on that judgement."
 
 
+NET = (
+    "losses are modelled net of recoveries, as asked for. That recoveries will be as good in a bad year is "
+    "an assumption, and a cover that acts on gross losses is misjudged; good practice fits gross losses "
+    "(Delegated Regulation (EU) 2018/959, article 29(b))."
+)
+OPEN = {
+    "as-recorded": "taken at their recorded amounts",
+    "develop": "taken at their recorded amounts times a factor by age, all of one age alike",
+    "censor": "taken as at least their recorded amounts, as if staying open had nothing to do with size",
+}
+AMOUNTS_UNDEVELOPED = (
+    "the amounts of the years develop further, as the history by year shows, but the size of a loss is "
+    "fitted to amounts as recorded: have open claims developed or censored."
+)
+
+
 def cautions(lines: Sequence[LineModel], levels: Sequence[float]) -> list[Caution]:
     """The standing cautions, then those the lines trigger.
 
@@ -84,10 +100,26 @@ def _of_records(prepared: PreparedLosses, levels: Sequence[float]) -> Iterator[t
             f"{years:.4g} years of records support levels up to {max(1 - 1 / years, 0):.3g}; the "
             f"figures at {top:.6g} extrapolate {1.0 / (1.0 - top) / years:.0f} times beyond the data.",
         )
+    yield from _of_preparing(prepared)
+
+
+def _of_preparing(prepared: PreparedLosses) -> Iterator[tuple[str, str]]:
+    """What was done to the records on request, and what was left undone."""
+    if prepared.net:
+        yield "net-of-recoveries", NET
     still_open = int(prepared.years.open.sum())
     if still_open:
+        undeveloped = "; neither counts nor amounts are developed to ultimate"
+        after = "" if prepared.developed else undeveloped
+        yield "open-claims", f"{still_open} claims are open and are {OPEN[prepared.open_claims]}{after}."
+    if prepared.developed is None:
+        return
+    factors, years = prepared.developed.factors, prepared.years
+    if (factors.count != 1.0).any():
         yield (
-            "open-claims",
-            f"{still_open} claims are open and are taken at their recorded amounts; neither counts nor"
-            " amounts are developed to ultimate.",
+            "development",
+            f"{years.losses.sum()} events are reported and {years.ultimate_losses.sum():,.1f} expected at "
+            f"ultimate, by factors {factors.source}; the error of those factors is in no interval printed.",
         )
+    if (factors.amount != 1.0).any() and prepared.open_claims == "as-recorded":
+        yield "amounts-undeveloped", AMOUNTS_UNDEVELOPED

@@ -23,7 +23,11 @@ def line_evidence(model: LineModel) -> Data:
         "steps": [] if prepared is None else [step.to_dict() for step in prepared.steps],
         "exposure": None
         if prepared is None
-        else {"forecast": model.forecast_exposure, "base": prepared.base},
+        else {
+            "forecast": model.forecast_exposure,
+            "base": prepared.base,
+            "last_year": float(prepared.years.exposure[-1]),
+        },
         "development": prepared.developed.to_dict() if prepared and prepared.developed else None,
         "frequency": _frequency(model),
         "severity": _severity(model),

@@ -112,6 +112,7 @@ def _section(line: Entry, index: int, assessment: Assessment) -> LineSection:
     currency = assessment["portfolio"]["currency"]
     built = (
         tables.records.by_year([line], currency),
+        tables.records.development([line], currency),
         tables.fits.candidates([line]),
         tables.records.steps([line], currency),
     )

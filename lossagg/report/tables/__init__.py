@@ -25,6 +25,7 @@ def every_table(assessment: Assessment) -> tuple[Table, ...]:
         evidence.crosscheck(assessment),
         records.reconciliation(assessment),
         records.by_year(entries, currency),
+        *_if_any(records.development(entries, currency)),
         records.steps(entries, currency),
         fits.parameters(entries),
         fits.candidates(entries),
@@ -36,3 +37,7 @@ def every_table(assessment: Assessment) -> tuple[Table, ...]:
         evidence.run(assessment),
         evidence.inputs(assessment),
     )
+
+
+def _if_any(table: Table) -> tuple[Table, ...]:
+    return (table,) if table.rows else ()

@@ -58,6 +58,8 @@ def by_year(lines: Sequence[Entry], currency: str) -> Table:
             row["trended_amount"],
             row["largest"],
             row["threshold"] or Absent("none"),
+            computed(row.get("ultimate_losses")),
+            computed(row.get("ultimate_amount")),
         )
         for line in lines
         for row in line["by_year"]
@@ -74,8 +76,66 @@ def by_year(lines: Sequence[Entry], currency: str) -> Table:
         Column("Amount trended", "amount"),
         Column("Largest event", "amount"),
         Column("Threshold trended", "amount"),
+        Column("Events at ultimate", "number"),
+        Column("Amount at ultimate", "amount"),
     )
-    return Table("By year", f"Losses by year, {currency}", columns, rows)
+    notes = (
+        "Exposure is that of the whole year; events and amounts are of the part observed. At ultimate: as "
+        "developed, in money of the time; the same as recorded where no development is asked for.",
+    )
+    return Table("By year", f"Losses by year, {currency}", columns, rows, notes)
+
+
+def development(lines: Sequence[Entry], currency: str) -> Table:
+    """Years at ultimate by every method that has what it needs, beside what is reported."""
+    rows: list[tuple[Cell, ...]] = []
+    for line in lines:
+        developed = line.get("development")
+        for row in developed["years"] if developed else ():
+            rows.append(
+                (
+                    line["name"],
+                    str(row["year"]),
+                    row["count"],
+                    row["count_factor"],
+                    row["count_chain_ladder"],
+                    _prior(row["count_bornhuetter_ferguson"]),
+                    row["amount"],
+                    row["amount_factor"],
+                    row["amount_chain_ladder"],
+                    _prior(row["amount_bornhuetter_ferguson"]),
+                    Absent("not used") if row["open_factor"] is None else row["open_factor"],
+                )
+            )
+    columns = (
+        Column("Line"),
+        Column("Year"),
+        Column("Events reported", "number"),
+        Column("Factor", "number"),
+        Column("Chain ladder", "number"),
+        Column("Bornhuetter-Ferguson", "number"),
+        Column("Amount reported", "amount"),
+        Column("Factor of amount", "number"),
+        Column("Amount, chain ladder", "amount"),
+        Column("Amount, Bornhuetter-Ferguson", "amount"),
+        Column("Factor of open claims", "number"),
+    )
+    notes = tuple(_development_note(line) for line in lines if line.get("development"))
+    return Table("Development", f"Development to ultimate, {currency}", columns, tuple(rows), notes)
+
+
+def _prior(value: float | None) -> Cell:
+    return Absent("no a-priori") if value is None else value
+
+
+def _development_note(line: Entry) -> str:
+    developed = line["development"]
+    dates = developed["valuations"]
+    seen = f", from valuations of {', '.join(reversed(dates))}" if dates else ""
+    return (
+        f"{line['name']}: factors {developed['source']}{seen}; the year at ultimate is that of "
+        f"{developed['method']}."
+    )
 
 
 def _given(value: float | None) -> Cell:
