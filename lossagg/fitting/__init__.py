@@ -17,6 +17,8 @@ from lossagg.fitting.overdispersion import Overdispersion, overdispersion
 from lossagg.fitting.results import Fit, FrequencyFit, SeverityFit
 from lossagg.fitting.severity import fit_severity
 from lossagg.fitting.spliced import fit_spliced
+from lossagg.fitting.tail import TailPoint, TailQuantile, tail_points, tail_quantile
+from lossagg.fitting.threshold import ThresholdChoice, threshold_choices
 
 __all__ = [
     "Candidates",
@@ -30,6 +32,9 @@ __all__ = [
     "QuantilePoints",
     "SeverityFit",
     "SurvivalPoints",
+    "TailPoint",
+    "TailQuantile",
+    "ThresholdChoice",
     "compare_frequencies",
     "compare_severities",
     "count_points",
@@ -41,4 +46,7 @@ __all__ = [
     "overdispersion",
     "quantile_points",
     "survival_points",
+    "tail_points",
+    "tail_quantile",
+    "threshold_choices",
 ]

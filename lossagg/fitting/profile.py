@@ -18,7 +18,7 @@ from lossagg.arrays import FloatArray, require_probability
 from lossagg.fitting.jets import Jet, variables
 from lossagg.fitting.maximise import Maximum, Objective
 
-_STAGES = 8
+_STAGES = 5
 _NEWTON_STEPS = 30
 _SETTLED = 1e-9
 

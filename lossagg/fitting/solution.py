@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 
@@ -17,6 +18,8 @@ from lossagg.fitting.likelihood import SizeLikelihood, log_likelihood
 from lossagg.fitting.maximise import Maximum
 from lossagg.fitting.profile import profile_interval
 from lossagg.fitting.sample import Sample
+
+_USUAL = 0.95
 
 
 @dataclass(frozen=True, eq=False, repr=False)
@@ -62,6 +65,13 @@ class Solution:
     def tail_shape(self, level: float) -> tuple[float, float, float] | None:
         """The extreme value index of the law (1 / tail index) with its profile interval; None for families
         whose moments all exist whatever their parameters."""
+        return self._usual_shape if level == _USUAL else self._tail_shape(level)
+
+    @cached_property
+    def _usual_shape(self) -> tuple[float, float, float] | None:
+        return self._tail_shape(_USUAL)
+
+    def _tail_shape(self, level: float) -> tuple[float, float, float] | None:
         if not isinstance(self.likelihood, ParetoLikelihood | GeneralizedParetoLikelihood | BurrLikelihood):
             return None
 
