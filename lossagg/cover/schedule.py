@@ -112,15 +112,18 @@ class Schedule:
         slopes: list[float] = []
         ends = [*inner.starts[1:], np.inf]
         for start, end, value, slope in zip(inner.starts, ends, inner.values, inner.slopes, strict=True):
-            cuts = [start]
+            # The amount reached at a cut is the knot itself: computed back from the cut it may round to
+            # just below the knot, and the piece that starts there (a limit, say) would be lost.
+            cuts = [(start, value)]
             if slope > 0:
-                cuts += [start + (knot - value) / slope for knot in self.starts if knot > value]
+                cuts += [(start + (knot - value) / slope, knot) for knot in self.starts if knot > value]
             elif slope < 0:
-                cuts += [start + (knot - value) / slope for knot in self.starts[::-1] if 0 < knot < value]
-            for cut in cuts:
+                knots = [knot for knot in self.starts[::-1] if 0 < knot < value]
+                cuts += [(start + (knot - value) / slope, knot) for knot in knots]
+            for cut, reached in cuts:
                 if not start <= cut < end:
                     continue
-                outer_value, outer_slope = self._towards(value + slope * (cut - start), slope)
+                outer_value, outer_slope = self._towards(reached, slope)
                 starts.append(cut)
                 values.append(outer_value)
                 slopes.append(outer_slope * slope)

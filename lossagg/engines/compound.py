@@ -16,10 +16,9 @@ from lossagg.arrays import FloatArray
 from lossagg.cover import Schedule
 from lossagg.engines.book import Line
 from lossagg.engines.payment import PaymentLaw
-from lossagg.errors import EngineError
 from lossagg.families.base import CountLaw
 
-
+# Squares of amounts must not overflow.
 _LARGEST = 1e150
 
 
@@ -115,20 +114,10 @@ class CompoundSum:
 
     def reach(self, probability: float) -> float:
         """A first guess of an amount the year exceeds with about this probability: the largest payment
-        at that probability, the mean of payments up to it, and five standard deviations or more.
-
-        Raises:
-            EngineError: the largest payment is beyond 1e150, so that its square overflows.
-        """
+        at that probability, the mean of payments up to it, and five standard deviations or more."""
         largest, mean, spread = 0.0, 0.0, 0.0
         for count, payment in self.parts:
-            most = payment.upper(min(probability / count.mean(), 0.5))
-            if most > _LARGEST:
-                raise EngineError(
-                    f"losses exceeded once in {1 / probability:.0e} years are beyond what can be computed with",
-                    value=most,
-                    remedy="Give the cover a limit, or a size law with a lighter tail.",
-                )
+            most = min(payment.upper(min(probability / count.mean(), 0.5)), _LARGEST)
             limited = payment.limited_mean(most)
             largest = max(largest, most)
             mean += count.mean() * limited

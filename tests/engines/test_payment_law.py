@@ -6,6 +6,8 @@ from fractions import Fraction
 import numpy as np
 import oracle
 import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
 
 from lossagg.cover import Cover, Schedule
 from lossagg.engines.payment import PaymentLaw
@@ -180,3 +182,15 @@ def test_paying_more_than_the_loss_is_refused():
     layer = Cover(deductible=1.0, limit=5.0).event_schedule()
     with pytest.raises(EngineError, match="pay more than the loss"):
         PaymentLaw(Exponential(mean=1.0), Schedule.identity() - layer.scaled(0.7) - layer.scaled(0.7) - layer)
+
+
+@given(st.floats(1e-3, 1e6), st.floats(1e-3, 1e6))
+@settings(derandomize=True, deadline=None, max_examples=200)
+def test_no_limit_is_lost_to_rounding(deductible, limit):
+    """d + l is rounded, so where the limit starts to act may lie a digit off; it must still act. (With
+    d = ln 2, l = 2 ln 2 it once vanished.)"""
+    for d, most in ((deductible, limit), (np.log(2), 2 * np.log(2))):
+        schedule = Cover(deductible=d, limit=most).event_schedule()
+        assert schedule.most == pytest.approx(most, rel=1e-12, abs=1e-15 * d)
+        again = Schedule.capped(most / 3).after(schedule.after(Schedule.identity()))
+        assert again.most == pytest.approx(most / 3, rel=1e-12, abs=1e-15 * d)
