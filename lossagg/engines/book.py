@@ -2,15 +2,18 @@
 
 A book turns the covers into two kinds of function that any engine can use: what each event pays
 (a schedule per line) and what each year pays (the annual terms). Covers with `after` see only what
-the covers named there leave of each event.
+the covers named there leave of each event. How lines depend on each other is part of the book; an
+engine computes a subject only if it can honour that.
 """
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from dataclasses import dataclass, replace
 from functools import cached_property
 
 from lossagg.cover import Schedule
+from lossagg.engines.dependence import Dependence, check_dependences, independent, marginal_frequency, tied
 from lossagg.engines.placed import GROSS, NET, Line, PlacedCover, Subject, check_lines, check_places
 from lossagg.errors import EngineError
 
@@ -32,20 +35,22 @@ class Plan:
 
 @dataclass(frozen=True, kw_only=True)
 class Book:
-    """Lines and covers, checked against each other.
+    """Lines, covers and dependences, checked against each other.
 
     Raises:
         InputError: repeated names, a cover of an unknown line, an `after` that names no earlier
             cover, or a cover with event terms after a cover with annual terms (whose payment
-            belongs to the year, not to an event).
+            belongs to the year, not to an event); a dependence that names no line, or contradicts another.
     """
 
     lines: tuple[Line, ...]
     covers: tuple[PlacedCover, ...] = ()
+    dependences: tuple[Dependence, ...] = ()
 
     def __post_init__(self) -> None:
         check_lines(self.lines)
         check_places(self.lines, self.covers)
+        check_dependences(self.lines, self.dependences)
 
     @cached_property
     def subjects(self) -> tuple[Subject, ...]:
@@ -61,6 +66,29 @@ class Book:
     def line(self, name: str) -> Line:
         """The line of this name."""
         return next(line for line in self.lines if line.name == name)
+
+    def independent(self) -> Book:
+        """The same lines, each as it is by itself, taken as independent of each other."""
+        return replace(self, dependences=independent(self.dependences))
+
+    def independent_lines(self, names: Iterable[str]) -> tuple[Line, ...]:
+        """Lines for an engine that knows independent lines only, each with the law of its count by itself.
+
+        Raises:
+            EngineError: two of these lines depend on each other, or a factor leaves a line no closed law.
+        """
+        own = tuple(line for line in self.lines if line.name in set(names))
+        dependence = tied(self.dependences, [line.name for line in own])
+        if dependence is not None:
+            both = [line.name for line in own if line.name in dependence.lines]
+            raise _not_independent(f"{' and '.join(both[:2])} share {dependence.name!r}")
+        lines = []
+        for line in own:
+            law = marginal_frequency(line, self.dependences)
+            if law is None:
+                raise _not_independent(f"{line.name} with its random factor has no law in closed form")
+            lines.append(replace(line, frequency=law))
+        return tuple(lines)
 
     def covers_line(self, cover: PlacedCover, line: str) -> bool:
         """Whether a cover covers a line."""
@@ -161,6 +189,12 @@ class Book:
         if expense == 0.0 or cover.terms.expense_basis == "outside":
             return replace(cover.terms, expense_basis=None).event_schedule(0.0, sum_insured).after(left)
         return cover.terms.event_schedule(expense, sum_insured).after(left).scaled(1.0 / (1.0 + expense))
+
+
+def _not_independent(why: str) -> EngineError:
+    return EngineError(
+        f"this engine takes lines as independent, and {why}", remedy="The simulation computes it."
+    )
 
 
 def _simulated_only(subject: Subject, why: str) -> EngineError:

@@ -72,7 +72,7 @@ class ExactEngine(ABC):
 
     def _solved(self, book: Book, events: dict[str, Schedule]) -> AnnualLoss | EngineError:
         try:
-            return self.solve(CompoundSum.of(book.lines, events))
+            return self.solve(CompoundSum.of(book.independent_lines(events), events))
         except EngineError as error:
             return error
 

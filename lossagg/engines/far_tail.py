@@ -107,7 +107,7 @@ class FarTail:
         return BookResult(losses, refused)
 
     def _solved(self, book: Book, subject: Subject, plan: Plan, drawn: dict[str, _Years]) -> AnnualLoss:
-        lines = tuple(line for line in book.lines if line.name in plan.events)
+        lines = book.independent_lines(plan.events)
         _require_resources(lines, self.samples)
         for line in lines:
             if line.name not in drawn:
