@@ -13,7 +13,7 @@ PART = 256.0
 @compiled
 def poisson_counts(means: FloatArray, uniforms: FloatArray, out: IntArray) -> None:
     """Draw a Poisson count for each mean by adding up probabilities until they reach a uniform, exact but
-    for the round-off of the sum, about 1e-15.
+    for the round-off of the sum, below 1e-13.
 
     A mean above 256 is drawn in parts of at most 256, whose sum it is: exp(-mean) does not underflow, and
     the work stays in proportion to the number of losses.
