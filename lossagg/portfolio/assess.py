@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 
-from lossagg.cover.terms import ORDER_OF_OPERATIONS
 from lossagg.engines import Fourier, Panjer, Simulation
 from lossagg.engines.book import GROSS, NET, Book, Subject
 from lossagg.engines.crosscheck import crosscheck
@@ -73,14 +72,7 @@ def figures(
         "gross": whole(GROSS),
         "net": whole(NET),
         "covers": [
-            cover_of(
-                book,
-                cover,
-                best[Subject("cover", cover.name)][0],
-                levels,
-                ORDER_OF_OPERATIONS,
-                withheld=withheld,
-            )
+            cover_of(book, cover, best[Subject("cover", cover.name)][0], levels, withheld=withheld)
             for cover in book.covers
         ],
         "crosscheck": crosscheck_of(check),
@@ -90,6 +82,8 @@ def figures(
 def _line(model: LineModel, loss: AnnualLoss, levels: Sequence[float], *, withheld: bool) -> Data:
     return {
         **line_evidence(model),
+        "expense": model.expense,
+        "sum_insured": model.sum_insured,
         "mean": None if withheld else number(loss.mean()),
         "sd": None if withheld else number(loss.sd()),
         "levels": levels_of(loss, levels, withheld=withheld),

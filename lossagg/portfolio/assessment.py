@@ -17,6 +17,7 @@ from lossagg.engines.book import Book, PlacedCover, Subject
 from lossagg.engines.crosscheck import TOLERANCE, Comparison, Crosscheck
 from lossagg.engines.result import AnnualLoss
 from lossagg.errors import DoesNotExistError, InputError
+from lossagg.portfolio.cover_data import reinstatement_of, terms_of
 
 FORMAT = "lossagg.assessment/1"
 WITHHELD = "withheld: the engines disagree"
@@ -122,26 +123,19 @@ def subject_of(
 
 
 def cover_of(
-    book: Book, cover: PlacedCover, loss: AnnualLoss, levels: Sequence[float], order: str, *, withheld: bool
+    book: Book, cover: PlacedCover, loss: AnnualLoss, levels: Sequence[float], *, withheld: bool
 ) -> Data:
     """One cover: its terms, its expected cost, and how often it attaches and exhausts."""
     terms = cover.terms
     exhaustion = _exhaustion(book, cover, loss)
     return {
         "name": cover.name,
-        "terms": {
-            "deductible": terms.deductible,
-            "limit": number(terms.limit),
-            "franchise": terms.franchise,
-            "share": terms.share,
-            "annual_retention": terms.annual_retention,
-            "annual_limit": number(terms.annual_limit),
-            "retained_cap": number(terms.retained_cap),
-        },
-        "description": terms.describe(),
+        "terms": terms_of(terms),
+        "description": cover.describe(),
         "lines": [line.name for line in book.lines if book.covers_line(cover, line.name)],
         "after": list(cover.after),
-        "order": order,
+        "order": terms.order_of_operations,
+        "reinstatement": None if withheld else reinstatement_of(terms, loss),
         "expected": None if withheld else number(loss.mean()),
         "sd": None if withheld else number(loss.sd()),
         "attachment_probability": None if withheld else float(loss.sf(0.0)),
@@ -164,6 +158,8 @@ def _exhaustion(book: Book, cover: PlacedCover, loss: AnnualLoss) -> float | Non
     none_exhausted = 1.0
     for line in book.lines:
         paid = book.event_payment(cover, line.name)
+        if paid is not None and not np.isfinite(paid.most):
+            return None
         if paid is not None and np.isfinite(paid.most) and paid.most > 0:
             reached = float(line.severity.sf(np.nextafter(paid.starts[-1], 0.0)))
             none_exhausted *= float(np.real(line.frequency.pgf(1.0 - reached)))

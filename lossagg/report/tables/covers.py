@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import Any
 
 from lossagg.report import digits
-from lossagg.report.cells import Absent, Cell, Column, Table
+from lossagg.report.cells import Absent, Cell, Column, Table, clean
 from lossagg.report.reading import Assessment, chance, missing, moment, reasons
 from lossagg.report.tables.totals import level_row
 
@@ -24,7 +24,13 @@ def terms(assessment: Assessment) -> Table:
     """The terms of every cover in the order in which they act."""
     currency = assessment["portfolio"]["currency"]
     rows: list[tuple[Cell, ...]] = [
-        (cover["name"], *_term_cells(cover["terms"]), ", ".join(cover["lines"]), _after(cover["after"]))
+        (
+            cover["name"],
+            *_term_cells(cover["terms"]),
+            ", ".join(cover["lines"]),
+            _after(cover["after"]),
+            cover["description"],
+        )
         for cover in assessment["covers"]
     ]
     columns = (
@@ -37,16 +43,17 @@ def terms(assessment: Assessment) -> Table:
         Column("Share", "level"),
         Column("Lines"),
         Column("Pays after"),
+        Column("In words"),
     )
-    orders = tuple(dict.fromkeys(cover["order"] for cover in assessment["covers"]))
-    notes = tuple(f"Order of operations: {order}." for order in orders)
+    notes = _orders(assessment["covers"])
     return Table("Cover terms", f"Covers: terms, {currency}", columns, tuple(rows), notes)
 
 
 def _term_cells(given: dict[str, Any]) -> tuple[Cell, ...]:
     deductible: Cell = given["deductible"]
-    if given["franchise"]:
-        deductible = f"{digits.significant(given['deductible'], 15)} (franchise)"
+    kind = _deductible_kind(given)
+    if kind:
+        deductible = f"{digits.significant(given['deductible'], 15)} ({kind})"
     return (
         deductible,
         _limit(given["limit"]),
@@ -55,6 +62,42 @@ def _term_cells(given: dict[str, Any]) -> tuple[Cell, ...]:
         _limit(given["annual_limit"]),
         given["share"],
     )
+
+
+def _deductible_kind(given: dict[str, Any]) -> str:
+    """What makes a deductible other than an ordinary one; empty for that."""
+    if given["franchise"]:
+        return "franchise"
+    if given.get("disappears_at") is not None:
+        return f"disappears at {digits.significant(given['disappears_at'], 15)}"
+    if given.get("limit_includes_deductible"):
+        return "within the limit"
+    return "self-insured" if given.get("self_insured") else ""
+
+
+def _orders(covers: list[dict[str, Any]]) -> tuple[str, ...]:
+    """In which order the terms act; with the names of the covers where they differ."""
+    orders: dict[str, list[str]] = {}
+    for cover in covers:
+        orders.setdefault(cover["order"], []).append(clean(cover["name"]))
+    if len(orders) == 1:
+        return tuple(f"Order of operations: {order}." for order in orders)
+    return tuple(f"Order of operations of {', '.join(names)}: {order}." for order, names in orders.items())
+
+
+def _reinstatement_notes(covers: list[dict[str, Any]]) -> tuple[str, ...]:
+    """Pure premiums of the covers whose reinstatements are paid."""
+    paid = [(cover["name"], cover["reinstatement"]) for cover in covers if cover.get("reinstatement")]
+    return tuple(
+        f"{clean(name)}: an initial premium of {_money(premium['initial_premium'])} with an expected reinstatement "
+        f"premium of {_money(premium['reinstatement_premium'])} ({premium['fraction']:.4f} of it) pays the "
+        "expected annual cost; neither is counted in the net."
+        for name, premium in paid
+    )
+
+
+def _money(value: float) -> str:
+    return digits.significant(value, 6)
 
 
 def _after(names: list[str]) -> str:
@@ -90,6 +133,7 @@ def results(assessment: Assessment) -> Table:
         "Expected annual cost is what the cover pays on average in a year, without expenses or loadings. "
         "Attachment: the cover pays at all in a year. Exhaustion: it pays its annual limit in full; without "
         "one, some event uses up the limit per event.",
+        *_reinstatement_notes(assessment["covers"]),
     )
     return Table("Covers", f"Covers: cost, {currency} a year", columns, tuple(rows), notes)
 

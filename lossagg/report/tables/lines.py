@@ -53,8 +53,19 @@ def overview(assessment: Assessment) -> Table:
     notes = (
         f"Amounts in {currency}, gross, at the exposure of the forecast period. ± is one standard error.",
         "Tail index: moments of this order and above do not exist.",
+        *_expenses(assessment["lines"]),
     )
     return Table("Lines", f"Lines, {currency}", columns, tuple(rows), notes)
+
+
+def _expenses(entries: list[Entry]) -> tuple[str, ...]:
+    """Which annual amounts include adjustment expense."""
+    return tuple(
+        f"{clean(line['name'])}: annual amounts include adjustment expense of {100 * line['expense']:.4g} % "
+        "of every loss; the mean loss does not."
+        for line in entries
+        if line.get("expense")
+    )
 
 
 def _tail(size: Entry) -> Cell:
