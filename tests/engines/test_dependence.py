@@ -216,7 +216,7 @@ def test_counts_are_the_inverse_of_the_distribution(kernel):
     truth[means == 0] = 0
     np.testing.assert_array_equal(counts[:-1], truth[:-1])
     # The sum of the probabilities is off by its round-off, below 1e-13.
-    assert stats.poisson.isf(1e-13, 255.0) <= counts[-1] <= stats.poisson.isf(1e-17, 255.0)
+    assert stats.poisson.isf(1e-13, 255.0) <= counts[-1] <= 400
 
 
 def test_large_means_are_drawn_in_parts():
