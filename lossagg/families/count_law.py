@@ -99,6 +99,6 @@ class CountLaw(Law):
 
 def _generating(function: Callable[[ComplexArray], ComplexArray], z: npt.ArrayLike) -> Any:
     array = np.asarray(z)
-    array = array.astype(np.complex128 if np.iscomplexobj(array) else np.float64)
+    array = array.astype(np.complex128 if np.iscomplexobj(array) else np.float64, copy=False)
     result = function(np.atleast_1d(array))
     return result[0].item() if array.ndim == 0 else result.reshape(array.shape)

@@ -17,6 +17,7 @@ from pydantic.fields import FieldInfo
 
 from lossagg.errors import InputError, place
 from lossagg.portfolio.preparing import PreparingKeys
+from lossagg.portfolio.pricing_sections import OptionGrid, OptionSection, PricingSection
 from lossagg.portfolio.sections import Amount, Name, Positive, Probability, Section, Terms, hyphenated
 from lossagg.portfolio.tower_sections import TowerSection
 
@@ -166,6 +167,9 @@ class PortfolioFile(Section):
     line: Annotated[tuple[LineSection, ...], Field(min_length=1, strict=False)]
     cover: Annotated[tuple[CoverSection, ...], Field(strict=False)] = ()
     tower: Annotated[tuple[TowerSection, ...], Field(strict=False)] = ()
+    pricing: PricingSection = PricingSection()
+    option: Annotated[tuple[OptionSection, ...], Field(strict=False)] = ()
+    option_grid: OptionGrid | None = None
 
 
 def read_portfolio_file(path: Path) -> PortfolioFile:

@@ -1,0 +1,219 @@
+"""All options on the same simulated losses: the check of the exact figures, and what only it can tell.
+
+The losses are those of the simulation engine (same seed, lines and years: same losses), so options differ
+by their terms alone and the probability that one beats another is not drowned in noise.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from lossagg.arrays import FloatArray
+from lossagg.engines.book import Book, Line
+from lossagg.engines.quantile_table import quantile_table
+from lossagg.engines.sampled import SimulatedAnnualLoss
+from lossagg.engines.search_table import count_sampler
+from lossagg.engines.simulation import PreparedLine, available_cores, line_sums, require_resources
+from lossagg.engines.streams import BLOCK_YEARS, line_key
+from lossagg.engines.yearly import LineColumns, ramps
+from lossagg.pricing.option import Events, Option
+
+MEMORY = 2 * 10**9
+
+
+@dataclass(eq=False)
+class Tally:
+    """What the simulated years say of one option.
+
+    Attributes:
+        years: number of years.
+        retained, ceded: mean of the years.
+        retained_sd, ceded_sd: standard deviation of the years.
+        no_loss: part of the years in which nothing is retained.
+        above: per threshold asked for, the part of the years in which more is retained.
+        beats_base: part of the years in which the option costs less than the base option.
+        kept: the retained amounts year by year where they were asked for, else None.
+        paid: the ceded amounts likewise.
+    """
+
+    years: int = 0
+    retained: float = 0.0
+    ceded: float = 0.0
+    retained_sd: float = 0.0
+    ceded_sd: float = 0.0
+    no_loss: float = 0.0
+    above: dict[float, float] = field(default_factory=dict)
+    beats_base: float = 0.0
+    kept: SimulatedAnnualLoss | None = None
+    paid: SimulatedAnnualLoss | None = None
+
+
+def simulate_options(
+    lines: Sequence[Line],
+    options: Sequence[Option],
+    *,
+    base: int,
+    fixed: Sequence[float | None],
+    thresholds: Mapping[str, Sequence[float]],
+    keep: Sequence[bool],
+    years: int,
+    seed: int,
+    workers: int | None = None,
+    progress: Callable[[float], None] | None = None,
+) -> list[Tally]:
+    """Simulate years once and apply every option to them.
+
+    Args:
+        lines: the lines the options are for.
+        options: the options, all with the same event cap.
+        base: index of the base option.
+        fixed: per option, what it costs whatever happens (premium and costs); None where unknown.
+        thresholds: per option name, retained amounts to count the years above.
+        keep: per option, whether its yearly amounts are wanted.
+        years: years to simulate.
+        seed: seed of the simulation engine.
+        workers: threads; the results do not depend on it.
+        progress: called with the part done.
+
+    Raises:
+        EngineError: more years than the machine can hold.
+    """
+    require_resources(years, 2 * sum(keep) + 1, Book(lines=tuple(lines)), MEMORY)
+    columns = _Columns.of(options)
+    by_name = sorted(enumerate(lines), key=lambda pair: pair[1].name)
+    prepared = [columns.line(number, line) for number, line in by_name]
+    room = _Room(options, base, fixed, thresholds, keep, years)
+
+    def block(number: int) -> None:
+        first = number * BLOCK_YEARS
+        size = min(BLOCK_YEARS, years - first)
+        sums = sum(
+            (line_sums(line, seed=seed, block=number, years=size) for line in prepared),
+            start=np.zeros((columns.count, size)),
+        )
+        room.add(number, first, size, {events: sums[k] for events, k in columns.place.items()})
+
+    blocks = range(-(-years // BLOCK_YEARS))
+    with ThreadPoolExecutor(workers or available_cores()) as pool:
+        for finished, _ in enumerate(pool.map(block, blocks), start=1):
+            if progress:
+                progress(finished / len(blocks))
+    return room.tallies(lines)
+
+
+@dataclass(frozen=True)
+class _Columns:
+    """The distinct annual sums of all options: what is added up over lines and events."""
+
+    place: dict[Events, int]
+
+    @classmethod
+    def of(cls, options: Sequence[Option]) -> _Columns:
+        needed = [s for option in options for s in (option.scope, option.paid, option.kept)]
+        return cls({events: k for k, events in enumerate(dict.fromkeys(needed))})
+
+    @property
+    def count(self) -> int:
+        return len(self.place)
+
+    def line(self, number: int, line: Line) -> PreparedLine:
+        rows = [row for events, k in self.place.items() for row in ramps(events[number], k)]
+        columns = LineColumns({}, np.array(rows, dtype=np.float64).reshape(-1, 5), self.count)
+        counts = count_sampler(line.frequency, f"line {line.name!r}")
+        return PreparedLine(line.name, line_key(line.name), counts, quantile_table(line.severity), columns)
+
+
+class _Room:
+    """Running sums per option and block; added up in the order of the blocks at the end."""
+
+    def __init__(
+        self,
+        options: Sequence[Option],
+        base: int,
+        fixed: Sequence[float | None],
+        thresholds: Mapping[str, Sequence[float]],
+        keep: Sequence[bool],
+        years: int,
+    ) -> None:
+        self.options, self.base, self.fixed, self.thresholds = options, base, fixed, thresholds
+        self.years = years
+        self.kept = {k: np.empty((2, years)) for k, wanted in enumerate(keep) if wanted}
+        self.sums: dict[int, list[FloatArray]] = {}
+
+    def add(self, number: int, first: int, size: int, sums: Mapping[Events, FloatArray]) -> None:
+        """Apply every option to one block of years."""
+        base = self.options[self.base]
+        base_retained = sums[base.scope] - base.ceded(sums[base.paid], sums[base.kept])
+        found = []
+        for k, option in enumerate(self.options):
+            ceded = option.ceded(sums[option.paid], sums[option.kept])
+            retained = np.maximum(sums[option.scope] - ceded, 0.0)
+            tiny = 1e-9 * np.maximum(sums[option.scope], 1.0)
+            retained[retained <= tiny] = 0.0
+            if k in self.kept:
+                self.kept[k][:, first : first + size] = retained, ceded
+            beats = np.nan
+            mine, theirs = self.fixed[k], self.fixed[self.base]
+            if mine is not None and theirs is not None:
+                beats = float(np.count_nonzero(retained + mine < base_retained + theirs - tiny))
+            found.append(
+                np.array(
+                    [
+                        retained.sum(),
+                        ceded.sum(),
+                        retained @ retained,
+                        ceded @ ceded,
+                        np.count_nonzero(retained == 0.0),
+                        beats,
+                        *(np.count_nonzero(retained > amount) for amount in self._thresholds(option)),
+                    ]
+                )
+            )
+        self.sums[number] = found
+
+    def _thresholds(self, option: Option) -> list[float]:
+        """Amounts to count the years above, moved by less than a rounding of a sum could be off."""
+        return [amount * (1.0 + 1e-9) for amount in self.thresholds.get(option.name, ())]
+
+    def tallies(self, lines: Sequence[Line]) -> list[Tally]:
+        """The sums as means and shares."""
+        order = min((line.severity.tail_index for line in lines), default=np.inf)
+        results = []
+        for k, option in enumerate(self.options):
+            total = (
+                sum((self.sums[number][k] for number in sorted(self.sums)), start=np.zeros(1)) / self.years
+            )
+            thresholds = self.thresholds.get(option.name, ())
+            tally = Tally(
+                years=self.years,
+                retained=float(total[0]),
+                ceded=float(total[1]),
+                retained_sd=float(np.sqrt(max(total[2] - total[0] ** 2, 0.0))),
+                ceded_sd=float(np.sqrt(max(total[3] - total[1] ** 2, 0.0))),
+                no_loss=float(total[4]),
+                beats_base=float(total[5]),
+                above=dict(zip(thresholds, total[6:].tolist(), strict=True)),
+            )
+            if k in self.kept:
+                kept, paid = self.kept[k]
+                tally.kept = SimulatedAnnualLoss(kept, _order(option, order, retained=True))
+                tally.paid = SimulatedAnnualLoss(paid, _order(option, order, retained=False))
+            results.append(tally)
+        return results
+
+
+def _order(option: Option, order: float, *, retained: bool) -> float:
+    """The order from which on moments do not exist: that of the heaviest line where one huge loss is felt."""
+    if option.event_cap < np.inf or option.terms is None:
+        return np.inf if option.event_cap < np.inf else order
+    huge = np.array([1e200])
+    for k in range(len(option.lines)):
+        cost, paid, kept = option.scope[k](huge), option.paid[k](huge), option.kept[k](huge)
+        ceded = float(option.ceded(paid, kept)[0])
+        if (float(cost[0]) - ceded if retained else ceded) > 1e190:
+            return order
+    return np.inf

@@ -1,0 +1,259 @@
+"""The figures of every option: exact where the year is a function of one sum, else simulated, and checked.
+
+Exact and simulated figures of an option meet here: the mean and the share of simulated years beyond each
+exact quantile must agree within four standard errors, or the figures of that option are withheld.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, field, replace
+from typing import Any
+
+import numpy as np
+
+from lossagg.engines.payment import PaymentLaw
+from lossagg.engines.result import AnnualLoss, TransformedAnnualLoss
+from lossagg.errors import InputError
+from lossagg.pricing.common_years import Tally
+from lossagg.pricing.figure import Figure
+from lossagg.pricing.grid import Grid, Moments
+from lossagg.pricing.lattice_year import LatticeYear
+from lossagg.pricing.option import Events, OneSum, Option
+
+FEW = 100
+FINE, COARSE = 2**17, 2**16
+STANDARD_ERRORS = 4.0
+SIMULATED = "simulated: two annual sums at once"
+
+
+@dataclass
+class Exact:
+    """What the exact engine says of an option; None where it cannot say it.
+
+    Attributes:
+        levels: per level, value at risk and tail value at risk of the retained year.
+        mean, sd: of the retained year.
+        no_loss: probability that nothing is retained.
+        beyond: per level, the range in which P(retained > value at risk) lies.
+        charge: expected amount kept under the deductible beyond the retained cap.
+        ceded, ceded_sd, ceded_tail: expected ceded loss, its standard deviation and tail value at risk.
+    """
+
+    levels: dict[float, tuple[Figure, Figure]] = field(default_factory=dict)
+    mean: Figure | None = None
+    sd: Figure | None = None
+    no_loss: Figure | None = None
+    beyond: dict[float, tuple[float, float]] = field(default_factory=dict)
+    charge: Figure | None = None
+    ceded: Figure | None = None
+    ceded_sd: Figure | None = None
+    ceded_tail: Figure | None = None
+
+
+def exact_figures(
+    grid: Grid,
+    options: Sequence[Option],
+    levels: Sequence[float],
+    *,
+    tail_level: float | None,
+    progress: Callable[[float], None] | None = None,
+) -> list[Exact]:
+    """Every figure of the exact engine, each distinct annual sum computed once.
+
+    Args:
+        grid: the exact engine on the lines priced.
+        options: the options.
+        levels: levels of the retained year.
+        tail_level: level of the tail value at risk of the ceded year, where the risk load needs one.
+        progress: called with the part done.
+    """
+    found = [Exact() for _ in options]
+    readers: dict[Events, list[Callable[[LatticeYear], None]]] = {}
+    for option, exact in zip(options, found, strict=True):
+        for events, reader in _wanted(option, exact, levels, tail_level):
+            readers.setdefault(events, []).append(reader)
+    for events, year in grid.years(readers, progress):
+        for reader in readers[events]:
+            reader(year)
+    _by_formula(grid, options, found)
+    return found
+
+
+def _wanted(
+    option: Option, exact: Exact, levels: Sequence[float], tail_level: float | None
+) -> list[tuple[Events, Callable[[LatticeYear], None]]]:
+    """The annual sums an option needs a distribution of, and what is read from each."""
+    wanted: list[tuple[Events, Callable[[LatticeYear], None]]] = []
+    retained, ceded = option.retained_plan, option.ceded_plan
+    if retained is not None:
+        wanted.append((retained.events, lambda year: _read_retained(year, retained, exact, levels)))
+    if ceded is not None and option.terms is not None:
+        if not ceded.annual.is_identity:
+            wanted.append((ceded.events, lambda year: _read_ceded(year, ceded, exact)))
+        if tail_level is not None:
+            wanted.append((ceded.events, lambda year: _read_tail(year, ceded, exact, tail_level)))
+    if option.terms is not None and option.terms.retained_cap < np.inf:
+        cap = option.terms.retained_cap
+        wanted.append((option.kept, lambda year: _read_charge(year, cap, exact)))
+    return wanted
+
+
+def _paid(year: LatticeYear, plan: OneSum) -> AnnualLoss:
+    return year if plan.annual.is_identity else TransformedAnnualLoss(year, plan.annual)
+
+
+def _read_retained(year: LatticeYear, plan: OneSum, exact: Exact, levels: Sequence[float]) -> None:
+    loss = _paid(year, plan)
+    exact.mean, exact.sd = Figure.measured(loss, "mean"), Figure.measured(loss, "sd")
+    chance = 1.0 - float(loss.sf(0.0))
+    exact.no_loss = Figure(chance, None, None, year.engine)
+    for level in levels:
+        var = Figure.measured(loss, "value_at_risk", level)
+        exact.levels[level] = var, Figure.measured(loss, "tail_value_at_risk", level)
+        if var.value is not None:
+            exact.beyond[level] = _chances(year, loss, var.value)
+
+
+def _chances(year: LatticeYear, loss: AnnualLoss, amount: float) -> tuple[float, float]:
+    if loss is year:
+        low, high = year.bounds()
+    else:
+        low, high = loss.bounds()  # type: ignore[attr-defined]
+    return float(low.sf(amount)), float(high.sf(amount))
+
+
+def _read_ceded(year: LatticeYear, plan: OneSum, exact: Exact) -> None:
+    loss = _paid(year, plan)
+    exact.ceded, exact.ceded_sd = Figure.measured(loss, "mean"), Figure.measured(loss, "sd")
+
+
+def _read_tail(year: LatticeYear, plan: OneSum, exact: Exact, level: float) -> None:
+    exact.ceded_tail = Figure.measured(_paid(year, plan), "tail_value_at_risk", level)
+
+
+def _read_charge(year: LatticeYear, cap: float, exact: Exact) -> None:
+    low, high = (side.layer_mean(cap) for side in year.bounds())
+    exact.charge = Figure(year.layer_mean(cap), low, high, year.engine)
+
+
+def _by_formula(grid: Grid, options: Sequence[Option], found: Sequence[Exact]) -> None:
+    """Moments that need no distribution: of ceded years without annual terms, and what follows."""
+    plain = [k for k, o in enumerate(options) if o.ceded_plan is not None and o.ceded_plan.annual.is_identity]
+    events = [plan.events for k in plain if (plan := options[k].ceded_plan) is not None]
+    for k, moment in zip(plain, grid.moments(events), strict=True):
+        found[k].ceded, found[k].ceded_sd = Figure.exact(moment.mean), Figure.exact(moment.sd)
+    whole = gross_moments(grid, options[0]).mean
+    for option, exact in zip(options, found, strict=True):
+        chance = nothing_retained(option)
+        if chance is not None:
+            exact.no_loss = Figure.exact(chance)
+        if exact.ceded is None and exact.mean is not None:
+            exact.ceded = exact.mean.taken_from(whole)
+        if exact.mean is None and exact.ceded is not None:
+            exact.mean = exact.ceded.taken_from(whole)
+
+
+def gross_moments(grid: Grid, option: Option) -> Moments:
+    """Mean and second moment of the year's losses in scope."""
+    return grid.moments([option.scope])[0]
+
+
+def retained_events(option: Option) -> float:
+    """Expected number of events a year of which something stays with the insured before annual terms."""
+    share = 1.0 if option.terms is None else option.terms.year_share
+    total = 0.0
+    for line, scope, paid in zip(option.lines, option.scope, option.paid, strict=True):
+        left = scope if option.terms is None else scope - paid.scaled(share)
+        total += line.frequency.mean() * PaymentLaw(line.severity, left).paying
+    return total
+
+
+def nothing_retained(option: Option) -> float | None:
+    """P(nothing retained), exactly, where no annual term decides it."""
+    plan = option.retained_plan
+    if plan is None or not plan.annual.is_identity:
+        return None
+    chance = 1.0
+    for line, events in zip(option.lines, plan.events, strict=True):
+        chance *= float(line.frequency.pgf(1.0 - PaymentLaw(line.severity, events).paying))
+    return chance
+
+
+def increased_limit_factor(option: Option, basic: float | None, expense: float) -> float | None:
+    """What the option's limit costs per event against the basic limit at the same deductible."""
+    if basic is None or option.terms is None or option.terms.limit == np.inf:
+        return None
+    try:
+        basis = replace(option, terms=replace(option.terms, limit=basic))
+        own, other = _per_event(option), _per_event(basis)
+    except InputError:
+        return None
+    return (own + expense) / (other + expense) if np.isfinite(own) and other + expense > 0 else None
+
+
+def _per_event(option: Option) -> float:
+    count = sum(line.frequency.mean() for line in option.lines)
+    pairs = zip(option.lines, option.paid, strict=True)
+    return sum(line.frequency.mean() * PaymentLaw(line.severity, paid).mean for line, paid in pairs) / count
+
+
+def simulated_figures(exact: Exact, tally: Tally, levels: Sequence[float], whole: float) -> Exact:
+    """What the exact engine could not say, from the simulated years; the rest stays."""
+    kept, paid = tally.kept, tally.paid
+    if kept is None or paid is None:
+        return exact
+    filled = replace(exact)
+    if not filled.levels:
+        filled.levels = {
+            level: (
+                Figure.measured(kept, "value_at_risk", level),
+                Figure.measured(kept, "tail_value_at_risk", level),
+            )
+            for level in levels
+        }
+        half = 1.96 * float(np.sqrt(tally.no_loss * (1.0 - tally.no_loss) / tally.years))
+        filled.no_loss = Figure(tally.no_loss, tally.no_loss - half, tally.no_loss + half, kept.engine)
+    filled.mean = filled.mean or Figure.measured(kept, "mean")
+    filled.sd = filled.sd or Figure.measured(kept, "sd")
+    filled.ceded = filled.ceded or filled.mean.taken_from(whole)
+    filled.ceded_sd = filled.ceded_sd or Figure.measured(paid, "sd")
+    return filled
+
+
+def agreement(exact: Exact, tally: Tally, levels: Sequence[float]) -> dict[str, Any]:
+    """Exact against simulated figures of one option: the verdict and every comparison."""
+    comparisons = []
+    if exact.mean is not None and exact.mean.value is not None and exact.mean.engine != "simulation":
+        error = tally.retained_sd / float(np.sqrt(tally.years))
+        comparisons.append(_compared("expected retained", None, exact.mean, tally.retained, error))
+    for level in levels:
+        if level not in exact.beyond:
+            continue
+        low, high = exact.beyond[level]
+        var = exact.levels[level][0].value
+        share = tally.above.get(float(var or 0.0))
+        if share is None:
+            continue
+        middle = max(low, 1e-12)
+        error = float(np.sqrt(max(middle * (1.0 - middle), 1e-12) / tally.years))
+        figure = Figure(max(min(share, high), low), low, high, "")
+        comparisons.append(_compared("years beyond the worst year", level, figure, share, error))
+    return {"agrees": all(row["agrees"] for row in comparisons), "comparisons": comparisons}
+
+
+def _compared(
+    measure: str, level: float | None, exact: Figure, simulated: float, error: float
+) -> dict[str, Any]:
+    value = exact.value or 0.0
+    low = value if exact.low is None else min(exact.low, value)
+    high = value if exact.high is None else max(exact.high, value)
+    slack = STANDARD_ERRORS * error + 1e-9 * max(abs(value), 1.0) * float(level is None)
+    return {
+        "measure": measure,
+        "level": level,
+        "exact": [low, high],
+        "simulated": simulated,
+        "standard_error": error,
+        "agrees": bool(low - slack <= simulated <= high + slack),
+    }

@@ -1,0 +1,137 @@
+"""What the records leave open: laws drawn from the uncertainty of the fits.
+
+Severity first: the estimates are taken as jointly normal with the fit's covariance, on the scale of each
+parameter's range (its logarithm where positive, its log-odds for a probability), which is large-sample
+theory (Klugman, Panjer & Willmot, Loss Models, ch. on variance of maximum likelihood). Then frequency: its
+own draw, moved by what the drawn severity says of the part of losses above the reporting threshold, since
+only their number was seen. The trap: drawn independently, a light severity would keep the many small
+losses that only a heavy one needs, and the range would be far too wide.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+from typing import Any
+
+import numpy as np
+from scipy import special
+
+from lossagg.arrays import FloatArray
+from lossagg.engines.book import Line
+from lossagg.engines.streams import line_key
+from lossagg.errors import LossaggError
+from lossagg.families import make_count_law, make_size_law
+from lossagg.families.base import CountLaw, SizeLaw
+from lossagg.fitting import Fit
+from lossagg.portfolio.line import LineModel
+
+_STREAM = 0x70726963
+_FARTHEST = 30.0
+
+
+def drawn_lines(models: Sequence[LineModel], draws: int, seed: int) -> Iterator[tuple[Line, ...]]:
+    """The lines under other parameters that the records allow, one tuple per draw.
+
+    Lines whose laws are given stay as they are. A draw that is no law (a probability of 1, say) is
+    drawn again, up to a hundred times.
+
+    Args:
+        models: the lines with their fits.
+        draws: how many.
+        seed: seed; every line has its own stream, so other lines change nothing.
+    """
+    streams = [
+        np.random.default_rng(np.random.SeedSequence(seed, spawn_key=(_STREAM, *line_key(model.name))))
+        for model in models
+    ]
+    for _ in range(draws):
+        yield tuple(_drawn(model, random) for model, random in zip(models, streams, strict=True))
+
+
+def uncertain(models: Sequence[LineModel]) -> bool:
+    """Whether any law was fitted, so that its parameters are uncertain."""
+    return any(model.severities is not None or model.frequencies is not None for model in models)
+
+
+def _drawn(model: LineModel, random: np.random.Generator) -> Line:
+    line = model.line
+    severity = _severity(model, random)
+    frequency = _frequency(model, severity, random)
+    return Line(
+        name=line.name,
+        frequency=frequency,
+        severity=severity,
+        expense=line.expense,
+        sum_insured=line.sum_insured,
+    )
+
+
+def _severity(model: LineModel, random: np.random.Generator) -> SizeLaw:
+    if model.severities is None:
+        return model.severity
+    fit = model.severities.chosen
+    for _ in range(100):
+        try:
+            return make_size_law(**_replaced(fit.model.to_dict(), moved(fit, random)))
+        except LossaggError:
+            continue
+    return model.severity
+
+
+def _frequency(model: LineModel, severity: SizeLaw, random: np.random.Generator) -> CountLaw:
+    if model.frequencies is None or model.prepared is None or model.seen is None:
+        return model.frequency
+    fit, years = model.frequencies.chosen, model.prepared.years
+    survival = np.asarray(model.severity.sf(years.threshold))
+    ratio = np.asarray(severity.sf(years.threshold)) / np.where(survival > 0, survival, 1.0)
+    seen = float(np.sum(model.seen * ratio))
+    if not seen > 0:
+        return model.frequency
+    for _ in range(100):
+        try:
+            law = make_count_law(**_replaced(fit.model.to_dict(), moved(fit, random)))
+            return law.with_exposure(model.forecast_exposure * float(np.sum(model.seen)) / seen)
+        except LossaggError:
+            continue
+    return model.frequency
+
+
+def moved(fit: Fit, random: np.random.Generator) -> dict[str, float]:
+    """Parameters drawn around the estimates; those held fixed stay."""
+    names = [name for name in fit.parameters if name not in fit.fixed]
+    index = [list(fit.parameters).index(name) for name in names]
+    estimates = np.array([fit.parameters[name] for name in names])
+    slopes = np.array([_slope(fit.ranges.get(n, "real"), v) for n, v in zip(names, estimates, strict=True)])
+    covariance = fit.covariance[np.ix_(index, index)] * np.outer(slopes, slopes)
+    steps = np.clip(_root(covariance) @ random.standard_normal(len(names)), -_FARTHEST, _FARTHEST)
+    return {
+        name: _step(fit.ranges.get(name, "real"), value, step)
+        for name, value, step in zip(names, estimates.tolist(), steps.tolist(), strict=True)
+    }
+
+
+def _root(covariance: FloatArray) -> FloatArray:
+    """A square root of a covariance, also where it has no full rank."""
+    values, vectors = np.linalg.eigh((covariance + covariance.T) / 2.0)
+    return np.asarray(vectors * np.sqrt(np.maximum(values, 0.0)))
+
+
+def _slope(kind: str, value: float) -> float:
+    if kind == "positive":
+        return 1.0 / value
+    return 1.0 / (value * (1.0 - value)) if kind == "probability" else 1.0
+
+
+def _step(kind: str, value: float, step: float) -> float:
+    if kind == "positive":
+        return value * float(np.exp(step))
+    return float(special.expit(special.logit(value) + step)) if kind == "probability" else value + step
+
+
+def _replaced(law: dict[str, Any], parameters: dict[str, float]) -> dict[str, Any]:
+    """A law as plain data with parameters replaced; dotted names reach into the laws it is made of."""
+    changed = dict(law)
+    for name, value in parameters.items():
+        part, _, rest = name.partition(".")
+        changed[part] = _replaced(changed[part], {rest: value}) if rest else value
+    return changed
