@@ -9,6 +9,7 @@ from lossagg.engines.book import GROSS, NET, Book, Subject
 from lossagg.engines.crosscheck import crosscheck
 from lossagg.engines.result import AnnualLoss, BookResult
 from lossagg.portfolio.assessment import (
+    WITHHELD,
     Data,
     cover_of,
     crosscheck_of,
@@ -51,11 +52,12 @@ def figures(
     results: dict[str, BookResult],
     levels: Sequence[float],
     capital_level: float,
+    broken: str = "",
 ) -> Data:
     """Lines, gross, net, covers, crosscheck and headline of the assessment."""
     asked = tuple(sorted({*levels, capital_level}))
     check = crosscheck(book, results, asked)
-    withheld = not check.agrees
+    withheld = broken or ("" if check.agrees else WITHHELD)
     best = {subject: _best(results, subject) for subject in book.subjects}
 
     def whole(subject: Subject) -> Data:
@@ -65,7 +67,7 @@ def figures(
 
     headline = NET if book.covers else GROSS
     return {
-        "headline": headline_of(headline, best[headline][0], capital_level, check),
+        "headline": headline_of(headline, best[headline][0], capital_level, check, withheld=broken),
         "lines": [
             _line(model, best[Subject("line", model.name)][0], levels, withheld=withheld) for model in lines
         ],
@@ -79,7 +81,7 @@ def figures(
     }
 
 
-def _line(model: LineModel, loss: AnnualLoss, levels: Sequence[float], *, withheld: bool) -> Data:
+def _line(model: LineModel, loss: AnnualLoss, levels: Sequence[float], *, withheld: str) -> Data:
     return {
         **line_evidence(model),
         "expense": model.expense,

@@ -43,7 +43,7 @@ class Assessment:
 
     @property
     def withheld(self) -> bool:
-        """Whether the headline is withheld because the engines disagree."""
+        """Whether the headline is withheld: engines, or records and control totals, disagree."""
         return bool(self.data["headline"]["withheld"])
 
     def to_dict(self) -> Data:
@@ -73,10 +73,10 @@ def number(value: float) -> float | None:
     return float(value) if np.isfinite(value) else None
 
 
-def figure(loss: AnnualLoss, measure: str, level: float | None, *, withheld: bool) -> Data:
-    """{value, low, high, engine, reason} of one measure."""
+def figure(loss: AnnualLoss, measure: str, level: float | None, *, withheld: str) -> Data:
+    """{value, low, high, engine, reason} of one measure; `withheld` says why it is, "" where it is not."""
     if withheld:
-        return {"value": None, "low": None, "high": None, "engine": loss.engine, "reason": WITHHELD}
+        return {"value": None, "low": None, "high": None, "engine": loss.engine, "reason": withheld}
     value = number(loss.measure(measure, level))
     if value is None:
         reason = NO_VARIANCE if measure == "sd" else NO_MEAN
@@ -88,7 +88,7 @@ def figure(loss: AnnualLoss, measure: str, level: float | None, *, withheld: boo
     return {"value": value, "low": number(low), "high": number(high), "engine": loss.engine, "reason": None}
 
 
-def levels_of(loss: AnnualLoss, levels: Sequence[float], *, withheld: bool) -> list[Data]:
+def levels_of(loss: AnnualLoss, levels: Sequence[float], *, withheld: str) -> list[Data]:
     """VaR and TVaR at each level."""
     return [
         {
@@ -102,12 +102,12 @@ def levels_of(loss: AnnualLoss, levels: Sequence[float], *, withheld: bool) -> l
 
 
 def subject_of(
-    loss: AnnualLoss, levels: Sequence[float], *, exact: bool, withheld: bool, note: str | None
+    loss: AnnualLoss, levels: Sequence[float], *, exact: bool, withheld: str, note: str | None
 ) -> Data:
     """Gross or net: mean, sd, levels and the exceedance curve."""
     curve = []
     for exceedance in () if withheld else CURVE:
-        var = figure(loss, "value_at_risk", 1.0 - float(exceedance), withheld=False)
+        var = figure(loss, "value_at_risk", 1.0 - float(exceedance), withheld="")
         curve.append(
             {"exceedance": float(exceedance), "value": var["value"], "low": var["low"], "high": var["high"]}
         )
@@ -123,7 +123,7 @@ def subject_of(
 
 
 def cover_of(
-    book: Book, cover: PlacedCover, loss: AnnualLoss, levels: Sequence[float], *, withheld: bool
+    book: Book, cover: PlacedCover, loss: AnnualLoss, levels: Sequence[float], *, withheld: str
 ) -> Data:
     """One cover: its terms, its expected cost, and how often it attaches and exhausts."""
     terms = cover.terms
@@ -201,9 +201,20 @@ def _comparison(comparison: Comparison) -> Data:
     }
 
 
-def headline_of(subject: Subject, loss: AnnualLoss, level: float, check: Crosscheck) -> Data:
-    """The capital figure: VaR at the capital level, and the same less the mean."""
-    withheld = not check.agrees
+def headline_of(
+    subject: Subject, loss: AnnualLoss, level: float, check: Crosscheck, *, withheld: str = ""
+) -> Data:
+    """The capital figure: VaR at the capital level, and the same less the mean.
+
+    Args:
+        subject: gross or net.
+        loss: its annual loss.
+        level: the capital level.
+        check: the crosscheck, which withholds it where the engines disagree.
+        withheld: why else it is withheld, "" where nothing else does.
+    """
+    reason = withheld if check.agrees else check.summary
+    withheld = withheld or ("" if check.agrees else WITHHELD)
     var = figure(loss, "value_at_risk", level, withheld=withheld)
     mean = None if withheld else number(loss.mean())
     return {
@@ -213,6 +224,6 @@ def headline_of(subject: Subject, loss: AnnualLoss, level: float, check: Crossch
         **{name: var[name] for name in ("value", "low", "high", "engine")},
         "mean": mean,
         "less_mean": None if mean is None or var["value"] is None else var["value"] - mean,
-        "withheld": withheld,
-        "reason": check.summary if withheld else None,
+        "withheld": bool(withheld),
+        "reason": reason or None,
     }

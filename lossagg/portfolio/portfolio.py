@@ -12,6 +12,7 @@ from lossagg.portfolio.cautions import cautions
 from lossagg.portfolio.files import PORTFOLIO_FILE, LineRecords, portfolio_file, read_records
 from lossagg.portfolio.line import LineModel, build_line
 from lossagg.portfolio.places import placed_covers, tower_cautions
+from lossagg.portfolio.reconciling import reconcile_portfolio
 from lossagg.portfolio.schema import PortfolioFile, read_portfolio_file
 from lossagg.records import PreparedLosses, midpoint, prepare_losses
 from lossagg.version import __version__
@@ -88,7 +89,8 @@ class Portfolio:
             progress: called with the stage and the fraction done.
 
         Returns:
-            The assessment; its headline is withheld where the engines disagree.
+            The assessment; its headline is withheld where the engines disagree, or the records disagree with
+            the control totals stated for them.
 
         Raises:
             InputError: a value of the portfolio file that cannot be used.
@@ -101,11 +103,14 @@ class Portfolio:
         book = Book(lines=tuple(model.line for model in models), covers=placed_covers(self.file))
         results = compute(book, years=years, seed=seed, workers=workers, progress=progress)
         findings = [finding for model in models if model.prepared for finding in model.prepared.findings]
+        controls = reconcile_portfolio(self.file, self.records)
+        findings += controls.findings
         data: Data = {
             "format": FORMAT,
             "portfolio": self._description(),
             "run": {"version": __version__, "seed": seed, "years": years, "inputs": list(self.inputs)},
-            **figures(book, models, results, section.levels, section.capital_level),
+            **figures(book, models, results, section.levels, section.capital_level, broken=controls.withheld),
+            "reconciliation": controls.data,
             "findings": [finding.to_dict() for finding in dict.fromkeys(findings)],
             "cautions": [
                 *cautions(models, sorted({*section.levels, section.capital_level})),

@@ -16,6 +16,7 @@ from pydantic import BaseModel, ConfigDict, Field, ValidationError, field_valida
 from pydantic.fields import FieldInfo
 
 from lossagg.errors import InputError, place
+from lossagg.portfolio.control_sections import ControlKeys
 from lossagg.portfolio.preparing import PreparingKeys
 from lossagg.portfolio.pricing_sections import OptionGrid, OptionSection, PricingSection
 from lossagg.portfolio.sections import Amount, Name, Positive, Probability, Section, Terms, hyphenated
@@ -111,7 +112,7 @@ class FileOptions(Section):
     date_format: str | None = None
 
 
-class LineSection(FileOptions, PreparingKeys):
+class LineSection(FileOptions, PreparingKeys, ControlKeys):
     """`[[line]]`: one class of business, from records or from given laws.
 
     Without `forecast-exposure` the forecast year has the exposure of the last year, that of the whole year

@@ -2,6 +2,7 @@
 
 from lossagg.records.basis import ground_up_losses, line_rows, undeclared_deductibles
 from lossagg.records.check import CheckedLosses, check_losses
+from lossagg.records.controls import ControlResult, ControlTotal, control_findings, reconcile_controls
 from lossagg.records.currency import RateTable, convert_losses, read_rates
 from lossagg.records.development import Development
 from lossagg.records.exposure import ExposureTable, read_exposure
@@ -17,6 +18,8 @@ from lossagg.records.years import YearTable
 
 __all__ = [
     "CheckedLosses",
+    "ControlResult",
+    "ControlTotal",
     "Developed",
     "Development",
     "ExposureTable",
@@ -30,6 +33,7 @@ __all__ = [
     "TrendIndex",
     "YearTable",
     "check_losses",
+    "control_findings",
     "convert_losses",
     "ground_up_losses",
     "line_rows",
@@ -39,5 +43,6 @@ __all__ = [
     "read_losses",
     "read_rates",
     "read_trend_index",
+    "reconcile_controls",
     "undeclared_deductibles",
 ]

@@ -106,6 +106,7 @@ def _data_status(assessment: Assessment) -> str:
         verdict = "records reconcile" if kept else "RECORDS DO NOT RECONCILE"
         used = sum(line["records"]["used"] for line in recorded)
         parts.append(f"{verdict} for {_plural(len(recorded), 'line')}; {_plural(used, 'record')} used")
+        parts.append(tables.controls.status(assessment))
     if given:
         parts.append(f"{_plural(given, 'line')} with laws given, not fitted")
     return "; ".join(parts)

@@ -81,6 +81,7 @@ def render_report(assessment: Assessment) -> str:
         "sections": [_section(line, index, assessment) for index, line in enumerate(assessment["lines"], 1)],
         "cover_tables": _cover_tables(assessment),
         "reconciliation": tables.records.reconciliation(assessment),
+        "controls": tables.controls.control_totals(assessment),
         "findings": tables.evidence.findings(assessment),
         "facts": tables.evidence.run(assessment),
         "inputs": tables.evidence.inputs(assessment),

@@ -4,9 +4,9 @@ from __future__ import annotations
 
 from lossagg.report.cells import Table
 from lossagg.report.reading import Assessment
-from lossagg.report.tables import covers, evidence, fits, lines, records, totals
+from lossagg.report.tables import controls, covers, evidence, fits, lines, records, totals
 
-__all__ = ["covers", "every_table", "evidence", "fits", "lines", "records", "totals"]
+__all__ = ["controls", "covers", "every_table", "evidence", "fits", "lines", "records", "totals"]
 
 
 def every_table(assessment: Assessment) -> tuple[Table, ...]:
@@ -24,6 +24,7 @@ def every_table(assessment: Assessment) -> tuple[Table, ...]:
         covers.levels(assessment),
         evidence.crosscheck(assessment),
         records.reconciliation(assessment),
+        controls.control_totals(assessment),
         records.by_year(entries, currency),
         *_if_any(records.development(entries, currency)),
         records.steps(entries, currency),
