@@ -1,6 +1,22 @@
 """Fits of counts and sizes to records, with their uncertainty, their evidence and their refusals."""
 
 from lossagg.fitting.compare import Candidates, compare_frequencies, compare_severities
+from lossagg.fitting.count_tests import (
+    CountGoodness,
+    FrequencyTrend,
+    SizeCountTest,
+    count_goodness,
+    frequency_trend,
+    size_count_test,
+)
+from lossagg.fitting.credibility import (
+    Credibility,
+    PosteriorRate,
+    buhlmann_straub,
+    full_credibility,
+    limited_fluctuation,
+    posterior_rate,
+)
 from lossagg.fitting.diagnostics import (
     CountPoints,
     QuantilePoints,
@@ -14,6 +30,7 @@ from lossagg.fitting.goodness import Goodness, goodness
 from lossagg.fitting.goodness_test import GoodnessTest, goodness_test
 from lossagg.fitting.notes import Note
 from lossagg.fitting.overdispersion import Overdispersion, overdispersion
+from lossagg.fitting.regression import PoissonRegression, poisson_regression
 from lossagg.fitting.results import Fit, FrequencyFit, SeverityFit
 from lossagg.fitting.severity import fit_severity
 from lossagg.fitting.spliced import fit_spliced
@@ -22,29 +39,43 @@ from lossagg.fitting.threshold import ThresholdChoice, threshold_choices
 
 __all__ = [
     "Candidates",
+    "CountGoodness",
     "CountPoints",
+    "Credibility",
     "Fit",
     "FrequencyFit",
+    "FrequencyTrend",
     "Goodness",
     "GoodnessTest",
     "Note",
     "Overdispersion",
+    "PoissonRegression",
+    "PosteriorRate",
     "QuantilePoints",
     "SeverityFit",
+    "SizeCountTest",
     "SurvivalPoints",
     "TailPoint",
     "TailQuantile",
     "ThresholdChoice",
+    "buhlmann_straub",
     "compare_frequencies",
     "compare_severities",
+    "count_goodness",
     "count_points",
     "fit_frequency",
     "fit_severity",
     "fit_spliced",
+    "frequency_trend",
+    "full_credibility",
     "goodness",
     "goodness_test",
+    "limited_fluctuation",
     "overdispersion",
+    "poisson_regression",
+    "posterior_rate",
     "quantile_points",
+    "size_count_test",
     "survival_points",
     "tail_points",
     "tail_quantile",

@@ -126,8 +126,8 @@ def test_anderson_darling_given_in_advance_has_the_published_points():
     ("level", "point"), [(0.5, 0.397), (0.25, 0.569), (0.1, 0.796), (0.05, 0.974), (0.01, 1.409)]
 )
 def test_anderson_darling_of_a_fitted_generalized_pareto_law(level, point):
-    """Choulakian & Stephens 2001, Technometrics 43, asymptotic points for shape 0 (value from memory, recomputed,
-    and simulated below)."""
+    """Choulakian & Stephens 2001, Technometrics 43, points for shape 0 (value from memory, recomputed, and
+    simulated below)."""
     weights = darling_weights(estimation_loss(0.0))
     found = optimize.brentq(lambda x: exceedance(x, weights) - level, 0.1, 3)
     assert found == pytest.approx(point, abs=1.5e-3)
