@@ -8,11 +8,12 @@ about 0.004 a (a + 1) (a + 2) (a + 3) (cells)**-4 for t**-a.
 
 The error is measured at three points between the nodes of every cell. A cell fails where the size is
 off by more than 1e-8 of it and the tail probability by more than 1e-8 of it, and wherever an atom, a
-splice point or an end of the support falls. It is then split in 64; parts that fail again are
-flagged, and their draws evaluated by the law itself. So is everything beyond the table, t < 2**-23,
-two losses in ten million. The traps: a kink hides between points of measurement, hence the law's own
-breakpoints; atoms of a law that is discrete throughout would flag everything, hence its exact search
-table; an atom must come out as the very amount, since terms may jump there.
+splice point or an end of the support falls. It is then split in 64; where few parts fail again, as
+they do at a kink, these are split too, up to three times. What still fails is flagged, its draws
+evaluated by the law itself. So is everything beyond the table, t < 2**-23, two losses in ten million.
+The traps: a kink hides between points of measurement, hence the law's own breakpoints; atoms of a law
+that is discrete throughout would flag everything, hence its exact search table; an atom must come out
+as the very amount, since terms may jump there.
 """
 
 from __future__ import annotations
@@ -21,7 +22,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from lossagg.arrays import BoolArray, FloatArray
+from lossagg.arrays import BoolArray, FloatArray, IntArray
 from lossagg.engines.search_table import search_table
 from lossagg.families.base import SizeLaw
 from lossagg.kernels.simulation import REFINED, SizeArrays
@@ -29,6 +30,8 @@ from lossagg.kernels.simulation import REFINED, SizeArrays
 DEPTH = 22
 SUB_BITS = 6
 PARTS = int(REFINED)
+LEVELS = 3
+MOST_REFINED = 64
 TOLERANCE = 1e-8
 LARGEST_SIZE = 1e300
 NODES = np.array([0.0, 0.25, 0.75, 1.0])
@@ -88,27 +91,28 @@ def _cubic_table(law: SizeLaw) -> QuantileTable:
     octaves = 2.0 ** np.arange(-1 - DEPTH, -1)
     left = (octaves[:, None] * (1.0 + np.arange(cells) / cells)).ravel()
     width = np.repeat(octaves / cells, cells)
-    rows, flagged, error = [], 2.0 * float(octaves[0]), 0.0
-    failed = {}
+    rows, flagged, error, used = [], 0.0, 0.0, 0
+    failed: dict[bool, tuple[IntArray, FloatArray, FloatArray]] = {}
     for upper in (True, False):
         cubics, bad, worst = _checked_cubics(law, left, width, upper=upper)
+        failed[upper] = (used + 1 + np.flatnonzero(bad), left[bad], width[bad])
         rows += [np.full((1, 4), np.nan), cubics]
-        failed[upper], error = np.flatnonzero(bad), max(error, worst)
-    base = 0
-    used = sum(part.shape[0] for part in rows)
+        flagged, error, used = flagged + float(octaves[0]), max(error, worst), used + 1 + left.size
     table = np.concatenate(rows)
-    refined = [table]
     for upper in (True, False):
-        cell = failed[upper]
-        part_left = (left[cell, None] + width[cell, None] * np.arange(PARTS) / PARTS).ravel()
-        part_width = np.repeat(width[cell] / PARTS, PARTS)
-        cubics, bad, worst = _checked_cubics(law, part_left, part_width, upper=upper)
-        table[base + 1 + cell, 1] = used + PARTS * np.arange(cell.size)
-        refined.append(cubics)
-        flagged, error = flagged + float(part_width[bad].sum()), max(error, worst)
-        base, used = base + 1 + left.size, used + cubics.shape[0]
+        for level in range(LEVELS):
+            row, left, width = failed[upper]
+            if level > 0 and row.size > MOST_REFINED:
+                break
+            left = (left[:, None] + width[:, None] * np.arange(PARTS) / PARTS).ravel()
+            width = np.repeat(width / PARTS, PARTS)
+            cubics, bad, worst = _checked_cubics(law, left, width, upper=upper)
+            table[row, 1] = table.shape[0] + PARTS * np.arange(row.size)
+            failed[upper] = (table.shape[0] + np.flatnonzero(bad), left[bad], width[bad])
+            table, error = np.concatenate((table, cubics)), max(error, worst)
+        flagged += float(failed[upper][2].sum())
     none = np.empty(0)
-    arrays = SizeArrays(np.concatenate(refined), SUB_BITS, DEPTH, np.empty(0, np.int64), none, none)
+    arrays = SizeArrays(table, SUB_BITS, DEPTH, np.empty(0, np.int64), none, none)
     return QuantileTable(law, arrays, flagged, error)
 
 

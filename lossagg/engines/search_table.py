@@ -1,9 +1,10 @@
 """Exact inversion of a discrete law: a search table, or bisection where that would be too long.
 
-A draw p looks up where to start (the first of the values that the largest p of its cell can reach)
-and walks up while P(X > value) > p: with 2,048 cells about one step (the method of indexed search,
-Chen and Asau 1974; Devroye 1986, section III.2.4). The walk uses survival probabilities, so the upper
-tail is exact to the last of the 53 bits of p.
+Sizes: a draw p looks up where to start (the first of the values that the largest p of its cell can
+reach) and walks up while P(X > value) > p: with 2,048 cells about one step (the method of indexed
+search, Chen and Asau 1974; Devroye 1986, section III.2.4). Counts: ten bits choose one of 1,024
+cells, which nearly always decides; where not, 53 more bits do (Marsaglia 1963, "Generating discrete
+random variables in a computer"). Both use survival probabilities, so the upper tail keeps its digits.
 """
 
 from __future__ import annotations
@@ -15,7 +16,7 @@ import numpy as np
 from lossagg.arrays import FloatArray, IntArray
 from lossagg.errors import EngineError
 from lossagg.families.base import CountLaw
-from lossagg.kernels.simulation import draw_discrete, draw_uniforms
+from lossagg.kernels.simulation import GUIDES, draw_counts, draw_uniforms
 
 CELLS = 2048
 SMALLEST = 2.0**-54
@@ -24,7 +25,7 @@ MOST_IN_A_YEAR = 2.0**40
 
 
 def search_table(survival: FloatArray) -> tuple[IntArray, FloatArray]:
-    """(start of the search per cell, survival probabilities ending in 0), as `draw_discrete` takes them.
+    """(start of the search per cell, survival probabilities ending in 0), as `SizeArrays` holds them.
 
     Args:
         survival: P(X > values[k]) of every value, non-increasing; the last is taken as 0.
@@ -41,20 +42,19 @@ class CountSampler:
 
     Attributes:
         law: the law.
-        first: start of the search per cell; empty where bisection draws instead.
-        survival: P(N > n) for n = 0, 1, ...
+        guide: the count of each cell, see `draw_counts`; empty where bisection draws instead.
+        survival: P(N > n) for n = 0, 1, ..., the last 0.
     """
 
     law: CountLaw
-    first: IntArray
+    guide: np.ndarray
     survival: FloatArray
 
     def draw(self, state: np.ndarray, years: int) -> IntArray:
-        """Counts of consecutive years, shape (years,); advances the generator's state (4 words)."""
-        counts = np.empty(years, dtype=np.int64)
-        if self.first.size:
-            values = np.arange(self.survival.size, dtype=np.int64)
-            draw_discrete(state, self.first, self.survival, values, counts)
+        """Counts of consecutive years, shape (years,); advances the generator."""
+        if self.guide.size:
+            counts = np.empty(years, dtype=np.int64)
+            draw_counts(state, self.guide, self.survival, counts)
             return counts
         p = np.empty(years)
         draw_uniforms(state, p)
@@ -69,9 +69,22 @@ def count_sampler(law: CountLaw, where: str) -> CountSampler:
     """
     highest = _highest_count(law, where)
     if highest >= LONGEST_TABLE:
-        return CountSampler(law, np.empty(0, dtype=np.int64), np.empty(0))
-    first, survival = search_table(np.asarray(law.sf(np.arange(highest + 1.0))))
-    return CountSampler(law, first, survival)
+        return CountSampler(law, np.empty(0, dtype=np.int32), np.empty(0))
+    guide, survival = count_guide(np.asarray(law.sf(np.arange(highest + 1.0))))
+    return CountSampler(law, guide, survival)
+
+
+def count_guide(survival: FloatArray) -> tuple[np.ndarray, FloatArray]:
+    """(count at the lower end of each cell, survival probabilities ending in 0), see `draw_counts`.
+
+    Args:
+        survival: P(N > n) for n = 0, 1, ...; the last is taken as 0.
+    """
+    survival = np.append(survival[:-1], 0.0)
+    ends = np.arange(GUIDES + 1) / GUIDES
+    count = np.searchsorted(-survival, -ends, side="left").astype(np.int64)
+    mixed = np.append(count[:-1] != count[1:], False)
+    return np.where(mixed, -1 - count, count).astype(np.int32), survival
 
 
 def _highest_count(law: CountLaw, where: str) -> int:

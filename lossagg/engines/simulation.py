@@ -27,7 +27,7 @@ from lossagg.engines.yearly import LineColumns, annual_amounts, growth, line_col
 from lossagg.errors import EngineError, InputError
 from lossagg.families.base import CountLaw, SizeLaw
 from lossagg.kernels.compile import awaits_compilation
-from lossagg.kernels.simulation import add_events, add_years, draw_sizes, draw_uniforms
+from lossagg.kernels.simulation import TILE, Kept, Notes, Sums, add_events, add_years
 
 MOST_YEARS = 10**10
 MOST_LOSSES = 1e13
@@ -156,18 +156,15 @@ def run_block(
 
 def line_sums(line: PreparedLine, *, seed: int, block: int, years: int) -> FloatArray:
     """Annual sums of a line's columns in one block, shape (columns, years)."""
-    annual = np.zeros((line.columns.count, years))
-    if line.columns.count == 0:
-        return annual
-    state = block_state(seed, line.key, block)
-    left = line.counts.draw(state, BLOCK_YEARS)[:years]
-    flagged, probability = np.empty(NOTES, dtype=np.int64), np.empty(NOTES)
-    ramps, year = line.columns.ramps, 0
-    while year < years:
-        year, found = add_years(state, line.sizes.arrays, ramps, left, year, annual, flagged, probability)
-        if found:
-            add_events(flagged[:found], line.sizes.exact(probability[:found]), ramps, annual)
-    return annual
+    nothing = np.empty(0)
+    kept = Kept(0, 0, np.empty(0, dtype=np.int64), nothing)
+    annual = np.zeros((line.columns.count, whole_tiles(years)))
+    if line.columns.count:
+        state = block_state(seed, line.key, block)
+        counts = line.counts.draw(state, BLOCK_YEARS)
+        sums = Sums(line.columns.ramps, -1, nothing, annual)
+        _simulate_years(line, state, sums, counts[: annual.shape[1]], years, kept)
+    return annual[:, :years]
 
 
 def block_events(
@@ -187,16 +184,35 @@ def block_events(
     """
     state = block_state(seed, line.key, block)
     counts = line.counts.draw(state, BLOCK_YEARS)
-    before = int(counts[:first].sum())
-    passed = np.empty(min(before, NOTES))
-    while before > 0:
-        draw_uniforms(state, passed[:before])
-        before -= passed.size
-    sizes = np.empty(int(counts[first:last].sum()))
-    flagged, probability = np.empty(sizes.size, dtype=np.int64), np.empty(sizes.size)
-    found = draw_sizes(state, line.sizes.arrays, sizes, flagged, probability, 0)
-    sizes[flagged[:found]] = line.sizes.exact(probability[:found])
-    return counts[first:last], sizes
+    own = counts[first:last]
+    place = np.cumsum(own) - own
+    kept = Kept(first, last, place, np.empty(int(own.sum())))
+    sums = Sums(np.empty((0, 5)), -1, np.empty(0), np.empty((0, whole_tiles(last))))
+    years, sizes = _simulate_years(line, state, sums, counts[: whole_tiles(last)], last, kept)
+    inside = (years >= first) & (years < last)
+    by_year = np.argsort(years[inside], kind="stable")
+    kept.sizes[np.isnan(kept.sizes)] = sizes[inside][by_year]
+    return own, kept.sizes
+
+
+def _simulate_years(
+    line: PreparedLine, state: np.ndarray, sums: Sums, counts: IntArray, years: int, kept: Kept
+) -> tuple[IntArray, FloatArray]:
+    """Run the loops over a block; (year, size) of the losses that the law itself had to answer."""
+    notes = Notes(np.empty(NOTES, dtype=np.int64), np.empty(NOTES))
+    cursor = np.zeros(3, dtype=np.int64)
+    answered = [(np.empty(0, dtype=np.int64), np.empty(0))]
+    while cursor[0] < years:
+        found = add_years(state, line.sizes.arrays, sums, counts, years, cursor, notes, kept)
+        if found:
+            answered.append((notes.year[:found].copy(), line.sizes.exact(notes.probability[:found])))
+            add_events(*answered[-1], sums)
+    return np.concatenate([year for year, _ in answered]), np.concatenate([size for _, size in answered])
+
+
+def whole_tiles(years: int) -> int:
+    """Years up to the end of the tile that the last of them belongs to."""
+    return min(-(-years // TILE) * TILE, BLOCK_YEARS)
 
 
 def require_resources(years: int, subjects: int, book: Book, memory: int) -> None:

@@ -1,19 +1,21 @@
 """The loops of the simulation: random bits, counts, sizes, and what each loss adds to its year.
 
-The generator is SFC64 (Doty-Humphrey 2010, PractRand), stepped here from a state that numpy seeded,
-so that its bits are numpy's own. A draw uses the top bit to choose a half of the distribution and 52
-more for a probability t in (0, 1/2): t is the probability of a larger value in the upper half, of a
-smaller one in the lower half. Neither tail loses digits to 1 - t.
+The generator is SFC64 (Doty-Humphrey 2010, PractRand) in 32 lanes side by side, each seeded as numpy
+seeds its own, so that the processor steps four or eight of them at once. A draw uses the top bit to
+choose a half of the distribution and 52 more for a probability t in (0, 1/2): t is the probability of
+a larger value in the upper half, of a smaller one in the lower half. Neither tail loses digits to 1 - t.
 
 The quantile table is indexed by the floating-point bits of t: the exponent names an octave, the
 leading bits of the mantissa a cell within it, the rest the position within the cell, where a cubic
 is evaluated. A cell that one cubic cannot follow holds NaN and the row of its 64 parts, each with a
 cubic of its own; what even these cannot follow is handed back for exact evaluation.
 
-A payment schedule reaches the loops as ramps, its rising pieces: a ramp adds
-slope * (min(x, end) - start) and a jump where x exceeds the start. Sizes pass through a buffer that
-stays in the first-level cache; each ramp is one pass over it, so a second cover costs a pass, not a
-second simulation.
+Years are sorted by their number of losses, tile by tile of 4,096 years: the losses of years with
+equal counts form a rectangle, one row per loss, one column per year, that is added up row by row
+without a branch that depends on a count (which a processor would guess wrong every year). Sizes pass
+through a buffer that stays in the cache nearest the processor. A payment schedule reaches the loops as
+ramps, its rising pieces: a ramp adds slope * (min(x, end) - start) and a jump where x exceeds the
+start; each is one pass over the buffer, so a second cover costs a pass, not a second simulation.
 
 One file on purpose: the cache on disk notices a change of this file, not of a file it calls.
 """
@@ -27,11 +29,19 @@ import numpy as np
 from lossagg.arrays import FloatArray, IntArray
 from lossagg.kernels.compile import compiled
 
-U1, U3, U11, U24, U40, U63 = (np.uint64(k) for k in (1, 3, 11, 24, 40, 63))
-MANTISSA = np.uint64(2**53 - 1)
+U1, U3, U4, U11, U16, U24, U32, U40, U63 = (np.uint64(k) for k in (1, 3, 4, 11, 16, 24, 32, 40, 63))
+WORD = np.uint64(2**32 - 1)
+MANTISSA = np.uint64(2**52 - 1)
+ONE = np.uint64(0x3FF0000000000000)  # the bits of 1.0
+LANES = 32
 REFINED = 64.0
-BUFFER = 4096
-SPARSE = 2  # losses a year up to which `add_sparse` is faster, as measured
+BUFFER = 2048  # draws between two visits of the annual sums; a multiple of LANES
+TILE = 4096  # years sorted together by their counts
+LONG = 512  # losses from which on a year is simulated by itself
+NARROW = 8  # least number of years of one count that are simulated together
+COUNT_BITS = 10
+COUNTS_PER_WORD = 6
+GUIDES = 2**COUNT_BITS
 
 
 class SizeArrays(NamedTuple):
@@ -56,69 +66,272 @@ class SizeArrays(NamedTuple):
     values: FloatArray
 
 
-@compiled
-def next_bits(
-    a: np.uint64, b: np.uint64, c: np.uint64, count: np.uint64
-) -> tuple[np.uint64, np.uint64, np.uint64, np.uint64, np.uint64]:
-    """64 random bits and the generator's next state."""
-    bits = a + b + count
-    return bits, b ^ (b >> U11), c + (c << U3), ((c << U24) | (c >> U40)) + bits, count + U1
+class Sums(NamedTuple):
+    """What is added up, and where.
+
+    Attributes:
+        ramps: shape (R, 5): column, start, end, slope, jump.
+        largest: the column that receives the largest loss of each year; -1 for none.
+        scale: shape (years,): factor on every loss of a year; shape (0,) for none.
+        annual: shape (columns, years), added to.
+    """
+
+    ramps: FloatArray
+    largest: int
+    scale: FloatArray
+    annual: FloatArray
+
+
+class Notes(NamedTuple):
+    """Losses to be evaluated exactly; until then they have added nothing.
+
+    Attributes:
+        year: the year of each.
+        probability: its t, positive in the upper half, negative in the lower.
+    """
+
+    year: IntArray
+    probability: FloatArray
+
+
+class Kept(NamedTuple):
+    """Which losses are kept one by one.
+
+    Attributes:
+        first: the first year of which they are.
+        last: the year after the last.
+        place: where the losses of each of these years begin in `sizes`.
+        sizes: receives them, NaN for those in the notes.
+    """
+
+    first: int
+    last: int
+    place: IntArray
+    sizes: FloatArray
 
 
 @compiled
-def draw_uniforms(state: np.ndarray, out: FloatArray) -> None:
-    """Fill `out` with probabilities in (0, 1], resolution 2**-53, and advance the state (4 words)."""
-    a, b, c, count = state[0], state[1], state[2], state[3]
-    for i in range(out.shape[0]):
-        bits, a, b, c, count = next_bits(a, b, c, count)
-        out[i] = (np.float64(np.int64(bits >> U11)) + 0.5) * 2.0**-53
-    state[0], state[1], state[2], state[3] = a, b, c, count
+def seed_lanes(entropy: np.ndarray, lanes: np.ndarray) -> None:
+    """Seed all lanes by the words that numpy's SeedSequence generates, three for each lane.
 
-
-@compiled
-def draw_discrete(
-    state: np.ndarray, first: IntArray, survival: FloatArray, values: np.ndarray, out: np.ndarray
-) -> None:
-    """Fill `out` with exact draws of a discrete law: the smallest value with P(X > value) <= p.
+    O'Neill's seeding (2015, "Developing a seed_seq alternative") as numpy defines it, then numpy's
+    twelve idle steps of SFC64. Lane 0 is numpy's own SFC64 of the same SeedSequence.
 
     Args:
-        state: the generator, 4 words, advanced.
-        first: shape (G,): index of the value at the largest p of each of G equal cells.
-        survival: P(X > values[k]), decreasing to 0.
-        values: the values, increasing.
-        out: receives the draws.
+        entropy: 32-bit words in uint64, at least 4: the seed padded to 4 words, then the spawn key.
+        lanes: shape (4, LANES), uint64, overwritten.
     """
-    a, b, c, count = state[0], state[1], state[2], state[3]
-    cells = first.shape[0]
+    pool = np.zeros(4, np.uint64)
+    constant = np.uint64(0x43B0D7E5)
+    for i in range(4):
+        pool[i], constant = hash_word(entropy[i], constant, np.uint64(0x931E8875))
+    for source in range(4):
+        for target in range(4):
+            if source != target:
+                hashed, constant = hash_word(pool[source], constant, np.uint64(0x931E8875))
+                pool[target] = mix_words(pool[target], hashed)
+    for source in range(4, entropy.shape[0]):
+        for target in range(4):
+            hashed, constant = hash_word(entropy[source], constant, np.uint64(0x931E8875))
+            pool[target] = mix_words(pool[target], hashed)
+    constant = np.uint64(0x8B51F9DD)
+    for lane in range(LANES):
+        for k in range(3):
+            low, constant = hash_word(pool[(6 * lane + 2 * k) % 4], constant, np.uint64(0x58F38DED))
+            high, constant = hash_word(pool[(6 * lane + 2 * k + 1) % 4], constant, np.uint64(0x58F38DED))
+            lanes[k, lane] = low | (high << U32)
+        lanes[3, lane] = U1
+    draw_bits(lanes, np.empty(12 * LANES, np.uint64))
+
+
+@compiled
+def hash_word(word: np.uint64, constant: np.uint64, factor: np.uint64) -> tuple[np.uint64, np.uint64]:
+    """One 32-bit word hashed, and the next hash constant."""
+    word = (word ^ constant) & WORD
+    constant = (constant * factor) & WORD
+    word = (word * constant) & WORD
+    return word ^ (word >> U16), constant
+
+
+@compiled
+def mix_words(x: np.uint64, y: np.uint64) -> np.uint64:
+    """Two 32-bit words mixed into one."""
+    mixed = (np.uint64(0xCA01F9DD) * x - np.uint64(0x4973F715) * y) & WORD
+    return mixed ^ (mixed >> U16)
+
+
+@compiled
+def draw_bits(lanes: np.ndarray, out: np.ndarray) -> None:
+    """Fill `out` with random words, one of each lane in turn, and advance the lanes.
+
+    Args:
+        lanes: shape (4, LANES), uint64.
+        out: uint64, a multiple of LANES long.
+    """
+    a, b, c, count = lanes[0], lanes[1], lanes[2], lanes[3]
+    for i in range(out.shape[0] // LANES):
+        words = out[i * LANES : (i + 1) * LANES]
+        for lane in range(LANES):
+            word = a[lane] + b[lane] + count[lane]
+            a[lane] = b[lane] ^ (b[lane] >> U11)
+            b[lane] = c[lane] + (c[lane] << U3)
+            c[lane] = ((c[lane] << U24) | (c[lane] >> U40)) + word
+            count[lane] += U1
+            words[lane] = word
+
+
+@compiled
+def whole_lanes(number: int) -> int:
+    """The number of words drawn where `number` are needed."""
+    return (number + LANES - 1) // LANES * LANES
+
+
+@compiled
+def draw_uniforms(lanes: np.ndarray, out: FloatArray) -> None:
+    """Fill `out` with probabilities in (0, 1], resolution 2**-53, and advance the lanes."""
+    bits = np.empty(whole_lanes(out.shape[0]), np.uint64)
+    draw_bits(lanes, bits)
     for i in range(out.shape[0]):
-        bits, a, b, c, count = next_bits(a, b, c, count)
-        p = (np.float64(np.int64(bits >> U11)) + 0.5) * 2.0**-53
-        k = first[min(np.int64(p * cells), cells - 1)]
-        while survival[k] > p:
-            k += 1
-        out[i] = values[k]
-    state[0], state[1], state[2], state[3] = a, b, c, count
+        out[i] = (np.float64(np.int64(bits[i] >> U11)) + 0.5) * 2.0**-53
+
+
+@compiled
+def draw_counts(lanes: np.ndarray, guide: IntArray, survival: FloatArray, out: IntArray) -> None:
+    """Fill `out` with exact draws n of a count law: the smallest n with P(N > n) <= p.
+
+    Ten bits choose one of 1,024 equal cells of p; nearly every cell belongs to one count. Where it
+    does not, 53 more bits choose p within the cell, and bisection finds n.
+
+    Args:
+        lanes: the generator, advanced.
+        guide: shape (GUIDES + 1,): the count at the lower end of each cell, and 0 at the end; negative,
+            -1 - count, where the cell holds more than one.
+        survival: P(N > n) for n = 0, 1, ..., the last 0.
+        out: receives the counts.
+    """
+    number = out.shape[0]
+    words = whole_lanes((number + COUNTS_PER_WORD - 1) // COUNTS_PER_WORD)
+    bits = np.empty(words, np.uint64)
+    draw_bits(lanes, bits)
+    mixed = 0
+    for k in range(COUNTS_PER_WORD):
+        part = out[min(k * words, number) : min((k + 1) * words, number)]
+        shift = np.uint64(k * COUNT_BITS)
+        for i in range(part.shape[0]):
+            n = guide[np.int64((bits[i] >> shift) & np.uint64(GUIDES - 1))]
+            mixed += n < 0
+            part[i] = n
+    finer = np.empty(whole_lanes(mixed), np.uint64)
+    draw_bits(lanes, finer)
+    used = 0
+    for start in range(0, number, 64):
+        stop = min(start + 64, number)
+        missing = 0
+        for i in range(start, stop):
+            missing += out[i] < 0
+        if missing == 0:
+            continue
+        for i in range(start, stop):
+            if out[i] >= 0:
+                continue
+            shift = np.uint64(i // words * COUNT_BITS)
+            cell = np.int64((bits[i % words] >> shift) & np.uint64(GUIDES - 1))
+            p = (cell + (np.float64(np.int64(finer[used] >> U11)) + 0.5) * 2.0**-53) / GUIDES
+            used += 1
+            high = -1 - out[i]
+            low = guide[cell + 1]
+            low = (low if low >= 0 else -1 - low) - 1
+            while high - low > 1:
+                middle = (low + high) // 2
+                low, high = (middle, high) if survival[middle] > p else (low, middle)
+            out[i] = high
 
 
 @compiled
 def refined_size(cubics: FloatArray, row: np.int64, f: float) -> float:
-    """The size at position f of a cell in parts; NaN where the part, or the cell, has no answer.
+    """The size at position f of a cell in parts, which may be in parts again; NaN for no answer."""
+    while cubics[row, 1] >= 0.0:
+        place = f * REFINED
+        part = np.int64(place)
+        row = np.int64(cubics[row, 1]) + part
+        f = place - part
+        c = cubics[row]
+        if c[0] == c[0]:
+            return float(c[0] + f * (c[1] + f * (c[2] + f * c[3])))
+    return np.nan
 
-    Apart from the loop that calls it: within it, it made every draw three times slower.
+
+@compiled
+def half_probability(bits: np.uint64) -> float:
+    """t of a draw, an odd multiple of 2**-54: bits placed behind the point of a number in [1, 2)."""
+    return float((np.uint64(((bits >> U11) & MANTISSA) | ONE).view(np.float64) - (1.0 - 2.0**-53)) * 0.5)
+
+
+@compiled
+def sizes_of_bits(table: SizeArrays, bits: np.ndarray, out: FloatArray, row: IntArray, f: FloatArray) -> None:
+    """Turn random words into sizes; NaN where the table has no answer.
+
+    Loops with one task each, so that the compiler can do several draws at once in most of them.
+
+    Args:
+        table: the law.
+        bits: the words, at least as many as sizes.
+        out: receives the sizes.
+        row: work space as long as `out`: the row of each draw.
+        f: work space as long as `out`: its position in the cell.
     """
-    first = cubics[row, 1]
-    if not first >= 0.0:
-        return np.nan
-    place = f * REFINED
-    part = np.int64(place)
-    c = cubics[np.int64(first) + part]
-    g = place - part
-    return float(c[0] + g * (c[1] + g * (c[2] + g * c[3])))
+    if table.cubics.shape[0] == 0:
+        cells = table.first.shape[0]
+        for i in range(out.shape[0]):
+            p = (np.float64(np.int64(bits[i] >> U11)) + 0.5) * 2.0**-53
+            k = table.first[min(np.int64(p * cells), cells - 1)]
+            while table.survival[k] > p:
+                k += 1
+            out[i] = table.values[k]
+        return
+    cubics = table.cubics
+    sub = np.uint64(table.sub_bits)
+    shift = np.uint64(52 - table.sub_bits)
+    below = (U1 << shift) - U1
+    lowest = (1022 - table.depth) << table.sub_bits
+    rows = 1 + (table.depth << table.sub_bits)
+    for i in range(out.shape[0]):
+        pattern = np.float64(half_probability(bits[i])).view(np.uint64)
+        cell = np.int64(pattern >> shift) - lowest
+        row[i] = (cell if cell >= 0 else -1) + 1 + np.int64(bits[i] >> U63) * rows
+        f[i] = np.uint64(((pattern & below) << sub) | ONE).view(np.float64) - 1.0
+    for i in range(out.shape[0]):
+        r, g = row[i], f[i]
+        out[i] = cubics[r, 0] + g * (cubics[r, 1] + g * (cubics[r, 2] + g * cubics[r, 3]))
+    for start in range(0, out.shape[0], 64):
+        stop = min(start + 64, out.shape[0])
+        missing = 0
+        for i in range(start, stop):
+            missing += out[i] != out[i]
+        if missing > 0:
+            for i in range(start, stop):
+                if out[i] != out[i]:
+                    out[i] = refined_size(cubics, row[i], f[i])
+
+
+@compiled
+def note_missing(
+    out: FloatArray, bits: np.ndarray, flagged: IntArray, probability: FloatArray, found: int
+) -> int:
+    """Put 0 where a size is NaN and note the place and t; returns how many notes there are now."""
+    for i in range(out.shape[0]):
+        if out[i] != out[i]:
+            t = half_probability(bits[i])
+            out[i] = 0.0
+            flagged[found] = i
+            probability[found] = -t if bits[i] >> U63 else t
+            found += 1
+    return found
 
 
 @compiled
 def draw_sizes(
-    state: np.ndarray,
+    lanes: np.ndarray,
     table: SizeArrays,
     out: FloatArray,
     flagged: IntArray,
@@ -128,7 +341,7 @@ def draw_sizes(
     """Fill `out` with sizes; where the table has no answer put 0 and note the place and probability.
 
     Args:
-        state: the generator, 4 words, advanced.
+        lanes: the generator, advanced.
         table: the law.
         out: receives the sizes.
         flagged: receives the index in `out` of every draw to be evaluated exactly.
@@ -138,34 +351,15 @@ def draw_sizes(
     Returns:
         How many are in use now.
     """
-    if table.cubics.shape[0] == 0:
-        draw_discrete(state, table.first, table.survival, table.values, out)
-        return found
-    a, b, c, count = state[0], state[1], state[2], state[3]
-    cubics = table.cubics
-    shift = np.uint64(52 - table.sub_bits)
-    below = (U1 << shift) - U1
-    unit = 1.0 / np.float64(np.int64(U1 << shift))
-    lowest = (1022 - table.depth) << table.sub_bits
-    rows = 1 + (table.depth << table.sub_bits)
-    for i in range(out.shape[0]):
-        bits, a, b, c, count = next_bits(a, b, c, count)
-        lower = np.int64(bits >> U63)
-        t = np.float64(np.int64(((bits >> U11 << U1) & MANTISSA) | U1)) * 2.0**-54
-        pattern = np.float64(t).view(np.uint64)
-        cell = np.int64(pattern >> shift) - lowest
-        row = (cell if cell >= 0 else -1) + 1 + lower * rows
-        f = np.float64(np.int64(pattern & below)) * unit
-        x = cubics[row, 0] + f * (cubics[row, 1] + f * (cubics[row, 2] + f * cubics[row, 3]))
-        if x != x:
-            x = refined_size(cubics, row, f)
-            if x != x:
-                x = 0.0
-                flagged[found] = i
-                probability[found] = -t if lower else t
-                found += 1
-        out[i] = x
-    state[0], state[1], state[2], state[3] = a, b, c, count
+    bits, row, f = np.empty(BUFFER, np.uint64), np.empty(BUFFER, np.int64), np.empty(BUFFER)
+    for start in range(0, out.shape[0], BUFFER):
+        part = out[start : start + BUFFER]
+        draw_bits(lanes, bits[: whole_lanes(part.shape[0])])
+        sizes_of_bits(table, bits, part, row, f)
+        before = found
+        found = note_missing(part, bits, flagged, probability, found)
+        for i in range(before, found):
+            flagged[i] += start
     return found
 
 
@@ -179,120 +373,215 @@ def paid_of(x: float, ramp: FloatArray) -> float:
 
 
 @compiled
-def add_ramp(sizes: FloatArray, left: IntArray, year: int, ramp: FloatArray, annual: FloatArray) -> None:
-    """Add what a ramp pays of each size to the size's year.
+def add_events(years: IntArray, sizes: FloatArray, sums: Sums) -> None:
+    """Add single losses, each with its year; a factor of the year is applied first."""
+    for i in range(years.shape[0]):
+        year = years[i]
+        x = sizes[i] * sums.scale[year] if sums.scale.shape[0] > 0 else sizes[i]
+        for r in range(sums.ramps.shape[0]):
+            sums.annual[np.int64(sums.ramps[r, 0]), year] += paid_of(x, sums.ramps[r])
+        if sums.largest >= 0:
+            sums.annual[sums.largest, year] = max(sums.annual[sums.largest, year], x)
+
+
+@compiled
+def add_rows(sizes: FloatArray, width: int, ramp: FloatArray, total: FloatArray) -> None:
+    """Add what a ramp pays of each size to its column: `sizes` row by row, `width` columns each.
 
     Args:
-        sizes: the losses, year after year.
-        left: losses still to come in each year; the first of `sizes` belongs to `year`.
-        year: the year of the first loss.
+        sizes: the losses; the last row may be incomplete.
+        width: number of columns.
         ramp: column, start, end, slope, jump.
-        annual: shape (columns, years), added to.
+        total: shape (width,), added to.
     """
-    column = np.int64(ramp[0])
     start, end, slope, jump = ramp[1], ramp[2], ramp[3], ramp[4]
-    done, total = 0, sizes.shape[0]
-    while done < total:
-        stop = min(done + left[year], total)
-        within = 0.0
-        above = 0
+    for begin in range(0, sizes.shape[0], width):
+        row = sizes[begin : begin + width]
         if jump != 0.0:
-            for i in range(done, stop):
-                above += sizes[i] > start
-        for i in range(done, stop):
-            within += max(min(sizes[i], end) - start, 0.0)
-        annual[column, year] += slope * within + jump * above
-        done = stop
-        year += 1
+            for j in range(row.shape[0]):
+                total[j] += slope * (min(max(row[j], start), end) - start) + jump * (row[j] > start)
+        elif slope == 1.0:
+            for j in range(row.shape[0]):
+                total[j] += min(max(row[j], start), end) - start
+        else:
+            for j in range(row.shape[0]):
+                total[j] += slope * (min(max(row[j], start), end) - start)
 
 
 @compiled
-def add_events(years: IntArray, sizes: FloatArray, ramps: FloatArray, annual: FloatArray) -> None:
-    """Add what every ramp pays of single losses, each with its year, to `annual` (columns, years)."""
-    for i in range(years.shape[0]):
-        for r in range(ramps.shape[0]):
-            annual[np.int64(ramps[r, 0]), years[i]] += paid_of(sizes[i], ramps[r])
+def largest_rows(sizes: FloatArray, width: int, largest: FloatArray) -> None:
+    """Raise the maximum of each column to the largest of its sizes, laid out as for `add_rows`."""
+    for begin in range(0, sizes.shape[0], width):
+        row = sizes[begin : begin + width]
+        for j in range(row.shape[0]):
+            largest[j] = max(largest[j], row[j])
 
 
 @compiled
-def years_of(left: IntArray, year: int, after: int, owner: IntArray) -> None:
-    """Write the year of every loss of the years from `year` up to `after` into `owner`.
+def sort_tile(counts: IntArray, order: IntArray, ends: IntArray, some: IntArray) -> int:
+    """Sort the years of a tile by count, those of equal count by year; LONG stands for all longer ones.
 
-    No branch depends on a count: where many years have no loss or one, the processor would guess
-    each of them wrong.
+    Args:
+        counts: losses of each year of the tile.
+        order: receives the years, those without a loss left out where they are many.
+        ends: shape (LONG + 1,): receives the place after the last year of each count up to the highest.
+        some: work space as long as `counts`, and one more.
+
+    Returns:
+        How many years are in `order`.
     """
-    total = owner.shape[0]
-    owner[:] = 0
-    place = 0
-    for y in range(year, after):
-        if place < total:
-            owner[place] = y
-        place += left[y]
-    reached = year
-    for i in range(total):
-        reached = max(reached, owner[i])
-        owner[i] = reached
+    # Unsigned indices spare a test for negative ones; four counters for each count need not wait for
+    # each other's last step.
+    highest, empty = 0, 0
+    for i in range(counts.shape[0]):
+        highest = max(highest, counts[i])
+        empty += counts[i] == 0
+    highest = min(highest, LONG)
+    number = np.uint64(0)
+    if 4 * empty > counts.shape[0]:
+        for i in range(counts.shape[0]):
+            some[number] = i
+            number += np.uint64(counts[i] != 0)
+    else:
+        number = np.uint64(counts.shape[0])
+        for i in range(counts.shape[0]):
+            some[i] = i
+    quarter = number // U4
+    place = np.zeros((4, highest + 1), np.int64)
+    for i in range(quarter):
+        for k in range(U4):
+            year = some[k * quarter + i]
+            place[k, np.uint64(min(counts[np.uint64(year)], highest))] += 1
+    for i in range(quarter * U4, number):
+        place[3, np.uint64(min(counts[np.uint64(some[i])], highest))] += 1
+    total = 0
+    for n in range(highest + 1):
+        for k in range(4):
+            years = place[k, n]
+            place[k, n] = total
+            total += years
+        ends[n] = total
+    for i in range(quarter):
+        for k in range(U4):
+            year = some[k * quarter + i]
+            count = np.uint64(min(counts[np.uint64(year)], highest))
+            order[np.uint64(place[k, count])] = year
+            place[k, count] += 1
+    for i in range(quarter * U4, number):
+        count = np.uint64(min(counts[np.uint64(some[i])], highest))
+        order[np.uint64(place[3, count])] = some[i]
+        place[3, count] += 1
+    return int(number)
 
 
 @compiled
-def add_sparse(sizes: FloatArray, owner: IntArray, ramp: FloatArray, annual: FloatArray) -> None:
-    """As `add_ramp`, for years with few losses: `owner` holds the year of each loss."""
-    column = np.int64(ramp[0])
-    start, end, slope, jump = ramp[1], ramp[2], ramp[3], ramp[4]
-    for i in range(sizes.shape[0]):
-        paid = slope * max(min(sizes[i], end) - start, 0.0)
-        annual[column, owner[i]] += paid + jump * (sizes[i] > start)
+def keep_sizes(sizes: FloatArray, tile: int, owners: IntArray, done: int, kept: Kept) -> None:
+    """Copy the losses of the years to be kept: row k of `sizes` is loss done + k of each year."""
+    width = owners.shape[0]
+    for j in range(width):
+        year = tile + owners[j]
+        if kept.first <= year < kept.last:
+            place = kept.place[year - kept.first] + done
+            for k in range(sizes.shape[0] // width):
+                kept.sizes[place + k] = sizes[k * width + j]
+
+
+@compiled
+def add_buffer(sizes: FloatArray, tile: int, owners: IntArray, sums: Sums, total: FloatArray) -> None:
+    """Add a rectangle of losses, one column for each of its years; `total` is work space.
+
+    The losses of a single year are laid out in 32 columns, which are then added up: 32 sums do not wait
+    for each other.
+    """
+    width = owners.shape[0]
+    if sums.scale.shape[0] > 0:
+        for begin in range(0, sizes.shape[0], width):
+            for j in range(width):
+                sizes[begin + j] *= sums.scale[tile + owners[j]]
+    wide = width if width > 1 else min(LANES, sizes.shape[0])
+    part = total[:wide]
+    for r in range(sums.ramps.shape[0]):
+        part[:] = 0.0
+        add_rows(sizes, wide, sums.ramps[r], part)
+        for j in range(width, wide):
+            part[0] += part[j]
+        annual = sums.annual[np.int64(sums.ramps[r, 0])]
+        for j in range(width):
+            annual[tile + owners[j]] += part[j]
+    if sums.largest >= 0:
+        part[:] = 0.0
+        largest_rows(sizes, wide, part)
+        for j in range(width, wide):
+            part[0] = max(part[0], part[j])
+        annual = sums.annual[sums.largest]
+        for j in range(width):
+            annual[tile + owners[j]] = max(annual[tile + owners[j]], part[j])
 
 
 @compiled
 def add_years(
-    state: np.ndarray,
+    lanes: np.ndarray,
     table: SizeArrays,
-    ramps: FloatArray,
-    left: IntArray,
-    year: int,
-    annual: FloatArray,
-    flagged: IntArray,
-    probability: FloatArray,
-) -> tuple[int, int]:
-    """Simulate the losses of years from `year` on, until they are done or the notes are nearly full.
+    sums: Sums,
+    counts: IntArray,
+    years: int,
+    cursor: IntArray,
+    notes: Notes,
+    kept: Kept,
+) -> int:
+    """Simulate the losses of a block's years, until they are done or the notes are nearly full.
 
     Args:
-        state: the generator, 4 words, advanced.
+        lanes: the generator, advanced.
         table: the size law.
-        ramps: shape (R, 5): column, start, end, slope, jump.
-        left: losses to come in each year; reduced where a year is left half done.
-        year: the first year.
-        annual: shape (columns, years), added to.
-        flagged: receives the year of every loss to be evaluated exactly (it has added nothing yet).
-        probability: receives its probability, as `draw_sizes` writes it.
+        sums: what is added up.
+        counts: losses of each year, all years of the last tile included.
+        years: years asked for; the others of the last tile are simulated only as far as the
+            draws of these depend on it, and hold no complete sums.
+        cursor: where to go on: first year of the tile, place in its order, losses done there. Zeros
+            to begin with; the first entry is at least `years` at the end.
+        notes: receives losses to be evaluated exactly.
+        kept: receives losses one by one.
 
     Returns:
-        The next year, and how many losses are flagged.
+        How many losses are in the notes.
     """
-    sizes, owner = np.empty(BUFFER), np.empty(BUFFER, np.int64)
+    order, some, ends = np.empty(TILE, np.int64), np.empty(TILE + 1, np.int64), np.zeros(LONG + 1, np.int64)
+    bits, row = np.empty(BUFFER, np.uint64), np.empty(BUFFER, np.int64)
+    f, sizes, total = np.empty(BUFFER), np.empty(BUFFER), np.empty(BUFFER)
     found = 0
-    while year < left.shape[0] and found + BUFFER <= flagged.shape[0]:
-        total, after = 0, year
-        while after < left.shape[0] and total + left[after] <= BUFFER:
-            total += left[after]
-            after += 1
-        within_a_year = after == year
-        if within_a_year:
-            total = BUFFER
-        before = found
-        found = draw_sizes(state, table, sizes[:total], flagged, probability, found)
-        sparse = total <= SPARSE * (after - year)
-        if sparse or found > before:
-            years_of(left, year, max(after, year + 1), owner[:total])
-        for i in range(before, found):
-            flagged[i] = owner[flagged[i]]
-        for r in range(ramps.shape[0]):
-            if sparse:
-                add_sparse(sizes[:total], owner[:total], ramps[r], annual)
-            else:
-                add_ramp(sizes[:total], left, year, ramps[r], annual)
-        if within_a_year:
-            left[year] -= BUFFER
-        year = after
-    return year, found
+    while cursor[0] < years:
+        tile = cursor[0]
+        number = min(TILE, counts.shape[0] - tile)
+        busy = sort_tile(counts[tile : tile + number], order, ends, some)
+        while cursor[1] < busy:
+            if found + BUFFER > notes.year.shape[0]:
+                return found
+            place, done = cursor[1], cursor[2]
+            n = counts[tile + order[place]]
+            if n == 0:
+                cursor[1] = ends[0]
+                continue
+            width = 1
+            if n < LONG:
+                width = min(ends[n] - place, max(BUFFER // n, NARROW))
+                width = 1 if n > LANES * width else width
+            elif tile + order[place] >= years:
+                break
+            lines = min(n - done, BUFFER // width)
+            drawn = sizes[: lines * width]
+            draw_bits(lanes, bits[: whole_lanes(drawn.shape[0])])
+            sizes_of_bits(table, bits, drawn, row, f)
+            owners = order[place : place + width]
+            if kept.last > kept.first:
+                keep_sizes(drawn, tile, owners, done, kept)
+            before = found
+            found = note_missing(drawn, bits, notes.year, notes.probability, found)
+            for i in range(before, found):
+                notes.year[i] = tile + owners[notes.year[i] % width]
+            add_buffer(drawn, tile, owners, sums, total)
+            cursor[2] += lines
+            if cursor[2] == n:
+                cursor[1], cursor[2] = place + width, 0
+        cursor[0], cursor[1], cursor[2] = tile + number, 0, 0
+    return found

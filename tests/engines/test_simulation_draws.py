@@ -26,7 +26,7 @@ from lossagg.families import (
     Spliced,
     Weibull,
 )
-from lossagg.kernels.simulation import draw_sizes
+from lossagg.kernels.simulation import draw_bits, draw_sizes, draw_uniforms
 
 SPLICED = Spliced(
     body=Lognormal(mu=10.0, sigma=1.8),
@@ -70,10 +70,11 @@ def table_quantile(table, t, lower):
     row = 1 + (exponent + 1 + DEPTH).astype(int) * 2**arrays.sub_bits + place.astype(int)
     row = np.where(exponent < -1 - DEPTH, 0, row) + lower * (1 + DEPTH * 2**arrays.sub_bits)
     f = place - np.floor(place)
-    parts = arrays.cubics[row, 1]
-    refined = np.isnan(arrays.cubics[row, 0]) & ~np.isnan(parts)
-    row[refined] = parts[refined].astype(int) + (64 * f[refined]).astype(int)
-    f[refined] = 64 * f[refined] - np.floor(64 * f[refined])
+    for _ in range(3):
+        parts = arrays.cubics[row, 1]
+        refined = np.isnan(arrays.cubics[row, 0]) & ~np.isnan(parts)
+        row[refined] = parts[refined].astype(int) + (64 * f[refined]).astype(int)
+        f[refined] = 64 * f[refined] - np.floor(64 * f[refined])
     c = arrays.cubics[row]
     return c[:, 0] + f * (c[:, 1] + f * (c[:, 2] + f * c[:, 3]))
 
@@ -198,14 +199,40 @@ def test_poisson_cells(mean):
     assert statistic < stats.chi2.isf(1e-6, len(starts) - 1)
 
 
-def test_bisection_and_search_table_draw_the_same():
-    """The two exact inversions of a count agree draw by draw."""
-    law = NegativeBinomial(mean=40.0, dispersion=0.5)
-    table = count_sampler(law, "line 'x'")
-    bisection = type(table)(law, np.empty(0, np.int64), np.empty(0))
-    np.testing.assert_array_equal(
-        table.draw(block_state(1, (1, 1), 0), 20_000), bisection.draw(block_state(1, (1, 1), 0), 20_000)
-    )
+@pytest.mark.parametrize(
+    "law", [Poisson(mean=0.5), Poisson(mean=40.0), NegativeBinomial(mean=300.0, dispersion=2.0)], ids=str
+)
+def test_guide_and_bisection_draw_the_same(law):
+    """Counts from the very bits, by plain arithmetic: ten bits for the cell, 53 for the place in it
+    where it holds more than one count; then the smallest n with P(N > n) <= p, by the law."""
+    number = 20_000
+    counts = count_sampler(law, "line 'x'").draw(block_state(1, (1, 1), 0), number)
+    state = block_state(1, (1, 1), 0)
+    bits, finer = np.empty(3360, np.uint64), np.empty(20_000, np.uint64)
+    draw_bits(state, bits)
+    draw_bits(state, finer)
+    cells = [int(bits[i % 3360]) >> 10 * (i // 3360) & 1023 for i in range(number)]
+    survival = np.append(law.sf(np.arange(counts.max() + 200.0)), 0.0)
+    used = 0
+    for i, cell in enumerate(cells):
+        low, high = (np.searchsorted(-survival, -end / 1024) for end in (cell, cell + 1))
+        if low != high:
+            p = (cell + ((int(finer[used]) >> 11) + 0.5) * 2.0**-53) / 1024
+            used += 1
+            low = np.searchsorted(-survival, -p)
+        assert counts[i] == low
+    assert 0 < used < 20_000
+
+
+def test_counts_too_wide_for_a_table_are_bisected():
+    law = NegativeBinomial(mean=1e5, dispersion=0.5)
+    sampler = count_sampler(law, "line 'x'")
+    assert sampler.guide.size == 0
+    counts = sampler.draw(block_state(1, (1, 1), 0), 2000)
+    p = np.empty(2000)
+    draw_uniforms(block_state(1, (1, 1), 0), p)
+    assert (np.asarray(law.sf(counts)) <= p).all()
+    assert (np.asarray(law.sf(counts - 1.0)) > p).all()
 
 
 def test_a_year_of_a_trillion_losses_is_refused():
