@@ -146,7 +146,7 @@ def test_a_year_in_thousands_shows_and_ordinary_years_do_not(read) -> None:
 # ---- deductibles
 
 
-def test_practice_b4_amounts_net_of_a_deductible_are_raised_and_truncated(read) -> None:
+def test_amounts_net_of_a_deductible_are_raised_and_truncated(read) -> None:
     """The same claims from the ground up and net of their deductibles are the same losses."""
     net = read(
         "amount,date,deductible,threshold,policy-limit,paid,outstanding\n"
@@ -202,7 +202,7 @@ def test_a_deductible_column_nobody_declared_warns(read) -> None:
 
 
 def test_losses_are_gross_unless_asked_for_net(read) -> None:
-    """Practice A4: with recoveries, what is modelled is gross; netting is a step that says so."""
+    """With recoveries, what is modelled is gross; netting is a step that says so."""
     table = read(
         "amount,date,recoveries,event\n1000.10,2024-01-01,200.05,\n3000,2024-02-01,3000,\n"
         "900,2024-03-01,500,\n400,2024-04-01,,E\n500,2024-04-02,100,E\n"

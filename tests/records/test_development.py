@@ -62,8 +62,8 @@ def test_links_against_exact_fractions() -> None:
         assert link == pytest.approx(float(Fraction(sum(b for _, b in pairs), sum(a for a, _ in pairs))))
 
 
-def test_practice_b10_chain_ladder_and_bornhuetter_ferguson() -> None:
-    """Practice B10: reported 100,000, factor 1.8, a-priori 150,000: 180,000 and 166,666.67."""
+def test_chain_ladder_and_bornhuetter_ferguson() -> None:
+    """Reported 100,000, factor 1.8, a-priori 150,000: 180,000 and 166,666.67."""
     reported, factor, prior = np.array([100_000.0]), np.array([1.8]), np.array([150_000.0])
     assert chain_ladder(reported, factor).tolist() == [180_000.0]
     assert bornhuetter_ferguson(reported, prior, factor).round(2).tolist() == [166_666.67]
