@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Generic, TypeVar
 
 import numpy as np
@@ -29,17 +29,55 @@ class Candidates(Generic[AnyFit]):
     all in the tail, before using it.
 
     Attributes:
-        fits: certified fits, lowest AIC first.
+        fits: certified fits, lowest AIC first (Akaike 1974).
+        families: the name under which each of them was asked for; that of the body in a splice.
         refused: family name to the reason why it has no fit.
+        preferred: place of the chosen fit.
+        reason: why another than the first was chosen; empty where the first was.
     """
 
     fits: tuple[AnyFit, ...]
+    families: tuple[str, ...]
     refused: Mapping[str, str]
+    preferred: int = 0
+    reason: str = ""
 
     @property
     def chosen(self) -> AnyFit:
-        """The fit of lowest AIC (Akaike 1974)."""
-        return self.fits[0]
+        """The fit of lowest AIC, or the one chosen for a reason."""
+        return self.fits[self.preferred]
+
+    def choosing(self, family: str, reason: str = "") -> Candidates[AnyFit]:
+        """The same candidates with one of them chosen.
+
+        Args:
+            family: the name under which it was asked for.
+            reason: why, where it is not the first.
+
+        Raises:
+            FitError: the family was not tried or has no fit, or another ranks first and no reason is given.
+        """
+        if family in self.refused:
+            raise FitError(
+                f"the chosen family has no fit: {self.refused[family]}",
+                value=family,
+                remedy="Choose another.",
+            )
+        if family not in self.families:
+            raise FitError(
+                "the chosen family is not among the candidates",
+                value=family,
+                remedy=f"Choose one of {', '.join(self.families)}.",
+            )
+        place = self.families.index(family)
+        if place and not reason.strip():
+            worse = self.fits[place].aic - self.fits[0].aic
+            raise FitError(
+                f"{family} is chosen, but {self.families[0]} ranks first: its AIC is lower by {worse:.4g}",
+                value=family,
+                remedy='Say why with reason = "...", which the report prints, or leave out choose.',
+            )
+        return replace(self, preferred=place, reason=reason.strip() if place else "")
 
     def to_frame(self) -> pd.DataFrame:
         """One row per family, refused ones last: log-likelihood, AIC, BIC, whether chosen, why refused."""
@@ -128,11 +166,11 @@ def _ranked(families: Sequence[str], fit: Callable[[str], AnyFit], what: str) ->
             value=names,
             remedy="Name each family to compare once.",
         )
-    fits: list[AnyFit] = []
+    fits: list[tuple[AnyFit, str]] = []
     refused: dict[str, str] = {}
     for name in names:
         try:
-            fits.append(fit(name))
+            fits.append((fit(name), name))
         except FitError as refusal:
             refused[name] = str(refusal)
     if not fits:
@@ -142,4 +180,5 @@ def _ranked(families: Sequence[str], fit: Callable[[str], AnyFit], what: str) ->
             remedy="Read the reasons, name other families, or give the law.",
             tried=tuple(f"{name}: {why}" for name, why in refused.items()),
         )
-    return Candidates(tuple(sorted(fits, key=lambda candidate: candidate.aic)), refused)
+    fits.sort(key=lambda candidate: candidate[0].aic)
+    return Candidates(tuple(made for made, _ in fits), tuple(name for _, name in fits), refused)

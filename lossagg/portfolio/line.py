@@ -8,14 +8,17 @@ survival of the fitted severity at that year's threshold, and the rate that resu
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from typing import TypeVar
 
 import numpy as np
 
 from lossagg.arrays import FloatArray
 from lossagg.engines.book import Line
+from lossagg.errors import FitError, InputError, place
 from lossagg.families.base import CountLaw, SizeLaw
 from lossagg.fitting import (
     Candidates,
+    Fit,
     FrequencyFit,
     Note,
     SeverityFit,
@@ -23,8 +26,10 @@ from lossagg.fitting import (
     compare_severities,
 )
 from lossagg.portfolio.laws import given_frequency, given_severity
-from lossagg.portfolio.schema import LineSection
+from lossagg.portfolio.schema import Law, LineSection
 from lossagg.records import PreparedLosses
+
+AnyFit = TypeVar("AnyFit", bound=Fit)
 
 LEAST_SEEN = 0.01
 """Least share of all losses above the reporting threshold: a ground-up count beyond a hundred times the
@@ -107,6 +112,7 @@ def _modelled(section: LineSection, prepared: PreparedLosses | None, key: str) -
             tail_threshold=section.severity.tail_threshold,
             least_seen=LEAST_SEEN,
         )
+        severities = _preferred(severities, section.severity, f"{key}.severity")
         severity = severities.chosen.model
     if section.frequency.fit is None or prepared is None:
         return LineModel(
@@ -119,6 +125,7 @@ def _modelled(section: LineSection, prepared: PreparedLosses | None, key: str) -
     years = prepared.years
     seen = years.exposure * years.fraction * np.asarray(severity.sf(years.threshold))
     frequencies = compare_frequencies(years.losses, section.frequency.fit, exposure=seen)
+    frequencies = _preferred(frequencies, section.frequency, f"{key}.frequency")
     exposure = section.forecast_exposure or _last_full_exposure(prepared)
     return LineModel(
         name=section.name,
@@ -130,6 +137,21 @@ def _modelled(section: LineSection, prepared: PreparedLosses | None, key: str) -
         seen=seen,
         forecast_exposure=exposure,
     )
+
+
+def _preferred(tried: Candidates[AnyFit], law: Law, key: str) -> Candidates[AnyFit]:
+    """The candidates with the one the portfolio file chooses."""
+    if law.choose is None:
+        return tried
+    try:
+        return tried.choosing(law.choose, law.reason or "")
+    except FitError as error:
+        raise InputError(
+            error.what,
+            where=place(file="portfolio.toml", key=f"{key}.choose"),
+            value=error.value,
+            remedy=error.remedy,
+        ) from error
 
 
 def _last_full_exposure(prepared: PreparedLosses) -> float:

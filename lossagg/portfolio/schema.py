@@ -62,12 +62,27 @@ class PortfolioSection(Section):
 
 
 class Law(Section):
-    """A law given by family and parameters, or families to be fitted to the records."""
+    """A law given by family and parameters, or families to be fitted to the records.
+
+    Of several fitted families the one of lowest AIC is used; `choose` names another, and `reason` says why.
+    """
 
     model_config = ConfigDict(alias_generator=hyphenated, extra="allow", strict=True, frozen=True)
 
     family: str | None = None
     fit: Annotated[tuple[str, ...], Field(min_length=1, strict=False)] | None = None
+    choose: str | None = None
+    reason: Annotated[str, Field(min_length=1)] | None = None
+
+    @model_validator(mode="after")
+    def _choice_of_a_fit(self) -> Law:
+        if self.choose is not None and self.choose not in (self.fit or ()):
+            raise ValueError(
+                f"choose names {self.choose!r}, which is not in fit | Choose one of the fit's families."
+            )
+        if self.reason is not None and self.choose is None:
+            raise ValueError("reason belongs to choose | Name the family it speaks for, or leave it out.")
+        return self
 
     @model_validator(mode="after")
     def _one_of_two(self) -> Law:

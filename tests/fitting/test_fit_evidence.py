@@ -4,7 +4,14 @@ import numpy as np
 import pytest
 
 from lossagg import Lognormal
-from lossagg.fitting import fit_severity, quantile_points, survival_points
+from lossagg.errors import FitError
+from lossagg.fitting import (
+    compare_frequencies,
+    compare_severities,
+    fit_severity,
+    quantile_points,
+    survival_points,
+)
 
 LOSSES = np.exp(9 + 1.3 * np.random.default_rng(40).standard_normal(500))
 
@@ -96,3 +103,24 @@ def test_a_fit_cannot_be_changed():
         fit.log_likelihood = 0.0
     with pytest.raises(ValueError, match="read-only"):
         fit.covariance[0, 0] = 0.0
+
+
+def test_another_than_the_first_needs_a_reason():
+    tried = compare_severities(LOSSES, ["lomax", "lognormal", "gamma"])
+    assert tried.families[0] == "lognormal"
+    assert tried.choosing("lognormal").reason == ""
+    with pytest.raises(FitError, match=r"gamma is chosen, but lognormal ranks first: its AIC is lower by \d"):
+        tried.choosing("gamma", "  ")
+    other = tried.choosing("gamma", "all lines of the pool use it")
+    assert other.chosen.family == "gamma"
+    assert other.reason == "all lines of the pool use it"
+    assert other.to_frame()["chosen"].tolist() == [family == "gamma" for family in other.families]
+    with pytest.raises(FitError, match="not among the candidates"):
+        tried.choosing("weibull", "why not")
+
+
+def test_a_refused_family_cannot_be_chosen():
+    counts = [3, 3, 4, 3, 3, 4]
+    tried = compare_frequencies(counts, ["poisson", "negative-binomial"])
+    with pytest.raises(FitError, match="the chosen family has no fit: the counts vary no more than Poisson"):
+        tried.choosing("negative-binomial", "habit")
