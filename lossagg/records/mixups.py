@@ -62,12 +62,23 @@ def _groups(checked: CheckedLosses, used: BoolArray) -> Iterator[tuple[str, np.n
         yield "currency", np.array([cell.strip().upper() for cell in text])[used]
 
 
+def _numbered(group: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    """The different groups in order, and the number of that of each amount; years without a sort."""
+    if not len(group) or group.dtype.kind != "i":
+        names, number = np.unique(group, return_inverse=True)
+        return names, number
+    offset = group - group.min()
+    occurs = np.bincount(offset) > 0
+    return np.flatnonzero(occurs) + group.min(), (np.cumsum(occurs) - 1)[offset]
+
+
 def _medians(amount: FloatArray, group: np.ndarray) -> Iterator[tuple[object, float, float]]:
     """(group, its median, median of the rest) of each group that is of another order."""
-    names, number, sizes = np.unique(group, return_inverse=True, return_counts=True)
+    names, number = _numbered(group)
+    sizes = np.bincount(number, minlength=len(names))
     if len(names) < 2:
         return
-    order = np.argsort(number, kind="stable")
+    order = np.argsort(number.astype(np.uint16) if len(names) < 2**16 else number, kind="stable")
     parts = np.split(amount[order], np.cumsum(sizes)[:-1])
     middles = np.array([float(np.median(part)) for part in parts])
     centre = float(np.median(amount))

@@ -294,7 +294,7 @@ def _in_order(events: Events) -> Events:
     Date and amount nearly always decide; only events equal in both are told apart by the rest. Events equal
     in everything that is kept of them may stand in any order.
     """
-    order = np.argsort(events.amount, kind="stable")
+    order = np.argsort(events.amount)
     # Days as small integers are sorted in linear time; 65,536 of them are 179 years.
     day = events.date.astype(np.int64)
     day = day - day.min() if len(day) else day
