@@ -169,6 +169,10 @@ class Book:
                 annual = annual - paid.annual
         return Plan(events, annual)
 
+    def left_before(self, cover: PlacedCover, line: str) -> tuple[Schedule, float]:
+        """What the covers before it leave of one event, and its expense as a ratio to what is left."""
+        return self._left_by(cover.after, line)
+
     def _left_by(self, names: tuple[str, ...], line: str) -> tuple[Schedule, float]:
         """The loss that these covers leave of one event, and its expense as a ratio to what is left."""
         left, expense = Schedule.identity(), self.line(line).expense

@@ -45,20 +45,24 @@ class JointBlock:
     factors: dict[str, FloatArray] = field(default_factory=dict)
     ranks: dict[str, FloatArray] = field(default_factory=dict)
 
-    def source(self, line: str, totals: FloatArray) -> IntArray | None:
-        """Which simulated year of a line stands at each year of the block; None where they stay.
+    def source(self, line: str, totals: FloatArray) -> IntArray:
+        """Which simulated year of a line stands at each year of the block: not its own under a copula.
 
         Args:
             line: its name.
             totals: the line's annual totals as simulated, shape (years,); the block may be incomplete.
         """
         if line not in self.ranks:
-            return None
+            return np.arange(totals.size)
         scores = self.ranks[line][: totals.size]
         by_total = np.argsort(totals, kind="stable")
         place = np.empty(totals.size, dtype=np.int64)
         place[np.argsort(scores, kind="stable")] = by_total
         return place
+
+
+ALONE = JointBlock()
+"""A block of lines that depend on nothing."""
 
 
 def joint_block(

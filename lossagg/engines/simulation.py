@@ -18,12 +18,13 @@ import numpy as np
 from lossagg.arrays import FloatArray, IntArray
 from lossagg.cover import Cover
 from lossagg.engines.book import Book, Line, PlacedCover, Subject
+from lossagg.engines.joint import ALONE, JointBlock, joint_block
 from lossagg.engines.quantile_table import QuantileTable, quantile_table
 from lossagg.engines.result import BookResult
 from lossagg.engines.sampled import SimulatedAnnualLoss
 from lossagg.engines.search_table import CountSampler, count_sampler
 from lossagg.engines.streams import BLOCK_YEARS, block_state, line_key
-from lossagg.engines.yearly import LineColumns, annual_amounts, growth, line_columns
+from lossagg.engines.yearly import LOSS, LineColumns, annual_amounts, growth, line_columns
 from lossagg.errors import EngineError, InputError
 from lossagg.families.base import CountLaw, SizeLaw
 from lossagg.kernels.compile import awaits_compilation
@@ -147,43 +148,49 @@ def run_block(
     years: int,
 ) -> dict[Subject, FloatArray]:
     """Simulate one block of years: the annual amount of every subject, shape (years,)."""
+    joint = joint_block(book.lines, book.dependences, seed=seed, block=block)
     sums = {}
     for line in lines:
-        annual = line_sums(line, seed=seed, block=block, years=years)
+        annual = line_sums(line, joint, seed=seed, block=block, years=years)
+        if line.name in joint.ranks:
+            annual = annual[:, joint.source(line.name, annual[line.columns.column[LOSS]])]
         sums[line.name] = {key: annual[column] for key, column in line.columns.column.items()}
     return annual_amounts(book, subjects, sums)
 
 
-def line_sums(line: PreparedLine, *, seed: int, block: int, years: int) -> FloatArray:
-    """Annual sums of a line's columns in one block, shape (columns, years)."""
+def line_sums(
+    line: PreparedLine, joint: JointBlock = ALONE, *, seed: int, block: int, years: int
+) -> FloatArray:
+    """Annual sums of a line's columns in one block, shape (columns, years), before a copula moves years."""
     nothing = np.empty(0)
     kept = Kept(0, 0, np.empty(0, dtype=np.int64), nothing)
     annual = np.zeros((line.columns.count, whole_tiles(years)))
     if line.columns.count:
         state = block_state(seed, line.key, block)
-        counts = line.counts.draw(state, BLOCK_YEARS)
-        sums = Sums(line.columns.ramps, -1, nothing, annual)
+        counts = _counts(line, joint, state)
+        sums = Sums(line.columns.ramps, -1, joint.scale.get(line.name, nothing), annual)
         _simulate_years(line, state, sums, counts[: annual.shape[1]], years, kept)
     return annual[:, :years]
 
 
 def block_events(
-    line: PreparedLine, *, seed: int, block: int, first: int, last: int
+    line: PreparedLine, joint: JointBlock = ALONE, *, seed: int, block: int, first: int, last: int
 ) -> tuple[IntArray, FloatArray]:
     """The very losses that `line_sums` adds up, for a replay of single years.
 
     Args:
         line: the line.
+        joint: what the dependences of the book say of the block.
         seed: the seed of the run.
         block: number of the block.
         first: first year asked for, counted from the start of the block.
         last: the year after the last.
 
     Returns:
-        Counts per year, shape (last - first,), and sizes in the order of the years.
+        Counts per year, shape (last - first,), and sizes in the order of the years, as `line_sums` has them.
     """
     state = block_state(seed, line.key, block)
-    counts = line.counts.draw(state, BLOCK_YEARS)
+    counts = _counts(line, joint, state)
     own = counts[first:last]
     place = np.cumsum(own) - own
     kept = Kept(first, last, place, np.empty(int(own.sum())))
@@ -192,7 +199,14 @@ def block_events(
     inside = (years >= first) & (years < last)
     by_year = np.argsort(years[inside], kind="stable")
     kept.sizes[np.isnan(kept.sizes)] = sizes[inside][by_year]
-    return own, kept.sizes
+    scale = joint.scale.get(line.name)
+    return own, kept.sizes if scale is None else kept.sizes * np.repeat(scale[first:last], own)
+
+
+def _counts(line: PreparedLine, joint: JointBlock, state: np.ndarray) -> IntArray:
+    """Losses of each year of a block: those the dependences say, or the line's own."""
+    given = joint.counts.get(line.name)
+    return line.counts.draw(state, BLOCK_YEARS) if given is None else given
 
 
 def _simulate_years(
