@@ -8,6 +8,7 @@ import typer
 
 from lossagg.commands.assess import assess
 from lossagg.commands.batch import batch
+from lossagg.commands.price import price
 from lossagg.version import __version__
 
 ABOUT = (
@@ -28,6 +29,7 @@ def build_app() -> typer.Typer:
     app.callback(help=ABOUT)(_options)
     app.command()(assess)
     app.command()(batch)
+    app.command()(price)
     return app
 
 

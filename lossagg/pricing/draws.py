@@ -18,6 +18,7 @@ from lossagg.engines.result import TransformedAnnualLoss
 from lossagg.portfolio.assessment import number
 from lossagg.pricing.grid import Grid
 from lossagg.pricing.option import Events, Option
+from lossagg.pricing.rows import WORST_LEVELS
 
 DRAW_POINTS = 2**12
 Data = dict[str, Any]
@@ -25,7 +26,7 @@ Data = dict[str, Any]
 
 @dataclass(frozen=True)
 class Draws:
-    """Per option and parameter draw: expected retained, expected ceded, worst years retained by level.
+    """Per option and parameter draw: expected retained, expected ceded, worst years by level, and their tail.
 
     Premium and costs stay as in the table: they are agreed before anybody knows the parameters.
     """
@@ -40,7 +41,7 @@ class Draws:
 
     def costs(self, k: int, fixed: float | None) -> FloatArray | None:
         """Expected and worst total cost per draw; None where the draws cannot be computed."""
-        own = self.values[k][:, [0, *range(2, 2 + len(self.levels))]]
+        own = self.values[k][:, [0, *range(2, 3 + len(self.levels))]]
         return None if fixed is None or np.isnan(own).all() else own + fixed
 
     def ranges(self, k: int, fixed: float | None, level: float) -> Data:
@@ -67,10 +68,11 @@ def _range(values: FloatArray) -> list[float | None] | None:
 
 
 def under_other_laws(lines: Sequence[Line], options: Sequence[Option], levels: Sequence[float]) -> FloatArray:
-    """Expected retained, expected ceded and worst years under other laws, shape (options, 2 + levels)."""
+    """Expected retained, expected ceded, worst years by level and the tail value at risk at 99 % under
+    other laws, shape (options, 3 + levels)."""
     grid = Grid(lines, DRAW_POINTS, workers=1)
     whole = grid.moments([options[0].scope])[0].mean
-    result = np.full((len(options), 2 + len(levels)), np.nan)
+    result = np.full((len(options), 3 + len(levels)), np.nan)
     years = dict(grid.years(_sums(options)))
     for k, option in enumerate(options):
         retained, ceded = option.retained_plan, option.ceded_plan
@@ -78,7 +80,8 @@ def under_other_laws(lines: Sequence[Line], options: Sequence[Option], levels: S
             year = years[retained.events]
             loss = year if retained.annual.is_identity else TransformedAnnualLoss(year, retained.annual)
             result[k, 0] = loss.mean()
-            result[k, 2:] = [loss.value_at_risk(level) for level in levels]
+            result[k, 2:-1] = [loss.value_at_risk(level) for level in levels]
+            result[k, -1] = loss.tail_value_at_risk(WORST_LEVELS[-1])
         if ceded is not None:
             if ceded.annual.is_identity:
                 result[k, 1] = grid.moments([ceded.events])[0].mean

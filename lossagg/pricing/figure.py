@@ -40,7 +40,7 @@ class Figure:
     @classmethod
     def measured(cls, loss: AnnualLoss, measure: str, level: float | None = None) -> Figure:
         """A measure of an annual loss with its accuracy."""
-        found = figure(loss, measure, level, withheld=False)
+        found = figure(loss, measure, level, withheld="")
         return cls(found["value"], found["low"], found["high"], found["engine"], found["reason"])
 
     @classmethod
@@ -56,6 +56,16 @@ class Figure:
             return Figure(None, None, None, self.engine, reason or "does not exist")
         return Figure(self.value + other, _moved(self.low, other), _moved(self.high, other), self.engine)
 
+    def joined(self, other: Figure) -> Figure:
+        """The sum of two figures, its range that of the sums of their ends."""
+        if self.value is None or other.value is None:
+            return self if self.value is None else other
+        ends = [
+            None if mine is None or theirs is None else mine + theirs
+            for mine, theirs in ((self.low, other.low), (self.high, other.high))
+        ]
+        return Figure(self.value + other.value, ends[0], ends[1], self.engine)
+
     def taken_from(self, whole: float | None) -> Figure:
         """A known amount less this figure."""
         if self.value is None:
@@ -69,15 +79,12 @@ class Figure:
         return Figure(max(whole - self.value, 0.0), low, high, self.engine)
 
     def scaled(self, factor: float) -> Figure:
-        """This figure times a factor at or above zero."""
+        """This figure times a factor; a negative one turns the range round."""
         if self.value is None:
             return self
-        return Figure(
-            factor * self.value,
-            None if self.low is None else factor * self.low,
-            None if self.high is None else factor * self.high,
-            self.engine,
-        )
+        ends = [None if end is None else factor * end for end in (self.low, self.high)]
+        low, high = ends if factor >= 0 else ends[::-1]
+        return Figure(factor * self.value, low, high, self.engine)
 
     def to_dict(self) -> dict[str, Any]:
         """The figure as plain data."""

@@ -1,8 +1,8 @@
 """Which options are dominated, which are efficient, and which an appetite leaves.
 
-An option dominates another when it costs no more on average and no more in the worst year at any level of
-the table, less in one of them, and does so under every drawn set of parameters too. Nothing is recommended
-without an appetite: between two efficient options only its owner can choose.
+An option dominates another when it costs no more on average, in the worst year at any level of the table and
+in the mean of the worst hundredth, less in one of them, and under every drawn set of parameters too.
+Nothing is recommended without an appetite: between two efficient options only its owner can choose.
 """
 
 from __future__ import annotations
@@ -22,7 +22,8 @@ class Position:
     Args:
         name: the option.
         expected: expected total cost; None where it does not exist.
-        worst: total cost in the worst year at each level compared; None likewise.
+        worst: total cost in the worst year at each level compared, and in the mean of the tail; None
+            likewise.
         drawn: per parameter draw, expected total cost and those of the worst years, shape
             (draws, 1 + levels); None where the draws cannot be computed for this option; NaN in draws where
             they do not exist.

@@ -149,7 +149,10 @@ class _Work:
             Position(
                 row.option.name,
                 row.total().value,
-                tuple(row.worst(level).plus(row.fixed).value for level in self.compared),
+                (
+                    *(row.worst(level).plus(row.fixed).value for level in self.compared),
+                    row.tail().plus(row.fixed).value,
+                ),
                 None if draws is None else draws.costs(k, row.fixed),
             )
             for k, row in enumerate(rows)
@@ -245,7 +248,7 @@ class _Work:
             return None
         most = max(LEAST_DRAWS, MOST_DRAWN // len(self.options))
         count = min(self.basis.parameter_draws, most)
-        found = Draws(np.full((len(rows), count, 2 + len(self.compared)), np.nan), self.compared)
+        found = Draws(np.full((len(rows), count, 3 + len(self.compared)), np.nan), self.compared)
         for number_, lines in enumerate(drawn_lines(self.models, count, self.seed)):
             found.values[:, number_] = under_other_laws(lines, self.options, self.compared)
             self.progress("parameters", 0.7 + 0.28 * (number_ + 1) / count)
@@ -286,6 +289,7 @@ class _Work:
                     "retained": retained.tolist(),
                     "ceded": ceded.tolist(),
                     "total": None if row.fixed is None else (retained + row.fixed).tolist(),
+                    "mean": None if row.fixed is None else float(np.mean(retained) + row.fixed),
                 }
             )
         return {
@@ -294,6 +298,7 @@ class _Work:
                 [np.bincount(places, minlength=len(past.years)) for places in past.places], axis=0
             ).tolist(),
             "gross": gross.tolist(),
+            "mean": float(np.mean(gross)),
             "options": entries,
             "partial": past.partial,
             "note": AS_IF,

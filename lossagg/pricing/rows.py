@@ -44,6 +44,10 @@ class Row:
         """What is paid whatever happens: premium, tax, costs."""
         return added(self.premium.value, self.costs.total)
 
+    def tail(self) -> Figure:
+        """Tail value at risk of the retained year at the farthest level of the table."""
+        return self.exact.levels[WORST_LEVELS[-1]][1]
+
     def worst(self, level: float) -> Figure:
         """Worst year retained at a level."""
         return self.exact.levels[level][0]
@@ -56,20 +60,17 @@ class Row:
         """Cost of capital on tail value at risk less the mean retained."""
         if basis.capital is None:
             return Figure.exact(0.0)
-        tail, mean = self.exact.levels[basis.capital.level][1], self.exact.mean
-        if mean is None or mean.value is None:
-            return mean or MISSING
-        return tail.plus(-mean.value).scaled(basis.capital.rate)
+        tail, mean = self.exact.levels[basis.capital.level][1], self.exact.mean or MISSING
+        return tail.joined(mean.scaled(-1.0)).scaled(basis.capital.rate)
 
     def total_with_capital(self, basis: PricingSection) -> Figure:
-        """Expected total cost of risk and cost of capital."""
-        capital = self.capital_cost(basis)
-        total = self.total()
-        return (
-            capital
-            if total.value is None and capital.value is None
-            else capital.plus(total.value, total.reason)
-        )
+        """Expected total cost of risk and cost of capital: (1 - rate) mean + rate tail + what is fixed."""
+        mean = self.exact.mean or MISSING
+        if basis.capital is None:
+            return self.total()
+        rate, tail = basis.capital.rate, self.exact.levels[basis.capital.level][1]
+        kept = mean.scaled(1.0 - rate).joined(tail.scaled(rate))
+        return kept.plus(self.fixed, self.premium.reason)
 
 
 def levels_needed(basis: PricingSection) -> tuple[float, ...]:

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from lossagg.report.folder import check_destination
 from lossagg.report.manifest import RunFacts
+from lossagg.report.options import write_options
 from lossagg.report.writing import write_assessment
 
-__all__ = ["RunFacts", "check_destination", "write_assessment"]
+__all__ = ["RunFacts", "check_destination", "write_assessment", "write_options"]

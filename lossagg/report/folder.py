@@ -11,7 +11,7 @@ import json
 import os
 import shutil
 import uuid
-from collections.abc import Iterator, Mapping
+from collections.abc import Collection, Iterator, Mapping
 from contextlib import contextmanager
 from pathlib import Path
 
@@ -19,14 +19,16 @@ from lossagg.errors import EnvironmentFault, InputError
 from lossagg.report.manifest import FORMAT
 
 FILES = ("assessment.json", "report.html", "tables.xlsx", "manifest.json")
+OPTION_FILES = ("options.json", "options.html", "options.xlsx", "options.csv", "curves.csv", "manifest.json")
 _NEW_FOLDER = "Name a folder that does not exist yet."
 
 
-def check_destination(out: Path) -> Path:
+def check_destination(out: Path, files: Collection[str] = FILES) -> Path:
     """Check that results may go to a folder, before any work is spent.
 
     Args:
         out: the folder wanted. It may be absent, empty, or hold an earlier result and nothing else.
+        files: names of the files of the result that is to go there.
 
     Returns:
         The folder as an absolute path.
@@ -48,7 +50,7 @@ def check_destination(out: Path) -> Path:
                 where=f"folder {out}",
                 remedy="Name a folder inside it.",
             )
-        _check_contents(target, out)
+        _check_contents(target, out, files)
     return target
 
 
@@ -62,9 +64,16 @@ def _check_parents(target: Path) -> None:
             return
 
 
-def _check_contents(target: Path, out: Path) -> None:
+def _check_contents(target: Path, out: Path, files: Collection[str]) -> None:
     names = sorted(entry.name for entry in target.iterdir())
-    foreign = [name for name in names if name not in FILES]
+    foreign = [name for name in names if name not in files]
+    if foreign and _is_ours(target) and all(name in (*FILES, *OPTION_FILES) for name in names):
+        raise InputError(
+            "the output folder holds another kind of result, which would be lost",
+            where=f"folder {out}",
+            value=foreign[0],
+            remedy="Name an empty or a new folder.",
+        )
     if not names or (not foreign and _is_ours(target)):
         return
     raise InputError(
@@ -95,7 +104,7 @@ def publish(out: Path, files: Mapping[str, bytes]) -> None:
         InputError: the folder may not be replaced.
         EnvironmentFault: no space, no permission, or the folder cannot be renamed.
     """
-    target = check_destination(out)
+    target = check_destination(out, files)
     with disk_errors(out), _parents(target.parent):
         building = target.with_name(f".{target.name}.{uuid.uuid4().hex[:12]}.new")
         try:

@@ -1,0 +1,157 @@
+"""The report of the options: page, workbook, CSV for rating systems, JSON, in one folder.
+
+Like the report of an assessment it reads and computes nothing; every figure is one of `options.json`.
+"""
+
+from __future__ import annotations
+
+import csv
+from collections.abc import Sequence
+from datetime import UTC, datetime
+from io import StringIO
+from pathlib import Path
+from typing import Any
+
+from lossagg.errors import InputError
+from lossagg.report.canonical import canonical_json
+from lossagg.report.cells import Absent, Cell, Estimated, Ranged, Table
+from lossagg.report.figures.options import curves_figure, frontier_figure
+from lossagg.report.folder import OPTION_FILES, check_destination, publish
+from lossagg.report.manifest import RunFacts, build_manifest
+from lossagg.report.page import environment
+from lossagg.report.reading import Entry
+from lossagg.report.tables import options as tables
+from lossagg.report.wording import STANDING_CAUTIONS
+from lossagg.report.workbook import render_workbook, safe_text
+
+FORMAT = "lossagg.options/1"
+
+
+def write_options(options: Entry, out: str | Path, *, facts: RunFacts | None = None) -> Path:
+    """Write the table of options into a folder: JSON, page, workbook, two CSV files and a manifest.
+
+    All but the manifest depend on the table alone: the same table gives the same bytes. They appear
+    together, or not at all.
+
+    Args:
+        options: the dictionary of format "lossagg.options/1".
+        out: the folder; absent, empty, or holding an earlier table of options, which is replaced.
+        facts: when and how the run was started, for the manifest.
+
+    Returns:
+        The folder written, as an absolute path.
+
+    Raises:
+        InputError: another format, or a folder with files of someone else.
+        EnvironmentFault: no space or no permission; nothing is left half-written.
+    """
+    if options.get("format") != FORMAT:
+        raise InputError(
+            "this is not a table of options that the report can read",
+            where="key 'format'",
+            value=options.get("format"),
+            remedy=f"Give the dictionary of format {FORMAT!r}.",
+        )
+    target = check_destination(Path(out), OPTION_FILES)
+    sheets = tables.every_option_table(options)
+    curve_tables = tables.curves(options)
+    files = {
+        "options.json": canonical_json(options).encode(),
+        "options.html": render_options(options).encode(),
+        "options.xlsx": render_workbook(sheets, options["portfolio"]["valuation_date"]),
+        "options.csv": _csv([_joined(options)]).encode(),
+        "curves.csv": _csv(curve_tables).encode(),
+    }
+    document = {**options, "headline": {"withheld": not options["agrees"]}}
+    manifest = build_manifest(document, facts or RunFacts(), files, datetime.now(UTC))
+    publish(target, {**files, "manifest.json": canonical_json(manifest).encode()})
+    return target
+
+
+def option_parts(options: Entry) -> dict[str, Any]:
+    """What the page shows of the options: tables and figures."""
+    shown = tables.shown_options(options)
+    past = options["history"]
+    return {
+        "data": options,
+        "tables": (
+            tables.retained(options, shown),
+            tables.ceded(options, shown),
+            tables.total(options, shown),
+        ),
+        "ranges": tables.ranges({**options, "options": shown}),
+        "terms": tables.terms(options, shown),
+        "past": None if past is None else tables.past_costs(options, shown),
+        "frontier": frontier_figure(options),
+        "curves": curves_figure(options),
+        "curve_tables": tables.curves(options),
+        "basis": tables.basis(options),
+        "parts": tables.parts({**options, "options": shown}),
+    }
+
+
+def render_options(options: Entry) -> str:
+    """The page of a table of options; the same table gives the same text."""
+    found: dict[str, list[str]] = {}
+    for entry in options["cautions"]:
+        found.setdefault(entry["code"], []).append(entry["message"])
+    for code, text in STANDING_CAUTIONS:
+        found.setdefault(code, [text])
+    context = {
+        "portfolio": options["portfolio"],
+        "run": options["run"],
+        "options": option_parts(options),
+        "cautions": list(found.items()),
+    }
+    return environment().get_template("options.html").render(context)
+
+
+def _joined(options: Entry) -> Table:
+    """All columns of all options in one table: terms, what is kept, what is bought, what it costs."""
+    parts = [
+        tables.retained(options),
+        tables.ceded(options),
+        tables.total(options),
+    ]
+    columns = parts[0].columns + parts[1].columns[1:] + parts[2].columns[2:]
+    rows = tuple(a + b[1:] + c[2:] for a, b, c in zip(*(part.rows for part in parts), strict=True))
+    return Table("Options", "Options", columns, rows)
+
+
+def _csv(parts: Sequence[Table]) -> str:
+    """Tables as comma-separated text, full numbers, empty where there is none; a line between two tables.
+
+    Text that a spreadsheet program could take for a formula begins with an apostrophe (see `workbook`).
+    """
+    stream = StringIO()
+    writer = csv.writer(stream, lineterminator="\n")
+    for number, table in enumerate(parts):
+        if number:
+            writer.writerow([])
+        if len(parts) > 1:
+            writer.writerow([safe_text(table.title)])
+        headings = []
+        for column in table.columns:
+            heading = safe_text(column.heading)
+            headings += [heading, f"{heading}, low", f"{heading}, high"] if column.ranged else [heading]
+        writer.writerow(headings)
+        for row in table.rows:
+            cells: list[str] = []
+            for column, cell in zip(table.columns, row, strict=True):
+                own = _texts(cell)
+                cells += own if column.ranged else own[:1]
+            writer.writerow(cells)
+    return stream.getvalue()
+
+
+def _texts(cell: Cell) -> list[str]:
+    """Value, low and high of a cell as text."""
+    if isinstance(cell, Absent):
+        return [safe_text(cell.words) if cell.words == "unlimited" else "", "", ""]
+    if isinstance(cell, Ranged):
+        return [repr(cell.value), *("" if end is None else repr(end) for end in (cell.low, cell.high))]
+    if isinstance(cell, Estimated):
+        return [repr(cell.value), "", ""]
+    if isinstance(cell, str):
+        return [safe_text(cell), "", ""]
+    return [repr(cell)] * 3
