@@ -10,37 +10,173 @@ behind it is infinite, so the result knows from the model which moments exist.
 
 from __future__ import annotations
 
+from abc import abstractmethod
 from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
-from scipy.special import betainc
+from scipy.special import betainc, ndtri
 
 from lossagg.arrays import FloatArray, Floats, elementwise, require_probability
 from lossagg.engines.result import AnnualLoss, require_measure
 from lossagg.errors import DoesNotExistError
 
-NORMAL_975 = 1.959963984540054
 EXACT_RANKS_BELOW = 1000.0
 
 
+class SampledAnnualLoss(AnnualLoss):
+    """Annual amounts of simulated years, whole or reduced.
+
+    Attributes:
+        moment_order: the order from which on moments do not exist, by the model; `inf` where all do.
+        most: the most a year can bring, `inf` where nothing limits it.
+        miss: how often an interval may miss, 0.05; less where a run stopped at a look of its own choice,
+            see `stopping`.
+    """
+
+    moment_order: float
+    most: float
+    miss: float
+
+    @property
+    @abstractmethod
+    def years(self) -> int:
+        """Number of simulated years."""
+
+    @abstractmethod
+    def amount_at(self, rank: int) -> tuple[float, float, float]:
+        """The amount at a rank from 1 to `years`, and the bounds of the error of knowing it."""
+
+    @abstractmethod
+    def _layer_moments(self, low: float, high: float) -> tuple[float, float]:
+        """Mean and mean square of min((S - low)+, high - low)."""
+
+    @abstractmethod
+    def _excess_sd(self, low: float) -> float:
+        """Standard deviation of (S - low)+."""
+
+    @abstractmethod
+    def _central(self) -> tuple[float, float, float]:
+        """Mean, standard deviation, and fourth moment about the mean over the squared variance."""
+
+    def __repr__(self) -> str:
+        return f"{type(self).__name__}({self.years:,} years, mean {self.mean():.6g})"
+
+    def value_at_risk(self, level: float) -> float:
+        """The smallest simulated amount not exceeded in at least `level` of the years."""
+        level = require_probability(level, "level", open_low=True, open_high=True)
+        rank = int(np.ceil(level * self.years))
+        if rank > 1 and (rank - 1) / self.years >= level:
+            rank -= 1
+        return self.amount_at(rank)[0]
+
+    def layer_mean(self, low: float, high: float = np.inf) -> float:
+        """Mean of min((S - low)+, high - low); `inf` for an unlimited layer of an infinite mean."""
+        if high == np.inf and self.moment_order <= 1:
+            return np.inf
+        return self._layer_moments(low, high)[0]
+
+    def layer_second_moment(self, low: float, high: float = np.inf) -> float:
+        """Mean of min((S - low)+, high - low)**2; `inf` for an unlimited layer of an infinite variance."""
+        if high == np.inf and self.moment_order <= 2:
+            return np.inf
+        return self._layer_moments(low, high)[1]
+
+    def mean(self) -> float:
+        """The mean of the years; `inf` where the model has none."""
+        return np.inf if self.moment_order <= 1 else self._central()[0]
+
+    def sd(self) -> float:
+        """The standard deviation, by deviations from the mean; `inf` where the model has none."""
+        return np.inf if self.moment_order <= 2 else self._central()[1]
+
+    def tail_value_at_risk(self, level: float) -> float:
+        """Mean of the worst 1 - level of the years; `inf` where the model has no mean."""
+        value = self.value_at_risk(level)
+        return value + self.layer_mean(value) / (1.0 - level)
+
+    def attachment_probability(self) -> float:
+        """The part of the years with any amount at all: how often a cover pays."""
+        return float(self.sf(0.0))
+
+    @abstractmethod
+    def exhaustion_probability(self) -> float | None:
+        """The part of the years that reach the most a year can bring; None where nothing limits it."""
+
+    @property
+    def _half(self) -> float:
+        """Standard errors on either side of an interval that misses as often as it may."""
+        return float(ndtri(1.0 - self.miss / 2.0))
+
+    def accuracy(self, measure: str, level: float | None = None) -> tuple[float, float]:
+        """The 95 % interval of a measure: order statistics for a value at risk, else 1.96 standard errors.
+
+        An end of `inf` says that the sample cannot bound the quantile: too few years lie beyond it.
+
+        Raises:
+            InputError: an unknown measure, a missing level.
+            DoesNotExistError: the variance (for the standard deviation, the fourth moment) is infinite,
+                so that no standard error exists.
+        """
+        require_measure(measure, level)
+        if measure == "value_at_risk" and level is not None:
+            return self._quantile_interval(level)
+        half = self._half * self.standard_error(measure, level)
+        centre = self.measure(measure, level)
+        return centre - half, centre + half
+
+    def standard_error(self, measure: str, level: float | None = None) -> float:
+        """The standard error of a measure; of a value at risk, its interval's half width over 1.96.
+
+        Raises:
+            InputError: an unknown measure, a missing level.
+            DoesNotExistError: as for `accuracy`.
+        """
+        require_measure(measure, level)
+        if measure == "value_at_risk" and level is not None:
+            low, high = self._quantile_interval(level)
+            return (high - low) / (2.0 * self._half)
+        self._require_moment(4.0 if measure == "sd" else 2.0, measure)
+        root = float(np.sqrt(self.years))
+        if measure == "mean":
+            return self.sd() / root
+        if level is not None:
+            return self._excess_sd(self.value_at_risk(level)) / (1.0 - level) / root
+        _, scale, fourth = self._central()
+        if scale == 0.0 or not np.isfinite(scale):
+            return scale
+        return scale * float(np.sqrt(max(fourth - 1.0, 0.0))) / 2.0 / root
+
+    def _require_moment(self, order: float, measure: str) -> None:
+        if self.moment_order <= order:
+            raise DoesNotExistError(
+                f"no standard error of {measure}: moments from order {self.moment_order:g} on are infinite",
+                value=self.moment_order,
+                remedy="Use the interval of a value at risk, or limit the loss by a cover.",
+            )
+
+    def _quantile_interval(self, level: float) -> tuple[float, float]:
+        low, high = quantile_ranks(self.years, level, self.miss)
+        below = min(0.0, self.amount_at(1)[1]) if low < 1 else self.amount_at(low)[1]
+        return below, self.most if high > self.years else self.amount_at(high)[2]
+
+
 @dataclass(frozen=True, eq=False, repr=False)
-class SimulatedAnnualLoss(AnnualLoss):
+class SimulatedAnnualLoss(SampledAnnualLoss):
     """Annual amounts of simulated years.
 
     Attributes:
         annual: the amount of every year, in the order of the years, shape (years,).
         moment_order: the order from which on moments do not exist, by the model; `inf` where all do.
         most: the most a year can bring, `inf` where nothing limits it.
+        miss: how often an interval may miss.
     """
 
     annual: FloatArray
     moment_order: float = np.inf
     most: float = np.inf
     engine: str = "simulation"
-
-    def __repr__(self) -> str:
-        return f"SimulatedAnnualLoss({self.years:,} years, mean {self.mean():.6g})"
+    miss: float = 0.05
 
     @property
     def years(self) -> int:
@@ -60,45 +196,10 @@ class SimulatedAnnualLoss(AnnualLoss):
             "x",
         )
 
-    def value_at_risk(self, level: float) -> float:
-        """The smallest simulated amount not exceeded in at least `level` of the years."""
-        level = require_probability(level, "level", open_low=True, open_high=True)
-        rank = int(np.ceil(level * self.years))
-        if rank > 1 and (rank - 1) / self.years >= level:
-            rank -= 1
-        return float(self.ordered[rank - 1])
-
-    def layer_mean(self, low: float, high: float = np.inf) -> float:
-        """Mean of min((S - low)+, high - low); `inf` for an unlimited layer of an infinite mean."""
-        if high == np.inf and self.moment_order <= 1:
-            return np.inf
-        return float(np.sum(self._layer(low, high)) / self.years)
-
-    def layer_second_moment(self, low: float, high: float = np.inf) -> float:
-        """Mean of min((S - low)+, high - low)**2; `inf` for an unlimited layer of an infinite variance."""
-        if high == np.inf and self.moment_order <= 2:
-            return np.inf
-        with np.errstate(over="ignore"):
-            return float(np.sum(self._layer(low, high) ** 2) / self.years)
-
-    def mean(self) -> float:
-        """The mean of the years; `inf` where the model has none."""
-        return np.inf if self.moment_order <= 1 else float(np.sum(self.ordered) / self.years)
-
-    def sd(self) -> float:
-        """The standard deviation, by deviations from the mean; `inf` where the model has none."""
-        if self.moment_order <= 2:
-            return np.inf
-        return _sd(self.ordered)
-
-    def tail_value_at_risk(self, level: float) -> float:
-        """Mean of the worst 1 - level of the years; `inf` where the model has no mean."""
-        value = self.value_at_risk(level)
-        return value + self.layer_mean(value) / (1.0 - level)
-
-    def attachment_probability(self) -> float:
-        """The part of the years with any amount at all: how often a cover pays."""
-        return float(self.sf(0.0))
+    def amount_at(self, rank: int) -> tuple[float, float, float]:
+        """The amount at a rank, exactly."""
+        amount = float(self.ordered[rank - 1])
+        return amount, amount, amount
 
     def exhaustion_probability(self) -> float | None:
         """The part of the years that reach the most a year can bring; None where nothing limits it."""
@@ -107,72 +208,24 @@ class SimulatedAnnualLoss(AnnualLoss):
         short = np.searchsorted(self.ordered, self.most * (1.0 - 1e-12), side="left")
         return float((self.years - short) / self.years)
 
-    def accuracy(self, measure: str, level: float | None = None) -> tuple[float, float]:
-        """The 95 % interval of a measure: order statistics for a value at risk, else 1.96 standard errors.
-
-        An end of `inf` says that the sample cannot bound the quantile: too few years lie beyond it.
-
-        Raises:
-            InputError: an unknown measure, a missing level.
-            DoesNotExistError: the variance (for the standard deviation, the fourth moment) is infinite,
-                so that no standard error exists.
-        """
-        require_measure(measure, level)
-        if measure == "value_at_risk" and level is not None:
-            return self._quantile_interval(level)
-        half = NORMAL_975 * self.standard_error(measure, level)
-        centre = self.measure(measure, level)
-        return centre - half, centre + half
-
-    def standard_error(self, measure: str, level: float | None = None) -> float:
-        """The standard error of a measure; of a value at risk, its interval's half width over 1.96.
-
-        Raises:
-            InputError: an unknown measure, a missing level.
-            DoesNotExistError: as for `accuracy`.
-        """
-        require_measure(measure, level)
-        if measure == "value_at_risk" and level is not None:
-            low, high = self._quantile_interval(level)
-            return (high - low) / (2.0 * NORMAL_975)
-        self._require_moment(4.0 if measure == "sd" else 2.0, measure)
-        root = float(np.sqrt(self.years))
-        if measure == "mean":
-            return self.sd() / root
-        if level is not None:
-            excess = np.maximum(self.ordered - self.value_at_risk(level), 0.0)
-            return _sd(excess) / (1.0 - level) / root
-        return self._spread_error() / root
-
-    def _spread_error(self) -> float:
-        """Asymptotic standard deviation of sqrt(n) times the sample's standard deviation."""
-        scale = self.sd()
-        if scale == 0.0 or not np.isfinite(scale):
-            return scale
-        fourth = float(np.mean(((self.ordered - self.mean()) / scale) ** 4))
-        return scale * float(np.sqrt(max(fourth - 1.0, 0.0))) / 2.0
-
-    def _require_moment(self, order: float, measure: str) -> None:
-        if self.moment_order <= order:
-            raise DoesNotExistError(
-                f"no standard error of {measure}: moments from order {self.moment_order:g} on are infinite",
-                value=self.moment_order,
-                remedy="Use the interval of a value at risk, or limit the loss by a cover.",
-            )
-
-    def _quantile_interval(self, level: float) -> tuple[float, float]:
-        low, high = quantile_ranks(self.years, level)
-        below = min(0.0, float(self.ordered[0])) if low < 1 else float(self.ordered[low - 1])
-        return below, self.most if high > self.years else float(self.ordered[high - 1])
-
-    def _layer(self, low: float, high: float) -> FloatArray:
-        """Amounts in the layer of the years that reach it."""
+    def _layer_moments(self, low: float, high: float) -> tuple[float, float]:
         above = self.ordered[np.searchsorted(self.ordered, low, side="right") :]
-        return np.minimum(above, high) - low
+        within = np.minimum(above, high) - low
+        with np.errstate(over="ignore"):
+            return float(np.sum(within) / self.years), float(np.sum(within**2) / self.years)
+
+    def _excess_sd(self, low: float) -> float:
+        return _sd(np.maximum(self.ordered - low, 0.0))
+
+    def _central(self) -> tuple[float, float, float]:
+        mean, scale = float(np.sum(self.ordered) / self.years), _sd(self.ordered)
+        if scale == 0.0 or not np.isfinite(scale):
+            return mean, scale, 0.0
+        return mean, scale, float(np.mean(((self.ordered - mean) / scale) ** 4))
 
 
-def quantile_ranks(years: int, level: float) -> tuple[int, int]:
-    """Ranks of two order statistics that enclose the quantile with 95 % probability.
+def quantile_ranks(years: int, level: float, miss: float = 0.05) -> tuple[int, int]:
+    """Ranks of two order statistics that enclose the quantile but for a probability `miss`.
 
     Ranks below 1 or above `years` mean that no year of the sample bounds it on that side. Normal
     approximation of the binomial, rounded outwards; exact where fewer than a thousand years are
@@ -181,11 +234,15 @@ def quantile_ranks(years: int, level: float) -> tuple[int, int]:
     Args:
         years: size of the sample.
         level: level of the quantile, in (0, 1).
+        miss: probability of missing it, half on either side.
     """
     if years * min(level, 1.0 - level) >= EXACT_RANKS_BELOW:
-        half = NORMAL_975 * np.sqrt(years * level * (1.0 - level))
+        half = ndtri(1.0 - miss / 2.0) * np.sqrt(years * level * (1.0 - level))
         return int(np.floor(years * level - half)), int(np.ceil(years * level + half))
-    return _binomial_quantile(0.025, years, level), _binomial_quantile(0.975, years, level) + 1
+    return (
+        _binomial_quantile(miss / 2.0, years, level),
+        _binomial_quantile(1.0 - miss / 2.0, years, level) + 1,
+    )
 
 
 def _binomial_quantile(q: float, trials: int, p: float) -> int:
