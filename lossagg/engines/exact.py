@@ -15,6 +15,7 @@ from lossagg.cover import Cover, Schedule
 from lossagg.engines.book import Book, Line, PlacedCover, Subject
 from lossagg.engines.bound import LatticeBound
 from lossagg.engines.compound import CompoundSum
+from lossagg.engines.pair import PairPlan, pair_plan
 from lossagg.engines.result import AnnualLoss, BookResult, TransformedAnnualLoss
 from lossagg.errors import EngineError
 from lossagg.families.base import CountLaw, SizeLaw
@@ -36,16 +37,32 @@ class ExactEngine(ABC):
             EngineError: a count law outside the engine's domain, or a lattice beyond its resources.
         """
 
+    def solve_pair(self, lines: tuple[Line, ...], plan: PairPlan) -> AnnualLoss:
+        """The distribution of a function of two annual sums, `plan.beyond` not yet applied.
+
+        Raises:
+            EngineError: an engine that follows one sum only, or a plan outside its domain.
+        """
+        raise EngineError(
+            f"the {self.name} engine cannot follow two annual sums, as a retained cap needs",
+            value=", ".join(sorted(plan.paid)),
+            remedy="The fourier engine and the simulation compute it.",
+        )
+
     def annual_loss(self, frequency: CountLaw, severity: SizeLaw, cover: Cover | None = None) -> AnnualLoss:
         """The annual loss of one line, or what a cover pays of it.
 
         Raises:
-            EngineError: as `solve`; also a retained cap, which needs the simulation.
+            EngineError: as `solve` and, for a retained cap, `solve_pair`.
         """
         line = Line(name="loss", frequency=frequency, severity=severity)
         covers = () if cover is None else (PlacedCover(name="cover", terms=cover),)
         book = Book(lines=(line,), covers=covers)
-        plan = book.plan(Subject("line", "loss") if cover is None else Subject("cover", "cover"))
+        subject = Subject("line", "loss") if cover is None else Subject("cover", "cover")
+        pair = pair_plan(book, subject)
+        if pair is not None:
+            return _paid(self.solve_pair(book.lines, pair), pair.beyond)
+        plan = book.plan(subject)
         return _paid(self.solve(CompoundSum.of(book.lines, plan.events)), plan.annual)
 
     def book(self, book: Book) -> BookResult:
@@ -58,7 +75,13 @@ class ExactEngine(ABC):
         refused: dict[Subject, str] = {}
         for subject in book.subjects:
             try:
-                plan = book.plan(subject)
+                pair = pair_plan(book, subject)
+                if pair is not None and pair.single is None:
+                    lines = book.independent_lines(pair.paid)
+                    losses[subject] = _paid(self.solve_pair(lines, pair), pair.beyond)
+                    continue
+                plan = book.plan(subject) if pair is None else pair.single
+                assert plan is not None
                 key = frozenset(plan.events.items())
                 if key not in sums:
                     sums[key] = self._solved(book, plan.events)

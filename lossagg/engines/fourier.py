@@ -19,7 +19,11 @@ from lossagg.engines.bound import LatticeBound
 from lossagg.engines.compound import CompoundSum
 from lossagg.engines.exact import ExactEngine, Rounded, bracket
 from lossagg.engines.lattice import LatticeLoss
+from lossagg.engines.pair import PairPlan
+from lossagg.engines.pair_sum import paired_loss
+from lossagg.engines.placed import Line
 from lossagg.engines.quantiles import LEAST_REACH, LEVELS, REACHES, Quantiles
+from lossagg.engines.result import AnnualLoss
 from lossagg.engines.running import running_sums
 from lossagg.engines.span import arithmetic_span, fitting_step
 from lossagg.engines.transform import LatticeTransform, bounded_survival
@@ -122,6 +126,14 @@ class Fourier(ExactEngine):
                 BracketWarning(level, factor * self.accuracy, width, best.points, best.step), stacklevel=4
             )
         return best.loss()
+
+    def solve_pair(self, lines: tuple[Line, ...], plan: PairPlan) -> AnnualLoss:
+        """The distribution of a function of two annual sums, by conditioning on the large events.
+
+        Raises:
+            EngineError: lines or terms outside the domain of `pair_sum`.
+        """
+        return paired_loss(self.name, self.solve, lines, plan)
 
     def _given(self, compound: CompoundSum, coarse: Quantiles | None) -> tuple[float, int]:
         """Step and points where at least one of them is given."""
