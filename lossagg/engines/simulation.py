@@ -15,24 +15,22 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from lossagg.arrays import FloatArray, IntArray
 from lossagg.cover import Cover
+from lossagg.engines.blocks import PreparedLine, block_events, line_sums, prepare_line, run_block
 from lossagg.engines.book import Book, Line, PlacedCover, Subject
-from lossagg.engines.joint import ALONE, JointBlock, joint_block
-from lossagg.engines.quantile_table import QuantileTable, quantile_table
 from lossagg.engines.result import BookResult
 from lossagg.engines.sampled import SimulatedAnnualLoss
-from lossagg.engines.search_table import CountSampler, count_sampler
-from lossagg.engines.streams import BLOCK_YEARS, block_state, line_key
-from lossagg.engines.yearly import LOSS, LineColumns, annual_amounts, growth, line_columns
+from lossagg.engines.streams import BLOCK_YEARS
+from lossagg.engines.yearly import growth
 from lossagg.errors import EngineError, InputError
 from lossagg.families.base import CountLaw, SizeLaw
 from lossagg.kernels.compile import awaits_compilation
-from lossagg.kernels.simulation import TILE, Kept, Notes, Sums, add_events, add_years
+from lossagg.kernels.simulation import add_years
+
+__all__ = ["PreparedLine", "Simulation", "block_events", "line_sums", "prepare_line", "run_block"]
 
 MOST_YEARS = 10**10
 MOST_LOSSES = 1e13
-NOTES = 2**16
 log = logging.getLogger(__name__)
 
 
@@ -114,119 +112,6 @@ class Simulation:
             subject: SimulatedAnnualLoss(results[row], _moment_order(book, subject), _most(book, subject))
             for row, subject in enumerate(subjects)
         }
-
-
-@dataclass(frozen=True, eq=False)
-class PreparedLine:
-    """A line as the kernels take it: key of its streams, samplers, columns to add up."""
-
-    name: str
-    key: tuple[int, int]
-    counts: CountSampler
-    sizes: QuantileTable
-    columns: LineColumns
-
-
-def prepare_line(line: Line, book: Book, subjects: tuple[Subject, ...]) -> PreparedLine:
-    """Tables and columns of a line of a book."""
-    return PreparedLine(
-        line.name,
-        line_key(line.name),
-        count_sampler(line.frequency, f"line {line.name!r}"),
-        quantile_table(line.severity),
-        line_columns(book, line.name, subjects),
-    )
-
-
-def run_block(
-    book: Book,
-    subjects: tuple[Subject, ...],
-    lines: tuple[PreparedLine, ...],
-    *,
-    seed: int,
-    block: int,
-    years: int,
-) -> dict[Subject, FloatArray]:
-    """Simulate one block of years: the annual amount of every subject, shape (years,)."""
-    joint = joint_block(book.lines, book.dependences, seed=seed, block=block)
-    sums = {}
-    for line in lines:
-        annual = line_sums(line, joint, seed=seed, block=block, years=years)
-        if line.name in joint.ranks:
-            annual = annual[:, joint.source(line.name, annual[line.columns.column[LOSS]])]
-        sums[line.name] = {key: annual[column] for key, column in line.columns.column.items()}
-    return annual_amounts(book, subjects, sums)
-
-
-def line_sums(
-    line: PreparedLine, joint: JointBlock = ALONE, *, seed: int, block: int, years: int
-) -> FloatArray:
-    """Annual sums of a line's columns in one block, shape (columns, years), before a copula moves years."""
-    nothing = np.empty(0)
-    kept = Kept(0, 0, np.empty(0, dtype=np.int64), nothing)
-    annual = np.zeros((line.columns.count, whole_tiles(years)))
-    if line.columns.count:
-        state = block_state(seed, line.key, block)
-        counts = _counts(line, joint, state)
-        sums = Sums(line.columns.ramps, -1, joint.scale.get(line.name, nothing), annual)
-        _simulate_years(line, state, sums, counts[: annual.shape[1]], years, kept)
-    return annual[:, :years]
-
-
-def block_events(
-    line: PreparedLine, joint: JointBlock = ALONE, *, seed: int, block: int, first: int, last: int
-) -> tuple[IntArray, FloatArray]:
-    """The very losses that `line_sums` adds up, for a replay of single years.
-
-    Args:
-        line: the line.
-        joint: what the dependences of the book say of the block.
-        seed: the seed of the run.
-        block: number of the block.
-        first: first year asked for, counted from the start of the block.
-        last: the year after the last.
-
-    Returns:
-        Counts per year, shape (last - first,), and sizes in the order of the years, as `line_sums` has them.
-    """
-    state = block_state(seed, line.key, block)
-    counts = _counts(line, joint, state)
-    own = counts[first:last]
-    place = np.cumsum(own) - own
-    kept = Kept(first, last, place, np.empty(int(own.sum())))
-    sums = Sums(np.empty((0, 5)), -1, np.empty(0), np.empty((0, whole_tiles(last))))
-    years, sizes = _simulate_years(line, state, sums, counts[: whole_tiles(last)], last, kept)
-    inside = (years >= first) & (years < last)
-    by_year = np.argsort(years[inside], kind="stable")
-    kept.sizes[np.isnan(kept.sizes)] = sizes[inside][by_year]
-    scale = joint.scale.get(line.name)
-    return own, kept.sizes if scale is None else kept.sizes * np.repeat(scale[first:last], own)
-
-
-def _counts(line: PreparedLine, joint: JointBlock, state: np.ndarray) -> IntArray:
-    """Losses of each year of a block: those the dependences say, or the line's own."""
-    given = joint.counts.get(line.name)
-    return line.counts.draw(state, BLOCK_YEARS) if given is None else given
-
-
-def _simulate_years(
-    line: PreparedLine, state: np.ndarray, sums: Sums, counts: IntArray, years: int, kept: Kept
-) -> tuple[IntArray, FloatArray]:
-    """Run the loops over a block; (year, size) of the losses that the law itself had to answer."""
-    notes = Notes(np.empty(NOTES, dtype=np.int64), np.empty(NOTES))
-    cursor = np.zeros(3, dtype=np.int64)
-    answered = [(np.empty(0, dtype=np.int64), np.empty(0))]
-    while cursor[0] < years:
-        found = add_years(state, line.sizes.arrays, sums, counts, years, cursor, notes, kept)
-        if found:
-            answered.append((notes.year[:found].copy(), line.sizes.exact(notes.probability[:found])))
-            add_events(*answered[-1], sums)
-    return np.concatenate([year for year, _ in answered]), np.concatenate([size for _, size in answered])
-
-
-def whole_tiles(years: int) -> int:
-    """Years up to the end of the tile that the last of them belongs to."""
-    return min(-(-years // TILE) * TILE, BLOCK_YEARS)
 
 
 def require_resources(years: int, subjects: int, book: Book, memory: int) -> None:
