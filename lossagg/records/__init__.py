@@ -9,7 +9,8 @@ from lossagg.records.exposure import ExposureTable, read_exposure
 from lossagg.records.findings import Finding, RecordsError
 from lossagg.records.index_file import read_trend_index
 from lossagg.records.money import Reconciliation
-from lossagg.records.prepare import PreparedLosses, prepare_losses
+from lossagg.records.prepare import prepare_losses
+from lossagg.records.prepared import PreparedLosses
 from lossagg.records.steps import Step
 from lossagg.records.table import LossTable, read_losses
 from lossagg.records.trend import TrendIndex, midpoint

@@ -9,90 +9,32 @@ ultimate. Without a request amounts stay gross of recoveries and as they are rec
 from __future__ import annotations
 
 import datetime as dt
-from dataclasses import dataclass, fields, replace
+from dataclasses import fields, replace
 from typing import TypeVar
 
 import numpy as np
 import numpy.typing as npt
 
-from lossagg.arrays import BoolArray, FloatArray, IntArray, require_positive
+from lossagg.arrays import IntArray, require_positive
 from lossagg.errors import InputError, place
 from lossagg.records.basis import net_amounts
 from lossagg.records.check import CheckedLosses
 from lossagg.records.dates import DateArray
-from lossagg.records.development import OPEN_CLAIMS, Development, OpenClaims
-from lossagg.records.events import Events, group_events, is_open
+from lossagg.records.development import Development, OpenClaims
+from lossagg.records.events import Events, group_events
 from lossagg.records.exposure import ExposureTable
 from lossagg.records.findings import Finding
-from lossagg.records.history import read_history
 from lossagg.records.mixups import unit_findings
+from lossagg.records.modelled import check_open_claims, factors_of, modelled_amounts
 from lossagg.records.money import Reconciliation, reconcile
-from lossagg.records.small_events import set_aside_small
-from lossagg.records.steps import Step, Trail, log_steps, open_claims_caution, window_caution
+from lossagg.records.prepared import PreparedLosses
+from lossagg.records.small_events import Kept, set_aside_small
+from lossagg.records.steps import Trail, log_steps, open_claims_caution, window_caution
 from lossagg.records.trend import Trend, check_trend, trend_factor
-from lossagg.records.ultimate import Developed, Factors, develop_years, find_factors
+from lossagg.records.ultimate import Developed, Factors, develop_years
 from lossagg.records.years import Window, YearTable, complete_from, exposures_of, threshold_base, year_table
 
 Scalar = TypeVar("Scalar", bound=np.generic)
-
-
-@dataclass(frozen=True)
-class PreparedLosses:
-    """The losses of one line as they are modelled; arrays of shape (events,), sorted by date and amount.
-
-    Args:
-        line: name of the line, None when the file is of one line.
-        amount: amount of each event in the money of the forecast period.
-        threshold: reporting threshold of each event in the same money.
-        censored: True where the amount stopped at a policy limit, or is of a claim that is open and taken
-            as at least what is recorded.
-        date: date of the earliest claim.
-        year: its calendar year.
-        recorded: amount as recorded, gross of recoveries.
-        claims: number of claims of the event.
-        years: the history by year.
-        largest_threshold: lowest amount, in the money of the forecast period, above which the whole
-            window is complete.
-        steps: the steps from rows to losses.
-        findings: everything found on the way, that of the checks included.
-        reconciliation: rows and money read, used and excluded at the end.
-        base: what the exposure is, None without exposure.
-        net: True when recoveries were taken off.
-        open_claims: what was done with open claims.
-        developed: the years at ultimate, None where development was not asked for.
-    """
-
-    line: str | None
-    amount: FloatArray
-    threshold: FloatArray
-    censored: BoolArray
-    date: DateArray
-    year: IntArray
-    recorded: FloatArray
-    claims: IntArray
-    years: YearTable
-    largest_threshold: float
-    steps: tuple[Step, ...]
-    findings: tuple[Finding, ...]
-    reconciliation: Reconciliation
-    base: str | None
-    net: bool = False
-    open_claims: OpenClaims = "as-recorded"
-    developed: Developed | None = None
-
-    def __len__(self) -> int:
-        """Number of events."""
-        return len(self.amount)
-
-    def __repr__(self) -> str:
-        """One line: the line, its events and years."""
-        years = f"{self.years.year[0]}-{self.years.year[-1]}"
-        return f"PreparedLosses(line={self.line!r}, events={len(self)}, years={years})"
-
-    @property
-    def supported_level(self) -> float:
-        """Level that the length of the history supports by itself: 1 - 1 / years."""
-        return 1.0 - 1.0 / len(self.years)
 
 
 def prepare_losses(
@@ -138,21 +80,20 @@ def prepare_losses(
     """
     _require_one_line(checked)
     trend, frequency_trend = check_trend(trend), _rate(frequency_trend)
-    _check_open(checked, open_claims, development)
+    check_open_claims(checked, open_claims, development)
     default = require_positive(reporting_threshold or 0.0, "reporting_threshold", zero=True)
     table = checked.table
     net = net_amounts(table) if net_of_recoveries else None
     window, found = _window(checked, exposure)
-    factors = _factors(checked, window, development, default, hours_window, net)
-    modelled = _modelled(checked, window, factors, open_claims, net)
+    factors = factors_of(checked, window, development, default, hours_window, net)
+    modelled = modelled_amounts(checked, window, factors, open_claims, net)
     everything = group_events(table, checked.used, hours_window=hours_window, amount=modelled)
     kept = set_aside_small(checked, everything, default, modelled is not None, hours_window)
     events = _in_order(kept.events)
     own = np.where(np.isnan(events.threshold), default, events.threshold)
     factor = trend_factor(events.date, forecast_midpoint, trend)
-    year = _year(events.date)
-    base = threshold_base(window, year, own, default)
     at = window.position(events.date)
+    base = threshold_base(window, at + window.first_year, own, default)
     years = year_table(
         window,
         exposures_of(window, exposure),
@@ -163,22 +104,8 @@ def prepare_losses(
         trend_factor(window.middles(), forecast_midpoint, frequency_trend),
         own,
     )
-    developed = None
-    if development is not None and factors is not None:
-        developed = develop_years(
-            development,
-            factors,
-            years.year,
-            years.observed_exposure,
-            years.losses.astype(np.float64),
-            years.amount,
-        )
-        years = years.at_ultimate(factors.count, developed.ultimate_count, developed.ultimate_amount)
-    whole = checked.reconciliation
-    if kept.changed:
-        whole = reconcile(
-            table.exact[checked.member], kept.used[checked.member], table.unreadable[checked.member]
-        )
+    years, developed = _developed(development, factors, years)
+    whole = _reconciled(checked, kept)
     trail = Trail(
         checked, kept.used, everything, events, net, trend, forecast_midpoint, hours_window, open_claims
     )
@@ -188,7 +115,7 @@ def prepare_losses(
         threshold=_frozen(own * factor),
         censored=_frozen(events.censored | ((events.open > 0) & (open_claims == "censor"))),
         date=_frozen(events.date),
-        year=_frozen(year),
+        year=_frozen(at + window.first_year),
         recorded=_frozen(events.recorded),
         claims=_frozen(events.claims),
         years=years,
@@ -219,6 +146,25 @@ def _require_one_line(checked: CheckedLosses) -> None:
         )
 
 
+def _developed(
+    development: Development | None, factors: Factors | None, years: YearTable
+) -> tuple[YearTable, Developed | None]:
+    """The years with what they develop to, and the development itself where it is asked for."""
+    if development is None or factors is None:
+        return years, None
+    count = years.losses.astype(np.float64)
+    developed = develop_years(development, factors, years.year, years.observed_exposure, count, years.amount)
+    return years.at_ultimate(factors.count, developed.ultimate_count, developed.ultimate_amount), developed
+
+
+def _reconciled(checked: CheckedLosses, kept: Kept) -> Reconciliation:
+    """The reconciliation at the end, which is that of the check unless events were set aside since."""
+    if not kept.changed:
+        return checked.reconciliation
+    table, member = checked.table, checked.member
+    return reconcile(table.exact[member], kept.used[member], table.unreadable[member])
+
+
 def _rate(frequency_trend: float) -> float:
     rate = check_trend(frequency_trend)
     if not isinstance(rate, float):
@@ -228,64 +174,6 @@ def _rate(frequency_trend: float) -> float:
             remedy="Write 0.02 for 2 % a year.",
         )
     return rate
-
-
-def _check_open(checked: CheckedLosses, open_claims: str, development: Development | None) -> None:
-    if open_claims not in OPEN_CLAIMS:
-        raise InputError(
-            "unknown treatment of open claims", value=open_claims, remedy=f"Use {', '.join(OPEN_CLAIMS)}."
-        )
-    if open_claims == "as-recorded":
-        return
-    if "status" not in checked.table.words:
-        raise InputError(
-            f"open claims are to be treated ({open_claims}) but the records have no status",
-            where=place(file=checked.table.file),
-            remedy="Map the column that says which claims are open.",
-        )
-    if open_claims == "develop" and (development is None or not development.develops("open")):
-        raise InputError(
-            "open claims are to be developed but there are no factors for them",
-            where=place(file=checked.table.file),
-            remedy="Give open-factors by age, or open-tail to estimate them from the valuations in the "
-            "records, under development.",
-        )
-
-
-def _factors(
-    checked: CheckedLosses,
-    window: Window,
-    development: Development | None,
-    default: float,
-    hours_window: int | None,
-    net: FloatArray | None,
-) -> Factors | None:
-    """Factors to ultimate of each year, None without development."""
-    if development is None:
-        return None
-    history = None
-    if development.from_history:
-        history = read_history(
-            checked, window, default_threshold=default, hours_window=hours_window, amount=net
-        )
-    return find_factors(development, len(window.years), history)
-
-
-def _modelled(
-    checked: CheckedLosses,
-    window: Window,
-    factors: Factors | None,
-    open_claims: OpenClaims,
-    net: FloatArray | None,
-) -> FloatArray | None:
-    """Amount of each row as it is modelled, None where that is the one recorded; shape (rows,)."""
-    if open_claims != "develop" or factors is None or factors.open is None:
-        return net
-    table = checked.table
-    value = table.amount.copy() if net is None else net.copy()
-    rows = np.flatnonzero(checked.used & is_open(table))
-    value[rows] *= factors.open[window.position(table.date[rows])]
-    return value
 
 
 def _in_order(events: Events) -> Events:
