@@ -1,0 +1,272 @@
+"""One simulated year again: its events, what each cover paid of each and of the year, term by term.
+
+The year is found by its number alone: its block and place, the streams of its lines, and what the
+dependences say of it. Its losses are those the simulation drew, to the bit; what covers pay of them is
+worked out here event by event, apart from the compiled loops, and adds up to the same annual figures.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+
+from lossagg.arrays import FloatArray, IntArray
+from lossagg.cover.checks import stated_terms
+from lossagg.cover.event import surplus_share, through
+from lossagg.cover.order import WORDS
+from lossagg.cover.schedule import Schedule
+from lossagg.engines.book import Book, PlacedCover, Subject
+from lossagg.engines.joint import JointBlock, joint_block
+from lossagg.engines.simulation import PreparedLine, block_events, line_sums, prepare_line
+from lossagg.engines.streams import BLOCK_YEARS
+from lossagg.engines.yearly import LOSS, annual_amounts
+from lossagg.errors import InputError
+
+
+@dataclass(frozen=True)
+class Step:
+    """One term acting: its name, and the amount that is left after it."""
+
+    operation: str
+    amount: float
+
+
+@dataclass(frozen=True)
+class Payment:
+    """What one cover pays, of an event or of the year, and how it comes about.
+
+    Attributes:
+        cover: the cover's name.
+        steps: the terms in the order in which they act.
+        paid: of an event, what it adds to the cover's year; of the year, what the cover pays.
+    """
+
+    cover: str
+    steps: tuple[Step, ...]
+    paid: float
+
+
+@dataclass(frozen=True)
+class Event:
+    """One loss of the year.
+
+    Attributes:
+        line: its line.
+        number: 1, 2, ... within the line and year, in the order in which they were drawn.
+        size: the loss, without adjustment expense.
+        cost: the loss with its adjustment expense.
+        shock: whether it is part of an event that also hit other lines.
+        payments: by cover of the line.
+    """
+
+    line: str
+    number: int
+    size: float
+    cost: float
+    shock: bool
+    payments: tuple[Payment, ...]
+
+
+@dataclass(frozen=True)
+class ReplayedYear:
+    """One simulated year.
+
+    Attributes:
+        year: its number, from 1.
+        events: line by line.
+        covers: what each cover paid of the year.
+        amounts: the annual amount of every subject of the book.
+        factors: the value of each shared factor.
+    """
+
+    year: int
+    events: tuple[Event, ...]
+    covers: tuple[Payment, ...]
+    amounts: Mapping[Subject, float]
+    factors: Mapping[str, float]
+
+
+@dataclass(frozen=True, eq=False)
+class Replay:
+    """The simulated years of a run, any of them on request.
+
+    Args:
+        book: lines, covers and dependences of the run.
+        seed: the seed of the run.
+        years: how many years the run simulated; a copula orders the years of an incomplete last block.
+    """
+
+    book: Book
+    seed: int
+    years: int
+
+    def year(self, number: int) -> ReplayedYear:
+        """Reconstruct one simulated year.
+
+        Args:
+            number: its number, 1 to `years`.
+
+        Raises:
+            InputError: a year that the run did not simulate.
+        """
+        if isinstance(number, bool) or not isinstance(number, int) or not 1 <= number <= self.years:
+            raise InputError(
+                f"the run simulated years 1 to {self.years:,}",
+                value=number,
+                remedy="Ask for a year in that range.",
+            )
+        book, (block, place) = self.book, divmod(number - 1, BLOCK_YEARS)
+        joint = self._joint(block)
+        events: list[Event] = []
+        for line in self._lines:
+            source = int(self._sources(block, line)[place])
+            _, sizes = block_events(line, joint, seed=self.seed, block=block, first=source, last=source + 1)
+            shocks = int(joint.shocks[line.name][source]) if line.name in joint.shocks else 0
+            events += [
+                _event(book, line.name, k, float(size), k <= shocks) for k, size in enumerate(sizes, 1)
+            ]
+        amounts = annual_amounts(book, book.subjects, _sums(book, events))
+        return ReplayedYear(
+            year=number,
+            events=tuple(events),
+            covers=tuple(_year_payment(book, cover, events, amounts) for cover in book.covers),
+            amounts={subject: float(amount[0]) for subject, amount in amounts.items()},
+            factors={name: float(values[place]) for name, values in joint.factors.items()},
+        )
+
+    @cached_property
+    def _lines(self) -> tuple[PreparedLine, ...]:
+        return tuple(prepare_line(line, self.book, self.book.subjects) for line in self.book.lines)
+
+    @cached_property
+    def _found(self) -> dict[tuple[int, str], IntArray]:
+        return {}
+
+    @cached_property
+    def _joints(self) -> dict[int, JointBlock]:
+        return {}
+
+    def _joint(self, block: int) -> JointBlock:
+        if block not in self._joints:
+            drawn = joint_block(self.book.lines, self.book.dependences, seed=self.seed, block=block)
+            self._joints[block] = drawn
+        return self._joints[block]
+
+    def _sources(self, block: int, line: PreparedLine) -> IntArray:
+        """The simulated years of a line in the order in which a copula put them."""
+        if (block, line.name) not in self._found:
+            joint, years = self._joint(block), min(BLOCK_YEARS, self.years - block * BLOCK_YEARS)
+            totals = np.empty(years)
+            if line.name in joint.ranks:
+                sums = line_sums(line, joint, seed=self.seed, block=block, years=years)
+                totals = sums[line.columns.column[LOSS]]
+            self._found[block, line.name] = joint.source(line.name, totals)
+        return self._found[block, line.name]
+
+
+def nearest_years(amounts: FloatArray, value: float, number: int) -> list[int]:
+    """Numbers of the years whose amount is nearest to a value, by amount, the lower ones first.
+
+    Args:
+        amounts: annual amounts in the order of the years, shape (years,).
+        value: the amount looked for.
+        number: how many years.
+    """
+    distance = np.abs(amounts - value)
+    number = min(number, amounts.size)
+    nearest = np.argpartition(distance, number - 1)[:number]
+    # Among equally near years the first; the partition above is free to choose.
+    nearest = np.flatnonzero(distance <= distance[nearest].max())
+    nearest = nearest[np.lexsort((nearest, distance[nearest]))][:number]
+    return [int(k) + 1 for k in nearest[np.lexsort((nearest, amounts[nearest]))]]
+
+
+def _event(book: Book, line: str, number: int, size: float, shock: bool) -> Event:
+    payments = tuple(
+        _event_payment(book, cover, line, size) for cover in book.covers if book.covers_line(cover, line)
+    )
+    return Event(line, number, size, _at(book.line(line).cost, size), shock, payments)
+
+
+def _event_payment(book: Book, cover: PlacedCover, line: str, size: float) -> Payment:
+    terms, own = cover.terms, book.line(line)
+    begin = Schedule.identity()
+    steps = []
+    left, expense = book.left_before(cover, line)
+    if not left.is_identity:
+        steps.append(Step(f"left by {', '.join(cover.after)}", _at(left, size)))
+    if expense > 0 and terms.expense_basis == "inside":
+        begin = begin.scaled(1.0 + expense)
+        steps.append(Step("with expense", _at(begin.after(left), size)))
+    if terms.surplus is not None:
+        begin = begin.scaled(surplus_share(terms, own.sum_insured))
+        steps.append(Step(WORDS["surplus"], _at(begin.after(left), size)))
+    stated = stated_terms(terms)
+    for k, operation in enumerate(terms.event_order, start=1):
+        if operation in stated:
+            reached = through(terms, begin, terms.event_order[:k]).after(left)
+            steps.append(Step(WORDS[operation], _at(reached, size)))
+    schedule = book.event_payment(cover, line)
+    paid = 0.0 if schedule is None else _at(schedule, size)
+    if expense > 0 and terms.expense_basis in ("outside", "pro-rata"):
+        steps.append(Step("with expense", paid))
+    return Payment(cover.name, tuple(steps), paid)
+
+
+def _year_payment(
+    book: Book, cover: PlacedCover, events: list[Event], amounts: Mapping[Subject, FloatArray]
+) -> Payment:
+    terms = cover.terms
+    total = _paid_by(cover.name, events)
+    steps = [Step("paid of the events", total)]
+    for before in book.annual_covers_before(cover):
+        total -= float(amounts[Subject("cover", before.name)][0])
+        steps.append(Step(f"less {before.name}", total))
+    stated = stated_terms(terms)
+    for operation in terms.year_order:
+        if operation not in stated:
+            continue
+        if operation == "annual-retention":
+            total = max(total - terms.annual_retention, 0.0)
+        elif operation == "corridor" and terms.corridor is not None:
+            total = _at(terms.corridor.schedule(), total)
+        elif operation == "retained-cap":
+            total += max(_kept_under(book, cover, events) - terms.retained_cap, 0.0)
+        elif operation == "annual-limit":
+            total = min(total, terms.year_limit)
+        elif operation == "share":
+            total *= terms.share
+        steps.append(Step(WORDS[operation], total))
+    return Payment(cover.name, tuple(steps), float(amounts[Subject("cover", cover.name)][0]))
+
+
+def _paid_by(cover: str, events: list[Event]) -> float:
+    return sum(payment.paid for event in events for payment in event.payments if payment.cover == cover)
+
+
+def _kept_under(book: Book, cover: PlacedCover, events: list[Event]) -> float:
+    total = 0.0
+    for event in events:
+        kept = book.event_retained(cover, event.line)
+        total += 0.0 if kept is None else _at(kept, event.size)
+    return total
+
+
+def _sums(book: Book, events: list[Event]) -> dict[str, dict[tuple[str, str], FloatArray]]:
+    """The year's sums by line, as the simulation adds them up for a whole block."""
+    sums: dict[str, dict[tuple[str, str], FloatArray]] = {}
+    for line in book.lines:
+        own = [event for event in events if event.line == line.name]
+        sums[line.name] = {LOSS: np.array([sum(event.cost for event in own)])}
+        for cover in book.covers:
+            if book.covers_line(cover, line.name):
+                sums[line.name]["paid", cover.name] = np.array([_paid_by(cover.name, own)])
+                sums[line.name]["kept", cover.name] = np.array([_kept_under(book, cover, own)])
+    return sums
+
+
+def _at(schedule: Schedule, amount: float) -> float:
+    return float(schedule(np.array([amount]))[0])
