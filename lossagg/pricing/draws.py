@@ -82,16 +82,14 @@ def under_other_laws(lines: Sequence[Line], options: Sequence[Option], levels: S
             result[k, 0] = loss.mean()
             result[k, 2:-1] = [loss.value_at_risk(level) for level in levels]
             result[k, -1] = loss.tail_value_at_risk(WORST_LEVELS[-1])
-        if ceded is not None:
-            if ceded.annual.is_identity:
-                result[k, 1] = grid.moments([ceded.events])[0].mean
-            else:
-                result[k, 1] = TransformedAnnualLoss(years[ceded.events], ceded.annual).mean()
-        with np.errstate(invalid="ignore"):
-            if np.isnan(result[k, 1]):
-                result[k, 1] = whole - result[k, 0]
-            if np.isnan(result[k, 0]):
-                result[k, 0] = whole - result[k, 1]
+        if np.isfinite(result[k, 0]) and np.isfinite(whole):
+            result[k, 1] = whole - result[k, 0]
+        elif ceded is not None and ceded.annual.is_identity:
+            result[k, 1] = grid.moments([ceded.events])[0].mean
+        elif ceded is not None and ceded.events in years:
+            result[k, 1] = TransformedAnnualLoss(years[ceded.events], ceded.annual).mean()
+        if np.isnan(result[k, 0]) and np.isfinite(whole):
+            result[k, 0] = whole - result[k, 1]
     return result
 
 
@@ -100,6 +98,5 @@ def _sums(options: Sequence[Option]) -> Iterable[Events]:
     for option in options:
         if option.retained_plan is not None:
             yield option.retained_plan.events
-        ceded = option.ceded_plan
-        if ceded is not None and not ceded.annual.is_identity:
-            yield ceded.events
+        elif option.ceded_plan is not None and not option.ceded_plan.annual.is_identity:
+            yield option.ceded_plan.events

@@ -198,7 +198,9 @@ def _per_event(option: Option) -> float:
     return sum(line.frequency.mean() * PaymentLaw(line.severity, paid).mean for line, paid in pairs) / count
 
 
-def simulated_figures(exact: Exact, tally: Tally, levels: Sequence[float], whole: float) -> Exact:
+def simulated_figures(
+    exact: Exact, tally: Tally, levels: Sequence[float], whole: float, tail_level: float | None
+) -> Exact:
     """What the exact engine could not say, from the simulated years; the rest stays."""
     kept, paid = tally.kept, tally.paid
     if kept is None or paid is None:
@@ -218,6 +220,8 @@ def simulated_figures(exact: Exact, tally: Tally, levels: Sequence[float], whole
     filled.sd = filled.sd or Figure.measured(kept, "sd")
     filled.ceded = filled.ceded or filled.mean.taken_from(whole)
     filled.ceded_sd = filled.ceded_sd or Figure.measured(paid, "sd")
+    if tail_level is not None:
+        filled.ceded_tail = filled.ceded_tail or Figure.measured(paid, "tail_value_at_risk", tail_level)
     return filled
 
 

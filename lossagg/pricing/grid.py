@@ -59,17 +59,20 @@ class Moments:
         return float(np.sqrt(self.variance))
 
 
-def _in_order(
-    pool: ThreadPoolExecutor, work: Callable[..., R], jobs: Iterable[tuple[Any, ...]], ahead: int
-) -> Iterator[R]:
-    """Results in the order of the jobs, with no more than `ahead` of them waiting to be read."""
+def _in_order(work: Callable[..., R], jobs: Iterable[tuple[Any, ...]], workers: int) -> Iterator[R]:
+    """Results in the order of the jobs, with no more than two per worker waiting to be read."""
+    if workers == 1:
+        for job in jobs:
+            yield work(*job)
+        return
     waiting: deque[Future[R]] = deque()
-    for job in jobs:
-        waiting.append(pool.submit(work, *job))
-        if len(waiting) >= ahead:
+    with ThreadPoolExecutor(workers) as pool:
+        for job in jobs:
+            waiting.append(pool.submit(work, *job))
+            if len(waiting) >= 2 * workers:
+                yield waiting.popleft().result()
+        while waiting:
             yield waiting.popleft().result()
-    while waiting:
-        yield waiting.popleft().result()
 
 
 class Grid:
@@ -119,27 +122,22 @@ class Grid:
             reach = self._reach(schedule, moments[schedule])
             scales.setdefault(int(np.ceil(np.log(reach) / np.log(HALF_OCTAVE))), []).append(schedule)
         finished = 0
-        with ThreadPoolExecutor(self.workers) as pool:
-            for scale, members in sorted(scales.items()):
-                top, left = HALF_OCTAVE**scale, members
-                while left:
-                    room = Scale(
-                        self.lines,
-                        sorted({s for events in left for s in events}, key=_order),
-                        top,
-                        self.points,
-                    )
-                    jobs = ((room, schedule, moments[schedule]) for schedule in left)
-                    short = []
-                    for schedule, year in _in_order(pool, self._year, jobs, 2 * self.workers):
-                        if year.survival[-1] > _SHORT:
-                            short.append(schedule)
-                            continue
-                        finished += 1
-                        yield schedule, year
-                        if done:
-                            done(finished / len(distinct))
-                    top, left = 2.0 * top, short
+        for scale, members in sorted(scales.items()):
+            top, left = HALF_OCTAVE**scale, members
+            while left:
+                own = sorted({own for events in left for own in events}, key=_order)
+                room = Scale(self.lines, own, top, self.points)
+                jobs = ((room, schedule, moments[schedule]) for schedule in left)
+                short = []
+                for schedule, year in _in_order(self._year, jobs, min(self.workers, len(left))):
+                    if year.survival[-1] > _SHORT:
+                        short.append(schedule)
+                        continue
+                    finished += 1
+                    yield schedule, year
+                    if done:
+                        done(finished / len(distinct))
+                top, left = 2.0 * top, short
 
     def _year(self, room: Scale, schedule: Events, moment: Moments) -> tuple[Events, LatticeYear]:
         """One option: masses, transform, generating function, inverse; arrays that fit the cache."""

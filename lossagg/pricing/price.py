@@ -18,7 +18,7 @@ from lossagg.portfolio.assess import silent
 from lossagg.portfolio.assessment import number
 from lossagg.portfolio.cautions import cautions
 from lossagg.portfolio.line import LineModel
-from lossagg.portfolio.pricing_sections import OptionGrid, PricingSection
+from lossagg.portfolio.pricing_sections import OptionGrid, PricingSection, RiskLoad
 from lossagg.pricing.choices import base_of, lines_of, options_of
 from lossagg.pricing.common_years import Tally, simulate_options
 from lossagg.pricing.curves import CappedCost, curves_of
@@ -148,7 +148,7 @@ class _Work:
         positions = [
             Position(
                 row.option.name,
-                row.total().value,
+                row.total(self.basis).value,
                 (
                     *(row.worst(level).plus(row.fixed).value for level in self.compared),
                     row.tail().plus(row.fixed).value,
@@ -197,8 +197,7 @@ class _Work:
             tail_level=tail_level,
             progress=lambda done: self.progress("exact figures", 0.05 + 0.35 * done),
         )
-        needed = load is not None and load.method != "cost-of-capital"
-        keep = [not found.levels or (needed and found.ceded_sd is None) for found in exact]
+        keep = [not found.levels or _load_waits(found, load) for found in exact]
         keep[self.base] = keep[self.base] or any(keep)
         known = [
             None if kept and not found.levels else row_of(option, found, self.basis).fixed
@@ -222,7 +221,7 @@ class _Work:
         checks = [agreement(found, tally, self.levels) for found, tally in zip(exact, tallies, strict=True)]
         rows = []
         for option, found, tally, check in zip(self.options, exact, tallies, checks, strict=True):
-            filled = simulated_figures(found, tally, self.levels, self.gross.mean)
+            filled = simulated_figures(found, tally, self.levels, self.gross.mean, tail_level)
             rows.append(row_of(option, filled if check["agrees"] else _withheld(self.levels), self.basis))
         self._beat_by_years(rows, tallies)
         return rows, checks, tallies
@@ -315,6 +314,13 @@ class _Work:
             expense=self.basis.basic_limit_expense,
             largest=largest or None,
         )
+
+
+def _load_waits(found: Exact, load: RiskLoad | None) -> bool:
+    """Whether the risk load rests on a figure of the ceded year that only the simulation can give."""
+    if load is None or load.factor == 0:
+        return False
+    return (found.ceded_tail if load.method == "cost-of-capital" else found.ceded_sd) is None
 
 
 def _withheld(levels: Sequence[float]) -> Exact:

@@ -11,7 +11,7 @@ import numpy as np
 from lossagg.portfolio.assessment import number
 from lossagg.portfolio.pricing_sections import PricingSection
 from lossagg.pricing.evaluate import Exact, increased_limit_factor, retained_events
-from lossagg.pricing.figure import Figure
+from lossagg.pricing.figure import FORMULA, Figure
 from lossagg.pricing.money import Costs, Premium, added, costs_of, premium_of, risk_load_of
 from lossagg.pricing.option import Option
 
@@ -28,6 +28,7 @@ class Row:
         option: its terms.
         exact: figures of its losses.
         premium, modelled: the premium charged, and the modelled one where it was quoted.
+        premium_range: the premium at the ends of the ranges of the figures it rests on.
         costs: yearly costs beside it.
         events: expected number of events of which something is retained.
     """
@@ -36,6 +37,7 @@ class Row:
     exact: Exact
     premium: Premium
     modelled: Premium
+    premium_range: tuple[float | None, float | None]
     costs: Costs
     events: float
 
@@ -43,6 +45,17 @@ class Row:
     def fixed(self) -> float | None:
         """What is paid whatever happens: premium, tax, costs."""
         return added(self.premium.value, self.costs.total)
+
+    def paid(self, basis: PricingSection) -> Figure:
+        """What is paid whatever happens, with the range that the premium and its tax bring."""
+        if self.fixed is None or self.premium.value is None:
+            return Figure(None, None, None, "", self.premium.reason)
+        taxed = 1.0 + basis.premium_tax
+        low, high = (
+            None if end is None else self.fixed + taxed * (end - self.premium.value)
+            for end in self.premium_range
+        )
+        return Figure(self.fixed, low, high, FORMULA)
 
     def tail(self) -> Figure:
         """Tail value at risk of the retained year at the farthest level of the table."""
@@ -52,9 +65,9 @@ class Row:
         """Worst year retained at a level."""
         return self.exact.levels[level][0]
 
-    def total(self) -> Figure:
+    def total(self, basis: PricingSection) -> Figure:
         """Expected total cost of risk."""
-        return (self.exact.mean or MISSING).plus(self.fixed, self.premium.reason)
+        return (self.exact.mean or MISSING).joined(self.paid(basis))
 
     def capital_cost(self, basis: PricingSection) -> Figure:
         """Cost of capital on tail value at risk less the mean retained."""
@@ -67,10 +80,10 @@ class Row:
         """Expected total cost of risk and cost of capital: (1 - rate) mean + rate tail + what is fixed."""
         mean = self.exact.mean or MISSING
         if basis.capital is None:
-            return self.total()
+            return self.total(basis)
         rate, tail = basis.capital.rate, self.exact.levels[basis.capital.level][1]
         kept = mean.scaled(1.0 - rate).joined(tail.scaled(rate))
-        return kept.plus(self.fixed, self.premium.reason)
+        return kept.joined(self.paid(basis))
 
 
 def levels_needed(basis: PricingSection) -> tuple[float, ...]:
@@ -98,7 +111,20 @@ def row_of(option: Option, exact: Exact, basis: PricingSection) -> Row:
     events = retained_events(option)
     secured = None if basis.collateral is None else exact.levels[basis.collateral.level][0].value
     costs = costs_of(basis, premium.value, _value(exact.mean), events, secured, bought=bought)
-    return Row(option, exact, premium, modelled, costs, events)
+    return Row(option, exact, premium, modelled, _ends(option, exact, basis), costs, events)
+
+
+def _ends(option: Option, exact: Exact, basis: PricingSection) -> tuple[float | None, float | None]:
+    """The premium at the lower and at the upper ends of ceded loss, its spread and its tail."""
+    ends = []
+    for end in ("low", "high"):
+        ceded, spread, tail = (
+            None if found is None else getattr(found, end)
+            for found in (exact.ceded, exact.ceded_sd, exact.ceded_tail)
+        )
+        load = risk_load_of(basis, ceded, spread, tail)
+        ends.append(premium_of(basis, ceded, load, option.quoted, bought=option.terms is not None).value)
+    return ends[0], ends[1]
 
 
 def _value(figure: Figure | None) -> float | None:
@@ -150,11 +176,11 @@ def row_data(
             "premium_tax": row.costs.premium_tax,
         },
         "total": {
-            "expected": row.total().to_dict(),
+            "expected": row.total(basis).to_dict(),
             "capital": row.capital_cost(basis).to_dict(),
             "with_capital": row.total_with_capital(basis).to_dict(),
             "levels": [
-                {"level": level, "total": row.worst(level).plus(row.fixed, row.premium.reason).to_dict()}
+                {"level": level, "total": row.worst(level).joined(row.paid(basis)).to_dict()}
                 for level in levels
             ],
         },
@@ -183,6 +209,8 @@ def _premium(row: Row) -> dict[str, Any]:
     return {
         "value": premium.value,
         "source": premium.source,
+        "low": row.premium_range[0],
+        "high": row.premium_range[1],
         "reason": premium.reason,
         "modelled": modelled.value,
         "parts": {

@@ -12,7 +12,8 @@ from lossagg.report.summary import Summary
 from lossagg.report.tables import options as tables
 
 _RETAINED = (0, 1, 5, 6, 7, -2, -1)
-_COST = (0, 2, 6, 8, 9, 11, 12, 13)
+_COST = (0, 2, 6, 8)
+_YEARS = (0, 1, 3, 4, 5)
 
 
 def summarise_options(options: Entry, out: Path | None) -> Summary:
@@ -24,6 +25,7 @@ def summarise_options(options: Entry, out: Path | None) -> Summary:
     """
     portfolio, shown = options["portfolio"], tables.shown_options(options)
     kept, cost = tables.retained(options, shown), tables.total(options, shown)
+    years = tables.bad_years(options, shown)
     return Summary(
         title=clean(
             f"{portfolio['name']}, valuation date {portfolio['valuation_date']}, amounts in "
@@ -38,7 +40,7 @@ def summarise_options(options: Entry, out: Path | None) -> Summary:
                 rows=tuple(tuple(row[k] for k in places) for row in table.rows),
                 notes=(),
             )
-            for table, places in ((kept, _RETAINED), (cost, _COST))
+            for table, places in ((kept, _RETAINED), (cost, _COST), (years, _YEARS))
         ),
         remarks=tuple(clean(text) for text in _remarks(options, len(shown))),
         files=() if out is None else tuple(clean(out / name) for name in OPTION_FILES),

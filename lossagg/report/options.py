@@ -78,6 +78,7 @@ def option_parts(options: Entry) -> dict[str, Any]:
             tables.retained(options, shown),
             tables.ceded(options, shown),
             tables.total(options, shown),
+            tables.bad_years(options, shown),
         ),
         "ranges": tables.ranges({**options, "options": shown}),
         "terms": tables.terms(options, shown),
@@ -112,9 +113,14 @@ def _joined(options: Entry) -> Table:
         tables.retained(options),
         tables.ceded(options),
         tables.total(options),
+        tables.bad_years(options),
     ]
-    columns = parts[0].columns + parts[1].columns[1:] + parts[2].columns[2:]
-    rows = tuple(a + b[1:] + c[2:] for a, b, c in zip(*(part.rows for part in parts), strict=True))
+    skipped = (0, 1, 3, 1)  # what an earlier part shows already: the option, what it keeps, its premium
+    columns = tuple(c for part, first in zip(parts, skipped, strict=True) for c in part.columns[first:])
+    rows = tuple(
+        tuple(cell for row, first in zip(own, skipped, strict=True) for cell in row[first:])
+        for own in zip(*(part.rows for part in parts), strict=True)
+    )
     return Table("Options", "Options", columns, rows)
 
 

@@ -117,7 +117,7 @@ def curves_figure(options: Entry) -> str | None:
             amounts, [row["factor"] for row in rows], "-", color=MAIN, linewidth=1.7, label="loss elimination"
         )
         exposure = options["curves"]["exposure"]
-        if exposure:
+        if exposure and options["curves"]["largest_loss"] != options["subject"]["event_cap"]:
             axis.plot(
                 [row["amount"] for row in exposure],
                 [row["factor"] for row in exposure],

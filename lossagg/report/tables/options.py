@@ -115,8 +115,8 @@ def ceded(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
                 figure(entry["ceded"]["expected"]),
                 plain(entry["loss_elimination_ratio"]),
                 figure(entry["aggregate_charge"]) if entry["aggregate_charge"] else Absent("no cap"),
-                plain(entry["increased_limit_factor"], "no basic limit"),
-                plain(premium["value"]),
+                plain(entry["increased_limit_factor"], "no limit"),
+                figure(premium),
                 premium["source"],
                 BASE if entry["base"] else plain(credit["amount"]),
                 BASE if entry["base"] else plain(credit["part"]),
@@ -130,7 +130,7 @@ def ceded(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
         Column("Loss elimination ratio", "probability"),
         Column("Charge for the cap", "money", ranged=True),
         Column("Increased limit factor", "number"),
-        Column("Premium before tax", "money"),
+        Column("Premium before tax", "money", ranged=True),
         Column("Premium is"),
         Column("Premium credit", "money"),
         Column("Credit, part of base premium", "probability"),
@@ -146,59 +146,87 @@ def ceded(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
 
 
 def total(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
-    """Total cost of risk of every option, in the mean year and in bad ones."""
+    """Expected total cost of risk of every option, and what it is made of."""
     chosen = options["options"] if entries is None else entries
     currency = options["portfolio"]["currency"]
     rows: list[tuple[Cell, ...]] = []
     for entry in chosen:
         own, costs = entry["total"], entry["costs"]
-        levels = {row["level"]: row["total"] for row in own["levels"]}
-        beats = entry["beats_base"]
         rows.append(
             (
                 entry["name"],
                 figure(entry["retained"]["expected"]),
-                plain(entry["premium"]["value"]),
+                figure(entry["premium"]),
                 plain(costs["premium_tax"]),
                 plain(costs["collateral"]),
                 plain(costs["claims_handling"]),
                 figure(own["expected"]),
                 figure(own["capital"]),
                 figure(own["with_capital"]),
-                *(figure(levels[level]) for level in PERIODS),
-                BASE
-                if entry["base"]
-                else Absent("not computed")
-                if beats is None
-                else Estimated(beats["value"], beats["standard_error"]),
-                ", ".join(entry["dominated_by"][:3]) + (" ..." if len(entry["dominated_by"]) > 3 else "")
-                if entry["dominated_by"]
-                else NONE,
             )
         )
     columns = (
         Column("Option"),
         Column("Expected retained", "money", ranged=True),
-        Column("Premium", "money"),
+        Column("Premium", "money", ranged=True),
         Column("Premium tax", "money"),
         Column("Collateral", "money"),
         Column("Claims handling", "money"),
         Column("Expected total cost", "money", ranged=True),
         Column("Cost of capital", "money", ranged=True),
         Column("Total with capital", "money", ranged=True),
+    )
+    notes = (
+        "Expected total cost: expected retained, premium, tax, collateral and claims handling.",
+        *_left_out(options, chosen),
+        *reasons([cell for row in rows for cell in row]),
+    )
+    return Table("Option cost", f"What it costs on average, {currency} a year", columns, tuple(rows), notes)
+
+
+def bad_years(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
+    """Total cost of every option in bad years, and what the options are to each other."""
+    chosen = options["options"] if entries is None else entries
+    currency = options["portfolio"]["currency"]
+    rows: list[tuple[Cell, ...]] = []
+    for entry in chosen:
+        levels = {row["level"]: row["total"] for row in entry["total"]["levels"]}
+        rows.append(
+            (
+                entry["name"],
+                *(figure(levels[level]) for level in PERIODS),
+                _beats(entry),
+                _names(entry["dominated_by"]),
+            )
+        )
+    columns = (
+        Column("Option"),
         *(Column(f"Total in a {period} year", "money", ranged=True) for period in PERIODS.values()),
-        Column("Cheaper than the base in", "probability"),
+        Column("Years in which it costs less than the base", "probability"),
         Column("Dominated by"),
     )
     held = f" and in each of {options['draws']} parameter draws" if options["draws"] else ""
     notes = (
         "Total cost in a bad year: the worst year retained at that level, and everything that is paid "
-        "whatever happens.",
+        "whatever happens. All options meet the same simulated years.",
         "Dominated: another option costs no more on average, in every bad year of the table and in the mean "
         f"of the worst hundredth, at the estimates{held}.",
         *_left_out(options, chosen),
     )
-    return Table("Option cost", f"What it costs in all, {currency} a year", columns, tuple(rows), notes)
+    return Table("Option years", f"What it costs in a bad year, {currency}", columns, tuple(rows), notes)
+
+
+def _beats(entry: Entry) -> Cell:
+    if entry["base"]:
+        return BASE
+    beats = entry["beats_base"]
+    return Absent("not computed") if beats is None else Estimated(beats["value"], beats["standard_error"])
+
+
+def _names(names: Sequence[str]) -> Cell:
+    if not names:
+        return NONE
+    return ", ".join(names[:3]) + (f" and {len(names) - 3} more" if len(names) > 3 else "")
 
 
 def parts(options: Entry) -> Table:
@@ -426,6 +454,7 @@ def every_option_table(options: Entry) -> tuple[Table, ...]:
         retained(options),
         ceded(options),
         total(options),
+        bad_years(options),
         terms(options),
         parts(options),
         ranges(options),
