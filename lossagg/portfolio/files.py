@@ -127,7 +127,10 @@ def _inside(folder: Path, name: str, key: str) -> Path:
     return path
 
 
-_READING = ("columns", "sheet", "delimiter", "encoding", "decimal", "thousands", "date_format")
+_READING = (
+    *("columns", "sheet", "delimiter", "encoding", "decimal", "thousands", "grouping", "date_format"),
+    "time_zone",
+)
 
 
 def _read_losses(folder: Path, name: str, line: LineSection, file: PortfolioFile) -> LossTable:
@@ -147,7 +150,9 @@ def _read_losses(folder: Path, name: str, line: LineSection, file: PortfolioFile
         delimiter=line.delimiter,
         decimal=line.decimal,
         thousands=line.thousands,
+        grouping=line.grouping,
         date_format=line.date_format,
+        time_zone=line.time_zone,
     )
 
 
@@ -198,6 +203,9 @@ def _check(table: LossTable, sharers: list[LineSection], file: PortfolioFile) ->
         if len(names) > 1
         else sharers[0].first_year,
         tolerance=section.tolerance,
+        reporting_threshold={line.name: line.lowest_recorded for line in sharers}
+        if len(names) > 1
+        else sharers[0].lowest_recorded,
     )
     if len(names) == 1:
         return {names[0]: checked}

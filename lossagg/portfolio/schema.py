@@ -10,7 +10,7 @@ import difflib
 import tomllib
 from datetime import date, timedelta
 from pathlib import Path
-from typing import Annotated, Any, get_args
+from typing import Annotated, Any, Literal, get_args
 
 from pydantic import BaseModel, ConfigDict, Field, ValidationError, field_validator, model_validator
 from pydantic.fields import FieldInfo
@@ -124,7 +124,9 @@ class FileOptions(Section):
     encoding: str | None = None
     decimal: Annotated[str, Field(pattern="^[.,]$")] = "."
     thousands: Annotated[str, Field(min_length=1, max_length=1)] | None = None
+    grouping: Literal["three", "indian"] = "three"
     date_format: str | None = None
+    time_zone: str | None = None
 
 
 class LineSection(FileOptions, PreparingKeys, ControlKeys):

@@ -30,6 +30,7 @@ _CHUNK = 1_000_000
 _NUMBER_BYTES = np.isin(np.arange(256), list(b"0123456789.-"))
 _PLAIN = r"^[+-]?(\d+(\.\d*)?|\.\d+)([eE][+-]?\d{1,4})?$"
 _INFINITE = r"^[+-]?inf(inity)?$"
+GROUPINGS = ("three", "indian")
 _DECIMALS = (".", ",")
 _THOUSANDS = (",", ".", " ", "'", "\u2019", "\u00a0", "\u202f")
 
@@ -40,14 +41,16 @@ class NumberStyle:
 
     Args:
         decimal: the decimal mark, "." or ",".
-        thousands: the mark between groups of three digits, if the file has any.
+        thousands: the mark between groups of digits, if the file has any.
+        grouping: "three" for 1,234,567; "indian" for 12,34,567 (groups of two above the last three).
 
     Raises:
-        InputError: another mark, or the same mark for both.
+        InputError: another mark, the same mark for both, or another grouping.
     """
 
     decimal: str = "."
     thousands: str | None = None
+    grouping: str = "three"
 
     def __post_init__(self) -> None:
         if self.decimal not in _DECIMALS:
@@ -65,6 +68,13 @@ class NumberStyle:
                 remedy='Declare it as written in the file, for example thousands = ",".',
             )
 
+        if self.grouping not in GROUPINGS or (self.grouping == "indian" and self.thousands is None):
+            raise InputError(
+                "the grouping of digits is not known, or there is no mark between groups",
+                value=self.grouping,
+                remedy='Declare grouping = "indian" together with thousands = ",", or leave it out.',
+            )
+
     @property
     def plain(self) -> bool:
         """True when numbers are written with a decimal point and nothing else."""
@@ -76,9 +86,16 @@ class NumberStyle:
         mark = re.escape(self.decimal)
         if self.thousands is None:
             return rf"^[+-]?(\d+({mark}\d*)?|{mark}\d+)([eE][+-]?\d{{1,4}})?$"
-        # Groups must be of three and all present or all absent: "1,23" and "1234,567" are slips.
-        group = re.escape(self.thousands)
-        return rf"^[+-]?(\d{{1,3}}({group}\d{{3}})+|\d+)({mark}\d*)?$"
+        # Groups must be complete and all present or all absent: "1,23" and "1234,567" are slips.
+        return rf"^[+-]?({self.grouped}|\d+)({mark}\d*)?$"
+
+    @property
+    def grouped(self) -> str:
+        """The regular expression of the whole part of a number with at least one mark in it."""
+        group = re.escape(self.thousands or "")
+        if self.grouping == "indian":
+            return rf"\d{{1,2}}({group}\d{{2}})*{group}\d{{3}}"
+        return rf"\d{{1,3}}({group}\d{{3}})+"
 
 
 @dataclass(frozen=True)
@@ -137,6 +154,19 @@ def parse_numbers(column: Column, style: NumberStyle) -> Numbers:
         text = plain
         infinite = np.isinf(values)
     return Numbers(values, text, _lossy(text, values), missing, infinite, wrong)
+
+
+def ungrouped(column: Column, style: NumberStyle) -> BoolArray:
+    """True for numbers of four digits and more without marks in a column where others have them."""
+    import pyarrow.compute as pc
+
+    none = np.zeros(len(column.cells), dtype=np.bool_)
+    if style.thousands is None or not column.is_text:
+        return none
+    text = pc.utf8_trim_whitespace(column.cells)
+    grouped = as_mask(pc.match_substring_regex(text, pattern=rf"^[+-]?{style.grouped}"))
+    bare = as_mask(pc.match_substring_regex(text, pattern=r"^[+-]?\d{4,}")) & ~column.native
+    return bare if grouped.any() else none
 
 
 def _native_numbers(column: Column) -> Numbers:

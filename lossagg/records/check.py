@@ -127,6 +127,7 @@ def check_losses(
     lines: Sequence[str] | None = None,
     first_year: int | Mapping[str, int | None] | None = None,
     tolerance: float = 0.05,
+    reporting_threshold: float | Mapping[str, float | None] | None = None,
 ) -> CheckedLosses:
     """Check every row of the records and set aside what cannot be used, counted and valued.
 
@@ -139,7 +140,10 @@ def check_losses(
         first_year: first year of the observation window, or {line: first year} where lines that share
             the file differ; earlier losses are set aside. None: undeclared.
         tolerance: largest share of rows, and of money, that may be set aside for faults. Claims at
-            nil, totals and rows before the window are excluded by definition and do not count.
+            nil, totals and rows before the window are excluded by definition and do not count. One row may
+            be set aside also in a file so small that one row is more, unless it is most of the money.
+        reporting_threshold: threshold of the rows that carry none, or {line: threshold}; None: not declared,
+            which stops where some rows carry a threshold and others none.
 
     Returns:
         The checked records: rows used, findings, reconciliation.
@@ -149,6 +153,7 @@ def check_losses(
         InputError: several lines but no column that tells them apart; a bad argument.
     """
     terms = _terms(valuation_date, currency, lines, first_year, tolerance)
+    terms = replace(terms, thresholds=_thresholds(reporting_threshold, terms.lines))
     lines_at_fault = line_faults(table, terms.lines) if terms.lines is not None else []
     pooled = pooled_lines(table) if terms.lines is None else []
     table = _with_lines(table, terms)
@@ -258,6 +263,15 @@ def _terms(
         first_years=_first_years(first_year, names, valuation_date),
         tolerance=require_probability(tolerance, "tolerance"),
     )
+
+
+def _thresholds(
+    declared: float | Mapping[str, float | None] | None, lines: tuple[str, ...] | None
+) -> dict[str, float]:
+    """The declared reporting threshold of each line that has one."""
+    if not isinstance(declared, Mapping):
+        declared = dict.fromkeys(lines or ("",), declared)
+    return {line: threshold for line, threshold in declared.items() if threshold is not None}
 
 
 def _first_years(

@@ -7,8 +7,9 @@ from pathlib import Path
 from typing import Any
 
 from lossagg.errors import InputError, place
-from lossagg.records.raw import Choose, RawTable, TableBuilder, cell_text
+from lossagg.records.raw import MOST_ROWS, Choose, RawTable, TableBuilder, cell_text
 
+MOST_BYTES = 16 * 1024**3
 _BATCH = 100_000
 
 
@@ -39,6 +40,7 @@ def read_parquet(path: Path, choose: Choose) -> RawTable:
         ) from error
     with source:
         schema = source.schema_arrow
+        _check_size(source.metadata, path.name)
         headings = tuple(str(name) for name in schema.names)
         positions = choose(headings, None)
         _check_types(schema, positions, path.name)
@@ -79,6 +81,18 @@ def _plain(column: Any) -> Any:
     if pa.types.is_timestamp(kind) and kind.tz is None:
         return pc.cast(column, pa.string()).fill_null("")
     return pa.array(map(cell_text, column.to_pylist()), pa.string())
+
+
+def _check_size(metadata: Any, file: str) -> None:
+    """Stop at what the foot of the file says of its size, before anything is unpacked."""
+    groups = (metadata.row_group(at) for at in range(metadata.num_row_groups))
+    unpacked = sum(group.total_byte_size for group in groups)
+    if metadata.num_rows > MOST_ROWS or unpacked > MOST_BYTES:
+        raise InputError(
+            f"the Parquet file has {metadata.num_rows} rows and unpacks to {unpacked} bytes",
+            where=place(file=file),
+            remedy=f"Split it: at most {MOST_ROWS} rows and {MOST_BYTES} bytes are read.",
+        )
 
 
 def _check_types(schema: Any, positions: Mapping[str, int], file: str) -> None:

@@ -6,9 +6,11 @@ A date-time keeps its day; one that carries a zone does not say on which day it 
 
 from __future__ import annotations
 
+import datetime as dt
 import re
 from dataclasses import dataclass, fields
 from typing import Any
+from zoneinfo import ZoneInfo, ZoneInfoNotFoundError
 
 import numpy as np
 import numpy.typing as npt
@@ -40,7 +42,8 @@ class Dates:
         values: days; NaT where there is no date.
         missing: True where the cell is empty or carries a marker for "not known".
         impossible: True where year, month and day are given but there is no such day.
-        zoned: True where the cell is a date-time with a zone.
+        zoned: True where the cell is a date-time with a zone, and none is declared.
+        moved: True where the day is that of the declared zone.
         timed: True where the cell had a time of day, which is let go.
         wrong: True where the cell is something else, which must stop the run.
     """
@@ -49,34 +52,38 @@ class Dates:
     missing: BoolArray
     impossible: BoolArray
     zoned: BoolArray
+    moved: BoolArray
     timed: BoolArray
     wrong: BoolArray
 
 
-def parse_dates(column: Column, date_format: str | None) -> Dates:
+def parse_dates(column: Column, date_format: str | None, time_zone: str | None = None) -> Dates:
     """Read a column of dates; cells that held dates already need no format.
 
     Args:
         column: the cells.
         date_format: the format of the file, made of %Y, %m (or %b, English abbreviation) and %d;
             None for ISO dates.
+        time_zone: zone in which the day of a date-time with a zone is wanted, by its name in the IANA
+            time zone database; None: such cells have no day here.
 
     Returns:
         The dates, and the cells that are missing, impossible, zoned or wrong.
 
     Raises:
-        InputError: a format that does not give year, month and day once each.
+        InputError: a format that does not give year, month and day once each; a zone that is not known.
     """
+    zone = None if time_zone is None else _zone(time_zone)
     pattern = _pattern(date_format) if date_format is not None else None
     if not column.is_text and _is_days(column.cells):
         return _native_days(column.cells)
     # Files have few different days and many rows: each different cell is read once.
     cells = WordArray.of(column.as_text())
     native = column.native if column.is_text else ~np.zeros(len(cells), dtype=np.bool_)
-    as_iso = _parse_texts(cells.names, None)
+    as_iso = _parse_texts(cells.names, None, zone)
     if pattern is None or native.all():
         return _spread(as_iso, cells.codes)
-    declared = _spread(_parse_texts(cells.names, pattern), cells.codes)
+    declared = _spread(_parse_texts(cells.names, pattern, zone), cells.codes)
     if not native.any():
         return declared
     iso = _spread(as_iso, cells.codes)
@@ -93,7 +100,7 @@ def _is_days(cells: Any) -> bool:
 def _native_days(cells: Any) -> Dates:
     none = np.zeros(len(cells), dtype=np.bool_)
     days = cells.to_numpy(zero_copy_only=False).astype("datetime64[D]")
-    return Dates(days, np.isnat(days), none, none, none, none)
+    return Dates(days, np.isnat(days), none, none, none, none, none)
 
 
 def _spread(dates: Dates, codes: npt.NDArray[np.int32]) -> Dates:
@@ -101,7 +108,7 @@ def _spread(dates: Dates, codes: npt.NDArray[np.int32]) -> Dates:
     return Dates(**{field.name: getattr(dates, field.name)[codes] for field in fields(Dates)})
 
 
-def _parse_texts(texts: Any, pattern: str | None) -> Dates:
+def _parse_texts(texts: Any, pattern: str | None, zone: ZoneInfo | None) -> Dates:
     import pyarrow.compute as pc
 
     text = pc.utf8_trim_whitespace(texts)
@@ -113,14 +120,41 @@ def _parse_texts(texts: Any, pattern: str | None) -> Dates:
     values, possible = _days(year, month, day)
     good = matched & possible & ~zoned
     values[~good] = np.datetime64("NaT")
+    moved = zoned & possible if zone is not None and pattern is None else np.zeros(len(values), np.bool_)
+    for at in np.flatnonzero(moved).tolist():
+        moment = _moment(text[at].as_py())
+        moved[at] = moment is not None
+        if moment is not None:
+            values[at] = np.datetime64(moment.astimezone(zone).date())
     return Dates(
         values=values,
         missing=missing,
         impossible=matched & ~possible,
-        zoned=zoned & possible,
+        zoned=zoned & possible & ~moved,
+        moved=moved,
         timed=good & as_mask(pc.match_substring_regex(parts["time"], pattern="[1-9]")),
         wrong=~(matched | missing),
     )
+
+
+def _zone(name: str) -> ZoneInfo:
+    try:
+        return ZoneInfo(name)
+    except (ZoneInfoNotFoundError, ValueError) as error:
+        raise InputError(
+            "the time zone is not known",
+            value=name,
+            remedy='Give its name in the IANA time zone database, for example "Europe/Berlin" or "UTC".',
+        ) from error
+
+
+def _moment(text: str) -> dt.datetime | None:
+    """A date-time with a zone; None where its hours or minutes do not exist."""
+    try:
+        moment = dt.datetime.fromisoformat(text.replace(" +", "+").replace(" -", "-").replace(" Z", "Z"))
+    except ValueError:
+        return None
+    return moment if moment.tzinfo is not None else None
 
 
 def _pattern(date_format: str) -> str:

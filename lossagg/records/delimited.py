@@ -18,7 +18,7 @@ from typing import TYPE_CHECKING
 from lossagg.errors import InputError, place
 from lossagg.records.findings import counted
 from lossagg.records.plain_text import parse_plain
-from lossagg.records.raw import Choose, Layout, RawTable, TableBuilder
+from lossagg.records.raw import MOST_ROWS, Choose, Layout, RawTable, TableBuilder
 
 if TYPE_CHECKING:
     from _csv import Reader
@@ -69,6 +69,14 @@ def read_delimited(data: bytes, file: str, layout: Layout, choose: Choose) -> Ra
     headings = _headings(_reader(start, delimiter), start, delimiter, file)
     builder = TableBuilder(file, None, headings, choose(headings, None))
     _note_layout(builder, coding, delimiter)
+    if not body.endswith((b"\n", b"\r")):
+        builder.note(
+            "no-final-newline",
+            "the last line has no end: the file may be cut off in it",
+            "Compare the last row with its source, or state control totals.",
+            warn=True,
+        )
+    _check_rows(body, file)
     batches = parse_plain(body, delimiter, len(headings))
     if batches is None:
         _fill_strictly(builder, _text(body, file), delimiter)
@@ -76,6 +84,16 @@ def read_delimited(data: bytes, file: str, layout: Layout, choose: Choose) -> Ra
         for batch in batches:
             builder.add(batch.columns)
     return builder.finish()
+
+
+def _check_rows(body: bytes, file: str) -> None:
+    lines = max(body.count(b"\n"), body.count(b"\r"))
+    if lines > MOST_ROWS:
+        raise InputError(
+            f"the file has {lines} lines",
+            where=place(file=file),
+            remedy=f"Split it or sum small claims: at most {MOST_ROWS} rows are read.",
+        )
 
 
 def _note_layout(builder: TableBuilder, coding: _Coding, delimiter: str) -> None:
@@ -285,7 +303,8 @@ def _sniff(text: str, file: str) -> str:
         if names
         else "the first row has one column only",
         where=place(file=file, row=1),
-        remedy=f"Declare the delimiter; lossagg looks for {', '.join(DELIMITERS.values())}.",
+        remedy=f"Declare the delimiter (lossagg looks for {', '.join(DELIMITERS.values())}), or remove notes "
+        "above the headings.",
     )
 
 

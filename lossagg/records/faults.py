@@ -17,6 +17,7 @@ from lossagg.records.raw import cell_text
 
 LISTED = 20
 _SHOWN = 40
+_CURRENCY_CODE = 3
 _MONTHS = "january|february|march|april|june|july|august|sept|september|october|november|december"
 _WORDS = re.compile(rf"\b(?!(?:{_MONTHS})\b)[^\W\d_]{{4,}}", re.IGNORECASE)
 _INFINITE = re.compile(r"[+-]?inf(inity)?$", re.IGNORECASE)
@@ -35,6 +36,7 @@ class Fault:
         remedy: what to do about it.
         tolerated: True for exclusions by definition (claims at nil, rows of totals, years outside the
             declared window), which say nothing about the quality of the file.
+        shown: True where the cells may be shown whatever they look like.
     """
 
     code: str
@@ -44,6 +46,7 @@ class Fault:
     message: str
     remedy: str
     tolerated: bool = False
+    shown: bool = False
 
 
 @dataclass(frozen=True)
@@ -105,13 +108,16 @@ def show(text: str) -> str:
     return clean
 
 
+def _is_harmless(fault: Fault, cell: str) -> bool:
+    """Whether a cell that may look like prose can be shown: meant to be, a currency, a single letter."""
+    return fault.shown or len(cell) <= (_CURRENCY_CODE if fault.column == "currency" else 1)
+
+
 def _one_row(fault: Fault, rows: Rows, index: int) -> Finding:
     value = None
     if fault.column is not None and fault.column in rows.cells:
         cell = cell_text(rows.cells[fault.column][index].as_py())
-        value = cell.strip()[:_SHOWN] if fault.column in ("event", "line", "currency") else show(cell)
-    if fault.column == "status":
-        value = None
+        value = cell.strip()[:_SHOWN] if _is_harmless(fault, cell.strip()) else show(cell)
     return Finding(
         fault.code,
         fault.action,

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+
 import numpy as np
 
 from lossagg.arrays import BoolArray
@@ -86,4 +88,26 @@ def _parts_differ(table: LossTable, live: BoolArray) -> Fault:
         live & differ,
         f"paid and outstanding do not add to the amount within {CENT}",
         "Correct one of the three.",
+    )
+
+
+def missing_thresholds(table: LossTable, declared: Mapping[str, float], live: BoolArray) -> Fault:
+    """Losses without a threshold in a file where others have one, and none is declared for their line.
+
+    Args:
+        table: the records, lines named as the portfolio names them.
+        declared: {line, "" for all rows: reporting threshold}.
+        live: True for rows that carry a record; shape (rows,).
+    """
+    mask = np.zeros(len(table), dtype=np.bool_)
+    own = table.number("threshold")
+    if "threshold" in table.numbers and "" not in declared and np.isfinite(own[live]).any():
+        mask = live & np.isnan(own) & (table.amount > 0) & ~table.word("line").is_in(declared)
+    return Fault(
+        "missing-threshold",
+        "stop",
+        "threshold",
+        mask,
+        "the reporting threshold is missing where other records have one",
+        "Fill it, 0 where all losses were recorded, or declare the reporting threshold of the line.",
     )

@@ -20,6 +20,7 @@ from lossagg.records.marks import as_marks, mark_column
 
 Choose = Callable[[Sequence[str], "str | None"], Mapping[str, int]]
 FIRST_ROW = 2
+MOST_ROWS = 50_000_000
 
 
 @dataclass(frozen=True, kw_only=True)

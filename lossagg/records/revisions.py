@@ -30,7 +30,7 @@ def valuation_faults(table: LossTable, valuation_date: np.datetime64, live: Bool
         live: True for rows that carry a record; shape (rows,).
     """
     if "valuation" not in table.dates:
-        return []
+        return _revised_claims(table, live)
     if "claim" not in table.words:
         return [
             Fault(
@@ -92,6 +92,30 @@ def valuation_faults(table: LossTable, valuation_date: np.datetime64, live: Bool
             "None needed.",
             tolerated=True,
         ),
+    ]
+
+
+def _revised_claims(table: LossTable, live: BoolArray) -> list[Fault]:
+    """Claims that stand in several different rows, when nothing says which of them is the latest."""
+    if "claim" not in table.words:
+        return []
+    rows = np.flatnonzero(live & (table.words["claim"] != ""))
+    claim, mark = claim_codes(table, rows), table.fingerprint[rows]
+    order = np.lexsort((mark, claim))
+    claim, mark, rows = claim[order], mark[order], rows[order]
+    differ = (claim[1:] == claim[:-1]) & (mark[1:] != mark[:-1])
+    mask = np.zeros(len(table), dtype=np.bool_)
+    mask[rows[np.isin(claim, claim[1:][differ])]] = True
+    return [
+        Fault(
+            "revised-claim",
+            "stop",
+            "claim",
+            mask,
+            "the claim stands in several rows that differ, and no valuation date says which is the latest",
+            "Map the column with the valuation date of each row, or keep the latest row of each claim; "
+            "payments of one claim are summed if its column is mapped as the event.",
+        )
     ]
 
 

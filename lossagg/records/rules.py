@@ -8,14 +8,15 @@ from __future__ import annotations
 
 import datetime as dt
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 
 from lossagg.arrays import BoolArray
+from lossagg.records.date_rules import order_faults
 from lossagg.records.events import group_events
 from lossagg.records.faults import Fault
-from lossagg.records.money_rules import money_faults
+from lossagg.records.money_rules import missing_thresholds, money_faults
 from lossagg.records.revisions import valuation_faults
 from lossagg.records.table import LossTable
 from lossagg.records.word_rules import repeated_faults, status_faults, word_faults
@@ -35,6 +36,8 @@ class CheckTerms:
         first_years: {line: first year of its observation window}, where declared; the key is "" when
             all rows are of one line.
         tolerance: largest share of rows, and of money, that may be set aside for faults.
+        thresholds: {line: reporting threshold of the rows that carry none}, where declared; keys as in
+            `first_years`.
     """
 
     valuation_date: dt.date
@@ -42,6 +45,7 @@ class CheckTerms:
     lines: tuple[str, ...] | None
     first_years: Mapping[str, int]
     tolerance: float
+    thresholds: Mapping[str, float] = field(default_factory=dict)
 
     def first_year_of(self, line: str | None) -> int | None:
         """First year of the observation window of a line, None when it is not declared."""
@@ -65,6 +69,7 @@ def row_faults(table: LossTable, terms: CheckTerms) -> list[Fault]:
         *money_faults(table, live),
         *status_faults(table, live),
         *repeated_faults(table, live),
+        missing_thresholds(table, terms.thresholds, live),
         *valuation_faults(table, np.datetime64(terms.valuation_date), live),
     ]
     return [fault for fault in faults if fault.mask.any()]
@@ -170,24 +175,4 @@ def _dates(table: LossTable, terms: CheckTerms, live: BoolArray) -> list[Fault]:
                 tolerated=True,
             )
         )
-    if "reported" in table.dates:
-        reported = table.dates["reported"]
-        faults += [
-            Fault(
-                "reported-early",
-                "set aside",
-                "reported",
-                live & (reported < date),
-                "the loss is reported before it occurred",
-                "Correct one of the dates.",
-            ),
-            Fault(
-                "reported-late",
-                "set aside",
-                "reported",
-                live & (reported > valuation),
-                f"the loss is reported after the valuation date {terms.valuation_date.isoformat()}",
-                "Correct it, or the valuation date.",
-            ),
-        ]
-    return faults
+    return [*faults, *order_faults(table, valuation, live)]

@@ -12,12 +12,13 @@ from typing import Any
 import numpy as np
 
 from lossagg.arrays import BoolArray, FloatArray, IntArray
-from lossagg.records.amounts import NumberStyle, as_mask
+from lossagg.records.amounts import NumberStyle
 from lossagg.records.changes import Change
 from lossagg.records.dates import DateArray
 from lossagg.records.faults import Fault, Rows, list_faults
 from lossagg.records.findings import Finding, raise_stops
 from lossagg.records.headings import Wanted, heading_findings, locate_columns
+from lossagg.records.identifiers import identifier_faults
 from lossagg.records.money import Money, exact_sum
 from lossagg.records.raw import Choose, Layout, RawTable
 from lossagg.records.sources import Source, read_source
@@ -40,11 +41,12 @@ COLUMNS: Mapping[str, str] = {
     "deductible": "number",
     "claim": "word",
     "valuation": "date",
+    "payment-date": "date",
+    "closed-date": "date",
 }
 _WANTED = Wanted(COLUMNS, ("amount", "date"))
 _STRETCH = 1_000_000
 _TOTAL = re.compile(r"^(grand |sub ?-?)?(totals?|sum|somme|summe|gesamt|totale|total general)\b[ :.]*$", re.I)
-_SCIENTIFIC = r"^\d(\.\d+)?[eE]\+?\d+$"
 
 
 @dataclass(frozen=True)
@@ -159,7 +161,9 @@ def read_losses(
     delimiter: str | None = None,
     decimal: str = ".",
     thousands: str | None = None,
+    grouping: str = "three",
     date_format: str | None = None,
+    time_zone: str | None = None,
 ) -> LossTable:
     """Read loss records from a CSV, TSV, XLSX or Parquet file, one row per loss.
 
@@ -173,8 +177,10 @@ def read_losses(
         encoding: encoding of a text file that is neither UTF-8 nor marked.
         delimiter: delimiter of a text file where it is not clear.
         decimal: decimal mark, "." or ",".
-        thousands: mark between groups of three digits, if any.
+        thousands: mark between groups of digits, if any.
+        grouping: "three" digits to a group, or "indian": 12,34,567.
         date_format: format of the dates unless ISO, made of %Y, %m (or %b) and %d.
+        time_zone: zone in which the day of a date-time with a zone is wanted, for example "Europe/Berlin".
 
     Returns:
         The table with the faults seen so far; check it with `check_losses`.
@@ -184,16 +190,16 @@ def read_losses(
         RecordsError: cells that are no numbers or dates in the declared form; names the first ones.
         EnvironmentFault: the file cannot be opened.
     """
-    style = NumberStyle(decimal, thousands)
+    style = NumberStyle(decimal, thousands, grouping)
     path = Path(path)
     layout = Layout(sheet=sheet, encoding=encoding, delimiter=delimiter)
     source = read_source(path, layout, chooser(path.name, _WANTED, columns or {}))
     raw = source.table
-    typed = type_columns(raw, COLUMNS, style, date_format, raw.empty)
+    typed = type_columns(raw, COLUMNS, style, date_format, raw.empty, time_zone)
     exact = typed.numbers["amount"].exact()
     total = _total_row(raw, typed, exact)
     if total.any():
-        typed = type_columns(raw, COLUMNS, style, date_format, raw.empty | total)
+        typed = type_columns(raw, COLUMNS, style, date_format, raw.empty | total, time_zone)
     return _assemble(source, typed, exact, total)
 
 
@@ -270,22 +276,7 @@ def _row_faults(raw: RawTable, typed: TypedColumns, total: BoolArray) -> list[Fa
             "Correct it.",
         ),
     ]
-    if "event" in raw.columns:
-        import pyarrow.compute as pc
-
-        words = typed.words["event"]
-        codes = np.flatnonzero(as_mask(pc.match_substring_regex(words.names, pattern=_SCIENTIFIC)))
-        mask = np.isin(words.codes, codes) if codes.size else np.zeros(len(words), dtype=np.bool_)
-        faults.append(
-            Fault(
-                "identifier-form",
-                "warn",
-                "event",
-                mask & live,
-                "the event looks like an identifier that a spreadsheet turned into a number",
-                "Export identifiers as text; different ones may have become the same.",
-            )
-        )
+    faults += identifier_faults(raw, typed, live)
     return faults
 
 

@@ -11,6 +11,8 @@ from lossagg.records.faults import Fault
 from lossagg.records.findings import Finding, RecordsError, counted
 from lossagg.records.table import LossTable
 
+ONE_ROW = 0.5
+
 
 def check_tolerance(
     table: LossTable,
@@ -21,6 +23,9 @@ def check_tolerance(
     line: str | None = None,
 ) -> None:
     """Stop when too much is set aside for faults, in rows or in money (by absolute amount).
+
+    One row may be set aside where one row alone is more than tolerated, unless nothing is tolerated or the
+    row is more than half the money.
 
     Raises:
         RecordsError: with all findings, the share and the main reasons.
@@ -39,7 +44,9 @@ def check_tolerance(
         "the money": float(lost / (kept + lost)) if lost else 0.0,
     }
     worst = max(shares, key=lambda name: shares[name])
-    if shares[worst] <= tolerance:
+    # A file of ten rows would stop at its first bad one: one row is no share of anything yet.
+    alone = count == 1 and 0 < tolerance < shares["rows"] and shares["the money"] <= max(tolerance, ONE_ROW)
+    if shares[worst] <= tolerance or alone:
         return
     numbers = {fault.code: int(np.count_nonzero(fault.mask)) for fault in aside if not fault.tolerated}
     reasons = ", ".join(f"{code} {number}" for code, number in numbers.items() if number)

@@ -10,9 +10,19 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
+import numpy as np
+
 from lossagg.arrays import BoolArray, FloatArray
-from lossagg.records.amounts import MISSING, Numbers, NumberStyle, as_mask, is_missing, parse_numbers
-from lossagg.records.dates import DateArray, parse_dates
+from lossagg.records.amounts import (
+    MISSING,
+    Numbers,
+    NumberStyle,
+    as_mask,
+    is_missing,
+    parse_numbers,
+    ungrouped,
+)
+from lossagg.records.dates import DateArray, Dates, parse_dates
 from lossagg.records.faults import Fault
 from lossagg.records.headings import INVISIBLE
 from lossagg.records.raw import Column, RawTable
@@ -43,7 +53,12 @@ class TypedColumns:
 
 
 def type_columns(
-    raw: RawTable, kinds: Mapping[str, str], style: NumberStyle, date_format: str | None, skip: BoolArray
+    raw: RawTable,
+    kinds: Mapping[str, str],
+    style: NumberStyle,
+    date_format: str | None,
+    skip: BoolArray,
+    time_zone: str | None = None,
 ) -> TypedColumns:
     """Read every column of a table by its kind.
 
@@ -52,6 +67,7 @@ def type_columns(
         kinds: {canonical name: "number", "date" or "word"}.
         style: how numbers are written.
         date_format: how dates are written, None for ISO.
+        time_zone: zone in which the day of a date-time with a zone is wanted; None: not declared.
         skip: True for rows that carry no record (blank, totals), which have no faults; shape (rows,).
 
     Returns:
@@ -65,7 +81,7 @@ def type_columns(
         if kinds[name] == "number":
             _number(typed, name, column, style, ~skip)
         elif kinds[name] == "date":
-            _date(typed, name, column, date_format, ~skip)
+            _date(typed, name, column, (date_format, time_zone), ~skip)
         else:
             _word(typed, name, column, ~skip)
     return typed
@@ -91,15 +107,26 @@ def _number(typed: TypedColumns, name: str, column: Column, style: NumberStyle, 
             f"the {name} has more digits than a float64 keeps",
             "The reconciliation counts every digit; the models use the nearest float64.",
         ),
+        Fault(
+            "mixed-grouping",
+            "warn",
+            name,
+            ungrouped(column, style) & live & ~numbers.wrong,
+            f"the {name} has no marks between its digits where others of the column have them",
+            "Check that the file is one export: the mark may mean something else in some rows.",
+        ),
     ]
 
 
-def _date(typed: TypedColumns, name: str, column: Column, date_format: str | None, live: BoolArray) -> None:
-    dates = parse_dates(column, date_format)
+def _date(
+    typed: TypedColumns, name: str, column: Column, form: tuple[str | None, str | None], live: BoolArray
+) -> None:
+    dates = parse_dates(column, *form)
+    date_format = form[0]
     typed.dates[name] = dates.values
-    form = f"in the declared format {date_format!r}" if date_format else "a date written YYYY-MM-DD"
+    wanted = f"in the declared format {date_format!r}" if date_format else "a date written YYYY-MM-DD"
     typed.faults += [
-        Fault("date-form", "stop", name, dates.wrong & live, f"the {name} is not {form}", _DATE_REMEDY),
+        Fault("date-form", "stop", name, dates.wrong & live, f"the {name} is not {wanted}", _DATE_REMEDY),
         Fault(
             "impossible-date",
             "set aside",
@@ -114,7 +141,7 @@ def _date(typed: TypedColumns, name: str, column: Column, date_format: str | Non
             name,
             dates.zoned & live,
             f"the {name} carries a time zone, so its day here is not known",
-            "Export local dates without a zone.",
+            "Export local dates without a zone, or declare time_zone, the zone the days are meant in.",
         ),
         Fault(
             "time-of-day",
@@ -123,6 +150,22 @@ def _date(typed: TypedColumns, name: str, column: Column, date_format: str | Non
             dates.timed & live,
             f"the {name} has a time of day, which is let go",
             "None needed.",
+        ),
+        Fault(
+            "moved-to-zone",
+            "normalise",
+            name,
+            dates.moved & live,
+            f"the {name} carries a time zone; its day in {form[1]} is used",
+            "None needed.",
+        ),
+        Fault(
+            "text-date",
+            "warn",
+            name,
+            _written_as_text(column, dates) & live,
+            f"the {name} is written as text where others of the column are dates of the workbook",
+            "Make all of them dates; a text may have escaped a conversion of day and month.",
         ),
     ]
     if name == "date":
@@ -136,6 +179,14 @@ def _date(typed: TypedColumns, name: str, column: Column, date_format: str | Non
                 "Supply the date of the loss.",
             )
         )
+
+
+def _written_as_text(column: Column, dates: Dates) -> BoolArray:
+    """True for dates written as text in a column where the file itself holds others as dates."""
+    dated = ~np.isnat(dates.values)
+    if not column.is_text or not (column.native & dated).any():
+        return np.zeros(len(dated), dtype=np.bool_)
+    return dated & ~column.native
 
 
 def _word(typed: TypedColumns, name: str, column: Column, live: BoolArray) -> None:

@@ -90,7 +90,10 @@ def line_faults(table: LossTable, lines: tuple[str, ...]) -> list[Fault]:
     for name in names:
         mask = live & (written == name)
         message = "the line is not one of the portfolio" if name else "the line is missing"
-        faults.append(Fault("unknown-line", "stop", "line", mask, message, nearest(name, lines)))
+        remedy = nearest(name, lines)
+        # A name near that of a line is a slip of it; any other may be a person's, in a column mapped wrongly.
+        near = remedy.startswith("Did you mean")
+        faults.append(Fault("unknown-line", "stop", "line", mask, message, remedy, shown=near))
     return faults
 
 
@@ -132,14 +135,15 @@ def repeated_faults(table: LossTable, live: BoolArray) -> list[Fault]:
         same &= cells[order][1:] == cells[order][:-1]
     again = np.zeros(len(table), dtype=np.bool_)
     again[rows[order[1:][same]]] = True
-    named = table.word("event") != ""
+    named = (table.word("event") != "") | (table.word("claim") != "")
+    identifier = "claim" if "claim" in table.words else "event"
     return [
         Fault(
             "duplicate-row",
             "set aside",
-            "event" if "event" in table.words else None,
+            identifier if identifier in table.words else None,
             live & again & named,
-            "the row repeats an earlier one of the same event in every column",
+            f"the row repeats an earlier one of the same {identifier} in every column",
             "If both are claims of their own, give them an identifier that tells them apart.",
         ),
         Fault(

@@ -19,6 +19,7 @@ from typing import Any, BinaryIO
 import numpy as np
 
 from lossagg.errors import InputError, place
+from lossagg.records.findings import counted
 from lossagg.records.headings import nearest
 from lossagg.records.raw import FIRST_ROW, Choose, Layout, RawTable, TableBuilder, cell_text
 
@@ -61,6 +62,7 @@ def read_workbook(path: Path, layout: Layout, choose: Choose) -> RawTable:
 
 def _read_sheet(path: Path, sheet: Any, marks: dict[str, bool], choose: Choose) -> RawTable:
     import pyarrow as pa
+    from openpyxl.utils.datetime import CALENDAR_MAC_1904
 
     rows = sheet.iter_rows(values_only=True)
     headings = _headings(next(rows, ()), path.name, sheet.title)
@@ -73,6 +75,15 @@ def _read_sheet(path: Path, sheet: Any, marks: dict[str, bool], choose: Choose) 
             "Unhide them and check that they belong to the records.",
             warn=True,
         )
+    if hidden := _hidden_sheets(sheet):
+        builder.note(
+            "hidden-sheets",
+            f"the workbook has {counted(len(hidden), 'hidden sheet')}, not read",
+            "Unhide them and check that no records are left out.",
+            warn=True,
+        )
+    if sheet.parent.epoch == CALENDAR_MAC_1904:
+        builder.note("dates-from-1904", "the workbook counts its days from 1904", "None needed.")
     if marks["formula"]:
         _refuse_unstored(path, sheet.title, positions)
     number = FIRST_ROW
@@ -86,6 +97,11 @@ def _read_sheet(path: Path, sheet: Any, marks: dict[str, bool], choose: Choose) 
         builder.add(columns, native)
         number += len(chunk)
     return builder.finish()
+
+
+def _hidden_sheets(read: Any) -> list[str]:
+    sheets = read.parent.worksheets
+    return [each.title for each in sheets if each.sheet_state != "visible" and each.title != read.title]
 
 
 def _headings(first: Sequence[Any], file: str, sheet: str) -> tuple[str, ...]:
@@ -116,12 +132,20 @@ def _check_package(path: Path) -> None:
     try:
         with zipfile.ZipFile(path) as package:
             members = package.infolist()
+            declares = _declares_a_document_type(package)
     except zipfile.BadZipFile as error:
         raise InputError(
             "the workbook is damaged or only partly written",
             where=place(file=path.name),
             remedy="Save it again as .xlsx.",
         ) from error
+    if declares:
+        raise InputError(
+            "a part of the workbook declares a document type, which could expand without end",
+            where=place(file=path.name),
+            value=declares,
+            remedy="No spreadsheet program writes one: save the workbook again as .xlsx from a trusted copy.",
+        )
     names = [member.filename.lower() for member in members]
     if "xl/workbook.xml" not in names:
         raise InputError(
@@ -149,6 +173,16 @@ def _check_package(path: Path) -> None:
             where=place(file=path.name),
             remedy="Export the records as CSV or Parquet.",
         )
+
+
+def _declares_a_document_type(package: zipfile.ZipFile) -> str | None:
+    """The first part that begins with a document type declaration, which XML entities need."""
+    for name in package.namelist():
+        if name.lower().endswith((".xml", ".rels")):
+            with package.open(name) as part:
+                if b"<!DOCTYPE" in part.read(_OVERLAP):
+                    return name
+    return None
 
 
 @contextmanager

@@ -18,6 +18,7 @@ def prepare(check):
     def _prepare(content: str, exposure=None, **options):
         split = ("forecast_midpoint", "reporting_threshold", "trend")
         how = {"forecast_midpoint": MIDPOINT, **{key: options.pop(key) for key in split if key in options}}
+        options["reporting_threshold"] = how.get("reporting_threshold")
         return prepare_losses(check(content, **options), exposure=exposure, **how)
 
     return _prepare
@@ -104,9 +105,9 @@ def test_threshold_is_that_of_the_event_and_small_events_are_counted(prepare) ->
 
 
 def test_too_many_below_the_reporting_threshold_stop(prepare) -> None:
-    with pytest.raises(RecordsError, match=r"50\.0% of rows .*by reason: below-threshold 1"):
+    with pytest.raises(RecordsError, match=r"66\.7% of rows .*by reason: below-threshold 2"):
         prepare(
-            "amount,date\n10,2024-01-01\n2000,2024-01-01\n",
+            "amount,date\n10,2024-01-01\n20,2024-01-01\n2000,2024-01-01\n",
             reporting_threshold=1000,
             tolerance=0.2,
         )

@@ -122,7 +122,9 @@ def only(checked, code: str):
     ],
 )
 def test_row_is_set_aside(check, columns: str, row: str, code: str, text: str) -> None:
-    good = {"amount,date,currency": f"{GOOD},EUR"}.get(columns, GOOD + "," * (columns.count(",") - 1))
+    good = {"amount,date,currency": f"{GOOD},EUR", "amount,date,threshold": f"{GOOD},1"}.get(
+        columns, GOOD + "," * (columns.count(",") - 1)
+    )
     checked = check(f"{columns}\n{good}\n{row}\n")
     (finding,) = only(checked, code)
     assert str(finding) == text
