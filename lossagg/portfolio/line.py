@@ -47,7 +47,9 @@ class LineModel:
         prepared: the losses it was fitted to; None where both laws are given and no records exist.
         frequencies: the count laws tried; None where the law is given.
         severities: the size laws tried; None where the law is given.
-        seen: per year, exposure times the probability that a loss exceeds the threshold.
+        seen: per year, the exposure of the forecast period that would show as many losses: what was
+            observed, for the part that is reported, at the frequency of the forecast period, times the
+            probability that a loss exceeds the threshold.
         forecast_exposure: exposure of the forecast year.
         expense: adjustment expense that comes with every loss, as a ratio to it.
         sum_insured: of every risk of the line, where a surplus needs it.
@@ -123,7 +125,7 @@ def _modelled(section: LineSection, prepared: PreparedLosses | None, key: str) -
             severities=severities,
         )
     years = prepared.years
-    seen = years.exposure * years.fraction * np.asarray(severity.sf(years.threshold))
+    seen = years.forecast_exposure * _survival(prepared, severity)
     frequencies = compare_frequencies(years.losses, section.frequency.fit, exposure=seen)
     frequencies = _preferred(frequencies, section.frequency, f"{key}.frequency")
     exposure = section.forecast_exposure or _last_full_exposure(prepared)
@@ -137,6 +139,22 @@ def _modelled(section: LineSection, prepared: PreparedLosses | None, key: str) -
         seen=seen,
         forecast_exposure=exposure,
     )
+
+
+def _survival(prepared: PreparedLosses, severity: SizeLaw) -> FloatArray:
+    """Per year, the probability that a loss exceeds the threshold above which it was recorded.
+
+    Where events of a year have thresholds of their own, each stands for the 1 / S(threshold) losses of
+    which it was the one to be seen (Horvitz and Thompson 1952), so the year saw the ratio of the two.
+    """
+    years = prepared.years
+    survival = np.array(severity.sf(years.threshold), dtype=np.float64)
+    if years.mixed.any():
+        at = prepared.year - int(years.year[0])
+        stands_for = 1.0 / np.asarray(severity.sf(prepared.threshold), dtype=np.float64)
+        losses = np.bincount(at, weights=stands_for, minlength=len(years))
+        survival[years.mixed] = years.losses[years.mixed] / losses[years.mixed]
+    return survival
 
 
 def _preferred(tried: Candidates[AnyFit], law: Law, key: str) -> Candidates[AnyFit]:

@@ -52,8 +52,9 @@ class Portfolio:
                 self.records[line.name].losses,
                 exposure=self.records[line.name].exposure,
                 forecast_midpoint=middle,
-                reporting_threshold=line.reporting_threshold,
-                trend=line.trend,
+                reporting_threshold=line.lowest_recorded,
+                trend=self.records[line.name].index or line.trend,
+                **line.preparation(),
             )
             for line in self.file.line
             if line.name in self.records
