@@ -16,6 +16,7 @@ from lossagg.arrays import FloatArray, Floats, elementwise, require_probability
 from lossagg.engines.compound import CompoundSum
 from lossagg.engines.result import AnnualLoss
 from lossagg.engines.running import running_sums
+from lossagg.engines.span import places
 
 # The moments of the model are exact up to the round-off of the laws themselves.
 _MOMENTS = 1e-12
@@ -71,10 +72,16 @@ class LatticeBound(AnnualLoss):
             low, high = (middle, high) if self._largest(middle) > tail else (low, middle)
         return low
 
+    def mean(self) -> float:
+        """The exact mean of the model, which needs no lattice, to the round-off of the laws."""
+        return self.compound.mean * self._exact
+
     def layer_mean(self, low: float, high: float = np.inf) -> float:
-        """The bound of E[min((S - low)+, high - low)]; of the mean itself it is the exact mean."""
-        if low <= 0 and high == np.inf:
-            return self.compound.mean * self._exact
+        """The bound of E[min((S - low)+, high - low)].
+
+        Always that of the step function, never the exact mean: the TVaR of the lower bound is the least
+        over all amounts v of v + E[(S - v)+] / (1 - level), which holds within one distribution only.
+        """
         inside = self._area(min(high, self.top)) - self._area(min(low, self.top))
         return inside + self._beyond(max(low, self.top), high)
 
@@ -122,7 +129,8 @@ class LatticeBound(AnnualLoss):
         return float(self._moments[k]) + max(x**2 - (k * self.step) ** 2, 0.0) * float(self.survival[k])
 
     def _sf(self, x: FloatArray) -> FloatArray:
-        inside = self.survival[np.clip((x / self.step).astype(np.int64), 0, len(self.survival) - 1)]
+        cells, _ = places(np.clip(x, 0.0, self.top), self.step)
+        inside = self.survival[np.minimum(cells, len(self.survival) - 1)]
         result = np.where(x < 0, 1.0, inside)
         for index in np.flatnonzero(x >= self.top):
             excess = float(x[index]) - self.top
@@ -141,7 +149,8 @@ class LatticeBound(AnnualLoss):
         if low >= high:
             return 0.0
         if self.upper:
-            return float(min(self.tail_mean, (high - low) * self._sf(np.array([low]))[0]))
+            widest = (high - low) * float(self._sf(np.array([low]))[0]) if high < np.inf else np.inf
+            return min(self.tail_mean, widest)
         edges = np.geomspace(low, min(high, 1e6 * low), _PANELS)
         panels = float(np.diff(edges) @ np.minimum(self.compound.largest_sf(edges[1:]), self.survival[-1]))
         return max(panels, self.tail_mean) if low == self.top and high == np.inf else panels
@@ -149,7 +158,8 @@ class LatticeBound(AnnualLoss):
     def _beyond_square(self, low: float, high: float) -> float:
         """The bound of the integral of 2 (z - low) P(S > z) over (low, high), low >= top."""
         if self.upper:
-            return float(min(self.tail_square, (high - low) ** 2 * self._sf(np.array([low]))[0]))
+            widest = (high - low) ** 2 * float(self._sf(np.array([low]))[0]) if high < np.inf else np.inf
+            return min(self.tail_square, widest)
         edges = np.geomspace(low, min(high, 1e6 * low), _PANELS)
         squares = np.diff((edges - low) ** 2)
         panels = float(squares @ np.minimum(self.compound.largest_sf(edges[1:]), self.survival[-1]))

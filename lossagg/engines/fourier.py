@@ -141,7 +141,7 @@ class Fourier(ExactEngine):
             return float(self.step or 0.0), int(self.points or 0)
         if self.step is None:
             points = int(self.points or 0)
-            reach = coarse.amount(LEAST_REACH)
+            reach = coarse.reach(LEAST_REACH)
             return fitting_step(compound, reach / (points - 1), longer=True), points
         points = coarse.points(self.step, LEAST_REACH)
         if points > MOST_POINTS:
@@ -155,10 +155,10 @@ class Fourier(ExactEngine):
 
     def _refined(self, compound: CompoundSum, coarse: Quantiles) -> _Pass:
         """The pass on the coarsest lattice that gives the accuracy asked for, or the best allowed."""
-        step = min(coarse.step_for(self.accuracy), coarse.amount(LEAST_REACH) / _LEAST_POINTS)
+        step = min(coarse.step_for(self.accuracy), coarse.reach(LEAST_REACH) / _LEAST_POINTS)
         best, shortfall = None, np.inf
         for _ in range(_PASSES):
-            step = max(step, coarse.amount(REACHES[-1]) / (MOST_POINTS - 2))
+            step = max(step, coarse.reach(REACHES[-1]) / (MOST_POINTS - 2))
             fitted = fitting_step(compound, step)
             if coarse.points(fitted, REACHES[-1]) > MOST_POINTS:
                 fitted = step

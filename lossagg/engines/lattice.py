@@ -88,6 +88,10 @@ class LatticeLoss(BracketedAnnualLoss):
         value = (k - 1 + self._crossing(k - 1, tail - float(self._atoms_above[k - 1]))) * self.step
         return min(max(value, self.low.value_at_risk(level)), self.high.value_at_risk(level))
 
+    def mean(self) -> float:
+        """The exact mean of the model; `inf` where it does not exist."""
+        return self.compound.mean
+
     def tail_value_at_risk(self, level: float) -> float:
         """VaR + E[(S - VaR)+] / (1 - level), inside its bracket; `inf` where the mean is."""
         value = super().tail_value_at_risk(level)

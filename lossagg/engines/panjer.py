@@ -134,10 +134,10 @@ def _rounded(
 
 def _reach(quantiles: Quantiles) -> float:
     """As far as is cheap, and beyond once in 1,000 years at least."""
-    needed = quantiles.amount(_LEAST_EXCEEDANCE)
+    needed = quantiles.reach(_LEAST_EXCEEDANCE)
     for exceedance in REACHES:
-        if quantiles.survival[-1] <= exceedance and quantiles.amount(exceedance) <= 1.5 * needed:
-            return quantiles.amount(exceedance) + quantiles.step
+        if quantiles.covers(exceedance) and quantiles.reach(exceedance) <= 1.5 * needed:
+            return quantiles.reach(exceedance) + quantiles.step
     return needed + quantiles.step
 
 

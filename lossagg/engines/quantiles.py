@@ -51,14 +51,15 @@ class Quantiles:
         Raises:
             EngineError: the range was not found.
         """
-        reach = compound.reach(REACHES[0])
+        least = LEAST_REACH * _rarity(compound)
+        reach = compound.reach(REACHES[0]) or compound.reach(REACHES[0] * _rarity(compound))
         for _ in range(_TRIES):
             step = reach / (points - 1)
             survival = np.minimum.accumulate(np.clip(survive(step, points), 0.0, 1.0))
-            index = int(np.sum(survival > LEAST_REACH))
+            index = int(np.sum(survival > least))
             if index == points:
                 reach *= 8.0
-            elif index < points // 32 and 1.0 - compound.no_payment > LEAST_REACH:
+            elif index < points // 32 and 1.0 - compound.no_payment > least:
                 reach = 4.0 * (index + 2) * step
             else:
                 return cls(compound, step, survival)
@@ -72,22 +73,30 @@ class Quantiles:
         """The amount exceeded with this probability, to the coarse step; at least one coarse step."""
         return self.step * max(int(np.sum(self.survival > exceedance)), 1)
 
+    def reach(self, exceedance: float) -> float:
+        """The same, further out where hardly any year has a payment: what a lattice should cover."""
+        return self.amount(exceedance * _rarity(self.compound))
+
+    def covers(self, exceedance: float) -> bool:
+        """Whether `reach` is within the range looked at."""
+        return bool(self.survival[-1] <= exceedance * _rarity(self.compound))
+
     def points(self, step: float, exceedance: float) -> int:
         """Points of a lattice of this step that reach the amount exceeded with this probability."""
-        return int(min(np.ceil((self.amount(exceedance) + self.step) / step), 2.0**62)) + 2
+        amount = self.reach(exceedance) + self.step
+        return int(min(np.ceil(amount / step), 2.0**62)) + 2
 
     def far_points(self, step: float, *, easy: int, most: int) -> int:
         """Points that reach as far as is easy, and to once in 2,500 years at least, within the most."""
         for exceedance in REACHES:
             points = self.points(step, exceedance)
-            inside = self.survival[-1] <= exceedance
-            if inside and points <= (easy if exceedance < LEAST_REACH else most):
+            if self.covers(exceedance) and points <= (easy if exceedance < LEAST_REACH else most):
                 return points
         return most
 
     def scale(self, level: float) -> float:
         """The amount that the width of a bracket is judged against."""
-        return max(self.amount(1.0 - level), 0.01 * self.amount(LEAST_REACH))
+        return max(self.amount(1.0 - level), 0.01 * self.reach(LEAST_REACH))
 
     def step_for(self, accuracy: float) -> float:
         """The step expected to give brackets of this accuracy; `inf` where nothing is rounded."""
@@ -97,3 +106,8 @@ class Quantiles:
             events = self.compound.rounded_events(self.amount(1.0 - level), off_lattice)
             steps.append(0.9 * factor * accuracy * self.scale(level) / max(events, 1.0))
         return float(min(steps))
+
+
+def _rarity(compound: CompoundSum) -> float:
+    """How much further out a lattice must reach where hardly any year has a payment."""
+    return float(np.clip(1e3 * (1.0 - compound.no_payment), 1e-8, 1.0))

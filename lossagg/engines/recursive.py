@@ -120,7 +120,7 @@ class Lines:
             alone, _ = self._total([masses.atoms for masses in self.masses])
         else:
             alone = np.zeros(self.points)
-            alone[0] = np.exp(log_atoms)
+            alone[0] = np.exp(sum(log_start(*_class_of(part), part.payment.paying) for part in self.parts))
         return alone, float(-np.expm1(log_atoms)) if sum(continuous) > 0 else 0.0
 
     def _total(self, masses: list[FloatArray]) -> tuple[FloatArray, float]:

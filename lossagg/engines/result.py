@@ -17,6 +17,7 @@ import numpy as np
 from lossagg.arrays import FloatArray, Floats, elementwise, require_probability
 from lossagg.cover import Cover, Schedule
 from lossagg.engines.book import Book, Subject
+from lossagg.engines.largest import LargestYearsKept
 from lossagg.errors import DoesNotExistError, EngineError, InputError
 from lossagg.families.base import CountLaw, SizeLaw
 
@@ -158,10 +159,15 @@ class BookResult:
     Attributes:
         losses: the annual amount of every subject the engine can compute.
         refused: why not, for every other subject, with the engine that can.
+        details: from the simulation, per line the part ceded, the part retained and the largest loss of
+            the year, and the largest of all lines; empty from other engines.
+        largest_years: from the simulation, the largest years by gross and by net.
     """
 
     losses: dict[Subject, AnnualLoss]
     refused: dict[Subject, str] = field(default_factory=dict)
+    details: dict[Subject, AnnualLoss] = field(default_factory=dict)
+    largest_years: dict[Subject, LargestYearsKept] = field(default_factory=dict)
 
 
 class Engine(Protocol):
@@ -222,6 +228,12 @@ class TransformedAnnualLoss(BracketedAnnualLoss):
     def value_at_risk(self, level: float) -> float:
         """The payment at the quantile of the underlying loss."""
         return float(self.payment(np.array([self.base.value_at_risk(level)]))[0])
+
+    def mean(self) -> float:
+        """The expected payment; of a share of the loss, the share of its mean, exact where that is."""
+        if self.payment.starts == (0.0,) and self.payment.values == (0.0,):
+            return self.payment.slopes[0] * self.base.mean()
+        return self.layer_mean(0.0)
 
     def layer_mean(self, low: float, high: float = np.inf) -> float:
         """E[min((payment - low)+, high - low)]."""

@@ -124,7 +124,7 @@ class LatticeTransform:
             alone = np.where(alone > _EPSILON, alone, 0.0)
         else:
             alone = np.zeros(self.points)
-            alone[0] = np.exp(log_atoms)
+            alone[0] = np.exp(sum(float(line.frequency.log_pgf(line.none)) for line in self.lines))
         continuous = any(line.masses.even.any() for line in self.lines)
         return alone, float(-np.expm1(log_atoms)) if continuous else 0.0
 
