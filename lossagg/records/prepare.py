@@ -30,7 +30,7 @@ from lossagg.records.money import Reconciliation, reconcile
 from lossagg.records.prepared import PreparedLosses
 from lossagg.records.small_events import Kept, set_aside_small
 from lossagg.records.steps import Trail, log_steps, open_claims_caution, window_caution
-from lossagg.records.trend import Trend, check_trend, trend_factor
+from lossagg.records.trend import Trend, TrendIndex, check_trend, trend_factor
 from lossagg.records.ultimate import Developed, Factors, develop_years
 from lossagg.records.years import Window, YearTable, complete_from, exposures_of, threshold_base, year_table
 
@@ -123,6 +123,8 @@ def prepare_losses(
         steps=log_steps(trail, whole, years, developed),
         findings=(
             *kept.findings,
+            *(exposure.findings if exposure else ()),
+            *(trend.findings if isinstance(trend, TrendIndex) else ()),
             *found,
             *unit_findings(checked, kept.used),
             *(open_claims_caution(checked, years) if open_claims == "as-recorded" else ()),

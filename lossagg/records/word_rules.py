@@ -64,7 +64,7 @@ def word_faults(table: LossTable, currency: str, live: BoolArray) -> list[Fault]
                 "currency",
                 live & other & ~empty,
                 f"the currency is not that of the portfolio, {currency}",
-                "Convert the amounts at dated rates first, or split the file.",
+                "Name a file of dated rates under [portfolio], or split the file.",
             ),
             Fault(
                 "missing-currency",

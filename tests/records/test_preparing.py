@@ -302,12 +302,14 @@ def test_a_year_without_exposure_stops(prepare, write) -> None:
     )
 
 
-def test_a_tenfold_jump_is_warned_of(write) -> None:
+def test_a_tenfold_jump_is_warned_of(prepare, write) -> None:
     table = read_exposure(write("year,exposure\n2022,1\n2023,9.9\n2024,99\n2025,9\n", "exposure.csv"))
     assert [f.message for f in table.findings] == [
         "the exposure changes tenfold or more from 2023 to 2024",
         "the exposure changes tenfold or more from 2024 to 2025",
     ]
+    losses = prepare("amount,date\n1,2024-01-01\n", table)
+    assert [f for f in losses.findings if f.code == "exposure-jump"] == list(table.findings)
 
 
 def test_exposures_of_several_lines(prepare, write) -> None:

@@ -170,7 +170,7 @@ def test_another_currency_stops(check) -> None:
         check(f"amount,date,currency\n{GOOD},EUR\n5,2024-01-01,USD\n6,2024-01-01,GBP\n")
     assert str(error.value) == (
         "the currency is not that of the portfolio, EUR, in file losses.csv, row 3, column 'currency'; seen: "
-        "'USD'. Convert the amounts at dated rates first, or split the file. 2 rows have this fault: "
+        "'USD'. Name a file of dated rates under [portfolio], or split the file. 2 rows have this fault: "
         "rows 3, 4."
     )
 

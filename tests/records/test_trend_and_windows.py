@@ -49,12 +49,15 @@ def test_a_yearly_index_carries_losses_and_thresholds(prepare, write) -> None:
 
 def test_a_monthly_index_under_another_heading(prepare, write) -> None:
     months = [f"{2024 + k // 12}-{1 + k % 12:02d}" for k in range(36)]
-    text = "month,construction prices\n" + "".join(f"{m},{100 + k}\n" for k, m in enumerate(months))
+    text = "month,construction prices,source\n"
+    text += "".join(f"{m},{100 + k},own\n" for k, m in enumerate(months))
     index = read_trend_index(write(text, "index.csv"), columns={"index": "construction prices"})
     losses = prepare("amount,date\n1000,2024-01-31\n1000,2025-06-01\n", trend=index, reporting_threshold=10)
     assert losses.amount == pytest.approx([1000 * 130 / 100, 1000 * 130 / 117])
     assert losses.largest_threshold == pytest.approx(10 * 130 / 100)
     assert index.rows == 36
+    unread = [f.message for f in losses.findings if f.file == "index.csv"]
+    assert unread == ["1 column is not read: 'source'"]
     assert repr(index) == "TrendIndex('index.csv', 2024-01 to 2026-12)"
 
 
