@@ -29,7 +29,7 @@ def unit_findings(checked: CheckedLosses, used: BoolArray) -> list[Finding]:
     table = checked.table
     amount = table.amount[used]
     found = []
-    for what, group in _groups(checked, used):
+    for what, several, group in _groups(checked, used):
         for name, mine, rest in _medians(amount, group):
             ratio = mine / rest
             found.append(
@@ -41,8 +41,8 @@ def unit_findings(checked: CheckedLosses, used: BoolArray) -> list[Finding]:
                     table.headings.get("amount"),
                     f"{mine:g} against {rest:g}",
                     f"the median amount of {what} {name} is "
-                    + (f"{ratio:,.0f} times that" if ratio > 1 else f"1/{1 / ratio:,.0f}")
-                    + f" of all other {what.replace('currency', 'currencie').rstrip('s')}s",
+                    + (f"{ratio:,.0f} times" if ratio > 1 else f"1/{1 / ratio:,.0f} of")
+                    + f" that of all other {several}",
                     "Are all amounts in one unit and in the currency stated, and are rates the right way up?",
                     sheet=table.sheet,
                     line=checked.line,
@@ -52,14 +52,14 @@ def unit_findings(checked: CheckedLosses, used: BoolArray) -> list[Finding]:
     return found
 
 
-def _groups(checked: CheckedLosses, used: BoolArray) -> Iterator[tuple[str, np.ndarray]]:
+def _groups(checked: CheckedLosses, used: BoolArray) -> Iterator[tuple[str, str, np.ndarray]]:
     """What amounts are grouped by: the year of the loss, and the currency as it was written."""
     table = checked.table
-    yield "year", table.date[used].astype("datetime64[Y]").astype(np.int64) + 1970
+    yield "year", "years", table.date[used].astype("datetime64[Y]").astype(np.int64) + 1970
     converted = [change.rows[used] for change in table.changes if change.step == "currency"]
     if converted:
         text = table.cells["currency"].to_pylist()
-        yield "currency", np.array([cell.strip().upper() for cell in text])[used]
+        yield "currency", "currencies", np.array([cell.strip().upper() for cell in text])[used]
 
 
 def _numbered(group: np.ndarray) -> tuple[np.ndarray, np.ndarray]:

@@ -139,7 +139,9 @@ def test_a_year_in_thousands_shows_and_ordinary_years_do_not(read) -> None:
     assert not [f for f in prepared(read("amount,date\n" + "".join(rows))).findings if "unit" in f.code]
     rows += [f"{1 + 0.35 * k:.3f},2024-03-05\n" for k in range(10)]
     found = [f for f in prepared(read("amount,date\n" + "".join(rows))).findings if f.code == "unit-mix-up"]
-    assert [f.message for f in found] == ["the median amount of year 2024 is 1/3,718 of all other years"]
+    assert [f.message for f in found] == [
+        "the median amount of year 2024 is 1/3,718 of that of all other years"
+    ]
     assert found[0].count == 10
 
 
