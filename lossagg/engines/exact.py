@@ -5,7 +5,10 @@ How a payment is put on a lattice and how payments are added up is each engine's
 
 from __future__ import annotations
 
+import os
 from abc import ABC, abstractmethod
+from collections.abc import Callable
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 
 import numpy as np
@@ -70,34 +73,50 @@ class ExactEngine(ABC):
 
         Subjects that add up the same event payments share one distribution.
         """
-        sums: dict[frozenset[tuple[str, Schedule]], AnnualLoss | EngineError] = {}
         losses: dict[Subject, AnnualLoss] = {}
         refused: dict[Subject, str] = {}
+        tasks: dict[object, Callable[[], AnnualLoss]] = {}
+        wanted: dict[Subject, tuple[object, Schedule]] = {}
         for subject in book.subjects:
             try:
-                pair = pair_plan(book, subject)
-                if pair is not None and pair.single is None:
-                    lines = book.independent_lines(pair.paid)
-                    losses[subject] = _paid(self.solve_pair(lines, pair), pair.beyond)
-                    continue
-                plan = book.plan(subject) if pair is None else pair.single
-                assert plan is not None
-                key = frozenset(plan.events.items())
-                if key not in sums:
-                    sums[key] = self._solved(book, plan.events)
-                base = sums[key]
-                if isinstance(base, EngineError):
-                    raise base
-                losses[subject] = _paid(base, plan.annual)
+                key, task, annual = self._task(book, subject)
             except EngineError as error:
                 refused[subject] = str(error)
-        return BookResult(losses, refused)
+                continue
+            tasks.setdefault(key, task)
+            wanted[subject] = (key, annual)
+        with ThreadPoolExecutor(max_workers=min(len(tasks), _cores()) or 1) as pool:
+            solved = dict(zip(tasks, pool.map(_outcome, tasks.values()), strict=True))
+        for subject, (key, annual) in wanted.items():
+            base = solved[key]
+            if isinstance(base, EngineError):
+                refused[subject] = str(base)
+            else:
+                losses[subject] = _paid(base, annual)
+        return BookResult({s: losses[s] for s in book.subjects if s in losses}, refused)
 
-    def _solved(self, book: Book, events: dict[str, Schedule]) -> AnnualLoss | EngineError:
-        try:
-            return self.solve(CompoundSum.of(book.independent_lines(events), events))
-        except EngineError as error:
-            return error
+    def _task(self, book: Book, subject: Subject) -> tuple[object, Callable[[], AnnualLoss], Schedule]:
+        """The annual sum behind a subject: what identifies it, how to solve it, and what is made of it."""
+        pair = pair_plan(book, subject)
+        if pair is not None and pair.single is None:
+            two = pair
+            return subject, lambda: self.solve_pair(book.independent_lines(two.paid), two), two.beyond
+        plan = book.plan(subject) if pair is None or pair.single is None else pair.single
+        events = plan.events
+        compound = CompoundSum.of(book.independent_lines(events), events)
+        return frozenset(events.items()), lambda: self.solve(compound), plan.annual
+
+
+def _outcome(task: Callable[[], AnnualLoss]) -> AnnualLoss | EngineError:
+    try:
+        return task()
+    except EngineError as error:
+        return error
+
+
+def _cores() -> int:
+    """Processors that this process may use; sums are solved side by side, none depends on another."""
+    return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
 
 
 @dataclass(frozen=True)

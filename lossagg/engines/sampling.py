@@ -10,6 +10,7 @@ from lossagg.arrays import FloatArray, IntArray
 from lossagg.engines.payment import PaymentLaw
 from lossagg.engines.span import places
 
+_NEVER = 1e-30
 _STEEP = 0.1
 _STEEP_CELLS = 4
 
@@ -43,10 +44,11 @@ def severity_masses(payment: PaymentLaw, step: float, points: int) -> Masses:
         points: number of lattice points, from 0.
     """
     if payment.stretches:
-        edges = step * np.arange(points + 1.0)
-        down = -np.diff(payment.continuous_sf(edges))
+        reached = min(points, int(payment.upper(_NEVER) / step) + 2)
+        edges = step * np.arange(reached + 1.0)
+        down = _padded(-np.diff(payment.continuous_sf(edges)), points)
         averages = payment.continuous_areas(edges) / step
-        even, under = _sampled(-np.diff(averages, prepend=payment.continuous_mass))
+        even, under = _sampled(_padded(-np.diff(averages, prepend=payment.continuous_mass), points))
     else:
         down, even, under = np.zeros(points), np.zeros(points), np.zeros(1)
     amounts, chances = payment.atoms
@@ -58,6 +60,11 @@ def severity_masses(payment: PaymentLaw, step: float, points: int) -> Masses:
     atoms_up = _gathered(up, chances, points)
     atoms_even = _gathered(index, chances * (1 - part), points) + _gathered(index + 1, chances * part, points)
     return Masses(down, even, under, atoms_down, atoms_even, atoms_up)
+
+
+def _padded(masses: FloatArray, points: int) -> FloatArray:
+    """Masses followed by zeros: what a payment reaches with no chance that any sum could show."""
+    return np.concatenate((masses, np.zeros(points - len(masses))))
 
 
 def _gathered(index: IntArray, chances: FloatArray, points: int) -> FloatArray:

