@@ -73,7 +73,7 @@ def exact_figures(
     for option, exact in zip(options, found, strict=True):
         for events, reader in _wanted(option, exact, levels, tail_level):
             readers.setdefault(events, []).append(reader)
-    for events, year in grid.years(readers, progress):
+    for events, year in grid.years(readers, progress, _farthest(options)):
         for reader in readers[events]:
             reader(year)
     _by_formula(grid, options, found)
@@ -97,6 +97,18 @@ def _wanted(
         cap = option.terms.retained_cap
         wanted.append((option.kept, lambda year: _read_charge(year, cap, exact)))
     return wanted
+
+
+def _farthest(options: Sequence[Option]) -> dict[Events, float]:
+    """The last amount at which annual terms act, per annual sum."""
+    found: dict[Events, float] = {}
+    for option in options:
+        for plan in (option.retained_plan, option.ceded_plan):
+            if plan is not None:
+                found[plan.events] = max(found.get(plan.events, 0.0), plan.annual.starts[-1])
+        if option.terms is not None and option.terms.retained_cap < np.inf:
+            found[option.kept] = max(found.get(option.kept, 0.0), option.terms.retained_cap)
+    return found
 
 
 def _paid(year: LatticeYear, plan: OneSum) -> AnnualLoss:

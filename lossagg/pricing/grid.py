@@ -13,7 +13,7 @@ and Hermesmeier 1999), and payments beyond the lattice are left out, which chang
 from __future__ import annotations
 
 from collections import deque
-from collections.abc import Callable, Iterable, Iterator, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from concurrent.futures import Future, ThreadPoolExecutor
 from dataclasses import dataclass
 from typing import Any, TypeVar
@@ -107,19 +107,23 @@ class Grid:
         return [Moments(float(m), float(s)) for m, s in zip(means, seconds, strict=True)]
 
     def years(
-        self, schedules: Iterable[Events], done: Callable[[float], None] | None = None
+        self,
+        schedules: Iterable[Events],
+        done: Callable[[float], None] | None = None,
+        least: Mapping[Events, float] | None = None,
     ) -> Iterator[tuple[Events, LatticeYear]]:
         """The annual sum of every schedule, scale by scale; each distribution may be dropped when read.
 
         Args:
             schedules: what an event of each line adds, line by line.
             done: called with the part that is done.
+            least: amounts that the lattice must reach, where annual terms act far out.
         """
         distinct = list(dict.fromkeys(schedules))
         moments = dict(zip(distinct, self.moments(distinct), strict=True))
         scales: dict[int, list[Events]] = {}
         for schedule in distinct:
-            reach = self._reach(schedule, moments[schedule])
+            reach = max(self._reach(schedule, moments[schedule]), 1.01 * (least or {}).get(schedule, 0.0))
             scales.setdefault(int(np.ceil(np.log(reach) / np.log(HALF_OCTAVE))), []).append(schedule)
         finished = 0
         for scale, members in sorted(scales.items()):
@@ -157,7 +161,7 @@ class Grid:
 
     def _reach(self, events: Events, moment: Moments) -> float:
         """An amount the year hardly ever exceeds: Bernstein's inequality (1924) at 1e-7 where an event
-        is bounded, else the largest event of 100,000 years on top of the bulk. Checked on the lattice."""
+        is bounded, else the largest event of 20,000 years on top of the bulk. Checked on the lattice."""
         most, log_odds = max(_most_of(schedule) for schedule in events), 16.0
         if most == 0.0:
             return 1.0
@@ -165,7 +169,7 @@ class Grid:
             spread = float(np.sqrt((most * log_odds / 3.0) ** 2 + 2.0 * moment.variance * log_odds))
             return moment.mean + most * log_odds / 3.0 + spread
         largest = max(
-            float(own(np.array([line.severity.isf(min(1e-5 / line.frequency.mean(), 0.5))]))[0])
+            float(own(np.array([line.severity.isf(min(5e-5 / line.frequency.mean(), 0.5))]))[0])
             for line, own in zip(self.lines, events, strict=True)
         )
         capped = tuple(Schedule.capped(largest).after(own) for own in events)
