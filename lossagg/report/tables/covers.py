@@ -89,9 +89,9 @@ def _reinstatement_notes(covers: list[dict[str, Any]]) -> tuple[str, ...]:
     """Pure premiums of the covers whose reinstatements are paid."""
     paid = [(cover["name"], cover["reinstatement"]) for cover in covers if cover.get("reinstatement")]
     return tuple(
-        f"{clean(name)}: an initial premium of {_money(premium['initial_premium'])} with an expected reinstatement "
-        f"premium of {_money(premium['reinstatement_premium'])} ({premium['fraction']:.4f} of it) pays the "
-        "expected annual cost; neither is counted in the net."
+        f"{clean(name)}: an initial premium of {_money(premium['initial_premium'])} with an expected "
+        f"reinstatement premium of {_money(premium['reinstatement_premium'])} ({premium['fraction']:.4f} of "
+        "it) pays the expected annual cost; neither is counted in the net."
         for name, premium in paid
     )
 
