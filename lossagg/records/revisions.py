@@ -124,7 +124,8 @@ def _latest(table: LossTable, placed: BoolArray) -> tuple[BoolArray, BoolArray]:
     rows = np.flatnonzero(placed)
     code = claim_codes(table, rows)
     day = table.dates["valuation"][rows].astype(np.int64)
-    order = np.lexsort((day, code))
+    # Of rows that are the same the first is kept, as the rule on copies keeps it.
+    order = np.lexsort((-rows, day, code))
     code, day, rows = code[order], day[order], rows[order]
     latest = np.zeros(len(table), dtype=np.bool_)
     twice = np.zeros(len(table), dtype=np.bool_)

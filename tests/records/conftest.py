@@ -43,7 +43,8 @@ def check(read: Read) -> Check:
     """Write a table, read and check it; the tolerance is wide, since the files are tiny."""
 
     def _check(content: str | bytes, **options: object) -> CheckedLosses:
-        reading = {"columns", "decimal", "thousands", "date_format", "delimiter", "encoding"}
+        reading = {"columns", "decimal", "thousands", "grouping", "date_format", "time_zone"}
+        reading |= {"delimiter", "encoding"}
         how = {key: options.pop(key) for key in list(options) if key in reading}
         terms = {"valuation_date": VALUED, "currency": "EUR", "tolerance": 0.9, **options}
         return check_losses(read(content, **how), **terms)  # type: ignore[arg-type]

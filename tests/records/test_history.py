@@ -186,7 +186,7 @@ def test_rows_that_cannot_be_placed_in_time_are_set_aside(prepare) -> None:
     losses = prepare(rows, head="claim,valuation,date,amount\n")
     assert losses.recorded.tolist() == [5.0, 8.0]
     assert [(f.code, f.row) for f in losses.findings if f.action == "set aside"] == [
-        ("later-valuation", 2), ("missing-valuation", 5), ("missing-claim", 4), ("superseded", 6),
+        ("duplicate-row", 7), ("later-valuation", 2), ("missing-valuation", 5), ("missing-claim", 4),
     ]  # fmt: skip
 
 
