@@ -16,6 +16,7 @@ from lossagg.cover.terms import Cover
 from lossagg.errors import InputError
 
 _WHOLE = 1.0 + 1e-12
+_SLIVER = 1e-9  # ends that differ by round-off alone are the same end
 
 
 @dataclass(frozen=True)
@@ -69,7 +70,11 @@ class Tower:
     def _parts(self) -> list[tuple[float, float, float]]:
         """(low, high, share covered) between all ends of layers, from the lowest layer up."""
         ends = sorted({end for layer in self.layers for end in self._ends(layer)})
-        return [(low, high, sum(layer.share for layer in self._at(low))) for low, high in pairwise(ends)]
+        return [
+            (low, high, sum(layer.share for layer in self._at(low)))
+            for low, high in pairwise(ends)
+            if high == np.inf or high - low > _SLIVER * high
+        ]
 
     def _at(self, amount: float) -> list[Cover]:
         return [layer for layer in self.layers if self._ends(layer)[0] <= amount < self._ends(layer)[1]]

@@ -73,7 +73,7 @@ def test_every_order_of_the_year_against_the_operations_one_by_one(
         annual_limit=80,
         order=("deductible", "limit", *order),
     )
-    total, kept, share = 0.0, 0.0, 1.0
+    total, kept = 0.0, 0.0
     first = order[0] == "share"
     for loss in losses:
         payment = min(max(loss - 20, 0.0), 100.0)
@@ -92,7 +92,7 @@ def test_every_order_of_the_year_against_the_operations_one_by_one(
             total *= 0.5
     x = np.array(losses)
     z, r = cover.event_schedule()(x).sum(keepdims=True), cover.retained_schedule()(x).sum(keepdims=True)
-    assert cover.annual_payment(z, r)[0] == pytest.approx(total * share, rel=1e-9, abs=1e-9)
+    assert cover.annual_payment(z, r)[0] == pytest.approx(total, rel=1e-9, abs=1e-9)
     terms = cover.year_terms
     assert terms.kept is not None
     both = terms.payments(z) + terms.kept(r)
@@ -170,7 +170,7 @@ def test_expense_by_basis(terms: dict, payment: float) -> None:
 
 
 def test_expense_outside_within_the_deductible() -> None:
-    """Under a deductible the insurer handles every claim; within a self-insured retention the insured does."""
+    """Under a deductible the insurer handles every claim; within a retention the insured does."""
     x = np.array([15.0])
     outside = Cover(deductible=20, expense_basis="outside")
     assert outside.event_schedule(expense=0.1)(x)[0] == pytest.approx(1.5)
