@@ -74,7 +74,7 @@ def line_sums(
     if line.columns.count:
         state = block_state(seed, line.key, block)
         counts = _counts(line, joint, state)
-        sums = Sums(line.columns.ramps, -1, joint.scale.get(line.name, nothing), annual)
+        sums = Sums(line.columns.ramps, line.columns.largest, joint.scale.get(line.name, nothing), annual)
         _simulate_years(line, state, sums, counts[: annual.shape[1]], years, kept)
     return annual[:, :years]
 

@@ -16,9 +16,11 @@ import numpy as np
 from lossagg.arrays import FloatArray
 from lossagg.cover import Schedule
 from lossagg.engines.book import GROSS, NET, Book, PlacedCover, Subject
+from lossagg.engines.by_line import LARGEST_GROSS, ceded_by_line
 from lossagg.errors import InputError
 
 LOSS = ("loss", "")
+LARGEST = ("largest", "")
 
 
 @dataclass(frozen=True, eq=False)
@@ -26,20 +28,23 @@ class LineColumns:
     """What is added up for one line.
 
     Attributes:
-        column: for ("loss", ""), ("paid", cover) and ("kept", cover): the column that holds it.
+        column: for ("loss", ""), ("paid", cover), ("kept", cover) and ("largest", ""): the column that
+            holds it.
         ramps: shape (R, 5), the rising pieces of all columns: column, start, end, slope, jump.
         count: number of columns.
+        largest: the column that receives the largest loss of the year; -1 for none.
     """
 
     column: dict[tuple[str, str], int]
     ramps: FloatArray
     count: int
+    largest: int = -1
 
 
 def line_columns(book: Book, line: str, subjects: tuple[Subject, ...]) -> LineColumns:
     """The columns that these subjects need of a line; equal schedules share one."""
     needed: dict[tuple[str, str], Schedule] = {}
-    if GROSS in subjects or NET in subjects or Subject("line", line) in subjects:
+    if any(_needs_loss(subject, line) for subject in subjects):
         needed[LOSS] = book.line(line).cost
     for cover in needed_covers(book, subjects):
         paid, kept = book.event_payment(cover, line), book.event_retained(cover, line)
@@ -53,11 +58,17 @@ def line_columns(book: Book, line: str, subjects: tuple[Subject, ...]) -> LineCo
         if schedule not in distinct:
             distinct.append(schedule)
     rows = [row for k, schedule in enumerate(distinct) for row in ramps(schedule, k)]
+    column = {key: distinct.index(schedule) for key, schedule in needed.items()}
+    ramps_of_all = np.array(rows, dtype=np.float64).reshape(-1, 5)
+    if not any(subject in (LARGEST_GROSS, Subject("largest", line)) for subject in subjects):
+        return LineColumns(column, ramps_of_all, len(distinct))
     return LineColumns(
-        {key: distinct.index(schedule) for key, schedule in needed.items()},
-        np.array(rows, dtype=np.float64).reshape(-1, 5),
-        len(distinct),
+        {**column, LARGEST: len(distinct)}, ramps_of_all, len(distinct) + 1, largest=len(distinct)
     )
+
+
+def _needs_loss(subject: Subject, line: str) -> bool:
+    return subject in (GROSS, NET) or (subject.kind in ("line", "retained") and subject.name == line)
 
 
 def ramps(schedule: Schedule, column: int) -> list[tuple[float, float, float, float, float]]:
@@ -79,9 +90,8 @@ def needed_covers(book: Book, subjects: tuple[Subject, ...]) -> tuple[PlacedCove
     Raises:
         InputError: a cover after one whose annual terms also act on lines the later does not cover.
     """
-    names = {
-        cover.name for cover in book.covers if NET in subjects or Subject("cover", cover.name) in subjects
-    }
+    every = any(subject.kind in ("net", "ceded", "retained") for subject in subjects)
+    names = {cover.name for cover in book.covers if every or Subject("cover", cover.name) in subjects}
     for cover in reversed(book.covers):
         if cover.name in names:
             names |= {before.name for before in book.annual_covers_before(cover)}
@@ -117,6 +127,15 @@ def annual_amounts(
         amounts[Subject("cover", cover.name)] = paid[cover.name]
     if NET in subjects:
         amounts[NET] = amounts[GROSS] - _total([np.zeros(1), *(paid[name] for name in sorted(paid))])
+    if any(subject.kind in ("ceded", "retained") for subject in subjects):
+        for line, ceded in ceded_by_line(book, sums, paid).items():
+            amounts[Subject("ceded", line)] = ceded
+            if LOSS in sums[line]:
+                amounts[Subject("retained", line)] = sums[line][LOSS] - ceded
+    largest = {line: book.line(line).cost(own[LARGEST]) for line, own in sums.items() if LARGEST in own}
+    amounts |= {Subject("largest", line): own for line, own in largest.items()}
+    if LARGEST_GROSS in subjects:
+        amounts[LARGEST_GROSS] = np.maximum.reduce(list(largest.values()))
     return {subject: amounts[subject] for subject in subjects}
 
 
@@ -125,15 +144,20 @@ def growth(book: Book, subject: Subject, line: str) -> float:
 
     Zero means that the subject is bounded in that loss, so its moments exist whatever the line's tail.
     """
-    if subject.kind == "line":
-        return book.line(line).cost.slopes[-1] * float(subject.name == line)
-    if subject == GROSS:
-        return book.line(line).cost.slopes[-1]
+    cost = book.line(line).cost.slopes[-1]
+    if subject in (GROSS, LARGEST_GROSS):
+        return cost
+    if subject.kind not in ("cover", "net") and subject.name != line:
+        return 0.0
+    if subject.kind in ("line", "largest"):
+        return cost
     slopes: dict[str, float] = {}
     for cover in book.covers:
         slopes[cover.name] = _cover_growth(book, cover, line, slopes)
-    if subject == NET:
-        left = book.line(line).cost.slopes[-1] - sum(slopes.values())
+    if subject.kind == "ceded":
+        return sum(slopes.values())
+    if subject.kind in ("net", "retained"):
+        left = cost - sum(slopes.values())
         return left if left > 1e-12 else 0.0
     return slopes[subject.name]
 
