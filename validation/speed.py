@@ -135,6 +135,40 @@ def assessment_rows(workers: int) -> Iterator[Row]:
         )
 
 
+def option_rows(workers: int) -> Iterator[Row]:
+    """A thousand options of one line by the exact engine, against as many bare transform pairs.
+
+    The cost of one option against one pair of its length: both sides do a thousand.
+    """
+    from scipy import fft
+
+    from lossagg.cover import Schedule
+    from lossagg.engines.book import Line
+    from lossagg.pricing.grid import POINTS, Grid
+
+    options = [(Schedule.capped(5000.0 + 250.0 * k),) for k in range(1000)]
+    random = np.random.default_rng(1)
+    for name, frequency in (
+        ("Poisson", lossagg.Poisson(mean=12.0)),
+        ("negative binomial", lossagg.NegativeBinomial(mean=12.0, dispersion=0.2)),
+    ):
+        grid = Grid([Line(name="x", frequency=frequency, severity=LOGNORMAL)], POINTS, workers)
+        values = random.random(POINTS)
+
+        def pairs(own: np.ndarray = values) -> None:
+            for _ in range(1000):
+                fft.irfft(fft.rfft(own), own.size)
+
+        yield Row(
+            f"1,000 options, {name}, against 1,000 transform pairs of {POINTS:,} points",
+            lambda g=grid: sum(1 for _ in g.years(options)),  # type: ignore[misc]
+            pairs,
+            "slower",
+            2.0 if name == "Poisson" else 0.0,
+            repetitions=3,
+        )
+
+
 def help_rows(workers: int) -> Iterator[Row]:
     """The command's help against starting Python with NumPy."""
     del workers
@@ -200,7 +234,7 @@ def main() -> int:
     given = parser.parse_args()
     print(f"{'':<72} {'lossagg s':>9} {'against s':>9} {'figure':>8} {'':<13} asked")
     all_met = True
-    for rows in (simulation_rows, fill_rows, help_rows, assessment_rows):
+    for rows in (simulation_rows, fill_rows, option_rows, help_rows, assessment_rows):
         try:
             for row in rows(given.workers):
                 text, met = measure(row, given.repetitions)

@@ -156,7 +156,7 @@ class _Room:
             retained[retained <= tiny] = 0.0
             if k in self.kept:
                 self.kept[k][:, first : first + size] = retained, ceded
-            beats = np.nan
+            beats, counted = np.nan, self.thresholds.get(option.name, ())
             mine, theirs = self.fixed[k], self.fixed[self.base]
             if mine is not None and theirs is not None:
                 beats = float(np.count_nonzero(retained + mine < base_retained + theirs - tiny))
@@ -169,15 +169,14 @@ class _Room:
                         ceded @ ceded,
                         np.count_nonzero(retained == 0.0),
                         beats,
-                        *(np.count_nonzero(retained > amount) for amount in self._thresholds(option)),
+                        *(
+                            np.count_nonzero(retained > amount)
+                            for amount in self.thresholds.get(option.name, ())
+                        ),
                     ]
                 )
             )
         self.sums[number] = found
-
-    def _thresholds(self, option: Option) -> list[float]:
-        """Amounts to count the years above, moved by less than a rounding of a sum could be off."""
-        return [amount * (1.0 + 1e-9) for amount in self.thresholds.get(option.name, ())]
 
     def tallies(self, lines: Sequence[Line]) -> list[Tally]:
         """The sums as means and shares."""

@@ -32,6 +32,7 @@ from lossagg.pricing.evaluate import (
     exact_figures,
     gross_moments,
     simulated_figures,
+    thresholds,
 )
 from lossagg.pricing.figure import Figure
 from lossagg.pricing.frontier import Position, choose, dominators
@@ -209,8 +210,7 @@ class _Work:
             base=self.base,
             fixed=known,
             thresholds={
-                option.name: [var.value for var, _ in found.levels.values() if var.value is not None]
-                for option, found in zip(self.options, exact, strict=True)
+                option.name: thresholds(found) for option, found in zip(self.options, exact, strict=True)
             },
             keep=keep,
             years=self.years,
@@ -218,7 +218,7 @@ class _Work:
             workers=self.workers,
             progress=lambda done: self.progress("simulation", 0.4 + 0.3 * done),
         )
-        checks = [agreement(found, tally, self.levels) for found, tally in zip(exact, tallies, strict=True)]
+        checks = [agreement(found, tally) for found, tally in zip(exact, tallies, strict=True)]
         rows = []
         for option, found, tally, check in zip(self.options, exact, tallies, checks, strict=True):
             filled = simulated_figures(found, tally, self.levels, self.gross.mean, tail_level)
@@ -325,7 +325,7 @@ def _load_waits(found: Exact, load: RiskLoad | None) -> bool:
 
 def _withheld(levels: Sequence[float]) -> Exact:
     none = Figure.withheld(WITHHELD)
-    return Exact(dict.fromkeys(levels, (none, none)), none, none, none, {}, None, none, none, none)
+    return Exact(dict.fromkeys(levels, (none, none)), none, none, none, None, none, none, none)
 
 
 def _basis(basis: PricingSection) -> Data:

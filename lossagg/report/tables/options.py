@@ -412,7 +412,8 @@ def checks(options: Entry) -> Table:
             "" if row["level"] is None else digits.percent(row["level"]),
             row["exact"][0],
             row["exact"][1],
-            Estimated(row["simulated"], row["standard_error"]),
+            Estimated(row["simulated"][0], row["standard_error"]),
+            Estimated(row["simulated"][1], row["standard_error"]),
             "yes" if row["agrees"] else "NO",
         )
         for entry in options["options"]
@@ -424,10 +425,15 @@ def checks(options: Entry) -> Table:
         Column("Level"),
         Column("Exact, low", "number"),
         Column("Exact, high", "number"),
-        Column("Simulated", "number"),
+        Column("Simulated, low", "number"),
+        Column("Simulated, high", "number"),
         Column("Agree"),
     )
-    notes = ("Agree: within four standard errors of the simulation. Where not, the option is withheld.",)
+    notes = (
+        "Years above the worst year: no more than that part of the simulated years may lie above the upper "
+        "end of its bracket, no fewer above the lower end. Agree: within four standard errors of the "
+        "simulation; where not, the option is withheld.",
+    )
     return Table("Option checks", "Exact against simulated figures", columns, rows, notes)
 
 
