@@ -134,7 +134,7 @@ def _latest(table: LossTable, placed: BoolArray) -> tuple[BoolArray, BoolArray]:
         latest[rows[np.append(~same_claim, True)]] = True
         same_day = same_claim & (day[1:] == day[:-1])
         differ = table.fingerprint[rows[1:]] != table.fingerprint[rows[:-1]]
-        twice[rows[1:][same_day & differ]] = True
+        twice[np.maximum(rows[1:], rows[:-1])[same_day & differ]] = True
     return latest, twice
 
 
