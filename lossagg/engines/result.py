@@ -17,6 +17,7 @@ import numpy as np
 from lossagg.arrays import FloatArray, Floats, elementwise, require_probability
 from lossagg.cover import Cover, Schedule
 from lossagg.engines.book import Book, Subject
+from lossagg.engines.largest import LargestYearsKept
 from lossagg.errors import DoesNotExistError, EngineError, InputError
 from lossagg.families.base import CountLaw, SizeLaw
 
@@ -158,10 +159,15 @@ class BookResult:
     Attributes:
         losses: the annual amount of every subject the engine can compute.
         refused: why not, for every other subject, with the engine that can.
+        details: from the simulation, per line the part ceded, the part retained and the largest loss of
+            the year, and the largest of all lines; empty from other engines.
+        largest_years: from the simulation, the largest years by gross and by net.
     """
 
     losses: dict[Subject, AnnualLoss]
     refused: dict[Subject, str] = field(default_factory=dict)
+    details: dict[Subject, AnnualLoss] = field(default_factory=dict)
+    largest_years: dict[Subject, LargestYearsKept] = field(default_factory=dict)
 
 
 class Engine(Protocol):
