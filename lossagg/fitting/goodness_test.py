@@ -4,7 +4,7 @@ The published tables hold for a law given in advance. Here the parameters come f
 brings the law closer to them; drawing losses from the fitted law and fitting each draw again shows how close
 (parametric bootstrap: Stute, Gonzalez Manteiga & Presedo Quindimil 1993, Metrika 40; for truncated losses
 Chernobai, Rachev & Fabozzi 2005). The p-value is (1 + draws at least as far away) / (1 + draws). A law
-that fits is not drawn from longer than needed: drawing ends once each distance was reached by twenty draws
+that fits is not drawn from longer than needed: drawing ends once each distance was reached by ten draws
 (sequential p-values: Besag & Clifford 1991, Biometrika 78).
 """
 
@@ -22,7 +22,7 @@ from lossagg.fitting.results import SeverityFit
 from lossagg.fitting.sample import checked_losses
 
 _MOST, _FEWEST, _WORK = 199, 39, 60_000  # draws; and losses drawn in all before draws are saved
-_ENOUGH = 20  # draws further away than the losses: the p-value is settled
+_ENOUGH = 10  # draws further away than the losses: the p-value is settled
 _MOST_REFUSED = 0.2  # share of draws without a fit beyond which the p-values say nothing
 
 

@@ -21,6 +21,7 @@ _LONGEST_STEP = 2.0
 _STEPS = 120
 _HALVINGS = 40
 _FARTHEST = 60.0  # coordinates are logarithms or of order one: beyond, a parameter has run away
+_END_GAME = 1e-6  # length of a step in coordinates
 _STEP_TOLERANCE = 1e-6  # in coordinates
 _DISTANCE_TOLERANCE = 1e-5  # in standard errors
 _SMALLEST_CURVATURE = 1e-10  # of the information scaled to unit diagonal: below, it is rounding
@@ -82,7 +83,9 @@ def maximise(
         step = _newton_step(place)
         if not np.max(np.abs(step)) > 1e-13:
             break
-        following = _search(objective, place, step)
+        # So close to the end the likelihood itself no longer tells a better point: its slope does.
+        end_game = np.max(np.abs(step)) < _END_GAME
+        following = (_polish if end_game else _search)(objective, place, step)
         if following is None:
             break
         place = following
@@ -111,6 +114,12 @@ def _newton_step(place: _Place) -> FloatArray:
     step = vectors @ ((vectors.T @ (place.gradient / spread)) / sizes) / spread
     longest = float(np.max(np.abs(step)))
     return np.asarray(step * min(1.0, _LONGEST_STEP / longest)) if 0 < longest < np.inf else 0 * place.point
+
+
+def _polish(objective: Objective, place: _Place, step: FloatArray) -> _Place | None:
+    trial = _look(objective, place.point + step)
+    closer = trial.usable and np.max(np.abs(trial.gradient)) < np.max(np.abs(place.gradient))
+    return trial if closer else None
 
 
 def _search(objective: Objective, place: _Place, step: FloatArray) -> _Place | None:

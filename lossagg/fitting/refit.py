@@ -53,7 +53,7 @@ def _refitted(
     try:
         maximum = climb(objective, [solution.maximum.point], count, family, likelihood)
     except FitError:
-        maximum = climb(objective, likelihood.starts(sample), count, family, likelihood)
+        maximum = climb(objective, likelihood.starts(sample), count, family, likelihood, most=1)
     return law_at(likelihood, maximum.point, sample.scale)
 
 

@@ -15,13 +15,14 @@ import numpy as np
 from lossagg.arrays import BoolArray, FloatArray, Floats, require_probability
 from lossagg.errors import FitError, InputError
 from lossagg.fitting.goodness import distances
+from lossagg.fitting.goodness_test import goodness_test
 from lossagg.fitting.quadratic_form import darling_p_value
 from lossagg.fitting.results import SeverityFit
 from lossagg.fitting.sample import checked_losses
 from lossagg.fitting.severity import fit_severity
 
 FEWEST = 15  # uncensored excesses below which no shape is estimated (our choice, no source)
-_MOST_THRESHOLDS = 20
+MOST_THRESHOLDS = 20
 
 
 @dataclass(frozen=True)
@@ -36,8 +37,8 @@ class TailPoint:
         mean_excess: mean of loss less threshold, up to the largest loss where some are censored.
         hill: Hill's estimate of 1 / tail index.
         anderson_darling: distance of the excesses from the fitted law.
-        p_value: of that distance; None where losses above are censored, for which the law of the
-            distance is not known.
+        p_value: of that distance; by a bootstrap that refits where losses above are censored, for which
+            the law of the distance is not known, and None where none was asked for.
     """
 
     threshold: float
@@ -81,7 +82,7 @@ class Large:
         return self.amounts[start:], self.censored[start:]
 
 
-def candidate_thresholds(large: Large, most: int = _MOST_THRESHOLDS) -> FloatArray:
+def candidate_thresholds(large: Large, most: int = MOST_THRESHOLDS) -> FloatArray:
     """Thresholds to try, ascending: observed losses, evenly spaced in the logarithm of how many exceed.
 
     Raises:
@@ -109,12 +110,16 @@ def tail_points(
     censored: object = None,
     *,
     thresholds: Floats | None = None,
+    most: int = MOST_THRESHOLDS,
+    draws: int = 0,
 ) -> list[TailPoint]:
     """The tail above each of several thresholds: shape with interval, mean excess, Hill, distance.
 
     Args:
         losses, truncation, censored: as for `fit_severity`.
-        thresholds: amounts, ascending; by default about twenty observed ones that leave 15 losses or more.
+        thresholds: amounts, ascending; by default observed ones that leave 15 losses or more.
+        most: how many of them by default.
+        draws: bootstrap draws for the p-value where losses above a threshold are censored.
 
     Raises:
         InputError: losses that cannot be used, or a threshold below the largest reporting threshold.
@@ -122,7 +127,7 @@ def tail_points(
     """
     large = Large.of(losses, truncation, censored)
     if thresholds is None:
-        wanted = candidate_thresholds(large)
+        wanted = candidate_thresholds(large, most)
     else:
         wanted = np.atleast_1d(np.asarray(thresholds, dtype=np.float64))
         if (wanted < large.floor).any():
@@ -131,11 +136,11 @@ def tail_points(
                 value=float(wanted.min()),
                 remedy=f"Below {large.floor:g} the losses are not complete.",
             )
-    points = (tail_point(large, float(threshold)) for threshold in wanted)
+    points = (tail_point(large, float(threshold), draws) for threshold in wanted)
     return [point for point in points if point is not None]
 
 
-def tail_point(large: Large, threshold: float) -> TailPoint | None:
+def tail_point(large: Large, threshold: float, draws: int = 0) -> TailPoint | None:
     """The tail above one threshold; None where the excesses support no generalized Pareto law."""
     amounts, marks = large.above(threshold)
     try:
@@ -144,6 +149,11 @@ def tail_point(large: Large, threshold: float) -> TailPoint | None:
         return None
     shape, low, high = _shape(fit)
     distance = distances(amounts, np.full(amounts.shape, threshold), marks, fit.model).anderson_darling
+    p_value = None
+    if not marks.any():
+        p_value = darling_p_value(distance, shape)
+    elif draws:
+        p_value = goodness_test(amounts, fit, threshold, marks, draws=draws).anderson_darling
     return TailPoint(
         threshold=threshold,
         excesses=len(amounts),
@@ -154,7 +164,7 @@ def tail_point(large: Large, threshold: float) -> TailPoint | None:
         mean_excess=mean_excess(amounts, marks, threshold),
         hill=hill(amounts, marks, threshold),
         anderson_darling=distance,
-        p_value=None if marks.any() else darling_p_value(distance, shape),
+        p_value=p_value,
     )
 
 

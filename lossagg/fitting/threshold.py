@@ -21,7 +21,15 @@ import numpy as np
 
 from lossagg.arrays import FloatArray, Floats
 from lossagg.errors import FitError
-from lossagg.fitting.tail import FEWEST, Large, TailPoint, candidate_thresholds, hill, tail_points
+from lossagg.fitting.tail import (
+    FEWEST,
+    MOST_THRESHOLDS,
+    Large,
+    TailPoint,
+    candidate_thresholds,
+    hill,
+    tail_points,
+)
 
 LEVEL = 0.05
 _MOST_DISTANCES = 200
@@ -69,7 +77,7 @@ def sequential_rule(points: Sequence[TailPoint], level: float = LEVEL) -> Thresh
     known = [p for p in p_values if p is not None]
     if len(known) < len(points) or not points:
         return ThresholdChoice(
-            name, None, 0, "losses stopped at policy limits lie above the thresholds: no p-values"
+            name, None, 0, "no p-values: losses stopped at policy limits lie above the thresholds"
         )
     rejected = forward_stop(known, level)
     if rejected == len(points):
@@ -125,18 +133,25 @@ def _power_law_gap(large: Large, threshold: float) -> float:
 
 
 def threshold_choices(
-    losses: Floats, truncation: Floats | None = None, censored: object = None
+    losses: Floats,
+    truncation: Floats | None = None,
+    censored: object = None,
+    *,
+    most: int = MOST_THRESHOLDS,
+    draws: int = 39,
 ) -> tuple[list[TailPoint], list[ThresholdChoice]]:
     """The tail at each threshold, and what the two rules choose; both empty handed where losses are few.
 
     Args:
         losses, truncation, censored: as for `fit_severity`.
+        most: how many thresholds are tried.
+        draws: bootstrap draws for p-values where losses above a threshold are censored.
 
     Raises:
         InputError: losses that cannot be used.
     """
     try:
-        points = tail_points(losses, truncation, censored)
+        points = tail_points(losses, truncation, censored, most=most, draws=draws)
     except FitError as refusal:
         few = f"{refusal.what}; {2 * FEWEST} uncensored ones are needed"
         return [], [

@@ -2,18 +2,27 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+from itertools import zip_longest
 from typing import Any
 
 import numpy as np
 
 from lossagg.fitting import Candidates, Fit, count_points, quantile_points, survival_points
 from lossagg.portfolio.assessment import Data, number
+from lossagg.portfolio.fit_tests import DRAWS, THRESHOLDS, frequency_tests, severity_tests, tail_evidence
 from lossagg.portfolio.line import LineModel
 from lossagg.records import PreparedLosses
 
 
-def line_evidence(model: LineModel) -> Data:
-    """The line's entry in the assessment, less its annual figures."""
+def line_evidence(model: LineModel, draws: int = DRAWS, thresholds: int = THRESHOLDS) -> Data:
+    """The line's entry in the assessment, less its annual figures.
+
+    Args:
+        model: the line.
+        draws: most bootstrap draws behind a p-value.
+        thresholds: how many tail thresholds are looked at.
+    """
     prepared = model.prepared
     return {
         "name": model.name,
@@ -29,9 +38,12 @@ def line_evidence(model: LineModel) -> Data:
             "last_year": float(prepared.years.exposure[-1]),
         },
         "development": prepared.developed.to_dict() if prepared and prepared.developed else None,
-        "frequency": _frequency(model),
-        "severity": _severity(model),
+        "frequency": _frequency(model, draws),
+        "severity": _severity(model, draws),
         "fit": None if prepared is None else _fit_points(model, prepared),
+        "tail": None
+        if prepared is None or model.severities is None
+        else tail_evidence(prepared, model.severities, thresholds, draws),
     }
 
 
@@ -62,7 +74,7 @@ def _by_year(prepared: PreparedLosses) -> list[Data]:
     return [{column: getattr(years, column)[k].item() for column in columns} for k in range(len(years))]
 
 
-def _frequency(model: LineModel) -> Data:
+def _frequency(model: LineModel, draws: int) -> Data:
     law, tried = model.frequency, model.frequencies
     entry: Data = {
         "family": law.family,
@@ -72,16 +84,24 @@ def _frequency(model: LineModel) -> Data:
         "mean": law.mean(),
         "variance": law.variance(),
         "candidates": [],
+        "choice": None,
+        "tests": None,
     }
-    if tried is not None:
+    if tried is not None and model.prepared is not None:
         fit = tried.chosen
         at_forecast = {**fit.standard_errors}
         at_forecast["mean"] = at_forecast["mean"] * model.forecast_exposure
-        entry |= {"standard_errors": at_forecast, "candidates": _candidates(tried), "notes": list(fit.notes)}
+        entry |= {
+            "standard_errors": at_forecast,
+            "candidates": _candidates(tried),
+            "choice": _choice(tried),
+            "tests": frequency_tests(model, model.prepared, draws),
+            "notes": list(fit.notes),
+        }
     return entry
 
 
-def _severity(model: LineModel) -> Data:
+def _severity(model: LineModel, draws: int) -> Data:
     law, tried, prepared = model.severity, model.severities, model.prepared
     entry: Data = {
         "family": law.family,
@@ -95,6 +115,7 @@ def _severity(model: LineModel) -> Data:
         "observations": None,
         "censored": None,
         "candidates": [],
+        "choice": None,
     }
     if tried is not None and prepared is not None:
         fit = tried.chosen
@@ -103,16 +124,29 @@ def _severity(model: LineModel) -> Data:
             "threshold": float(prepared.threshold.min()) if prepared.threshold.size else None,
             "observations": fit.observations,
             "censored": fit.censored,
-            "candidates": _candidates(tried),
+            "candidates": _candidates(tried, severity_tests(model, prepared, tried, draws)),
+            "choice": _choice(tried),
             "notes": list(fit.notes),
         }
     return entry
 
 
-def _candidates(tried: Candidates[Any]) -> list[Data]:
+def _choice(tried: Candidates[Any]) -> Data:
+    """Which candidate ranks first, which is used, and why where it is another."""
+    return {
+        "first": tried.fits[0].family,
+        "chosen": tried.chosen.family,
+        "reason": tried.reason or None,
+    }
+
+
+def _candidates(tried: Candidates[Any], tests: Sequence[Data] = ()) -> list[Data]:
     """Every family tried, best first, refused ones last with their reason."""
-    fitted = [_candidate(fit, chosen=fit is tried.chosen) for fit in tried.fits]
-    blank = dict.fromkeys(("parameters", "standard_errors", "log_likelihood", "aic", "bic"))
+    fitted = [
+        {**_candidate(fit, chosen=fit is tried.chosen), "goodness": test}
+        for fit, test in zip_longest(tried.fits, tests)
+    ]
+    blank = dict.fromkeys(("parameters", "standard_errors", "log_likelihood", "aic", "bic", "goodness"))
     return fitted + [
         {"family": family, **blank, "chosen": False, "refused": reason}
         for family, reason in tried.refused.items()

@@ -179,8 +179,11 @@ def test_rules_say_why_they_cannot_choose():
     assert all("too few losses" in choice.reason and choice.threshold is None for choice in choices)
     losses = power_losses(200, 1.2, 2)
     stopped = losses > 20_000
-    points, (sequential, distance) = threshold_choices(np.minimum(losses, 20_000), None, stopped)
+    points, (sequential, distance) = threshold_choices(np.minimum(losses, 20_000), None, stopped, draws=0)
     assert "policy limits" in sequential.reason
+    points, (drawn, _) = threshold_choices(np.minimum(losses, 20_000), None, stopped, most=4, draws=19)
+    assert all(0 < point.p_value <= 1 for point in points)
+    assert drawn.threshold is not None
     assert distance.threshold is not None
     bad = [TailPoint(1.0, 50, 0.1, 0.0, 0.2, 1.0, 1.0, 1.0, 9.0, 1e-9)] * 3
     assert "all 3 thresholds are rejected" in sequential_rule(bad).reason
