@@ -92,6 +92,13 @@ class Schedule:
     def __sub__(self, other: Schedule) -> Schedule:
         return self._combined(other, -1.0)
 
+    def is_near(self, other: Schedule) -> bool:
+        """Whether two schedules are the same but for round-off."""
+        return len(self.starts) == len(other.starts) and all(
+            np.allclose(mine, theirs, rtol=1e-12, atol=1e-12)
+            for mine, theirs in zip(self.arrays(), other.arrays(), strict=True)
+        )
+
     def _combined(self, other: Schedule, sign: float) -> Schedule:
         starts = tuple(sorted({*self.starts, *other.starts}))
         pairs = [(self._just_above(start), other._just_above(start)) for start in starts]

@@ -77,7 +77,8 @@ class Book:
         Raises:
             EngineError: two of these lines depend on each other, or a factor leaves a line no closed law.
         """
-        own = tuple(line for line in self.lines if line.name in set(names))
+        wanted = set(names)
+        own = tuple(line for line in self.lines if line.name in wanted)
         dependence = tied(self.dependences, [line.name for line in own])
         if dependence is not None:
             both = [line.name for line in own if line.name in dependence.lines]
@@ -149,7 +150,7 @@ class Book:
         seen = Schedule.identity()
         for before in self.annual_covers_before(cover):
             earlier = self.plan(Subject("cover", before.name))
-            if earlier.events != events:
+            if not _same(earlier.events, events):
                 raise _simulated_only(
                     subject, f"it comes after {before.name!r}, whose annual terms act on other amounts"
                 )
@@ -162,7 +163,7 @@ class Book:
         for cover in self.covers:
             if cover.terms.has_annual_terms:
                 paid = self.plan(Subject("cover", cover.name))
-                if paid.events != events:
+                if not _same(paid.events, events):
                     raise _simulated_only(
                         NET, f"cover {cover.name!r} has annual terms on a part of the losses"
                     )
@@ -199,6 +200,11 @@ def _not_independent(why: str) -> EngineError:
     return EngineError(
         f"this engine takes lines as independent, and {why}", remedy="The simulation computes it."
     )
+
+
+def _same(first: dict[str, Schedule], second: dict[str, Schedule]) -> bool:
+    """Whether two sums add up the same event amounts."""
+    return first.keys() == second.keys() and all(first[name].is_near(second[name]) for name in first)
 
 
 def _simulated_only(subject: Subject, why: str) -> EngineError:
