@@ -83,6 +83,21 @@ def print_batch(outcome: BatchOutcome) -> None:
     _print_lines([*plain_table(table), "", *lines])
 
 
+def print_tables(tables: Sequence[Table]) -> None:
+    """Tables one below the other with their notes, on stdout."""
+    if sys.stdout.isatty():
+        from rich.console import Console
+
+        console = Console()
+        for table in tables:
+            console.print(_rich_table(table))
+            for note in table.notes:
+                console.print(clean(note), markup=False, highlight=False)
+        return
+    for table in tables:
+        _print_lines([*plain_table(table), *(clean(note) for note in table.notes), ""])
+
+
 def _print_lines(lines: Sequence[str]) -> None:
     for line in lines:
         typer.echo(line)

@@ -18,9 +18,9 @@ from lossagg.cover.checks import stated_terms
 from lossagg.cover.event import surplus_share, through
 from lossagg.cover.order import WORDS
 from lossagg.cover.schedule import Schedule
+from lossagg.engines.blocks import PreparedLine, block_events, line_sums, prepare_line, run_block
 from lossagg.engines.book import Book, PlacedCover, Subject
 from lossagg.engines.joint import JointBlock, joint_block
-from lossagg.engines.simulation import PreparedLine, block_events, line_sums, prepare_line
 from lossagg.engines.streams import BLOCK_YEARS
 from lossagg.engines.yearly import LOSS, annual_amounts
 from lossagg.errors import InputError
@@ -137,6 +137,18 @@ class Replay:
             factors={name: float(values[place]) for name, values in joint.factors.items()},
         )
 
+    def first_years(self, subject: Subject, number: int) -> FloatArray:
+        """The annual amounts of a subject in the first years of the run, shape (at most `number`,)."""
+        number = min(number, self.years)
+        parts = []
+        for block in range(-(-number // BLOCK_YEARS)):
+            years = min(BLOCK_YEARS, self.years - block * BLOCK_YEARS)
+            amounts = run_block(
+                self.book, self.book.subjects, self._lines, seed=self.seed, block=block, years=years
+            )
+            parts.append(amounts[subject])
+        return np.concatenate(parts)[:number]
+
     @cached_property
     def _lines(self) -> tuple[PreparedLine, ...]:
         return tuple(prepare_line(line, self.book, self.book.subjects) for line in self.book.lines)
@@ -167,21 +179,17 @@ class Replay:
         return self._found[block, line.name]
 
 
-def nearest_years(amounts: FloatArray, value: float, number: int) -> list[int]:
-    """Numbers of the years whose amount is nearest to a value, by amount, the lower ones first.
+def nearest_years(years: IntArray, amounts: FloatArray, value: float, number: int) -> list[int]:
+    """The years whose amount is nearest to a value, by amount, the lower ones first.
 
     Args:
-        amounts: annual amounts in the order of the years, shape (years,).
+        years: numbers of years, shape (n,).
+        amounts: their annual amounts, shape (n,).
         value: the amount looked for.
-        number: how many years.
+        number: how many years; of equally near ones those with the lowest numbers.
     """
-    distance = np.abs(amounts - value)
-    number = min(number, amounts.size)
-    nearest = np.argpartition(distance, number - 1)[:number]
-    # Among equally near years the first; the partition above is free to choose.
-    nearest = np.flatnonzero(distance <= distance[nearest].max())
-    nearest = nearest[np.lexsort((nearest, distance[nearest]))][:number]
-    return [int(k) + 1 for k in nearest[np.lexsort((nearest, amounts[nearest]))]]
+    nearest = np.lexsort((years, np.abs(amounts - value)))[:number]
+    return [int(years[k]) for k in nearest[np.lexsort((years[nearest], amounts[nearest]))]]
 
 
 def _event(book: Book, line: str, number: int, size: float, shock: bool) -> Event:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 
 from lossagg.engines import Fourier, Panjer, Simulation
 from lossagg.engines.book import GROSS, NET, Book, Subject
@@ -18,8 +18,10 @@ from lossagg.portfolio.assessment import (
     number,
     subject_of,
 )
+from lossagg.portfolio.dependences import independent_data
 from lossagg.portfolio.evidence import line_evidence
 from lossagg.portfolio.line import LineModel
+from lossagg.portfolio.years import years_near
 
 Progress = Callable[[str, float], None]
 """Called with what is being done and the fraction of the whole that is done."""
@@ -53,8 +55,13 @@ def figures(
     levels: Sequence[float],
     capital_level: float,
     broken: str = "",
+    *,
+    years: int,
+    seed: int,
+    apart: Mapping[Subject, AnnualLoss] | None = None,
 ) -> Data:
-    """Lines, gross, net, covers, crosscheck and headline of the assessment."""
+    """Lines, gross, net, covers, crosscheck and headline of the assessment; the years nearest to it, and
+    gross and net of independent lines (`apart`) where the book has dependences."""
     asked = tuple(sorted({*levels, capital_level}))
     check = crosscheck(book, results, asked)
     withheld = broken or ("" if check.agrees else WITHHELD)
@@ -78,6 +85,21 @@ def figures(
             for cover in book.covers
         ],
         "crosscheck": crosscheck_of(check),
+        "years_near_capital": None
+        if withheld
+        else years_near(
+            book,
+            headline,
+            results["simulation"].losses[headline],
+            best[headline][0].value_at_risk(capital_level),
+            seed=seed,
+            years=years,
+        ),
+        "independent": None
+        if apart is None
+        else independent_data(
+            apart, {subject: loss for subject, (loss, _) in best.items()}, book, levels, withheld=withheld
+        ),
     }
 
 

@@ -16,7 +16,7 @@ import numpy as np
 from lossagg.engines.book import Book, PlacedCover, Subject
 from lossagg.engines.crosscheck import TOLERANCE, Comparison, Crosscheck
 from lossagg.engines.result import AnnualLoss
-from lossagg.errors import DoesNotExistError, InputError
+from lossagg.errors import DoesNotExistError, EngineError, InputError
 from lossagg.portfolio.cover_data import reinstatement_of, terms_of
 
 FORMAT = "lossagg.assessment/1"
@@ -148,7 +148,7 @@ def cover_of(
 def _exhaustion(book: Book, cover: PlacedCover, loss: AnnualLoss) -> float | None:
     """Probability that the year's limit is used up; without one, that some event uses up its limit.
 
-    None where neither is limited.
+    None where neither is limited, or where how many events there are depends on what lines share.
     """
     most = cover.terms.most_per_year
     if np.isfinite(most):
@@ -156,7 +156,11 @@ def _exhaustion(book: Book, cover: PlacedCover, loss: AnnualLoss) -> float | Non
     if not np.isfinite(cover.terms.limit):
         return None
     none_exhausted = 1.0
-    for line in book.lines:
+    try:
+        lines = book.independent_lines(line.name for line in book.lines if book.covers_line(cover, line.name))
+    except EngineError:
+        return None
+    for line in lines:
         paid = book.event_payment(cover, line.name)
         if paid is not None and not np.isfinite(paid.most):
             return None

@@ -55,15 +55,18 @@ AMOUNTS_UNDEVELOPED = (
 )
 
 
-def cautions(lines: Sequence[LineModel], levels: Sequence[float]) -> list[Caution]:
+def cautions(
+    lines: Sequence[LineModel], levels: Sequence[float], *, independent: bool = True
+) -> list[Caution]:
     """The standing cautions, then those the lines trigger.
 
     Args:
         lines: the lines of the portfolio, modelled.
         levels: every level at which a figure is printed.
+        independent: whether no dependence is stated between lines.
     """
     found = [_caution(code, message) for code, message in STANDING.items()]
-    if len(lines) > 1:
+    if len(lines) > 1 and independent:
         found.append(_caution("independence", INDEPENDENCE))
     for line in lines:
         found += [

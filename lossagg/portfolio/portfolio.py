@@ -9,8 +9,15 @@ from lossagg.engines.book import Book
 from lossagg.portfolio.assess import Progress, compute, figures, silent
 from lossagg.portfolio.assessment import FORMAT, Assessment, Data, Writer
 from lossagg.portfolio.cautions import cautions
+from lossagg.portfolio.dependences import (
+    assumed,
+    dependence_cautions,
+    dependence_data,
+    independent_losses,
+)
 from lossagg.portfolio.files import PORTFOLIO_FILE, LineRecords, portfolio_file, read_records
 from lossagg.portfolio.line import LineModel, build_line
+from lossagg.portfolio.model_data import book_data
 from lossagg.portfolio.places import placed_covers, tower_cautions
 from lossagg.portfolio.reconciling import reconcile_portfolio
 from lossagg.portfolio.schema import PortfolioFile, read_portfolio_file
@@ -101,8 +108,17 @@ class Portfolio:
         progress("preparing and fitting", 0.0)
         models = self.models()
         section = self.file.portfolio
-        book = Book(lines=tuple(model.line for model in models), covers=placed_covers(self.file))
+        shared = assumed(self.file.dependence, [line.name for line in self.file.line])
+        book = Book(
+            lines=tuple(model.line for model in models),
+            covers=placed_covers(self.file),
+            dependences=tuple(own.dependence for own in shared),
+        )
         results = compute(book, years=years, seed=seed, workers=workers, progress=progress)
+        apart = None
+        if shared:
+            progress("lines taken as independent", 0.95)
+            apart = independent_losses(book, years=years, seed=seed, workers=workers)
         findings = [finding for model in models if model.prepared for finding in model.prepared.findings]
         controls = reconcile_portfolio(self.file, self.records)
         findings += controls.findings
@@ -110,11 +126,24 @@ class Portfolio:
             "format": FORMAT,
             "portfolio": self._description(),
             "run": {"version": __version__, "seed": seed, "years": years, "inputs": list(self.inputs)},
-            **figures(book, models, results, section.levels, section.capital_level, broken=controls.withheld),
+            **figures(
+                book,
+                models,
+                results,
+                section.levels,
+                section.capital_level,
+                broken=controls.withheld,
+                years=years,
+                seed=seed,
+                apart=apart,
+            ),
+            "dependence": dependence_data(shared),
+            "model": book_data(book),
             "reconciliation": controls.data,
             "findings": [finding.to_dict() for finding in dict.fromkeys(findings)],
             "cautions": [
-                *cautions(models, sorted({*section.levels, section.capital_level})),
+                *cautions(models, sorted({*section.levels, section.capital_level}), independent=not shared),
+                *dependence_cautions(shared),
                 *tower_cautions(self.file.tower),
             ],
         }
@@ -148,6 +177,7 @@ def read_portfolio(path: str | Path, *, writer: Writer | None = None) -> Portfol
     folder, file = portfolio_file(Path(path))
     content = read_portfolio_file(file)
     placed_covers(content)
+    assumed(content.dependence, [line.name for line in content.line])
     records, inputs = read_records(folder, content)
     return Portfolio(folder, content, records, inputs, writer)
 

@@ -17,6 +17,7 @@ from pydantic.fields import FieldInfo
 
 from lossagg.errors import InputError, place
 from lossagg.portfolio.control_sections import ControlKeys
+from lossagg.portfolio.dependence_sections import DependenceSection
 from lossagg.portfolio.preparing import PreparingKeys
 from lossagg.portfolio.pricing_sections import OptionGrid, OptionSection, PricingSection
 from lossagg.portfolio.sections import Amount, Name, Positive, Probability, Section, Terms, hyphenated
@@ -185,6 +186,7 @@ class PortfolioFile(Section):
     line: Annotated[tuple[LineSection, ...], Field(min_length=1, strict=False)]
     cover: Annotated[tuple[CoverSection, ...], Field(strict=False)] = ()
     tower: Annotated[tuple[TowerSection, ...], Field(strict=False)] = ()
+    dependence: Annotated[tuple[DependenceSection, ...], Field(strict=False)] = ()
     pricing: PricingSection = PricingSection()
     option: Annotated[tuple[OptionSection, ...], Field(strict=False)] = ()
     option_grid: OptionGrid | None = None

@@ -78,6 +78,10 @@ def render_report(assessment: Assessment) -> str:
         "supported": years_observed(assessment),
         "lines": tables.lines.overview(assessment),
         "line_levels": tables.lines.levels(assessment),
+        "dependence": _filled(
+            tables.dependence.assumptions(assessment), tables.dependence.compared(assessment)
+        ),
+        "years": _filled(tables.years.near_capital(assessment), tables.years.events_near_capital(assessment)),
         "sections": [_section(line, index, assessment) for index, line in enumerate(assessment["lines"], 1)],
         "cover_tables": _cover_tables(assessment),
         "reconciliation": tables.records.reconciliation(assessment),
@@ -97,6 +101,11 @@ def render_index(facts: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) ->
         rows: portfolio, status, message, headline, gross, net, verdict, cautions and link of each.
     """
     return environment().get_template("index.html").render(facts=facts, rows=rows)
+
+
+def _filled(*built: Table) -> list[Table]:
+    """The tables that have rows."""
+    return [table for table in built if table.rows]
 
 
 def _cover_tables(assessment: Assessment) -> list[Table]:

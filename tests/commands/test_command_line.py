@@ -72,6 +72,7 @@ def test_help_lists_the_commands_that_work_and_no_other() -> None:
         "assess",
         "batch",
         "price",
+        "replay",
     ]
     assert "not an actuarial opinion" in result.output
 

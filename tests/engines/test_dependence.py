@@ -194,6 +194,7 @@ def test_exact_engines_get_independent_lines_or_a_reason():
     book = Book(lines=LINES, dependences=(factor,))
     assert book.independent_lines(["a", "c"])[0].frequency == NegativeBinomial(mean=3.0, dispersion=0.2)
     assert book.independent_lines(["c"]) == (LINES[2],)
+    assert len(book.independent_lines(name for name in "cb")) == 2
     with pytest.raises(EngineError, match=r"a and b share 'climate'.*The simulation computes it"):
         book.independent_lines(["c", "b", "a"])
     assert [own.frequency.dispersion for own in book.independent().independent_lines("ab")] == [0.2, 0.2]

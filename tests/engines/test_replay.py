@@ -187,9 +187,11 @@ def test_factors_and_shocks_are_told(run):
 
 def test_the_nearest_years_and_their_order():
     amounts = np.array([5.0, 1.0, 9.0, 4.0, 6.0, 5.5, 4.0, 4.0])
-    assert nearest_years(amounts, 5.1, 3) == [1, 6, 5]
-    assert nearest_years(amounts, 4.0, 2) == [4, 7]
-    assert nearest_years(amounts, 0.0, 20) == [2, 4, 7, 8, 1, 6, 5, 3]
+    years = np.arange(1, 9)
+    assert nearest_years(years, amounts, 5.1, 3) == [1, 6, 5]
+    assert nearest_years(years, amounts, 4.0, 2) == [4, 7]
+    assert nearest_years(years[::-1], amounts[::-1], 4.0, 2) == [4, 7]
+    assert nearest_years(years, amounts, 0.0, 20) == [2, 4, 7, 8, 1, 6, 5, 3]
 
 
 @pytest.mark.parametrize("year", [0, 11, True, 2.0])

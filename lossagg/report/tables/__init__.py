@@ -4,9 +4,20 @@ from __future__ import annotations
 
 from lossagg.report.cells import Table
 from lossagg.report.reading import Assessment
-from lossagg.report.tables import controls, covers, evidence, fits, lines, records, totals
+from lossagg.report.tables import controls, covers, dependence, evidence, fits, lines, records, totals, years
 
-__all__ = ["controls", "covers", "every_table", "evidence", "fits", "lines", "records", "totals"]
+__all__ = [
+    "controls",
+    "covers",
+    "dependence",
+    "every_table",
+    "evidence",
+    "fits",
+    "lines",
+    "records",
+    "totals",
+    "years",
+]
 
 
 def every_table(assessment: Assessment) -> tuple[Table, ...]:
@@ -19,9 +30,13 @@ def every_table(assessment: Assessment) -> tuple[Table, ...]:
         totals.curves(assessment),
         lines.overview(assessment),
         lines.levels(assessment),
+        *_if_any(dependence.assumptions(assessment)),
+        *_if_any(dependence.compared(assessment)),
         covers.terms(assessment),
         covers.results(assessment),
         covers.levels(assessment),
+        *_if_any(years.near_capital(assessment)),
+        *_if_any(years.events_near_capital(assessment)),
         evidence.crosscheck(assessment),
         records.reconciliation(assessment),
         controls.control_totals(assessment),
