@@ -17,6 +17,7 @@ from scipy import special
 from lossagg.arrays import FloatArray, require_positive, require_probability
 from lossagg.families.base import ComplexArray, CountLaw
 from lossagg.families.poisson import Poisson
+from lossagg.families.polar import exponential
 from lossagg.families.saddle import binomial_weight
 
 # Below this dispersion per squared count the law and the Poisson agree to the last digit.
@@ -107,7 +108,7 @@ class NegativeBinomial(CountLaw):
         return np.asarray(special.betaincc(r, n + 1.0, 1 / (1 + beta)))
 
     def _pgf(self, z: ComplexArray) -> ComplexArray:
-        return np.asarray(np.exp(self._log_pgf(z)))
+        return np.asarray(exponential(self._log_pgf(z)))
 
     def _log_pgf(self, z: ComplexArray) -> ComplexArray:
         if self.dispersion == 0:

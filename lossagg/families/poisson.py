@@ -10,6 +10,7 @@ from scipy import special
 
 from lossagg.arrays import FloatArray, require_positive, require_probability
 from lossagg.families.base import ComplexArray, CountLaw
+from lossagg.families.polar import exponential
 from lossagg.families.saddle import lower_gamma, poisson_probability
 
 
@@ -63,7 +64,7 @@ class Poisson(CountLaw):
         return lower_gamma(n + 1.0, self._mean)
 
     def _pgf(self, z: ComplexArray) -> ComplexArray:
-        return np.asarray(np.exp(self._log_pgf(z)))
+        return np.asarray(exponential(self._log_pgf(z)))
 
     def _log_pgf(self, z: ComplexArray) -> ComplexArray:
         return self._mean * (z - 1.0)

@@ -169,10 +169,7 @@ class _Room:
                         ceded @ ceded,
                         np.count_nonzero(retained == 0.0),
                         beats,
-                        *(
-                            np.count_nonzero(retained > amount)
-                            for amount in self.thresholds.get(option.name, ())
-                        ),
+                        *(np.count_nonzero(retained > amount) for amount in counted),
                     ]
                 )
             )
