@@ -45,6 +45,8 @@ def assess_folder(
     years: int | None = None,
     seed: int = 1,
     workers: int | None = None,
+    until: float | None = None,
+    annual: Path | None = None,
     command: tuple[str, ...] = (),
     progress: Progress = silent,
 ) -> Outcome:
@@ -58,6 +60,9 @@ def assess_folder(
         years: simulated years; the default of the portfolio when `None`.
         seed: seed of the simulation.
         workers: most processors used; all when `None`. The figures do not depend on it.
+        until: simulate until the interval of the capital figure reaches no further than this part of it
+            to either side.
+        annual: a Parquet file to receive every simulated year.
         command: the command line, for the manifest.
         progress: called with the stage and the fraction done, 0 to 1.
 
@@ -77,7 +82,9 @@ def assess_folder(
         warnings.simplefilter("always", LossaggWarning)
         progress("reading", 0.0)
         document = (
-            read_portfolio(portfolio).assess(seed=seed, workers=workers, progress=progress, **asked).to_dict()
+            read_portfolio(portfolio)
+            .assess(seed=seed, workers=workers, until=until, annual=annual, progress=progress, **asked)
+            .to_dict()
         )
     texts = tuple(f"{entry.category.__name__}: {entry.message}" for entry in caught)
     progress("writing", 0.9)

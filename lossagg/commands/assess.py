@@ -9,7 +9,7 @@ from typing import Annotated
 import typer
 
 from lossagg.commands.boundary import guarded
-from lossagg.commands.options import Out, Seed, Workers, Years
+from lossagg.commands.options import Annual, Out, Seed, Until, Workers, Years, part_of
 
 
 @guarded
@@ -19,6 +19,8 @@ def assess(
     years: Years = None,
     seed: Seed = 1,
     workers: Workers = None,
+    until: Until = None,
+    annual: Annual = None,
 ) -> int:
     """Assess one portfolio: capital, cover costs and a report.
 
@@ -26,16 +28,25 @@ def assess(
     that must agree, and writes assessment.json, report.html, tables.xlsx and manifest.json into DIR.
     """
     from lossagg.batch import assess_folder
-    from lossagg.commands.terminal import print_summary, progress_bar, warn
+    from lossagg.commands.terminal import notes_shown, print_summary, progress_bar, warn
+    from lossagg.errors import InputError
     from lossagg.report.summary import summarise
 
-    with progress_bar() as progress:
+    if until is not None and years is not None:
+        raise InputError(
+            "--until decides how many years are simulated",
+            value=f"--years {years}",
+            remedy="Give one of the two.",
+        )
+    with notes_shown(always=until is not None), progress_bar() as progress:
         outcome = assess_folder(
             portfolio,
             out,
             years=years,
             seed=seed,
             workers=workers,
+            until=None if until is None else part_of(until),
+            annual=annual,
             command=("lossagg", *sys.argv[1:]),
             progress=progress,
         )

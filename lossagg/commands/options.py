@@ -34,3 +34,42 @@ Workers = Annotated[
         show_default=False,
     ),
 ]
+Until = Annotated[
+    str | None,
+    typer.Option(
+        "--until",
+        metavar="PART",
+        help="Simulate until the 95 % interval of the capital figure reaches no further than this to either "
+        "side, such as 0.5%. A pilot says first how long it will take. Not together with --years.",
+        show_default=False,
+    ),
+]
+Annual = Annotated[
+    Path | None,
+    typer.Option(
+        "--annual",
+        metavar="FILE",
+        help="Parquet file for every simulated year, by line and cover.",
+        show_default=False,
+    ),
+]
+
+
+def part_of(text: str) -> float:
+    """A part given as "0.5%" or as "0.005".
+
+    Raises:
+        InputError: anything else, or a part that is not between 0 and 1.
+    """
+    from lossagg.errors import InputError
+
+    number = text.strip().removesuffix("%")
+    try:
+        part = float(number) / (100.0 if text.strip().endswith("%") else 1.0)
+    except ValueError:
+        part = float("nan")
+    if not 0.0 < part < 1.0:
+        raise InputError(
+            "--until must be a part between 0 and 100%", value=text, remedy="Write --until 0.5%, for example."
+        )
+    return part

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import logging
 import sys
 import time
 from collections.abc import Callable, Iterator, Sequence
@@ -47,6 +48,35 @@ def progress_bar() -> Iterator[Callable[[str, float], None]]:
         yield report
     finally:
         bar.stop()
+
+
+@contextmanager
+def notes_shown(*, always: bool) -> Iterator[None]:
+    """Show on stderr what the engines note as they run: that they compile, what a pilot expects.
+
+    Args:
+        always: whether also where stderr is no terminal.
+    """
+    log, shown = logging.getLogger("lossagg"), _Notes()
+    if not (always or sys.stderr.isatty()):
+        yield
+        return
+    before = log.level
+    log.addHandler(shown)
+    log.setLevel(logging.INFO)
+    try:
+        yield
+    finally:
+        log.removeHandler(shown)
+        log.setLevel(before)
+
+
+class _Notes(logging.Handler):
+    """Prints notes as plain lines on stderr."""
+
+    def emit(self, record: logging.LogRecord) -> None:
+        """Print one."""
+        typer.echo(f"note: {clean(record.getMessage())}", err=True)
 
 
 def warn(texts: Sequence[str]) -> None:

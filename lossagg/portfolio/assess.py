@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
 
+from lossagg.arrays import FloatArray
 from lossagg.engines import Fourier, Panjer, Simulation
 from lossagg.engines.book import GROSS, NET, Book, Subject
 from lossagg.engines.crosscheck import crosscheck
@@ -18,6 +19,7 @@ from lossagg.portfolio.assessment import (
     number,
     subject_of,
 )
+from lossagg.portfolio.by_line import by_line_of
 from lossagg.portfolio.dependences import independent_data
 from lossagg.portfolio.evidence import line_evidence
 from lossagg.portfolio.line import LineModel
@@ -25,6 +27,8 @@ from lossagg.portfolio.years import years_near
 
 Progress = Callable[[str, float], None]
 """Called with what is being done and the fraction of the whole that is done."""
+EveryYear = Callable[[int, Mapping[Subject, FloatArray]], None]
+"""Called with the number of the first of some simulated years and the amounts of every subject in them."""
 
 
 def silent(stage: str, done: float) -> None:
@@ -32,13 +36,22 @@ def silent(stage: str, done: float) -> None:
 
 
 def compute(
-    book: Book, *, years: int, seed: int, workers: int | None, progress: Progress = silent
+    book: Book,
+    simulation: Simulation,
+    *,
+    progress: Progress = silent,
+    every_year: EveryYear | None = None,
 ) -> dict[str, BookResult]:
-    """What each engine makes of the book, by engine name."""
+    """What each engine makes of the book, by engine name.
+
+    Args:
+        book: lines and covers.
+        simulation: the simulation engine with its settings.
+        progress: called with the stage and the fraction done.
+        every_year: receives the simulated years, see `Simulation.book`.
+    """
     results = {
-        "simulation": Simulation(years=years, seed=seed, workers=workers).book(
-            book, lambda done: progress("simulation", 0.1 + 0.4 * done)
-        )
+        "simulation": simulation.book(book, lambda done: progress("simulation", 0.1 + 0.4 * done), every_year)
     }
     progress("Fourier transforms", 0.5)
     results["fourier"] = Fourier().book(book)
@@ -78,6 +91,7 @@ def figures(
         "lines": [
             _line(model, best[Subject("line", model.name)][0], levels, withheld=withheld) for model in lines
         ],
+        "by_line": by_line_of(results["simulation"], levels, withheld=withheld),
         "gross": whole(GROSS),
         "net": whole(NET),
         "covers": [

@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+from contextlib import nullcontext
 from dataclasses import dataclass
 from pathlib import Path
 
-from lossagg.engines.book import Book
+from lossagg.engines import Simulation
+from lossagg.engines.book import GROSS, Book
+from lossagg.portfolio.annual_file import AnnualFile
 from lossagg.portfolio.assess import Progress, compute, figures, silent
 from lossagg.portfolio.assessment import FORMAT, Assessment, Data, Writer
 from lossagg.portfolio.cautions import cautions
@@ -86,6 +89,8 @@ class Portfolio:
         years: int = 1_000_000,
         seed: int = 1,
         workers: int | None = None,
+        until: float | None = None,
+        annual: Path | None = None,
         progress: Progress = silent,
     ) -> Assessment:
         """Compute annual loss, capital and cover costs by three engines that must agree.
@@ -94,6 +99,9 @@ class Portfolio:
             years: simulated years.
             seed: seed of the simulation, 0 to 2**64 - 1; the same seed gives the same bytes.
             workers: threads; all processors by default. The results do not depend on it.
+            until: simulate until the interval of the capital figure reaches no further than this part of
+                it to either side, 0.005 for 0.5 %, however many years that takes.
+            annual: a Parquet file to receive every simulated year, by line and cover.
             progress: called with the stage and the fraction done.
 
         Returns:
@@ -114,7 +122,13 @@ class Portfolio:
             covers=placed_covers(self.file),
             dependences=tuple(own.dependence for own in shared),
         )
-        results = compute(book, years=years, seed=seed, workers=workers, progress=progress)
+        simulation = Simulation(
+            years=years, seed=seed, workers=workers, until=until, level=section.capital_level
+        )
+        with AnnualFile(annual) if annual else nullcontext() as file:
+            every_year = file.add if file else None
+            results = compute(book, simulation, progress=progress, every_year=every_year)
+        years = results["simulation"].losses[GROSS].years  # type: ignore[attr-defined]
         apart = None
         if shared:
             progress("lines taken as independent", 0.95)
@@ -124,7 +138,7 @@ class Portfolio:
         findings += controls.findings
         data: Data = {
             "format": FORMAT,
-            "portfolio": self._description(),
+            "portfolio": self.description(),
             "run": {"version": __version__, "seed": seed, "years": years, "inputs": list(self.inputs)},
             **figures(
                 book,
@@ -150,7 +164,8 @@ class Portfolio:
         progress("done", 1.0)
         return Assessment(data, self.writer)
 
-    def _description(self) -> Data:
+    def description(self) -> Data:
+        """Name, currency, dates and levels, as every result carries them."""
         section = self.file.portfolio
         start, end = section.forecast
         return {

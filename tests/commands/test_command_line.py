@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import logging
 import os
 import subprocess
 import sys
@@ -110,6 +111,35 @@ def test_years_are_left_to_the_portfolio_when_not_given(tmp_path: Path, stand_in
     assert run("assess", "pool", "--out", tmp_path / "out").exit_code == 0
     assert "years" not in asked
     assert asked["seed"] == 1
+
+
+@pytest.mark.parametrize(("text", "part"), [("0.5%", 0.005), ("0.02", 0.02), (" 3 %", 0.03)])
+def test_until_is_a_part_of_the_figure(tmp_path: Path, stand_in, text: str, part: float) -> None:
+    """With what the engines note on stderr, also where that is no terminal."""
+
+    def noting() -> dict[str, Any]:
+        logging.getLogger("lossagg.engines.simulation").info("about 7 years expected")
+        return small_assessment()
+
+    asked = stand_in(noting)
+    file = tmp_path / "years.parquet"
+    result = run("assess", "pool", "--out", tmp_path / "out", "--until", text, "--annual", file)
+    assert result.exit_code == 0, result.output
+    assert asked["until"] == pytest.approx(part)
+    assert asked["annual"] == file
+    assert "years" not in asked
+    assert result.stderr == "note: about 7 years expected\n"
+
+
+@pytest.mark.parametrize("arguments", [("--until", "wide"), ("--until", "0"), ("--until", "100%")])
+def test_until_that_is_no_part_is_2(tmp_path: Path, stand_in, arguments: tuple[str, ...]) -> None:
+    stand_in(small_assessment)
+    result = run("assess", "pool", "--out", tmp_path / "out", *arguments)
+    assert result.exit_code == 2
+    assert "--until must be a part between 0 and 100%" in result.stderr
+    both = run("assess", "pool", "--out", tmp_path / "out", "--until", "1%", "--years", 100)
+    assert both.exit_code == 2
+    assert "--until decides how many years are simulated" in both.stderr
 
 
 def test_withheld_is_1_and_says_so(tmp_path: Path, stand_in) -> None:
