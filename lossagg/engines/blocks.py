@@ -19,7 +19,7 @@ from lossagg.engines.streams import BLOCK_YEARS, block_state, line_key
 from lossagg.engines.yearly import LOSS, LineColumns, annual_amounts, line_columns
 from lossagg.kernels.simulation import TILE, Kept, Notes, Sums, add_events, add_years
 
-NOTES = 2**16
+NOTES = 2**13
 
 
 @dataclass(frozen=True, eq=False)

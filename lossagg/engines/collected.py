@@ -1,8 +1,9 @@
 """Where the annual amounts of the blocks go: whole while they are few, reduced beyond.
 
-Whole amounts allow every question; they take eight bytes a year and subject. Beyond 2**21 years (or
-where the memory allowed does not hold them) each subject is reduced as its blocks come, see `reduction`,
-and the largest years of the book are kept with the amounts of all subjects.
+Whole amounts allow every question; they take eight bytes a year and subject, twice that sorted. Where
+that is more than half a gigabyte at more than 2**21 years, or more than the memory allowed, each subject
+is reduced as its blocks come, see `reduction`, and the largest years of the book are kept with the
+amounts of all subjects.
 """
 
 from __future__ import annotations
@@ -20,6 +21,7 @@ from lossagg.engines.sampled import SampledAnnualLoss, SimulatedAnnualLoss
 from lossagg.engines.streams import BLOCK_YEARS
 
 MOST_WHOLE = 2**21
+MOST_WHOLE_BYTES = 2**29
 
 Amounts = Mapping[Subject, FloatArray]
 
@@ -102,4 +104,4 @@ class Collected:
         return kept
 
 
-__all__ = ["MOST_WHOLE", "Amounts", "Collected", "bytes_needed"]
+__all__ = ["MOST_WHOLE", "MOST_WHOLE_BYTES", "Amounts", "Collected", "bytes_needed"]

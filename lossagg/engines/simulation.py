@@ -24,7 +24,7 @@ from lossagg.cover import Cover
 from lossagg.engines.blocks import PreparedLine, block_events, line_sums, prepare_line, run_block
 from lossagg.engines.book import GROSS, NET, Book, Line, PlacedCover, Subject
 from lossagg.engines.by_line import detail_subjects
-from lossagg.engines.collected import MOST_WHOLE, Amounts, Collected, bytes_needed
+from lossagg.engines.collected import MOST_WHOLE, MOST_WHOLE_BYTES, Amounts, Collected, bytes_needed
 from lossagg.engines.result import AnnualLoss, BookResult
 from lossagg.engines.sampled import SampledAnnualLoss
 from lossagg.engines.stopping import (
@@ -55,8 +55,9 @@ log = logging.getLogger(__name__)
 class Simulation:
     """The simulation engine: exact about its own error, the same on any number of workers.
 
-    Up to 2,097,152 years all annual amounts are kept; beyond, the largest years, cells of the body and
-    moments, in memory that does not grow with the years (see `reduction`).
+    Up to 2,097,152 years, and beyond while they are few subjects, all annual amounts are kept; else the
+    largest years, cells of the body and moments, in memory that does not grow with the years (see
+    `reduction`).
 
     Args:
         years: years to simulate, 1 to 10**10; with `until` the run decides.
@@ -256,7 +257,8 @@ class Run:
 
     def _whole(self, years: int) -> bool:
         whole, _ = bytes_needed(years, len(self.subjects), 0)
-        return years <= MOST_WHOLE and whole <= self.settings.memory
+        small = years <= MOST_WHOLE or whole <= MOST_WHOLE_BYTES
+        return small and whole <= self.settings.memory
 
     def _fits(self, years: int, ranked: tuple[Subject, ...]) -> bool:
         """Whether the amounts can be kept whole; refuses where even reduced they do not fit."""

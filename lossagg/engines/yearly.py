@@ -42,8 +42,15 @@ class LineColumns:
 
 
 def line_columns(book: Book, line: str, subjects: tuple[Subject, ...]) -> LineColumns:
-    """The columns that these subjects need of a line; equal schedules share one."""
+    """The columns that these subjects need of a line; equal schedules share one.
+
+    Raises:
+        InputError: a cover after one whose annual terms also act on lines the later does not cover.
+    """
     needed: dict[tuple[str, str], Schedule] = {}
+    for cover in needed_covers(book, subjects):
+        for before in book.annual_covers_before(cover):
+            _require_same_ground(book, cover, before)
     if any(_needs_loss(subject, line) for subject in subjects):
         needed[LOSS] = book.line(line).cost
     for cover in needed_covers(book, subjects):
@@ -85,21 +92,13 @@ def ramps(schedule: Schedule, column: int) -> list[tuple[float, float, float, fl
 
 
 def needed_covers(book: Book, subjects: tuple[Subject, ...]) -> tuple[PlacedCover, ...]:
-    """Covers whose yearly payment these subjects need, in the order in which they pay.
-
-    Raises:
-        InputError: a cover after one whose annual terms also act on lines the later does not cover.
-    """
+    """Covers whose yearly payment these subjects need, in the order in which they pay."""
     every = any(subject.kind in ("net", "ceded", "retained") for subject in subjects)
     names = {cover.name for cover in book.covers if every or Subject("cover", cover.name) in subjects}
     for cover in reversed(book.covers):
         if cover.name in names:
             names |= {before.name for before in book.annual_covers_before(cover)}
-    needed = tuple(cover for cover in book.covers if cover.name in names)
-    for cover in needed:
-        for before in book.annual_covers_before(cover):
-            _require_same_ground(book, cover, before)
-    return needed
+    return tuple(cover for cover in book.covers if cover.name in names)
 
 
 def annual_amounts(

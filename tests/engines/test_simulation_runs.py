@@ -34,6 +34,7 @@ BOOK = Book(lines=(FIRE, MOTOR), covers=(LAYER, STOP))
 def reduce_early(monkeypatch):
     """Two blocks are too many to keep whole."""
     monkeypatch.setattr(simulation, "MOST_WHOLE", BLOCK_YEARS)
+    monkeypatch.setattr(simulation, "MOST_WHOLE_BYTES", 0)
 
 
 def test_reduced_and_whole_runs_agree(reduce_early, monkeypatch):
