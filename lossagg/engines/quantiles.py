@@ -110,4 +110,5 @@ class Quantiles:
 
 def _rarity(compound: CompoundSum) -> float:
     """How much further out a lattice must reach where hardly any year has a payment."""
-    return float(np.clip(1e3 * (1.0 - compound.no_payment), 1e-8, 1.0))
+    payments = sum(count.mean() * payment.paying for count, payment in compound.parts)
+    return float(np.clip(1e3 * payments, 1e-280, 1.0))

@@ -320,3 +320,14 @@ def test_closed_forms_of_the_practice_note(deductible: float, limited: float, fr
 def test_places_without_a_meaning_are_refused(make, message: str) -> None:
     with pytest.raises(InputError, match=message):
         make()
+
+
+@EXACT
+@pytest.mark.parametrize("deductible", [2e5, 1e6, 1.2e7])
+def test_a_layer_next_to_out_of_reach(engine, deductible: float) -> None:
+    """Attached once in 1e5, 1e21 and 1e260 years: the cost keeps its digits and nothing divides by zero."""
+    loss = engine.annual_loss(Poisson(mean=7.0), Exponential(mean=2e4), Cover(deductible=deductible))
+    cost = 7 * 2e4 * np.exp(-deductible / 2e4)
+    assert loss.mean() == pytest.approx(cost, rel=1e-9)
+    assert loss.value_at_risk(0.999) == 0.0
+    assert loss.tail_value_at_risk(0.999) == pytest.approx(1000 * cost, rel=1e-9)
