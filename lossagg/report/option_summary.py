@@ -11,6 +11,7 @@ from lossagg.report.reading import Entry
 from lossagg.report.summary import Summary
 from lossagg.report.tables import options as tables
 
+MOST_ROWS = 20
 _RETAINED = (0, 1, 5, 6, 7, -2, -1)
 _COST = (0, 2, 6, 8)
 _YEARS = (0, 1, 3, 4, 5)
@@ -23,7 +24,7 @@ def summarise_options(options: Entry, out: Path | None) -> Summary:
         options: the dictionary of format "lossagg.options/1".
         out: the folder its files were written to, as the reader should see it.
     """
-    portfolio, shown = options["portfolio"], tables.shown_options(options)
+    portfolio, shown = options["portfolio"], tables.shown_options(options)[:MOST_ROWS]
     kept, cost = tables.retained(options, shown), tables.total(options, shown)
     years = tables.bad_years(options, shown)
     return Summary(
