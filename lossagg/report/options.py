@@ -20,6 +20,7 @@ from lossagg.report.folder import OPTION_FILES, check_destination, publish
 from lossagg.report.manifest import RunFacts, build_manifest
 from lossagg.report.page import environment
 from lossagg.report.reading import Entry
+from lossagg.report.tables import option_details as details
 from lossagg.report.tables import options as tables
 from lossagg.report.wording import STANDING_CAUTIONS
 from lossagg.report.workbook import render_workbook, safe_text
@@ -53,8 +54,8 @@ def write_options(options: Entry, out: str | Path, *, facts: RunFacts | None = N
             remedy=f"Give the dictionary of format {FORMAT!r}.",
         )
     target = check_destination(Path(out), OPTION_FILES)
-    sheets = tables.every_option_table(options)
-    curve_tables = tables.curves(options)
+    sheets = details.every_option_table(options)
+    curve_tables = details.curves(options)
     files = {
         "options.json": canonical_json(options).encode(),
         "options.html": render_options(options).encode(),
@@ -80,14 +81,14 @@ def option_parts(options: Entry) -> dict[str, Any]:
             tables.total(options, shown),
             tables.bad_years(options, shown),
         ),
-        "ranges": tables.ranges({**options, "options": shown}),
+        "ranges": details.ranges({**options, "options": shown}),
         "terms": tables.terms(options, shown),
-        "past": None if past is None else tables.past_costs(options, shown),
+        "past": None if past is None else details.past_costs(options, shown),
         "frontier": frontier_figure(options),
         "curves": curves_figure(options),
-        "curve_tables": tables.curves(options),
-        "basis": tables.basis(options),
-        "parts": tables.parts({**options, "options": shown}),
+        "curve_tables": details.curves(options),
+        "basis": details.basis(options),
+        "parts": details.parts({**options, "options": shown}),
     }
 
 

@@ -1,0 +1,252 @@
+"""Tables behind the options: how premiums are made, ranges of parameters, past years, curves, checks."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from lossagg.report import digits
+from lossagg.report.cells import Absent, Cell, Column, Estimated, Ranged, Table
+from lossagg.report.reading import Entry, absent
+from lossagg.report.tables.options import bad_years, ceded, plain, retained, terms, total
+
+
+def parts(options: Entry) -> Table:
+    """How each modelled premium is made: everything needed to compute it by hand."""
+    basis, currency = options["basis"], options["portfolio"]["currency"]
+    rows = tuple(
+        (
+            entry["name"],
+            plain(entry["premium"]["parts"]["ceded"]),
+            plain(entry["premium"]["parts"]["loss_adjustment"], "none"),
+            plain(entry["premium"]["parts"]["fixed_expense"], "none"),
+            plain(entry["premium"]["parts"]["risk_load"], "none"),
+            plain(entry["premium"]["parts"]["variable"], "none"),
+            plain(entry["premium"]["modelled"]),
+            entry["premium"]["value"] if entry["premium"]["source"] == "quoted" else Absent("not quoted"),
+        )
+        for entry in options["options"]
+    )
+    columns = (
+        Column("Option"),
+        Column("Expected ceded", "amount"),
+        Column("Loss adjustment", "amount"),
+        Column("Fixed expense", "amount"),
+        Column("Risk load", "amount"),
+        Column("Variable expense and profit", "amount"),
+        Column("Modelled premium", "amount"),
+        Column("Quoted premium", "amount"),
+    )
+    share = basis["variable_expense"] + basis["profit"]
+    notes = (
+        f"Modelled premium = (expected ceded x {1 + basis['loss_adjustment']:g} + fixed expense + "
+        f"risk load) / {1 - share:g}.",
+    )
+    return Table("Premium parts", f"Modelled premiums, {currency}", columns, rows, notes)
+
+
+def ranges(options: Entry) -> Table:
+    """What the uncertainty of the parameters leaves open, 95 % of the draws."""
+    currency, level = options["portfolio"]["currency"], digits.percent(options["frontier_level"])
+    rows: list[tuple[Cell, ...]] = []
+    for entry in options["options"]:
+        drawn = entry["parameters"]
+        if drawn is None:
+            continue
+        own = {row["level"]: row["var"] for row in entry["retained"]["levels"]}
+        rows.append(
+            (
+                entry["name"],
+                _drawn(entry["retained"]["expected"], drawn["retained"]),
+                _drawn(own[options["frontier_level"]], drawn["worst_year"]),
+                _drawn(entry["ceded"]["expected"], drawn["ceded"]),
+                _drawn(entry["total"]["expected"], drawn["total"]),
+            )
+        )
+    columns = (
+        Column("Option"),
+        Column("Expected retained", "money", ranged=True),
+        Column(f"Worst year at {level}", "money", ranged=True),
+        Column("Expected ceded", "money", ranged=True),
+        Column("Expected total cost", "money", ranged=True),
+    )
+    notes = (
+        f"The range below a figure holds 95% of {options['draws']} draws of the fitted parameters. Premium "
+        "and costs stay at the figures of the table: they are agreed before anybody knows the parameters.",
+    )
+    return Table("Option ranges", f"Range of the parameters, {currency} a year", columns, tuple(rows), notes)
+
+
+def _drawn(entry: Entry, limits: Sequence[float | None] | None) -> Cell:
+    if entry["value"] is None:
+        return absent(entry["reason"])
+    if limits is None:
+        return Ranged(entry["value"], None, None, "not computed for this option")
+    return Ranged(entry["value"], limits[0], limits[1])
+
+
+def history(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
+    """What each option would have kept and cost in each past year."""
+    past, currency = options["history"], options["portfolio"]["currency"]
+    names = {e["name"] for e in (options["options"] if entries is None else entries)}
+    rows: list[tuple[Cell, ...]] = []
+    for own in past["options"] if past else ():
+        if own["option"] not in names:
+            continue
+        for k, year in enumerate(past["years"]):
+            total_cost = None if own["total"] is None else own["total"][k]
+            rows.append(
+                (
+                    own["option"],
+                    str(year),
+                    past["events"][k],
+                    past["gross"][k],
+                    own["retained"][k],
+                    own["ceded"][k],
+                    plain(total_cost),
+                )
+            )
+    columns = (
+        Column("Option"),
+        Column("Year"),
+        Column("Events", "count"),
+        Column("Losses, trended", "money"),
+        Column("Retained", "money"),
+        Column("Ceded", "money"),
+        Column("Total cost", "money"),
+    )
+    notes = () if past is None else (past["note"],)
+    return Table("Option as-if", f"Past years on these terms, {currency}", columns, tuple(rows), notes)
+
+
+def past_costs(options: Entry, entries: Sequence[Entry]) -> Table:
+    """Total cost of each option in each past year, one column per year."""
+    past, currency = options["history"], options["portfolio"]["currency"]
+    names = [entry["name"] for entry in entries]
+    rows: list[tuple[Cell, ...]] = [("Losses, trended", *past["gross"], past["mean"])]
+    for own in past["options"]:
+        if own["option"] in names:
+            costs = own["total"] or [None] * len(past["years"])
+            rows.append((own["option"], *(plain(cost) for cost in costs), plain(own["mean"])))
+    columns = (
+        Column("Option"),
+        *(Column(str(year), "money") for year in past["years"]),
+        Column("Mean", "money"),
+    )
+    title = f"Total cost each option would have had in past years, {currency}"
+    return Table("Option past", title, columns, tuple(rows), (past["note"],))
+
+
+def curves(options: Entry) -> tuple[Table, ...]:
+    """Loss elimination, layers, increased limits and exposure curve as tables."""
+    data, currency = options["curves"], options["portfolio"]["currency"]
+    elimination = Table(
+        "Loss elimination",
+        f"Loss elimination and excess factors, {currency}",
+        (
+            Column("Amount", "amount"),
+            Column("Loss elimination ratio", "number"),
+            Column("Excess loss factor", "number"),
+            Column("Events above, a year", "number"),
+        ),
+        tuple(
+            (row["amount"], row["factor"], row["excess_factor"], row["events_above"])
+            for row in data["loss_elimination"]
+        ),
+    )
+    layers = Table(
+        "Layer costs",
+        f"Expected cost of layers, {currency} a year",
+        (
+            Column("From", "amount"),
+            Column("To", "amount"),
+            Column("Events, a year", "number"),
+            Column("Expected cost", "amount"),
+            Column("Cost / width", "number"),
+        ),
+        tuple((r["from"], r["to"], r["events"], r["cost"], r["rate_on_line"]) for r in data["layers"]),
+    )
+    limits = Table(
+        "Increased limits",
+        f"Increased limit factors, basic limit {data['basic_limit'] or 0:,.0f} {currency}",
+        (Column("Limit", "amount"), Column("Factor", "number")),
+        tuple((row["amount"], row["factor"]) for row in data["increased_limits"]),
+    )
+    exposure = Table(
+        "Exposure curve",
+        f"Exposure curve, largest loss {data['largest_loss'] or 0:,.0f} {currency}",
+        (
+            Column("Part of the largest", "number"),
+            Column("Amount", "amount"),
+            Column("Factor", "number"),
+        ),
+        tuple((row["share"], row["amount"], row["factor"]) for row in data["exposure"]),
+    )
+    return tuple(table for table in (elimination, layers, limits, exposure) if table.rows)
+
+
+def checks(options: Entry) -> Table:
+    """Exact figures against the simulated years, option by option."""
+    rows = tuple(
+        (
+            entry["name"],
+            row["measure"],
+            "" if row["level"] is None else digits.percent(row["level"]),
+            row["exact"][0],
+            row["exact"][1],
+            Estimated(row["simulated"][0], row["standard_error"]),
+            Estimated(row["simulated"][1], row["standard_error"]),
+            "yes" if row["agrees"] else "NO",
+        )
+        for entry in options["options"]
+        for row in entry["check"]["comparisons"]
+    )
+    columns = (
+        Column("Option"),
+        Column("Measure"),
+        Column("Level"),
+        Column("Exact, low", "number"),
+        Column("Exact, high", "number"),
+        Column("Simulated, low", "number"),
+        Column("Simulated, high", "number"),
+        Column("Agree"),
+    )
+    notes = (
+        "Years above the worst year: no more than that part of the simulated years may lie above the upper "
+        "end of its bracket, no fewer above the lower end. Agree: within four standard errors of the "
+        "simulation; where not, the option is withheld.",
+    )
+    return Table("Option checks", "Exact against simulated figures", columns, rows, notes)
+
+
+def basis(options: Entry) -> Table:
+    """Loads, costs and appetite as stated: what is not stated is zero or absent."""
+    rows = tuple((name.replace("_", "-"), _stated(value)) for name, value in options["basis"].items())
+    subject = options["subject"]
+    cap = "none" if subject["event_cap"] is None else f"{subject['event_cap']:,.2f}"
+    extra = (("lines", ", ".join(subject["lines"])), ("event-cap", cap))
+    return Table("Option basis", "What the table rests on", (Column("Key"), Column("Value")), (*extra, *rows))
+
+
+def _stated(value: object) -> str:
+    if value is None:
+        return "not stated"
+    if isinstance(value, dict):
+        return ", ".join(f"{name.replace('_', '-')} = {_stated(part)}" for name, part in value.items())
+    return f"{value:,.10g}" if isinstance(value, float) else str(value)
+
+
+def every_option_table(options: Entry) -> tuple[Table, ...]:
+    """All tables of the options, for the workbook."""
+    return (
+        retained(options),
+        ceded(options),
+        total(options),
+        bad_years(options),
+        terms(options),
+        parts(options),
+        ranges(options),
+        history(options),
+        *curves(options),
+        checks(options),
+        basis(options),
+    )
