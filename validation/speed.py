@@ -240,10 +240,10 @@ def main() -> int:
     parser.add_argument("--processor-time", action="store_true")
     given = parser.parse_args()
     threads = given.workers if given.processor_time else 0
-    in_process = (simulation_rows, fill_rows)
+    in_process = (simulation_rows, fill_rows, option_rows)
     print(f"{'':<72} {'lossagg s':>9} {'against s':>9} {'figure':>8} {'':<13} asked")
     all_met = True
-    for rows in (simulation_rows, fill_rows, option_rows, help_rows, assessment_rows):
+    for rows in in_process if threads else (*in_process, help_rows, assessment_rows):
         try:
             for row in rows(given.workers):
                 text, met = measure(row, given.repetitions, threads)
