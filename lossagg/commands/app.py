@@ -8,6 +8,7 @@ import typer
 
 from lossagg.commands.assess import assess
 from lossagg.commands.batch import batch
+from lossagg.commands.fit import fit
 from lossagg.commands.price import price
 from lossagg.commands.replay import replay
 from lossagg.version import __version__
@@ -30,6 +31,7 @@ def build_app() -> typer.Typer:
     app.callback(help=ABOUT)(_options)
     app.command()(assess)
     app.command()(batch)
+    app.command()(fit)
     app.command()(price)
     app.command()(replay)
     return app

@@ -98,8 +98,7 @@ def candidate_thresholds(large: Large, most: int = MOST_THRESHOLDS) -> FloatArra
     count = len(large.amounts)
     ranks = np.unique(np.round(np.geomspace(FEWEST, count - 1, most)).astype(np.int64))[::-1]
     points = np.unique(large.amounts[count - 1 - ranks])
-    start = [large.floor] if large.floor > 0 and large.floor < points[0] else []
-    found = np.array([*start, *points])
+    found = np.append(large.floor, points[1:]) if large.floor > 0 else points
     enough = [int((~large.above(point)[1]).sum()) >= FEWEST for point in found]
     return found[enough]
 

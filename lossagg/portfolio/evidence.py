@@ -11,6 +11,7 @@ import numpy as np
 from lossagg.fitting import Candidates, Fit, count_points, quantile_points, survival_points
 from lossagg.portfolio.assessment import Data, number
 from lossagg.portfolio.fit_tests import DRAWS, THRESHOLDS, frequency_tests, severity_tests, tail_evidence
+from lossagg.portfolio.history import history_data
 from lossagg.portfolio.line import LineModel
 from lossagg.records import PreparedLosses
 
@@ -27,9 +28,7 @@ def line_evidence(model: LineModel, draws: int = DRAWS, thresholds: int = THRESH
     return {
         "name": model.name,
         "source": "given" if prepared is None else "records",
-        "records": None if prepared is None else _records(prepared),
-        "by_year": [] if prepared is None else _by_year(prepared),
-        "steps": [] if prepared is None else [step.to_dict() for step in prepared.steps],
+        **history_data(prepared),
         "exposure": None
         if prepared is None
         else {
@@ -45,33 +44,6 @@ def line_evidence(model: LineModel, draws: int = DRAWS, thresholds: int = THRESH
         if prepared is None or model.severities is None
         else tail_evidence(prepared, model.severities, thresholds, draws),
     }
-
-
-def _records(prepared: PreparedLosses) -> Data:
-    keys = ("read", "used", "excluded", "amount_read", "amount_used", "amount_excluded")
-    reconciled = prepared.reconciliation.to_dict()
-    return {key: reconciled[key] for key in keys}
-
-
-def _by_year(prepared: PreparedLosses) -> list[Data]:
-    years = prepared.years
-    columns = (
-        "year",
-        "exposure",
-        "fraction",
-        "losses",
-        "claims",
-        "open",
-        "amount",
-        "trended_amount",
-        "largest",
-        "threshold",
-        "frequency_trend",
-        "reported",
-        "ultimate_losses",
-        "ultimate_amount",
-    )
-    return [{column: getattr(years, column)[k].item() for column in columns} for k in range(len(years))]
 
 
 def _frequency(model: LineModel, draws: int) -> Data:
@@ -96,7 +68,7 @@ def _frequency(model: LineModel, draws: int) -> Data:
             "candidates": _candidates(tried),
             "choice": _choice(tried),
             "tests": frequency_tests(model, model.prepared, draws),
-            "notes": list(fit.notes),
+            "notes": [str(note) for note in fit.notes],
         }
     return entry
 
@@ -126,7 +98,7 @@ def _severity(model: LineModel, draws: int) -> Data:
             "censored": fit.censored,
             "candidates": _candidates(tried, severity_tests(model, prepared, tried, draws)),
             "choice": _choice(tried),
-            "notes": list(fit.notes),
+            "notes": [str(note) for note in fit.notes],
         }
     return entry
 

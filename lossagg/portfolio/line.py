@@ -125,7 +125,7 @@ def _modelled(section: LineSection, prepared: PreparedLosses | None, key: str) -
             severities=severities,
         )
     years = prepared.years
-    seen = years.forecast_exposure * _survival(prepared, severity)
+    seen = years.forecast_exposure * survival_by_year(prepared, severity)
     frequencies = compare_frequencies(years.losses, section.frequency.fit, exposure=seen)
     frequencies = _preferred(frequencies, section.frequency, f"{key}.frequency")
     exposure = section.forecast_exposure or _last_full_exposure(prepared)
@@ -141,7 +141,7 @@ def _modelled(section: LineSection, prepared: PreparedLosses | None, key: str) -
     )
 
 
-def _survival(prepared: PreparedLosses, severity: SizeLaw) -> FloatArray:
+def survival_by_year(prepared: PreparedLosses, severity: SizeLaw) -> FloatArray:
     """Per year, the probability that a loss exceeds the threshold above which it was recorded.
 
     Where events of a year have thresholds of their own, each stands for the 1 / S(threshold) losses of

@@ -6,9 +6,10 @@ number in them is one of the assessment, shown with the digits its accuracy supp
 
 from __future__ import annotations
 
+from lossagg.report.fitting import write_fit
 from lossagg.report.folder import check_destination
 from lossagg.report.manifest import RunFacts
 from lossagg.report.options import write_options
 from lossagg.report.writing import write_assessment
 
-__all__ = ["RunFacts", "check_destination", "write_assessment", "write_options"]
+__all__ = ["RunFacts", "check_destination", "write_assessment", "write_fit", "write_options"]

@@ -82,7 +82,10 @@ def render_report(assessment: Assessment) -> str:
             tables.dependence.assumptions(assessment), tables.dependence.compared(assessment)
         ),
         "years": _filled(tables.years.near_capital(assessment), tables.years.events_near_capital(assessment)),
-        "sections": [_section(line, index, assessment) for index, line in enumerate(assessment["lines"], 1)],
+        "sections": [
+            line_section(line, index, assessment["portfolio"]["currency"])
+            for index, line in enumerate(assessment["lines"], 1)
+        ],
         "cover_tables": _cover_tables(assessment),
         "reconciliation": tables.records.reconciliation(assessment),
         "controls": tables.controls.control_totals(assessment),
@@ -118,12 +121,22 @@ def _cover_tables(assessment: Assessment) -> list[Table]:
     ]
 
 
-def _section(line: Entry, index: int, assessment: Assessment) -> LineSection:
-    currency = assessment["portfolio"]["currency"]
+def line_section(line: Entry, index: int, currency: str, extra: Sequence[Table] = ()) -> LineSection:
+    """What a page shows of one line.
+
+    Args:
+        line: its entry.
+        index: its number, from 1.
+        currency: of the portfolio.
+        extra: tables that follow those of every report, with the line in their first column.
+    """
     built = (
         tables.records.by_year([line], currency),
         tables.records.development([line], currency),
         tables.fits.candidates([line]),
+        tables.fit_tests.goodness([line]),
+        tables.fit_tests.frequency([line]),
+        tables.fit_tests.tail_rules([line], currency),
         tables.records.steps([line], currency),
     )
     drawn: tuple[str | None, ...] = ()
@@ -132,6 +145,8 @@ def _section(line: Entry, index: int, assessment: Assessment) -> LineSection:
             figures.survival_figure(line, f"line{index}-survival", currency),
             figures.quantile_figure(line, f"line{index}-quantiles", currency),
             figures.counts_figure(line, f"line{index}-counts"),
+            figures.shape_figure(line, f"line{index}-shape", currency),
+            figures.mean_excess_figure(line, f"line{index}-excess", currency),
         )
     return LineSection(
         anchor=f"line-{index}",
@@ -151,6 +166,7 @@ def _line_facts(line: Entry, currency: str) -> list[tuple[str, str]]:
     ]
     if line["source"] == "given":
         return [*facts, ("Source", tables.lines.GIVEN)]
+    facts += [("Why this law", text) for law in (line["frequency"], size) if (text := _choice_text(law))]
     threshold = size["threshold"]
     facts.append(("Threshold", f"{threshold:,.2f} {currency}, trended" if threshold else "none"))
     facts.append(
@@ -162,6 +178,14 @@ def _line_facts(line: Entry, currency: str) -> list[tuple[str, str]]:
         facts.append(("Exposure of the forecast period", forecast))
     facts += [("Note", note) for law in (line["frequency"], size) for note in law.get("notes", ())]
     return facts
+
+
+def _choice_text(law: Entry) -> str:
+    """Why a law was chosen that does not rank first; empty where the first was."""
+    choice = law.get("choice")
+    if not choice or not choice["reason"]:
+        return ""
+    return f"{choice['chosen']} chosen, though {choice['first']} ranks first: {choice['reason']}"
 
 
 def _without_line(table: Table) -> Table:

@@ -1,0 +1,67 @@
+"""Every fit of a portfolio with all its evidence, and no capital figure: what `lossagg fit` writes."""
+
+from __future__ import annotations
+
+from lossagg.portfolio.assess import Progress, silent
+from lossagg.portfolio.assessment import Data
+from lossagg.portfolio.cautions import cautions
+from lossagg.portfolio.evidence import line_evidence
+from lossagg.portfolio.line import LineModel
+from lossagg.portfolio.portfolio import Portfolio
+from lossagg.portfolio.what_if import influence, sensitivity
+from lossagg.version import __version__
+
+FIT_FORMAT = "lossagg.fit/1"
+_DRAWS, _THRESHOLDS = 199, 20
+
+
+def fit_report(portfolio: Portfolio, *, draws: int = _DRAWS, progress: Progress = silent) -> Data:
+    """Fit every line and say which law, why this one, how sure, and what if the tail is wrong.
+
+    Args:
+        portfolio: read and checked.
+        draws: most bootstrap draws behind a p-value.
+        progress: called with the stage and the fraction done.
+
+    Returns:
+        Plain data: per line what an assessment says of its fits, and beside it the sensitivity of the
+        line's value at risk at the capital level to the tail threshold and to single losses.
+
+    Raises:
+        InputError: a value of the portfolio file that cannot be used.
+        FitError: records that support none of the laws asked for.
+        EngineError: a line beyond the Fourier engine.
+    """
+    progress("preparing and fitting", 0.0)
+    models = portfolio.models()
+    section = portfolio.file.portfolio
+    lines = []
+    for place, model in enumerate(models):
+        progress(f"testing the fits of {model.name}", (1 + place) / (1 + len(models)))
+        lines.append(_line(model, section.capital_level, draws))
+    findings = [finding for model in models if model.prepared for finding in model.prepared.findings]
+    return {
+        "format": FIT_FORMAT,
+        "portfolio": portfolio.description(),
+        "run": {
+            "version": __version__,
+            "seed": 0,
+            "years": 0,
+            "draws": draws,
+            "inputs": list(portfolio.inputs),
+        },
+        "lines": lines,
+        "findings": [finding.to_dict() for finding in dict.fromkeys(findings)],
+        "cautions": cautions(models, sorted({*section.levels, section.capital_level})),
+    }
+
+
+def _line(model: LineModel, level: float, draws: int) -> Data:
+    entry = line_evidence(model, draws, _THRESHOLDS)
+    fitted = model.severities is not None and model.prepared is not None
+    return {
+        **entry,
+        "level": level,
+        "sensitivity": sensitivity(model, entry["tail"], level) if fitted else [],
+        "influence": influence(model, level) if fitted else [],
+    }

@@ -1,0 +1,116 @@
+"""The report of the fits: sensitivity and influence against brute force, and the files it writes."""
+
+import json
+from pathlib import Path
+
+import numpy as np
+import pytest
+from folders import RECORDS, recorded_portfolio
+
+import lossagg
+from lossagg.fitting import fit_frequency, fit_severity
+from lossagg.portfolio import read_portfolio
+from lossagg.portfolio.fit_report import fit_report
+from lossagg.report import write_fit
+from lossagg.report.fitting import render_fit
+
+TEXT = RECORDS.replace(
+    'severity = { fit = ["lognormal", "exponential"] }', 'severity = { fit = ["lognormal", "lomax"] }'
+)
+
+
+def many_losses(folder: Path) -> Path:
+    """Sixty heavy losses over five years, all above the threshold."""
+    recorded_portfolio(folder, TEXT)
+    rows = ["id,date,amount"]
+    for k in range(60):
+        amount = 1000 * (1 - (k + 0.5) / 60) ** (-1 / 1.8) + 40
+        rows.append(f"{k},{2020 + k % 5}-{1 + (7 * k) % 12:02d}-15,{amount:.2f}")
+    (folder / "losses.csv").write_text("\n".join(rows) + "\n", encoding="utf-8")
+    return folder
+
+
+@pytest.fixture(scope="module")
+def portfolio(tmp_path_factory):
+    return read_portfolio(many_losses(tmp_path_factory.mktemp("fit")))
+
+
+@pytest.fixture(scope="module")
+def report(portfolio):
+    return fit_report(portfolio, draws=9)
+
+
+def test_leaving_the_largest_out_agrees_with_fitting_the_rest_by_hand(portfolio, report):
+    (model,) = portfolio.models()
+    prepared, chosen = model.prepared, model.severities.chosen
+    place = int(np.argmax(prepared.amount))
+    kept = np.arange(len(prepared)) != place
+    severity = fit_severity(
+        prepared.amount[kept], chosen.family, prepared.threshold[kept], prepared.censored[kept]
+    ).model
+    counts = prepared.years.losses.astype(float)
+    counts[prepared.year[place] - prepared.years.year[0]] -= 1
+    seen = prepared.years.forecast_exposure * severity.sf(prepared.years.threshold)
+    frequency = fit_frequency(counts, "poisson", seen).model_for(model.forecast_exposure)
+    by_hand = lossagg.annual_loss(frequency, severity).value_at_risk(0.99)
+    row = report["lines"][0]["influence"][1]
+    assert row["change"] == "without the largest"
+    assert row["amount"] == pytest.approx(prepared.amount.max())
+    assert row["value_at_risk"] == pytest.approx(by_hand, rel=1e-9)
+
+
+def test_influence_falls_with_the_rank_and_one_more_raises(report):
+    rows = report["lines"][0]["influence"]
+    changes = [row["relative"] for row in rows]
+    assert len(rows) == 7
+    assert all(change < 0 for change in changes[1:6])
+    assert changes[1] == min(changes[1:6])
+    assert changes[6] > 0
+
+
+def test_sensitivity_keeps_the_body_and_replaces_the_tail(portfolio, report):
+    (model,) = portfolio.models()
+    rows = report["lines"][0]["sensitivity"]
+    base = lossagg.annual_loss(model.frequency, model.severity).value_at_risk(0.99)
+    assert rows[0]["value_at_risk"] == pytest.approx(base)
+    moved = [row for row in rows[1:] if row["value_at_risk"] is not None]
+    assert len(moved) >= 3
+    row = moved[0]
+    above = model.prepared.amount[model.prepared.amount > row["threshold"]]
+    tail = fit_severity(above, "generalized-pareto", row["threshold"], fixed={"threshold": row["threshold"]})
+    floor = model.prepared.threshold.max()
+    share = model.severity.sf(floor) * len(above) / np.sum(model.prepared.amount >= floor)
+    law = lossagg.Spliced(
+        body=model.severity, tail=tail.model, threshold=row["threshold"], tail_probability=share
+    )
+    by_hand = lossagg.annual_loss(model.frequency, law).value_at_risk(0.99)
+    assert row["value_at_risk"] == pytest.approx(by_hand, rel=1e-9)
+    assert row["shape"] == pytest.approx(tail.parameters["shape"])
+
+
+def test_the_files_and_the_same_bytes(tmp_path, portfolio, report):
+    out = write_fit(report, tmp_path / "out")
+    assert sorted(path.name for path in out.iterdir()) == [
+        "fit.html",
+        "fit.json",
+        "fit.xlsx",
+        "manifest.json",
+    ]
+    assert json.loads((out / "fit.json").read_text(encoding="utf-8"))["format"] == "lossagg.fit/1"
+    page = (out / "fit.html").read_text(encoding="utf-8")
+    for text in (
+        "Do the losses fit?",
+        "Where the tail begins",
+        "What single losses do",
+        "without the largest",
+    ):
+        assert text in page
+    assert render_fit(fit_report(portfolio, draws=9)) == page
+
+
+def test_given_laws_have_nothing_to_test(tmp_path):
+    from folders import given_portfolio
+
+    report = fit_report(read_portfolio(given_portfolio(tmp_path)), draws=5)
+    assert [line["tail"] for line in report["lines"]] == [None, None]
+    assert "The laws of this line were given" in render_fit(report)
