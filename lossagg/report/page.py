@@ -137,6 +137,7 @@ def line_section(line: Entry, index: int, currency: str, extra: Sequence[Table] 
         tables.fit_tests.goodness([line]),
         tables.fit_tests.frequency([line]),
         tables.fit_tests.tail_rules([line], currency),
+        *extra,
         tables.records.steps([line], currency),
     )
     drawn: tuple[str | None, ...] = ()

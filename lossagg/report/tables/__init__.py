@@ -4,7 +4,18 @@ from __future__ import annotations
 
 from lossagg.report.cells import Table
 from lossagg.report.reading import Assessment
-from lossagg.report.tables import controls, covers, dependence, evidence, fits, lines, records, totals, years
+from lossagg.report.tables import (
+    controls,
+    covers,
+    dependence,
+    evidence,
+    fit_tests,
+    fits,
+    lines,
+    records,
+    totals,
+    years,
+)
 
 __all__ = [
     "controls",
@@ -12,6 +23,7 @@ __all__ = [
     "dependence",
     "every_table",
     "evidence",
+    "fit_tests",
     "fits",
     "lines",
     "records",

@@ -1,0 +1,66 @@
+"""The history of a line: its records made ready to be modelled, and what a report says of them."""
+
+from __future__ import annotations
+
+from lossagg.portfolio.assessment import Data
+from lossagg.portfolio.files import LineRecords
+from lossagg.portfolio.schema import LineSection, PortfolioFile
+from lossagg.records import PreparedLosses, midpoint, prepare_losses
+
+_BY_YEAR = (
+    "year",
+    "exposure",
+    "fraction",
+    "losses",
+    "claims",
+    "open",
+    "amount",
+    "trended_amount",
+    "largest",
+    "threshold",
+    "frequency_trend",
+    "reported",
+    "ultimate_losses",
+    "ultimate_amount",
+)
+
+
+def prepare_line(file: PortfolioFile, line: LineSection, records: LineRecords) -> PreparedLosses:
+    """The losses of one line as they are modelled: events, trend, thresholds, exposure.
+
+    Args:
+        file: the portfolio file.
+        line: the table of the line in it.
+        records: what was read and checked for the line.
+
+    Raises:
+        InputError: records and keys that do not fit together, such as a year without exposure.
+    """
+    return prepare_losses(
+        records.losses,
+        exposure=records.exposure,
+        forecast_midpoint=midpoint(*file.portfolio.forecast),
+        reporting_threshold=line.lowest_recorded,
+        trend=records.index or line.trend,
+        **line.preparation(),
+    )
+
+
+def history_data(prepared: PreparedLosses | None) -> Data:
+    """Reconciliation, years and steps as plain data; nothing where the line has no records.
+
+    Args:
+        prepared: the losses of the line.
+    """
+    if prepared is None:
+        return {"records": None, "by_year": [], "steps": []}
+    reconciled = prepared.reconciliation.to_dict()
+    keys = ("read", "used", "excluded", "amount_read", "amount_used", "amount_excluded")
+    years = prepared.years
+    return {
+        "records": {key: reconciled[key] for key in keys},
+        "by_year": [
+            {column: getattr(years, column)[k].item() for column in _BY_YEAR} for k in range(len(years))
+        ],
+        "steps": [step.to_dict() for step in prepared.steps],
+    }
