@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import warnings
 from collections.abc import Callable
+from contextlib import nullcontext
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
@@ -47,6 +48,7 @@ def assess_folder(
     workers: int | None = None,
     until: float | None = None,
     annual: Path | None = None,
+    cluster: str | None = None,
     command: tuple[str, ...] = (),
     progress: Progress = silent,
 ) -> Outcome:
@@ -63,6 +65,7 @@ def assess_folder(
         until: simulate until the interval of the capital figure reaches no further than this part of it
             to either side.
         annual: a Parquet file to receive every simulated year.
+        cluster: address of the scheduler of a running cluster that is to simulate the years.
         command: the command line, for the manifest.
         progress: called with the stage and the fraction done, 0 to 1.
 
@@ -70,8 +73,9 @@ def assess_folder(
         InputError: something in the portfolio cannot be used, or the output folder is taken.
         FitError: the records support none of the laws asked for.
         EngineError: the portfolio is beyond the engines.
-        EnvironmentFault: the results cannot be written.
+        EnvironmentFault: the results cannot be written, or the cluster cannot be used.
     """
+    from lossagg.engines.executors import cluster as running
     from lossagg.portfolio import read_portfolio
     from lossagg.report import RunFacts, check_destination, write_assessment
 
@@ -81,11 +85,17 @@ def assess_folder(
     with warnings.catch_warnings(record=True) as caught:
         warnings.simplefilter("always", LossaggWarning)
         progress("reading", 0.0)
-        document = (
-            read_portfolio(portfolio)
-            .assess(seed=seed, workers=workers, until=until, annual=annual, progress=progress, **asked)
-            .to_dict()
-        )
+        read = read_portfolio(portfolio)
+        with running(cluster) if cluster else nullcontext() as executor:
+            document = read.assess(
+                seed=seed,
+                workers=workers,
+                until=until,
+                annual=annual,
+                executor=executor,
+                progress=progress,
+                **asked,
+            ).to_dict()
     texts = tuple(f"{entry.category.__name__}: {entry.message}" for entry in caught)
     progress("writing", 0.9)
     facts = RunFacts(started=started, command=command, warnings=texts, workers=workers)

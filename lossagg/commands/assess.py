@@ -9,7 +9,7 @@ from typing import Annotated
 import typer
 
 from lossagg.commands.boundary import guarded
-from lossagg.commands.options import Annual, Out, Seed, Until, Workers, Years, part_of
+from lossagg.commands.options import Annual, Cluster, Out, Seed, Until, Workers, Years, part_of
 
 
 @guarded
@@ -21,6 +21,7 @@ def assess(
     workers: Workers = None,
     until: Until = None,
     annual: Annual = None,
+    cluster: Cluster = None,
 ) -> int:
     """Assess one portfolio: capital, cover costs and a report.
 
@@ -47,6 +48,7 @@ def assess(
             workers=workers,
             until=None if until is None else part_of(until),
             annual=annual,
+            cluster=cluster,
             command=("lossagg", *sys.argv[1:]),
             progress=progress,
         )

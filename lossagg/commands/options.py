@@ -53,6 +53,16 @@ Annual = Annotated[
         show_default=False,
     ),
 ]
+Cluster = Annotated[
+    str | None,
+    typer.Option(
+        "--cluster",
+        metavar="ADDRESS",
+        help="Simulate on a running cluster: the address of its scheduler, such as tcp://host:8786. The "
+        "figures do not depend on it.",
+        show_default=False,
+    ),
+]
 
 
 def part_of(text: str) -> float:

@@ -64,6 +64,22 @@ def run_block(
     return annual_amounts(book, subjects, sums)
 
 
+def numbered_block(
+    book: Book,
+    subjects: tuple[Subject, ...],
+    lines: tuple[PreparedLine, ...],
+    seed: int,
+    years: int,
+    block: int,
+) -> dict[Subject, FloatArray]:
+    """One block of a run of so many years, wherever it is computed: in a thread, a process, on a cluster.
+
+    The tables of the lines come with the task, so every place draws from the same ones.
+    """
+    own = min(BLOCK_YEARS, years - block * BLOCK_YEARS)
+    return run_block(book, subjects, lines, seed=seed, block=block, years=own)
+
+
 def line_sums(
     line: PreparedLine, joint: JointBlock = ALONE, *, seed: int, block: int, years: int
 ) -> FloatArray:

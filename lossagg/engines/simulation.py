@@ -13,18 +13,27 @@ import os
 import time
 from collections import deque
 from collections.abc import Callable
-from concurrent.futures import Future, ThreadPoolExecutor
-from dataclasses import dataclass
+from concurrent.futures import Executor, Future, ThreadPoolExecutor
+from dataclasses import dataclass, field
+from functools import partial
 from typing import TypeVar
 
 import numpy as np
 
 from lossagg.arrays import FloatArray, require_positive, require_probability
 from lossagg.cover import Cover
-from lossagg.engines.blocks import PreparedLine, block_events, line_sums, prepare_line, run_block
+from lossagg.engines.blocks import (
+    PreparedLine,
+    block_events,
+    line_sums,
+    numbered_block,
+    prepare_line,
+    run_block,
+)
 from lossagg.engines.book import GROSS, NET, Book, Line, PlacedCover, Subject
 from lossagg.engines.by_line import detail_subjects
 from lossagg.engines.collected import MOST_WHOLE, MOST_WHOLE_BYTES, Amounts, Collected, bytes_needed
+from lossagg.engines.executors import on_executor
 from lossagg.engines.result import AnnualLoss, BookResult
 from lossagg.engines.sampled import SampledAnnualLoss
 from lossagg.engines.stopping import (
@@ -69,6 +78,8 @@ class Simulation:
         level: level of the value at risk that `until` is about: of the net loss of a book with covers, of
             the gross loss of one without, of the loss or payment asked for from `annual_loss`.
         seconds: longest time a run may be expected to take; a pilot says how long it will.
+        executor: where the blocks of years are computed instead of in threads of this process: any executor
+            of `concurrent.futures`, a pool of processes or a cluster's (see `executors`). It changes no byte.
 
     Raises:
         InputError: a setting outside its range.
@@ -81,6 +92,7 @@ class Simulation:
     until: float | None = None
     level: float = 0.995
     seconds: float = 86_400.0
+    executor: Executor | None = field(default=None, repr=False, compare=False)
 
     def __post_init__(self) -> None:
         _require_whole(self.years, "years", 1, MOST_YEARS)
@@ -92,6 +104,12 @@ class Simulation:
             require_probability(self.until, "until", open_low=True, open_high=True)
         require_probability(self.level, "level", open_low=True, open_high=True)
         require_positive(self.seconds, "seconds")
+        if self.executor is not None and not isinstance(self.executor, Executor):
+            raise InputError(
+                "executor must be an executor of concurrent.futures",
+                value=self.executor,
+                remedy="Give ProcessPoolExecutor(), say, or leave it out for threads of this process.",
+            )
 
     @property
     def name(self) -> str:
@@ -240,6 +258,10 @@ class Run:
         """Simulate the years from `done` (whole blocks) on; `goal` is what progress counts towards."""
         require_losses(years, self.book)
         collected.make_room(years)
+        blocks = range(done // BLOCK_YEARS, -(-years // BLOCK_YEARS))
+        if self.settings.executor is not None:
+            self._fill_elsewhere(self.settings.executor, collected, blocks, years, goal)
+            return
 
         def one(block: int) -> dict[Subject, FloatArray] | None:
             first = block * BLOCK_YEARS
@@ -253,7 +275,26 @@ class Run:
             if self.progress:
                 self.progress(min((block + 1) * BLOCK_YEARS / goal, 1.0))
 
-        for_every_block(one, range(done // BLOCK_YEARS, -(-years // BLOCK_YEARS)), self.workers, after)
+        for_every_block(one, blocks, self.workers, after)
+
+    def _fill_elsewhere(
+        self, executor: Executor, collected: Collected, blocks: range, years: int, goal: int
+    ) -> None:
+        """As `_fill`, with the blocks computed by an executor and taken in here."""
+
+        def after(block: int, amounts: dict[Subject, FloatArray]) -> None:
+            collected.add(block, amounts)
+            if self.every_year:
+                self.every_year(block * BLOCK_YEARS, amounts)
+            if self.progress:
+                self.progress(min((block + 1) * BLOCK_YEARS / goal, 1.0))
+
+        on_executor(
+            executor,
+            partial(numbered_block, self.book, self.subjects, self.lines, self.settings.seed, years),
+            blocks,
+            after,
+        )
 
     def _whole(self, years: int) -> bool:
         whole, _ = bytes_needed(years, len(self.subjects), 0)

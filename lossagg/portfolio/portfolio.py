@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from concurrent.futures import Executor
 from contextlib import nullcontext
 from dataclasses import dataclass
 from pathlib import Path
@@ -91,6 +92,7 @@ class Portfolio:
         workers: int | None = None,
         until: float | None = None,
         annual: Path | None = None,
+        executor: Executor | None = None,
         progress: Progress = silent,
     ) -> Assessment:
         """Compute annual loss, capital and cover costs by three engines that must agree.
@@ -102,6 +104,7 @@ class Portfolio:
             until: simulate until the interval of the capital figure reaches no further than this part of
                 it to either side, 0.005 for 0.5 %, however many years that takes.
             annual: a Parquet file to receive every simulated year, by line and cover.
+            executor: where the years are simulated instead of in threads: a pool of processes, a cluster.
             progress: called with the stage and the fraction done.
 
         Returns:
@@ -123,7 +126,12 @@ class Portfolio:
             dependences=tuple(own.dependence for own in shared),
         )
         simulation = Simulation(
-            years=years, seed=seed, workers=workers, until=until, level=section.capital_level
+            years=years,
+            seed=seed,
+            workers=workers,
+            until=until,
+            level=section.capital_level,
+            executor=executor,
         )
         with AnnualFile(annual) if annual else nullcontext() as file:
             every_year = file.add if file else None
