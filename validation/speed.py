@@ -21,6 +21,7 @@ import time
 from collections.abc import Callable, Iterator
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
+from datetime import date
 from pathlib import Path
 
 import numpy as np
@@ -62,7 +63,9 @@ class Row:
             slower; "seconds": ours must take at most `bound` seconds.
         bound: the figure asked; 0 where none is.
         repetitions: how often each side is timed; 0 leaves it to the command line.
+        spare: seconds that ours may take on top of the bound, where that is "slower".
         threaded: whether the reference uses as many threads as lossagg.
+        single: whether lossagg has one thread here, so that its processor time is not shared out.
     """
 
     name: str
@@ -71,7 +74,9 @@ class Row:
     times: str
     bound: float
     repetitions: int = 0
+    spare: float = 0.0
     threaded: bool = False
+    single: bool = False
 
 
 class CannotMeasureError(Exception):
@@ -209,6 +214,33 @@ def help_rows(workers: int) -> Iterator[Row]:
     )
 
 
+def records_rows(workers: int) -> Iterator[Row]:
+    """Half a million rows of CSV read strictly, checked and prepared, against reading them with pandas."""
+    import pandas as pd
+    from large_records import VALUED, write_csv
+
+    from lossagg.records import check_losses, midpoint, prepare_losses, read_losses
+
+    del workers
+    folder = tempfile.TemporaryDirectory()
+    path = write_csv(Path(folder.name) / "losses.csv", 500_000)
+    middle = midpoint(date(2026, 1, 1), date(2026, 12, 31))
+
+    def check_and_prepare(keep: object = folder) -> object:
+        checked = check_losses(read_losses(path), valuation_date=VALUED, currency="EUR")
+        return prepare_losses(checked, forecast_midpoint=middle, trend=0.04)
+
+    yield Row(
+        "records, 500,000 rows of CSV checked and prepared less 1 s, against pandas",
+        check_and_prepare,
+        lambda: pd.read_csv(path),
+        "slower",
+        3.0,
+        spare=1.0,
+        single=True,
+    )
+
+
 def _command(needed: str) -> list[str]:
     command = Path(sys.executable).with_name("lossagg")
     if not command.exists():
@@ -242,9 +274,9 @@ def measure(row: Row, repetitions: int, workers: int = 0) -> tuple[str, bool]:
     for _ in range(row.repetitions or repetitions):
         if row.reference is not None:
             reference.append(seconds(row.reference, (workers if row.threaded else 1) if workers else 0))
-        ours.append(seconds(row.ours, workers))
+        ours.append(seconds(row.ours, (1 if row.single else workers) if workers else 0))
     mine, other = statistics.median(ours), statistics.median(reference) if reference else float("nan")
-    figure = {"faster": other / mine, "slower": mine / other, "seconds": mine}[row.times]
+    figure = {"faster": other / mine, "slower": (mine - row.spare) / other, "seconds": mine}[row.times]
     met = not row.bound or (figure >= row.bound if row.times == "faster" else figure <= row.bound)
     unit = "s" if row.times == "seconds" else f"times {row.times}"
     asked = f"{'at least' if row.times == 'faster' else 'at most'} {row.bound:g}" if row.bound else "-"
@@ -261,7 +293,7 @@ def main() -> int:
     parser.add_argument("--processor-time", action="store_true")
     given = parser.parse_args()
     threads = given.workers if given.processor_time else 0
-    in_process = (simulation_rows, fill_rows, far_tail_rows, option_rows)
+    in_process = (simulation_rows, fill_rows, far_tail_rows, option_rows, records_rows)
     print(f"{'':<72} {'lossagg s':>9} {'against s':>9} {'figure':>8} {'':<13} asked")
     all_met = True
     for rows in in_process if threads else (*in_process, help_rows, assessment_rows):

@@ -179,7 +179,9 @@ def _native_numbers(column: Column) -> Numbers:
     missing = np.array(cells.is_null().to_numpy(zero_copy_only=False), dtype=np.bool_)
     if not (pa.types.is_integer(kind) or pa.types.is_floating(kind) or pa.types.is_decimal(kind)):
         return Numbers(np.full(len(cells), np.nan), cells, none, missing, none, ~missing)
-    if pa.types.is_decimal(kind):
+    if pa.types.is_float64(kind) and not cells.null_count:
+        values = cells.to_numpy()  # the memory of the cells, not a copy: read-only
+    elif pa.types.is_decimal(kind):
         values = np.array([np.nan if cell is None else float(cell) for cell in cells.to_pylist()])
     else:
         values = np.array(pc.cast(cells, pa.float64(), safe=False).to_numpy(zero_copy_only=False))

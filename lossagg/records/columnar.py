@@ -46,7 +46,10 @@ def read_parquet(path: Path, choose: Choose) -> RawTable:
         _check_types(schema, positions, path.name)
         builder = TableBuilder(path.name, None, headings, positions)
         _fill(builder, source)
-    return builder.finish()
+    table = builder.finish()
+    # What the batches and the columns that are not read took goes back to the system.
+    pa.default_memory_pool().release_unused()
+    return table
 
 
 def _fill(builder: TableBuilder, source: Any) -> None:
@@ -54,8 +57,7 @@ def _fill(builder: TableBuilder, source: Any) -> None:
 
     try:
         for batch in source.iter_batches(batch_size=_BATCH):
-            columns = [_plain(column) for column in batch.columns]
-            builder.add(columns)
+            builder.add([_plain(column) for column in batch.columns])
     except (pa.ArrowInvalid, OSError) as error:
         raise InputError(
             "the Parquet file is damaged",

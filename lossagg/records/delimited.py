@@ -87,7 +87,7 @@ def read_delimited(data: bytes, file: str, layout: Layout, choose: Choose) -> Ra
 
 
 def _check_rows(body: bytes, file: str) -> None:
-    lines = max(body.count(b"\n"), body.count(b"\r"))
+    lines = body.count(b"\n") or body.count(b"\r")
     if lines > MOST_ROWS:
         raise InputError(
             f"the file has {lines} lines",

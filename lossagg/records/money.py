@@ -165,9 +165,6 @@ class Money:
         return floats
 
 
-DecimalArray = Money
-
-
 def _sum_hard_groups(amounts: Money, column: Money, group: IntArray, hard: set[int]) -> None:
     members: dict[int, list[Decimal]] = {number: [] for number in hard}
     for at in np.flatnonzero(np.isin(group, list(hard))).tolist():

@@ -230,7 +230,7 @@ def _assemble(source: Source, typed: TypedColumns, exact: Money, total: BoolArra
         sha256=source.sha256,
         row=raw.row,
         headings={name: raw.headings[position] for name, position in raw.positions.items()},
-        cells={name: column.cells for name, column in raw.columns.items()},
+        cells=typed.cells,
         numbers=typed.values,
         dates=typed.dates,
         words=typed.words,

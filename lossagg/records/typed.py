@@ -26,9 +26,7 @@ from lossagg.records.dates import DateArray, Dates, parse_dates
 from lossagg.records.faults import Fault
 from lossagg.records.headings import INVISIBLE
 from lossagg.records.raw import Column, RawTable
-from lossagg.records.words import WordArray as WordArray
-from lossagg.records.words import by_word as by_word
-from lossagg.records.words import word_codes as word_codes
+from lossagg.records.words import WordArray
 
 _NUMBER_REMEDY = (
     'Write plain numbers with a decimal point, or declare the marks of the file: decimal = "," or '
@@ -39,12 +37,16 @@ _DATE_REMEDY = 'Write dates as YYYY-MM-DD, or declare the format, for example da
 
 @dataclass
 class TypedColumns:
-    """Columns of a table by canonical name and kind, each of shape (rows,), and the faults in them."""
+    """Columns of a table by canonical name and kind, each of shape (rows,), and the faults in them.
+
+    `cells` has the cells of every column as read, those of words by number, which takes less room.
+    """
 
     numbers: dict[str, Numbers] = field(default_factory=dict)
     dates: dict[str, DateArray] = field(default_factory=dict)
     words: dict[str, WordArray] = field(default_factory=dict)
     faults: list[Fault] = field(default_factory=list)
+    cells: dict[str, Any] = field(default_factory=dict)
 
     @property
     def values(self) -> dict[str, FloatArray]:
@@ -76,7 +78,7 @@ def type_columns(
     Raises:
         InputError: a date format that cannot be used.
     """
-    typed = TypedColumns()
+    typed = TypedColumns(cells={name: column.cells for name, column in raw.columns.items()})
     for name, column in raw.columns.items():
         if kinds[name] == "number":
             _number(typed, name, column, style, ~skip)
@@ -191,6 +193,7 @@ def _written_as_text(column: Column, dates: Dates) -> BoolArray:
 
 def _word(typed: TypedColumns, name: str, column: Column, live: BoolArray) -> None:
     written = WordArray.of(column.as_text())
+    typed.cells[name] = written.as_arrow()
     odd = _odd_words(written.names)
     plain = {word: _plain_word(word) for word in written.names.filter(_arrow(odd)).to_pylist()}
     marker = {word: text.lower() in MISSING for word, text in plain.items()}

@@ -86,6 +86,12 @@ class WordArray:
         """The words, row by row."""
         return iter(self.tolist())
 
+    def as_arrow(self) -> Any:
+        """The column as an Arrow array of numbered words, of the same memory."""
+        import pyarrow as pa
+
+        return pa.DictionaryArray.from_arrays(pa.array(self.codes), self.names)
+
     def tolist(self) -> list[str]:
         """The words, row by row."""
         words: list[str] = self.__array__().tolist()
