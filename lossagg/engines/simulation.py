@@ -384,10 +384,19 @@ def for_every_block(
     blocks: range,
     workers: int,
     after: Callable[[int, T], None] | None = None,
+    *,
+    together: int = 1,
 ) -> None:
     """Do the work of every block, several at a time; `after` is called for each in order, in this thread.
 
     Only a few blocks are under way at once, so results that wait for their turn stay few.
+
+    Args:
+        work: computes a block.
+        blocks: their numbers.
+        workers: threads.
+        after: receives the number of each block and its result.
+        together: most blocks handed to a thread at once, where there are plenty.
     """
     if workers == 1 or len(blocks) == 1:
         for block in blocks:
@@ -395,11 +404,17 @@ def for_every_block(
             if after:
                 after(block, result)
         return
+    size = min(max(len(blocks) // (16 * workers), 1), together)
+
+    def some(part: range) -> list[T]:
+        return [work(block) for block in part]
+
     with ThreadPoolExecutor(min(workers, len(blocks))) as pool:
-        under_way: deque[tuple[int, Future[T]]] = deque()
+        under_way: deque[tuple[range, Future[list[T]]]] = deque()
         try:
-            for block in blocks:
-                under_way.append((block, pool.submit(work, block)))
+            for start in range(0, len(blocks), size):
+                part = blocks[start : start + size]
+                under_way.append((part, pool.submit(some, part)))
                 if len(under_way) >= 8 * workers:
                     _finish(under_way, after)
             while under_way:
@@ -408,11 +423,11 @@ def for_every_block(
             pool.shutdown(wait=False, cancel_futures=True)
 
 
-def _finish(under_way: deque[tuple[int, Future[T]]], after: Callable[[int, T], None] | None) -> None:
-    block, future = under_way.popleft()
-    result = future.result()
-    if after:
-        after(block, result)
+def _finish(under_way: deque[tuple[range, Future[list[T]]]], after: Callable[[int, T], None] | None) -> None:
+    part, future = under_way.popleft()
+    for block, result in zip(part, future.result(), strict=True):
+        if after:
+            after(block, result)
 
 
 def _moment_order(book: Book, subject: Subject) -> float:

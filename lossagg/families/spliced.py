@@ -190,12 +190,20 @@ class Spliced(SizeLaw):
         return self._at(above, np.where(above, p, 0.0), np.where(above, 0.0, 1.0 - p))
 
     def _at(self, above: BoolArray, survival: FloatArray, cdf: FloatArray) -> FloatArray:
-        high = self.tail.isf(np.minimum(survival / self._tail_factor, 1.0))
+        # Each point by the one part that answers for it: a table of quantiles asks for thousands.
+        sizes = np.empty(above.shape)
+        high = np.asarray(self.tail.isf(np.minimum(survival[above] / self._tail_factor, 1.0)))
+        sizes[above] = np.maximum(high, self.threshold)
+        weight = self._body_weight
+        within = np.minimum(cdf[~above] / self._body_factor, weight)
         # The larger half of the body by its survival function, whose values are the small ones there.
-        within = np.minimum(cdf / self._body_factor, self._body_weight)
-        rest = np.minimum(float(self.body.sf(self.threshold)) + (self._body_weight - within), 1.0)
-        low = np.where(within < 0.5, np.asarray(self.body.ppf(within)), np.asarray(self.body.isf(rest)))
-        return np.where(above, np.maximum(high, self.threshold), np.minimum(low, self.threshold))
+        small = within < 0.5
+        low = np.empty(within.shape)
+        low[small] = self.body.ppf(within[small])
+        rest = np.minimum(float(self.body.sf(self.threshold)) + (weight - within[~small]), 1.0)
+        low[~small] = self.body.isf(rest)
+        sizes[~above] = np.minimum(low, self.threshold)
+        return sizes
 
     def _limited_mean(self, limit: FloatArray) -> FloatArray:
         low, high, _ = self._split(limit)
