@@ -31,7 +31,7 @@ def paid(cover: Cover, loss: float) -> float:
     ],
 )
 def test_order_of_operations_of_the_practice_note(order: list[str], expected: float) -> None:
-    """practice.md 2.1, computed by hand: a loss of 100,000, deductible 10,000, share 80 %, limit 60,000."""
+    """By hand, no published source: loss 100,000, deductible 10,000, share 80 %, limit 60,000."""
     assert paid(Cover(deductible=1e4, limit=6e4, share=0.8, order=order), 1e5) == pytest.approx(expected)
 
 
@@ -112,7 +112,7 @@ def test_the_order_is_printed() -> None:
 
 
 def test_disappearing_deductible() -> None:
-    """Nothing up to 10, a straight line to the whole loss at 20, the whole loss beyond (practice.md 2.1)."""
+    """Nothing to 10, a straight line to the whole loss at 20, all beyond (common practice, no source)."""
     cover = Cover(deductible=10, disappears_at=20, limit=60)
     expected = [0 if x <= 10 else min(2 * (x - 10) if x < 20 else x, 60) for x in LOSSES]
     np.testing.assert_allclose(cover.event_schedule()(LOSSES), expected, atol=1e-12)
@@ -131,7 +131,7 @@ def test_a_cover_after_a_disappearing_deductible() -> None:
 
 
 def test_limit_including_the_deductible() -> None:
-    """practice.md 2.1: inclusive, min(x, l) - min(x, d); on top, min((x - d)+, l)."""
+    """Common practice, no source: inclusive, min(x, l) - min(x, d); on top, min((x - d)+, l)."""
     inclusive = Cover(deductible=10, limit=60, limit_includes_deductible=True)
     on_top = Cover(deductible=10, limit=60)
     np.testing.assert_allclose(
@@ -195,7 +195,7 @@ def test_surplus(sum_insured: float, share: float) -> None:
 
 
 def test_stop_loss_in_loss_ratios() -> None:
-    """practice.md 2.3: 80 % in excess of 110 % on a premium of 1m at 90, 130 and 250 %."""
+    """Computed here, two routes: 80 % in excess of 110 % on a premium of 1m at 90, 130 and 250 %."""
     cover = Cover.stop_loss(premium=1e6, retention_ratio=1.1, limit_ratio=0.8)
     np.testing.assert_allclose(
         cover.annual_payment(np.array([0.9e6, 1.3e6, 2.5e6])), [0, 200_000, 800_000], atol=1e-6
@@ -203,7 +203,7 @@ def test_stop_loss_in_loss_ratios() -> None:
 
 
 def test_reinstatement_of_the_practice_note() -> None:
-    """practice.md 2.3, by hand: 4m in excess of 1m, one reinstatement at 100 %, premium 0.6m."""
+    """Computed by hand, no published source: 4m in excess of 1m, one reinstatement at 100 %, premium 0.6m."""
     cover = Cover(deductible=1e6, limit=4e6, reinstatements=Reinstatements(number=1, rates=1.0))
     running = np.cumsum(cover.event_schedule()(np.array([3e6, 5e6, 2e6, 6e6])))
     used = cover.annual_payment(running)

@@ -1,7 +1,6 @@
 """The exact engines against published values and closed forms, one test per source, digits asserted.
 
-The numbers C01, D33 and so on are those of the project's catalogue of checks. "Value from memory,
-recomputed" marks a published figure quoted from memory and confirmed by an independent computation.
+"Value from memory, recomputed" marks a published figure quoted from memory and confirmed by an independent computation.
 """
 
 import numpy as np

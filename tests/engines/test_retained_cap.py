@@ -1,5 +1,5 @@
 """A retained cap by conditioning on the large events: against direct two-dimensional convolution, the
-simulation, and the table of practice.md 2.3."""
+simulation, and a table computed by two routes."""
 
 import math
 
@@ -162,7 +162,7 @@ LINE = Line(name="loss", frequency=Poisson(mean=12.0), severity=Lognormal(mu=9.0
     ],
 )
 def test_options_with_a_cap_of_the_practice_note(deductible, cap, kept, charge) -> None:
-    """practice.md 2.3, two routes: Poisson(12) x lognormal(9, 1.5), limit 1m an event inclusive."""
+    """Computed here, two routes: Poisson(12) x lognormal(9, 1.5), limit 1m an event inclusive."""
     option = PlacedCover(
         name="option", terms=Cover(deductible=deductible, retained_cap=cap), after=("above",)
     )

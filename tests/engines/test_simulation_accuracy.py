@@ -15,8 +15,8 @@ from lossagg.families import Exponential, Lognormal, Pareto, Poisson
 
 
 def test_ranks_of_large_samples():
-    """practice.md D3: ranks 994,861-995,139 of a million at 99.5 %, 9,989,804-9,990,196 of ten
-    million at 99.9 % (normal approximation of the binomial; David and Nagaraja 2003, section 7.1)."""
+    """Ranks 994,861-995,139 of a million at 99.5 %, 9,989,804-9,990,196 of ten million at 99.9 %, computed
+    here (normal approximation of the binomial; David and Nagaraja 2003, section 7.1)."""
     assert quantile_ranks(10**6, 0.995) == (994_861, 995_139)
     assert quantile_ranks(10**7, 0.999) == (9_989_804, 9_990_196)
 
@@ -60,7 +60,7 @@ def test_sums_of_a_large_constant_do_not_drift():
 
 
 def test_standard_errors_of_known_laws():
-    """CHECKS E18 (Glasserman 2003; Manistre and Hancock 2005): exponential(1), 99 %, a million years:
+    """Standard errors (Glasserman 2003; Manistre and Hancock 2005): exponential(1), 99 %, a million years:
     0.00994987 for the quantile, 0.0141067 for the tail value at risk; lognormal(0, 1), 99.5 %:
     0.0641068. Own numbers from the published formulas, within 5 %. One sample states a quantile's
     error to 10 % (it rests on the gap between two order statistics), so 40 samples are averaged."""

@@ -186,7 +186,7 @@ def test_counts_follow_the_law(name):
 
 @pytest.mark.parametrize("mean", [0.1, 3.7, 42.5])
 def test_poisson_cells(mean):
-    """Cells of CHECKS G05 (Hormann 1993; exact distribution): chi-square below its 1e-6 point."""
+    """Cells of a sampler test (Hormann 1993; exact distribution): chi-square below its 1e-6 point."""
     starts = {
         0.1: [0, 1, 2, 3],
         3.7: list(range(11)),

@@ -80,7 +80,7 @@ def test_the_cost_falls_and_is_convex_in_the_deductible(mean, severity, step):
 @repeated
 @given(st.floats(0.05, 20.0), SIZES, LEVELS)
 def test_more_risk_never_needs_less_capital(mean, severity, level):
-    """practice.md D5 (DR (EU) 2018/959 Art. 32(g), monotone in risk): larger losses, one loss more."""
+    """Delegated Regulation (EU) 2018/959, Art. 32(g), monotone in risk: larger losses, one loss more."""
     base = ENGINE.annual_loss(Poisson(mean=mean), severity).value_at_risk(level)
     assert ENGINE.annual_loss(Poisson(mean=mean), severity.scaled(1.1)).value_at_risk(level) >= base
     more = ENGINE.annual_loss(Poisson(mean=mean + 1.0), severity)

@@ -25,7 +25,7 @@ def agree(loss, expected):
 
 
 def test_compound_poisson_exponential():
-    """CHECKS C05: Klugman, Panjer and Willmot, Loss Models, compound Poisson-exponential (Bessel
+    """Klugman, Panjer and Willmot, Loss Models, compound Poisson-exponential (Bessel
     form); own numbers from the published formula."""
     agree(
         ENGINE.annual_loss(Poisson(mean=3.0), Exponential(mean=1.0)),
@@ -49,7 +49,7 @@ def test_compound_poisson_exponential():
 
 
 def test_geometric_exponential():
-    """CHECKS C07: Loss Models chapter 9, geometric(4)-exponential(1000)."""
+    """Loss Models chapter 9, geometric(4)-exponential(1000)."""
     agree(
         ENGINE.annual_loss(NegativeBinomial(mean=4.0, dispersion=1.0), Exponential(mean=1000.0)),
         {
@@ -68,7 +68,7 @@ def test_geometric_exponential():
 
 
 def test_negative_binomial_exponential():
-    """CHECKS C08: Loss Models chapter 9, negative binomial(2, 2)-exponential(100)."""
+    """Loss Models chapter 9, negative binomial(2, 2)-exponential(100)."""
     agree(
         ENGINE.annual_loss(NegativeBinomial(mean=4.0, dispersion=0.5), Exponential(mean=100.0)),
         {
@@ -87,7 +87,7 @@ def test_negative_binomial_exponential():
 
 
 def test_compound_poisson_on_three_points():
-    """practice.md D6: Poisson(2) on {1, 2, 3}; exact P(S = 5), quantiles, TVaR, stop loss at 5."""
+    """Computed here, two routes: Poisson(2) on {1, 2, 3}; exact P(S = 5), quantiles, TVaR, stop loss at 5."""
     loss = ENGINE.annual_loss(
         Poisson(mean=2.0), SizeTable(sizes=[1.0, 2.0, 3.0], probabilities=[0.5, 0.3, 0.2])
     )
@@ -111,7 +111,7 @@ def test_compound_poisson_on_three_points():
 
 
 def test_retained_under_a_deductible_of_lomax_losses():
-    """practice.md 2.3, closed form: Poisson(8), Lomax(3, 2000), d = 500: retained mean 2,880, sd 1,131.37."""
+    """Computed here, closed form: Poisson(8), Lomax(3, 2000), d = 500: retained mean 2,880, sd 1,131.37."""
     loss = ENGINE.annual_loss(Poisson(mean=8.0), Lomax(alpha=3.0, scale=2000.0), Cover(limit=500.0))
     agree(loss, {("mean", None): 2880.0, ("sd", None): 1131.3708})
 
@@ -129,8 +129,8 @@ OPTIONS = {
 
 @pytest.mark.parametrize(("deductible", "cap"), OPTIONS)
 def test_table_of_deductible_options(deductible, cap):
-    """practice.md 2.3, Poisson(12) x lognormal(9, 1.5): what the insured keeps per year by deductible
-    and annual cap; mean and sd by closed form, the rest exact to a grid of 50."""
+    """Computed here, two routes: Poisson(12) x lognormal(9, 1.5): what the insured keeps per year
+    by deductible and annual cap; mean and sd by closed form, the rest exact to a grid of 50."""
     law = Poisson(mean=12.0), Lognormal(mu=9.0, sigma=1.5)
     kept = ENGINE.annual_loss(*law, Cover(limit=deductible, annual_limit=cap))
     measures = [("mean", None), ("sd", None)]
@@ -143,7 +143,7 @@ def test_table_of_deductible_options(deductible, cap):
 
 @pytest.mark.parametrize(("deductible", "cap", "charge"), [(25e3, 250e3, 511.6), (100e3, 600e3, 185.9)])
 def test_aggregate_stop_charge(deductible, cap, charge):
-    """practice.md 2.3: cost of capping the retained amount, 511.6 and 185.9 a year: the part that a
+    """Computed here, two routes: cost of capping the retained amount, 511.6 and 185.9 a year: the part that a
     retained cap adds to what the cover pays, year by year on the same losses."""
     law = Poisson(mean=12.0), Lognormal(mu=9.0, sigma=1.5)
     terms = {"deductible": deductible, "limit": 1e6 - deductible}
@@ -157,7 +157,7 @@ def test_aggregate_stop_charge(deductible, cap, charge):
     ("deductible", "attaching", "layer"), [(1000.0, 0.296296, 362.8118), (2000.0, 0.125, None)]
 )
 def test_layer_of_lomax_losses(deductible, attaching, layer):
-    """practice.md 2.3: layer 4000 xs 1000 costs 362.8118 per loss; with Poisson(8) a year the cover
+    """Computed here, two routes: layer 4000 xs 1000 costs 362.8118 per loss; with Poisson(8) a year the cover
     attaches with probability 1 - exp(-8 S(d))."""
     cover = Cover(deductible=deductible, limit=4000.0)
     loss = ENGINE.annual_loss(Poisson(mean=8.0), Lomax(alpha=3.0, scale=2000.0), cover)
@@ -169,7 +169,7 @@ def test_layer_of_lomax_losses(deductible, attaching, layer):
 
 
 def test_far_tail_of_a_lognormal_portfolio():
-    """practice.md D7: Poisson(12) x lognormal(9, 1.5), P(S > 1m) = 0.0195570 and P(S > 2m) =
+    """Computed here, two routes: Poisson(12) x lognormal(9, 1.5), P(S > 1m) = 0.0195570 and P(S > 2m) =
     0.00236066 (grid and conditional Monte Carlo, computed for this project)."""
     loss = ENGINE.annual_loss(Poisson(mean=12.0), Lognormal(mu=9.0, sigma=1.5))
     agree(loss, {("sf", 1e6): 0.0195570, ("sf", 2e6): 0.00236066, ("sf", 5e6): 1.355302e-4})

@@ -165,7 +165,7 @@ def test_cost_falls_and_is_convex_in_the_deductible(kind: str) -> None:
 
 
 def test_corridor_costs_a_layer_of_the_year() -> None:
-    """practice.md 2.1: k (E[min(S, c2)] - E[min(S, c1)]) is taken back."""
+    """Common practice, no source: k (E[min(S, c2)] - E[min(S, c1)]) is taken back."""
     law = Poisson(mean=3.0), Exponential(mean=1000.0)
     whole = Fourier().annual_loss(*law)
     cover = Cover(corridor=Corridor(low=2000, high=5000, share=0.4))
@@ -188,7 +188,7 @@ EXACT = pytest.mark.parametrize("engine", [Fourier(), Panjer()], ids=["fourier",
     ],
 )
 def test_d33_initial_premium_with_reinstatements(engine, number, rate, recoveries, premium) -> None:
-    """Sundt (1991), Walhin and Paris (1999): published formula, own numbers of CHECKS.md D33."""
+    """Sundt (1991), Walhin and Paris (1999): published formula, own numbers."""
     size = SizeTable(sizes=[2, 4, 6, 8, 10], probabilities=[0.3, 0.2, 0.15, 0.1, 0.25])
     cover = Cover(limit=10, reinstatements=Reinstatements(number=number, rates=rate))
     result = reinstated_premium(engine.annual_loss(Poisson(mean=0.8), size, cover), cover)
@@ -199,7 +199,7 @@ def test_d33_initial_premium_with_reinstatements(engine, number, rate, recoverie
 
 @EXACT
 def test_reinstatement_premium_of_the_practice_note(engine) -> None:
-    """practice.md 2.3, two routes: Poisson(2) on {1, 2, 3}, 2 in excess of 1, one at 100 %."""
+    """Computed here, two routes: Poisson(2) on {1, 2, 3}, 2 in excess of 1, one at 100 %."""
     size = SizeTable(sizes=[1, 2, 3], probabilities=[0.5, 0.3, 0.2])
     cover = Cover(deductible=1, limit=2, reinstatements=Reinstatements(number=1, rates=1.0))
     for share in (1.0, 0.25):
@@ -252,7 +252,7 @@ def test_d13_prescription_plan() -> None:
      (5000, 918.3673, 0.801749)],
 )  # fmt: skip
 def test_closed_forms_of_the_practice_note(deductible: float, limited: float, franchise: float) -> None:
-    """practice.md 2.3, closed form, Lomax(3, 2000), mean 1,000: L(d), and a franchise's ratio."""
+    """Computed here, closed form, Lomax(3, 2000), mean 1,000: L(d), and a franchise's ratio."""
     law = Poisson(mean=1.0), Lomax(alpha=3.0, scale=2000.0)
     engine = Fourier(points=2**12)
     ordinary = engine.annual_loss(*law, Cover(deductible=deductible)).mean()

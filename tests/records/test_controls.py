@@ -33,7 +33,7 @@ def test_copies_blank_rows_and_totals_are_no_claims(check) -> None:
 
 
 def test_a_difference_of_one_against_a_tolerance_of_a_half_fails(check) -> None:
-    """Practice A3: off by 1.00 with tolerance 0.50 is a break; by 0.50 it is none."""
+    """Control totals off by 1.00 with tolerance 0.50 is a break; by 0.50 it is none."""
     checked = check(TEXT)
     off = reconcile_controls(
         checked, [totals(amount=300.0, tolerance=0.5), totals(amount=299.5, tolerance=0.5)]

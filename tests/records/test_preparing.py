@@ -25,7 +25,7 @@ def prepare(check):
 
 
 def test_claims_of_one_event_are_one_loss(prepare) -> None:
-    """Practice B5: rows of 8k, 9k and 10k that share an event are one loss of 27k, not three."""
+    """Rows of 8k, 9k and 10k that share an event are one loss of 27k, not three."""
     losses = prepare(
         "amount,date,event\n8000,2024-05-02,E\n10000,2024-05-01,E\n9000,2024-05-03,E\n5000,2024-06-01,\n",
         reporting_threshold=5000,
@@ -40,7 +40,7 @@ def test_claims_of_one_event_are_one_loss(prepare) -> None:
 
 
 def test_trend_of_five_years_at_five_percent(prepare) -> None:
-    """Practice B2: 5 % for 5 years takes 20,000 to 25,525.63 and the threshold 10,000 to 12,762.82.
+    """5 % for 5 years takes 20,000 to 25,525.63 and the threshold 10,000 to 12,762.82.
 
     Five years are 1826.25 days, so the midpoint is at six in the morning.
     """

@@ -192,7 +192,7 @@ def test_corruption_that_does_not_stop_reaches_the_accounts(tmp_path) -> None:
 
 
 def test_one_hundred_rows_with_seven_planted_faults(check) -> None:
-    """Practice A1: 100 read = 93 used + 7 excluded, and the money splits to the cent."""
+    """100 read = 93 used + 7 excluded, and the money splits to the cent."""
     rows = [f"{1000 + k}.{k:02d},2024-01-{k % 28 + 1:02d},E{k:03d}" for k in range(93)]
     faults = ["-1.11,2024-01-01,X1", "NaN,2024-01-01,X2", "2.22,2031-01-01,X3", "3.33,1850-01-01,X4"]
     faults += ["4.44,2024-02-30,X5", "5.55,,X6", rows[0]]
