@@ -8,6 +8,7 @@ import typer
 
 from lossagg.commands.assess import assess
 from lossagg.commands.batch import batch
+from lossagg.commands.check import check
 from lossagg.commands.fit import fit
 from lossagg.commands.price import price
 from lossagg.commands.replay import replay
@@ -31,6 +32,7 @@ def build_app() -> typer.Typer:
     app.callback(help=ABOUT)(_options)
     app.command()(assess)
     app.command()(batch)
+    app.command()(check)
     app.command()(fit)
     app.command()(price)
     app.command()(replay)

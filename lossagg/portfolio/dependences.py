@@ -12,7 +12,6 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from lossagg.engines import Fourier, Simulation
 from lossagg.engines.book import GROSS, NET, Book, Subject
 from lossagg.engines.dependence import Copula, Dependence
 from lossagg.engines.result import AnnualLoss
@@ -109,6 +108,8 @@ def independent_losses(
     book: Book, *, years: int, seed: int, workers: int | None
 ) -> dict[Subject, AnnualLoss]:
     """Gross and net of the same lines taken as independent: exactly where possible, else simulated."""
+    from lossagg.engines import Fourier, Simulation
+
     apart = book.independent()
     exact = Fourier().book(apart)
     wanted = (GROSS, NET)

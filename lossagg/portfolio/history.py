@@ -5,7 +5,7 @@ from __future__ import annotations
 from lossagg.portfolio.assessment import Data
 from lossagg.portfolio.files import LineRecords
 from lossagg.portfolio.schema import LineSection, PortfolioFile
-from lossagg.records import PreparedLosses, midpoint, prepare_losses
+from lossagg.records import PreparedLosses, Reconciliation, midpoint, prepare_losses
 
 _BY_YEAR = (
     "year",
@@ -54,13 +54,22 @@ def history_data(prepared: PreparedLosses | None) -> Data:
     """
     if prepared is None:
         return {"records": None, "by_year": [], "steps": []}
-    reconciled = prepared.reconciliation.to_dict()
-    keys = ("read", "used", "excluded", "amount_read", "amount_used", "amount_excluded")
     years = prepared.years
     return {
-        "records": {key: reconciled[key] for key in keys},
+        **reconciliation_data(prepared.reconciliation),
         "by_year": [
             {column: getattr(years, column)[k].item() for column in _BY_YEAR} for k in range(len(years))
         ],
         "steps": [step.to_dict() for step in prepared.steps],
     }
+
+
+def reconciliation_data(reconciliation: Reconciliation) -> Data:
+    """Rows and money read, used and excluded as plain data, under the key of an assessment.
+
+    Args:
+        reconciliation: of one line.
+    """
+    reconciled = reconciliation.to_dict()
+    keys = ("read", "used", "excluded", "amount_read", "amount_used", "amount_excluded")
+    return {"records": {key: reconciled[key] for key in keys}}

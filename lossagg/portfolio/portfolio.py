@@ -20,12 +20,13 @@ from lossagg.portfolio.dependences import (
     independent_losses,
 )
 from lossagg.portfolio.files import PORTFOLIO_FILE, LineRecords, portfolio_file, read_records
+from lossagg.portfolio.history import prepare_line
 from lossagg.portfolio.line import LineModel, build_line
 from lossagg.portfolio.model_data import book_data
 from lossagg.portfolio.places import placed_covers, tower_cautions
 from lossagg.portfolio.reconciling import reconcile_portfolio
 from lossagg.portfolio.schema import PortfolioFile, read_portfolio_file
-from lossagg.records import PreparedLosses, midpoint, prepare_losses
+from lossagg.records import PreparedLosses
 from lossagg.version import __version__
 
 
@@ -57,16 +58,8 @@ class Portfolio:
 
     def prepare(self) -> dict[str, PreparedLosses]:
         """The losses of each line as they are modelled: events, trend, thresholds, exposure."""
-        middle = midpoint(*self.file.portfolio.forecast)
         return {
-            line.name: prepare_losses(
-                self.records[line.name].losses,
-                exposure=self.records[line.name].exposure,
-                forecast_midpoint=middle,
-                reporting_threshold=line.lowest_recorded,
-                trend=self.records[line.name].index or line.trend,
-                **line.preparation(),
-            )
+            line.name: prepare_line(self.file, line, self.records[line.name])
             for line in self.file.line
             if line.name in self.records
         }

@@ -21,6 +21,7 @@ from lossagg.report.manifest import FORMAT
 FILES = ("assessment.json", "report.html", "tables.xlsx", "manifest.json")
 OPTION_FILES = ("options.json", "options.html", "options.xlsx", "options.csv", "curves.csv", "manifest.json")
 FIT_FILES = ("fit.json", "fit.html", "fit.xlsx", "manifest.json")
+CHECK_FILES = ("check.json", "check.html", "manifest.json")
 _NEW_FOLDER = "Name a folder that does not exist yet."
 
 
@@ -68,7 +69,8 @@ def _check_parents(target: Path) -> None:
 def _check_contents(target: Path, out: Path, files: Collection[str]) -> None:
     names = sorted(entry.name for entry in target.iterdir())
     foreign = [name for name in names if name not in files]
-    if foreign and _is_ours(target) and all(name in (*FILES, *OPTION_FILES, *FIT_FILES) for name in names):
+    known = {*FILES, *OPTION_FILES, *FIT_FILES, *CHECK_FILES}
+    if foreign and _is_ours(target) and known.issuperset(names):
         raise InputError(
             "the output folder holds another kind of result, which would be lost",
             where=f"folder {out}",

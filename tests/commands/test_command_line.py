@@ -72,6 +72,8 @@ def test_help_lists_the_commands_that_work_and_no_other() -> None:
     assert [line.split()[0] for line in listed if line.startswith("  ") and line.split()] == [
         "assess",
         "batch",
+        "check",
+        "fit",
         "price",
         "replay",
     ]

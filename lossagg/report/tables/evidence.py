@@ -101,6 +101,7 @@ def _finding_cells(entry: Entry) -> tuple[Cell, ...]:
         f"sheet {sheet}" if sheet else "",
         "" if entry["row"] is None else f"row {entry['row']}",
         f"column {entry['column']}" if entry["column"] else "",
+        f"line {entry['line']}" if entry.get("line") else "",
     )
     seen = "" if entry["value"] is None else str(entry["value"])
     count, amount = entry.get("count"), entry.get("amount")
