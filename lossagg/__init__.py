@@ -24,6 +24,8 @@ if TYPE_CHECKING:
         Gamma,
         GeneralizedPareto,
         InverseGaussian,
+        LogGamma,
+        LogLogistic,
         Lognormal,
         Lomax,
         Mixture,
@@ -33,14 +35,17 @@ if TYPE_CHECKING:
         SizeTable,
         Spliced,
         Weibull,
+        ZeroInflated,
+        ZeroModified,
     )
     from lossagg.fitting import fit_frequency, fit_severity
     from lossagg.portfolio import Portfolio
 
 _ROOMS = {
     "families": (
-        "Binomial Burr CountTable Exponential Gamma GeneralizedPareto InverseGaussian Lognormal Lomax "
-        "Mixture NegativeBinomial Pareto Poisson SizeTable Spliced Weibull"
+        "Binomial Burr CountTable Exponential Gamma GeneralizedPareto InverseGaussian LogGamma LogLogistic "
+        "Lognormal Lomax Mixture NegativeBinomial Pareto Poisson SizeTable Spliced Weibull ZeroInflated "
+        "ZeroModified"
     ),
     "cover": "Cover",
     "fitting": "fit_severity fit_frequency",
@@ -59,6 +64,8 @@ __all__ = [
     "Gamma",
     "GeneralizedPareto",
     "InverseGaussian",
+    "LogGamma",
+    "LogLogistic",
     "Lognormal",
     "Lomax",
     "Mixture",
@@ -70,6 +77,8 @@ __all__ = [
     "SizeTable",
     "Spliced",
     "Weibull",
+    "ZeroInflated",
+    "ZeroModified",
     "__version__",
     "annual_loss",
     "fit_frequency",

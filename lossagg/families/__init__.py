@@ -8,6 +8,8 @@ from lossagg.families.exponential import Exponential
 from lossagg.families.gamma import Gamma
 from lossagg.families.generalized_pareto import GeneralizedPareto
 from lossagg.families.inverse_gaussian import InverseGaussian
+from lossagg.families.log_gamma import LogGamma
+from lossagg.families.log_logistic import LogLogistic
 from lossagg.families.lognormal import Lognormal
 from lossagg.families.lomax import Lomax
 from lossagg.families.mixture import Mixture
@@ -18,6 +20,7 @@ from lossagg.families.registry import COUNT_FAMILIES, SIZE_FAMILIES, make_count_
 from lossagg.families.size_table import SizeTable
 from lossagg.families.spliced import Spliced
 from lossagg.families.weibull import Weibull
+from lossagg.families.zero_modified import ZeroInflated, ZeroModified
 
 __all__ = [
     "COUNT_FAMILIES",
@@ -31,6 +34,8 @@ __all__ = [
     "GeneralizedPareto",
     "InverseGaussian",
     "Law",
+    "LogGamma",
+    "LogLogistic",
     "Lognormal",
     "Lomax",
     "Mixture",
@@ -41,6 +46,8 @@ __all__ = [
     "SizeTable",
     "Spliced",
     "Weibull",
+    "ZeroInflated",
+    "ZeroModified",
     "make_count_law",
     "make_size_law",
 ]

@@ -17,6 +17,8 @@ from lossagg.families.exponential import Exponential
 from lossagg.families.gamma import Gamma
 from lossagg.families.generalized_pareto import GeneralizedPareto
 from lossagg.families.inverse_gaussian import InverseGaussian
+from lossagg.families.log_gamma import LogGamma
+from lossagg.families.log_logistic import LogLogistic
 from lossagg.families.lognormal import Lognormal
 from lossagg.families.lomax import Lomax
 from lossagg.families.mixture import Mixture
@@ -26,9 +28,17 @@ from lossagg.families.poisson import Poisson
 from lossagg.families.size_table import SizeTable
 from lossagg.families.spliced import Spliced
 from lossagg.families.weibull import Weibull
+from lossagg.families.zero_modified import ZeroInflated, ZeroModified
 
 L = TypeVar("L", bound=Law)
-_COUNTS: tuple[type[CountLaw], ...] = (Poisson, NegativeBinomial, Binomial, CountTable)
+_COUNTS: tuple[type[CountLaw], ...] = (
+    Poisson,
+    NegativeBinomial,
+    Binomial,
+    ZeroModified,
+    ZeroInflated,
+    CountTable,
+)
 _SIZES: tuple[type[SizeLaw], ...] = (
     Exponential,
     Lognormal,
@@ -39,6 +49,8 @@ _SIZES: tuple[type[SizeLaw], ...] = (
     Weibull,
     InverseGaussian,
     Burr,
+    LogLogistic,
+    LogGamma,
     SizeTable,
     Spliced,
     Mixture,
@@ -56,12 +68,13 @@ def make_count_law(family: str, **parameters: Any) -> CountLaw:
 
     Args:
         family: a name in `COUNT_FAMILIES`.
-        **parameters: those of the law's constructor; hyphens count as underscores.
+        **parameters: those of the law's constructor; hyphens count as underscores. The `base` of a law made
+            of another may be a law, or a mapping with a `family` key.
 
     Raises:
         InputError: an unknown family or parameter (naming the nearest), a missing or bad parameter.
     """
-    return _made(_found(family, COUNT_FAMILIES, "count"), parameters)
+    return _made(_found(family, COUNT_FAMILIES, "count"), {k: _base(v) for k, v in parameters.items()})
 
 
 def make_size_law(family: str, **parameters: Any) -> SizeLaw:
@@ -76,6 +89,18 @@ def make_size_law(family: str, **parameters: Any) -> SizeLaw:
         InputError: an unknown family or parameter (naming the nearest), a missing or bad parameter.
     """
     return _made(_found(family, SIZE_FAMILIES, "size"), {k: _inner(v) for k, v in parameters.items()})
+
+
+def _base(value: Any) -> Any:
+    if not isinstance(value, Mapping):
+        return value
+    if "family" not in value:
+        raise InputError(
+            "a law needs its family",
+            value=dict(value),
+            remedy=f"Add family, one of: {', '.join(COUNT_FAMILIES)}.",
+        )
+    return make_count_law(**{str(name).replace("-", "_"): part for name, part in value.items()})
 
 
 def _inner(value: Any) -> Any:

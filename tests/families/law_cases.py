@@ -10,6 +10,8 @@ from lossagg.families import (
     Gamma,
     GeneralizedPareto,
     InverseGaussian,
+    LogGamma,
+    LogLogistic,
     Lognormal,
     Lomax,
     Mixture,
@@ -19,6 +21,8 @@ from lossagg.families import (
     SizeTable,
     Spliced,
     Weibull,
+    ZeroInflated,
+    ZeroModified,
 )
 
 SIMPLE = (
@@ -69,6 +73,14 @@ SIMPLE = (
     Burr(alpha=20, gamma=0.3, scale=10),
     Burr(alpha=3.1, gamma=0.3, scale=10),
     Burr(alpha=1.5, gamma=4, scale=10),
+    LogLogistic(gamma=2.5, scale=1000),
+    LogLogistic(gamma=1.3, scale=10),
+    LogLogistic(gamma=0.7, scale=10),
+    LogGamma(shape=2.5, rate=3.2, minimum=1000),
+    LogGamma(shape=0.4, rate=1.6, minimum=10),
+    LogGamma(shape=5, rate=0.8, minimum=1),
+    LogGamma(shape=1, rate=2, minimum=10),
+    LogGamma(shape=30, rate=25, minimum=100),
 )
 
 # Two Burr laws at which the beta function of the textbook has a pole: checked by quadrature only.
@@ -147,6 +159,13 @@ COUNTS = (
     Binomial(trials=100_000, probability=0.3),
     CountTable(probabilities=[0.05, 0.1, 0.15, 0.2, 0.25, 0.15, 0.06, 0.03, 0.01]),
     CountTable(probabilities=[1]),
+    ZeroModified(base=Poisson(mean=4.2), zero_probability=0.1),
+    ZeroModified(base=Poisson(mean=0.3), zero_probability=0),
+    ZeroModified(base=NegativeBinomial(mean=4.2, dispersion=0.5), zero_probability=0.6),
+    ZeroModified(base=Binomial(trials=20, probability=0.1), zero_probability=0.05),
+    ZeroInflated(base=NegativeBinomial(mean=30, dispersion=0.3), extra_zeros=0.25),
+    ZeroInflated(base=Poisson(mean=0.02), extra_zeros=0.9),
+    ZeroInflated(base=CountTable(probabilities=[0.2, 0.5, 0.3]), extra_zeros=0),
 )
 
 

@@ -13,7 +13,15 @@ from hypothesis import strategies as st
 from law_cases import COUNTS, name
 
 from lossagg.errors import InputError
-from lossagg.families import Binomial, CountLaw, CountTable, NegativeBinomial, Poisson
+from lossagg.families import (
+    Binomial,
+    CountLaw,
+    CountTable,
+    NegativeBinomial,
+    Poisson,
+    ZeroInflated,
+    ZeroModified,
+)
 
 every_law = pytest.mark.parametrize("law", COUNTS, ids=name)
 IN_PANJERS_CLASS = [law for law in COUNTS if law.recursion is not None]
@@ -21,6 +29,8 @@ IN_PANJERS_CLASS = [law for law in COUNTS if law.recursion is not None]
 
 def support(law: CountLaw) -> np.ndarray:
     """Counts that carry all but some 1e-16 of the probability."""
+    if isinstance(law, ZeroModified | ZeroInflated):
+        return np.arange(support(law.base)[-1] + 1)
     if isinstance(law, NegativeBinomial) and law.dispersion > 0.1:
         reach = law.mean() + 40 * law.dispersion * law.mean() + 60
     else:
@@ -180,7 +190,7 @@ def test_thinning_is_a_change_of_the_argument(law):
         thin = law.thinned(p)
         np.testing.assert_allclose(thin.pgf(z), law.pgf(1 - p + p * z), rtol=1e-9, atol=1e-12)
         assert thin.mean() == pytest.approx(p * law.mean(), rel=1e-12)
-        assert thin.family == law.family
+        assert thin.family == law.family or p == 0
 
 
 @settings(derandomize=True, deadline=None, max_examples=60)
@@ -229,6 +239,12 @@ def test_more_exposure():
     assert Binomial(trials=20, probability=0.1).with_exposure(1.5) == Binomial(trials=30, probability=0.1)
     table = CountTable(probabilities=[0.5, 0.5])
     assert table.with_exposure(1) is table
+    inflated = ZeroInflated(base=Poisson(mean=4), extra_zeros=0.2)
+    assert inflated.with_exposure(2) == ZeroInflated(base=Poisson(mean=8), extra_zeros=0.2)
+    modified = ZeroModified(base=Poisson(mean=4), zero_probability=0.3)
+    z = np.linspace(0, 1, 5)
+    share = (1 - 0.3) / (1 - np.exp(-4))
+    assert modified.with_exposure(2).pgf(z) == pytest.approx(1 - share + share * np.exp(8 * (z - 1)))
 
 
 def test_exposure_a_law_cannot_follow():
@@ -238,6 +254,8 @@ def test_exposure_a_law_cannot_follow():
         "exposure times 1.5 would make 4.5 trials, which is not a whole number; seen: 1.5. "
         "Use a Poisson or negative binomial count, or state the trials of the new exposure."
     )
+    with pytest.raises(InputError, match="the probability of no loss would be negative"):
+        ZeroModified(base=Poisson(mean=1), zero_probability=0).with_exposure(2)
     with pytest.raises(InputError) as caught:
         CountTable(probabilities=[0.5, 0.5]).with_exposure(2)
     assert str(caught.value) == (
@@ -264,6 +282,15 @@ def test_exposure_a_law_cannot_follow():
         (
             lambda: Binomial(trials=2, probability=10),
             "probability must be a probability in [0, 1]; seen: 10. Write 0.1 for 10 %.",
+        ),
+        (
+            lambda: ZeroInflated(base=Poisson(mean=0), extra_zeros=0.1),
+            "base must be a count law that is not always 0; seen: Poisson(mean=0.0). "
+            "Give Poisson(mean=...), say.",
+        ),
+        (
+            lambda: ZeroModified(base=Poisson(mean=1), zero_probability=1),
+            "zero_probability must be a probability in [0, 1); seen: 1. Give a number in [0, 1).",
         ),
         (
             lambda: CountTable(probabilities=[0.5, 0.4]),

@@ -14,6 +14,8 @@ from lossagg.families import (
     Gamma,
     GeneralizedPareto,
     InverseGaussian,
+    LogGamma,
+    LogLogistic,
     Lognormal,
     Lomax,
     Mixture,
@@ -23,6 +25,8 @@ from lossagg.families import (
     SizeTable,
     Spliced,
     Weibull,
+    ZeroInflated,
+    ZeroModified,
     make_count_law,
     make_size_law,
 )
@@ -32,6 +36,8 @@ COUNTS = [
     NegativeBinomial(mean=4, dispersion=0.1 + 0.2),
     Binomial(trials=12, probability=1 / 7),
     CountTable(probabilities=[0.1, 0.2, 0.7]),
+    ZeroModified(base=NegativeBinomial(mean=4, dispersion=0.3), zero_probability=1 / 3),
+    ZeroInflated(base=Poisson(mean=1 / 3), extra_zeros=0.1),
 ]
 SPLICED = Spliced(
     body=Lognormal(mu=9.1, sigma=1 / 3),
@@ -40,6 +46,8 @@ SPLICED = Spliced(
     tail_probability=0.1,
 )
 SIZES = [
+    LogLogistic(gamma=7 / 3, scale=1e4 / 3),
+    LogGamma(shape=1 / 3, rate=2.2, minimum=1e3 / 7),
     Exponential(mean=1000 / 3),
     Lognormal(mu=9.1, sigma=1 / 3),
     Pareto(alpha=2.1, minimum=100.0),

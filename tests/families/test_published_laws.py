@@ -17,6 +17,7 @@ from lossagg.families import (
     Gamma,
     GeneralizedPareto,
     InverseGaussian,
+    LogLogistic,
     Lognormal,
     Lomax,
     Mixture,
@@ -27,6 +28,7 @@ from lossagg.families import (
     SizeTable,
     Spliced,
     Weibull,
+    ZeroModified,
 )
 
 LOMAX = Lomax(alpha=3, scale=2000)
@@ -402,3 +404,35 @@ def test_defaults_among_a_hundred_bonds():
     # recomputed): of 100 bonds defaulting with .02 at most 5 default in 95 of 100 years.
     law = Binomial(trials=100, probability=0.02)
     assert law.cdf(4) < 0.95 <= law.cdf(5)
+
+
+def test_zero_modified_counts_of_the_a_b_1_class():
+    """SOA Exam C / STAM sample question: p6/p4 = .5 and p5/p4 = .8 give a = -.25, b = 5.25 (binomial,
+    20 trials, q = .2), and with p0 set to .1 the mean is 3.64 (as printed)."""
+    base = Binomial(trials=20, probability=0.2)
+    assert base.pmf(5) / base.pmf(4) == pytest.approx(0.8)
+    assert base.pmf(6) / base.pmf(4) == pytest.approx(0.5)
+    law = ZeroModified(base=base, zero_probability=0.1)
+    assert law.mean() == pytest.approx(3.64198927758, rel=1e-10)
+    assert round(law.mean(), 2) == 3.64
+
+
+def test_the_a_b_0_recursion_of_three_probabilities():
+    """SOA Exam C / STAM sample question: p0 = p1 = .25, p2 = .1875 give p3 = .125: negative binomial, r = 2,
+    beta = 1."""
+    law = NegativeBinomial(mean=2.0, dispersion=0.5)
+    assert law.pmf([0, 1, 2, 3]) == pytest.approx([0.25, 0.25, 0.1875, 0.125], rel=1e-13)
+
+
+def test_log_logistic_by_the_appendix():
+    """Klugman, Panjer & Willmot, Loss Models, appendix A: gamma 2.5, theta 1000; own numbers on the
+    published formula."""
+    law = LogLogistic(gamma=2.5, scale=1000)
+    assert law.limited_mean([500, 2000, 10000]) == pytest.approx(
+        [477.064218746, 1099.72014662, 1300.24950007], rel=1e-9
+    )
+    assert law.loss_elimination_ratio(500) == pytest.approx(0.361054952025, rel=1e-9)
+    assert law.mean_excess(500) == pytest.approx(993.484523707, rel=1e-9)
+    var = float(law.isf(0.01))
+    assert var == pytest.approx(6284.25902968, rel=1e-9)
+    assert var + law.mean_excess(var) == pytest.approx(10500.1525739, rel=1e-9)

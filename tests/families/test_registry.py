@@ -17,13 +17,21 @@ from lossagg.families import (
     Pareto,
     SizeTable,
     Spliced,
+    ZeroModified,
     make_count_law,
     make_size_law,
 )
 
 
 def test_the_family_names_are_those_of_the_portfolio_file():
-    assert list(COUNT_FAMILIES) == ["poisson", "negative-binomial", "binomial", "count-table"]
+    assert list(COUNT_FAMILIES) == [
+        "poisson",
+        "negative-binomial",
+        "binomial",
+        "zero-modified",
+        "zero-inflated",
+        "count-table",
+    ]
     assert list(SIZE_FAMILIES) == [
         "exponential",
         "lognormal",
@@ -34,6 +42,8 @@ def test_the_family_names_are_those_of_the_portfolio_file():
         "weibull",
         "inverse-gaussian",
         "burr",
+        "log-logistic",
+        "log-gamma",
         "size-table",
         "spliced",
         "mixture",
@@ -65,13 +75,19 @@ def test_laws_made_of_laws_from_nested_keys():
     mixture = make_size_law("mixture", weights=[0.5, 0.5], parts=[body, {"family": "exponential", "mean": 5}])
     assert mixture == Mixture(weights=[0.5, 0.5], parts=[Lognormal(mu=6, sigma=1), Exponential(mean=5)])
     assert make_size_law("mixture", weights=[1], parts=[spliced]).parts == (spliced,)
+    base = {"family": "negative-binomial", "mean": 4, "dispersion": 0.5}
+    assert make_count_law("zero-modified", base=base, **{"zero-probability": 0.3}) == ZeroModified(
+        base=NegativeBinomial(mean=4, dispersion=0.5), zero_probability=0.3
+    )
+    with pytest.raises(InputError, match="a law needs its family"):
+        make_count_law("zero-inflated", base={"mean": 4}, extra_zeros=0.3)
 
 
 def test_the_parameters_of_every_simple_law_make_it_again():
     for law in SIMPLE:
         assert make_size_law(law.family, **law.parameters) == law
     for law in COUNTS:
-        if law.family != "count-table":
+        if not {"probabilities", "base"} & vars(law).keys():
             assert make_count_law(law.family, **law.parameters) == law
 
 
@@ -103,7 +119,7 @@ def test_the_parameters_of_laws_made_of_laws_have_dotted_names():
 
 KNOWN = (
     "exponential, lognormal, pareto, lomax, generalized-pareto, gamma, weibull, inverse-gaussian, burr, "
-    "size-table, spliced, mixture"
+    "log-logistic, log-gamma, size-table, spliced, mixture"
 )
 
 
@@ -126,7 +142,7 @@ KNOWN = (
         (
             lambda: make_count_law("poison", mean=1),
             "unknown count family; seen: 'poison'. Did you mean 'poisson'? "
-            "Known: poisson, negative-binomial, binomial, count-table.",
+            "Known: poisson, negative-binomial, binomial, zero-modified, zero-inflated, count-table.",
         ),
         (
             lambda: make_size_law("lomax", alhpa=1, scale=2),

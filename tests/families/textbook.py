@@ -180,6 +180,29 @@ def burr(alpha, gamma, scale):
     )
 
 
+def log_logistic(gamma, scale):
+    return burr(1, gamma, scale)
+
+
+def log_gamma(shape, rate, minimum):
+    a, r, m = mp.mpf(shape), mp.mpf(rate), mp.mpf(minimum)
+
+    def depth(x):
+        return mp.log(max(x, m) / m)
+
+    def partial(k, x):
+        # The integral of y**(a - 1) exp((k - r) y), below and at the rate by Kummer's function.
+        y = depth(x)
+        return m**k * (r * y) ** a / mp.gamma(a + 1) * mp.hyp1f1(a, a + 1, (k - r) * y)
+
+    return Textbook(
+        sf=lambda x: mp.gammainc(a, r * depth(x)) / mp.gamma(a),
+        pdf=lambda x: (r**a * depth(x) ** (a - 1) * (x / m) ** -r / mp.gamma(a) / x) if x >= m else mp.mpf(0),
+        partial=partial,
+        upper=lambda k, x: m**k * (1 - k / r) ** -a * mp.gammainc(a, (r - k) * depth(x)) / mp.gamma(a),
+    )
+
+
 def inverse_gaussian(mean, shape):
     m, s = mp.mpf(mean), mp.mpf(shape)
 
@@ -221,4 +244,6 @@ BY_FAMILY = {
     "generalized-pareto": generalized_pareto,
     "burr": burr,
     "inverse-gaussian": inverse_gaussian,
+    "log-logistic": log_logistic,
+    "log-gamma": log_gamma,
 }
