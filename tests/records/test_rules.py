@@ -427,3 +427,14 @@ def test_findings_use_the_keys_and_severities_of_an_assessment(check) -> None:
     data = finding.to_dict()
     assert data["severity"] == "set aside"
     assert {"severity", "code", "file", "row", "column", "value", "message", "remedy"} <= set(data)
+
+
+def test_one_bad_row_does_not_stop_a_small_file_unless_it_is_most_of_the_money(check) -> None:
+    nine = "".join(f"10,2024-01-{day:02d}\n" for day in range(1, 10))
+    assert check(f"amount,date\n{nine}-12,2024-02-01\n", tolerance=0.05).reconciliation.excluded == 1
+    with pytest.raises(RecordsError, match=r"52\.6% of the money \(1 row\) would be set aside"):
+        check(f"amount,date\n{nine}-100,2024-02-01\n", tolerance=0.05)
+    with pytest.raises(RecordsError, match=r"18\.2% of rows \(2 rows\)"):
+        check(f"amount,date\n{nine}-1,2024-02-01\n-1,2024-02-02\n", tolerance=0.05)
+    with pytest.raises(RecordsError, match=r"more than the tolerance of 0\.0%"):
+        check(f"amount,date\n{nine}-12,2024-02-01\n", tolerance=0.0)
