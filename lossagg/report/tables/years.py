@@ -92,7 +92,7 @@ def _event_columns(covers: Sequence[str]) -> tuple[Column, ...]:
         Column("Line"),
         Column("Event", "count"),
         Column("Loss", "amount"),
-        *(Column(f"Paid by {clean(cover)}", "amount") for cover in covers),
+        *(Column(f"Counts towards {clean(cover)}", "amount") for cover in covers),
     )
 
 
