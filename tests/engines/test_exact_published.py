@@ -1,6 +1,7 @@
 """The exact engines against published values and closed forms, one test per source, digits asserted.
 
-"Value from memory, recomputed" marks a published figure quoted from memory and confirmed by an independent computation.
+"Value from memory, recomputed" marks a published figure quoted from memory and confirmed by an independent
+computation.
 """
 
 import numpy as np
