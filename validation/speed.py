@@ -25,6 +25,7 @@ from datetime import date
 from pathlib import Path
 
 import numpy as np
+import plain_fit
 import plain_simulation as plain
 
 import lossagg
@@ -200,6 +201,43 @@ def option_rows(workers: int) -> Iterator[Row]:
         )
 
 
+def fit_rows(workers: int) -> Iterator[Row]:
+    """A lognormal law fitted to a million truncated and censored losses, against Nelder-Mead on NumPy; and to
+    ten million in bounded memory, which is measured in a process of its own."""
+    del workers
+    for name, own in (("thresholds of five levels", False), ("a threshold of its own each", True)):
+        losses, thresholds, stopped = plain_fit.losses(1_000_000, own_thresholds=own)
+
+        found: list[tuple[float, float]] = []
+
+        def ours(parts: tuple = (losses, thresholds, stopped), keep: list = found) -> None:
+            fit = lossagg.fit_severity(parts[0], "lognormal", parts[1], parts[2])
+            keep.append((fit.parameters["mu"], fit.parameters["sigma"]))
+
+        def reference(parts: tuple = (losses, thresholds, stopped), keep: list = found) -> None:
+            mu, sigma = plain_fit.nelder_mead(*parts)
+            if not np.allclose(keep[-1], (mu, sigma), rtol=1e-6):
+                raise CannotMeasureError(f"fit: {keep[-1]} is not {(mu, sigma)} to six digits")
+
+        yield Row(
+            f"fit of 1,000,000 truncated and censored losses, {name}, against Nelder-Mead",
+            ours,
+            reference,
+            "faster",
+            20.0 if not own else 0.0,
+            repetitions=1,
+        )
+    script = ROOT / "validation" / "plain_fit.py"
+    yield Row(
+        "fit of 10,000,000 losses: seconds, with at most 8 times the memory of the losses",
+        lambda: _run([sys.executable, str(script)]),
+        None,
+        "seconds",
+        120.0,
+        repetitions=1,
+    )
+
+
 def help_rows(workers: int) -> Iterator[Row]:
     """The command's help against starting Python with NumPy."""
     del workers
@@ -293,7 +331,7 @@ def main() -> int:
     parser.add_argument("--processor-time", action="store_true")
     given = parser.parse_args()
     threads = given.workers if given.processor_time else 0
-    in_process = (simulation_rows, fill_rows, far_tail_rows, option_rows, records_rows)
+    in_process = (simulation_rows, fill_rows, far_tail_rows, option_rows, records_rows, fit_rows)
     print(f"{'':<72} {'lossagg s':>9} {'against s':>9} {'figure':>8} {'':<13} asked")
     all_met = True
     for rows in in_process if threads else (*in_process, help_rows, assessment_rows):

@@ -31,11 +31,16 @@ def log_normal_survival(z: Jet) -> Jet:
 
 def log_mills(z: Jet) -> Jet:
     """log of Mills' ratio P(Z > z) / phi(z) of the standard normal law."""
-    excess, bend = _hazard_excess(z.value)
-    value = special.log_ndtr(-z.value) + 0.5 * z.value**2 + _HALF_LOG_TWO_PI
-    positive = z.value > 0  # there the two terms above cancel, and erfcx does not
-    value[positive] = np.log(special.erfcx(z.value[positive] / np.sqrt(2))) + 0.5 * np.log(np.pi / 2)
-    return lift(z, value, -excess, bend)
+    return lift(z, *mills_parts(z.value))
+
+
+def mills_parts(z: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """log of Mills' ratio with its first and second derivative, each of z's shape."""
+    excess, bend = _hazard_excess(z)
+    value = special.log_ndtr(-z) + 0.5 * z**2 + _HALF_LOG_TWO_PI
+    positive = z > 0  # there the two terms above cancel, and erfcx does not
+    value[positive] = np.log(special.erfcx(z[positive] / np.sqrt(2))) + 0.5 * np.log(np.pi / 2)
+    return value, -excess, bend
 
 
 def log_one_minus_exp(a: Jet) -> Jet:

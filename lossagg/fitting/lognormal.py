@@ -20,10 +20,10 @@ import numpy as np
 from lossagg.arrays import FloatArray
 from lossagg.families import Lognormal
 from lossagg.families.base import SizeLaw
-from lossagg.fitting.jet_functions import log_mills, log_normal_survival
-from lossagg.fitting.jets import Jet, exp, log
-from lossagg.fitting.likelihood import NEGLIGIBLE, Range, SizeLikelihood
-from lossagg.fitting.sample import Sample
+from lossagg.fitting.jet_functions import log_normal_survival, mills_parts
+from lossagg.fitting.jets import Jet, compose, exp, log
+from lossagg.fitting.likelihood import BLOCK, NEGLIGIBLE, Range, SizeLikelihood
+from lossagg.fitting.sample import Sample, Weighted
 
 _HALF_LOG_TWO_PI = float(0.5 * np.log(2 * np.pi))
 
@@ -70,11 +70,11 @@ class LognormalLikelihood(SizeLikelihood):
         slope, precision = inner
         for group, sign in ((sample.stopped, 1.0), (sample.thresholds, -1.0)):
             if len(group.points):
-                logs = np.log(group.points)
-                apart = logs - self.reference
-                bend = slope * apart - precision * (0.5 * apart**2)
-                survival = bend + log_mills(self._standardised(inner, logs)) - _HALF_LOG_TWO_PI
-                total = total + survival.total(sign * group.weights)
+                logs = Weighted(np.log(group.points), group.weights)
+                apart, weight = logs.points - self.reference, float(np.sum(logs.weights))
+                one, two = (float(np.sum(logs.weights * apart**k)) for k in (1, 2))
+                bend = slope * one - precision * (0.5 * two) - weight * _HALF_LOG_TWO_PI
+                total = total + sign * (bend + self._mills(inner, apart, logs.weights))
         return total
 
     def runaway(self, inner: tuple[Jet, ...]) -> str:
@@ -102,6 +102,25 @@ class LognormalLikelihood(SizeLikelihood):
         constant = sample.log_sum + sample.count * _HALF_LOG_TWO_PI
         bend = slope * (sample.count * apart) - precision * (0.5 * squares)
         return 0.5 * sample.count * log(precision) + bend - constant
+
+    def _mills(self, inner: tuple[Jet, ...], apart: FloatArray, weights: FloatArray) -> Jet:
+        """Weighted sum of the log of Mills' ratio at root * apart - shift, in blocks: derivatives in root and
+        shift are sums, so that no point needs a gradient of its own."""
+        root = exp(0.5 * log(inner[1]))
+        shift = inner[0] / root
+        sums = np.zeros(6)
+        for start in range(0, len(apart), BLOCK):
+            a, w = apart[start : start + BLOCK], weights[start : start + BLOCK]
+            value, first, second = mills_parts(root.value * a - shift.value)
+            slope, bend = w * first, w * second
+            parts = (w * value, slope * a, slope, bend * a**2, bend * a, bend)
+            sums += [float(np.sum(part)) for part in parts]
+        return compose(
+            (root, shift),
+            float(sums[0]),
+            np.array([sums[1], -sums[2]]),
+            np.array([[sums[3], -sums[4]], [-sums[4], sums[5]]]),
+        )
 
     def _standardised(self, inner: tuple[Jet, ...], logs: FloatArray) -> Jet:
         root = exp(0.5 * log(inner[1]))

@@ -6,7 +6,7 @@ from collections.abc import Callable, Mapping
 
 import numpy as np
 
-from lossagg.arrays import FloatArray, Floats
+from lossagg.arrays import BoolArray, FloatArray, Floats
 from lossagg.errors import FitError, InputError
 from lossagg.fitting.classic_laws import (
     ExponentialLikelihood,
@@ -85,7 +85,7 @@ def fit_severity(
     _require_excess(amounts, np.maximum(thresholds, max(held.values(), default=0.0)))
     maximum = climb(
         lambda point: log_likelihood(likelihood, sample, point),
-        likelihood.starts(sample),
+        _starts(likelihood, sample, family, (amounts, thresholds, marks)),
         sample.observations,
         family,
         likelihood,
@@ -129,6 +129,32 @@ def index_interval(
         return np.inf, np.inf
     _, low, high = shape
     return (1 / high if high > 0 else np.inf), (1 / low if low > 0 else np.inf)
+
+
+def _starts(
+    likelihood: SizeLikelihood,
+    sample: Sample,
+    family: str,
+    losses: tuple[FloatArray, FloatArray, BoolArray],
+) -> list[FloatArray]:
+    """Starting points; for very many losses the maximum of every k-th of them comes first."""
+    starts = likelihood.starts(sample)
+    step = sample.observations // _SEVERAL_STARTS
+    if step < 2 or len(starts) == 1:
+        return starts
+    try:
+        amounts, thresholds, marks = losses
+        few = sample_of(amounts[::step], thresholds[::step], marks[::step], sample.scale)
+        found = climb(
+            lambda point: log_likelihood(likelihood, few, point),
+            likelihood.starts(few),
+            few.observations,
+            family,
+            likelihood,
+        )
+    except FitError:  # say so of all the losses, not of a few
+        return starts
+    return [found.point]
 
 
 def likelihood_of(family: str, sample: Sample, fixed: Mapping[str, float]) -> tuple[SizeLikelihood, bool]:

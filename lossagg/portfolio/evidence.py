@@ -16,13 +16,16 @@ from lossagg.portfolio.line import LineModel
 from lossagg.records import PreparedLosses
 
 
-def line_evidence(model: LineModel, draws: int = DRAWS, thresholds: int = THRESHOLDS) -> Data:
+def line_evidence(
+    model: LineModel, draws: int = DRAWS, thresholds: int = THRESHOLDS, tail_draws: int = 0
+) -> Data:
     """The line's entry in the assessment, less its annual figures.
 
     Args:
         model: the line.
         draws: most bootstrap draws behind a p-value.
         thresholds: how many tail thresholds are looked at.
+        tail_draws: bootstrap draws at each of them, where losses above are stopped at policy limits.
     """
     prepared = model.prepared
     return {
@@ -42,7 +45,7 @@ def line_evidence(model: LineModel, draws: int = DRAWS, thresholds: int = THRESH
         "fit": None if prepared is None else _fit_points(model, prepared),
         "tail": None
         if prepared is None or model.severities is None
-        else tail_evidence(prepared, model.severities, thresholds, draws),
+        else tail_evidence(prepared, model.severities, thresholds, tail_draws),
     }
 
 

@@ -12,7 +12,7 @@ from lossagg.portfolio.what_if import influence, sensitivity
 from lossagg.version import __version__
 
 FIT_FORMAT = "lossagg.fit/1"
-_DRAWS, _THRESHOLDS = 199, 20
+_DRAWS, _THRESHOLDS, _TAIL_DRAWS = 199, 20, 39
 
 
 def fit_report(portfolio: Portfolio, *, draws: int = _DRAWS, progress: Progress = silent) -> Data:
@@ -57,7 +57,7 @@ def fit_report(portfolio: Portfolio, *, draws: int = _DRAWS, progress: Progress 
 
 
 def _line(model: LineModel, level: float, draws: int) -> Data:
-    entry = line_evidence(model, draws, _THRESHOLDS)
+    entry = line_evidence(model, draws, _THRESHOLDS, min(draws, _TAIL_DRAWS))
     fitted = model.severities is not None and model.prepared is not None
     return {
         **entry,
