@@ -10,6 +10,7 @@ from lossagg.commands.assess import assess
 from lossagg.commands.batch import batch
 from lossagg.commands.check import check
 from lossagg.commands.fit import fit
+from lossagg.commands.new import new
 from lossagg.commands.price import price
 from lossagg.commands.replay import replay
 from lossagg.version import __version__
@@ -34,6 +35,7 @@ def build_app() -> typer.Typer:
     app.command()(batch)
     app.command()(check)
     app.command()(fit)
+    app.command()(new)
     app.command()(price)
     app.command()(replay)
     return app

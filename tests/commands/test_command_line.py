@@ -74,6 +74,7 @@ def test_help_lists_the_commands_that_work_and_no_other() -> None:
         "batch",
         "check",
         "fit",
+        "new",
         "price",
         "replay",
     ]
