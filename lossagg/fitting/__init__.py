@@ -28,6 +28,7 @@ from lossagg.fitting.diagnostics import (
 from lossagg.fitting.frequency import fit_frequency
 from lossagg.fitting.goodness import Goodness, goodness
 from lossagg.fitting.goodness_test import GoodnessTest, goodness_test
+from lossagg.fitting.grouped import GroupedFit, fit_grouped
 from lossagg.fitting.notes import Note
 from lossagg.fitting.overdispersion import Overdispersion, overdispersion
 from lossagg.fitting.regression import PoissonRegression, poisson_regression
@@ -47,6 +48,7 @@ __all__ = [
     "FrequencyTrend",
     "Goodness",
     "GoodnessTest",
+    "GroupedFit",
     "Note",
     "Overdispersion",
     "PoissonRegression",
@@ -64,6 +66,7 @@ __all__ = [
     "count_goodness",
     "count_points",
     "fit_frequency",
+    "fit_grouped",
     "fit_severity",
     "fit_spliced",
     "frequency_trend",

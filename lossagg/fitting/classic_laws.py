@@ -128,6 +128,28 @@ class GammaLikelihood(SizeLikelihood):
         return points
 
 
+@dataclass(frozen=True)
+class GammaOfShapeLikelihood(GammaLikelihood):
+    """The gamma law of a given shape. Coordinate: log mean."""
+
+    ranges: ClassVar[dict[str, Range]] = {"scale": "positive"}
+
+    shape: float
+
+    def inner(self, point: tuple[Jet, ...]) -> tuple[Jet, ...]:
+        return point[0] * 0.0 + self.shape, exp(point[0]) / self.shape
+
+    def natural(self, inner: tuple[Jet, ...], scale: float) -> tuple[Jet, ...]:
+        return (inner[1] * scale,)
+
+    def fixed(self, scale: float) -> dict[str, float]:
+        return {"shape": self.shape}
+
+    def starts(self, sample: Sample) -> list[FloatArray]:
+        risk = max(sample.exposure_above, 0.1 * sample.sum) / sample.count
+        return [np.log([risk]), np.log([0.3 * risk])]
+
+
 class InverseGaussianLikelihood(SizeLikelihood):
     """Coordinates: log mean and log shape, which are orthogonal for complete losses."""
 

@@ -6,11 +6,12 @@ from collections.abc import Callable, Mapping
 
 import numpy as np
 
-from lossagg.arrays import BoolArray, FloatArray, Floats
+from lossagg.arrays import BoolArray, FloatArray, Floats, require_positive
 from lossagg.errors import FitError, InputError
 from lossagg.fitting.classic_laws import (
     ExponentialLikelihood,
     GammaLikelihood,
+    GammaOfShapeLikelihood,
     InverseGaussianLikelihood,
     ParetoLikelihood,
 )
@@ -41,6 +42,7 @@ FAMILIES = (
     "burr",
 )
 _ORIGINS = {"pareto": "minimum", "generalized-pareto": "threshold"}
+_HELD = {**_ORIGINS, "gamma": "shape"}
 MOST_STARTS = 4
 _SEVERAL_STARTS = 20_000  # losses above which only the best start climbs, unless it fails
 
@@ -68,7 +70,8 @@ def fit_severity(
             was recorded. A loss equal to its threshold counts as recorded.
         censored: one boolean per loss, True where the amount stopped at a policy limit.
         fixed: {"minimum": m} for "pareto" or {"threshold": u} for "generalized-pareto". Without it
-            they are the smallest reporting threshold, or the smallest loss where there is none.
+            they are the smallest reporting threshold, or the smallest loss where there is none. For
+            "gamma" {"shape": a} holds the shape; without it the shape is estimated.
 
     Raises:
         InputError: losses, thresholds or marks that cannot be used, or an unknown family.
@@ -82,7 +85,8 @@ def fit_severity(
     likelihood, borrowed = likelihood_of(family, sample, fixed or {})
     held = likelihood.fixed(sample.scale)
     require_support(sample, family, len(likelihood.ranges))
-    _require_excess(amounts, np.maximum(thresholds, max(held.values(), default=0.0)))
+    origin = held.get(_ORIGINS.get(family, ""), 0.0)
+    _require_excess(amounts, np.maximum(thresholds, origin))
     maximum = climb(
         lambda point: log_likelihood(likelihood, sample, point),
         _starts(likelihood, sample, family, (amounts, thresholds, marks)),
@@ -159,14 +163,16 @@ def _starts(
 
 def likelihood_of(family: str, sample: Sample, fixed: Mapping[str, float]) -> tuple[SizeLikelihood, bool]:
     """The likelihood of a family, and whether a fixed parameter was read off the smallest loss."""
-    unknown = set(fixed) - {_ORIGINS.get(family, "")}
+    unknown = set(fixed) - {_HELD.get(family, "")}
     if unknown:
-        allowed = f"only {_ORIGINS[family]!r}" if family in _ORIGINS else "none of its parameters"
+        allowed = f"only {_HELD[family]!r}" if family in _HELD else "none of its parameters"
         raise InputError(
             f"the {family} fit holds {allowed} fixed", value=sorted(unknown), remedy="Remove the others."
         )
     if family in _ORIGINS:
         return _with_origin(family, sample, fixed)
+    if family == "gamma" and fixed:
+        return GammaOfShapeLikelihood(require_positive(fixed["shape"], "shape")), False
     makers: dict[str, Callable[[], SizeLikelihood]] = {
         "exponential": ExponentialLikelihood,
         "lognormal": lambda: LognormalLikelihood.about(sample),

@@ -168,3 +168,31 @@ def test_a_trended_threshold_is_trended_with_its_loss():
     trend = np.array([growth, 1.0, growth, 1.0])
     fit = fit_severity(losses * trend, "pareto", thresholds * trend)
     assert_parameters(fit, rel=1e-5, alpha=1.49968, minimum=10e3)
+
+
+def test_data_set_b_gamma_with_and_without_its_shape():
+    """Klugman, p. 30: alpha 2 held, theta 712.2 and -179.98; both free, .55616, 2561.1 and -162.29."""
+    held = fit_severity(DATA_SET_B, "gamma", fixed={"shape": 2.0})
+    assert held.parameters == pytest.approx({"scale": 712.2, "shape": 2.0}, rel=1e-9)
+    assert held.log_likelihood == pytest.approx(-179.976790015, abs=1e-8)
+    assert held.standard_errors["scale"] == pytest.approx(712.2 / np.sqrt(40), rel=1e-8)
+    assert (held.estimated, held.fixed, held.standard_errors["shape"]) == (1, ("shape",), 0.0)
+    free = fit_severity(DATA_SET_B, "gamma")
+    assert_parameters(free, rel=1e-8, shape=0.556157797371, scale=2561.14362998)
+    assert round(free.log_likelihood, 2) == -162.29
+
+
+def test_data_set_b_inverse_gamma_through_reciprocals():
+    """Klugman, exercise 27: inverse exponential 197.72 and -159.78, inverse gamma, alpha 2 held, 395.44 and
+    -169.07, free .70888, 140.16 and -158.88. If X is inverse gamma, 1 / X is gamma."""
+    losses = np.asarray(DATA_SET_B, dtype=float)
+    jacobian = -2 * np.sum(np.log(losses))
+    for fixed, shape, theta, value in (
+        ({"shape": 1.0}, 1.0, 197.718178734, -159.778268096),
+        ({"shape": 2.0}, 2.0, 395.436357469, -169.073088151),
+        (None, 0.708882592565, 140.158975138, -158.881761354),
+    ):
+        fit = fit_severity(1 / losses, "gamma", fixed=fixed)
+        assert fit.parameters["shape"] == pytest.approx(shape, rel=1e-7)
+        assert 1 / fit.parameters["scale"] == pytest.approx(theta, rel=1e-7)
+        assert fit.log_likelihood + jacobian == pytest.approx(value, abs=1e-6)

@@ -1,0 +1,110 @@
+"""Do the intervals cover? The actual coverage of 95 % intervals, law by law, at 20, 100 and 1000 losses.
+
+For each law, losses are drawn from known parameters (seeded), the law is fitted, and two intervals of every
+parameter are asked whether they hold the truth: that of the standard error and that of the profile
+likelihood. The share that does is the coverage; its own standard error is below one point at 500 samples.
+Samples whose likelihood has no maximum (a lighter-tailed limit law fits them as well) are counted apart:
+a user would be told so and would have no interval either.
+
+    python validation/coverage.py [--quick] [--samples 500]
+
+Leaves with exit code 1 when a profile interval at 1000 losses covers less than 90 %.
+"""
+
+from __future__ import annotations
+
+import argparse
+import sys
+from dataclasses import dataclass
+
+import numpy as np
+
+import lossagg
+from lossagg.errors import FitError
+from lossagg.families.base import SizeLaw
+
+LAWS: tuple[tuple[SizeLaw, dict[str, float] | None], ...] = (
+    (lossagg.Exponential(mean=1000), None),
+    (lossagg.Lognormal(mu=7, sigma=1.5), None),
+    (lossagg.Pareto(alpha=1.5, minimum=1000), {"minimum": 1000}),
+    (lossagg.Lomax(alpha=2, scale=1000), None),
+    (lossagg.GeneralizedPareto(shape=0.5, scale=1000), {"threshold": 0}),
+    (lossagg.Gamma(shape=0.7, scale=1000), None),
+    (lossagg.Weibull(shape=0.7, scale=1000), None),
+    (lossagg.InverseGaussian(mean=1000, shape=700), None),
+    (lossagg.Burr(alpha=1.5, gamma=1.5, scale=1000), None),
+)
+SIZES = (20, 100, 1000)
+LEVEL = 0.95
+
+
+@dataclass(frozen=True)
+class Coverage:
+    """How often the intervals of one parameter held the truth.
+
+    Attributes:
+        law: family name.
+        parameter: its name.
+        losses: in each sample.
+        by_error: share of the standard error's intervals that did.
+        by_profile: share of the profile likelihood's intervals that did.
+        fitted: samples that had a fit.
+        samples: samples drawn.
+    """
+
+    law: str
+    parameter: str
+    losses: int
+    by_error: float
+    by_profile: float
+    fitted: int
+    samples: int
+
+
+def study(law: SizeLaw, fixed: dict[str, float] | None, losses: int, samples: int) -> list[Coverage]:
+    """Coverage of every estimated parameter of one law at one size."""
+    held: dict[str, list[tuple[bool, bool]]] = {}
+    fitted = 0
+    for k in range(samples):
+        random = np.random.default_rng([len(law.family), losses, k])
+        amounts = np.asarray(law.isf(1 - random.random(losses)))
+        try:
+            fit = lossagg.fit_severity(amounts, law.family, fixed=fixed)
+        except FitError:
+            continue
+        fitted += 1
+        for name in fit.ranges:
+            truth = law.parameters[name]
+            intervals = (fit.interval(name, LEVEL), fit.profile_interval(name, LEVEL))
+            inside = tuple(low <= truth <= high for low, high in intervals)
+            held.setdefault(name, []).append((inside[0], inside[1]))
+    return [
+        Coverage(law.family, name, losses, *np.mean(seen, axis=0).tolist(), fitted, samples)
+        for name, seen in held.items()
+    ]
+
+
+def main(arguments: list[str] | None = None) -> int:
+    """Print the table of coverage."""
+    parser = argparse.ArgumentParser(description=__doc__.splitlines()[0])
+    parser.add_argument("--quick", action="store_true", help="two laws, 60 samples of 20 and 100 losses")
+    parser.add_argument("--samples", type=int, default=500)
+    asked = parser.parse_args(arguments)
+    laws, sizes = (LAWS[1:3], SIZES[:2]) if asked.quick else (LAWS, SIZES)
+    samples = 60 if asked.quick else asked.samples
+    print(f"{'law':<20}{'parameter':<12}{'losses':>7}{'standard error':>16}{'profile':>10}{'fitted':>13}")
+    low = False
+    for law, fixed in laws:
+        for losses in sizes:
+            for row in study(law, fixed, losses, samples):
+                print(
+                    f"{row.law:<20}{row.parameter:<12}{row.losses:>7}{row.by_error:>16.1%}"
+                    f"{row.by_profile:>10.1%}{row.fitted:>6} of {row.samples}",
+                    flush=True,
+                )
+                low |= row.losses >= 1000 and row.by_profile < 0.9
+    return int(low)
+
+
+if __name__ == "__main__":
+    sys.exit(main())
