@@ -7,7 +7,7 @@ import sys
 import time
 from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Literal
 
 import typer
 
@@ -158,7 +158,9 @@ def _rich_table(table: Table) -> RichTable:
     drawn = Grid(title=Text(clean(table.title)), title_justify="left", box=box.SIMPLE_HEAD)
     for column in table.columns:
         heading = Text(clean(column.heading))
-        drawn.add_column(heading, justify="left" if column.kind == "text" else "right")
+        # Folded where the terminal is narrow: an amount or a place cut short would mislead.
+        justify: Literal["left", "right"] = "left" if column.kind == "text" else "right"
+        drawn.add_column(heading, justify=justify, overflow="fold")
     for row in table.rows:
         views = [show(cell, column.kind) for cell, column in zip(row, table.columns, strict=True)]
         drawn.add_row(*(_rich_cell(view.text, view.range) for view in views))

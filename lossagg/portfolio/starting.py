@@ -141,8 +141,8 @@ def _of_portfolio(proposal: Proposal) -> Iterator[Assumption]:
     slips = ""
     if proposal.last_few:
         slips = (
-            f" Only {proposal.last_few} of the losses are dated in {proposal.latest.year}; the latest before "
-            f"them is {proposal.latest_before}: slips?"
+            f" Losses dated in {proposal.latest.year}: only {proposal.last_few}; the latest before them: "
+            f"{proposal.latest_before}. Is this a slip?"
         )
     yield Assumption(
         "valuation-date",

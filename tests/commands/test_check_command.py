@@ -178,6 +178,36 @@ def test_a_hundred_portfolios_one_bad_within_a_minute(tmp_path: Path) -> None:
     assert [part["folder"] for part in check["portfolios"]] == [f"p{k:03}" for k in range(100)]
 
 
+def test_a_portfolio_that_breaks_the_check_itself_stops_no_other(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    from lossagg.portfolio import checking
+
+    check = checking.check_portfolio
+
+    def breaking(path: Path) -> dict:
+        if path.name == "a":
+            raise IndexError("planted")
+        return check(path)
+
+    monkeypatch.setattr(checking, "check_portfolio", breaking)
+    for name in ("a", "b"):
+        recorded_portfolio(tmp_path / name)
+    result = run("check", tmp_path)
+    assert result.exit_code == 1
+    assert "1 usable, 1 stopped" in result.output
+    assert "unexpected IndexError" in result.output
+
+
+def test_another_kind_of_result_is_not_replaced(tmp_path: Path) -> None:
+    folder, out = recorded_portfolio(tmp_path / "one"), tmp_path / "out"
+    assert run("check", folder, "--out", out).exit_code == 0
+    assert run("check", folder, "--out", folder).exit_code == 2
+    (out / "mine.txt").write_text("mine")
+    assert run("check", folder, "--out", out).exit_code == 2
+    assert (out / "mine.txt").read_text() == "mine"
+
+
 def test_where_there_is_no_portfolio_it_says_so(tmp_path: Path) -> None:
     (tmp_path / "empty").mkdir()
     assert run("check", tmp_path / "empty").exit_code == 2
