@@ -10,6 +10,7 @@ import numpy as np
 
 from lossagg.arrays import Floats
 from lossagg.errors import FitError, InputError
+from lossagg.fitting.empirical import EMPIRICAL, refuse_empirical_tail
 from lossagg.fitting.frequency import fit_frequency
 from lossagg.fitting.results import Fit, FrequencyFit, SeverityFit
 from lossagg.fitting.severity import fit_severity
@@ -126,6 +127,8 @@ def compare_severities(
     """
 
     def fit(family: str) -> SeverityFit:
+        if family == EMPIRICAL and (tail_threshold is None or len(families) > 1):
+            _refuse_empirical(losses, families, tail_threshold)
         if tail_threshold is None:
             made = fit_severity(losses, family, truncation, censored)
         else:
@@ -140,6 +143,16 @@ def compare_severities(
         return made
 
     return _ranked(families, fit, "severity")
+
+
+def _refuse_empirical(losses: Floats, families: Sequence[str], tail_threshold: float | None) -> None:
+    if tail_threshold is None:
+        raise refuse_empirical_tail(float(np.max(losses)))
+    raise InputError(
+        "an empirical body has no likelihood to be ranked by",
+        value=list(families),
+        remedy='Write fit = ["empirical"] alone.',
+    )
 
 
 def compare_frequencies(

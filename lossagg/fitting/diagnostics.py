@@ -82,14 +82,17 @@ class CountPoints(_Table):
 
 
 @dataclass(frozen=True, eq=False)
-class _ProductLimit:
+class ProductLimit:
+    """Steps of the product-limit curve at the distinct uncensored losses."""
+
     amounts: FloatArray  # distinct uncensored losses
     before: FloatArray  # survival just before each
     after: FloatArray
     variance: FloatArray  # Greenwood's sum, of log survival
 
 
-def _product_limit(amounts: FloatArray, thresholds: FloatArray, marks: BoolArray) -> _ProductLimit:
+def product_limit(amounts: FloatArray, thresholds: FloatArray, marks: BoolArray) -> ProductLimit:
+    """The product-limit curve of checked losses with their thresholds and censoring marks."""
     points, events = np.unique(amounts[~marks], return_counts=True)
     # At risk at x: thresholds at or below x, amounts at or above; a loss equal to its threshold counts.
     entered = np.searchsorted(np.sort(thresholds), points, side="right")
@@ -103,7 +106,7 @@ def _product_limit(amounts: FloatArray, thresholds: FloatArray, marks: BoolArray
     before = np.concatenate([[1.0], after[:-1]])
     with np.errstate(divide="ignore"):
         variance = np.cumsum(deaths / (at_risk * (at_risk - deaths)))
-    return _ProductLimit(points, before, after, variance)
+    return ProductLimit(points, before, after, variance)
 
 
 def survival_points(
@@ -122,7 +125,7 @@ def survival_points(
         InputError: losses, thresholds or marks that cannot be used.
     """
     amounts, thresholds, marks = checked_losses(losses, truncation, censored)
-    curve = _product_limit(amounts, thresholds, marks)
+    curve = product_limit(amounts, thresholds, marks)
     chosen = _thinned(len(curve.amounts))
     amount, survival = curve.amounts[chosen], curve.after[chosen]
     low, high = _survival_interval(survival, curve.variance[chosen])
@@ -146,7 +149,7 @@ def quantile_points(
         InputError: losses, thresholds or marks that cannot be used.
     """
     amounts, thresholds, marks = checked_losses(losses, truncation, censored)
-    curve = _product_limit(amounts, thresholds, marks)
+    curve = product_limit(amounts, thresholds, marks)
     chosen = _thinned(len(curve.amounts))
     place = 0.5 * (curve.before[chosen] + curve.after[chosen])
     base = float(fit.model.sf(float(thresholds.min())))

@@ -68,7 +68,8 @@ def _end(objective: Objective, quantity: Quantity, maximum: Maximum, drop: float
         found = _solve(objective, quantity, point + step, multiplier, maximum.value - fall)
         if found is None:  # once more, from where the last stage stood
             found = _solve(objective, quantity, point, multiplier, maximum.value - fall)
-        if found is None or side * (_value(quantity, found[0]) - _value(quantity, point)) < 0:
+        # A quantity that left its range (an alpha beyond infinity) is no number, and its interval is open.
+        if found is None or not side * (_value(quantity, found[0]) - _value(quantity, point)) >= 0:
             return side * np.inf
         point, multiplier = found
     return _value(quantity, point)

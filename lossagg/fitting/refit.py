@@ -6,8 +6,9 @@ import numpy as np
 
 from lossagg.arrays import BoolArray, FloatArray
 from lossagg.errors import FitError
-from lossagg.families import Spliced
+from lossagg.families import SizeTable, Spliced
 from lossagg.families.base import SizeLaw
+from lossagg.fitting.empirical import empirical_body
 from lossagg.fitting.jets import Jet, variables
 from lossagg.fitting.likelihood import SizeLikelihood, log_likelihood
 from lossagg.fitting.results import SeverityFit
@@ -35,6 +36,9 @@ def refit(fit: SeverityFit, amounts: FloatArray, thresholds: FloatArray, censore
     threshold = fit.model.threshold
     above, entered = losses_above(amounts, thresholds, censored, threshold)
     tail = _refitted(fit.solution, amounts[above], entered, censored[above])
+    if isinstance(fit.model.body, SizeTable):
+        table, beyond, _ = empirical_body(amounts, thresholds, censored, threshold)
+        return Spliced(body=table, tail=tail, threshold=threshold, tail_probability=beyond)
     body, share, _ = body_and_share(amounts, thresholds, censored, threshold, fit.model.body.family, most=1)
     return Spliced(body=body, tail=tail, threshold=threshold, tail_probability=share)
 

@@ -18,6 +18,7 @@ from lossagg.arrays import BoolArray, FloatArray, Floats, require_positive
 from lossagg.errors import FitError, InputError
 from lossagg.families import Spliced
 from lossagg.families.base import SizeLaw
+from lossagg.fitting.empirical import EMPIRICAL, empirical_body
 from lossagg.fitting.jet_functions import log_one_minus_exp, log_sum_exp
 from lossagg.fitting.jets import Jet, lift, variables
 from lossagg.fitting.likelihood import Range, SizeLikelihood
@@ -93,7 +94,7 @@ def fit_spliced(
     Args:
         losses: amounts above 0, shape (n,), as for `fit_severity`.
         body: family below the threshold: "exponential", "lognormal", "lomax", "gamma", "weibull",
-            "inverse-gaussian" or "burr".
+            "inverse-gaussian" or "burr"; or "empirical", the losses up to the threshold themselves.
         threshold: the splice point; losses above it belong to the tail, one equal to it to the body.
         truncation: reporting threshold, one number or one per loss; None where all were recorded.
         censored: one boolean per loss, True where the amount stopped at a policy limit.
@@ -106,11 +107,13 @@ def fit_spliced(
         InputError: input that cannot be used, or an unknown body or tail.
         FitError: too few losses on a side of the threshold, or no maximum for a part.
     """
-    _require_choice(body, BODIES, "body")
+    _require_choice(body, (*BODIES, EMPIRICAL), "body")
     _require_choice(tail, TAILS, "tail")
     require_positive(threshold, "threshold")
     amounts, reported, marks = checked_losses(losses, truncation, censored)
     tail_fit = _fit_tail(amounts, reported, marks, threshold, tail)
+    if body == EMPIRICAL:
+        return _with_empirical_body(amounts, reported, marks, threshold, tail_fit)
     law, share, made = body_and_share(amounts, reported, marks, threshold, body)
     likelihood, maximum, sample = made.objective.likelihood, made.maximum, made.objective.below
     joint, parts = made.covariance, len(likelihood.ranges)
@@ -132,6 +135,35 @@ def fit_spliced(
         observations=amounts.size,
         gradient_norm=float(np.hypot(maximum.distance, tail_fit.gradient_norm)),
         ranges=_ranges(likelihood, tail_fit),
+        censored=int(marks.sum()),
+        truncation=(float(reported.min()), float(reported.max())) if reported.any() else None,
+        solution=tail_fit.solution,
+        tail_prefix="tail.",
+        notes=_notes(model, tail_fit, threshold),
+    )
+
+
+def _with_empirical_body(
+    amounts: FloatArray, reported: FloatArray, marks: BoolArray, threshold: float, tail_fit: SeverityFit
+) -> SeverityFit:
+    """A splice whose body is a table. Its likelihood is that of the tail and of the share above only: it must
+    not be compared with that of a law for the body."""
+    table, share, variance = empirical_body(amounts, reported, marks, threshold)
+    model = Spliced(body=table, tail=tail_fit.model, threshold=float(threshold), tail_probability=share)
+    above = int((amounts > threshold).sum())
+    binomial = special.xlogy(above, share) + special.xlog1py(amounts.size - above, -share)
+    return SeverityFit(
+        family=f"spliced {EMPIRICAL} and {tail_fit.family}",
+        model=model,
+        parameters=model.parameters,
+        covariance=_joined(np.array([[variance]]), tail_fit.covariance, 0),
+        fixed=(*(f"tail.{name}" for name in tail_fit.fixed), "threshold"),
+        log_likelihood=tail_fit.log_likelihood + float(binomial),
+        estimated=1 + tail_fit.estimated,
+        observations=amounts.size,
+        gradient_norm=tail_fit.gradient_norm,
+        ranges={f"tail.{name}": kind for name, kind in tail_fit.ranges.items()}
+        | {"tail_probability": "probability"},
         censored=int(marks.sum()),
         truncation=(float(reported.min()), float(reported.max())) if reported.any() else None,
         solution=tail_fit.solution,

@@ -12,6 +12,7 @@ from pathlib import Path
 from typing import TypeVar
 
 from lossagg.errors import InputError, place
+from lossagg.fitting.empirical import EMPIRICAL
 from lossagg.fitting.frequency import FAMILIES as COUNT_FAMILIES
 from lossagg.fitting.severity import FAMILIES as SIZE_FAMILIES
 from lossagg.portfolio.assessment import Data
@@ -225,7 +226,8 @@ def _check_laws(line: LineSection, key: str) -> None:
     if line.severity.fit is None:
         given_severity(line.severity, f"{key}.severity")
     else:
-        _require_known(line.severity.fit, SIZE_FAMILIES, f"{key}.severity.fit")
+        bodies = () if line.severity.tail_threshold is None else (EMPIRICAL,)
+        _require_known(line.severity.fit, (*SIZE_FAMILIES, *bodies), f"{key}.severity.fit")
 
 
 def _require_known(families: Collection[str], known: Collection[str], key: str) -> None:

@@ -18,9 +18,10 @@ import numpy as np
 from lossagg.arrays import BoolArray, FloatArray
 from lossagg.engines import Fourier
 from lossagg.errors import EngineError, FitError
-from lossagg.families import Spliced
+from lossagg.families import SizeTable, Spliced
 from lossagg.families.base import CountLaw, SizeLaw
 from lossagg.fitting import FrequencyFit, SeverityFit, fit_frequency, fit_severity, fit_spliced
+from lossagg.fitting.empirical import EMPIRICAL
 from lossagg.fitting.tail import Large, tail_fit
 from lossagg.portfolio.assessment import Data
 from lossagg.portfolio.line import LineModel, survival_by_year
@@ -162,6 +163,7 @@ def refitted_severity(
     chosen = model.severities.chosen
     if isinstance(chosen.model, Spliced):
         tail, body = chosen.solution.likelihood.law.family, chosen.model.body.family
+        body = EMPIRICAL if body == SizeTable.family else body
         return fit_spliced(amounts, body, chosen.model.threshold, thresholds, censored, tail)
     held = {name: chosen.parameters[name] for name in chosen.fixed}
     return fit_severity(amounts, chosen.family, thresholds, censored, fixed=held)

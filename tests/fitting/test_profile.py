@@ -4,6 +4,7 @@ import numpy as np
 import pytest
 from scipy import optimize, special, stats
 
+from lossagg import Lomax
 from lossagg.errors import InputError
 from lossagg.fitting import fit_severity, fit_spliced
 
@@ -65,6 +66,23 @@ def test_an_end_the_losses_do_not_bound_is_open():
     low, high = fit_severity(losses, "lomax").profile_interval("alpha")
     assert np.isfinite(low)
     assert high == np.inf
+
+
+def test_a_scale_whose_interval_is_open_ends_at_infinity():
+    """The limit of endless alpha takes the scale along: the profile never falls by 1.92 (seen at a million),
+    and the end is `inf`, not missing."""
+    law = Lomax(alpha=2, scale=1000)
+    losses = np.asarray(law.isf(1 - np.random.default_rng([5, 20, 1]).random(20)))
+    fit = fit_severity(losses, "lomax")
+
+    def profile(scale):
+        alpha = 20 / np.sum(np.log1p(losses / scale))
+        return 20 * np.log(alpha / scale) - (alpha + 1) * np.sum(np.log1p(losses / scale))
+
+    low, high = fit.profile_interval("scale")
+    assert profile(1e6) > fit.log_likelihood - DROP
+    assert high == np.inf
+    assert profile(low) == pytest.approx(fit.log_likelihood - DROP, abs=1e-6)
 
 
 def test_the_interval_of_an_index_from_few_losses_is_wider_upwards_than_the_standard_error_says():
