@@ -41,3 +41,13 @@ def test_choices_that_cannot_be_meant(tmp_path: Path) -> None:
         chosen(tmp_path / "a", 'choose = "gamma", reason = "x"')
     with pytest.raises(InputError, match="reason belongs to choose"):
         chosen(tmp_path / "b", 'reason = "x"')
+
+
+def test_an_empirical_severity_needs_a_parametric_tail(tmp_path: Path) -> None:
+    alone = RECORDS.replace(SEVERITY, 'severity = { fit = ["empirical"] }')
+    with pytest.raises(InputError, match="says nothing beyond the largest loss"):
+        read_portfolio(recorded_portfolio(tmp_path / "alone", alone)).models()
+    spliced = RECORDS.replace(SEVERITY, 'severity = { fit = ["empirical"], tail-threshold = 4000 }')
+    (model,) = read_portfolio(recorded_portfolio(tmp_path / "spliced", spliced)).models()
+    assert model.severity.body.family == "size-table"
+    assert model.severity.tail.family == "generalized-pareto"
