@@ -125,8 +125,9 @@ class Replay:
             source = int(self._sources(block, line)[place])
             _, sizes = block_events(line, joint, seed=self.seed, block=block, first=source, last=source + 1)
             shocks = int(joint.shocks[line.name][source]) if line.name in joint.shocks else 0
+            terms, cost = _event_terms(book, line.name), book.line(line.name).cost
             events += [
-                _event(book, line.name, k, float(size), k <= shocks) for k, size in enumerate(sizes, 1)
+                _event(cost, terms, line.name, k, float(size), k <= shocks) for k, size in enumerate(sizes, 1)
             ]
         amounts = annual_amounts(book, book.subjects, _sums(book, events))
         return ReplayedYear(
@@ -192,36 +193,52 @@ def nearest_years(years: IntArray, amounts: FloatArray, value: float, number: in
     return [int(years[k]) for k in nearest[np.lexsort((years[nearest], amounts[nearest]))]]
 
 
-def _event(book: Book, line: str, number: int, size: float, shock: bool) -> Event:
-    payments = tuple(
-        _event_payment(book, cover, line, size) for cover in book.covers if book.covers_line(cover, line)
-    )
-    return Event(line, number, size, _at(book.line(line).cost, size), shock, payments)
+@dataclass(frozen=True)
+class _EventTerms:
+    """What a cover does to one event of a line, term by term, as functions of the ground-up loss."""
+
+    cover: str
+    steps: tuple[tuple[str, Schedule], ...]
+    paid: Schedule
+
+    def payment(self, size: float) -> Payment:
+        steps = tuple(Step(words, _at(schedule, size)) for words, schedule in self.steps)
+        return Payment(self.cover, steps, _at(self.paid, size))
 
 
-def _event_payment(book: Book, cover: PlacedCover, line: str, size: float) -> Payment:
+def _event_terms(book: Book, line: str) -> tuple[_EventTerms, ...]:
+    """The covers of a line, each worked out once for all its events."""
+    return tuple(_terms_of(book, cover, line) for cover in book.covers if book.covers_line(cover, line))
+
+
+def _event(
+    cost: Schedule, terms: tuple[_EventTerms, ...], line: str, number: int, size: float, shock: bool
+) -> Event:
+    payments = tuple(own.payment(size) for own in terms)
+    return Event(line, number, size, _at(cost, size), shock, payments)
+
+
+def _terms_of(book: Book, cover: PlacedCover, line: str) -> _EventTerms:
     terms, own = cover.terms, book.line(line)
     begin = Schedule.identity()
     steps = []
     left, expense = book.left_before(cover, line)
     if not left.is_identity:
-        steps.append(Step(f"left by {', '.join(cover.after)}", _at(left, size)))
+        steps.append((f"left by {', '.join(cover.after)}", left))
     if expense > 0 and terms.expense_basis == "inside":
         begin = begin.scaled(1.0 + expense)
-        steps.append(Step("with expense", _at(begin.after(left), size)))
+        steps.append(("with expense", begin.after(left)))
     if terms.surplus is not None:
         begin = begin.scaled(surplus_share(terms, own.sum_insured))
-        steps.append(Step(WORDS["surplus"], _at(begin.after(left), size)))
+        steps.append((WORDS["surplus"], begin.after(left)))
     stated = stated_terms(terms)
     for k, operation in enumerate(terms.event_order, start=1):
         if operation in stated:
-            reached = through(terms, begin, terms.event_order[:k]).after(left)
-            steps.append(Step(WORDS[operation], _at(reached, size)))
-    schedule = book.event_payment(cover, line)
-    paid = 0.0 if schedule is None else _at(schedule, size)
+            steps.append((WORDS[operation], through(terms, begin, terms.event_order[:k]).after(left)))
+    paid = book.event_payment(cover, line) or Schedule.capped(0.0)
     if expense > 0 and terms.expense_basis in ("outside", "pro-rata"):
-        steps.append(Step("with expense", paid))
-    return Payment(cover.name, tuple(steps), paid)
+        steps.append(("with expense", paid))
+    return _EventTerms(cover.name, tuple(steps), paid)
 
 
 def _year_payment(

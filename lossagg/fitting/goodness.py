@@ -98,7 +98,15 @@ def _kolmogorov_smirnov(rest: FloatArray, level: FloatArray) -> float:
 
 
 def _anderson_darling(rest: FloatArray, level: FloatArray) -> float:
-    """Sum over the steps of [k**2 log u - (1 - k)**2 log(1 - u) - u]; 0 log 0 is 0 at both ends."""
+    """Sum over the steps of [k**2 log u - (1 - k)**2 log(1 - u) - u]; 0 log 0 is 0 at both ends.
+
+    A loss recorded exactly at its threshold, where the fit has no mass below it, was rounded: it is placed
+    half way to the next one. At the threshold itself the statistic would be infinite.
+    """
+    rounded = np.flatnonzero(rest[1:] == 1.0) + 1
+    if rounded.size and (rest < 1.0).any():
+        rest = rest.copy()
+        rest[rounded] = (1.0 + rest[rest < 1.0].max()) / 2
     places, missing = 1 - rest, (1 - level) ** 2
     upper = special.xlogy(missing, rest[:-1]) - special.xlogy(missing, rest[1:])
     lower = special.xlogy(level**2, places[1:]) - special.xlogy(level**2, places[:-1])

@@ -63,7 +63,7 @@ def compute(
 
 def figures(
     book: Book,
-    lines: Sequence[LineModel],
+    evidence: Sequence[Data],
     results: dict[str, BookResult],
     levels: Sequence[float],
     capital_level: float,
@@ -73,8 +73,9 @@ def figures(
     seed: int,
     apart: Mapping[Subject, AnnualLoss] | None = None,
 ) -> Data:
-    """Lines, gross, net, covers, crosscheck and headline of the assessment; the years nearest to it, and
-    gross and net of independent lines (`apart`) where the book has dependences."""
+    """Lines (with their `evidence_of`), gross, net, covers, crosscheck and headline of the assessment; the
+    years nearest to it, and gross and net of independent lines (`apart`) where the book has dependences.
+    """
     asked = tuple(sorted({*levels, capital_level}))
     check = crosscheck(book, results, asked)
     withheld = broken or ("" if check.agrees else WITHHELD)
@@ -89,7 +90,8 @@ def figures(
     return {
         "headline": headline_of(headline, best[headline][0], capital_level, check, withheld=broken),
         "lines": [
-            _line(model, best[Subject("line", model.name)][0], levels, withheld=withheld) for model in lines
+            _line(entry, best[Subject("line", entry["name"])][0], levels, withheld=withheld)
+            for entry in evidence
         ],
         "by_line": by_line_of(results["simulation"], levels, withheld=withheld),
         "gross": whole(GROSS),
@@ -117,11 +119,16 @@ def figures(
     }
 
 
-def _line(model: LineModel, loss: AnnualLoss, levels: Sequence[float], *, withheld: str) -> Data:
+def evidence_of(lines: Sequence[LineModel]) -> list[Data]:
+    """What is known of every line without the engines: records, fits, tests, tail."""
+    return [
+        {**line_evidence(line), "expense": line.expense, "sum_insured": line.sum_insured} for line in lines
+    ]
+
+
+def _line(entry: Data, loss: AnnualLoss, levels: Sequence[float], *, withheld: str) -> Data:
     return {
-        **line_evidence(model),
-        "expense": model.expense,
-        "sum_insured": model.sum_insured,
+        **entry,
         "mean": None if withheld else number(loss.mean()),
         "sd": None if withheld else number(loss.sd()),
         "levels": levels_of(loss, levels, withheld=withheld),

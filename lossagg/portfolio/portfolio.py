@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from concurrent.futures import Executor
+from concurrent.futures import Executor, ThreadPoolExecutor
 from contextlib import nullcontext
 from dataclasses import dataclass
 from pathlib import Path
@@ -10,7 +10,7 @@ from pathlib import Path
 from lossagg.engines import Simulation
 from lossagg.engines.book import GROSS, Book
 from lossagg.portfolio.annual_file import AnnualFile
-from lossagg.portfolio.assess import Progress, compute, figures, silent
+from lossagg.portfolio.assess import Progress, compute, evidence_of, figures, silent
 from lossagg.portfolio.assessment import FORMAT, Assessment, Data, Writer
 from lossagg.portfolio.cautions import cautions
 from lossagg.portfolio.dependences import (
@@ -126,7 +126,9 @@ class Portfolio:
             level=section.capital_level,
             executor=executor,
         )
-        with AnnualFile(annual) if annual else nullcontext() as file:
+        # The evidence of the lines needs no engine, and the engines leave the interpreter most of the time.
+        with ThreadPoolExecutor(1) as beside, AnnualFile(annual) if annual else nullcontext() as file:
+            evidence = beside.submit(evidence_of, models)
             every_year = file.add if file else None
             results = compute(book, simulation, progress=progress, every_year=every_year)
         years = results["simulation"].losses[GROSS].years  # type: ignore[attr-defined]
@@ -143,7 +145,7 @@ class Portfolio:
             "run": {"version": __version__, "seed": seed, "years": years, "inputs": list(self.inputs)},
             **figures(
                 book,
-                models,
+                evidence.result(),
                 results,
                 section.levels,
                 section.capital_level,
