@@ -9,7 +9,7 @@ import pytest
 
 import lossagg
 
-SCRIPT = Path(__file__).parents[2] / "validation" / "coverage.py"
+SCRIPT = Path(__file__).parents[2] / "validation" / "interval_coverage.py"
 
 
 @pytest.fixture(scope="module")

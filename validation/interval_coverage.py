@@ -6,7 +6,7 @@ likelihood. The share that does is the coverage; its own standard error is below
 Samples whose likelihood has no maximum (a lighter-tailed limit law fits them as well) are counted apart:
 a user would be told so and would have no interval either.
 
-    python validation/coverage.py [--quick] [--samples 500]
+    python validation/interval_coverage.py [--quick] [--samples 500]
 
 Leaves with exit code 1 when a profile interval at 1000 losses covers less than 90 %.
 """
