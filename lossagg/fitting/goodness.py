@@ -20,6 +20,10 @@ from lossagg.errors import InputError
 from lossagg.families.base import SizeLaw
 from lossagg.fitting.sample import checked_losses
 
+# A loss equal to its threshold, or beyond what the law lets happen in double precision, would make the
+# integrals infinite; it is moved by less than an amount is rounded.
+_REACH = (1e-150, 1.0 - 1e-15)
+
 
 @dataclass(frozen=True)
 class Goodness:
@@ -69,7 +73,7 @@ def distances(amounts: FloatArray, thresholds: FloatArray, censored: BoolArray, 
             value=float(amounts[~np.isfinite(above)][0]),
             remedy="Test a law whose support holds all the losses.",
         )
-    rest, level = _steps(np.minimum(above, 1.0), censored)
+    rest, level = _steps(np.clip(above, *_REACH), censored)
     count = len(amounts)
     return Goodness(
         _kolmogorov_smirnov(rest, level),

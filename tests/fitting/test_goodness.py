@@ -89,6 +89,16 @@ def test_the_upper_tail_sees_what_the_others_hardly_see():
     assert after.upper_tail > before.upper_tail + 100
 
 
+def test_losses_at_their_threshold_and_beyond_the_law_leave_the_distances_finite():
+    """Amounts are rounded: one may equal its threshold. And a law may be as wrong as it likes."""
+    law = Lognormal(mu=0.0, sigma=1.0)
+    at_threshold = goodness([1.0, 1.0, 1.5, 2.0, 4.0], law, truncation=1.0)
+    assert 0 < at_threshold.anderson_darling < 50
+    beyond = goodness([1.0, 1e40, 1e41], law)
+    assert np.isfinite([beyond.anderson_darling, beyond.upper_tail]).all()
+    assert beyond.upper_tail > 1e100
+
+
 def test_critical_values_of_a_law_given_in_advance():
     """Anderson & Darling 1954: 2.492 at 5 %, 1.933 at 10 %; Kolmogorov: 1.358 / sqrt(n) (from memory,
     recomputed). Share of 4000 samples of 100 beyond them, within 4 standard errors."""
