@@ -150,7 +150,8 @@ class SampledAnnualLoss(AnnualLoss):
     def _require_moment(self, order: float, measure: str) -> None:
         if self.moment_order <= order:
             raise DoesNotExistError(
-                f"no standard error of {measure}: moments from order {self.moment_order:g} on are infinite",
+                f"no standard error of the {measure.replace('_', ' ')}: "
+                f"moments of order {self.moment_order:.3g} and above are infinite",
                 value=self.moment_order,
                 remedy="Use the interval of a value at risk, or limit the loss by a cover.",
             )

@@ -140,8 +140,9 @@ def test_no_error_is_stated_where_none_exists(alpha, finite, missing):
         low, high = kind.accuracy(measure, level)
         assert low <= kind.measure(measure, level) <= high < np.inf
     for measure in missing:
+        words = measure.replace("_", " ")
         with pytest.raises(
-            DoesNotExistError, match=f"no standard error of {measure}: moments from order {alpha:g}"
+            DoesNotExistError, match=f"no standard error of the {words}: moments of order {alpha:.3g}"
         ):
             loss.accuracy(measure, 0.9 if measure.endswith("risk") else None)
     assert (loss.mean() == np.inf) == (alpha <= 1)
