@@ -112,15 +112,32 @@ def crosscheck(book: Book, results: Mapping[str, BookResult], levels: Sequence[f
         losses = {
             name: result.losses[subject] for name, result in results.items() if subject in result.losses
         }
-        comparisons += [_compare(subject, measure, level, losses) for measure, level in asked]
+        caps = _caps(losses)
+        comparisons += [_compare(subject, measure, level, losses, caps) for measure, level in asked]
     return Crosscheck(
         comparisons=tuple(comparisons),
         refused={name: result.refused for name, result in results.items() if result.refused},
     )
 
 
+def _caps(losses: Mapping[str, AnnualLoss]) -> dict[tuple[str, str], float]:
+    """By simulation and exact engine, the amount that twenty of the simulated years are expected to exceed."""
+    caps = {}
+    for reference, known in losses.items():
+        for name, loss in losses.items():
+            if isinstance(known, BracketedAnnualLoss) and not isinstance(loss, BracketedAnnualLoss):
+                years = loss.years  # type: ignore[attr-defined]
+                if years >= 2 * YEARS_BEYOND:
+                    caps[name, reference] = known.value_at_risk(1.0 - YEARS_BEYOND / years)
+    return caps
+
+
 def _compare(
-    subject: Subject, measure: str, level: float | None, losses: Mapping[str, AnnualLoss]
+    subject: Subject,
+    measure: str,
+    level: float | None,
+    losses: Mapping[str, AnnualLoss],
+    caps: Mapping[tuple[str, str], float],
 ) -> Comparison:
     exact = {name: loss for name, loss in losses.items() if isinstance(loss, BracketedAnnualLoss)}
     simulated = {name: loss for name, loss in losses.items() if name not in exact}
@@ -140,7 +157,8 @@ def _compare(
                 found = _sd_evidence((name, values[name]), (reference, values[reference]), error)
                 (faults if error is not None else notes).extend(found)
             else:
-                found, error = _average_evidence(name, loss, reference, known, level)
+                cap = caps.get((name, reference), 0.0)
+                found, error = _average_evidence((name, loss), (reference, known), level, cap)
                 (faults if error is not None else notes).extend(found)
     return Comparison(
         subject=subject,
@@ -193,16 +211,16 @@ def _quantile_faults(
 
 
 def _average_evidence(
-    name: str, loss: AnnualLoss, reference: str, known: BracketedAnnualLoss, level: float | None
+    simulated: tuple[str, AnnualLoss], exact: tuple[str, BracketedAnnualLoss], level: float | None, cap: float
 ) -> tuple[list[str], float | None]:
-    """Faults of a simulated mean (level None) or TVaR, with the standard error they are measured in;
-    or, with no standard error, why there is nothing to compare."""
+    """Faults of a simulated mean (level None) or TVaR up to `cap`, with the standard error they are
+    measured in; or, with no standard error, why there is nothing to compare."""
+    (name, loss), (reference, known) = simulated, exact
     years = loss.years  # type: ignore[attr-defined]
     start, share = (0.0, 1.0) if level is None else (known.value_at_risk(level), 1.0 - level)
     if years * share < 2 * YEARS_BEYOND:
         beyond = f"it has only {years * share:.3g} years beyond the level"
         return [f"not compared with the simulation: {beyond}"], None
-    cap = known.value_at_risk(1.0 - YEARS_BEYOND / years)
     if cap <= start:
         return [], 0.0
     excess = known.layer_mean(start, cap)

@@ -273,11 +273,9 @@ def _paid_by(cover: str, events: list[Event]) -> float:
 
 
 def _kept_under(book: Book, cover: PlacedCover, events: list[Event]) -> float:
-    total = 0.0
-    for event in events:
-        kept = book.event_retained(cover, event.line)
-        total += 0.0 if kept is None else _at(kept, event.size)
-    return total
+    kept = {line: book.event_retained(cover, line) for line in {event.line for event in events}}
+    under = ((kept[event.line], event.size) for event in events)
+    return sum(0.0 if schedule is None else _at(schedule, size) for schedule, size in under)
 
 
 def _sums(book: Book, events: list[Event]) -> dict[str, dict[tuple[str, str], FloatArray]]:
