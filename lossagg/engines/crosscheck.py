@@ -121,7 +121,7 @@ def crosscheck(book: Book, results: Mapping[str, BookResult], levels: Sequence[f
 
 
 def _caps(losses: Mapping[str, AnnualLoss]) -> dict[tuple[str, str], float]:
-    """By simulation and exact engine, the amount that twenty of the simulated years are expected to exceed."""
+    """By simulation and exact engine, the amount that twenty simulated years are expected to exceed."""
     caps = {}
     for reference, known in losses.items():
         for name, loss in losses.items():
