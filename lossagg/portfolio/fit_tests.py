@@ -25,7 +25,7 @@ from lossagg.portfolio.assessment import Data, number
 from lossagg.portfolio.line import LineModel
 from lossagg.records import PreparedLosses
 
-DRAWS, THRESHOLDS = 39, 12
+DRAWS, THRESHOLDS = 19, 8  # a first look within an assessment; `lossagg fit` takes more of both
 _DIGITS = 6  # of a p-value: the last bits of an eigenvalue may differ between machines
 
 
