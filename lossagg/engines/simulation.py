@@ -56,6 +56,7 @@ __all__ = ["PreparedLine", "Simulation", "block_events", "line_sums", "prepare_l
 MOST_YEARS = 10**10
 MOST_LOSSES = 1e13
 TIMED_FROM = 10_000_000  # years from which on a pilot block says how long the run will take
+MOST_TOGETHER = 8  # blocks that a thread takes at once: waking it costs as much as a short one
 T = TypeVar("T")
 log = logging.getLogger(__name__)
 
@@ -275,7 +276,7 @@ class Run:
             if self.progress:
                 self.progress(min((block + 1) * BLOCK_YEARS / goal, 1.0))
 
-        for_every_block(one, blocks, self.workers, after)
+        for_every_block(one, blocks, self.workers, after, together=1 if self.every_year else MOST_TOGETHER)
 
     def _fill_elsewhere(
         self, executor: Executor, collected: Collected, blocks: range, years: int, goal: int

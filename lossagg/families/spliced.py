@@ -10,6 +10,7 @@ Source: Klugman, Panjer and Willmot, Loss Models, section 5.2 (spliced distribut
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 from typing import ClassVar
 
 import numpy as np
@@ -76,11 +77,15 @@ class Spliced(SizeLaw):
             "tail_probability": self.tail_probability,
         }
 
-    @property
+    @cached_property
     def _body_weight(self) -> float:
         return float(self.body.cdf(self.threshold))
 
-    @property
+    @cached_property
+    def _body_rest(self) -> float:
+        return float(self.body.sf(self.threshold))
+
+    @cached_property
     def _tail_weight(self) -> float:
         return float(self.tail.sf(self.threshold))
 
@@ -95,7 +100,7 @@ class Spliced(SizeLaw):
     def _given_parts(self) -> tuple[float, float, float, float]:
         """Mean and variance of the body given a loss up to the threshold, of the tail given one above."""
         u = self.threshold
-        weight, rest = self._body_weight, float(self.body.sf(u))
+        weight, rest = self._body_weight, self._body_rest
         body_mean = (float(self.body.limited_mean(u)) - u * rest) / weight
         body_second = (float(self.body.limited_second_moment(u)) - u * u * rest) / weight
         excess = float(self.tail.mean_excess(u))
@@ -172,7 +177,7 @@ class Spliced(SizeLaw):
     def _body_between(self, low: FloatArray) -> FloatArray:
         """P(low < B <= u), from the side where the parts are small."""
         survival = np.asarray(self.body.sf(low))
-        by_survival = survival - float(self.body.sf(self.threshold))
+        by_survival = survival - self._body_rest
         by_cdf = self._body_weight - np.asarray(self.body.cdf(low))
         return np.maximum(np.where(survival < 0.5, by_survival, by_cdf), 0.0)
 
@@ -200,21 +205,21 @@ class Spliced(SizeLaw):
         small = within < 0.5
         low = np.empty(within.shape)
         low[small] = self.body.ppf(within[small])
-        rest = np.minimum(float(self.body.sf(self.threshold)) + (weight - within[~small]), 1.0)
+        rest = np.minimum(self._body_rest + (weight - within[~small]), 1.0)
         low[~small] = self.body.isf(rest)
         sizes[~above] = np.minimum(low, self.threshold)
         return sizes
 
     def _limited_mean(self, limit: FloatArray) -> FloatArray:
         low, high, _ = self._split(limit)
-        body = np.asarray(self.body.limited_mean(low)) - low * float(self.body.sf(self.threshold))
+        body = np.asarray(self.body.limited_mean(low)) - low * self._body_rest
         layer = self._tail_factor * np.asarray(self.tail.layer_mean(self.threshold, high))
         return self._body_factor * body + self.tail_probability * low + layer
 
     def _limited_second_moment(self, limit: FloatArray) -> FloatArray:
         u, q = self.threshold, self.tail_probability
         low, high, _ = self._split(limit)
-        body = np.asarray(self.body.limited_second_moment(low)) - low * low * float(self.body.sf(u))
+        body = np.asarray(self.body.limited_second_moment(low)) - low * low * self._body_rest
         above = np.asarray(self.tail.layer_second_moment(u, high)) + 2.0 * u * np.asarray(
             self.tail.layer_mean(u, high)
         )
@@ -233,7 +238,7 @@ class Spliced(SizeLaw):
         u, q = self.threshold, self.tail_probability
         low, high, _ = self._split(x)
         room = u - low
-        body = np.asarray(self.body.layer_second_moment(low, u)) - room * room * float(self.body.sf(u))
+        body = np.asarray(self.body.layer_second_moment(low, u)) - room * room * self._body_rest
         tail = np.asarray(self.tail.second_excess(high)) + 2.0 * room * self.tail.expected_excess(high)
         rest = q * room * room + self._tail_factor * tail
         return np.asarray(self._body_factor * np.maximum(body, 0.0) + rest)

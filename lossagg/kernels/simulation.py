@@ -22,18 +22,21 @@ One file on purpose: the cache on disk notices a change of this file, not of a f
 
 from __future__ import annotations
 
-from typing import NamedTuple
+from collections.abc import Callable
+from typing import Any, NamedTuple
 
 import numpy as np
+from numba.extending import overload
 
 from lossagg.arrays import FloatArray, IntArray
-from lossagg.kernels.compile import compiled
+from lossagg.kernels.compile import Vectors, compiled, instructions, whole
 
 U1, U3, U4, U11, U16, U24, U32, U40, U63 = (np.uint64(k) for k in (1, 3, 4, 11, 16, 24, 32, 40, 63))
 WORD = np.uint64(2**32 - 1)
 MANTISSA = np.uint64(2**52 - 1)
 ONE = np.uint64(0x3FF0000000000000)  # the bits of 1.0
 LANES = 32
+GROUP = 8  # draws and columns done at once
 REFINED = 64.0
 BUFFER = 2048  # draws between two visits of the annual sums; a multiple of LANES
 TILE = 4096  # years sorted together by their counts
@@ -168,8 +171,13 @@ def draw_bits(lanes: np.ndarray, out: np.ndarray) -> None:
         lanes: shape (4, LANES), uint64.
         out: uint64, a multiple of LANES long.
     """
+    step_lanes(lanes, out, out.shape[0])
+
+
+def step_lanes(lanes: np.ndarray, out: np.ndarray, number: int) -> None:
+    """Fill the first `number` entries of `out` as `draw_bits` does."""
     a, b, c, count = lanes[0], lanes[1], lanes[2], lanes[3]
-    for i in range(out.shape[0] // LANES):
+    for i in range(number // LANES):
         words = out[i * LANES : (i + 1) * LANES]
         for lane in range(LANES):
             word = a[lane] + b[lane] + count[lane]
@@ -178,6 +186,31 @@ def draw_bits(lanes: np.ndarray, out: np.ndarray) -> None:
             c[lane] = ((c[lane] << U24) | (c[lane] >> U40)) + word
             count[lane] += U1
             words[lane] = word
+
+
+def _write_steps(builder: Any, lanes: Any, out: Any, number: Any) -> None:
+    """The instructions of `step_lanes`: the state of all lanes stays in registers."""
+    v = Vectors(builder, LANES)
+    state = [v.variable(v.load(lanes, whole(k * LANES), v.wholes)) for k in range(4)]
+    with v.loop(whole(0), number, whole(LANES)) as place:
+        a, b, c, count = (builder.load(word) for word in state)
+        word = builder.add(builder.add(a, b), count)
+        turned = builder.or_(builder.shl(c, v.all(24)), builder.lshr(c, v.all(40)))
+        builder.store(builder.xor(b, builder.lshr(b, v.all(11))), state[0])
+        builder.store(builder.add(c, builder.shl(c, v.all(3))), state[1])
+        builder.store(builder.add(turned, word), state[2])
+        builder.store(builder.add(count, v.all(1)), state[3])
+        v.store(word, out, place)
+    for k in range(4):
+        v.store(builder.load(state[k]), lanes, whole(k * LANES))
+
+
+_steps = instructions(_write_steps)
+
+
+@overload(step_lanes, strict=False)
+def _compiled_steps(lanes: Any, out: Any, number: Any) -> Callable[..., None]:
+    return lambda lanes, out, number: _steps((lanes, out, number))
 
 
 @compiled
@@ -218,7 +251,7 @@ def draw_counts(lanes: np.ndarray, guide: IntArray, survival: FloatArray, out: I
         part = out[min(k * words, number) : min((k + 1) * words, number)]
         shift = np.uint64(k * COUNT_BITS)
         for i in range(part.shape[0]):
-            n = guide[np.int64((bits[i] >> shift) & np.uint64(GUIDES - 1))]
+            n = guide[(bits[i] >> shift) & np.uint64(GUIDES - 1)]
             mixed += n < 0
             part[i] = n
     finer = np.empty(whole_lanes(mixed), np.uint64)
@@ -226,9 +259,10 @@ def draw_counts(lanes: np.ndarray, guide: IntArray, survival: FloatArray, out: I
     used = 0
     for start in range(0, number, 64):
         stop = min(start + 64, number)
+        part = out[start:stop]
         missing = 0
-        for i in range(start, stop):
-            missing += out[i] < 0
+        for i in range(part.shape[0]):
+            missing += part[i] < 0
         if missing == 0:
             continue
         for i in range(start, stop):
@@ -248,70 +282,145 @@ def draw_counts(lanes: np.ndarray, guide: IntArray, survival: FloatArray, out: I
 
 
 @compiled
-def refined_size(cubics: FloatArray, row: np.int64, f: float) -> float:
-    """The size at position f of a cell in parts, which may be in parts again; NaN for no answer."""
-    while cubics[row, 1] >= 0.0:
-        place = f * REFINED
-        part = np.int64(place)
-        row = np.int64(cubics[row, 1]) + part
-        f = place - part
-        c = cubics[row]
-        if c[0] == c[0]:
-            return float(c[0] + f * (c[1] + f * (c[2] + f * c[3])))
-    return np.nan
-
-
-@compiled
 def half_probability(bits: np.uint64) -> float:
     """t of a draw, an odd multiple of 2**-54: bits placed behind the point of a number in [1, 2)."""
     return float((np.uint64(((bits >> U11) & MANTISSA) | ONE).view(np.float64) - (1.0 - 2.0**-53)) * 0.5)
 
 
 @compiled
-def sizes_of_bits(table: SizeArrays, bits: np.ndarray, out: FloatArray, row: IntArray, f: FloatArray) -> None:
-    """Turn random words into sizes; NaN where the table has no answer.
+def cell_of(bits: np.uint64, sub_bits: int, depth: int) -> tuple[np.int64, float]:
+    """The row of a draw in the table of cubics, and its position in the cell, 0 to 1."""
+    shift = np.uint64(52 - sub_bits)
+    pattern = np.float64(half_probability(bits)).view(np.uint64)
+    cell = np.int64(pattern >> shift) - ((1022 - depth) << sub_bits)
+    row = (cell if cell >= 0 else -1) + 1 + np.int64(bits >> U63) * (1 + (depth << sub_bits))
+    part = (pattern & ((U1 << shift) - U1)) << np.uint64(sub_bits)
+    return np.int64(row), float(np.uint64(part | ONE).view(np.float64) - 1.0)
 
-    Loops with one task each, so that the compiler can do several draws at once in most of them.
+
+@compiled
+def size_of(cubics: FloatArray, bits: np.uint64, sub_bits: int, depth: int) -> float:
+    """The size of one draw from the table, parts of cells included; NaN for no answer."""
+    row, f = cell_of(bits, sub_bits, depth)
+    while True:
+        c = cubics[row]
+        if c[0] == c[0]:
+            return float(c[0] + f * (c[1] + f * (c[2] + f * c[3])))
+        if not c[1] >= 0.0:
+            return np.nan
+        place = f * REFINED
+        part = np.int64(place)
+        row, f = np.int64(c[1]) + part, place - part
+
+
+def look_up(
+    cubics: FloatArray,
+    bits: np.ndarray,
+    out: FloatArray,
+    missing: np.ndarray,
+    number: int,
+    sub_bits: int,
+    depth: int,
+) -> None:
+    """The sizes of the first `number` draws from the cells themselves, NaN where these have parts or none.
+
+    Args:
+        cubics: the table.
+        bits: the random words.
+        out: receives the sizes.
+        missing: receives a number for every GROUP of draws: 0 where none of their sizes is NaN.
+        number: a multiple of GROUP.
+        sub_bits: as in `SizeArrays`.
+        depth: as in `SizeArrays`.
+    """
+    missing[: number // GROUP] = 0
+    for i in range(number):
+        row, f = cell_of(bits[i], sub_bits, depth)
+        c = cubics[row]
+        out[i] = c[0] + f * (c[1] + f * (c[2] + f * c[3]))
+        missing[i // GROUP] |= out[i] != out[i]
+
+
+def _write_look_up(
+    builder: Any, cubics: Any, bits: Any, out: Any, missing: Any, number: Any, sub_bits: Any, depth: Any
+) -> None:
+    """The instructions of `look_up`: `cell_of`, the four coefficients and the cubic of a group at once."""
+    v = Vectors(builder, GROUP)
+    shift = builder.sub(whole(52), sub_bits)
+    below = v.spread(builder.sub(builder.shl(whole(1), shift), whole(1)))
+    lowest = v.spread(builder.shl(builder.sub(whole(1022), depth), sub_bits))
+    rows = v.spread(builder.add(whole(1), builder.shl(depth, sub_bits)))
+    sub, shift = v.spread(sub_bits), v.spread(shift)
+    one = v.all(int(ONE))
+    with v.loop(whole(0), number, whole(GROUP)) as place:
+        word = v.load(bits, place, v.wholes)
+        mantissa = builder.and_(builder.lshr(word, v.all(11)), v.all(int(MANTISSA)))
+        t = builder.bitcast(builder.or_(mantissa, one), v.reals)
+        t = builder.fmul(builder.fsub(t, v.all(1.0 - 2.0**-53)), v.all(0.5))
+        pattern = builder.bitcast(t, v.wholes)
+        cell = builder.sub(builder.lshr(pattern, shift), lowest)
+        inside = builder.icmp_signed(">", cell, v.all(-1))
+        cell = builder.add(builder.select(inside, cell, v.all(-1)), v.all(1))
+        row = builder.add(cell, builder.and_(builder.ashr(word, v.all(63)), rows))
+        part = builder.or_(builder.shl(builder.and_(pattern, below), sub), one)
+        f = builder.fsub(builder.bitcast(part, v.reals), v.all(1.0))
+        first = builder.shl(row, v.all(2))
+        c = [v.gather(cubics, builder.add(first, v.all(k))) for k in range(4)]
+        size = c[3]
+        for k in (2, 1, 0):
+            size = builder.fadd(c[k], builder.fmul(f, size))
+        v.store(size, out, place)
+        v.store_flags(builder.fcmp_unordered("uno", size, size), missing, builder.udiv(place, whole(GROUP)))
+
+
+_look_up = instructions(_write_look_up)
+
+
+@overload(look_up, strict=False)
+def _compiled_look_up(
+    cubics: Any, bits: Any, out: Any, missing: Any, number: Any, sub_bits: Any, depth: Any
+) -> Callable[..., None]:
+    return lambda cubics, bits, out, missing, number, sub_bits, depth: _look_up(
+        (cubics, bits, out, missing, number, sub_bits, depth)
+    )
+
+
+@compiled
+def sizes_of_bits(table: SizeArrays, bits: np.ndarray, out: FloatArray, missing: np.ndarray) -> int:
+    """Turn random words into sizes; NaN where the table has no answer.
 
     Args:
         table: the law.
         bits: the words, at least as many as sizes.
         out: receives the sizes.
-        row: work space as long as `out`: the row of each draw.
-        f: work space as long as `out`: its position in the cell.
+        missing: work space, uint8, a number for every GROUP of sizes.
+
+    Returns:
+        How many sizes are NaN.
     """
+    number = out.shape[0]
     if table.cubics.shape[0] == 0:
         cells = table.first.shape[0]
-        for i in range(out.shape[0]):
+        for i in range(number):
             p = (np.float64(np.int64(bits[i] >> U11)) + 0.5) * 2.0**-53
             k = table.first[min(np.int64(p * cells), cells - 1)]
             while table.survival[k] > p:
                 k += 1
             out[i] = table.values[k]
-        return
-    cubics = table.cubics
-    sub = np.uint64(table.sub_bits)
-    shift = np.uint64(52 - table.sub_bits)
-    below = (U1 << shift) - U1
-    lowest = (1022 - table.depth) << table.sub_bits
-    rows = 1 + (table.depth << table.sub_bits)
-    for i in range(out.shape[0]):
-        pattern = np.float64(half_probability(bits[i])).view(np.uint64)
-        cell = np.int64(pattern >> shift) - lowest
-        row[i] = (cell if cell >= 0 else -1) + 1 + np.int64(bits[i] >> U63) * rows
-        f[i] = np.uint64(((pattern & below) << sub) | ONE).view(np.float64) - 1.0
-    for i in range(out.shape[0]):
-        r, g = row[i], f[i]
-        out[i] = cubics[r, 0] + g * (cubics[r, 1] + g * (cubics[r, 2] + g * cubics[r, 3]))
-    for start in range(0, out.shape[0], 64):
-        stop = min(start + 64, out.shape[0])
-        missing = 0
-        for i in range(start, stop):
-            missing += out[i] != out[i]
-        if missing > 0:
-            for i in range(start, stop):
+        return 0
+    together = number // GROUP * GROUP
+    look_up(table.cubics, bits, out, missing, together, table.sub_bits, table.depth)
+    unanswered = 0
+    for i in range(together, number):
+        out[i] = size_of(table.cubics, bits[i], table.sub_bits, table.depth)
+        unanswered += out[i] != out[i]
+    for k in range(together // GROUP):
+        if missing[k] != 0:
+            for i in range(k * GROUP, (k + 1) * GROUP):
                 if out[i] != out[i]:
-                    out[i] = refined_size(cubics, row[i], f[i])
+                    out[i] = size_of(table.cubics, bits[i], table.sub_bits, table.depth)
+                    unanswered += out[i] != out[i]
+    return unanswered
 
 
 @compiled
@@ -351,15 +460,15 @@ def draw_sizes(
     Returns:
         How many are in use now.
     """
-    bits, row, f = np.empty(BUFFER, np.uint64), np.empty(BUFFER, np.int64), np.empty(BUFFER)
+    bits, missing = np.empty(BUFFER, np.uint64), np.empty(BUFFER // GROUP, np.uint8)
     for start in range(0, out.shape[0], BUFFER):
         part = out[start : start + BUFFER]
         draw_bits(lanes, bits[: whole_lanes(part.shape[0])])
-        sizes_of_bits(table, bits, part, row, f)
-        before = found
-        found = note_missing(part, bits, flagged, probability, found)
-        for i in range(before, found):
-            flagged[i] += start
+        if sizes_of_bits(table, bits, part, missing) > 0:
+            before = found
+            found = note_missing(part, bits, flagged, probability, found)
+            for i in range(before, found):
+                flagged[i] += start
     return found
 
 
@@ -395,17 +504,58 @@ def add_rows(sizes: FloatArray, width: int, ramp: FloatArray, total: FloatArray)
         total: shape (width,), added to.
     """
     start, end, slope, jump = ramp[1], ramp[2], ramp[3], ramp[4]
-    for begin in range(0, sizes.shape[0], width):
-        row = sizes[begin : begin + width]
-        if jump != 0.0:
-            for j in range(row.shape[0]):
+    rows = sizes.shape[0] // width
+    if jump != 0.0:
+        for begin in range(0, rows * width, width):
+            row = sizes[begin : begin + width]
+            for j in range(width):
                 total[j] += slope * (min(max(row[j], start), end) - start) + jump * (row[j] > start)
-        elif slope == 1.0:
-            for j in range(row.shape[0]):
-                total[j] += min(max(row[j], start), end) - start
-        else:
-            for j in range(row.shape[0]):
-                total[j] += slope * (min(max(row[j], start), end) - start)
+    else:
+        add_columns(sizes, width, rows, start, end, slope, total)
+    for j in range(sizes.shape[0] - rows * width):
+        total[j] += paid_of(sizes[rows * width + j], ramp)
+
+
+def add_columns(
+    sizes: FloatArray, width: int, rows: int, start: float, end: float, slope: float, total: FloatArray
+) -> None:
+    """Add what a ramp without a jump pays of the whole rows, as `add_rows` does."""
+    for i in range(rows * width):
+        total[i % width] += slope * (min(max(sizes[i], start), end) - start)
+
+
+def _write_columns(
+    builder: Any, sizes: Any, width: Any, rows: Any, start: Any, end: Any, slope: Any, total: Any
+) -> None:
+    """The instructions of `add_columns`: the sums of eight columns, then 4, 2, 1, stay in a register."""
+    begin = whole(0)
+    for lanes in (GROUP, GROUP // 2, GROUP // 4, GROUP // 8):
+        v = Vectors(builder, lanes)
+        low, high, steep = v.spread(start), v.spread(end), v.spread(slope)
+        stop = builder.and_(width, whole(-lanes))
+        with v.loop(begin, stop, whole(lanes)) as column:
+            paid = v.variable(v.load(total, column, v.reals))
+            last = builder.add(column, builder.mul(rows, width))
+            with v.loop(column, last, width) as place:
+                size = v.load(sizes, place, v.reals)
+                size = builder.select(builder.fcmp_ordered(">", size, low), size, low)
+                size = builder.select(builder.fcmp_ordered("<", size, high), size, high)
+                more = builder.fmul(steep, builder.fsub(size, low))
+                builder.store(builder.fadd(builder.load(paid), more), paid)
+            v.store(builder.load(paid), total, column)
+        begin = stop
+
+
+_columns = instructions(_write_columns)
+
+
+@overload(add_columns, strict=False)
+def _compiled_columns(
+    sizes: Any, width: Any, rows: Any, start: Any, end: Any, slope: Any, total: Any
+) -> Callable[..., None]:
+    return lambda sizes, width, rows, start, end, slope, total: _columns(
+        (sizes, width, rows, start, end, slope, total)
+    )
 
 
 @compiled
@@ -547,8 +697,8 @@ def add_years(
         How many losses are in the notes.
     """
     order, some, ends = np.empty(TILE, np.int64), np.empty(TILE + 1, np.int64), np.zeros(LONG + 1, np.int64)
-    bits, row = np.empty(BUFFER, np.uint64), np.empty(BUFFER, np.int64)
-    f, sizes, total = np.empty(BUFFER), np.empty(BUFFER), np.empty(BUFFER)
+    bits, missing = np.empty(BUFFER, np.uint64), np.empty(BUFFER // GROUP, np.uint8)
+    sizes, total = np.empty(BUFFER), np.empty(BUFFER)
     found = 0
     while cursor[0] < years:
         tile = cursor[0]
@@ -571,14 +721,15 @@ def add_years(
             lines = min(n - done, BUFFER // width)
             drawn = sizes[: lines * width]
             draw_bits(lanes, bits[: whole_lanes(drawn.shape[0])])
-            sizes_of_bits(table, bits, drawn, row, f)
+            unanswered = sizes_of_bits(table, bits, drawn, missing)
             owners = order[place : place + width]
             if kept.last > kept.first:
                 keep_sizes(drawn, tile, owners, done, kept)
-            before = found
-            found = note_missing(drawn, bits, notes.year, notes.probability, found)
-            for i in range(before, found):
-                notes.year[i] = tile + owners[notes.year[i] % width]
+            if unanswered > 0:
+                before = found
+                found = note_missing(drawn, bits, notes.year, notes.probability, found)
+                for i in range(before, found):
+                    notes.year[i] = tile + owners[notes.year[i] % width]
             add_buffer(drawn, tile, owners, sums, total)
             cursor[2] += lines
             if cursor[2] == n:

@@ -260,6 +260,21 @@ def test_ramps_pay_what_the_schedule_pays(name, kernel):
         np.testing.assert_allclose(total, expected, rtol=1e-14, atol=1e-299)
 
 
+@pytest.mark.parametrize("width", [1, 2, 3, 7, 8, 9, 15, 31, 32, 33, 100])
+def test_columns_added_together_and_one_by_one_are_the_same(plain, width):
+    """Eight columns at a time, then four, two and one: every bit as in the plain loop, and nothing else
+    is written, whatever the number of columns and an incomplete last row."""
+    random = np.random.default_rng(width)
+    sizes = np.exp(random.normal(3.0, 4.0, 5 * width + width // 2))
+    before = random.normal(size=width + 8)
+    for ramp in ([0.0, 10.0, 60.0, 1.0, 0.0], [0.0, 0.0, np.inf, -0.3, 0.0], [0.0, 10.0, 40.0, 0.5, 10.0]):
+        total, plain_total = before.copy(), before.copy()
+        kernels.add_rows(sizes, width, np.array(ramp), total[:width])
+        plain.add_rows(sizes, width, np.array(ramp), plain_total[:width])
+        np.testing.assert_array_equal(total, plain_total)
+        np.testing.assert_array_equal(total[width:], before[width:])
+
+
 def test_streams_are_distinct_and_numpys():
     """Seed, line and block each change the stream, no two lanes are the same, and every lane is seeded
     as numpy seeds it, so that a change of the derivation, which changes every figure, cannot go unnoticed."""
