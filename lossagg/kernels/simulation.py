@@ -575,23 +575,25 @@ def sort_tile(counts: IntArray, order: IntArray, ends: IntArray, some: IntArray)
         counts: losses of each year of the tile.
         order: receives the years, those without a loss left out where they are many.
         ends: shape (LONG + 1,): receives the place after the last year of each count up to the highest.
-        some: work space as long as `counts`, and one more.
+        some: work space as long as `counts`.
 
     Returns:
         How many years are in `order`.
     """
     # Unsigned indices spare a test for negative ones; four counters for each count need not wait for
-    # each other's last step.
+    # each other's last step. Where many years are empty, those with one loss are most of the others.
     highest, empty = 0, 0
     for i in range(counts.shape[0]):
         highest = max(highest, counts[i])
         empty += counts[i] == 0
     highest = min(highest, LONG)
-    number = np.uint64(0)
+    single, number = np.uint64(0), np.uint64(0)
     if 4 * empty > counts.shape[0]:
         for i in range(counts.shape[0]):
+            order[single] = i
+            single += np.uint64(counts[i] == 1)
             some[number] = i
-            number += np.uint64(counts[i] != 0)
+            number += np.uint64(counts[i] > 1)
     else:
         number = np.uint64(counts.shape[0])
         for i in range(counts.shape[0]):
@@ -606,6 +608,7 @@ def sort_tile(counts: IntArray, order: IntArray, ends: IntArray, some: IntArray)
         place[3, np.uint64(min(counts[np.uint64(some[i])], highest))] += 1
     total = 0
     for n in range(highest + 1):
+        total += single if n == 1 else 0
         for k in range(4):
             years = place[k, n]
             place[k, n] = total
@@ -621,7 +624,7 @@ def sort_tile(counts: IntArray, order: IntArray, ends: IntArray, some: IntArray)
         count = np.uint64(min(counts[np.uint64(some[i])], highest))
         order[np.uint64(place[3, count])] = some[i]
         place[3, count] += 1
-    return int(number)
+    return int(total)
 
 
 @compiled
@@ -696,7 +699,7 @@ def add_years(
     Returns:
         How many losses are in the notes.
     """
-    order, some, ends = np.empty(TILE, np.int64), np.empty(TILE + 1, np.int64), np.zeros(LONG + 1, np.int64)
+    order, some, ends = np.empty(TILE, np.int64), np.empty(TILE, np.int64), np.zeros(LONG + 1, np.int64)
     bits, missing = np.empty(BUFFER, np.uint64), np.empty(BUFFER // GROUP, np.uint8)
     sizes, total = np.empty(BUFFER), np.empty(BUFFER)
     found = 0

@@ -210,7 +210,7 @@ def test_years_are_sorted_by_count(plain):
     for mean in (0.2, 3.0, 500.0):
         counts = np.random.default_rng(5).negative_binomial(2.0, 2.0 / (2.0 + mean), 997)
         for module in (kernels, plain):
-            order, ends, some = np.empty(997, np.int64), np.zeros(513, np.int64), np.empty(998, np.int64)
+            order, ends, some = np.empty(997, np.int64), np.zeros(513, np.int64), np.empty(997, np.int64)
             number = module.sort_tile(counts, order, ends, some)
             expected = np.argsort(np.minimum(counts, 512), kind="stable")
             np.testing.assert_array_equal(order[:number], expected[997 - number :])
