@@ -18,7 +18,7 @@ from lossagg.fitting.severity import FAMILIES as SIZE_FAMILIES
 from lossagg.portfolio.assessment import Data
 from lossagg.portfolio.dependences import assumed
 from lossagg.portfolio.files import PORTFOLIO_FILE, LineRecords, portfolio_file, read_records
-from lossagg.portfolio.history import history_data, prepare_line, reconciliation_data
+from lossagg.portfolio.history import follow, history_data, prepare_line, reconciliation_data
 from lossagg.portfolio.laws import given_frequency, given_severity
 from lossagg.portfolio.places import placed_covers
 from lossagg.portfolio.reconciling import reconcile_portfolio
@@ -148,8 +148,9 @@ class _Check:
     def line(self, file: PortfolioFile, line: LineSection, records: LineRecords | None, key: str) -> Data:
         """The entry of one line: laws that are given or named, records, control totals."""
         self.kept(lambda: _check_laws(line, key), "portfolio-file", line.name)
-        prepared, history = None, history_data(None)
+        prepared, history, followed = None, history_data(None), None
         if records is not None:
+            followed = self.kept(lambda: follow(line, records), "previous", line.name)
             if line.name not in self.bare:
                 prepared = self.kept(lambda: prepare_line(file, line, records), "preparing", line.name)
             # What the checks found and reconciled stands also where preparing stops.
@@ -171,6 +172,7 @@ class _Check:
             "development": prepared.developed.to_dict() if prepared and prepared.developed else None,
             "exposure": None if prepared is None else prepared.base,
             "window": None if prepared is None else _window(file, prepared),
+            "previous": None if followed is None else followed.to_dict(),
         }
 
     def kept(self, make: Callable[[], Made], code: str, line: str | None = None) -> Made | None:

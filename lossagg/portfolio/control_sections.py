@@ -44,13 +44,38 @@ class ControlTotalSection(Section):
         )
 
 
+class PreviousSection(Section):
+    """`previous`: the records of the line as they were handed in for the previous quarter.
+
+    Attributes:
+        records: that file, in the folder, read like the records.
+        unchanged: true confirms that nothing happened since and the records are the same.
+        tolerance: largest share of the earlier claims, and of their money, that may be gone or rewritten.
+        largest_fall: part of its amount that a claim must lose to be listed.
+    """
+
+    records: str
+    unchanged: bool = False
+    tolerance: Annotated[float, Field(ge=0, le=1)] = 0.05
+    largest_fall: Annotated[float, Field(gt=0, le=1)] = 0.9
+
+
 class ControlKeys(Section):
-    """The keys, shared by every line."""
+    """What the records of a line are held against.
+
+    Attributes:
+        control_total: totals that another source states.
+        previous: the records of the previous quarter.
+    """
 
     control_total: Annotated[tuple[ControlTotalSection, ...], Field(strict=False)] = ()
+    previous: PreviousSection | None = None
 
     @model_validator(mode="after")
     def _control_needs_records(self) -> Self:
-        if self.control_total and getattr(self, "records", None) is None:
-            raise ValueError("a control total needs records beside it | Add records = ...")
+        if getattr(self, "records", None) is not None:
+            return self
+        for key, what in (("control_total", "a control total"), ("previous", "the previous quarter")):
+            if getattr(self, key):
+                raise ValueError(f"{what} needs records beside it | Add records = ...")
         return self

@@ -31,11 +31,13 @@ PORTFOLIO_FILE = "portfolio.toml"
 
 @dataclass(frozen=True)
 class LineRecords:
-    """The checked records of one line, with its exposure and its index of trend where it has them."""
+    """The checked records of one line, with what stands beside them: exposure, index of trend, the records
+    of the previous quarter."""
 
     losses: CheckedLosses
     exposure: ExposureTable | None
     index: TrendIndex | None = None
+    previous: CheckedLosses | None = None
 
 
 def portfolio_file(path: Path) -> tuple[Path, Path]:
@@ -66,10 +68,16 @@ def read_records(folder: Path, file: PortfolioFile) -> tuple[dict[str, LineRecor
     inputs = [_portfolio_input(folder)]
     rates = _read_rates(folder, file)
     checked: dict[str, CheckedLosses] = {}
+    previous: dict[str, CheckedLosses] = {}
     for name, sharers in _by_file(file.line, "records").items():
         table = _read_losses(folder, name, sharers[0], file)
         inputs.append({"path": name, "sha256": table.sha256, "rows": table.rows})
         checked |= _check(_as_modelled(table, sharers, file, rates), sharers, file)
+        if sharers[0].previous is not None:
+            table = _read_previous(folder, sharers[0], file)
+            inputs.append({"path": table.file, "sha256": table.sha256, "rows": table.rows})
+            # Its faults were those of the quarter before: it is not held to the tolerance again.
+            previous |= _check(_as_modelled(table, sharers, file, rates), sharers, file, tolerance=1.0)
     exposures: dict[str, ExposureTable] = {}
     for name, sharers in _by_file(file.line, "exposure").items():
         exposure = _read_exposure(folder, name, sharers, file)
@@ -83,7 +91,8 @@ def read_records(folder: Path, file: PortfolioFile) -> tuple[dict[str, LineRecor
     if rates is not None:
         inputs.append({"path": file.portfolio.rates, "sha256": rates.sha256, "rows": rates.rows})
     records = {
-        name: LineRecords(losses, exposures.get(name), indices.get(name)) for name, losses in checked.items()
+        name: LineRecords(losses, exposures.get(name), indices.get(name), previous.get(name))
+        for name, losses in checked.items()
     }
     return records, tuple(inputs)
 
@@ -129,21 +138,23 @@ def _inside(folder: Path, name: str, key: str) -> Path:
 
 _READING = (
     *("columns", "sheet", "delimiter", "encoding", "decimal", "thousands", "grouping", "date_format"),
-    "time_zone",
+    *("time_zone", "previous"),
 )
 
 
-def _read_losses(folder: Path, name: str, line: LineSection, file: PortfolioFile) -> LossTable:
+def _read_losses(
+    folder: Path, name: str, line: LineSection, file: PortfolioFile, key: str = "records"
+) -> LossTable:
     for other in file.line:
         if other.records == name and any(getattr(other, part) != getattr(line, part) for part in _READING):
             raise InputError(
                 "two lines read the same file in two ways",
                 where=place(file=PORTFOLIO_FILE, key="records"),
                 value=f"{line.name}, {other.name}",
-                remedy="Give both the same columns, sheet, delimiter, encoding and formats.",
+                remedy="Give both the same columns, sheet, delimiter, encoding, formats and previous.",
             )
     return read_losses(
-        _inside(folder, name, "records"),
+        _inside(folder, name, key),
         columns={**file.columns, **line.columns},
         sheet=line.sheet,
         encoding=line.encoding,
@@ -154,6 +165,13 @@ def _read_losses(folder: Path, name: str, line: LineSection, file: PortfolioFile
         date_format=line.date_format,
         time_zone=line.time_zone,
     )
+
+
+def _read_previous(folder: Path, line: LineSection, file: PortfolioFile) -> LossTable:
+    """The records of the previous quarter, under the name by which the portfolio file calls them."""
+    assert line.previous is not None
+    table = _read_losses(folder, line.previous.records, line, file, key="previous.records")
+    return replace(table, file=line.previous.records)
 
 
 def _read_rates(folder: Path, file: PortfolioFile) -> RateTable | None:
@@ -191,7 +209,9 @@ def _as_modelled(
     return table
 
 
-def _check(table: LossTable, sharers: list[LineSection], file: PortfolioFile) -> dict[str, CheckedLosses]:
+def _check(
+    table: LossTable, sharers: list[LineSection], file: PortfolioFile, tolerance: float | None = None
+) -> dict[str, CheckedLosses]:
     section = file.portfolio
     names = [line.name for line in sharers]
     checked = check_losses(
@@ -202,7 +222,7 @@ def _check(table: LossTable, sharers: list[LineSection], file: PortfolioFile) ->
         first_year={line.name: line.first_year for line in sharers}
         if len(names) > 1
         else sharers[0].first_year,
-        tolerance=section.tolerance,
+        tolerance=section.tolerance if tolerance is None else tolerance,
         reporting_threshold={line.name: line.lowest_recorded for line in sharers}
         if len(names) > 1
         else sharers[0].lowest_recorded,

@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 from lossagg.portfolio.assessment import Data
 from lossagg.portfolio.files import LineRecords
 from lossagg.portfolio.schema import LineSection, PortfolioFile
-from lossagg.records import PreparedLosses, Reconciliation, midpoint, prepare_losses
+from lossagg.records import Followed, PreparedLosses, Reconciliation, follow_claims, midpoint, prepare_losses
 
 _BY_YEAR = (
     "year",
@@ -36,13 +38,36 @@ def prepare_line(file: PortfolioFile, line: LineSection, records: LineRecords) -
     Raises:
         InputError: records and keys that do not fit together, such as a year without exposure.
     """
-    return prepare_losses(
+    followed = follow(line, records)
+    prepared = prepare_losses(
         records.losses,
         exposure=records.exposure,
         forecast_midpoint=midpoint(*file.portfolio.forecast),
         reporting_threshold=line.lowest_recorded,
         trend=records.index or line.trend,
         **line.preparation(),
+    )
+    return replace(prepared, findings=(*prepared.findings, *followed.findings)) if followed else prepared
+
+
+def follow(line: LineSection, records: LineRecords) -> Followed | None:
+    """What became of the claims of the previous quarter, None where its records are not given.
+
+    Args:
+        line: the table of the line.
+        records: what was read and checked for it.
+
+    Raises:
+        RecordsError: the same records again, or more of them gone or rewritten than is tolerated.
+    """
+    if line.previous is None or records.previous is None:
+        return None
+    return follow_claims(
+        records.losses,
+        records.previous,
+        unchanged=line.previous.unchanged,
+        tolerance=line.previous.tolerance,
+        largest_fall=line.previous.largest_fall,
     )
 
 

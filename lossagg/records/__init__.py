@@ -11,6 +11,7 @@ from lossagg.records.index_file import read_trend_index
 from lossagg.records.money import Reconciliation
 from lossagg.records.prepare import prepare_losses
 from lossagg.records.prepared import PreparedLosses
+from lossagg.records.previous import Followed, follow_claims
 from lossagg.records.steps import Step
 from lossagg.records.table import LossTable, read_losses
 from lossagg.records.trend import TrendIndex, midpoint
@@ -25,6 +26,7 @@ __all__ = [
     "Development",
     "ExposureTable",
     "Finding",
+    "Followed",
     "LossTable",
     "PreparedLosses",
     "RateTable",
@@ -36,6 +38,7 @@ __all__ = [
     "check_losses",
     "control_findings",
     "convert_losses",
+    "follow_claims",
     "ground_up_losses",
     "line_rows",
     "midpoint",

@@ -123,13 +123,20 @@ def reconcile_controls(checked: CheckedLosses, controls: Sequence[ControlTotal])
         RecordsError: a total of money a thousand times what the records hold, or a thousandth of it.
         InputError: a total of a column the records do not have, or that was changed before the checks.
     """
-    claims = checked.member & ~checked.table.blank & ~_set_aside_as(checked, NOT_CLAIMS)
+    claims = standing_claims(checked)
     results = tuple(
         _compare(checked, claims, control, measure) for control in controls for measure in control.totals
     )
     for result in results:
         _refuse_other_unit(checked, result)
     return results
+
+
+def standing_claims(checked: CheckedLosses) -> BoolArray:
+    """True for the rows that stand for a claim: used, or set aside for a fault; shape (rows,)."""
+    numbers = [number for number, fault in enumerate(checked.faults) if fault.code in NOT_CLAIMS]
+    claims: BoolArray = checked.member & ~checked.table.blank & ~np.isin(checked.reason, numbers)
+    return claims
 
 
 def control_findings(checked: CheckedLosses, results: Sequence[ControlResult]) -> list[Finding]:
@@ -155,12 +162,6 @@ def control_findings(checked: CheckedLosses, results: Sequence[ControlResult]) -
         for result in results
         if not result.agrees
     ]
-
-
-def _set_aside_as(checked: CheckedLosses, codes: Sequence[str]) -> BoolArray:
-    numbers = [number for number, fault in enumerate(checked.faults) if fault.code in codes]
-    mask: BoolArray = np.isin(checked.reason, numbers)
-    return mask
 
 
 def _compare(checked: CheckedLosses, claims: BoolArray, control: ControlTotal, measure: str) -> ControlResult:

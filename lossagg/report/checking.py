@@ -102,6 +102,7 @@ def printed_tables(check: Entry) -> tuple[Table, ...]:
         evidence.findings(shown),
         records.reconciliation({**shown, "lines": reconciled}),
         controls.control_totals(shown),
+        checks.since_previous(lines, currency),
         records.by_year(lines, currency),
         records.development(lines, currency),
         checks.windows(lines, currency),

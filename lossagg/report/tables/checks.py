@@ -27,7 +27,7 @@ def windows(lines: Sequence[Entry], currency: str) -> Table:
                 window["years"],
                 window["events"],
                 window["complete_above"] or Absent("none"),
-                window["supported_level"],
+                round(window["supported_level"], 4),
                 line["exposure"] or Absent("none"),
             )
         )
@@ -46,6 +46,35 @@ def windows(lines: Sequence[Entry], currency: str) -> Table:
         "experience.",
     )
     return Table("Data window", f"Data window, {currency}", columns, tuple(rows), notes)
+
+
+def since_previous(lines: Sequence[Entry], currency: str) -> Table:
+    """What became of the claims of the previous quarter, by line."""
+    kinds = ("new", "vanished", "reopened", "fallen", "rewritten", "moved")
+    rows = tuple(
+        (
+            line["name"],
+            followed["file"],
+            *(followed[key] for key in ("earlier", "claims", "earlier_amount", "amount")),
+            *(Absent("not followed") if followed[kind] is None else followed[kind] for kind in kinds),
+        )
+        for line in lines
+        if (followed := line.get("previous"))
+    )
+    columns = (
+        Column("Line"),
+        Column("Previous records"),
+        Column("Claims then", "count"),
+        Column("Claims now", "count"),
+        Column("Amount then", "amount"),
+        Column("Amount now", "amount"),
+        *(Column(kind.capitalize(), "count") for kind in kinds),
+    )
+    notes = (
+        "Claims by identifier. Vanished: gone from the records. Reopened: closed then, open now. Fallen: by "
+        "the largest fall or more. Rewritten: closed then and now at another amount. Moved: another date.",
+    )
+    return Table("Since previous", f"Since the previous quarter, {currency}", columns, rows, notes)
 
 
 def portfolios(entries: Sequence[Entry]) -> Table:
