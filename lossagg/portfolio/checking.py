@@ -119,7 +119,7 @@ class _Check:
         try:
             return self.read(file)
         except InputError:
-            groups = _apart(file.line, ("records", "exposure", "trend_index"))
+            groups = _apart(file.line, ("records", "exposure", "trend_index", "counts"))
             parts = [self.group(file.model_copy(update={"line": group})) for group in groups]
             return {name: own for part in parts for name, own in part.items()}
 
@@ -134,7 +134,7 @@ class _Check:
         try:
             return self.read(file)
         except InputError as error:
-            alone = {"exposure": None, "trend_index": None}
+            alone = {"exposure": None, "trend_index": None, "counts": None}
             bare = tuple(line.model_copy(update=alone) for line in file.line)
             found: dict[str, LineRecords] = {}
             for lines in _apart(bare, ("records",)):

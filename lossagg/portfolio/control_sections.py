@@ -66,16 +66,26 @@ class ControlKeys(Section):
     Attributes:
         control_total: totals that another source states.
         previous: the records of the previous quarter.
+        counts: file of claims by year.
+        counts_columns: {canonical name: heading} of that file.
     """
 
     control_total: Annotated[tuple[ControlTotalSection, ...], Field(strict=False)] = ()
     previous: PreviousSection | None = None
+    counts: str | None = None
+    counts_columns: dict[str, str] = Field(default_factory=dict)
 
     @model_validator(mode="after")
     def _control_needs_records(self) -> Self:
+        if self.counts_columns and self.counts is None:
+            raise ValueError("counts-columns needs counts | Name the file of the counts.")
         if getattr(self, "records", None) is not None:
             return self
-        for key, what in (("control_total", "a control total"), ("previous", "the previous quarter")):
+        for key, what in (
+            ("control_total", "a control total"),
+            ("previous", "the previous quarter"),
+            ("counts", "a file of counts"),
+        ):
             if getattr(self, key):
                 raise ValueError(f"{what} needs records beside it | Add records = ...")
         return self

@@ -6,11 +6,21 @@ import hashlib
 from dataclasses import dataclass, replace
 from pathlib import Path
 
-from lossagg.errors import InputError, place
+from lossagg.errors import InputError
 from lossagg.portfolio.assessment import Data
+from lossagg.portfolio.file_readers import (
+    PORTFOLIO_FILE,
+    counts_of,
+    exposure_of,
+    index_of,
+    losses_of,
+    previous_of,
+    rates_of,
+)
 from lossagg.portfolio.schema import LineSection, PortfolioFile
 from lossagg.records import (
     CheckedLosses,
+    CountTable,
     ExposureTable,
     LossTable,
     RateTable,
@@ -19,25 +29,20 @@ from lossagg.records import (
     convert_losses,
     ground_up_losses,
     line_rows,
-    read_exposure,
-    read_losses,
-    read_rates,
-    read_trend_index,
     undeclared_deductibles,
 )
-
-PORTFOLIO_FILE = "portfolio.toml"
 
 
 @dataclass(frozen=True)
 class LineRecords:
     """The checked records of one line, with what stands beside them: exposure, index of trend, the records
-    of the previous quarter."""
+    of the previous quarter, counts by year."""
 
     losses: CheckedLosses
     exposure: ExposureTable | None
     index: TrendIndex | None = None
     previous: CheckedLosses | None = None
+    counts: CountTable | None = None
 
 
 def portfolio_file(path: Path) -> tuple[Path, Path]:
@@ -66,32 +71,39 @@ def read_records(folder: Path, file: PortfolioFile) -> tuple[dict[str, LineRecor
             checks of the records stop at.
     """
     inputs = [_portfolio_input(folder)]
-    rates = _read_rates(folder, file)
+    rates = rates_of(folder, file)
     checked: dict[str, CheckedLosses] = {}
     previous: dict[str, CheckedLosses] = {}
     for name, sharers in _by_file(file.line, "records").items():
-        table = _read_losses(folder, name, sharers[0], file)
+        table = losses_of(folder, name, sharers[0], file)
         inputs.append({"path": name, "sha256": table.sha256, "rows": table.rows})
         checked |= _check(_as_modelled(table, sharers, file, rates), sharers, file)
         if sharers[0].previous is not None:
-            table = _read_previous(folder, sharers[0], file)
+            table = previous_of(folder, sharers[0], file)
             inputs.append({"path": table.file, "sha256": table.sha256, "rows": table.rows})
             # Its faults were those of the quarter before: it is not held to the tolerance again.
             previous |= _check(_as_modelled(table, sharers, file, rates), sharers, file, tolerance=1.0)
     exposures: dict[str, ExposureTable] = {}
     for name, sharers in _by_file(file.line, "exposure").items():
-        exposure = _read_exposure(folder, name, sharers, file)
+        exposure = exposure_of(folder, name, sharers, file)
         inputs.append({"path": name, "sha256": exposure.sha256, "rows": exposure.rows})
         exposures |= {line.name: exposure.for_line(line.name) for line in sharers}
     indices: dict[str, TrendIndex] = {}
     for name, sharers in _by_file(file.line, "trend_index").items():
-        index = _read_index(folder, name, sharers)
+        index = index_of(folder, name, sharers)
         inputs.append({"path": name, "sha256": index.sha256, "rows": index.rows})
         indices |= {line.name: index for line in sharers}
+    counts: dict[str, CountTable] = {}
+    for name, sharers in _by_file(file.line, "counts").items():
+        stated = counts_of(folder, name, sharers)
+        inputs.append({"path": name, "sha256": stated.sha256, "rows": stated.rows})
+        counts |= {line.name: stated.for_line(line.name) for line in sharers}
     if rates is not None:
         inputs.append({"path": file.portfolio.rates, "sha256": rates.sha256, "rows": rates.rows})
     records = {
-        name: LineRecords(losses, exposures.get(name), indices.get(name), previous.get(name))
+        name: LineRecords(
+            losses, exposures.get(name), indices.get(name), previous.get(name), counts.get(name)
+        )
         for name, losses in checked.items()
     }
     return records, tuple(inputs)
@@ -114,83 +126,6 @@ def _by_file(lines: tuple[LineSection, ...], kind: str) -> dict[str, list[LineSe
         if name is not None:
             sharers.setdefault(name, []).append(line)
     return sharers
-
-
-def _inside(folder: Path, name: str, key: str) -> Path:
-    """The path of a file that must lie in the portfolio folder."""
-    path = folder / name
-    if not path.resolve().is_relative_to(folder.resolve()):
-        raise InputError(
-            "a file of the portfolio must lie in its folder",
-            where=place(file=PORTFOLIO_FILE, key=key),
-            value=name,
-            remedy="Copy it there and give its name.",
-        )
-    if not path.is_file():
-        raise InputError(
-            "there is no such file",
-            where=place(file=PORTFOLIO_FILE, key=key),
-            value=name,
-            remedy="Names are relative to the portfolio folder.",
-        )
-    return path
-
-
-_READING = (
-    *("columns", "sheet", "delimiter", "encoding", "decimal", "thousands", "grouping", "date_format"),
-    *("time_zone", "previous"),
-)
-
-
-def _read_losses(
-    folder: Path, name: str, line: LineSection, file: PortfolioFile, key: str = "records"
-) -> LossTable:
-    for other in file.line:
-        if other.records == name and any(getattr(other, part) != getattr(line, part) for part in _READING):
-            raise InputError(
-                "two lines read the same file in two ways",
-                where=place(file=PORTFOLIO_FILE, key="records"),
-                value=f"{line.name}, {other.name}",
-                remedy="Give both the same columns, sheet, delimiter, encoding, formats and previous.",
-            )
-    return read_losses(
-        _inside(folder, name, key),
-        columns={**file.columns, **line.columns},
-        sheet=line.sheet,
-        encoding=line.encoding,
-        delimiter=line.delimiter,
-        decimal=line.decimal,
-        thousands=line.thousands,
-        grouping=line.grouping,
-        date_format=line.date_format,
-        time_zone=line.time_zone,
-    )
-
-
-def _read_previous(folder: Path, line: LineSection, file: PortfolioFile) -> LossTable:
-    """The records of the previous quarter, under the name by which the portfolio file calls them."""
-    assert line.previous is not None
-    table = _read_losses(folder, line.previous.records, line, file, key="previous.records")
-    return replace(table, file=line.previous.records)
-
-
-def _read_rates(folder: Path, file: PortfolioFile) -> RateTable | None:
-    section = file.portfolio
-    if section.rates is None:
-        return None
-    path = _inside(folder, section.rates, "portfolio.rates")
-    return read_rates(path, currency=section.currency, columns=section.rates_columns)
-
-
-def _read_index(folder: Path, name: str, sharers: list[LineSection]) -> TrendIndex:
-    if any(line.trend_index_columns != sharers[0].trend_index_columns for line in sharers):
-        raise InputError(
-            "two lines read the same index in two ways",
-            where=place(file=PORTFOLIO_FILE, key="trend-index-columns"),
-            value=", ".join(line.name for line in sharers),
-            remedy="Give all of them the same columns, or each a file of its own.",
-        )
-    return read_trend_index(_inside(folder, name, "trend-index"), columns=sharers[0].trend_index_columns)
 
 
 def _as_modelled(
@@ -232,12 +167,4 @@ def _check(
     return {name: checked.for_line(name) for name in names}
 
 
-def _read_exposure(folder: Path, name: str, sharers: list[LineSection], file: PortfolioFile) -> ExposureTable:
-    columns = {**sharers[0].exposure_columns}
-    if len(sharers) > 1 and "line" in file.columns:
-        columns.setdefault("line", file.columns["line"])
-    return read_exposure(
-        _inside(folder, name, "exposure"),
-        columns=columns,
-        lines=[line.name for line in file.line] if len(sharers) > 1 else None,
-    )
+__all__ = ["PORTFOLIO_FILE", "LineRecords", "portfolio_file", "read_records"]

@@ -7,7 +7,15 @@ from dataclasses import replace
 from lossagg.portfolio.assessment import Data
 from lossagg.portfolio.files import LineRecords
 from lossagg.portfolio.schema import LineSection, PortfolioFile
-from lossagg.records import Followed, PreparedLosses, Reconciliation, follow_claims, midpoint, prepare_losses
+from lossagg.records import (
+    Followed,
+    PreparedLosses,
+    Reconciliation,
+    check_counts,
+    follow_claims,
+    midpoint,
+    prepare_losses,
+)
 
 _BY_YEAR = (
     "year",
@@ -38,6 +46,8 @@ def prepare_line(file: PortfolioFile, line: LineSection, records: LineRecords) -
     Raises:
         InputError: records and keys that do not fit together, such as a year without exposure.
     """
+    if records.counts is not None:
+        check_counts(records.losses, records.counts)
     followed = follow(line, records)
     prepared = prepare_losses(
         records.losses,
@@ -47,7 +57,8 @@ def prepare_line(file: PortfolioFile, line: LineSection, records: LineRecords) -
         trend=records.index or line.trend,
         **line.preparation(),
     )
-    return replace(prepared, findings=(*prepared.findings, *followed.findings)) if followed else prepared
+    more = (*(records.counts.findings if records.counts else ()), *(followed.findings if followed else ()))
+    return replace(prepared, findings=(*prepared.findings, *more))
 
 
 def follow(line: LineSection, records: LineRecords) -> Followed | None:

@@ -3,6 +3,7 @@
 from lossagg.records.basis import ground_up_losses, line_rows, undeclared_deductibles
 from lossagg.records.check import CheckedLosses, check_losses
 from lossagg.records.controls import ControlResult, ControlTotal, control_findings, reconcile_controls
+from lossagg.records.counts import CountTable, check_counts, read_counts
 from lossagg.records.currency import RateTable, convert_losses, read_rates
 from lossagg.records.development import Development
 from lossagg.records.exposure import ExposureTable, read_exposure
@@ -22,6 +23,7 @@ __all__ = [
     "CheckedLosses",
     "ControlResult",
     "ControlTotal",
+    "CountTable",
     "Developed",
     "Development",
     "ExposureTable",
@@ -35,6 +37,7 @@ __all__ = [
     "Step",
     "TrendIndex",
     "YearTable",
+    "check_counts",
     "check_losses",
     "control_findings",
     "convert_losses",
@@ -43,6 +46,7 @@ __all__ = [
     "line_rows",
     "midpoint",
     "prepare_losses",
+    "read_counts",
     "read_exposure",
     "read_losses",
     "read_rates",

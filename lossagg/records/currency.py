@@ -12,7 +12,6 @@ from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from decimal import Decimal
 from pathlib import Path
-from typing import NoReturn
 
 import numpy as np
 
@@ -22,7 +21,7 @@ from lossagg.records.amounts import NumberStyle
 from lossagg.records.changes import Change
 from lossagg.records.faults import Fault, list_faults
 from lossagg.records.findings import Finding, counted, raise_stops
-from lossagg.records.headings import Wanted, heading_findings
+from lossagg.records.headings import Wanted
 from lossagg.records.money import Money
 from lossagg.records.raw import Layout
 from lossagg.records.small_table import SmallTable, read_small_table
@@ -33,6 +32,7 @@ MONEY = ("amount", "paid", "outstanding", "recoveries", "threshold", "policy-lim
 STALE_DAYS = 366
 _WANTED = Wanted({"date": "date", "currency": "word", "rate": "number"}, ("date", "currency", "rate"))
 _MOST_CENTS = 2.0**52
+_REMEDY = "Rates are units of the portfolio's currency for one unit of the other, one a day."
 
 
 @dataclass(frozen=True)
@@ -93,7 +93,6 @@ def read_rates(
     layout = Layout(sheet=sheet, encoding=encoding, delimiter=delimiter)
     style = NumberStyle(decimal)
     table = read_small_table(Path(path), _WANTED, columns or {}, layout, style, date_format)
-    raise_stops(table.stops)
     codes = [word.upper() for word in table.word("currency")]
     _check_cells(table, codes, currency)
     days = table.date("date").astype(np.int64)
@@ -104,21 +103,22 @@ def read_rates(
         at = at[np.argsort(days[at], kind="stable")]
         _check_sequence(table, at, days, rates)
         quotations[code] = (days[at], rates[at])
-    found = heading_findings(table.all_headings, table.positions, _WANTED, table.file, table.sheet)
-    return RateTable(table.file, table.sha256, len(days), quotations, (*table.findings, *found))
+    return RateTable(table.file, table.sha256, len(days), quotations, table.findings)
 
 
 def _check_cells(table: SmallTable, codes: list[str], currency: str) -> None:
     rates, days = table.number("rate"), table.date("date")
     for at in range(len(codes)):
         if np.isnat(days[at]):
-            _refuse(table, at, "date", "the date of a rate is missing or no day")
+            table.refuse(at, "date", "the date of a rate is missing or no day", _REMEDY)
         if not (len(codes[at]) == 3 and codes[at].isascii() and codes[at].isalpha()):
-            _refuse(table, at, "currency", "the currency of a rate is not a code of three letters")
+            table.refuse(at, "currency", "the currency of a rate is not a code of three letters", _REMEDY)
         if not (np.isfinite(rates[at]) and rates[at] > 0):
-            _refuse(table, at, "rate", "the rate is missing, zero, negative or infinite")
+            table.refuse(at, "rate", "the rate is missing, zero, negative or infinite", _REMEDY)
         if codes[at] == currency and rates[at] != 1.0:
-            _refuse(table, at, "rate", f"the rate of the portfolio's own currency, {currency}, is not 1")
+            table.refuse(
+                at, "rate", f"the rate of the portfolio's own currency, {currency}, is not 1", _REMEDY
+            )
 
 
 def _check_sequence(table: SmallTable, at: IntArray, days: IntArray, rates: FloatArray) -> None:
@@ -130,23 +130,11 @@ def _check_sequence(table: SmallTable, at: IntArray, days: IntArray, rates: Floa
     """
     for before, after in zip(at[:-1].tolist(), at[1:].tolist(), strict=True):
         if days[after] == days[before]:
-            _refuse(table, after, "date", "the currency has two rates on one day")
+            table.refuse(after, "date", "the currency has two rates on one day", _REMEDY)
         move = abs(np.log(rates[after] / rates[before]))
         if move > np.log(4 / 3) and abs(np.log(rates[after] * rates[before])) < 0.25 * move:
-            _refuse(
-                table, after, "rate", f"the rate looks inverted: the one before it is {rates[before]:.6g}"
-            )
-
-
-def _refuse(table: SmallTable, at: int, column: str, what: str) -> NoReturn:
-    raise InputError(
-        what,
-        where=place(
-            file=table.file, sheet=table.sheet, row=int(table.row[at]), column=table.headings[column]
-        ),
-        value=table.cell(column, at),
-        remedy="Rates are units of the portfolio's currency for one unit of the other, one a day.",
-    )
+            what = f"the rate looks inverted: the one before it is {rates[before]:.6g}"
+            table.refuse(after, "rate", what, _REMEDY)
 
 
 def convert_losses(table: LossTable, rates: RateTable, currency: str) -> LossTable:

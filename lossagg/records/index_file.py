@@ -5,20 +5,17 @@ from __future__ import annotations
 import re
 from collections.abc import Mapping
 from pathlib import Path
-from typing import NoReturn
 
 import numpy as np
 
 from lossagg.arrays import FloatArray, IntArray
 from lossagg.errors import InputError, place
 from lossagg.records.amounts import NumberStyle
-from lossagg.records.findings import raise_stops
-from lossagg.records.headings import Wanted, heading_findings
+from lossagg.records.headings import Wanted
 from lossagg.records.raw import Layout
-from lossagg.records.small_table import SmallTable, read_small_table
+from lossagg.records.small_table import EPOCH, SmallTable, read_small_table
 from lossagg.records.trend import HIGHEST, LOWEST, MONTHS, TrendIndex
 
-YEARS = (1900, 2200)
 _WANTED = Wanted({"year": "number", "month": "word", "index": "number"}, ("index",))
 _MONTH = re.compile(r"(\d{4})-(0[1-9]|1[0-2])(-01)?(T?[ 0:]*)")
 
@@ -59,24 +56,14 @@ def read_trend_index(
             value=sorted(table.headings.values()),
             remedy="Give one value per year, or one per month.",
         )
-    raise_stops(table.stops)
     months = MONTHS if "year" in table.headings else 1
-    period = _years(table) if months == MONTHS else _months(table)
+    period = table.years() - EPOCH if months == MONTHS else _months(table)
     first, values = _ordered(table, period, months)
-    found = heading_findings(table.all_headings, table.positions, _WANTED, table.file, table.sheet)
     index = TrendIndex(
-        table.file, table.sha256, table.headings["index"], months, first, values, (*table.findings, *found)
+        table.file, table.sha256, table.headings["index"], months, first, values, table.findings
     )
     _check_changes(index)
     return index
-
-
-def _years(table: SmallTable) -> IntArray:
-    year = table.number("year")
-    low, high = YEARS
-    for at in np.flatnonzero(~((year >= low) & (year <= high) & (year == np.floor(year)))).tolist():
-        _refuse(table, at, "year", f"the year is not a calendar year between {low} and {high}")
-    return year.astype(np.int64) - 1970
 
 
 def _months(table: SmallTable) -> IntArray:
@@ -84,8 +71,8 @@ def _months(table: SmallTable) -> IntArray:
     for at, text in enumerate(table.word("month")):
         match = _MONTH.fullmatch(text)
         if match is None:
-            _refuse(table, at, "month", "the month is not written YYYY-MM")
-        numbers.append((int(match[1]) - 1970) * MONTHS + int(match[2]) - 1)
+            table.refuse(at, "month", "the month is not written YYYY-MM")
+        numbers.append((int(match[1]) - EPOCH) * MONTHS + int(match[2]) - 1)
     return np.array(numbers, dtype=np.int64)
 
 
@@ -94,12 +81,12 @@ def _ordered(table: SmallTable, period: IntArray, months: int) -> tuple[int, Flo
     value = table.number("index")
     column = "year" if months == MONTHS else "month"
     for at in np.flatnonzero(~(np.isfinite(value) & (value > 0))).tolist():
-        _refuse(table, at, "index", "the index is missing, zero, negative or infinite")
+        table.refuse(at, "index", "the index is missing, zero, negative or infinite")
     order = np.argsort(period, kind="stable")
     step = np.diff(period[order])
     if (step == 0).any():
         at = int(order[int(np.argmax(step == 0)) + 1])
-        _refuse(table, at, column, f"the {column} stands in more than one row")
+        table.refuse(at, column, f"the {column} stands in more than one row")
     if (step > 1).any():
         have = set(period.tolist())
         named = TrendIndex(table.file, "", "", months, 0, value)
@@ -127,14 +114,3 @@ def _check_changes(index: TrendIndex) -> None:
             value=f"{index.values[at]:g} to {index.values[at + 1]:g}",
             remedy="Correct the value, or bring the index to one base throughout.",
         )
-
-
-def _refuse(table: SmallTable, at: int, column: str, what: str) -> NoReturn:
-    raise InputError(
-        what,
-        where=place(
-            file=table.file, sheet=table.sheet, row=int(table.row[at]), column=table.headings[column]
-        ),
-        value=table.cell(column, at),
-        remedy="Correct it.",
-    )

@@ -1,26 +1,30 @@
-"""Small tables beside the records (indices, rates of exchange): read like them, blank rows left out."""
+"""Small tables beside the records (indices, rates, counts): read like them, without blank rows."""
 
 from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any
+from typing import Any, NoReturn
 
 import numpy as np
 
 from lossagg.arrays import FloatArray, IntArray
+from lossagg.errors import InputError, place
 from lossagg.records.amounts import NumberStyle
 from lossagg.records.dates import DateArray
 from lossagg.records.faults import Rows, list_faults, show
-from lossagg.records.findings import Finding
-from lossagg.records.headings import Wanted
+from lossagg.records.findings import Finding, raise_stops
+from lossagg.records.headings import Wanted, heading_findings
 from lossagg.records.money import Money
 from lossagg.records.raw import Layout, cell_text
 from lossagg.records.sources import read_source
 from lossagg.records.table import chooser
 from lossagg.records.typed import TypedColumns, type_columns
 from lossagg.records.words import WordArray
+
+YEARS = (1900, 2200)
+EPOCH = 1970
 
 
 @dataclass(frozen=True)
@@ -33,10 +37,7 @@ class SmallTable:
         sha256: digest of the file.
         row: row of the file; shape (rows,).
         headings: {canonical name: heading in the file}.
-        all_headings: every heading of the file.
-        positions: {canonical name: position of its column}.
         findings: what was noticed in reading.
-        stops: faults of cells, all of which stop.
     """
 
     file: str
@@ -44,10 +45,7 @@ class SmallTable:
     sha256: str
     row: IntArray
     headings: Mapping[str, str]
-    all_headings: tuple[str, ...]
-    positions: Mapping[str, int]
     findings: tuple[Finding, ...]
-    stops: tuple[Finding, ...]
     _typed: TypedColumns
     _live: IntArray
     _cells: Mapping[str, Any]
@@ -64,9 +62,32 @@ class SmallTable:
         """A column of words, "" where there is none."""
         return self._typed.words[name][self._live]
 
-    def cell(self, name: str, at: int) -> str:
-        """A cell as it is shown in a message."""
-        return show(cell_text(self._cells[name][int(self._live[at])].as_py()))
+    def years(self) -> IntArray:
+        """The column `year` as calendar years.
+
+        Raises:
+            InputError: a year that is none.
+        """
+        year = self.number("year")
+        low, high = YEARS
+        for at in np.flatnonzero(~((year >= low) & (year <= high) & (year == np.floor(year)))).tolist():
+            self.refuse(at, "year", f"the year is not a calendar year between {low} and {high}")
+        return year.astype(np.int64)
+
+    def refuse(self, at: int, column: str, what: str, remedy: str = "Correct it.") -> NoReturn:
+        """Stop at a cell.
+
+        Raises:
+            InputError: always, with the place and the cell.
+        """
+        raise InputError(
+            what,
+            where=place(
+                file=self.file, sheet=self.sheet, row=int(self.row[at]), column=self.headings[column]
+            ),
+            value=show(cell_text(self._cells[column][int(self._live[at])].as_py())),
+            remedy=remedy,
+        )
 
 
 def read_small_table(
@@ -81,6 +102,7 @@ def read_small_table(
 
     Raises:
         InputError: the file cannot be read as declared.
+        RecordsError: cells that are no numbers or dates.
         EnvironmentFault: the file cannot be opened.
     """
     source = read_source(path, layout, chooser(path.name, wanted, columns))
@@ -89,7 +111,8 @@ def read_small_table(
     headings = {name: raw.headings[position] for name, position in raw.positions.items()}
     cells = {name: column.cells for name, column in raw.columns.items()}
     places = Rows(source.file, raw.sheet, raw.row, headings, cells, Money.zeros(len(raw.row)))
-    stops = list_faults([fault for fault in typed.faults if fault.action == "stop"], places)
+    raise_stops(list_faults([fault for fault in typed.faults if fault.action == "stop"], places))
+    unread = heading_findings(raw.headings, raw.positions, wanted, source.file, raw.sheet)
     live = np.flatnonzero(~raw.empty).astype(np.int64)
     return SmallTable(
         source.file,
@@ -97,10 +120,7 @@ def read_small_table(
         source.sha256,
         raw.row[live],
         headings,
-        raw.headings,
-        raw.positions,
-        raw.findings,
-        tuple(stops),
+        (*raw.findings, *unread),
         typed,
         live,
         cells,

@@ -456,10 +456,6 @@ ELSEWHERE = {
     60: "tests/records/test_previous.py::test_60_claims_that_vanished_or_were_rewritten_are_listed",
     61: "tests/batch/test_batch_names.py::test_result_names_are_safe_unique_and_free_of_order",
     67: "tests/families/test_registry.py::test_slips_are_met_with_the_nearest_name",
+    69: "tests/records/test_counts.py::test_69_counts_and_claims_that_disagree_stop_with_both_shown",
 }
 """Rows that concern preparing, fitting, names and reports: where they are tested."""
-
-NOT_YET = {
-    69: "counts beside a list of claims: a portfolio cannot give counts apart yet",
-}
-"""Rows that no test covers, and why."""
