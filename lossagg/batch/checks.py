@@ -36,20 +36,24 @@ def check_folder(
         EnvironmentFault: a portfolio checked alone cannot be opened, or the results cannot be written.
     """
     from lossagg.portfolio.checking import check_portfolio
+    from lossagg.records.trail import TEXTS
     from lossagg.report.checking import write_check
     from lossagg.report.folder import CHECK_FILES, check_destination
     from lossagg.report.manifest import RunFacts
+    from lossagg.report.trail import trail_csv
 
     started, source = datetime.now(UTC), Path(folder)
     if out is not None:
         check_destination(Path(out), CHECK_FILES)
-    if source.is_file() or (source / PORTFOLIO_FILE).is_file():
-        check = check_portfolio(source)
-    else:
+    facts = RunFacts(started=started, command=command)
+    if not (source.is_file() or (source / PORTFOLIO_FILE).is_file()):
         check = _check_all(source, progress)
+        return check, None if out is None else write_check(check, out, facts=facts)
     if out is None:
-        return check, None
-    return check, write_check(check, out, facts=RunFacts(started=started, command=command))
+        return check_portfolio(source), None
+    trail: list[Any] = []
+    check = check_portfolio(source, trail=trail)
+    return check, write_check(check, out, trail=trail_csv(trail, TEXTS), facts=facts)
 
 
 def exit_code(check: dict[str, Any]) -> int:

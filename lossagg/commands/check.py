@@ -24,7 +24,7 @@ def check(
         typer.Option(
             "--out",
             metavar="DIR",
-            help="Folder for check.json and check.html: new, empty, or holding an earlier check.",
+            help="Folder for check.json, check.html, trail.csv: new, empty, or an earlier check.",
             show_default=False,
         ),
     ] = None,

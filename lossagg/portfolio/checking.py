@@ -7,9 +7,10 @@ read apart from each other, so that one round of repairs is enough.
 from __future__ import annotations
 
 from collections.abc import Callable, Collection, Iterator
+from dataclasses import replace
 from functools import partial
 from pathlib import Path
-from typing import TypeVar
+from typing import TYPE_CHECKING, TypeVar
 
 from lossagg.errors import InputError, place
 from lossagg.fitting.empirical import EMPIRICAL
@@ -23,11 +24,15 @@ from lossagg.portfolio.laws import given_frequency, given_severity
 from lossagg.portfolio.places import placed_covers
 from lossagg.portfolio.reconciling import reconcile_portfolio
 from lossagg.portfolio.schema import LineSection, PortfolioFile, read_portfolio_file
-from lossagg.records import Finding, PreparedLosses, RecordsError
+from lossagg.records import CheckedLosses, Finding, PreparedLosses, RecordsError, largest_losses, row_trail
 from lossagg.records.findings import SEVERITY
 from lossagg.version import __version__
 
+if TYPE_CHECKING:
+    import pandas as pd
+
 FORMAT = "lossagg.check/1"
+LARGEST = 3
 USABLE, WITHHELD, STOPPED = "usable", "withheld", "stopped"
 _ORDER = {severity: place for place, severity in enumerate(SEVERITY.values())}
 _LONGEST_VALUE = 60
@@ -35,11 +40,12 @@ _LONGEST_VALUE = 60
 Made = TypeVar("Made")
 
 
-def check_portfolio(path: str | Path) -> Data:
+def check_portfolio(path: str | Path, *, trail: list[pd.DataFrame] | None = None) -> Data:
     """Read and check a portfolio, and say what stands in the way of an assessment.
 
     Args:
         path: the folder, or its portfolio file.
+        trail: receives the trail of every line that has records, see `lossagg.records.row_trail`.
 
     Returns:
         Plain data of format "lossagg.check/1", without clock and machine: `status` is "usable", "withheld"
@@ -51,7 +57,11 @@ def check_portfolio(path: str | Path) -> Data:
         EnvironmentFault: a file cannot be opened.
     """
     folder, path = portfolio_file(Path(path))
-    return _Check(folder, path).data()
+    check = _Check(folder, path)
+    data = check.data()
+    if trail is not None:
+        trail += check.trail()
+    return data
 
 
 def stopped_check(path: Path, what: str, where: str | None, remedy: str | None) -> Data:
@@ -75,6 +85,7 @@ class _Check:
         self.inputs: dict[str, Data] = {}
         self.controls: list[Data] = []
         self.bare: set[str] = set()
+        self.read_lines: list[tuple[CheckedLosses, PreparedLosses | None]] = []
 
     def data(self) -> Data:
         """Everything, from the portfolio file to the control totals."""
@@ -102,6 +113,15 @@ class _Check:
             },
             "findings": findings,
         }
+
+    def trail(self) -> Iterator[pd.DataFrame]:
+        """The trail of every line, and of the rows of shared files that belong to none."""
+        shared: dict[str, CheckedLosses] = {}
+        for losses, prepared in self.read_lines:
+            yield row_trail(losses, prepared)
+            if losses.terms.lines is not None:
+                shared.setdefault(losses.table.sha256, losses.for_line(None))
+        yield from (row_trail(losses, None) for losses in shared.values() if losses.member.any())
 
     def lines(self, file: PortfolioFile) -> list[Data]:
         """The entries of the lines; beforehand the rest of the portfolio file."""
@@ -153,6 +173,7 @@ class _Check:
             followed = self.kept(lambda: follow(line, records), "previous", line.name)
             if line.name not in self.bare:
                 prepared = self.kept(lambda: prepare_line(file, line, records), "preparing", line.name)
+            self.read_lines.append((replace(records.losses, line=line.name), prepared))
             # What the checks found and reconciled stands also where preparing stops.
             self.findings += records.losses.findings if prepared is None else prepared.findings
             history = history_data(prepared) | reconciliation_data(
@@ -172,6 +193,9 @@ class _Check:
             "development": prepared.developed.to_dict() if prepared and prepared.developed else None,
             "exposure": None if prepared is None else prepared.base,
             "window": None if prepared is None else _window(file, prepared),
+            "largest_losses": largest_losses(records.losses, prepared, LARGEST)
+            if records and prepared
+            else [],
             "previous": None if followed is None else followed.to_dict(),
         }
 

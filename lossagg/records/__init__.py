@@ -15,6 +15,7 @@ from lossagg.records.prepared import PreparedLosses
 from lossagg.records.previous import Followed, follow_claims
 from lossagg.records.steps import Step
 from lossagg.records.table import LossTable, read_losses
+from lossagg.records.trail import largest_losses, row_trail
 from lossagg.records.trend import TrendIndex, midpoint
 from lossagg.records.ultimate import Developed
 from lossagg.records.years import YearTable
@@ -43,6 +44,7 @@ __all__ = [
     "convert_losses",
     "follow_claims",
     "ground_up_losses",
+    "largest_losses",
     "line_rows",
     "midpoint",
     "prepare_losses",
@@ -52,5 +54,6 @@ __all__ = [
     "read_rates",
     "read_trend_index",
     "reconcile_controls",
+    "row_trail",
     "undeclared_deductibles",
 ]

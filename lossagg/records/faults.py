@@ -17,7 +17,7 @@ from lossagg.records.raw import cell_text
 
 LISTED = 20
 _SHOWN = 40
-_CURRENCY_CODE = 3
+CURRENCY_CODE = 3
 _MONTHS = "january|february|march|april|june|july|august|sept|september|october|november|december"
 _WORDS = re.compile(rf"\b(?!(?:{_MONTHS})\b)[^\W\d_]{{4,}}", re.IGNORECASE)
 _INFINITE = re.compile(r"[+-]?inf(inity)?$", re.IGNORECASE)
@@ -110,7 +110,7 @@ def show(text: str) -> str:
 
 def _is_harmless(fault: Fault, cell: str) -> bool:
     """Whether a cell that may look like prose can be shown: meant to be, a currency, a single letter."""
-    return fault.shown or len(cell) <= (_CURRENCY_CODE if fault.column == "currency" else 1)
+    return fault.shown or len(cell) <= (CURRENCY_CODE if fault.column == "currency" else 1)
 
 
 def _one_row(fault: Fault, rows: Rows, index: int) -> Finding:

@@ -15,7 +15,7 @@ from typing import TypeVar
 import numpy as np
 import numpy.typing as npt
 
-from lossagg.arrays import IntArray, require_positive
+from lossagg.arrays import BoolArray, IntArray, require_positive
 from lossagg.errors import InputError, place
 from lossagg.records.basis import net_amounts
 from lossagg.records.check import CheckedLosses
@@ -131,10 +131,21 @@ def prepare_losses(
         ),
         reconciliation=whole,
         base=exposure.base if exposure else None,
+        trend_factor=_frozen(factor),
+        loss_of_row=_frozen(_losses_of_rows(kept.used, events)),
+        row_amount=modelled,
+        small=kept.faults,
         net=net_of_recoveries,
         open_claims=open_claims,
         developed=developed,
     )
+
+
+def _losses_of_rows(used: BoolArray, events: Events) -> npt.NDArray[np.int32]:
+    """Event of each row, -1 where it is in none; in four bytes, for there may be ten million rows."""
+    losses = np.full(len(used), -1, dtype=np.int32)
+    losses[used] = events.index
+    return losses
 
 
 def _require_one_line(checked: CheckedLosses) -> None:

@@ -4,9 +4,13 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
+import numpy as np
+import numpy.typing as npt
+
 from lossagg.arrays import BoolArray, FloatArray, IntArray
 from lossagg.records.dates import DateArray
 from lossagg.records.development import OpenClaims
+from lossagg.records.faults import Fault
 from lossagg.records.findings import Finding
 from lossagg.records.money import Reconciliation
 from lossagg.records.steps import Step
@@ -38,6 +42,10 @@ class PreparedLosses:
         net: True when recoveries were taken off.
         open_claims: what was done with open claims.
         developed: the years at ultimate, None where development was not asked for.
+        trend_factor: what each event was multiplied by.
+        loss_of_row: event of each row of the file, -1 where it is in none; shape (rows,).
+        row_amount: amount of each row as it is modelled, None where it is the one recorded; shape (rows,).
+        small: the faults of the rows whose event is below its threshold.
     """
 
     line: str | None
@@ -54,6 +62,10 @@ class PreparedLosses:
     findings: tuple[Finding, ...]
     reconciliation: Reconciliation
     base: str | None
+    trend_factor: FloatArray
+    loss_of_row: npt.NDArray[np.int32]
+    row_amount: FloatArray | None
+    small: tuple[Fault, ...]
     net: bool = False
     open_claims: OpenClaims = "as-recorded"
     developed: Developed | None = None

@@ -28,13 +28,18 @@ class Kept:
         events: the events kept.
         used: True for the rows of them; shape (rows,).
         findings: those of the check, and those of this step.
-        changed: True when any event was set aside.
+        faults: the rows set aside.
     """
 
     events: Events
     used: BoolArray
     findings: tuple[Finding, ...]
-    changed: bool
+    faults: tuple[Fault, ...] = ()
+
+    @property
+    def changed(self) -> bool:
+        """True when any event was set aside."""
+        return bool(self.faults)
 
 
 def set_aside_small(
@@ -57,7 +62,7 @@ def set_aside_small(
     if modelled:
         small |= events.amount <= 0
     if not small.any():
-        return Kept(events, checked.used, checked.findings, changed=False)
+        return Kept(events, checked.used, checked.findings)
     excused = (events.recorded >= threshold) | _parted(events, hours_window)
     faults = [
         threshold_fault(_rows(checked, events, small & ~excused)),
@@ -78,7 +83,7 @@ def set_aside_small(
     findings = (*checked.findings, *listed)
     aside = [fault for fault in checked.faults if fault.action == "set aside"]
     check_tolerance(checked.table, [*aside, *faults], used, checked.terms.tolerance, findings, checked.line)
-    return Kept(_select(events, ~small), used, findings, changed=True)
+    return Kept(_select(events, ~small), used, findings, tuple(faults))
 
 
 def _parted(events: Events, hours_window: int | None) -> BoolArray:

@@ -25,12 +25,15 @@ VERDICTS = {
 }
 
 
-def write_check(check: Entry, out: str | Path, *, facts: RunFacts | None = None) -> Path:
-    """Write a check into a folder: check.json, check.html and a manifest, all or none.
+def write_check(
+    check: Entry, out: str | Path, *, trail: bytes | None = None, facts: RunFacts | None = None
+) -> Path:
+    """Write a check into a folder: check.json, check.html, trail.csv and a manifest, all or none.
 
     Args:
         check: the dictionary of format "lossagg.check/1", or "lossagg.check-folder/1" for several.
         out: the folder; absent, empty, or holding an earlier check, which is replaced.
+        trail: content of trail.csv; None for several portfolios, of which none is written.
         facts: when and how the run was started, for the manifest.
 
     Returns:
@@ -49,6 +52,8 @@ def write_check(check: Entry, out: str | Path, *, facts: RunFacts | None = None)
         )
     target = check_destination(Path(out), CHECK_FILES)
     files = {"check.json": canonical_json(check).encode(), "check.html": render_check(check).encode()}
+    if trail is not None:
+        files["trail.csv"] = trail
     document = {
         **check,
         "portfolio": {"name": check["portfolio"]["name"] if "portfolio" in check else None},
@@ -106,6 +111,7 @@ def printed_tables(check: Entry) -> tuple[Table, ...]:
         records.by_year(lines, currency),
         records.development(lines, currency),
         checks.windows(lines, currency),
+        checks.largest_losses(lines, currency),
     )
     return tuple(table for table in built if table.rows)
 

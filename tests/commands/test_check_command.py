@@ -82,7 +82,7 @@ def test_files_and_json_are_the_same_twice_and_an_earlier_check_is_replaced(tmp_
     folder, out = recorded_portfolio(tmp_path / "one"), tmp_path / "out"
     assert run("check", folder, "--out", out).exit_code == 0
     first = {path.name: path.read_bytes() for path in out.iterdir()}
-    assert set(first) == {"check.json", "check.html", "manifest.json"}
+    assert set(first) == {"check.json", "check.html", "trail.csv", "manifest.json"}
     assert run("check", folder, "--out", out).exit_code == 0
     for name in ("check.json", "check.html"):
         assert (out / name).read_bytes() == first[name]

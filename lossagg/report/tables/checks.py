@@ -7,6 +7,7 @@ from collections.abc import Sequence
 from lossagg.report.cells import Absent, Cell, Column, Table
 from lossagg.report.reading import Entry
 
+_ROWS_NAMED = 12
 SEVERITIES = {"stop": "stop", "set aside": "set aside", "warning": "warnings", "normalised": "normalised"}
 
 
@@ -75,6 +76,45 @@ def since_previous(lines: Sequence[Entry], currency: str) -> Table:
         "the largest fall or more. Rewritten: closed then and now at another amount. Moved: another date.",
     )
     return Table("Since previous", f"Since the previous quarter, {currency}", columns, rows, notes)
+
+
+def largest_losses(lines: Sequence[Entry], currency: str) -> Table:
+    """The largest losses of each line with the rows of the file that they are made of."""
+    rows = tuple(
+        (
+            line["name"],
+            loss["loss"],
+            loss["date"],
+            _origin(loss),
+            *(loss[key] for key in ("recorded", "modelled", "trend", "amount")),
+        )
+        for line in lines
+        for loss in line.get("largest_losses", ())
+    )
+    columns = (
+        Column("Line"),
+        Column("Loss", "count"),
+        Column("Date"),
+        Column("From"),
+        Column("Recorded", "amount"),
+        Column("Net and developed", "amount"),
+        Column("Trend factor", "number"),
+        Column("Modelled", "amount"),
+    )
+    notes = (
+        "Recorded: the sum of these rows. Net and developed: the same unless recoveries are taken off or "
+        "open claims developed. Modelled: times the trend factor. All rows and losses: trail.csv.",
+    )
+    return Table("Largest", f"Largest losses and their rows, {currency}", columns, rows, notes)
+
+
+def _origin(loss: Entry) -> str:
+    """File, sheet and rows of a loss in words."""
+    sheet, rows = loss["sheet"], loss["rows"]
+    named = ", ".join(map(str, rows[:_ROWS_NAMED]))
+    more = f" and {len(rows) - _ROWS_NAMED} more" if len(rows) > _ROWS_NAMED else ""
+    file = f"{loss['file']}, sheet {sheet}" if sheet else loss["file"]
+    return f"{file}, row{'s' if len(rows) > 1 else ''} {named}{more}"
 
 
 def portfolios(entries: Sequence[Entry]) -> Table:
