@@ -224,7 +224,7 @@ def fit_rows(workers: int) -> Iterator[Row]:
             ours,
             reference,
             "faster",
-            20.0 if not own else 0.0,
+            20.0,
             repetitions=1,
         )
     script = ROOT / "validation" / "plain_fit.py"

@@ -55,6 +55,17 @@ class ExponentialLikelihood(SizeLikelihood):
 
 
 @dataclass(frozen=True)
+class GammaSums:
+    """What a gamma likelihood needs of the uncensored losses: their number, their sum and that of their
+    logarithms, and what a change of variable adds to each log density."""
+
+    count: float
+    sum: float
+    log_sum: float
+    jacobian: float = 0.0
+
+
+@dataclass(frozen=True)
 class ParetoLikelihood(SizeLikelihood):
     """S(x) = (minimum / x)**alpha with the minimum fixed. Coordinate: log alpha; the maximum is closed."""
 
@@ -80,6 +91,9 @@ class ParetoLikelihood(SizeLikelihood):
     def log_survival(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
         return -(inner[0] * np.log(np.maximum(points / self.minimum, 1.0)))
 
+    def tail_shape(self, inner: tuple[Jet, ...]) -> Jet | None:
+        return exp(-log(inner[0]))
+
     def starts(self, sample: Sample) -> list[FloatArray]:
         risk = sample.log_sum - sample.count * np.log(self.minimum)
         for group, sign in ((sample.stopped, 1.0), (sample.thresholds, -1.0)):
@@ -94,6 +108,11 @@ class GammaLikelihood(SizeLikelihood):
     law: ClassVar[type[SizeLaw]] = Gamma
     ranges: ClassVar[dict[str, Range]] = {"shape": "positive", "scale": "positive"}
     nearest: ClassVar[str] = "lognormal, pareto or lomax"
+    limit: ClassVar[str] = "above the threshold the losses are heavier than any gamma law"
+
+    def sums(self, sample: Sample) -> GammaSums:
+        """Of the uncensored losses."""
+        return GammaSums(sample.count, sample.sum, sample.log_sum)
 
     def inner(self, point: tuple[Jet, ...]) -> tuple[Jet, ...]:
         shape = exp(point[0])
@@ -104,8 +123,9 @@ class GammaLikelihood(SizeLikelihood):
 
     def log_density(self, inner: tuple[Jet, ...], sample: Sample) -> Jet:
         shape, scale = inner
+        known = self.sums(sample)
         per_loss = log_gamma_function(shape) + shape * log(scale)
-        return (shape - 1.0) * sample.log_sum - sample.count * per_loss - sample.sum / scale
+        return (shape - 1.0) * known.log_sum - known.count * per_loss - known.sum / scale - known.jacobian
 
     def log_survival(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
         return log_gamma_survival(inner[0], np.log(points) - log(inner[1]))
@@ -113,11 +133,12 @@ class GammaLikelihood(SizeLikelihood):
     def runaway(self, inner: tuple[Jet, ...]) -> str:
         if inner[0].value[0] > NEGLIGIBLE:
             return ""
-        return "above the threshold the losses are heavier than any gamma law, and its shape falls to 0"
+        return f"{self.limit}, and its shape falls to 0"
 
     def starts(self, sample: Sample) -> list[FloatArray]:
-        mean = sample.sum / sample.count
-        gap = np.log(mean) - sample.log_sum / sample.count
+        known = self.sums(sample)
+        mean = known.sum / known.count
+        gap = max(np.log(mean) - known.log_sum / known.count, 1e-12)  # equal losses leave 0
         # Minka (2002), Estimating a gamma distribution: closed approximation of the maximum.
         shape = (3 - gap + np.sqrt((gap - 3) ** 2 + 24 * gap)) / (12 * gap)
         points = [np.log([shape, mean])]

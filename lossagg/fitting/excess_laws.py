@@ -53,11 +53,14 @@ class GeneralizedParetoLikelihood(SizeLikelihood):
     def admissible(self, inner: tuple[Jet, ...]) -> bool:
         return bool(inner[0].value[0] > -1)
 
+    def tail_shape(self, inner: tuple[Jet, ...]) -> Jet | None:
+        return inner[0]
+
     def log_density(self, inner: tuple[Jet, ...], sample: Sample) -> Jet:
         shape, level = inner
         w = (sample.exact - self.origin) * np.exp(level.value)
         g, g_s, g_l, g_ss, g_sl, g_ll = (
-            float(np.sum(part)) for part in excess_partials(float(shape.value[0]), w)
+            sample.total(part) for part in excess_partials(float(shape.value[0]), w)
         )
         first, second = np.array([g_s, g_l]), np.array([[g_ss, g_sl], [g_sl, g_ll]])
         return sample.count * level - (1.0 + shape) * compose((shape, level), g, first, second)
@@ -166,8 +169,9 @@ class WeibullLikelihood(SizeLikelihood):
         """log f + w(reference), summed."""
         power, level = inner
         apart = sample.logs - self.reference
-        log_slopes = sample.count * (log(power) + level) + power * float(np.sum(apart)) - sample.log_sum
-        return log_slopes - self._growth(inner, apart, np.ones(1))
+        log_slopes = sample.count * (log(power) + level) + power * sample.total(apart) - sample.log_sum
+        weights = np.ones(1) if sample.weights is None else sample.weights
+        return log_slopes - self._growth(inner, apart, weights)
 
     def _growth(self, inner: tuple[Jet, ...], apart: FloatArray, weights: FloatArray) -> Jet:
         """Weighted sum of w - w(reference) = exp(level) * (exp(power * apart) - 1)."""
@@ -180,7 +184,7 @@ class WeibullLikelihood(SizeLikelihood):
 
     def _level(self, power: float, sample: Sample) -> float:
         """The closed maximum in the level for a given power."""
-        risk = float(np.sum(np.exp(power * (sample.logs - self.reference))))
+        risk = sample.total(np.exp(power * (sample.logs - self.reference)))
         for group, sign in ((sample.stopped, 1.0), (sample.thresholds, -1.0)):
             apart = np.log(group.points) - self.reference
             risk += sign * float(np.sum(group.weights * np.exp(power * apart)))
@@ -215,22 +219,25 @@ class BurrLikelihood(SizeLikelihood):
             return "the tail of the losses is not heavier than Weibull, so alpha grows without bound"
         return self.runaway(inner)
 
+    def tail_shape(self, inner: tuple[Jet, ...]) -> Jet | None:
+        return inner[0] / inner[1]
+
     def log_density(self, inner: tuple[Jet, ...], sample: Sample) -> Jet:
         shape, power, level = inner
         y = sample.logs
         w = np.exp(power.value * y + level.value)
         g, g_s, g_l, g_ss, g_sl, g_ll = excess_partials(float(shape.value[0]), w)
-        first = np.array([np.sum(g_s), np.sum(g_l * y), np.sum(g_l)])
-        bend = [np.sum(g_ll * y**k) for k in (0, 1, 2)]
-        cross = [np.sum(g_sl), np.sum(g_sl * y)]
+        first = np.array([sample.total(part) for part in (g_s, g_l * y, g_l)])
+        bend = [sample.total(g_ll * y**k) for k in (0, 1, 2)]
+        cross = [sample.total(g_sl), sample.total(g_sl * y)]
         second = np.array(
             [
-                [np.sum(g_ss), cross[1], cross[0]],
+                [sample.total(g_ss), cross[1], cross[0]],
                 [cross[1], bend[2], bend[1]],
                 [cross[0], bend[1], bend[0]],
             ]
         )
-        excess = compose(inner, float(np.sum(g)), first, second)
+        excess = compose(inner, sample.total(g), first, second)
         log_slopes = sample.count * (log(power) + level) + (power - 1.0) * sample.log_sum
         return log_slopes - (1.0 + shape) * excess
 

@@ -22,7 +22,9 @@ from lossagg.fitting.refit import law_at
 from lossagg.fitting.sample import sample_of
 from lossagg.fitting.severity import climb, likelihood_of, natural_parameters
 
-FAMILIES = ("exponential", "lognormal", "lomax", "gamma", "weibull", "inverse-gaussian", "burr")
+FAMILIES = (
+    *("exponential", "lognormal", "lomax", "gamma", "weibull", "inverse-gaussian", "burr", "log-logistic"),
+)
 
 
 @dataclass(frozen=True, eq=False)
@@ -57,7 +59,8 @@ def fit_grouped(edges: Floats, counts: Floats, family: str) -> GroupedFit:
         edges: ends of the intervals, ascending, shape (m + 1,); the first may be 0, or a reporting threshold;
             the last may be `inf`.
         counts: losses in each interval, at or above 0, shape (m,). Weights need not be whole.
-        family: "exponential", "lognormal", "lomax", "gamma", "weibull", "inverse-gaussian" or "burr".
+        family: "exponential", "lognormal", "lomax", "gamma", "weibull", "inverse-gaussian",
+            "burr" or "log-logistic".
 
     Raises:
         InputError: edges that do not ascend, counts that do not match them, an unknown family.

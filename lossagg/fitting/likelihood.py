@@ -81,6 +81,10 @@ class SizeLikelihood(ABC):
         """Whether the formulas hold at these parameters; outside, the likelihood counts as zero."""
         return True
 
+    def tail_shape(self, inner: tuple[Jet, ...]) -> Jet | None:
+        """1 / tail index; None for a family whose moments all exist whatever its parameters."""
+        return None
+
     def runaway(self, inner: tuple[Jet, ...]) -> str:
         """Why a climb that came this far is on its way to a limit law and may stop; empty while it is not."""
         return ""

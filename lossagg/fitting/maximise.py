@@ -10,7 +10,7 @@ shrink to nothing although its gradient does. That is why the certificate asks f
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -22,6 +22,7 @@ _STEPS = 120
 _HALVINGS = 40
 _FARTHEST = 60.0  # coordinates are logarithms or of order one: beyond, a parameter has run away
 _END_GAME = 1e-6  # length of a step in coordinates
+_SETTLED = 1e-10  # a step this short ends at the maximum: Newton's method squares what is left
 _STEP_TOLERANCE = 1e-6  # in coordinates
 _DISTANCE_TOLERANCE = 1e-5  # in standard errors
 _SMALLEST_CURVATURE = 1e-10  # of the information scaled to unit diagonal: below, it is rounding
@@ -81,7 +82,8 @@ def maximise(
         return _refused(place, "the likelihood is not defined at the start")
     for _ in range(_STEPS):
         step = _newton_step(place)
-        if not np.max(np.abs(step)) > 1e-13:
+        if not np.max(np.abs(step)) > _SETTLED:  # taken unseen, certified from where it starts
+            place = replace(place, point=place.point + step)
             break
         # So close to the end the likelihood itself no longer tells a better point: its slope does.
         end_game = np.max(np.abs(step)) < _END_GAME

@@ -15,7 +15,13 @@ from lossagg.fitting.sample import Sample
 FEW = 30  # uncensored losses; common practice, no source
 _LITTLE_SEEN = 0.1  # share of losses above the reporting threshold
 _TWO_SIDED = float(special.ndtri(0.975))
-_INDEX_OF = {"pareto": ("alpha",), "lomax": ("alpha",), "burr": ("alpha", "gamma")}
+_INDEX_OF = {
+    "pareto": ("alpha",),
+    "lomax": ("alpha",),
+    "burr": ("alpha", "gamma"),
+    "log-logistic": ("gamma",),
+    "log-gamma": ("rate",),
+}
 
 
 class Note(str):

@@ -33,7 +33,7 @@ class Fit:
         fixed: names of parameters that were held fixed rather than estimated.
         log_likelihood: natural logarithm of the likelihood at the estimates.
         estimated: how many parameters the data chose; what AIC and BIC count.
-        observations: losses or years that entered.
+        observations: losses or years that entered; the sum of their weights where they have some.
         gradient_norm: distance left to the maximum, in standard errors: sqrt(g' C g) with the
             gradient g and the covariance C. A certified fit has it under 1e-5.
         ranges: the range of each estimated parameter, which decides the scale of its interval.
@@ -47,7 +47,7 @@ class Fit:
     fixed: tuple[str, ...] = ()
     log_likelihood: float
     estimated: int
-    observations: int
+    observations: float
     gradient_norm: float
     ranges: Mapping[str, Range] = field(default_factory=dict)
     notes: tuple[Note, ...] = ()
@@ -143,7 +143,7 @@ class SeverityFit(Fit):
     """
 
     model: SizeLaw
-    censored: int
+    censored: float
     truncation: tuple[float, float] | None
     solution: Solution
     tail_prefix: str = ""

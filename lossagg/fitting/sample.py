@@ -17,6 +17,8 @@ import numpy as np
 from lossagg.arrays import BoolArray, FloatArray, Floats, as_floats
 from lossagg.errors import FitError, InputError
 
+_GROUPS, _ENDS = 8192, 256  # of a coarse sample
+
 
 @dataclass(frozen=True, eq=False)
 class Weighted:
@@ -26,10 +28,23 @@ class Weighted:
     weights: FloatArray
 
     @classmethod
-    def of(cls, values: FloatArray) -> Weighted:
-        """Count equal values once each."""
-        points, counts = np.unique(values, return_counts=True)
-        return cls(points, counts.astype(np.float64))
+    def of(cls, values: FloatArray, weights: FloatArray | None = None) -> Weighted:
+        """Count equal values once each, by their weights where they have some."""
+        if weights is None:
+            points, counts = np.unique(values, return_counts=True)
+            return cls(points, counts.astype(np.float64))
+        points, place = np.unique(values, return_inverse=True)
+        return cls(points, np.asarray(np.bincount(place, weights, len(points)), dtype=np.float64))
+
+    def coarse(self) -> Weighted:
+        """Equal shares of the points replaced by their means, the smallest and largest points kept."""
+        inner = len(self.points) - 2 * _ENDS
+        if inner <= 2 * _GROUPS:
+            return self
+        steps = _ENDS + np.arange(_GROUPS) * inner // _GROUPS
+        first = np.concatenate([np.arange(_ENDS), steps, len(self.points) - _ENDS + np.arange(_ENDS)])
+        weights = np.add.reduceat(self.weights, first)
+        return Weighted(np.add.reduceat(self.points * self.weights, first) / weights, weights)
 
 
 @dataclass(frozen=True, eq=False)
@@ -38,32 +53,38 @@ class Sample:
 
     Attributes:
         exact: uncensored losses, sorted.
+        weights: how many losses each of them stands for; None where each stands for itself.
         stopped: censored amounts with their weights.
         thresholds: reporting thresholds above zero with their weights.
         scale: the unit, in money.
-        observations: number of losses, censored ones included.
+        observations: number of losses, censored ones included; the sum of the weights where they have some.
     """
 
     exact: FloatArray
+    weights: FloatArray | None
     stopped: Weighted
     thresholds: Weighted
     scale: float
-    observations: int
+    observations: float
 
-    @property
-    def count(self) -> int:
+    @cached_property
+    def count(self) -> float:
         """Number of uncensored losses."""
-        return len(self.exact)
+        return len(self.exact) if self.weights is None else whole(np.sum(self.weights))
 
     @property
-    def censored(self) -> int:
+    def censored(self) -> float:
         """Number of censored losses."""
-        return self.observations - self.count
+        return whole(np.sum(self.stopped.weights))
+
+    def total(self, values: FloatArray) -> float:
+        """Sum over the uncensored losses of a value for each, shape (len(exact),), in their order."""
+        return float(np.sum(values if self.weights is None else values * self.weights))
 
     @property
     def smallest(self) -> float:
         """Smallest loss, censored ones included."""
-        return float(min(self.exact[0], self.stopped.points[0] if self.censored else np.inf))
+        return float(min([self.exact[0], *self.stopped.points[:1]]))
 
     @property
     def floor(self) -> float:
@@ -73,9 +94,23 @@ class Sample:
         return float(self.thresholds.points[0])
 
     @property
-    def untied(self) -> int:
+    def untied(self) -> float:
         """Losses without a reporting threshold."""
-        return self.observations - int(self.thresholds.weights.sum())
+        rest = self.observations - float(np.sum(self.thresholds.weights))
+        return rest if rest > 1e-9 * self.observations else 0
+
+    def coarse(self) -> Sample:
+        """A few thousand weighted points in place of many, near enough to start a climb from."""
+        weights = np.ones(len(self.exact)) if self.weights is None else self.weights
+        exact = Weighted(self.exact, weights).coarse()
+        return Sample(
+            exact=exact.points,
+            weights=exact.weights,
+            stopped=self.stopped.coarse(),
+            thresholds=self.thresholds.coarse(),
+            scale=self.scale,
+            observations=self.observations,
+        )
 
     @cached_property
     def logs(self) -> FloatArray:
@@ -85,22 +120,22 @@ class Sample:
     @cached_property
     def sum(self) -> float:
         """Sum of the uncensored losses."""
-        return float(np.sum(self.exact))
+        return self.total(self.exact)
 
     @cached_property
     def inverse_sum(self) -> float:
         """Sum of 1 / loss over the uncensored losses."""
-        return float(np.sum(1.0 / self.exact))
+        return self.total(1.0 / self.exact)
 
     @cached_property
     def log_sum(self) -> float:
         """Sum of the logarithms of the uncensored losses."""
-        return float(np.sum(self.logs))
+        return self.total(self.logs)
 
     @cached_property
     def log_squares(self) -> float:
         """Sum of squared deviations of the logarithms from their mean."""
-        return float(np.sum((self.logs - self.log_sum / self.count) ** 2))
+        return self.total((self.logs - self.log_sum / self.count) ** 2)
 
     @cached_property
     def spread(self) -> float:
@@ -160,13 +195,18 @@ def checked_losses(
 
 
 def sample_of(
-    amounts: FloatArray, thresholds: FloatArray, censored: BoolArray, scale: float | None = None
+    amounts: FloatArray,
+    thresholds: FloatArray,
+    censored: BoolArray,
+    scale: float | None = None,
+    weights: FloatArray | None = None,
 ) -> Sample:
     """Scale, sort and sum checked losses.
 
     Args:
         amounts, thresholds, censored: as `checked_losses` gives them.
         scale: the unit, in money; without it a power of two near the median.
+        weights: as `checked_weights` gives them.
 
     Raises:
         FitError: every loss is censored.
@@ -178,14 +218,59 @@ def sample_of(
             remedy="A size shows only below its policy limit: add uncensored losses, or give the law.",
         )
     scale = scale or float(2.0 ** np.round(np.log2(np.median(amounts))))
-    above_zero = thresholds[thresholds > 0]
+    tied = thresholds > 0
+    exact, each = amounts[~censored] / scale, None
+    if weights is None:
+        exact.sort()
+    else:
+        order = np.argsort(exact, kind="stable")
+        exact, each = exact[order], weights[~censored][order]
+
+    def of(values: FloatArray, chosen: BoolArray) -> Weighted:
+        return Weighted.of(values[chosen] / scale, None if weights is None else weights[chosen])
+
     return Sample(
-        exact=np.sort(amounts[~censored] / scale),
-        stopped=Weighted.of(amounts[censored] / scale),
-        thresholds=Weighted.of(above_zero / scale),
+        exact=exact,
+        weights=each,
+        stopped=of(amounts, censored),
+        thresholds=of(thresholds, tied),
         scale=scale,
-        observations=amounts.size,
+        observations=amounts.size if weights is None else whole(np.sum(weights)),
     )
+
+
+def checked_weights(weights: Floats | None, count: int) -> FloatArray | None:
+    """Check how many losses each amount stands for.
+
+    Args:
+        weights: None, or one number above 0 per loss.
+        count: number of losses.
+
+    Raises:
+        InputError: a weight that is not above 0 and finite, or another number of them than losses.
+    """
+    if weights is None:
+        return None
+    values = np.atleast_1d(as_floats(weights, "weights"))
+    if values.shape != (count,):
+        raise InputError(
+            "weights must be one number per loss",
+            value=f"{values.size} weights for {count} losses",
+            remedy="Give how many losses each amount stands for, in the order of the losses.",
+        )
+    _refuse(
+        ~(values > 0) | np.isinf(values),
+        values,
+        "weights must be above 0 and finite",
+        "A weight is a number of losses; leave out a loss that is not to count.",
+    )
+    return values
+
+
+def whole(number: float) -> float:
+    """The number, as an integer where it is one."""
+    number = float(number)
+    return int(number) if number.is_integer() else number
 
 
 def _refuse(bad: BoolArray, values: FloatArray, what: str, remedy: str) -> None:

@@ -6,7 +6,7 @@ from collections.abc import Callable, Mapping
 
 import numpy as np
 
-from lossagg.arrays import BoolArray, FloatArray, Floats, require_positive
+from lossagg.arrays import FloatArray, Floats, require_positive
 from lossagg.errors import FitError, InputError
 from lossagg.fitting.classic_laws import (
     ExponentialLikelihood,
@@ -23,11 +23,12 @@ from lossagg.fitting.excess_laws import (
 )
 from lossagg.fitting.jets import Jet, variables
 from lossagg.fitting.likelihood import SizeLikelihood, log_likelihood
+from lossagg.fitting.log_laws import LogGammaLikelihood, LogLogisticLikelihood
 from lossagg.fitting.lognormal import LognormalLikelihood
 from lossagg.fitting.maximise import Maximum, Objective, evaluate, maximise
 from lossagg.fitting.notes import severity_notes, tail_index_interval
 from lossagg.fitting.results import SeverityFit
-from lossagg.fitting.sample import Sample, checked_losses, sample_of
+from lossagg.fitting.sample import Sample, checked_losses, checked_weights, sample_of
 from lossagg.fitting.solution import Solution
 
 FAMILIES = (
@@ -40,8 +41,10 @@ FAMILIES = (
     "weibull",
     "inverse-gaussian",
     "burr",
+    "log-logistic",
+    "log-gamma",
 )
-_ORIGINS = {"pareto": "minimum", "generalized-pareto": "threshold"}
+_ORIGINS = {"pareto": "minimum", "generalized-pareto": "threshold", "log-gamma": "minimum"}
 _HELD = {**_ORIGINS, "gamma": "shape"}
 MOST_STARTS = 4
 _SEVERAL_STARTS = 20_000  # losses above which only the best start climbs, unless it fails
@@ -54,6 +57,7 @@ def fit_severity(
     censored: object = None,
     *,
     fixed: Mapping[str, float] | None = None,
+    weights: Floats | None = None,
 ) -> SeverityFit:
     """Fit a size law to losses by maximum likelihood.
 
@@ -65,13 +69,17 @@ def fit_severity(
     Args:
         losses: amounts above 0, shape (n,); for a censored loss, the amount at which it stopped.
         family: "exponential", "lognormal", "pareto", "lomax", "generalized-pareto", "gamma",
-            "weibull", "inverse-gaussian" or "burr".
+            "weibull", "inverse-gaussian", "burr", "log-logistic" or "log-gamma".
         truncation: the reporting threshold, one number or one per loss; None or 0 where every loss
             was recorded. A loss equal to its threshold counts as recorded.
         censored: one boolean per loss, True where the amount stopped at a policy limit.
         fixed: {"minimum": m} for "pareto" or {"threshold": u} for "generalized-pareto". Without it
             they are the smallest reporting threshold, or the smallest loss where there is none. For
-            "gamma" {"shape": a} holds the shape; without it the shape is estimated.
+            "log-gamma" {"minimum": m} is needed where a loss has no threshold, and every loss lies above
+            it. For "gamma" {"shape": a} holds the shape; without it the shape is estimated.
+        weights: how many losses each amount stands for, above 0; None where each stands for itself. A
+            weight of k gives the fit of a record in which the loss stands k times, standard errors
+            included: use it for tables of equal amounts. It is not a degree of trust.
 
     Raises:
         InputError: losses, thresholds or marks that cannot be used, or an unknown family.
@@ -81,7 +89,8 @@ def fit_severity(
     censored data.
     """
     amounts, thresholds, marks = checked_losses(losses, truncation, censored)
-    sample = sample_of(amounts, thresholds, marks)
+    each = checked_weights(weights, amounts.size)
+    sample = sample_of(amounts, thresholds, marks, weights=each)
     likelihood, borrowed = likelihood_of(family, sample, fixed or {})
     held = likelihood.fixed(sample.scale)
     require_support(sample, family, len(likelihood.ranges))
@@ -89,7 +98,7 @@ def fit_severity(
     _require_excess(amounts, np.maximum(thresholds, origin))
     maximum = climb(
         lambda point: log_likelihood(likelihood, sample, point),
-        _starts(likelihood, sample, family, (amounts, thresholds, marks)),
+        _starts(likelihood, sample, family),
         sample.observations,
         family,
         likelihood,
@@ -135,20 +144,13 @@ def index_interval(
     return (1 / high if high > 0 else np.inf), (1 / low if low > 0 else np.inf)
 
 
-def _starts(
-    likelihood: SizeLikelihood,
-    sample: Sample,
-    family: str,
-    losses: tuple[FloatArray, FloatArray, BoolArray],
-) -> list[FloatArray]:
-    """Starting points; for very many losses the maximum of every k-th of them comes first."""
+def _starts(likelihood: SizeLikelihood, sample: Sample, family: str) -> list[FloatArray]:
+    """Starting points; for very many losses the maximum of the coarse sample, a hair from their own."""
     starts = likelihood.starts(sample)
-    step = sample.observations // _SEVERAL_STARTS
-    if step < 2 or len(starts) == 1:
+    if sample.observations < _SEVERAL_STARTS or len(starts) == 1:
         return starts
+    few = sample.coarse()
     try:
-        amounts, thresholds, marks = losses
-        few = sample_of(amounts[::step], thresholds[::step], marks[::step], sample.scale)
         found = climb(
             lambda point: log_likelihood(likelihood, few, point),
             likelihood.starts(few),
@@ -181,6 +183,7 @@ def likelihood_of(family: str, sample: Sample, fixed: Mapping[str, float]) -> tu
         "weibull": lambda: WeibullLikelihood.about(sample),
         "inverse-gaussian": InverseGaussianLikelihood,
         "burr": BurrLikelihood,
+        "log-logistic": LogLogisticLikelihood,
     }
     if family not in makers:
         raise InputError(
@@ -194,14 +197,23 @@ def _with_origin(family: str, sample: Sample, fixed: Mapping[str, float]) -> tup
     borrowed = not fixed and sample.floor == 0
     given = float(fixed[name]) / sample.scale if fixed else sample.floor
     origin = sample.smallest if borrowed else given
-    low_enough = origin > 0 if family == "pareto" else origin >= 0
+    low_enough = origin >= 0 if family == "generalized-pareto" else origin > 0
     if not low_enough or not origin <= sample.smallest:
+        bound = "0 or above" if family == "generalized-pareto" else "above 0"
         raise InputError(
-            f"the {name} of the {family} fit must be {'above 0' if family == 'pareto' else '0 or above'}, "
-            "and no loss may lie below it",
+            f"the {name} of the {family} fit must be {bound}, and no loss may lie below it",
             value=origin * sample.scale,
             remedy=f"Pass only losses above the {name}; the smallest is {sample.smallest * sample.scale:g}.",
         )
+    if family == "log-gamma":
+        if not origin < sample.exact[0]:
+            raise FitError(
+                "the log-gamma law needs a minimum below every uncensored loss: at the minimum its density "
+                "is 0 or infinite",
+                value=origin * sample.scale,
+                remedy='Give fixed={"minimum": m} below the smallest loss, or fit another family.',
+            )
+        return LogGammaLikelihood(origin), False
     maker = ParetoLikelihood if family == "pareto" else GeneralizedParetoLikelihood
     return maker(origin), borrowed
 
@@ -240,7 +252,7 @@ def _require_excess(amounts: FloatArray, floors: FloatArray) -> None:
 def climb(
     objective: Objective,
     starts: list[np.ndarray],
-    observations: int,
+    observations: float,
     family: str,
     likelihood: SizeLikelihood,
     most: int = MOST_STARTS,
@@ -255,7 +267,9 @@ def climb(
     def inner(point: np.ndarray) -> tuple[Jet, ...]:
         return likelihood.inner(variables(point)[:count])
 
-    ranked = sorted(starts, key=lambda start: -evaluate(objective, start))[:most]
+    ranked = starts
+    if len(starts) > 1:
+        ranked = sorted(starts, key=lambda start: -evaluate(objective, start))[:most]
     certified: list[Maximum] = []
     tried: list[str] = []
     for start in ranked:

@@ -4,16 +4,12 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import cached_property
+from typing import cast
 
 import numpy as np
 
-from lossagg.fitting.classic_laws import ParetoLikelihood
-from lossagg.fitting.excess_laws import (
-    BurrLikelihood,
-    GeneralizedParetoLikelihood,
-    LomaxLikelihood,
-)
-from lossagg.fitting.jets import Jet, exp, log, variables
+from lossagg.fitting.excess_laws import BurrLikelihood, LomaxLikelihood
+from lossagg.fitting.jets import Jet, log, variables
 from lossagg.fitting.likelihood import SizeLikelihood, log_likelihood
 from lossagg.fitting.maximise import Maximum
 from lossagg.fitting.profile import profile_interval
@@ -72,14 +68,12 @@ class Solution:
         return self._tail_shape(_USUAL)
 
     def _tail_shape(self, level: float) -> tuple[float, float, float] | None:
-        if not isinstance(self.likelihood, ParetoLikelihood | GeneralizedParetoLikelihood | BurrLikelihood):
+        here = self.likelihood.tail_shape(self.likelihood.inner(variables(self.maximum.point)))
+        if here is None:
             return None
 
         def quantity(point: tuple[Jet, ...]) -> Jet:
-            inner = self.likelihood.inner(point)
-            if isinstance(self.likelihood, ParetoLikelihood):
-                return exp(-log(inner[0]))
-            return inner[0] / inner[1] if isinstance(self.likelihood, BurrLikelihood) else inner[0]
+            return cast(Jet, self.likelihood.tail_shape(self.likelihood.inner(point)))
 
-        value = float(quantity(variables(self.maximum.point)).value[0])
-        return (value, *profile_interval(self.objective, quantity, self.maximum, level))
+        low, high = profile_interval(self.objective, quantity, self.maximum, level)
+        return float(here.value[0]), low, high

@@ -36,7 +36,7 @@ from lossagg.fitting.severity import (
     require_support,
 )
 
-BODIES = ("exponential", "lognormal", "lomax", "gamma", "weibull", "inverse-gaussian", "burr")
+BODIES = ("exponential", "lognormal", "lomax", "gamma", "weibull", "inverse-gaussian", "burr", "log-logistic")
 TAILS = ("generalized-pareto", "pareto")
 _FEWEST_IN_TAIL = 5  # uncensored losses; no published minimum, practice speaks of 5, 10 and 30
 
@@ -94,7 +94,8 @@ def fit_spliced(
     Args:
         losses: amounts above 0, shape (n,), as for `fit_severity`.
         body: family below the threshold: "exponential", "lognormal", "lomax", "gamma", "weibull",
-            "inverse-gaussian" or "burr"; or "empirical", the losses up to the threshold themselves.
+            "inverse-gaussian", "burr" or "log-logistic"; or "empirical", the losses up to the threshold
+            themselves.
         threshold: the splice point; losses above it belong to the tail, one equal to it to the body.
         truncation: reporting threshold, one number or one per loss; None where all were recorded.
         censored: one boolean per loss, True where the amount stopped at a policy limit.

@@ -15,11 +15,37 @@ from lossagg.fitting import fit_severity
 
 
 @dataclass(frozen=True)
+class LogGammaTwin:
+    """exp of a gamma variable, times the minimum, from scipy's gamma law."""
+
+    shape: float
+    rate: float
+    minimum: float
+
+    def _logs(self):
+        return stats.gamma(self.shape, scale=1 / self.rate)
+
+    def ppf(self, q):
+        return self.minimum * np.exp(self._logs().ppf(q))
+
+    def logpdf(self, x):
+        return self._logs().logpdf(np.log(x / self.minimum)) - np.log(x)
+
+    def logsf(self, x):
+        return self._logs().logsf(np.log(x / self.minimum))
+
+
+@dataclass(frozen=True)
 class Case:
     family: str
     parameters: dict
     frozen: object  # the scipy law from the parameters, in the order of the dict
     positive: tuple
+    held: dict | None = None
+
+    def fit(self, losses, thresholds, stopped, unit=1.0):
+        held = None if self.held is None else {name: value * unit for name, value in self.held.items()}
+        return fit_severity(losses, self.family, thresholds, stopped, fixed=held)
 
 
 CASES = [
@@ -52,6 +78,19 @@ CASES = [
         (1,),
     ),
     Case("pareto", {"alpha": 1.3}, lambda a: stats.pareto(a, scale=2_000), (0,)),
+    Case(
+        "log-logistic",
+        {"gamma": 1.6, "scale": 20_000.0},
+        lambda g, s: stats.fisk(c=g, scale=s),
+        (0, 1),
+    ),
+    Case(
+        "log-gamma",
+        {"shape": 2.5, "rate": 1.8},
+        lambda a, r: LogGammaTwin(a, r, 1_000.0),
+        (0, 1),
+        {"minimum": 1_000.0},
+    ),
 ]
 by_family = pytest.mark.parametrize("case", CASES, ids=lambda case: case.family)
 
@@ -72,7 +111,7 @@ def test_known_parameters_come_back(case):
     """Truncated and censored losses give every parameter back within four standard errors, and the
     errors are small enough for that to say something."""
     losses, thresholds, stopped = draw(case, 40_000, seed=20_261)
-    fit = fit_severity(losses, case.family, thresholds, stopped)
+    fit = case.fit(losses, thresholds, stopped)
     for name, value in case.parameters.items():
         error = fit.standard_errors[name]
         assert abs(fit.parameters[name] - value) < 4 * error
@@ -108,7 +147,7 @@ def brute_force(case, losses, thresholds, stopped):
 def test_brute_force_finds_the_same_maximum(case):
     """Log-likelihood to 1e-7 and parameters to 1e-3 of their standard errors, on 300 losses."""
     losses, thresholds, stopped = draw(case, 400, seed=7)
-    fit = fit_severity(losses, case.family, thresholds, stopped)
+    fit = case.fit(losses, thresholds, stopped)
     values, log_likelihood = brute_force(case, losses, thresholds, stopped)
     assert fit.log_likelihood == pytest.approx(log_likelihood, abs=1e-7)
     assert fit.log_likelihood > log_likelihood - 1e-8
@@ -122,7 +161,7 @@ def test_observed_information_matches_differences(case):
     """Standard errors come from the curvature of the naive likelihood at the fit (central differences),
     compared as information, each parameter in units of its own error with the others known."""
     losses, thresholds, stopped = draw(case, 400, seed=7)
-    fit = fit_severity(losses, case.family, thresholds, stopped)
+    fit = case.fit(losses, thresholds, stopped)
     names = list(case.parameters)
     at = np.array([fit.parameters[name] for name in names])
     information = np.linalg.inv(fit.covariance[: len(names), : len(names)])
@@ -152,8 +191,8 @@ def test_observed_information_matches_differences(case):
 def test_another_currency_scales_the_scales_alone(case):
     """Amounts in units of 1e-9: scale parameters follow, shapes stay, likelihood shifts by its units."""
     losses, thresholds, stopped = draw(case, 2_000, seed=11)
-    fit = fit_severity(losses, case.family, thresholds, stopped)
-    other = fit_severity(losses * 1e9, case.family, thresholds * 1e9, stopped)
+    fit = case.fit(losses, thresholds, stopped)
+    other = case.fit(losses * 1e9, thresholds * 1e9, stopped, unit=1e9)
     money = {"mean", "scale", "minimum", "threshold"} | (
         {"shape"} if case.family == "inverse-gaussian" else set()
     )
@@ -168,9 +207,9 @@ def test_another_currency_scales_the_scales_alone(case):
 def test_the_order_of_the_losses_changes_nothing(case):
     """Losses in another order give the same bits."""
     losses, thresholds, stopped = draw(case, 2_000, seed=13)
-    fit = fit_severity(losses, case.family, thresholds, stopped)
+    fit = case.fit(losses, thresholds, stopped)
     order = np.random.default_rng(5).permutation(len(losses))
-    other = fit_severity(losses[order], case.family, thresholds[order], stopped[order])
+    other = case.fit(losses[order], thresholds[order], stopped[order])
     assert dict(other.parameters) == dict(fit.parameters)
     assert other.log_likelihood == fit.log_likelihood
     assert (other.covariance == fit.covariance).all()

@@ -45,7 +45,7 @@ def test_unusable_losses(arguments, text):
 
 @pytest.mark.parametrize("family", FAMILIES)
 def test_all_losses_equal(family):
-    with pytest.raises(FitError, match=r"distinct amount|all losses are equal"):
+    with pytest.raises(FitError, match=r"distinct amount|all losses are equal|needs a minimum below"):
         fit_severity([500.0] * 8, family)
 
 
@@ -57,7 +57,8 @@ def test_all_losses_censored(family):
 
 @pytest.mark.parametrize("family", FAMILIES)
 def test_all_losses_at_their_thresholds(family):
-    with pytest.raises(FitError, match=r"every loss equals its reporting threshold|distinct amount"):
+    told = r"every loss equals its reporting threshold|distinct amount|needs a minimum below"
+    with pytest.raises(FitError, match=told):
         fit_severity([500.0, 700.0, 500.0, 900.0], family, [500.0, 700.0, 500.0, 900.0])
 
 
@@ -84,6 +85,16 @@ def test_pareto_needs_a_minimum():
         fit_severity(LOSSES, "pareto", fixed={"minimum": 1_000.0})
     with pytest.raises(InputError, match="holds only 'minimum' fixed"):
         fit_severity(LOSSES, "pareto", fixed={"alpha": 2.0})
+
+
+def test_log_gamma_needs_a_minimum_below_the_losses():
+    with pytest.raises(FitError, match=r"needs a minimum below every uncensored loss.*seen: 700.0"):
+        fit_severity(LOSSES, "log-gamma")
+    with pytest.raises(InputError, match="the minimum of the log-gamma fit must be above 0, and no loss"):
+        fit_severity(LOSSES, "log-gamma", fixed={"minimum": 1_000.0})
+    given = fit_severity(LOSSES, "log-gamma", fixed={"minimum": 500.0})
+    assert dict(fit_severity(LOSSES, "log-gamma", 500.0).parameters) == dict(given.parameters)
+    assert given.estimated == 2
 
 
 def test_a_minimum_read_off_the_losses_counts_as_a_parameter():
