@@ -216,13 +216,21 @@ class SimulatedAnnualLoss(SampledAnnualLoss):
             return float(np.sum(within) / self.years), float(np.sum(within**2) / self.years)
 
     def _excess_sd(self, low: float) -> float:
-        return _sd(np.maximum(self.ordered - low, 0.0))
+        excess = self.ordered[np.searchsorted(self.ordered, low, side="right") :] - low
+        return _sd(excess, self.years)
 
     def _central(self) -> tuple[float, float, float]:
-        mean, scale = float(np.sum(self.ordered) / self.years), _sd(self.ordered)
+        return self._moments
+
+    @cached_property
+    def _moments(self) -> tuple[float, float, float]:
+        mean, scale = float(np.sum(self.ordered) / self.years), _sd(self.ordered, self.years)
         if scale == 0.0 or not np.isfinite(scale):
             return mean, scale, 0.0
-        return mean, scale, float(np.mean(((self.ordered - mean) / scale) ** 4))
+        squares = (self.ordered - mean) / scale
+        squares *= squares
+        squares *= squares
+        return mean, scale, float(np.mean(squares))
 
 
 def quantile_ranks(years: int, level: float, miss: float = 0.05) -> tuple[int, int]:
@@ -255,10 +263,19 @@ def _binomial_quantile(q: float, trials: int, p: float) -> int:
     return high
 
 
-def _sd(values: FloatArray) -> float:
-    """Standard deviation by deviations from the mean, scaled so that squares do not overflow."""
-    deviations = values - np.sum(values) / values.size
-    scale = float(np.max(np.abs(deviations), initial=0.0))
+def _sd(values: FloatArray, years: int) -> float:
+    """Standard deviation by deviations from the mean, scaled so that squares do not overflow.
+
+    Args:
+        values: amounts above zero, in increasing order.
+        years: size of the sample; the amounts not given are zero.
+    """
+    mean, zeros = float(np.sum(values) / years), years - values.size
+    deviations = values - mean
+    ends = (abs(float(deviations[0])), abs(float(deviations[-1]))) if values.size else (0.0, 0.0)
+    scale = max(*ends, mean if zeros else 0.0)
     if scale == 0.0 or not np.isfinite(scale):
         return scale
-    return scale * float(np.sqrt(np.sum((deviations / scale) ** 2) / values.size))
+    deviations /= scale
+    deviations *= deviations
+    return scale * float(np.sqrt((np.sum(deviations) + zeros * (mean / scale) ** 2) / years))
