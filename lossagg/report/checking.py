@@ -3,15 +3,13 @@
 from __future__ import annotations
 
 from dataclasses import replace
-from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
 
-from lossagg.errors import InputError
-from lossagg.report.canonical import canonical_json
 from lossagg.report.cells import Table
-from lossagg.report.folder import CHECK_FILES, check_destination, publish
-from lossagg.report.manifest import RunFacts, build_manifest
+from lossagg.report.documents import publish_document, require_format
+from lossagg.report.folder import CHECK_FILES
+from lossagg.report.manifest import RunFacts
 from lossagg.report.reading import Entry
 from lossagg.report.tables import checks, controls, evidence, records
 
@@ -43,27 +41,20 @@ def write_check(
         InputError: another format, or a folder with files of someone else.
         EnvironmentFault: no space or no permission; nothing is left half-written.
     """
-    if check.get("format") not in (FORMAT, FOLDER_FORMAT):
-        raise InputError(
-            "this is not a check that the report can read",
-            where="key 'format'",
-            value=check.get("format"),
-            remedy=f"Give the dictionary of format {FORMAT!r}.",
-        )
-    target = check_destination(Path(out), CHECK_FILES)
-    files = {"check.json": canonical_json(check).encode(), "check.html": render_check(check).encode()}
-    if trail is not None:
-        files["trail.csv"] = trail
-    document = {
+    require_format(check, "a check", FORMAT, FOLDER_FORMAT)
+    described = {
         **check,
         "portfolio": {"name": check["portfolio"]["name"] if "portfolio" in check else None},
         "run": {"version": check["run"]["version"], "seed": None, "years": None, "inputs": _inputs(check)},
         "headline": {"withheld": check["status"] == "withheld"},
         "cautions": [],
     }
-    manifest = build_manifest(document, facts or RunFacts(), files, datetime.now(UTC))
-    publish(target, {**files, "manifest.json": canonical_json(manifest).encode()})
-    return target
+
+    def build() -> dict[str, bytes]:
+        page = {"check.html": render_check(check).encode()}
+        return page if trail is None else {**page, "trail.csv": trail}
+
+    return publish_document(check, out, CHECK_FILES, build, facts, described=described)
 
 
 def _inputs(check: Entry) -> list[dict[str, Any]]:

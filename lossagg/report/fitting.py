@@ -2,15 +2,13 @@
 
 from __future__ import annotations
 
-from datetime import UTC, datetime
 from pathlib import Path
 
-from lossagg.errors import InputError
 from lossagg.report import tables
-from lossagg.report.canonical import canonical_json
 from lossagg.report.cells import Table
-from lossagg.report.folder import FIT_FILES, check_destination, publish
-from lossagg.report.manifest import RunFacts, build_manifest
+from lossagg.report.documents import publish_document, require_format
+from lossagg.report.folder import FIT_FILES
+from lossagg.report.manifest import RunFacts
 from lossagg.report.page import environment, line_section
 from lossagg.report.reading import Entry
 from lossagg.report.wording import STANDING_CAUTIONS
@@ -34,23 +32,17 @@ def write_fit(fits: Entry, out: str | Path, *, facts: RunFacts | None = None) ->
         InputError: another format, or a folder with files of someone else.
         EnvironmentFault: no space or no permission; nothing is left half-written.
     """
-    if fits.get("format") != FORMAT:
-        raise InputError(
-            "these are not fits that the report can read",
-            where="key 'format'",
-            value=fits.get("format"),
-            remedy=f"Give the dictionary of format {FORMAT!r}.",
-        )
-    target = check_destination(Path(out), FIT_FILES)
-    files = {
-        "fit.json": canonical_json(fits).encode(),
-        "fit.html": render_fit(fits).encode(),
-        "fit.xlsx": render_workbook(fit_tables(fits), fits["portfolio"]["valuation_date"]),
-    }
-    document = {**fits, "headline": {"withheld": False}}
-    manifest = build_manifest(document, facts or RunFacts(), files, datetime.now(UTC))
-    publish(target, {**files, "manifest.json": canonical_json(manifest).encode()})
-    return target
+    require_format(fits, "a document of fits", FORMAT)
+
+    def build() -> dict[str, bytes]:
+        valued = fits["portfolio"]["valuation_date"]
+        return {
+            "fit.html": render_fit(fits).encode(),
+            "fit.xlsx": render_workbook(fit_tables(fits), valued),
+        }
+
+    described = {**fits, "headline": {"withheld": False}}
+    return publish_document(fits, out, FIT_FILES, build, facts, described=described)
 
 
 def fit_tables(fits: Entry) -> tuple[Table, ...]:

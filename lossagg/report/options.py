@@ -7,17 +7,15 @@ from __future__ import annotations
 
 import csv
 from collections.abc import Sequence
-from datetime import UTC, datetime
 from io import StringIO
 from pathlib import Path
 from typing import Any
 
-from lossagg.errors import InputError
-from lossagg.report.canonical import canonical_json
 from lossagg.report.cells import Absent, Cell, Estimated, Ranged, Table
+from lossagg.report.documents import publish_document, require_format
 from lossagg.report.figures.options import curves_figure, frontier_figure
-from lossagg.report.folder import OPTION_FILES, check_destination, publish
-from lossagg.report.manifest import RunFacts, build_manifest
+from lossagg.report.folder import OPTION_FILES
+from lossagg.report.manifest import RunFacts
 from lossagg.report.page import environment
 from lossagg.report.reading import Entry
 from lossagg.report.tables import option_details as details
@@ -46,27 +44,19 @@ def write_options(options: Entry, out: str | Path, *, facts: RunFacts | None = N
         InputError: another format, or a folder with files of someone else.
         EnvironmentFault: no space or no permission; nothing is left half-written.
     """
-    if options.get("format") != FORMAT:
-        raise InputError(
-            "this is not a table of options that the report can read",
-            where="key 'format'",
-            value=options.get("format"),
-            remedy=f"Give the dictionary of format {FORMAT!r}.",
-        )
-    target = check_destination(Path(out), OPTION_FILES)
-    sheets = details.every_option_table(options)
-    curve_tables = details.curves(options)
-    files = {
-        "options.json": canonical_json(options).encode(),
-        "options.html": render_options(options).encode(),
-        "options.xlsx": render_workbook(sheets, options["portfolio"]["valuation_date"]),
-        "options.csv": _csv([_joined(options)]).encode(),
-        "curves.csv": _csv(curve_tables).encode(),
-    }
-    document = {**options, "headline": {"withheld": not options["agrees"]}}
-    manifest = build_manifest(document, facts or RunFacts(), files, datetime.now(UTC))
-    publish(target, {**files, "manifest.json": canonical_json(manifest).encode()})
-    return target
+    require_format(options, "a table of options", FORMAT)
+
+    def build() -> dict[str, bytes]:
+        sheets, valued = details.every_option_table(options), options["portfolio"]["valuation_date"]
+        return {
+            "options.html": render_options(options).encode(),
+            "options.xlsx": render_workbook(sheets, valued),
+            "options.csv": _csv([_joined(options)]).encode(),
+            "curves.csv": _csv(details.curves(options)).encode(),
+        }
+
+    described = {**options, "headline": {"withheld": not options["agrees"]}}
+    return publish_document(options, out, OPTION_FILES, build, facts, described=described)
 
 
 def option_parts(options: Entry) -> dict[str, Any]:

@@ -10,7 +10,6 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from typing import Any
 
-from lossagg.errors import InputError
 from lossagg.report.cells import Absent, Cell, Estimated, Ranged
 from lossagg.report.wording import STANDING_CAUTIONS
 
@@ -23,22 +22,6 @@ DOES_NOT_EXIST = "does not exist"
 WITHHELD = "withheld"
 NOT_COMPUTED = "not computed"
 NO_INTERVAL = "the accuracy of this figure cannot be stated"
-
-
-def check_format(assessment: Assessment) -> None:
-    """Refuse what is not an assessment of the format this report reads.
-
-    Raises:
-        InputError: another format, or none.
-    """
-    seen = assessment.get("format")
-    if seen != FORMAT:
-        raise InputError(
-            "this is not an assessment that the report can read",
-            where="key 'format'",
-            value=seen,
-            remedy=f"Give the dictionary of an assessment of format {FORMAT!r}.",
-        )
 
 
 def absent(reason: str | None) -> Absent:

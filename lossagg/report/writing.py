@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-from datetime import UTC, datetime
 from pathlib import Path
 
-from lossagg.report.canonical import canonical_json
-from lossagg.report.folder import check_destination, publish
-from lossagg.report.manifest import RunFacts, build_manifest
-from lossagg.report.reading import Assessment, check_format
+from lossagg.report.documents import publish_document, require_format
+from lossagg.report.folder import FILES
+from lossagg.report.manifest import RunFacts
+from lossagg.report.reading import FORMAT, Assessment
 
 
 def write_assessment(assessment: Assessment, out: str | Path, *, facts: RunFacts | None = None) -> Path:
@@ -33,14 +32,13 @@ def write_assessment(assessment: Assessment, out: str | Path, *, facts: RunFacts
     from lossagg.report.tables import every_table
     from lossagg.report.workbook import render_workbook
 
-    known = facts or RunFacts()
-    check_format(assessment)
-    target = check_destination(Path(out))
-    files = {
-        "assessment.json": canonical_json(assessment).encode(),
-        "report.html": render_report(assessment).encode(),
-        "tables.xlsx": render_workbook(every_table(assessment), assessment["portfolio"]["valuation_date"]),
-    }
-    manifest = build_manifest(assessment, known, files, datetime.now(UTC))
-    publish(target, {**files, "manifest.json": canonical_json(manifest).encode()})
-    return target
+    require_format(assessment, "an assessment", FORMAT)
+
+    def build() -> dict[str, bytes]:
+        valued = assessment["portfolio"]["valuation_date"]
+        return {
+            "report.html": render_report(assessment).encode(),
+            "tables.xlsx": render_workbook(every_table(assessment), valued),
+        }
+
+    return publish_document(assessment, out, FILES, build, facts)
