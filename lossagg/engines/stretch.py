@@ -16,6 +16,7 @@ from lossagg.arrays import FloatArray
 from lossagg.families.base import SizeLaw
 
 _ALL_ATOMS = 1e-12
+_PARTS = 64
 
 
 @dataclass(frozen=True)
@@ -71,13 +72,9 @@ class ContinuousPart:
         mean = self.severity.mean()
         if mean == np.inf:
             return np.inf
-        low, high = 0.0, mean
-        for _ in range(30):
-            middle = (low + high) / 2
-            low, high = (
-                (low, middle) if float(self.severity.limited_mean(middle)) > mean / 2 else (middle, high)
-            )
-        return high
+        amounts = mean / _PARTS * np.arange(1.0, _PARTS + 1.0)
+        reached = np.asarray(self.severity.limited_mean(amounts[:-1])) > mean / 2
+        return float(amounts[int(np.argmax(reached)) if reached.any() else -1])
 
     def _limited_mean(self, x: FloatArray) -> FloatArray:
         limited = np.asarray(self.severity.limited_mean(x))

@@ -82,12 +82,23 @@ class Grid:
         lines: the lines; a schedule for each of them makes one annual sum.
         points: length of lattice and transform; a power of two is fastest.
         workers: threads; by default one for each core. The figures do not depend on it.
+        ratio: annual sums whose reaches differ by less than this factor share a lattice.
+        bracketed: whether a bracket is wanted; without one it is as wide as can be.
     """
 
-    def __init__(self, lines: Sequence[Line], points: int = POINTS, workers: int | None = None) -> None:
+    def __init__(
+        self,
+        lines: Sequence[Line],
+        points: int = POINTS,
+        workers: int | None = None,
+        ratio: float = HALF_OCTAVE,
+        bracketed: bool = True,
+    ) -> None:
         self.lines = tuple(lines)
         self.points = points
         self.workers = workers or available_cores()
+        self.ratio = ratio
+        self.bracketed = bracketed
         self._tilt = TILT / points
         index = np.arange(points)
         self._weights = np.exp(-self._tilt * index)
@@ -124,10 +135,10 @@ class Grid:
         scales: dict[int, list[Events]] = {}
         for schedule in distinct:
             reach = max(self._reach(schedule, moments[schedule]), 1.01 * (least or {}).get(schedule, 0.0))
-            scales.setdefault(int(np.ceil(np.log(reach) / np.log(HALF_OCTAVE))), []).append(schedule)
+            scales.setdefault(int(np.ceil(np.log(reach) / np.log(self.ratio))), []).append(schedule)
         finished = 0
         for scale, members in sorted(scales.items()):
-            top, left = HALF_OCTAVE**scale, members
+            top, left = self.ratio**scale, members
             while left:
                 own = sorted({own for events in left for own in events}, key=_order)
                 room = Scale(self.lines, own, top, self.points)
@@ -147,16 +158,18 @@ class Grid:
         """One option: masses, transform, generating function, inverse; arrays that fit the cache."""
         masses = np.empty(self.points)
         product: Any = None
-        off = []
         for line, own in zip(self.lines, schedule, strict=True):
-            off.append(room.fill(line, own, masses))
+            room.fill(line, own, masses)
             masses *= self._weights
             generated = line.frequency.pgf(fft.rfft(masses))
             product = generated if product is None else np.multiply(product, generated, out=product)
         tilted = fft.irfft(product, self.points, overwrite_x=True)
         survival, areas = np.empty(self.points), masses
         survival_and_areas(tilted, self._untilt, survival, areas)
-        shift, slack = _bracket(off, room.step)
+        shift, slack = np.inf, 1.0
+        if self.bracketed:
+            pairs = zip(self.lines, schedule, strict=True)
+            shift, slack = _bracket([room.split_count(line, own) for line, own in pairs], room.step)
         return schedule, LatticeYear(room.step, survival, areas, moment.mean, moment.second, shift, slack)
 
     def _reach(self, events: Events, moment: Moments) -> float:
@@ -201,10 +214,9 @@ def event_moments(line: Line, schedules: Sequence[Schedule]) -> tuple[FloatArray
     return first, second
 
 
-def _bracket(off: list[tuple[float, float]], step: float) -> tuple[float, float]:
+def _bracket(counts: list[float], step: float) -> tuple[float, float]:
     """Half width in money and uncovered probability, see `lattice_year`, from the most split payments of
-    each line and the range of their errors in steps."""
-    squares = sum(count * width**2 for count, width in off)
-    shift = step * float(np.sqrt(squares * np.log(2.0 / _UNCOVERED) / 2.0))
-    slack = (_UNCOVERED + len(off) * UNSEEN_COUNT) if shift else 0.0
+    each line."""
+    shift = step * float(np.sqrt(sum(counts) * np.log(2.0 / _UNCOVERED) / 2.0))
+    slack = (_UNCOVERED + len(counts) * UNSEEN_COUNT) if shift else 0.0
     return shift, slack + float(np.exp(-TILT)) * _SHORT + _ROUND_OFF

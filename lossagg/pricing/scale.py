@@ -21,6 +21,7 @@ from lossagg.families.base import CountLaw
 UNSEEN_COUNT = 1e-8
 _ALIGNED = 1e-9
 _MOST_AMOUNTS = 2000
+_SECTIONS = 64
 
 
 class Scale:
@@ -45,22 +46,18 @@ class Scale:
             self._base(line)
             self._part_of_cell(line, None)
 
-    def fill(self, line: Line, schedule: Schedule, masses: FloatArray) -> tuple[float, float]:
+    def fill(self, line: Line, schedule: Schedule, masses: FloatArray) -> None:
         """The law of one payment, split between lattice points with its mean kept.
 
         Args:
             line: the line.
             schedule: what is paid of a loss.
             masses: filled, shape (points,); payments beyond the lattice are left out.
-
-        Returns:
-            The most payments of a year that are split, and the range of a split in steps.
         """
         areas = masses  # integrals of the survival function over the cells, in steps, then differenced
         ends = self._fill_areas(line, schedule, areas)
         masses[1:] = areas[:-1] - areas[1:]
         masses[0] = 1.0 - ends
-        return self._split_count(line, schedule), 1.0
 
     def _fill_areas(self, line: Line, schedule: Schedule, areas: FloatArray) -> float:
         """Fill the cell areas of the payment and return that of the first cell."""
@@ -124,7 +121,7 @@ class Scale:
 
     def _base(self, line: Line, ahead: int = 0) -> FloatArray:
         """Cell areas of the loss itself, in steps, as far as `points + ahead` cells."""
-        blocks = 1 if ahead == 0 else 4
+        blocks = 1 - (-ahead // self.points)
         key = (line.name, blocks)
         if key not in self._areas:
             edges = self._edges if blocks == 1 else self.step * np.arange(blocks * self.points + 1.0)
@@ -132,7 +129,7 @@ class Scale:
             self._areas[key] = _payment_areas(law, edges) / self.step
         return self._areas[key]
 
-    def _split_count(self, line: Line, schedule: Schedule) -> float:
+    def split_count(self, line: Line, schedule: Schedule) -> float:
         """The most payments of a year that do not lie on a lattice point, at probability 1e-8.
 
         The part of losses that are split is rounded up to a twentieth, so that few quantiles are sought.
@@ -213,6 +210,7 @@ def _most_count(count: CountLaw) -> float:
     while float(count.sf(high)) > UNSEEN_COUNT:
         low, high = high, 2.0 * high
     while high - low > 1.0:
-        middle = float(np.floor((low + high) / 2.0))
-        low, high = (middle, high) if float(count.sf(middle)) > UNSEEN_COUNT else (low, middle)
+        between = np.unique(np.floor(np.linspace(low, high, _SECTIONS + 1)[1:]))
+        enough = int(np.argmax(np.asarray(count.sf(between)) <= UNSEEN_COUNT))
+        low, high = (low if enough == 0 else float(between[enough - 1])), float(between[enough])
     return high
