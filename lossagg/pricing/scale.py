@@ -125,8 +125,9 @@ class Scale:
         key = (line.name, blocks)
         if key not in self._areas:
             edges = self._edges if blocks == 1 else self.step * np.arange(blocks * self.points + 1.0)
-            law = PaymentLaw(line.severity, Schedule.identity())
-            self._areas[key] = _payment_areas(law, edges) / self.step
+            # Differences of the limited mean are off by parts in 1e16 of a cell times its number: far below
+            # the round-off of the transform, and far cheaper than what keeps every digit of a far cell.
+            self._areas[key] = np.diff(np.asarray(line.severity.limited_mean(edges))) / self.step
         return self._areas[key]
 
     def split_count(self, line: Line, schedule: Schedule) -> float:
