@@ -1,5 +1,5 @@
 """Pricing options: what each choice of deductible, limit and annual terms keeps, costs and risks."""
 
-from lossagg.pricing.price import price_options
+from lossagg.pricing.price import options_of_assessment, price_options
 
-__all__ = ["price_options"]
+__all__ = ["options_of_assessment", "price_options"]

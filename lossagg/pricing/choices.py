@@ -109,14 +109,6 @@ def _listed(section: OptionSection, lines: tuple[Line, ...], cap: float, key: st
 
 def _checked(terms: Cover, lines: tuple[Line, ...], cap: float, key: str) -> Cover:
     where = place(file=PORTFOLIO_FILE, key=key)
-    if terms.reinstatements is not None and np.any(np.asarray(terms.reinstatements.rates) > 0):
-        raise InputError(
-            "paid reinstatements make the premium depend on the losses; the table of options has no place "
-            "for that",
-            where=where,
-            value=terms.reinstatements,
-            remedy="Leave the rate out (free reinstatements), or put the cover into [[cover]].",
-        )
     try:
         Option("check", terms, lines, None, cap).kept  # noqa: B018
     except InputError as error:

@@ -23,6 +23,7 @@ from lossagg.engines.yearly import LineColumns, ramps
 from lossagg.pricing.option import Events, Option
 
 MEMORY = 2 * 10**9
+Paid = Callable[[FloatArray], FloatArray]
 
 
 @dataclass(eq=False)
@@ -57,7 +58,7 @@ def simulate_options(
     options: Sequence[Option],
     *,
     base: int,
-    fixed: Sequence[float | None],
+    paid: Sequence[Paid | None],
     thresholds: Mapping[str, Sequence[float]],
     keep: Sequence[bool],
     years: int,
@@ -71,7 +72,8 @@ def simulate_options(
         lines: the lines the options are for.
         options: the options, all with the same event cap.
         base: index of the base option.
-        fixed: per option, what it costs whatever happens (premium and costs); None where unknown.
+        paid: per option, what it costs beside retained losses as a function of what the cover pays for the
+            years: premium and costs, and reinstatement premium; None where unknown.
         thresholds: per option name, retained amounts to count the years above.
         keep: per option, whether its yearly amounts are wanted.
         years: years to simulate.
@@ -86,7 +88,7 @@ def simulate_options(
     columns = _Columns.of(options)
     by_name = sorted(enumerate(lines), key=lambda pair: pair[1].name)
     prepared = [columns.line(number, line) for number, line in by_name]
-    room = _Room(options, base, fixed, thresholds, keep, years)
+    room = _Room(options, base, paid, thresholds, keep, years)
 
     def block(number: int) -> None:
         first = number * BLOCK_YEARS
@@ -134,12 +136,12 @@ class _Room:
         self,
         options: Sequence[Option],
         base: int,
-        fixed: Sequence[float | None],
+        paid: Sequence[Paid | None],
         thresholds: Mapping[str, Sequence[float]],
         keep: Sequence[bool],
         years: int,
     ) -> None:
-        self.options, self.base, self.fixed, self.thresholds = options, base, fixed, thresholds
+        self.options, self.base, self.paid, self.thresholds = options, base, paid, thresholds
         self.years = years
         self.kept = {k: np.empty((2, years)) for k, wanted in enumerate(keep) if wanted}
         self.sums: dict[int, list[FloatArray]] = {}
@@ -147,7 +149,10 @@ class _Room:
     def add(self, number: int, first: int, size: int, sums: Mapping[Events, FloatArray]) -> None:
         """Apply every option to one block of years."""
         base = self.options[self.base]
-        base_retained = sums[base.scope] - base.ceded(sums[base.paid], sums[base.kept])
+        base_ceded, base_paid = base.ceded(sums[base.paid], sums[base.kept]), self.paid[self.base]
+        base_cost = None
+        if base_paid is not None:
+            base_cost = sums[base.scope] - base_ceded + base_paid(base_ceded)
         found = []
         for k, option in enumerate(self.options):
             ceded = option.ceded(sums[option.paid], sums[option.kept])
@@ -157,9 +162,9 @@ class _Room:
             if k in self.kept:
                 self.kept[k][:, first : first + size] = retained, ceded
             beats, counted = np.nan, self.thresholds.get(option.name, ())
-            mine, theirs = self.fixed[k], self.fixed[self.base]
-            if mine is not None and theirs is not None:
-                beats = float(np.count_nonzero(retained + mine < base_retained + theirs - tiny))
+            mine = self.paid[k]
+            if mine is not None and base_cost is not None:
+                beats = float(np.count_nonzero(retained + mine(ceded) < base_cost - tiny))
             found.append(
                 np.array(
                     [

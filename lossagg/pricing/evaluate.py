@@ -1,21 +1,17 @@
-"""The figures of every option: exact where the year is a function of one sum, else simulated, and checked.
-
-Exact and simulated figures of an option meet here: the mean and the share of simulated years beyond each
-exact quantile must agree within four standard errors, or the figures of that option are withheld.
-"""
+"""The figures of every option: exact where the year is a function of one sum, else simulated."""
 
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field, replace
-from typing import Any
 
 import numpy as np
 
-from lossagg.engines.payment import PaymentLaw
+from lossagg.cover import Schedule
 from lossagg.engines.result import AnnualLoss, TransformedAnnualLoss
-from lossagg.errors import InputError
+from lossagg.engines.sampled import SimulatedAnnualLoss
 from lossagg.pricing.common_years import Tally
+from lossagg.pricing.event_figures import nothing_retained
 from lossagg.pricing.figure import Figure
 from lossagg.pricing.grid import Grid, Moments
 from lossagg.pricing.lattice_year import LatticeYear
@@ -23,8 +19,6 @@ from lossagg.pricing.option import Events, OneSum, Option
 
 FEW = 100
 FINE, COARSE = 2**17, 2**16
-STANDARD_ERRORS = 4.0
-SIMULATED = "simulated: two annual sums at once"
 
 
 @dataclass
@@ -37,6 +31,7 @@ class Exact:
         no_loss: probability that nothing is retained.
         charge: expected amount kept under the deductible beyond the retained cap.
         ceded, ceded_sd, ceded_tail: expected ceded loss, its standard deviation and tail value at risk.
+        reinstated: expected reinstatement premium as a multiple of the initial one, where any is paid.
     """
 
     levels: dict[float, tuple[Figure, Figure]] = field(default_factory=dict)
@@ -47,6 +42,7 @@ class Exact:
     ceded: Figure | None = None
     ceded_sd: Figure | None = None
     ceded_tail: Figure | None = None
+    reinstated: Figure | None = None
 
 
 def exact_figures(
@@ -91,6 +87,9 @@ def _wanted(
             wanted.append((ceded.events, lambda year: _read_ceded(year, ceded, exact)))
         if tail_level is not None:
             wanted.append((ceded.events, lambda year: _read_tail(year, ceded, exact, tail_level)))
+        part = option.reinstated
+        if part is not None:
+            wanted.append((ceded.events, lambda year: _read_reinstated(year, ceded, part, exact)))
     if option.terms is not None and option.terms.retained_cap < np.inf:
         cap = option.terms.retained_cap
         wanted.append((option.kept, lambda year: _read_charge(year, cap, exact)))
@@ -132,6 +131,10 @@ def _read_tail(year: LatticeYear, plan: OneSum, exact: Exact, level: float) -> N
     exact.ceded_tail = Figure.measured(_paid(year, plan), "tail_value_at_risk", level)
 
 
+def _read_reinstated(year: LatticeYear, plan: OneSum, part: Schedule, exact: Exact) -> None:
+    exact.reinstated = Figure.measured(TransformedAnnualLoss(year, part.after(plan.annual)), "mean")
+
+
 def _read_charge(year: LatticeYear, cap: float, exact: Exact) -> None:
     low, high = (side.layer_mean(cap) for side in year.bounds())
     exact.charge = Figure(year.layer_mean(cap), low, high, year.engine)
@@ -159,47 +162,13 @@ def gross_moments(grid: Grid, option: Option) -> Moments:
     return grid.moments([option.scope])[0]
 
 
-def retained_events(option: Option) -> float:
-    """Expected number of events a year of which something stays with the insured before annual terms."""
-    share = 1.0 if option.terms is None else option.terms.year_share
-    total = 0.0
-    for line, scope, paid in zip(option.lines, option.scope, option.paid, strict=True):
-        left = scope if option.terms is None else scope - paid.scaled(share)
-        total += line.frequency.mean() * PaymentLaw(line.severity, left).paying
-    return total
-
-
-def nothing_retained(option: Option) -> float | None:
-    """P(nothing retained), exactly, where no annual term decides it."""
-    plan = option.retained_plan
-    if plan is None or not plan.annual.is_identity:
-        return None
-    chance = 1.0
-    for line, events in zip(option.lines, plan.events, strict=True):
-        chance *= float(line.frequency.pgf(1.0 - PaymentLaw(line.severity, events).paying))
-    return chance
-
-
-def increased_limit_factor(option: Option, basic: float | None, expense: float) -> float | None:
-    """What the option's limit costs per event against the basic limit at the same deductible."""
-    if basic is None or option.terms is None or option.terms.limit == np.inf:
-        return None
-    try:
-        basis = replace(option, terms=replace(option.terms, limit=basic))
-        own, other = _per_event(option), _per_event(basis)
-    except InputError:
-        return None
-    return (own + expense) / (other + expense) if np.isfinite(own) and other + expense > 0 else None
-
-
-def _per_event(option: Option) -> float:
-    count = sum(line.frequency.mean() for line in option.lines)
-    pairs = zip(option.lines, option.paid, strict=True)
-    return sum(line.frequency.mean() * PaymentLaw(line.severity, paid).mean for line, paid in pairs) / count
-
-
 def simulated_figures(
-    exact: Exact, tally: Tally, levels: Sequence[float], whole: float, tail_level: float | None
+    option: Option,
+    exact: Exact,
+    tally: Tally,
+    levels: Sequence[float],
+    whole: float,
+    tail_level: float | None,
 ) -> Exact:
     """What the exact engine could not say, from the simulated years; the rest stays."""
     kept, paid = tally.kept, tally.paid
@@ -222,61 +191,7 @@ def simulated_figures(
     filled.ceded_sd = filled.ceded_sd or Figure.measured(paid, "sd")
     if tail_level is not None:
         filled.ceded_tail = filled.ceded_tail or Figure.measured(paid, "tail_value_at_risk", tail_level)
+    if option.reinstated is not None and filled.reinstated is None:
+        parts = SimulatedAnnualLoss(option.reinstated(paid.annual), np.inf)
+        filled.reinstated = Figure.measured(parts, "mean")
     return filled
-
-
-def thresholds(exact: Exact) -> list[float]:
-    """Retained amounts just outside the ends of every bracket, to count the simulated years above."""
-    found: list[float] = []
-    for var, _ in exact.levels.values():
-        if var.low is not None and var.high is not None:
-            found += _around(var.low, var.high)
-    return found
-
-
-def _around(low: float, high: float) -> tuple[float, float]:
-    """Moved by less than a rounding of a sum could be off."""
-    return low - 1e-9 * max(low, 1.0), high + 1e-9 * max(high, 1.0)
-
-
-def agreement(exact: Exact, tally: Tally) -> dict[str, Any]:
-    """Exact against simulated figures of one option: the verdict and every comparison.
-
-    A quantile is right when no more than 1 - level of the years lie above the upper end of its bracket and
-    no fewer above the lower end, within four standard errors.
-    """
-    comparisons = []
-    if exact.mean is not None and exact.mean.value is not None:
-        comparisons.append(_mean_compared(exact.mean, tally))
-    for level, (var, _) in exact.levels.items():
-        if var.low is None or var.high is None:
-            continue
-        below, above = (tally.above[amount] for amount in _around(var.low, var.high))
-        error = float(np.sqrt(level * (1.0 - level) / tally.years))
-        slack, tail = STANDARD_ERRORS * error, 1.0 - level
-        comparisons.append(
-            {
-                "measure": "years above the worst year",
-                "level": level,
-                "exact": [tail, tail],
-                "simulated": [above, below],
-                "standard_error": error,
-                "agrees": bool(above <= tail + slack and below >= tail - slack),
-            }
-        )
-    return {"agrees": all(row["agrees"] for row in comparisons), "comparisons": comparisons}
-
-
-def _mean_compared(mean: Figure, tally: Tally) -> dict[str, Any]:
-    value, error = float(mean.value or 0.0), tally.retained_sd / float(np.sqrt(tally.years))
-    low = value if mean.low is None else min(mean.low, value)
-    high = value if mean.high is None else max(mean.high, value)
-    slack = STANDARD_ERRORS * error + 1e-9 * max(abs(value), 1.0)
-    return {
-        "measure": "expected retained",
-        "level": None,
-        "exact": [low, high],
-        "simulated": [tally.retained, tally.retained],
-        "standard_error": error,
-        "agrees": bool(low - slack <= tally.retained <= high + slack),
-    }

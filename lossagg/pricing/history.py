@@ -9,12 +9,20 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 
 from lossagg.arrays import FloatArray, IntArray
 from lossagg.portfolio.line import LineModel
 from lossagg.pricing.option import Events, Option
+from lossagg.pricing.rows import Row
+
+AS_IF = (
+    "Every recorded event in the money of the forecast period, through the terms; at today's premium and "
+    "costs. Exposure is not adjusted, losses below the reporting threshold are not there, and an amount "
+    "that stopped at a policy limit counts as recorded."
+)
 
 
 @dataclass(frozen=True)
@@ -63,3 +71,35 @@ class PastYears:
         """What the option would have kept and ceded in each year, shape (years,) each."""
         ceded = option.ceded(self.sums(option.paid), self.sums(option.kept))
         return np.maximum(self.sums(option.scope) - ceded, 0.0), ceded
+
+
+def as_if(models: Sequence[LineModel], rows: Sequence[Row]) -> dict[str, Any] | None:
+    """The as-if of every option as plain data; None where a line has no records."""
+    past = PastYears.of(models)
+    if past is None:
+        return None
+    gross = past.sums(rows[0].option.scope)
+    entries = []
+    for row in rows:
+        retained, ceded = past.retained(row.option)
+        total = None if row.fixed is None else retained + row.reinstatement(ceded) + row.fixed
+        entries.append(
+            {
+                "option": row.option.name,
+                "retained": retained.tolist(),
+                "ceded": ceded.tolist(),
+                "total": None if total is None else total.tolist(),
+                "mean": None if total is None else float(np.mean(total)),
+            }
+        )
+    return {
+        "years": past.years.tolist(),
+        "events": np.sum(
+            [np.bincount(places, minlength=len(past.years)) for places in past.places], axis=0
+        ).tolist(),
+        "gross": gross.tolist(),
+        "mean": float(np.mean(gross)),
+        "options": entries,
+        "partial": past.partial,
+        "note": AS_IF,
+    }

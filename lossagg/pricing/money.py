@@ -19,6 +19,7 @@ class Premium:
         source: "modelled", "quoted", or "none" where nothing is bought.
         loss_adjustment, fixed_expense, risk_load: the parts beside the expected ceded loss.
         variable: variable expense and profit.
+        reinstated: expected reinstatement premium as a multiple of the initial premium, which `value` is.
         reason: why there is none.
     """
 
@@ -28,13 +29,33 @@ class Premium:
     fixed_expense: float | None = None
     risk_load: float | None = None
     variable: float | None = None
+    reinstated: float = 0.0
     reason: str | None = None
+
+    @property
+    def reinstatement(self) -> float | None:
+        """Expected reinstatement premium."""
+        return None if self.value is None else self.value * self.reinstated
+
+    @property
+    def expected(self) -> float | None:
+        """Initial and expected reinstatement premium."""
+        return None if self.value is None else self.value * (1.0 + self.reinstated)
 
 
 def premium_of(
-    basis: PricingSection, ceded: float | None, risk_load: float | None, quoted: float | None, *, bought: bool
+    basis: PricingSection,
+    ceded: float | None,
+    risk_load: float | None,
+    quoted: float | None,
+    *,
+    bought: bool,
+    reinstated: float = 0.0,
 ) -> Premium:
     """The premium of an option.
+
+    With paid reinstatements it is the initial premium that, with the reinstatement premium expected, brings
+    what the option without them would cost (Sundt 1991, expenses and loads in proportion).
 
     Args:
         basis: loads and expenses.
@@ -42,20 +63,22 @@ def premium_of(
         risk_load: see `risk_load_of`; None where it does not exist.
         quoted: a premium quoted, which is taken as it is.
         bought: whether there is a cover at all.
+        reinstated: expected reinstatement premium as a multiple of the initial premium.
     """
     if not bought:
         return Premium(0.0, "none")
     if quoted is not None:
-        return Premium(quoted, "quoted")
+        return Premium(quoted, "quoted", reinstated=reinstated)
     if ceded is None or risk_load is None:
         what = "expected ceded loss" if ceded is None else "risk load"
         return Premium(None, "modelled", reason=f"does not exist: the {what} is infinite or undefined")
     adjustment = basis.loss_adjustment * ceded
-    value = (ceded + adjustment + basis.fixed_expense + risk_load) / (
+    needed = (ceded + adjustment + basis.fixed_expense + risk_load) / (
         1.0 - basis.variable_expense - basis.profit
     )
-    variable = (basis.variable_expense + basis.profit) * value
-    return Premium(value, "modelled", adjustment, basis.fixed_expense, risk_load, variable)
+    variable = (basis.variable_expense + basis.profit) * needed
+    value = needed / (1.0 + reinstated)
+    return Premium(value, "modelled", adjustment, basis.fixed_expense, risk_load, variable, reinstated)
 
 
 def risk_load_of(
@@ -74,21 +97,22 @@ def risk_load_of(
 
 @dataclass(frozen=True)
 class Costs:
-    """Yearly costs beside the premium; None where a figure they rest on does not exist."""
+    """Expected yearly costs beside the initial premium; None where a figure they rest on does not exist."""
 
     collateral: float | None
     claims_handling: float | None
     premium_tax: float | None
+    reinstatement: float | None = 0.0
 
     @property
     def total(self) -> float | None:
         """Their sum."""
-        return added(self.collateral, self.claims_handling, self.premium_tax)
+        return added(self.collateral, self.claims_handling, self.premium_tax, self.reinstatement)
 
 
 def costs_of(
     basis: PricingSection,
-    premium: float | None,
+    premium: Premium,
     retained: float | None,
     retained_events: float,
     worst: float | None,
@@ -99,7 +123,7 @@ def costs_of(
 
     Args:
         basis: the rates.
-        premium: the premium, before tax.
+        premium: the premium.
         retained: expected retained loss.
         retained_events: expected number of events a year of which something is retained.
         worst: worst year retained at the level of the collateral, where there is one.
@@ -115,8 +139,8 @@ def costs_of(
         handled = (
             None if retained is None else handling.per_event * retained_events + handling.share * retained
         )
-    taxed = None if premium is None else basis.premium_tax * premium
-    return Costs(secured, handled, taxed)
+    taxed = None if premium.expected is None else basis.premium_tax * premium.expected
+    return Costs(secured, handled, taxed, premium.reinstatement)
 
 
 def added(*parts: float | None) -> float | None:

@@ -108,6 +108,18 @@ class Option:
             return OneSum(tuple(paid.scaled(terms.year_share) for paid in self.paid), SAME)
         return OneSum(self.paid, year.payments)
 
+    @cached_property
+    def reinstated(self) -> Schedule | None:
+        """Reinstatement premium of a year as a multiple of the initial one, a function of what the cover pays
+        in it, pro rata to the amount (Sundt 1991); None where no reinstatement is paid."""
+        terms = self.terms
+        if terms is None or terms.reinstatements is None or not terms.reinstatements.paid:
+            return None
+        rates, limit = terms.reinstatements.each, terms.year_share * terms.event_most
+        paid = np.concatenate(([0.0], np.cumsum(rates)))
+        starts = tuple((limit * np.arange(len(paid))).tolist())
+        return Schedule(starts, tuple(paid.tolist()), tuple(rate / limit for rate in (*rates, 0.0)))
+
     def ceded(self, paid: FloatArray, kept: FloatArray) -> FloatArray:
         """What the cover pays for each year, from the year's sums of `paid` and `kept`."""
         return np.zeros(paid.shape) if self.terms is None else self.terms.annual_payment(paid, kept)

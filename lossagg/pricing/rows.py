@@ -2,15 +2,16 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from dataclasses import dataclass
-from typing import Any
+from dataclasses import dataclass, replace
 
 import numpy as np
 
-from lossagg.portfolio.assessment import number
+from lossagg.arrays import FloatArray
+from lossagg.engines.sampled import SimulatedAnnualLoss
 from lossagg.portfolio.pricing_sections import PricingSection
-from lossagg.pricing.evaluate import Exact, increased_limit_factor, retained_events
+from lossagg.pricing.common_years import Tally
+from lossagg.pricing.evaluate import Exact
+from lossagg.pricing.event_figures import retained_events
 from lossagg.pricing.figure import FORMULA, Figure
 from lossagg.pricing.money import Costs, Premium, added, costs_of, premium_of, risk_load_of
 from lossagg.pricing.option import Option
@@ -28,9 +29,11 @@ class Row:
         option: its terms.
         exact: figures of its losses.
         premium, modelled: the premium charged, and the modelled one where it was quoted.
-        premium_range: the premium at the ends of the ranges of the figures it rests on.
+        premium_range: the premium expected at the ends of the ranges of the figures it rests on.
         costs: yearly costs beside it.
         events: expected number of events of which something is retained.
+        basis: loads and rates.
+        varying: retained amount and reinstatement premium of the simulated years, where any is paid.
     """
 
     option: Option
@@ -40,50 +43,75 @@ class Row:
     premium_range: tuple[float | None, float | None]
     costs: Costs
     events: float
+    basis: PricingSection
+    varying: SimulatedAnnualLoss | None = None
 
     @property
     def fixed(self) -> float | None:
-        """What is paid whatever happens: premium, tax, costs."""
-        return added(self.premium.value, self.costs.total)
+        """What is paid whatever happens: premium, tax, costs; of reinstatement premium nothing."""
+        paid = added(self.premium.value, self.costs.total)
+        return None if paid is None else paid - self.reinstatement_price * self.premium.reinstated
 
-    def paid(self, basis: PricingSection) -> Figure:
-        """What is paid whatever happens, with the range that the premium and its tax bring."""
-        if self.fixed is None or self.premium.value is None:
+    @property
+    def reinstatement_price(self) -> float:
+        """What reinstating a whole limit at 100 % costs, tax included; 0 where nothing is paid for it."""
+        if self.option.reinstated is None or self.premium.value is None:
+            return 0.0
+        return (1.0 + self.basis.premium_tax) * self.premium.value
+
+    def reinstatement(self, ceded: FloatArray) -> FloatArray:
+        """Reinstatement premium, tax included, of years in which the cover pays these amounts."""
+        if self.option.reinstated is None:
+            return np.zeros(ceded.shape)
+        return self.reinstatement_price * self.option.reinstated(ceded)
+
+    def paid(self) -> Figure:
+        """What is expected to be paid beside losses, with the range that the premium and its tax bring."""
+        paid = added(self.premium.value, self.costs.total)
+        if paid is None or self.premium.expected is None:
             return Figure(None, None, None, "", self.premium.reason)
-        taxed = 1.0 + basis.premium_tax
+        taxed = 1.0 + self.basis.premium_tax
         low, high = (
-            None if end is None else self.fixed + taxed * (end - self.premium.value)
+            None if end is None else paid + taxed * (end - self.premium.expected)
             for end in self.premium_range
         )
-        return Figure(self.fixed, low, high, FORMULA)
+        return Figure(paid, low, high, FORMULA)
 
     def tail(self) -> Figure:
-        """Tail value at risk of the retained year at the farthest level of the table."""
+        """Tail value at risk, at the farthest level of the table, of what the year costs beside `fixed`."""
+        if self.varying is not None:
+            return Figure.measured(self.varying, "tail_value_at_risk", WORST_LEVELS[-1])
         return self.exact.levels[WORST_LEVELS[-1]][1]
 
     def worst(self, level: float) -> Figure:
         """Worst year retained at a level."""
         return self.exact.levels[level][0]
 
-    def total(self, basis: PricingSection) -> Figure:
+    def worst_total(self, level: float) -> Figure:
+        """Total cost of the worst year at a level."""
+        if self.varying is not None:
+            return Figure.measured(self.varying, "value_at_risk", level).plus(self.fixed, self.premium.reason)
+        return self.worst(level).joined(self.paid())
+
+    def total(self) -> Figure:
         """Expected total cost of risk."""
-        return (self.exact.mean or MISSING).joined(self.paid(basis))
+        return (self.exact.mean or MISSING).joined(self.paid())
 
-    def capital_cost(self, basis: PricingSection) -> Figure:
+    def capital_cost(self) -> Figure:
         """Cost of capital on tail value at risk less the mean retained."""
-        if basis.capital is None:
+        capital = self.basis.capital
+        if capital is None:
             return Figure.exact(0.0)
-        tail, mean = self.exact.levels[basis.capital.level][1], self.exact.mean or MISSING
-        return tail.joined(mean.scaled(-1.0)).scaled(basis.capital.rate)
+        tail, mean = self.exact.levels[capital.level][1], self.exact.mean or MISSING
+        return tail.joined(mean.scaled(-1.0)).scaled(capital.rate)
 
-    def total_with_capital(self, basis: PricingSection) -> Figure:
-        """Expected total cost of risk and cost of capital: (1 - rate) mean + rate tail + what is fixed."""
-        mean = self.exact.mean or MISSING
-        if basis.capital is None:
-            return self.total(basis)
-        rate, tail = basis.capital.rate, self.exact.levels[basis.capital.level][1]
-        kept = mean.scaled(1.0 - rate).joined(tail.scaled(rate))
-        return kept.joined(self.paid(basis))
+    def total_with_capital(self) -> Figure:
+        """Expected total cost of risk and cost of capital: (1 - rate) mean + rate tail + what is paid."""
+        mean, capital = self.exact.mean or MISSING, self.basis.capital
+        if capital is None:
+            return self.total()
+        rate, tail = capital.rate, self.exact.levels[capital.level][1]
+        return mean.scaled(1.0 - rate).joined(tail.scaled(rate)).joined(self.paid())
 
 
 def levels_needed(basis: PricingSection) -> tuple[float, ...]:
@@ -103,19 +131,29 @@ def frontier_level(basis: PricingSection) -> float:
 
 def row_of(option: Option, exact: Exact, basis: PricingSection) -> Row:
     """The row of an option from the figures of its losses."""
-    bought = option.terms is not None
-    ceded = _value(exact.ceded)
-    load = risk_load_of(basis, ceded, _value(exact.ceded_sd), _value(exact.ceded_tail))
-    premium = premium_of(basis, ceded, load, option.quoted, bought=bought)
-    modelled = premium_of(basis, ceded, load, None, bought=bought)
+    bought, reinstated = option.terms is not None, value_of(exact.reinstated) or 0.0
+    ceded = value_of(exact.ceded)
+    load = risk_load_of(basis, ceded, value_of(exact.ceded_sd), value_of(exact.ceded_tail))
+    premium, modelled = (
+        premium_of(basis, ceded, load, quoted, bought=bought, reinstated=reinstated)
+        for quoted in (option.quoted, None)
+    )
     events = retained_events(option)
     secured = None if basis.collateral is None else exact.levels[basis.collateral.level][0].value
-    costs = costs_of(basis, premium.value, _value(exact.mean), events, secured, bought=bought)
-    return Row(option, exact, premium, modelled, _ends(option, exact, basis), costs, events)
+    costs = costs_of(basis, premium, value_of(exact.mean), events, secured, bought=bought)
+    return Row(option, exact, premium, modelled, _ends(option, exact, basis), costs, events, basis)
+
+
+def with_years(row: Row, tally: Tally) -> Row:
+    """The row with the cost of every simulated year, where it depends on more than the retained amount."""
+    if row.option.reinstated is None or tally.kept is None or tally.paid is None:
+        return row
+    varying = tally.kept.annual + row.reinstatement(tally.paid.annual)
+    return replace(row, varying=SimulatedAnnualLoss(varying, tally.kept.moment_order))
 
 
 def _ends(option: Option, exact: Exact, basis: PricingSection) -> tuple[float | None, float | None]:
-    """The premium at the lower and at the upper ends of ceded loss, its spread and its tail."""
+    """The premium expected, at the lower and at the upper ends of ceded loss, its spread and its tail."""
     ends = []
     for end in ("low", "high"):
         ceded, spread, tail = (
@@ -123,128 +161,21 @@ def _ends(option: Option, exact: Exact, basis: PricingSection) -> tuple[float | 
             for found in (exact.ceded, exact.ceded_sd, exact.ceded_tail)
         )
         load = risk_load_of(basis, ceded, spread, tail)
-        ends.append(premium_of(basis, ceded, load, option.quoted, bought=option.terms is not None).value)
+        reinstated = 0.0
+        if exact.reinstated is not None and option.quoted is not None:
+            reinstated = getattr(exact.reinstated, end) or 0.0
+        found = premium_of(
+            basis,
+            ceded,
+            load,
+            option.quoted,
+            bought=option.terms is not None,
+            reinstated=reinstated,
+        )
+        ends.append(found.expected)
     return ends[0], ends[1]
 
 
-def _value(figure: Figure | None) -> float | None:
+def value_of(figure: Figure | None) -> float | None:
+    """The value of a figure; None where there is none."""
     return None if figure is None else figure.value
-
-
-def row_data(
-    row: Row, base: Row, basis: PricingSection, levels: Sequence[float], gross: float
-) -> dict[str, Any]:
-    """The row as plain data, compared with the base option."""
-    exact, option = row.exact, row.option
-    mean, ceded = exact.mean or MISSING, exact.ceded or MISSING
-    return {
-        "name": option.name,
-        "description": option.describe(),
-        "terms": _terms(option),
-        "bought": option.terms is not None,
-        "retained": {
-            "expected": mean.to_dict(),
-            "sd": (exact.sd or MISSING).to_dict(),
-            "cv": _ratio(_value(exact.sd), mean.value),
-            "no_loss": (exact.no_loss or MISSING).to_dict(),
-            "events": row.events,
-            "most": number(option.most_retained),
-            "levels": [
-                {
-                    "level": level,
-                    "var": exact.levels[level][0].to_dict(),
-                    "tvar": exact.levels[level][1].to_dict(),
-                }
-                for level in levels
-            ],
-        },
-        "ceded": {
-            "expected": ceded.to_dict(),
-            "sd": (exact.ceded_sd or MISSING).to_dict(),
-            "tail": None if exact.ceded_tail is None else exact.ceded_tail.to_dict(),
-        },
-        "loss_elimination_ratio": _eliminated(ceded.value, gross),
-        "aggregate_charge": None if exact.charge is None else exact.charge.to_dict(),
-        "increased_limit_factor": increased_limit_factor(
-            option, basis.basic_limit, basis.basic_limit_expense
-        ),
-        "premium": _premium(row),
-        "credit": _credit(row, base),
-        "costs": {
-            "collateral": row.costs.collateral,
-            "claims_handling": row.costs.claims_handling,
-            "premium_tax": row.costs.premium_tax,
-        },
-        "total": {
-            "expected": row.total(basis).to_dict(),
-            "capital": row.capital_cost(basis).to_dict(),
-            "with_capital": row.total_with_capital(basis).to_dict(),
-            "levels": [
-                {"level": level, "total": row.worst(level).joined(row.paid(basis)).to_dict()}
-                for level in levels
-            ],
-        },
-        "break_even": _break_even(row, base),
-    }
-
-
-def _terms(option: Option) -> dict[str, Any] | None:
-    terms = option.terms
-    if terms is None:
-        return None
-    return {
-        "deductible": terms.deductible,
-        "limit": number(terms.limit),
-        "franchise": terms.franchise,
-        "share": terms.share,
-        "annual_retention": terms.annual_retention,
-        "annual_limit": number(terms.year_limit),
-        "retained_cap": number(terms.retained_cap),
-        "order": terms.order_of_operations,
-    }
-
-
-def _premium(row: Row) -> dict[str, Any]:
-    premium, modelled = row.premium, row.modelled
-    return {
-        "value": premium.value,
-        "source": premium.source,
-        "low": row.premium_range[0],
-        "high": row.premium_range[1],
-        "reason": premium.reason,
-        "modelled": modelled.value,
-        "parts": {
-            "ceded": _value(row.exact.ceded) if row.option.terms is not None else 0.0,
-            "loss_adjustment": modelled.loss_adjustment,
-            "fixed_expense": modelled.fixed_expense,
-            "risk_load": modelled.risk_load,
-            "variable": modelled.variable,
-        },
-    }
-
-
-def _credit(row: Row, base: Row) -> dict[str, Any]:
-    mine, theirs = row.premium.value, base.premium.value
-    credit = None if mine is None or theirs is None else theirs - mine
-    sources = {row.premium.source, base.premium.source}
-    return {
-        "amount": credit,
-        "part": _ratio(credit, theirs),
-        "source": next(iter(sources - {"none"}), "none") if len(sources - {"none"}) < 2 else "mixed",
-    }
-
-
-def _break_even(row: Row, base: Row) -> float | None:
-    credit = _credit(row, base)["amount"]
-    mine, theirs = _value(row.exact.mean), _value(base.exact.mean)
-    if credit is None or mine is None or theirs is None or mine - theirs <= 1e-9 * max(mine, 1.0):
-        return None
-    return float(credit / (mine - theirs))
-
-
-def _eliminated(ceded: float | None, gross: float) -> float | None:
-    return None if ceded is None or not np.isfinite(gross) or gross <= 0 else max(1.0 - ceded / gross, 0.0)
-
-
-def _ratio(part: float | None, whole: float | None) -> float | None:
-    return None if part is None or not whole else part / whole

@@ -13,7 +13,7 @@ from lossagg.report.tables import options as tables
 
 MOST_ROWS = 20
 _RETAINED = (0, 1, 5, 6, 7, -2, -1)
-_COST = (0, 2, 6, 8)
+_COST = (0, 2, -3, -1)
 _YEARS = (0, 1, 3, 4, 5)
 
 
@@ -34,7 +34,9 @@ def summarise_options(options: Entry, out: Path | None) -> Summary:
         ),
         headline=tuple(clean(text) for text in _headline(options)),
         withheld=not options["agrees"],
-        tables=tuple(
+        tables=()
+        if options["withheld"]
+        else tuple(
             replace(
                 table,
                 columns=tuple(table.columns[k] for k in places),
@@ -51,6 +53,8 @@ def summarise_options(options: Entry, out: Path | None) -> Summary:
 def _headline(options: Entry) -> list[str]:
     lines = ", ".join(options["subject"]["lines"])
     texts = [f"{len(options['options'])} options for {lines}"]
+    if options["withheld"]:
+        return [f"Options for {lines}: WITHHELD", options["withheld"]]
     if not options["agrees"]:
         texts.append("WITHHELD for at least one option: exact and simulated figures disagree")
     appetite = options["appetite"]
@@ -61,6 +65,8 @@ def _headline(options: Entry) -> list[str]:
 
 
 def _remarks(options: Entry, shown: int) -> list[str]:
+    if options["withheld"]:
+        return []
     texts = []
     if shown < len(options["options"]):
         texts.append(f"{shown} of {len(options['options'])} options are shown; all stand in the files.")

@@ -61,6 +61,8 @@ def write_options(options: Entry, out: str | Path, *, facts: RunFacts | None = N
 
 def option_parts(options: Entry) -> dict[str, Any]:
     """What the page shows of the options: tables and figures."""
+    if options["withheld"]:
+        return {"data": options}
     shown = tables.shown_options(options)
     past = options["history"]
     return {

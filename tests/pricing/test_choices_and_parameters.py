@@ -15,7 +15,7 @@ from lossagg.errors import InputError
 from lossagg.pricing import price_options
 from lossagg.pricing.frontier import Position, choose, dominators
 from lossagg.pricing.parameters import drawn_lines, moved
-from lossagg.pricing.price import LEAST_DRAWS
+from lossagg.pricing.table import LEAST_DRAWS
 
 HEAD = """
 [portfolio]
@@ -111,13 +111,6 @@ def test_one_line_alone_and_both_together(tmp_path: Path) -> None:
 )
 def test_what_cannot_be_priced_is_refused_in_words(tmp_path: Path, text: str, says: str) -> None:
     with pytest.raises(InputError, match=says):
-        priced(tmp_path, text)
-
-
-def test_paid_reinstatements_are_refused(tmp_path: Path) -> None:
-    """Their premium depends on the losses: the table has no column for that, and says so."""
-    text = '[[option]]\nname = "a"\nlimit = 9000\nreinstatements = 1\nreinstatement-rate = 1.0\n'
-    with pytest.raises(InputError, match="paid reinstatements"):
         priced(tmp_path, text)
 
 

@@ -123,7 +123,7 @@ def test_two_lines_with_one_set_of_terms_match_the_simulation() -> None:
         lines,
         options,
         base=0,
-        fixed=[0.0, 0.0],
+        paid=[None, None],
         thresholds={"d": amounts},
         keep=[False, True],
         years=years,

@@ -185,7 +185,7 @@ def test_what_does_not_exist_stays_away_from_the_premium() -> None:
     assert missing.value is None
     assert "infinite" in str(missing.reason)
     assert premium_of(basis, None, 0.0, 500.0, bought=True).value == 500.0
-    assert costs_of(basis, None, 1.0, 1.0, None, bought=True).premium_tax is None
+    assert costs_of(basis, missing, 1.0, 1.0, None, bought=True).premium_tax is None
 
 
 def test_curves_hang_together() -> None:

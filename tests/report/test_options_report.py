@@ -164,3 +164,41 @@ def test_the_command_writes_and_summarises(tmp_path: Path) -> None:
     assert sorted(path.name for path in (tmp_path / "out").iterdir()) == sorted(OPTION_FILES)
     bad = CliRunner().invoke(build_app(), [*arguments, "--limits", "5"], prog_name="lossagg")
     assert bad.exit_code == 2
+
+
+CONTROLLED = """
+[portfolio]
+name = "Pool"
+currency = "EUR"
+valuation-date = 2024-12-31
+
+[[line]]
+name = "Fire"
+records = "losses.csv"
+frequency = { fit = ["poisson"] }
+severity = { fit = ["exponential"] }
+
+[[line.control-total]]
+count = 99
+
+[[option]]
+name = "a"
+deductible = 5000
+"""
+
+
+def test_broken_control_totals_withhold_every_option(tmp_path: Path) -> None:
+    """Records that the ledger contradicts price nothing: no figure, its reason, and exit code 1."""
+    rows = ["id,date,amount", *(f"{k},{2020 + k % 5}-05-05,{1000 + 300 * k}" for k in range(30))]
+    (tmp_path / "losses.csv").write_text("\n".join(rows) + "\n", encoding="utf-8")
+    (tmp_path / "portfolio.toml").write_text(CONTROLLED, encoding="utf-8")
+    arguments = ["price", str(tmp_path), "--out", str(tmp_path / "out")]
+    result = CliRunner().invoke(build_app(), arguments, prog_name="lossagg")
+    assert result.exit_code == 1
+    assert "WITHHELD" in result.output
+    assert "control totals" in result.output
+    written = json.loads((tmp_path / "out" / "options.json").read_text(encoding="utf-8"))
+    assert written["options"] == []
+    assert written["curves"] is None
+    page = (tmp_path / "out" / "options.html").read_text(encoding="utf-8")
+    assert "No option is priced: the records do not agree with the control totals" in page

@@ -5,14 +5,15 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from lossagg.report import digits
-from lossagg.report.cells import Absent, Cell, Column, Estimated, Ranged, Table
+from lossagg.report.cells import Absent, Cell, Column, Estimated, Ranged, Table, clean
 from lossagg.report.reading import Entry, absent
-from lossagg.report.tables.options import bad_years, ceded, plain, retained, terms, total
+from lossagg.report.tables.options import bad_years, ceded, plain, reinstated, retained, terms, total
 
 
 def parts(options: Entry) -> Table:
     """How each modelled premium is made: everything needed to compute it by hand."""
     basis, currency = options["basis"], options["portfolio"]["currency"]
+    paid = reinstated(options["options"])
     rows = tuple(
         (
             entry["name"],
@@ -21,6 +22,7 @@ def parts(options: Entry) -> Table:
             plain(entry["premium"]["parts"]["fixed_expense"], "none"),
             plain(entry["premium"]["parts"]["risk_load"], "none"),
             plain(entry["premium"]["parts"]["variable"], "none"),
+            *((_fraction(entry),) if paid else ()),
             plain(entry["premium"]["modelled"]),
             entry["premium"]["value"] if entry["premium"]["source"] == "quoted" else Absent("not quoted"),
         )
@@ -33,15 +35,21 @@ def parts(options: Entry) -> Table:
         Column("Fixed expense", "amount"),
         Column("Risk load", "amount"),
         Column("Variable expense and profit", "amount"),
+        *((Column("Reinstatement premium, times the initial", "number"),) if paid else ()),
         Column("Modelled premium", "amount"),
         Column("Quoted premium", "amount"),
     )
     share = basis["variable_expense"] + basis["profit"]
     notes = (
         f"Modelled premium = (expected ceded x {1 + basis['loss_adjustment']:g} + fixed expense + "
-        f"risk load) / {1 - share:g}.",
+        f"risk load) / {1 - share:g}{', divided by one and the reinstatement premium' if paid else ''}.",
     )
     return Table("Premium parts", f"Modelled premiums, {currency}", columns, rows, notes)
+
+
+def _fraction(entry: Entry) -> Cell:
+    again = entry["premium"]["reinstatement"]
+    return Absent("none") if again is None else plain(again["fraction"]["value"])
 
 
 def ranges(options: Entry) -> Table:
@@ -72,8 +80,21 @@ def ranges(options: Entry) -> Table:
     notes = (
         f"The range below a figure holds 95% of {options['draws']} draws of the fitted parameters. Premium "
         "and costs stay at the figures of the table: they are agreed before anybody knows the parameters.",
+        *_simulated_note(options["options"]),
     )
     return Table("Option ranges", f"Range of the parameters, {currency} a year", columns, tuple(rows), notes)
+
+
+def _simulated_note(entries: Sequence[Entry]) -> tuple[str, ...]:
+    """Which worst years a draw simulates, because they take two annual sums at once."""
+    names = [entry["name"] for entry in entries if entry["parameters"] and entry["parameters"]["simulated"]]
+    if not names:
+        return ()
+    listed = ", ".join(names[:3]) + (f" and {len(names) - 3} more" if len(names) > 3 else "")
+    return (
+        f"The worst year of {clean(listed)} is simulated in every draw with few years: its range is a little "
+        "too wide, and takes no part in saying which option is dominated.",
+    )
 
 
 def _drawn(entry: Entry, limits: Sequence[float | None] | None) -> Cell:
@@ -139,6 +160,8 @@ def past_costs(options: Entry, entries: Sequence[Entry]) -> Table:
 def curves(options: Entry) -> tuple[Table, ...]:
     """Loss elimination, layers, increased limits and exposure curve as tables."""
     data, currency = options["curves"], options["portfolio"]["currency"]
+    if data is None:
+        return ()
     elimination = Table(
         "Loss elimination",
         f"Loss elimination and excess factors, {currency}",

@@ -140,15 +140,30 @@ def ceded(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
     notes = (
         "Premium credit: premium of the base option less that of this one. Above 1, the last column says "
         "that the credit is larger than the extra loss expected to be kept.",
+        *_reinstated_note(chosen),
         *_left_out(options, chosen),
     )
     return Table("Option premium", f"What you buy, {currency} a year", columns, tuple(rows), notes)
 
 
+def reinstated(entries: Sequence[Entry]) -> bool:
+    """Whether any of the options has reinstatements that are paid."""
+    return any(entry["premium"]["reinstatement"] for entry in entries)
+
+
+def _reinstated_note(entries: Sequence[Entry]) -> tuple[str, ...]:
+    if not reinstated(entries):
+        return ()
+    return (
+        "Where reinstatements are paid the premium is the initial one; the credit counts the reinstatement "
+        "premium expected as well.",
+    )
+
+
 def total(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
     """Expected total cost of risk of every option, and what it is made of."""
     chosen = options["options"] if entries is None else entries
-    currency = options["portfolio"]["currency"]
+    currency, paid = options["portfolio"]["currency"], reinstated(options["options"])
     rows: list[tuple[Cell, ...]] = []
     for entry in chosen:
         own, costs = entry["total"], entry["costs"]
@@ -157,6 +172,7 @@ def total(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
                 entry["name"],
                 figure(entry["retained"]["expected"]),
                 figure(entry["premium"]),
+                *((plain(costs["reinstatement"]),) if paid else ()),
                 plain(costs["premium_tax"]),
                 plain(costs["collateral"]),
                 plain(costs["claims_handling"]),
@@ -169,6 +185,7 @@ def total(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
         Column("Option"),
         Column("Expected retained", "money", ranged=True),
         Column("Premium", "money", ranged=True),
+        *((Column("Reinstatement premium", "money"),) if paid else ()),
         Column("Premium tax", "money"),
         Column("Collateral", "money"),
         Column("Claims handling", "money"),
@@ -177,7 +194,8 @@ def total(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
         Column("Total with capital", "money", ranged=True),
     )
     notes = (
-        "Expected total cost: expected retained, premium, tax, collateral and claims handling.",
+        "Expected total cost: expected retained, premium, "
+        f"{'reinstatement premium expected, ' if paid else ''}tax, collateral and claims handling.",
         *_left_out(options, chosen),
         *reasons([cell for row in rows for cell in row]),
     )
@@ -208,7 +226,9 @@ def bad_years(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
     held = f" and in each of {options['draws']} parameter draws" if options["draws"] else ""
     notes = (
         "Total cost in a bad year: the worst year retained at that level, and everything that is paid "
-        "whatever happens. All options meet the same simulated years.",
+        "whatever happens"
+        f"{', with the reinstatement premium of that year' if reinstated(options['options']) else ''}. All "
+        "options meet the same simulated years.",
         "Dominated: another option costs no more on average, in every bad year of the table and in the mean "
         f"of the worst hundredth, at the estimates{held}.",
         *_left_out(options, chosen),
