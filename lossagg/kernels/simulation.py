@@ -587,11 +587,11 @@ def sort_tile(counts: IntArray, order: IntArray, ends: IntArray, some: IntArray)
         highest = max(highest, counts[i])
         empty += counts[i] == 0
     highest = min(highest, LONG)
-    single, number = np.uint64(0), np.uint64(0)
+    single, number = 0, np.uint64(0)
     if 4 * empty > counts.shape[0]:
         for i in range(counts.shape[0]):
-            order[single] = i
-            single += np.uint64(counts[i] == 1)
+            order[np.uint64(single)] = i
+            single += counts[i] == 1
             some[number] = i
             number += np.uint64(counts[i] > 1)
     else:
