@@ -15,9 +15,18 @@ from lossagg.engines.book import Book, Line, Subject
 from lossagg.engines.joint import ALONE, JointBlock, joint_block
 from lossagg.engines.quantile_table import QuantileTable, quantile_table
 from lossagg.engines.search_table import CountSampler, count_sampler
-from lossagg.engines.streams import BLOCK_YEARS, block_state, line_key
+from lossagg.engines.streams import BLOCK_YEARS, block_entropy, block_state, line_key
 from lossagg.engines.yearly import LOSS, LineColumns, annual_amounts, line_columns
-from lossagg.kernels.simulation import TILE, Kept, Notes, Sums, add_events, add_years
+from lossagg.kernels.simulation import (
+    LANES,
+    TILE,
+    Kept,
+    Notes,
+    Sums,
+    add_events,
+    add_years,
+    begin_years,
+)
 
 NOTES = 2**13
 
@@ -87,11 +96,14 @@ def line_sums(
     nothing = np.empty(0)
     kept = Kept(0, 0, np.empty(0, dtype=np.int64), nothing)
     annual = np.zeros((line.columns.count, whole_tiles(years)))
-    if line.columns.count:
+    if not line.columns.count:
+        return annual[:, :years]
+    sums = Sums(line.columns.ramps, line.columns.largest, joint.scale.get(line.name, nothing), annual)
+    if line.name in joint.counts or not line.counts.guide.size:
         state = block_state(seed, line.key, block)
-        counts = _counts(line, joint, state)
-        sums = Sums(line.columns.ramps, line.columns.largest, joint.scale.get(line.name, nothing), annual)
-        _simulate_years(line, state, sums, counts[: annual.shape[1]], years, kept)
+        _simulate_years(line, state, sums, _counts(line, joint, state)[: annual.shape[1]], years, kept)
+    else:
+        _simulate_alone(line, sums, years, kept, seed=seed, block=block)
     return annual[:, :years]
 
 
@@ -131,19 +143,50 @@ def _counts(line: PreparedLine, joint: JointBlock, state: np.ndarray) -> IntArra
     return line.counts.draw(state, BLOCK_YEARS) if given is None else given
 
 
+def _simulate_alone(line: PreparedLine, sums: Sums, years: int, kept: Kept, *, seed: int, block: int) -> None:
+    """A block of a line whose counts are its own and come from a table, begun by a single call."""
+    state = np.empty((4, LANES), dtype=np.uint64)
+    counts = np.empty(BLOCK_YEARS, dtype=np.int64)
+    notes, cursor = _notes(), np.zeros(3, dtype=np.int64)
+    entropy = block_entropy(seed, line.key, block)
+    guide, survival = line.counts.guide, line.counts.survival
+    found = begin_years(
+        entropy, state, guide, survival, line.sizes.arrays, sums, counts, years, cursor, notes, kept
+    )
+    _answer(line, notes, found, sums)
+    _simulate_years(line, state, sums, counts[: sums.annual.shape[1]], years, kept, cursor)
+
+
 def _simulate_years(
-    line: PreparedLine, state: np.ndarray, sums: Sums, counts: IntArray, years: int, kept: Kept
+    line: PreparedLine,
+    state: np.ndarray,
+    sums: Sums,
+    counts: IntArray,
+    years: int,
+    kept: Kept,
+    cursor: IntArray | None = None,
 ) -> tuple[IntArray, FloatArray]:
     """Run the loops over a block; (year, size) of the losses that the law itself had to answer."""
-    notes = Notes(np.empty(NOTES, dtype=np.int64), np.empty(NOTES))
-    cursor = np.zeros(3, dtype=np.int64)
+    cursor = np.zeros(3, dtype=np.int64) if cursor is None else cursor
     answered = [(np.empty(0, dtype=np.int64), np.empty(0))]
     while cursor[0] < years:
+        notes = _notes()
         found = add_years(state, line.sizes.arrays, sums, counts, years, cursor, notes, kept)
-        if found:
-            answered.append((notes.year[:found].copy(), line.sizes.exact(notes.probability[:found])))
-            add_events(*answered[-1], sums)
+        answered.append(_answer(line, notes, found, sums))
     return np.concatenate([year for year, _ in answered]), np.concatenate([size for _, size in answered])
+
+
+def _notes() -> Notes:
+    return Notes(np.empty(NOTES, dtype=np.int64), np.empty(NOTES))
+
+
+def _answer(line: PreparedLine, notes: Notes, found: int, sums: Sums) -> tuple[IntArray, FloatArray]:
+    """Ask the law for the losses in the notes, and add them; their (year, size)."""
+    year, probability = notes.year[:found], notes.probability[:found]
+    size = line.sizes.exact(probability)
+    if found:
+        add_events(year, size, sums)
+    return year, size
 
 
 def whole_tiles(years: int) -> int:

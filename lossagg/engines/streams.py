@@ -33,7 +33,11 @@ def block_state(seed: int, key: tuple[int, int], block: int) -> np.ndarray:
         key: the line's key, see `line_key`.
         block: number of the block, below 2**32.
     """
-    words = (seed & 0xFFFFFFFF, seed >> 32, 0, 0, *key, block)
     lanes = np.empty((4, LANES), dtype=np.uint64)
-    seed_lanes(np.array(words, dtype=np.uint64), lanes)
+    seed_lanes(block_entropy(seed, key, block), lanes)
     return lanes
+
+
+def block_entropy(seed: int, key: tuple[int, int], block: int) -> np.ndarray:
+    """What the state of a block is seeded by, shape (7,), uint64: the words numpy's SeedSequence hashes."""
+    return np.array((seed & 0xFFFFFFFF, seed >> 32, 0, 0, *key, block), dtype=np.uint64)

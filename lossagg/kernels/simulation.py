@@ -739,3 +739,41 @@ def add_years(
                 cursor[1], cursor[2] = place + width, 0
         cursor[0], cursor[1], cursor[2] = tile + number, 0, 0
     return found
+
+
+@compiled
+def begin_years(
+    entropy: np.ndarray,
+    lanes: np.ndarray,
+    guide: IntArray,
+    survival: FloatArray,
+    table: SizeArrays,
+    sums: Sums,
+    counts: IntArray,
+    years: int,
+    cursor: IntArray,
+    notes: Notes,
+    kept: Kept,
+) -> int:
+    """Seed the lanes, draw the counts and begin with the years: one entry where three would each have to
+    wait for the interpreter.
+
+    Args:
+        entropy: as for `seed_lanes`.
+        lanes: shape (4, LANES), uint64, overwritten.
+        guide: as for `draw_counts`.
+        survival: as for `draw_counts`.
+        table: as for `add_years`, like all that follow.
+        sums: what is added up.
+        counts: overwritten by the losses of every year of the block.
+        years: years asked for.
+        cursor: where to go on.
+        notes: receives losses to be evaluated exactly.
+        kept: receives losses one by one.
+
+    Returns:
+        How many losses are in the notes.
+    """
+    seed_lanes(entropy, lanes)
+    draw_counts(lanes, guide, survival, counts)
+    return add_years(lanes, table, sums, counts[: sums.annual.shape[1]], years, cursor, notes, kept)
