@@ -213,3 +213,18 @@ def test_every_exposure_covers_every_year(folder: Path) -> None:
             table = table[table["Cell"] == line["name"]]
         assert table["year"].to_list() == years
         assert (table.iloc[:, -1] > 0).all()
+
+
+def test_the_control_totals_are_those_of_the_files(pool: dict[str, pd.DataFrame], bank: pd.DataFrame) -> None:
+    """Of a line of each portfolio, all claims and by year; the last row of the workbook is its total."""
+    hull, lending = "Hull and collision", "Business practices, corporate lending"
+    for folder, name, table in (
+        (POOL, hull, pool[hull].iloc[:-1]),
+        (BANK, lending, bank[bank["line"] == lending]),
+    ):
+        (section,) = (line for line in portfolio_file(folder)["line"] if line["name"] == name)
+        assert len(section["control-total"]) == table["date"].dt.year.nunique() + 1
+        for total in section["control-total"]:
+            own = table if "year" not in total else table[table["date"].dt.year == total["year"]]
+            assert total["count"] == len(own)
+            assert total["amount"] == pytest.approx(own["amount"].sum(), abs=0.005)
