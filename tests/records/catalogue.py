@@ -437,7 +437,7 @@ TEXT_CASES = [
 ELSEWHERE = {
     15: "tests/records/test_history.py::test_the_latest_valuation_is_the_claim",
     28: "tests/records/test_basis_and_currency.py::test_rates_that_cannot_be_used_stop",
-    29: "tests/records/test_basis_and_currency.py::test_a_year_in_thousands_shows_and_ordinary_years_do_not",
+    29: "tests/records/test_mixups.py::test_29_a_file_that_mixes_units_row_by_row_warns_with_both_heaps",
     30: "tests/records/test_preparing.py::test_a_year_without_exposure_stops",
     31: "tests/records/test_preparing.py::test_years_without_losses_stay_and_the_last_is_observed_in_part",
     32: "tests/records/test_preparing.py::test_bad_exposures_stop",
