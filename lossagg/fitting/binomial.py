@@ -7,7 +7,11 @@ from scipy import special
 
 from lossagg.errors import FitError, InputError
 from lossagg.families import Binomial
+from lossagg.fitting.count_solution import CountSolution
 from lossagg.fitting.counts import Counts
+from lossagg.fitting.jet_functions import log_shares
+from lossagg.fitting.jets import Jet, exp, variables
+from lossagg.fitting.maximise import Maximum
 from lossagg.fitting.negative_binomial import JUST_EQUAL, rising_by_terms
 from lossagg.fitting.notes import Note
 from lossagg.fitting.results import FrequencyFit
@@ -48,6 +52,28 @@ def fit_binomial(sample: Counts, held: float | None) -> FrequencyFit:
         losses=sample.losses,
         exposure=sample.exposure,
         maximum_likelihood_mean=trials * probability,
+        solution=_solution(sample.losses, trials * sample.exposure) if probability < 1 else None,
+    )
+
+
+def _solution(losses: float, chances: float) -> CountSolution:
+    """The likelihood of the probability by its log-odds, the trials as they are."""
+    odds = float(special.logit(losses / chances))
+
+    def objective(point: tuple[Jet, ...]) -> Jet:
+        hit, miss = log_shares(point[0])
+        return hit * losses + miss * (chances - losses)
+
+    share = losses / chances
+    maximum = Maximum(
+        point=np.array([odds]),
+        value=float(objective(variables(np.array([odds]))).value[0]),
+        covariance=np.array([[1 / (chances * share * (1 - share))]]),
+        distance=0.0,
+        failure="",
+    )
+    return CountSolution(
+        objective, maximum, lambda point: (exp(log_shares(point[0])[0]),), {"probability": "probability"}
     )
 
 

@@ -10,12 +10,24 @@ from lossagg.arrays import Floats
 from lossagg.errors import InputError
 from lossagg.families import Poisson
 from lossagg.fitting.binomial import fit_binomial
+from lossagg.fitting.count_solution import CountSolution
 from lossagg.fitting.counts import Counts, counts_of, poisson_at_rate
+from lossagg.fitting.jets import exp
+from lossagg.fitting.maximise import Maximum
 from lossagg.fitting.negative_binomial import fit_negative_binomial
 from lossagg.fitting.notes import Note
 from lossagg.fitting.results import FrequencyFit
+from lossagg.fitting.zero_modified import fit_zero_modified
 
-FAMILIES = ("poisson", "negative-binomial", "binomial")
+FAMILIES = (
+    "poisson",
+    "negative-binomial",
+    "binomial",
+    "zero-modified-poisson",
+    "zero-modified-negative-binomial",
+    "zero-inflated-poisson",
+    "zero-inflated-negative-binomial",
+)
 
 
 def fit_frequency(
@@ -33,7 +45,9 @@ def fit_frequency(
 
     Args:
         counts: losses per year, whole numbers, shape (n,); 0 for a year without losses.
-        family: "poisson", "negative-binomial" or "binomial".
+        family: "poisson", "negative-binomial", "binomial", or one of the first two with a probability of no
+            loss of its own: "zero-modified-..." (years without a loss rarer or more frequent than the base
+            law has them) or "zero-inflated-..." (a share of years in which nothing can happen).
         exposure: exposure of each year, above 0, shape (n,); None where all years are alike.
         fixed: {"trials": n} for "binomial", the trials at exposure 1; else they are estimated.
 
@@ -57,7 +71,10 @@ def fit_frequency(
         return _poisson(sample)
     if family == "negative-binomial":
         return fit_negative_binomial(sample)
-    return fit_binomial(sample, held.get("trials"))
+    if family == "binomial":
+        return fit_binomial(sample, held.get("trials"))
+    base = family.removeprefix("zero-modified-").removeprefix("zero-inflated-")
+    return fit_zero_modified(sample, base, inflated=family.startswith("zero-inflated-"))
 
 
 def _poisson(sample: Counts) -> FrequencyFit:
@@ -90,4 +107,23 @@ def _poisson(sample: Counts) -> FrequencyFit:
         losses=losses,
         exposure=exposure,
         maximum_likelihood_mean=sample.rate,
+        solution=_solution(losses, exposure) if losses else None,
+    )
+
+
+def _solution(losses: float, exposure: float) -> CountSolution:
+    """The likelihood of the rate by its logarithm; its maximum is closed."""
+    rate = losses / exposure
+    maximum = Maximum(
+        point=np.array([np.log(rate)]),
+        value=losses * float(np.log(rate)) - losses,
+        covariance=np.array([[1 / losses]]),
+        distance=0.0,
+        failure="",
+    )
+    return CountSolution(
+        lambda point: point[0] * losses - exp(point[0]) * exposure,
+        maximum,
+        lambda point: (exp(point[0]),),
+        {"mean": "positive"},
     )

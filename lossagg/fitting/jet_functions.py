@@ -60,6 +60,15 @@ def log_sum_exp(a: Jet, b: Jet) -> Jet:
     return lift_pair(a, b, np.logaddexp(a.value, b.value), (share, 1 - share), (bend, -bend, bend))
 
 
+def log_shares(odds: Jet) -> tuple[Jet, Jet]:
+    """log q and log(1 - q) from the log-odds of q."""
+    q = special.expit(odds.value)
+    bend = -q * (1 - q)
+    return lift(odds, special.log_expit(odds.value), 1 - q, bend), lift(
+        odds, special.log_expit(-odds.value), -q, bend
+    )
+
+
 def log_gamma_function(a: Jet) -> Jet:
     """log Gamma(a)."""
     return lift(a, special.gammaln(a.value), special.digamma(a.value), special.polygamma(1, a.value))

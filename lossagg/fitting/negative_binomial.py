@@ -13,6 +13,7 @@ from scipy import special
 from lossagg.arrays import FloatArray
 from lossagg.errors import FitError
 from lossagg.families import NegativeBinomial
+from lossagg.fitting.count_solution import CountSolution
 from lossagg.fitting.counts import Counts, poisson_at_rate
 from lossagg.fitting.jet_functions import log_excess
 from lossagg.fitting.jets import Jet, compose, exp
@@ -34,7 +35,7 @@ def negative_binomial_maximum(sample: Counts) -> Maximum | None:
     starts = [np.array([centre, np.log(dispersion)]) for dispersion in grid]
 
     def objective(point: tuple[Jet, ...]) -> Jet:
-        return _negative_binomial_jet(point, sample)
+        return negative_binomial_jet(point, sample)
 
     best = max(starts, key=lambda start: evaluate(objective, start))
     at_zero = poisson_at_rate(sample, sample.rate)
@@ -88,10 +89,16 @@ def fit_negative_binomial(sample: Counts) -> FrequencyFit:
         losses=sample.losses,
         exposure=sample.exposure,
         maximum_likelihood_mean=mean,
+        solution=CountSolution(
+            lambda point: negative_binomial_jet(point, sample),
+            maximum,
+            lambda point: (exp(point[0]), exp(point[1])),
+            {"mean": "positive", "dispersion": "positive"},
+        ),
     )
 
 
-def _negative_binomial_jet(point: tuple[Jet, ...], sample: Counts) -> Jet:
+def negative_binomial_jet(point: tuple[Jet, ...], sample: Counts) -> Jet:
     """log p(n) + log n! = sum of log(1 + d k) for k < n, + n log m - (1/d + n) log(1 + d m)."""
     dispersion = exp(point[1])
     log_means = point[0] + np.log(sample.exposures)

@@ -12,6 +12,7 @@ from scipy import special
 from lossagg.arrays import FloatArray, require_probability
 from lossagg.errors import InputError
 from lossagg.families.base import CountLaw, Law, SizeLaw
+from lossagg.fitting.count_solution import CountSolution
 from lossagg.fitting.likelihood import Range
 from lossagg.fitting.notes import Note
 from lossagg.fitting.solution import Solution
@@ -194,12 +195,38 @@ class FrequencyFit(Fit):
         exposure: total exposure over all years.
         maximum_likelihood_mean: the estimate of maximum likelihood for the mean at exposure 1; it
             differs from the mean of the model only where no loss was counted (it is 0 there).
+        log_mean_error: standard error of the logarithm of the mean, where the mean is no parameter.
+        solution: the likelihood and its maximum; None at the edge of the family, where it has no slope of 0.
     """
 
     model: CountLaw
     losses: int
     exposure: float
     maximum_likelihood_mean: float
+    log_mean_error: float | None = None
+    solution: CountSolution | None = None
+
+    def profile_interval(self, name: str, level: float = 0.95) -> tuple[float, float]:
+        """Interval of one parameter from the profile likelihood; prefer it to `interval` for few losses.
+
+        Args:
+            name: an estimated parameter.
+            level: probability that the interval covers the parameter.
+
+        Raises:
+            InputError: a parameter held fixed or unknown, a bad level, or a fit at the edge of its family
+                (no loss at all: `upper_rate` bounds it).
+
+        Source: Venzon & Moolgavkar 1988, Applied Statistics 37.
+        """
+        if self.solution is None or name not in self.solution.ranges:
+            known = [] if self.solution is None else list(self.solution.ranges)
+            raise InputError(
+                f"the {self.family} fit has no profile interval of this parameter",
+                value=name,
+                remedy=f"Choose one of {', '.join(known)}." if known else "Ask upper_rate for a bound.",
+            )
+        return self.solution.interval(name, level)
 
     def model_for(self, exposure: float) -> CountLaw:
         """The count law of a year with another exposure.
@@ -233,6 +260,8 @@ class FrequencyFit(Fit):
         if self.family == "poisson":
             return float(special.gammaincinv(self.losses + 1, level)) / self.exposure
         mean = self.model.mean()
+        if self.log_mean_error is not None:
+            return float(mean * np.exp(special.ndtri(level) * self.log_mean_error))
         name = "probability" if self.family == "binomial" else "mean"
         relative = self.standard_errors[name] / self.parameters[name]
         return float(mean * np.exp(special.ndtri(level) * relative))

@@ -19,7 +19,7 @@ from lossagg.errors import FitError, InputError
 from lossagg.families import Spliced
 from lossagg.families.base import SizeLaw
 from lossagg.fitting.empirical import EMPIRICAL, empirical_body
-from lossagg.fitting.jet_functions import log_one_minus_exp, log_sum_exp
+from lossagg.fitting.jet_functions import log_one_minus_exp, log_shares, log_sum_exp
 from lossagg.fitting.jets import Jet, lift, variables
 from lossagg.fitting.likelihood import Range, SizeLikelihood
 from lossagg.fitting.maximise import Maximum
@@ -60,7 +60,7 @@ class _Body:
 
     def __call__(self, point: tuple[Jet, ...]) -> Jet:
         *coordinates, odds = point
-        log_q, log_p = _log_shares(odds)
+        log_q, log_p = log_shares(odds)
         inner = self.likelihood.inner(tuple(coordinates))
         if not self.likelihood.admissible(inner):
             return odds * np.nan
@@ -271,14 +271,6 @@ def _body_objective(
             threshold=threshold / below.scale,
         ),
         below,
-    )
-
-
-def _log_shares(odds: Jet) -> tuple[Jet, Jet]:
-    q = special.expit(odds.value)
-    bend = -q * (1 - q)
-    return lift(odds, special.log_expit(odds.value), 1 - q, bend), lift(
-        odds, special.log_expit(-odds.value), -q, bend
     )
 
 
