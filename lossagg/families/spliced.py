@@ -67,6 +67,42 @@ class Spliced(SizeLaw):
                 remedy=f"Its largest loss is {self.tail.support[1]:g}; lower the threshold.",
             )
 
+    @classmethod
+    def continuous(cls, *, body: SizeLaw, tail: SizeLaw, threshold: float) -> Spliced:
+        """The splice whose density does not jump at the threshold.
+
+        Body and tail leave one tail probability: its odds are f_body(u) / F_body(u) over
+        f_tail(u) / S_tail(u).
+
+        Args:
+            body, tail, threshold: as for the law itself.
+
+        Raises:
+            InputError: a part without a density at the threshold, or what the law itself refuses.
+        """
+        made = cls(body=body, tail=tail, threshold=threshold, tail_probability=0.5)
+        below, above = made._densities()
+        if not (0 < below < np.inf and 0 < above < np.inf):
+            raise InputError(
+                "a continuous splice needs a density of both parts at the threshold",
+                value=(below, above),
+                remedy="Move the threshold, or give the tail_probability and accept a jump.",
+            )
+        return cls(body=body, tail=tail, threshold=threshold, tail_probability=below / (below + above))
+
+    @property
+    def jump(self) -> float:
+        """The density just above the threshold over that at it: 1 where it is continuous."""
+        below, above = self._densities()
+        q = self.tail_probability
+        with np.errstate(divide="ignore"):
+            return float(np.float64(q * above) / ((1 - q) * below))
+
+    def _densities(self) -> tuple[float, float]:
+        """Of the body given a loss up to the threshold, of the tail given one above: at the threshold."""
+        u = self.threshold
+        return float(self.body.pdf(u)) / self._body_weight, float(self.tail.pdf(u)) / self._tail_weight
+
     @property
     def parameters(self) -> dict[str, float]:
         """body.*, tail.*, threshold and tail_probability."""

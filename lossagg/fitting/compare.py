@@ -108,6 +108,7 @@ def compare_severities(
     *,
     tail_threshold: float | None = None,
     tail: str = "generalized-pareto",
+    continuous: bool = False,
     least_seen: float = 0.0,
 ) -> Candidates[SeverityFit]:
     """Fit each severity family and rank the fits by AIC.
@@ -118,6 +119,7 @@ def compare_severities(
         tail_threshold: if given, each family is fitted as the body of a spliced law with this splice
             point; see `fit_spliced`.
         tail: family of the tail above `tail_threshold`.
+        continuous: whether the density must not jump there.
         least_seen: refuse a fit that puts less than this share of all losses above the smallest
             reporting threshold; a ground-up count would be the observed one divided by that share.
 
@@ -132,7 +134,9 @@ def compare_severities(
         if tail_threshold is None:
             made = fit_severity(losses, family, truncation, censored)
         else:
-            made = fit_spliced(losses, family, tail_threshold, truncation, censored, tail)
+            made = fit_spliced(
+                losses, family, tail_threshold, truncation, censored, tail, continuous=continuous
+            )
         seen = 1.0 if made.truncation is None else float(made.model.sf(np.nextafter(made.truncation[0], 0.0)))
         if seen < least_seen:
             raise FitError(

@@ -8,14 +8,15 @@ from lossagg.arrays import BoolArray, FloatArray
 from lossagg.errors import FitError
 from lossagg.families import SizeTable, Spliced
 from lossagg.families.base import SizeLaw
+from lossagg.fitting.continuous import fit_continuous
 from lossagg.fitting.empirical import empirical_body
 from lossagg.fitting.jets import Jet, variables
 from lossagg.fitting.likelihood import SizeLikelihood, log_likelihood
 from lossagg.fitting.results import SeverityFit
 from lossagg.fitting.sample import sample_of
 from lossagg.fitting.severity import climb, require_support
-from lossagg.fitting.solution import Solution
-from lossagg.fitting.spliced import body_and_share, losses_above
+from lossagg.fitting.solution import Solution, TiedSolution
+from lossagg.fitting.splice_parts import body_and_share, losses_above
 
 
 def refit(fit: SeverityFit, amounts: FloatArray, thresholds: FloatArray, censored: BoolArray) -> SizeLaw:
@@ -34,6 +35,9 @@ def refit(fit: SeverityFit, amounts: FloatArray, thresholds: FloatArray, censore
     if not isinstance(fit.model, Spliced):
         return _refitted(fit.solution, amounts, thresholds, censored)
     threshold = fit.model.threshold
+    if isinstance(fit.solution, TiedSolution):
+        names = fit.model.body.family, fit.model.tail.family
+        return fit_continuous(amounts, thresholds, censored, threshold, *names, most=1).model
     above, entered = losses_above(amounts, thresholds, censored, threshold)
     tail = _refitted(fit.solution, amounts[above], entered, censored[above])
     if isinstance(fit.model.body, SizeTable):

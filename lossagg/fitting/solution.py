@@ -11,7 +11,7 @@ import numpy as np
 from lossagg.fitting.excess_laws import BurrLikelihood, LomaxLikelihood
 from lossagg.fitting.jets import Jet, log, variables
 from lossagg.fitting.likelihood import SizeLikelihood, log_likelihood
-from lossagg.fitting.maximise import Maximum
+from lossagg.fitting.maximise import Maximum, Objective
 from lossagg.fitting.profile import profile_interval
 from lossagg.fitting.sample import Sample
 
@@ -36,6 +36,10 @@ class Solution:
         """The log-likelihood as a jet of the coordinates."""
         return log_likelihood(self.likelihood, self.sample, point)
 
+    def own(self, point: tuple[Jet, ...]) -> tuple[Jet, ...]:
+        """The coordinates of the likelihood among those of the objective."""
+        return point
+
     def interval(self, name: str, level: float) -> tuple[float, float]:
         """Profile-likelihood interval of one estimated parameter, in money where it is an amount.
 
@@ -47,7 +51,7 @@ class Solution:
         inverse = name == "alpha" and isinstance(self.likelihood, LomaxLikelihood | BurrLikelihood)
 
         def quantity(point: tuple[Jet, ...]) -> Jet:
-            inner = self.likelihood.inner(point)
+            inner = self.likelihood.inner(self.own(point))
             if inverse:
                 return inner[0]
             value = self.likelihood.natural(inner, self.sample.scale)[place]
@@ -68,12 +72,33 @@ class Solution:
         return self._tail_shape(_USUAL)
 
     def _tail_shape(self, level: float) -> tuple[float, float, float] | None:
-        here = self.likelihood.tail_shape(self.likelihood.inner(variables(self.maximum.point)))
+        here = self.likelihood.tail_shape(self.likelihood.inner(self.own(variables(self.maximum.point))))
         if here is None:
             return None
 
         def quantity(point: tuple[Jet, ...]) -> Jet:
-            return cast(Jet, self.likelihood.tail_shape(self.likelihood.inner(point)))
+            return cast(Jet, self.likelihood.tail_shape(self.likelihood.inner(self.own(point))))
 
         low, high = profile_interval(self.objective, quantity, self.maximum, level)
         return float(here.value[0]), low, high
+
+
+@dataclass(frozen=True, eq=False, repr=False)
+class TiedSolution(Solution):
+    """A likelihood that was maximised together with others it shares parameters with.
+
+    Attributes:
+        joint: the whole log-likelihood; the maximum is its.
+        first: place of the likelihood's own coordinates, which are the last.
+    """
+
+    joint: Objective
+    first: int
+
+    def objective(self, point: tuple[Jet, ...]) -> Jet:
+        """The whole log-likelihood as a jet of all coordinates."""
+        return self.joint(point)
+
+    def own(self, point: tuple[Jet, ...]) -> tuple[Jet, ...]:
+        """The last coordinates."""
+        return point[self.first :]
