@@ -8,6 +8,7 @@ from contextlib import nullcontext
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
+from threading import Thread
 from typing import Any
 
 from lossagg.errors import LossaggWarning
@@ -77,7 +78,7 @@ def assess_folder(
     """
     from lossagg.engines.executors import cluster as running
     from lossagg.portfolio import read_portfolio
-    from lossagg.report import RunFacts, check_destination, write_assessment
+    from lossagg.report import RunFacts, check_destination, load_writing, write_assessment
 
     started = datetime.now(UTC)
     check_destination(Path(out))
@@ -86,6 +87,7 @@ def assess_folder(
         warnings.simplefilter("always", LossaggWarning)
         progress("reading", 0.0)
         read = read_portfolio(portfolio)
+        Thread(target=load_writing).start()
         with running(cluster) if cluster else nullcontext() as executor:
             document = read.assess(
                 seed=seed,

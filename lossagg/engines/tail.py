@@ -50,6 +50,8 @@ class Tail:
             low, high = high, 2.0 * high
         for _ in range(80):
             middle = float(np.sqrt(low) * np.sqrt(high))
+            if not low < middle < high:
+                break
             low, high = (middle, high) if self.sf(middle) > tail else (low, middle)
         return high
 

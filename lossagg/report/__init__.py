@@ -10,6 +10,6 @@ from lossagg.report.fitting import write_fit
 from lossagg.report.folder import check_destination
 from lossagg.report.manifest import RunFacts
 from lossagg.report.options import write_options
-from lossagg.report.writing import write_assessment
+from lossagg.report.writing import load_writing, write_assessment
 
-__all__ = ["RunFacts", "check_destination", "write_assessment", "write_fit", "write_options"]
+__all__ = ["RunFacts", "check_destination", "load_writing", "write_assessment", "write_fit", "write_options"]

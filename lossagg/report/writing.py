@@ -42,3 +42,11 @@ def write_assessment(assessment: Assessment, out: str | Path, *, facts: RunFacts
         }
 
     return publish_document(assessment, out, FILES, build, facts)
+
+
+def load_writing() -> None:
+    """Import what writing an assessment needs: a second of work that fits beside the engines."""
+    from matplotlib.figure import Figure  # noqa: F401
+    from openpyxl import Workbook  # noqa: F401
+
+    from lossagg.report import page, workbook  # noqa: F401
