@@ -60,16 +60,20 @@ def _frequency(model: LineModel, draws: int) -> Data:
         "variance": law.variance(),
         "candidates": [],
         "choice": None,
+        "credibility": None,
         "tests": None,
     }
     if tried is not None and model.prepared is not None:
         fit = tried.chosen
         at_forecast = {**fit.standard_errors}
-        at_forecast["mean"] = at_forecast["mean"] * model.forecast_exposure
+        if "mean" in at_forecast:  # per unit of exposure; other parameters do not change with it
+            error = at_forecast["mean"] if model.rate is None else model.rate.standard_error
+            at_forecast["mean"] = error * model.forecast_exposure
         entry |= {
             "standard_errors": at_forecast,
             "candidates": _candidates(tried),
             "choice": _choice(tried),
+            "credibility": None if model.rate is None else model.rate.to_dict(),
             "tests": frequency_tests(model, model.prepared, draws),
             "notes": [str(note) for note in fit.notes],
         }

@@ -6,6 +6,7 @@ from lossagg.portfolio.assess import Progress, silent
 from lossagg.portfolio.assessment import Data
 from lossagg.portfolio.cautions import cautions
 from lossagg.portfolio.evidence import line_evidence
+from lossagg.portfolio.evidence_cautions import evidence_cautions
 from lossagg.portfolio.line import LineModel
 from lossagg.portfolio.portfolio import Portfolio
 from lossagg.portfolio.what_if import influence, sensitivity
@@ -52,7 +53,10 @@ def fit_report(portfolio: Portfolio, *, draws: int = _DRAWS, progress: Progress 
         },
         "lines": lines,
         "findings": [finding.to_dict() for finding in dict.fromkeys(findings)],
-        "cautions": cautions(models, sorted({*section.levels, section.capital_level})),
+        "cautions": [
+            *cautions(models, sorted({*section.levels, section.capital_level})),
+            *evidence_cautions(lines),
+        ],
     }
 
 

@@ -26,6 +26,7 @@ from lossagg.fitting import (
     compare_severities,
 )
 from lossagg.portfolio.laws import given_frequency, given_severity
+from lossagg.portfolio.prior import WeightedRate, weighted_rate
 from lossagg.portfolio.schema import Law, LineSection
 from lossagg.records import PreparedLosses
 
@@ -50,6 +51,7 @@ class LineModel:
         seen: per year, the exposure of the forecast period that would show as many losses: what was
             observed, for the part that is reported, at the frequency of the forecast period, times the
             probability that a loss exceeds the threshold.
+        rate: the own rate weighed against a prior; None where none is stated.
         forecast_exposure: exposure of the forecast year.
         expense: adjustment expense that comes with every loss, as a ratio to it.
         sum_insured: of every risk of the line, where a surplus needs it.
@@ -62,6 +64,7 @@ class LineModel:
     frequencies: Candidates[FrequencyFit] | None = None
     severities: Candidates[SeverityFit] | None = None
     seen: FloatArray | None = None
+    rate: WeightedRate | None = None
     forecast_exposure: float = 1.0
     expense: float = 0.0
     sum_insured: float | None = None
@@ -81,7 +84,8 @@ class LineModel:
     def fit_notes(self) -> tuple[Note, ...]:
         """What the fits say about themselves."""
         fits = [c.chosen for c in (self.severities, self.frequencies) if c is not None]
-        return tuple(note for fit in fits for note in fit.notes)
+        spoken_for = () if self.rate is None else ("no-losses",)
+        return tuple(note for fit in fits for note in fit.notes if note.code not in spoken_for)
 
 
 def build_line(section: LineSection, prepared: PreparedLosses | None, key: str) -> LineModel:
@@ -129,14 +133,19 @@ def _modelled(section: LineSection, prepared: PreparedLosses | None, key: str) -
     frequencies = compare_frequencies(years.losses, section.frequency.fit, exposure=seen)
     frequencies = _preferred(frequencies, section.frequency, f"{key}.frequency")
     exposure = section.forecast_exposure or _last_full_exposure(prepared)
+    frequency, rate = frequencies.chosen.model_for(exposure), None
+    if section.frequency.prior is not None:
+        rate = weighted_rate(section.frequency.prior, frequencies.chosen, f"{key}.frequency")
+        frequency = rate.law(frequencies.chosen, exposure)
     return LineModel(
         name=section.name,
-        frequency=frequencies.chosen.model_for(exposure),
+        frequency=frequency,
         severity=severity,
         prepared=prepared,
         frequencies=frequencies,
         severities=severities,
         seen=seen,
+        rate=rate,
         forecast_exposure=exposure,
     )
 

@@ -19,6 +19,7 @@ from lossagg.portfolio.dependences import (
     dependence_data,
     independent_losses,
 )
+from lossagg.portfolio.evidence_cautions import evidence_cautions
 from lossagg.portfolio.files import PORTFOLIO_FILE, LineRecords, portfolio_file, read_records
 from lossagg.portfolio.history import prepare_line
 from lossagg.portfolio.line import LineModel, build_line
@@ -136,6 +137,7 @@ class Portfolio:
         if shared:
             progress("lines taken as independent", 0.95)
             apart = independent_losses(book, years=years, seed=seed, workers=workers)
+        shown = evidence.result()
         findings = [finding for model in models if model.prepared for finding in model.prepared.findings]
         controls = reconcile_portfolio(self.file, self.records)
         findings += controls.findings
@@ -145,7 +147,7 @@ class Portfolio:
             "run": {"version": __version__, "seed": seed, "years": years, "inputs": list(self.inputs)},
             **figures(
                 book,
-                evidence.result(),
+                shown,
                 results,
                 section.levels,
                 section.capital_level,
@@ -160,6 +162,7 @@ class Portfolio:
             "findings": [finding.to_dict() for finding in dict.fromkeys(findings)],
             "cautions": [
                 *cautions(models, sorted({*section.levels, section.capital_level}), independent=not shared),
+                *evidence_cautions(shown),
                 *dependence_cautions(shared),
                 *tower_cautions(self.file.tower),
             ],

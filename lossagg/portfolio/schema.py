@@ -20,6 +20,7 @@ from lossagg.portfolio.control_sections import ControlKeys
 from lossagg.portfolio.dependence_sections import DependenceSection
 from lossagg.portfolio.preparing import PreparingKeys
 from lossagg.portfolio.pricing_sections import OptionGrid, OptionSection, PricingSection
+from lossagg.portfolio.prior import PriorSection
 from lossagg.portfolio.sections import Amount, Name, Positive, Probability, Section, Terms, hyphenated
 from lossagg.portfolio.tower_sections import TowerSection
 
@@ -104,6 +105,21 @@ class Law(Section):
         return {key.replace("-", "_"): value for key, value in (self.model_extra or {}).items()}
 
 
+class Frequency(Law):
+    """The frequency of a line; a fit may weigh its rate against a prior."""
+
+    prior: PriorSection | None = None
+
+    @model_validator(mode="after")
+    def _prior_belongs_to_a_fit(self) -> Frequency:
+        if self.prior is not None and self.fit is None:
+            raise ValueError(
+                "prior belongs to a fit | A given law is a judgement already; leave out the prior, or write "
+                'fit = ["..."].'
+            )
+        return self
+
+
 class Severity(Law):
     """The severity of a line; a fit may splice a generalized Pareto tail above a threshold."""
 
@@ -147,7 +163,7 @@ class LineSection(FileOptions, PreparingKeys, ControlKeys):
     forecast_exposure: Positive | None = None
     expense: Annotated[float, Field(ge=0, le=1)] = 0.0
     sum_insured: Positive | None = None
-    frequency: Law
+    frequency: Frequency
     severity: Severity
 
     @property

@@ -25,6 +25,7 @@ from lossagg.fitting.empirical import EMPIRICAL
 from lossagg.fitting.tail import Large, tail_fit
 from lossagg.portfolio.assessment import Data
 from lossagg.portfolio.line import LineModel, survival_by_year
+from lossagg.portfolio.prior import weighted_rate
 from lossagg.records import PreparedLosses
 
 STEPS = 2
@@ -192,6 +193,8 @@ def refitted_frequency(model: LineModel, severity: SizeLaw, counted: tuple[int, 
         fit: FrequencyFit = fit_frequency(counts, model.frequencies.chosen.family, seen)
     except FitError:
         fit = fit_frequency(counts, "poisson", seen)
+    if model.rate is not None:
+        return weighted_rate(model.rate.prior, fit, model.name).law(fit, model.forecast_exposure)
     return fit.model_for(model.forecast_exposure)
 
 

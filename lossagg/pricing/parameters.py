@@ -90,6 +90,9 @@ def _frequency(model: LineModel, severity: SizeLaw, random: np.random.Generator)
     for _ in range(100):
         try:
             law = make_count_law(**_replaced(fit.model.to_dict(), moved(fit, random)))
+            if model.rate is not None:
+                own = law.with_exposure(float(np.sum(model.seen)) / seen)
+                return model.rate.redrawn(own, model.forecast_exposure)
             return law.with_exposure(model.forecast_exposure * float(np.sum(model.seen)) / seen)
         except LossaggError:
             continue

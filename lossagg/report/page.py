@@ -15,6 +15,9 @@ if TYPE_CHECKING:
     import jinja2
 
 
+CLOSE_AIC = 2.0  # a difference below it says little: Burnham & Anderson 2002, section 2.6
+
+
 @dataclass(frozen=True)
 class LineSection:
     """What the page shows of one line."""
@@ -168,6 +171,8 @@ def _line_facts(line: Entry, currency: str) -> list[tuple[str, str]]:
     if line["source"] == "given":
         return [*facts, ("Source", tables.lines.GIVEN)]
     facts += [("Why this law", text) for law in (line["frequency"], size) if (text := _choice_text(law))]
+    if weighed := _credibility_text(line["frequency"]):
+        facts.append(("Credibility of the rate", weighed))
     threshold = size["threshold"]
     facts.append(("Threshold", f"{threshold:,.2f} {currency}, trended" if threshold else "none"))
     facts.append(
@@ -182,11 +187,38 @@ def _line_facts(line: Entry, currency: str) -> list[tuple[str, str]]:
 
 
 def _choice_text(law: Entry) -> str:
-    """Why a law was chosen that does not rank first; empty where the first was."""
+    """Why a law was chosen: its rank by AIC, or the reason given for another; empty where it was given."""
     choice = law.get("choice")
-    if not choice or not choice["reason"]:
+    if not choice:
         return ""
-    return f"{choice['chosen']} chosen, though {choice['first']} ranks first: {choice['reason']}"
+    fitted = [tried for tried in law["candidates"] if tried["aic"] is not None]
+    if choice["reason"]:
+        worse = next(tried["aic"] for tried in fitted if tried["chosen"]) - fitted[0]["aic"]
+        return (
+            f"{choice['chosen']} chosen, though {choice['first']} ranks first with an AIC lower by "
+            f"{worse:.1f}: {choice['reason']}"
+        )
+    if len(fitted) == 1:
+        refused = len(law["candidates"]) - 1
+        others = f"; {refused} refused, see the candidates" if refused else ", and no other was asked for"
+        return f"{choice['chosen']} is the only candidate fitted{others}"
+    lead = fitted[1]["aic"] - fitted[0]["aic"]
+    close = ", too little to tell them apart" if lead < CLOSE_AIC else ""
+    return f"{choice['chosen']} has the lowest AIC, by {lead:.1f} before {fitted[1]['family']}{close}"
+
+
+def _credibility_text(law: Entry) -> str:
+    """How the rate was weighed against a prior; empty where none is stated."""
+    weighed = law.get("credibility")
+    if not weighed:
+        return ""
+    return (
+        f"rate {digits.significant(weighed['rate'], 4)} per unit of exposure: weight "
+        f"{100 * weighed['weight']:.1f} % on the own {digits.significant(weighed['own_rate'], 4)} "
+        f"({weighed['losses']:,} losses), the rest on the prior "
+        f"{digits.significant(weighed['prior_rate'], 4)}; {weighed['method']}. Source of the prior: "
+        f"{weighed['source']}"
+    )
 
 
 def _without_line(table: Table) -> Table:
