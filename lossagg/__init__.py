@@ -101,9 +101,10 @@ def read_portfolio(path: str | Path) -> Portfolio:
         InputError: a file, key or value that cannot be used, with its place and the remedy.
     """
     from lossagg.portfolio import read_portfolio as read
+    from lossagg.pricing import options_of_assessment
     from lossagg.report import write_assessment
 
-    return read(path, writer=write_assessment)
+    return read(path, writer=write_assessment, pricer=options_of_assessment)
 
 
 def __getattr__(name: str) -> object:

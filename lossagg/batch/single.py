@@ -78,6 +78,7 @@ def assess_folder(
     """
     from lossagg.engines.executors import cluster as running
     from lossagg.portfolio import read_portfolio
+    from lossagg.pricing import options_of_assessment
     from lossagg.report import RunFacts, check_destination, load_writing, write_assessment
 
     started = datetime.now(UTC)
@@ -86,7 +87,7 @@ def assess_folder(
     with warnings.catch_warnings(record=True) as caught:
         warnings.simplefilter("always", LossaggWarning)
         progress("reading", 0.0)
-        read = read_portfolio(portfolio)
+        read = read_portfolio(portfolio, pricer=options_of_assessment)
         Thread(target=load_writing).start()
         with running(cluster) if cluster else nullcontext() as executor:
             document = read.assess(

@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from concurrent.futures import Executor, ThreadPoolExecutor
 from contextlib import nullcontext
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Protocol
 
 from lossagg.engines import Simulation
 from lossagg.engines.book import GROSS, Book
@@ -31,6 +33,22 @@ from lossagg.records import PreparedLosses
 from lossagg.version import __version__
 
 
+class Pricer(Protocol):
+    """Prices the options of a portfolio file with the laws of an assessment; see `pricing`."""
+
+    def __call__(
+        self,
+        portfolio: Portfolio,
+        models: Sequence[LineModel],
+        *,
+        seed: int,
+        workers: int | None,
+        withheld: str,
+        progress: Progress,
+    ) -> Data | None:
+        """The options as data with their cautions; None where the file has none."""
+
+
 @dataclass(frozen=True)
 class Portfolio:
     """A portfolio read and checked, not yet modelled.
@@ -41,6 +59,7 @@ class Portfolio:
         records: the checked records and exposures of each line that has any, by line name.
         inputs: path within the folder, SHA-256 and rows of every file read.
         writer: how its assessments are written.
+        pricer: how the options of its file are priced for its assessments.
     """
 
     folder: Path
@@ -48,6 +67,7 @@ class Portfolio:
     records: dict[str, LineRecords]
     inputs: tuple[Data, ...]
     writer: Writer | None = None
+    pricer: Pricer | None = None
 
     @property
     def name(self) -> str:
@@ -167,6 +187,18 @@ class Portfolio:
                 *tower_cautions(self.file.tower),
             ],
         }
+        data["options"] = None
+        if self.pricer is not None:
+            priced = self.pricer(
+                self,
+                models,
+                seed=seed,
+                workers=workers,
+                withheld=data["headline"]["reason"] if data["headline"]["withheld"] else "",
+                progress=lambda stage, done: progress(f"options: {stage}", 0.9 + 0.1 * done),
+            )
+            data["cautions"] += priced.pop("cautions") if priced else []
+            data["options"] = priced
         progress("done", 1.0)
         return Assessment(data, self.writer)
 
@@ -185,12 +217,15 @@ class Portfolio:
         }
 
 
-def read_portfolio(path: str | Path, *, writer: Writer | None = None) -> Portfolio:
+def read_portfolio(
+    path: str | Path, *, writer: Writer | None = None, pricer: Pricer | None = None
+) -> Portfolio:
     """Read a portfolio folder: its file, every key checked, and its records, every row checked.
 
     Args:
         path: the folder, or its portfolio file.
         writer: what `Assessment.write` calls.
+        pricer: what prices the options of the file for its assessments; without it they carry none.
 
     Raises:
         InputError: a file, key, row or value that cannot be used, with its place and the remedy.
@@ -200,7 +235,7 @@ def read_portfolio(path: str | Path, *, writer: Writer | None = None) -> Portfol
     placed_covers(content)
     assumed(content.dependence, [line.name for line in content.line])
     records, inputs = read_records(folder, content)
-    return Portfolio(folder, content, records, inputs, writer)
+    return Portfolio(folder, content, records, inputs, writer, pricer)
 
 
 __all__ = ["PORTFOLIO_FILE", "Portfolio", "read_portfolio"]

@@ -132,13 +132,13 @@ def curves_of(
 
 
 def _amounts(cost: CappedCost, own: Sequence[float]) -> FloatArray:
-    """Round amounts (1, 2, 5 and their tens) over the range that matters, and the options' own."""
+    """Round amounts (1, 1.5, 2, 3, 5, 7 and their tens) over the range that matters, and the options' own."""
     most = max(float(line.severity.isf(1e-4)) for line in cost.lines)
     least = min(float(line.severity.isf(0.9)) for line in cost.lines)
     most = min(max([most, *own]), cost.event_cap)
     least = max(min([least, *own]), most * 1e-4, 1e-300)
     tens = 10.0 ** np.arange(np.floor(np.log10(least)), np.ceil(np.log10(most)) + 1)
-    rounds = (np.array([1.0, 2.0, 5.0])[:, None] * tens).ravel()
+    rounds = (np.array([1.0, 1.5, 2.0, 3.0, 5.0, 7.0])[:, None] * tens).ravel()
     kept = rounds[(rounds >= least) & (rounds <= most)].tolist()
     listed = sorted({a for a in own if 0 < a <= most})
     thinned = listed[:: max(1, len(listed) // MOST_AMOUNTS)]

@@ -9,6 +9,7 @@ import numpy as np
 
 from lossagg.portfolio.assessment import number
 from lossagg.pricing.event_figures import increased_limit_factor
+from lossagg.pricing.figure import Figure
 from lossagg.pricing.option import Option
 from lossagg.pricing.rows import MISSING, Row, value_of
 
@@ -26,6 +27,7 @@ def row_data(row: Row, base: Row, levels: Sequence[float], gross: float) -> dict
             "expected": mean.to_dict(),
             "sd": (exact.sd or MISSING).to_dict(),
             "cv": _ratio(value_of(exact.sd), mean.value),
+            "cv_range": _ratio_range(exact.sd or MISSING, mean),
             "no_loss": (exact.no_loss or MISSING).to_dict(),
             "events": row.events,
             "most": number(option.most_retained),
@@ -139,3 +141,10 @@ def _eliminated(ceded: float | None, gross: float) -> float | None:
 
 def _ratio(part: float | None, whole: float | None) -> float | None:
     return None if part is None or not whole else part / whole
+
+
+def _ratio_range(part: Figure, whole: Figure) -> list[float] | None:
+    """The least and the largest ratio that the ranges allow."""
+    if part.low is None or part.high is None or not whole.low or not whole.high:
+        return None
+    return [part.low / whole.high, part.high / whole.low]

@@ -107,6 +107,7 @@ class OptionTable:
             for k, row in enumerate(rows)
         ]
         dominated = dominators(positions, draws=0 if draws is None else draws.count)
+        at_estimates = dominators(positions, draws=0)
         entries = []
         for k, row in enumerate(rows):
             entry = row_data(row, rows[self.base], self.levels, self.gross.mean)
@@ -114,6 +115,7 @@ class OptionTable:
             entry["beats_base"] = self._beats(tallies[k], k) if checks[k]["agrees"] else None
             entry["parameters"] = None if draws is None else draws.ranges(k, row, frontier)
             entry["dominated_by"] = dominated[row.option.name]
+            entry["dominated_at_estimates"] = at_estimates[row.option.name]
             entry["check"] = checks[k]
             entries.append(entry)
         self.progress("done", 1.0)

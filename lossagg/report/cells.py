@@ -13,7 +13,7 @@ from typing import Literal
 
 from lossagg.report import digits
 
-Kind = Literal["text", "count", "money", "amount", "probability", "level", "number", "period"]
+Kind = Literal["text", "count", "money", "amount", "probability", "level", "number", "ratio", "period"]
 _UNPRINTABLE = re.compile(r"[\x00-\x08\x0b-\x1f\x7f-\x9f\u2028-\u202e\u2066-\u2069\ud800-\udfff\ufffe\uffff]")
 
 
@@ -137,5 +137,7 @@ def _show_number(value: float, kind: Kind) -> str:
             return digits.chance(value)
         case "period":
             return digits.return_period(value)
+        case "ratio":
+            return digits.significant(value, 4)
         case _:
             return digits.significant(value, 6)

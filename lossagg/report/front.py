@@ -93,8 +93,21 @@ def status(assessment: Assessment) -> list[tuple[str, str, int]]:
         ("Data", _data_status(assessment), 5),
         ("Findings", _finding_status(assessment), 6),
         ("Reach of the data", _reach(years, level), 1),
+        *_option_status(assessment),
         ("Cautions", _caution_status(assessment), 7),
     ]
+
+
+def _option_status(assessment: Assessment) -> list[tuple[str, str, int]]:
+    """How many options are priced, and whether any is withheld; empty where the portfolio has none."""
+    options = assessment.get("options")
+    if options is None:
+        return []
+    if options["withheld"]:
+        return [("Options", "WITHHELD with the capital figure", 3)]
+    text = f"{_plural(len(options['options']), 'option')} for {', '.join(options['subject']['lines'])}"
+    parted = sum(not entry["check"]["agrees"] for entry in options["options"])
+    return [("Options", f"{text}; {parted} WITHHELD" if parted else text, 3)]
 
 
 def _data_status(assessment: Assessment) -> str:

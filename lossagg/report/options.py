@@ -9,13 +9,12 @@ import csv
 from collections.abc import Sequence
 from io import StringIO
 from pathlib import Path
-from typing import Any
 
 from lossagg.report.cells import Absent, Cell, Estimated, Ranged, Table
 from lossagg.report.documents import publish_document, require_format
-from lossagg.report.figures.options import curves_figure, frontier_figure
 from lossagg.report.folder import OPTION_FILES
 from lossagg.report.manifest import RunFacts
+from lossagg.report.option_parts import option_parts
 from lossagg.report.page import environment
 from lossagg.report.reading import Entry
 from lossagg.report.tables import option_details as details
@@ -57,31 +56,6 @@ def write_options(options: Entry, out: str | Path, *, facts: RunFacts | None = N
 
     described = {**options, "headline": {"withheld": not options["agrees"]}}
     return publish_document(options, out, OPTION_FILES, build, facts, described=described)
-
-
-def option_parts(options: Entry) -> dict[str, Any]:
-    """What the page shows of the options: tables and figures."""
-    if options["withheld"]:
-        return {"data": options}
-    shown = tables.shown_options(options)
-    past = options["history"]
-    return {
-        "data": options,
-        "tables": (
-            tables.retained(options, shown),
-            tables.ceded(options, shown),
-            tables.total(options, shown),
-            tables.bad_years(options, shown),
-        ),
-        "ranges": details.ranges({**options, "options": shown}),
-        "terms": tables.terms(options, shown),
-        "past": None if past is None else details.past_costs(options, shown),
-        "frontier": frontier_figure(options),
-        "curves": curves_figure(options),
-        "curve_tables": details.curves(options),
-        "basis": details.basis(options),
-        "parts": details.parts({**options, "options": shown}),
-    }
 
 
 def render_options(options: Entry) -> str:

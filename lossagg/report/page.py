@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 from lossagg.report import digits, figures, front, tables
 from lossagg.report.cells import Cell, Kind, Shown, Table, clean, show
+from lossagg.report.option_parts import option_parts
 from lossagg.report.reading import Assessment, Entry, every_caution, years_observed
 
 if TYPE_CHECKING:
@@ -90,6 +91,7 @@ def render_report(assessment: Assessment) -> str:
             for index, line in enumerate(assessment["lines"], 1)
         ],
         "cover_tables": _cover_tables(assessment),
+        "options": _options(assessment),
         "reconciliation": tables.records.reconciliation(assessment),
         "controls": tables.controls.control_totals(assessment),
         "findings": tables.evidence.findings(assessment),
@@ -122,6 +124,11 @@ def _cover_tables(assessment: Assessment) -> list[Table]:
         tables.covers.results(assessment),
         tables.covers.levels(assessment),
     ]
+
+
+def _options(assessment: Assessment) -> dict[str, Any] | None:
+    options = tables.options_of(assessment)
+    return None if options is None else option_parts(options)
 
 
 def line_section(line: Entry, index: int, currency: str, extra: Sequence[Table] = ()) -> LineSection:

@@ -28,6 +28,7 @@ FORMATS = {
     "probability": "0.000%",
     "level": "0.0##%",
     "number": "#,##0.######",
+    "ratio": "#,##0.0000",
     "period": "#,##0",
 }
 RISKY_STARTS = ("=", "+", "-", "@", "\t", "\r", "\n", "\0")

@@ -38,7 +38,8 @@ def frontier_figure(options: Entry) -> str | None:
             zorder=1,
             label="efficient at this level",
         )
-        for inside, label in ((True, "within the appetite"), (False, "option")):
+        outside = "option" if appetite is None else "outside the appetite"
+        for inside, label in ((True, "within the appetite"), (False, outside)):
             own = [(x, y) for x, y, entry in points if (entry["name"] in within) == inside]
             if own:
                 axis.plot(
@@ -94,7 +95,7 @@ def _labels(axis: Axes, points: list[tuple[float, float, Entry]]) -> None:
         crowd = sum(abs(place[0] - a) < 0.12 and abs(place[1] - b) < 0.05 for a, b in taken)
         taken.append(place)
         axis.annotate(
-            clean(entry["name"]),
+            clean(entry["name"]) + (" (base)" if entry["base"] else ""),
             (x, y),
             xytext=(6, 4 - 11 * crowd),
             textcoords="offset points",
@@ -104,45 +105,87 @@ def _labels(axis: Axes, points: list[tuple[float, float, Entry]]) -> None:
 
 
 def curves_figure(options: Entry) -> str | None:
-    """Loss elimination ratio by amount, with the options' own deductibles marked; `None` without one."""
-    rows = options["curves"]["loss_elimination"]
-    if len(rows) < 2:
+    """Loss elimination with the options' own deductibles, increased limits, exposure curve and the cost of
+    layers, as many of them as there are; `None` without any."""
+    curves, currency = options["curves"], options["portfolio"]["currency"]
+    panels = [
+        panel
+        for rows, panel in (
+            (curves["loss_elimination"], _elimination),
+            (curves["increased_limits"], _limits),
+            (curves["exposure"], _exposure),
+            (curves["layers"], _layers),
+        )
+        if len(rows) > 1
+    ]
+    if not panels:
         return None
+    rows = -(-len(panels) // 2)
+    with canvas(7.6, 2.7 * rows, "curves", 0.66) as (figure, axis):
+        axis.remove()
+        figure.subplots_adjust(
+            top=1 - 0.26 / (2.7 * rows), bottom=0.52 / (2.7 * rows), hspace=0.45, wspace=0.28
+        )
+        for number, panel in enumerate(panels, 1):
+            own = figure.add_subplot(rows, min(len(panels), 2), number)
+            panel(own, options)
+            own.title.set_fontsize(9)
+            own.title.set_fontweight("bold")
+            if panel is not _exposure:
+                own.set_xlabel(f"amount of one event, {currency}")
+        return to_svg(figure, "curves", "Loss elimination, increased limits, exposure curve and layer costs")
+
+
+def _elimination(axis: Axes, options: Entry) -> None:
+    rows = options["curves"]["loss_elimination"]
+    log_amounts(axis, which="x")
+    axis.plot([row["amount"] for row in rows], [row["factor"] for row in rows], "-", color=MAIN)
+    by_amount = {row["amount"]: row["factor"] for row in rows}
+    deductibles = {entry["terms"]["deductible"] for entry in options["options"] if entry["terms"]}
+    marked = [amount for amount in sorted(deductibles) if amount in by_amount]
+    factors = [by_amount[amount] for amount in marked]
+    axis.plot(marked, factors, "o", color=MAIN, markersize=4, linestyle="none", label="options")
+    _percent(axis, "y")
+    axis.set_title("Part of the expected loss below")
+    if marked:
+        axis.legend(loc="upper left", fontsize=8)
+
+
+def _limits(axis: Axes, options: Entry) -> None:
+    rows, basic = options["curves"]["increased_limits"], options["curves"]["basic_limit"]
+    log_amounts(axis, which="x")
+    axis.plot([row["amount"] for row in rows], [row["factor"] for row in rows], "-", color=MAIN)
+    axis.plot([basic], [1.0], "o", color=SECOND, markersize=4, linestyle="none", label="basic limit")
+    axis.set_ylim(bottom=0)
+    axis.set_title("Increased limit factor")
+    axis.legend(loc="upper left", fontsize=8)
+
+
+def _exposure(axis: Axes, options: Entry) -> None:
+    rows = options["curves"]["exposure"]
+    axis.plot(
+        [0.0, *(row["share"] for row in rows)], [0.0, *(row["factor"] for row in rows)], "-", color=MAIN
+    )
+    axis.plot([0, 1], [0, 1], ":", color=PALE)
+    _percent(axis, "x")
+    _percent(axis, "y")
+    largest = amount_label(options["curves"]["largest_loss"])
+    axis.set_title(f"Exposure curve, largest loss {largest}")
+    axis.set_xlabel("part of the largest loss")
+
+
+def _layers(axis: Axes, options: Entry) -> None:
+    rows = options["curves"]["layers"]
+    log_amounts(axis, which="both")
+    edges = [row["from"] for row in rows if row["from"] > 0 and row["rate_on_line"] > 0]
+    rates = [row["rate_on_line"] for row in rows if row["from"] > 0 and row["rate_on_line"] > 0]
+    axis.step([*edges, rows[-1]["to"]], [*rates, rates[-1]], where="post", color=MAIN)
+    axis.set_title("Expected cost of a layer a year / its width")
+
+
+def _percent(axis: Axes, which: str) -> None:
     from matplotlib.ticker import FuncFormatter
 
-    with canvas(7.6, 3.4, "curves", 0.72) as (figure, axis):
-        log_amounts(axis, which="x")
-        amounts = [row["amount"] for row in rows]
-        axis.plot(
-            amounts, [row["factor"] for row in rows], "-", color=MAIN, linewidth=1.7, label="loss elimination"
-        )
-        exposure = options["curves"]["exposure"]
-        if exposure and options["curves"]["largest_loss"] != options["subject"]["event_cap"]:
-            axis.plot(
-                [row["amount"] for row in exposure],
-                [row["factor"] for row in exposure],
-                "--",
-                color=SECOND,
-                linewidth=1.4,
-                label="exposure curve",
-            )
-        deductibles = sorted(
-            {entry["terms"]["deductible"] for entry in options["options"] if entry["terms"]} - {0.0}
-        )
-        by_amount = {row["amount"]: row["factor"] for row in rows}
-        marked = [amount for amount in deductibles if amount in by_amount]
-        axis.plot(
-            marked,
-            [by_amount[a] for a in marked],
-            "o",
-            color=MAIN,
-            markersize=4,
-            linestyle="none",
-            label="options",
-        )
-        axis.set_ylim(0, 1.02)
-        axis.yaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{100 * value:g}%"))
-        axis.set_xlabel(f"amount of one event, {options['portfolio']['currency']}")
-        axis.set_ylabel("part of the expected loss below it")
-        axis.legend(loc="upper left", fontsize=8)
-        return to_svg(figure, "curves", "Loss elimination ratio and exposure curve")
+    own = axis.xaxis if which == "x" else axis.yaxis
+    own.set_major_formatter(FuncFormatter(lambda value, _: f"{100 * value:g}%"))
+    (axis.set_xlim if which == "x" else axis.set_ylim)(0, 1.02)

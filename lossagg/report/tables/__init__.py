@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from lossagg.report.cells import Table
-from lossagg.report.reading import Assessment
+from lossagg.report.reading import Assessment, Entry
 from lossagg.report.tables import (
     controls,
     covers,
@@ -12,6 +12,7 @@ from lossagg.report.tables import (
     fit_tests,
     fits,
     lines,
+    option_details,
     records,
     totals,
     years,
@@ -26,6 +27,7 @@ __all__ = [
     "fit_tests",
     "fits",
     "lines",
+    "options_of",
     "records",
     "totals",
     "years",
@@ -47,6 +49,7 @@ def every_table(assessment: Assessment) -> tuple[Table, ...]:
         covers.terms(assessment),
         covers.results(assessment),
         covers.levels(assessment),
+        *_option_tables(assessment),
         *_if_any(years.near_capital(assessment)),
         *_if_any(years.events_near_capital(assessment)),
         evidence.crosscheck(assessment),
@@ -69,6 +72,19 @@ def every_table(assessment: Assessment) -> tuple[Table, ...]:
         evidence.run(assessment),
         evidence.inputs(assessment),
     )
+
+
+def options_of(assessment: Assessment) -> Entry | None:
+    """The options of an assessment with what their tables take from it; None where it has none."""
+    options = assessment.get("options")
+    return None if options is None else {**options, "portfolio": assessment["portfolio"]}
+
+
+def _option_tables(assessment: Assessment) -> tuple[Table, ...]:
+    options = options_of(assessment)
+    if options is None or options["withheld"]:
+        return ()
+    return tuple(table for table in option_details.every_option_table(options) if table.rows)
 
 
 def _if_any(table: Table) -> tuple[Table, ...]:

@@ -11,13 +11,15 @@ from lossagg.report.tables.options import bad_years, ceded, plain, reinstated, r
 
 
 def parts(options: Entry) -> Table:
-    """How each modelled premium is made: everything needed to compute it by hand."""
+    """How each modelled premium and the cost of claims handling are made, ready to be computed by hand."""
     basis, currency = options["basis"], options["portfolio"]["currency"]
-    paid = reinstated(options["options"])
+    paid, load = reinstated(options["options"]), basis["risk_load"]
+    method = load["method"] if load and load["factor"] else None
     rows = tuple(
         (
             entry["name"],
             plain(entry["premium"]["parts"]["ceded"]),
+            *((_spread(entry, method),) if method else ()),
             plain(entry["premium"]["parts"]["loss_adjustment"], "none"),
             plain(entry["premium"]["parts"]["fixed_expense"], "none"),
             plain(entry["premium"]["parts"]["risk_load"], "none"),
@@ -25,12 +27,14 @@ def parts(options: Entry) -> Table:
             *((_fraction(entry),) if paid else ()),
             plain(entry["premium"]["modelled"]),
             entry["premium"]["value"] if entry["premium"]["source"] == "quoted" else Absent("not quoted"),
+            entry["retained"]["events"],
         )
         for entry in options["options"]
     )
     columns = (
         Column("Option"),
         Column("Expected ceded", "amount"),
+        *((Column(_spread_heading(load), "amount"),) if method else ()),
         Column("Loss adjustment", "amount"),
         Column("Fixed expense", "amount"),
         Column("Risk load", "amount"),
@@ -38,13 +42,46 @@ def parts(options: Entry) -> Table:
         *((Column("Reinstatement premium, times the initial", "number"),) if paid else ()),
         Column("Modelled premium", "amount"),
         Column("Quoted premium", "amount"),
+        Column("Events a year of which something is kept", "number"),
     )
     share = basis["variable_expense"] + basis["profit"]
     notes = (
         f"Modelled premium = (expected ceded x {1 + basis['loss_adjustment']:g} + fixed expense + "
         f"risk load) / {1 - share:g}{', divided by one and the reinstatement premium' if paid else ''}.",
+        *_load_note(load),
+        *_handling_note(basis["claims_handling"]),
     )
-    return Table("Premium parts", f"Modelled premiums, {currency}", columns, rows, notes)
+    return Table("Premium parts", f"How premiums are made, {currency}", columns, rows, notes)
+
+
+def _spread(entry: Entry, method: str) -> Cell:
+    """What the risk load is taken of, beside the expected ceded loss."""
+    found = entry["ceded"]["tail"] if method == "cost-of-capital" else entry["ceded"]["sd"]
+    return Absent("none") if found is None else plain(found["value"])
+
+
+def _spread_heading(load: Entry) -> str:
+    if load["method"] == "cost-of-capital":
+        return f"TVaR {digits.percent(load['level'])} of ceded"
+    return "Standard deviation of ceded"
+
+
+def _load_note(load: Entry | None) -> tuple[str, ...]:
+    if not load or not load["factor"]:
+        return ()
+    of = {
+        "cost-of-capital": "(tail value at risk - expected ceded)",
+        "sd": "standard deviation of ceded",
+        "variance": "standard deviation of ceded squared",
+    }
+    return (f"Risk load = {load['factor']:g} x {of[load['method']]}.",)
+
+
+def _handling_note(handling: Entry | None) -> tuple[str, ...]:
+    if not handling:
+        return ()
+    per_event, share = handling["per_event"], handling["share"]
+    return (f"Claims handling = {per_event:,.10g} x events + {share:g} x expected retained.",)
 
 
 def _fraction(entry: Entry) -> Cell:
@@ -90,7 +127,7 @@ def _simulated_note(entries: Sequence[Entry]) -> tuple[str, ...]:
     names = [entry["name"] for entry in entries if entry["parameters"] and entry["parameters"]["simulated"]]
     if not names:
         return ()
-    listed = ", ".join(names[:3]) + (f" and {len(names) - 3} more" if len(names) > 3 else "")
+    listed = "; ".join(names[:3]) + (f" and {len(names) - 3} more" if len(names) > 3 else "")
     return (
         f"The worst year of {clean(listed)} is simulated in every draw with few years: its range is a little "
         "too wide, and takes no part in saying which option is dominated.",

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from lossagg.report import digits
-from lossagg.report.cells import Absent, Cell, Column, Estimated, Table
+from lossagg.report.cells import Absent, Cell, Column, Estimated, Ranged, Table
 from lossagg.report.reading import Entry, absent, ranged, reasons
 
 MOST_ROWS = 60
@@ -54,11 +54,17 @@ def _left_out(options: Entry, entries: Sequence[Entry]) -> tuple[str, ...]:
 
 
 def terms(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
-    """The terms of every option."""
+    """The terms of every option; the order in which they act once where it is the same for all."""
     chosen = options["options"] if entries is None else entries
-    rows = tuple((e["name"], e["description"], (e["terms"] or {}).get("order", "")) for e in chosen)
-    columns = (Column("Option"), Column("Terms"), Column("Order of operations"))
-    return Table("Option terms", "Options: terms", columns, rows)
+    orders = {entry["terms"]["order"] for entry in chosen if entry["terms"]}
+    several = len(orders) > 1
+    rows = tuple(
+        (e["name"], e["description"], *(((e["terms"] or {}).get("order", ""),) if several else ()))
+        for e in chosen
+    )
+    columns = (Column("Option"), Column("Terms"), *((Column("Order of operations"),) if several else ()))
+    notes = () if several else tuple(f"Order of operations: {order}." for order in orders)
+    return Table("Option terms", "Options: terms", columns, rows, notes)
 
 
 def retained(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
@@ -75,7 +81,7 @@ def retained(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
                 entry["name"],
                 figure(own["expected"]),
                 figure(own["sd"]),
-                plain(own["cv"]),
+                _variation(own),
                 figure(own["no_loss"]),
                 *(figure(by_level[level]["var"]) for level in levels),
                 figure(by_level[0.99]["tvar"]),
@@ -86,7 +92,7 @@ def retained(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
         Column("Option"),
         Column("Expected retained", "money", ranged=True),
         Column("Standard deviation", "money", ranged=True),
-        Column("CV", "number"),
+        Column("CV", "ratio", ranged=True),
         Column("Years with nothing retained", "probability", ranged=True),
         *(Column(f"Worst year at {digits.percent(level)}", "money", ranged=True) for level in levels),
         Column("TVaR 99%", "money", ranged=True),
@@ -129,17 +135,18 @@ def ceded(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
         Column("Expected ceded", "money", ranged=True),
         Column("Loss elimination ratio", "probability"),
         Column("Charge for the cap", "money", ranged=True),
-        Column("Increased limit factor", "number"),
+        Column("Increased limit factor", "ratio"),
         Column("Premium before tax", "money", ranged=True),
         Column("Premium is"),
         Column("Premium credit", "money"),
         Column("Credit, part of base premium", "probability"),
         Column("Credit is"),
-        Column("Credit per unit of extra retained loss", "number"),
+        Column("Credit per unit of extra retained loss", "ratio"),
     )
     notes = (
         "Premium credit: premium of the base option less that of this one. Above 1, the last column says "
-        "that the credit is larger than the extra loss expected to be kept.",
+        "that the credit is larger than the extra loss expected to be kept. Mixed: one of the two premiums "
+        "is quoted, the other modelled.",
         *_reinstated_note(chosen),
         *_left_out(options, chosen),
     )
@@ -214,7 +221,7 @@ def bad_years(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
                 entry["name"],
                 *(figure(levels[level]) for level in PERIODS),
                 _beats(entry),
-                _names(entry["dominated_by"]),
+                _dominated(entry),
             )
         )
     columns = (
@@ -243,7 +250,22 @@ def _beats(entry: Entry) -> Cell:
     return Absent("not computed") if beats is None else Estimated(beats["value"], beats["standard_error"])
 
 
-def _names(names: Sequence[str]) -> Cell:
-    if not names:
-        return NONE
-    return ", ".join(names[:3]) + (f" and {len(names) - 3} more" if len(names) > 3 else "")
+def _dominated(entry: Entry) -> Cell:
+    if entry["dominated_by"]:
+        return _names(entry["dominated_by"])
+    better = entry["dominated_at_estimates"]
+    return f"not in every draw. At the estimates: {_names(better)}" if better else NONE
+
+
+def _names(names: Sequence[str]) -> str:
+    return "; ".join(names[:3]) + (f" and {len(names) - 3} more" if len(names) > 3 else "")
+
+
+def _variation(own: Entry) -> Cell:
+    """The coefficient of variation, with its range where mean and deviation have one."""
+    if own["cv"] is None:
+        return Absent("does not exist")
+    low, high = own["cv_range"] or (None, None)
+    if low is None or high is None or high - low <= 1e-9 * own["cv"]:
+        return float(own["cv"])
+    return Ranged(own["cv"], low, high)
