@@ -123,6 +123,7 @@ def _cover_tables(assessment: Assessment) -> list[Table]:
         tables.covers.terms(assessment),
         tables.covers.results(assessment),
         tables.covers.levels(assessment),
+        *_filled(tables.by_line.costs(assessment), tables.by_line.levels(assessment)),
     ]
 
 

@@ -198,3 +198,17 @@ def test_every_column_of_an_option_from_the_workbook(written: Path, name: str) -
         factor = (within / events + 50) / (basic / events + 50)
         assert within == pytest.approx(ceded)
         assert bought["Increased limit factor"] == pytest.approx(factor)
+
+
+def test_every_line_shows_what_is_ceded_and_retained(written: Path) -> None:
+    """Ceded and retained make the line's loss; with one line the cover's cost is what is ceded of it."""
+    row = sheet(written, "Line costs")["Fire"]
+    assert row["Expected ceded"] + row["Expected retained"] == pytest.approx(row["Expected loss"], rel=0.02)
+    assert row["Part ceded"] == pytest.approx(row["Expected ceded"] / row["Expected loss"])
+    cover = sheet(written, "Covers")["Layer"]
+    assert row["Expected ceded"] == pytest.approx(cover["Expected annual cost"], rel=0.05)
+    levels = sheet(written, "Line cessions")["Fire"]
+    assert levels["VaR of ceded"] > 0
+    assert levels["Largest loss of a year"] <= levels["VaR of ceded"] + levels["VaR of retained"]
+    page = (written / "report.html").read_text(encoding="utf-8")
+    assert "Lines: ceded and retained" in page

@@ -5,6 +5,7 @@ from __future__ import annotations
 from lossagg.report.cells import Table
 from lossagg.report.reading import Assessment, Entry
 from lossagg.report.tables import (
+    by_line,
     controls,
     covers,
     dependence,
@@ -19,6 +20,7 @@ from lossagg.report.tables import (
 )
 
 __all__ = [
+    "by_line",
     "controls",
     "covers",
     "dependence",
@@ -49,6 +51,8 @@ def every_table(assessment: Assessment) -> tuple[Table, ...]:
         covers.terms(assessment),
         covers.results(assessment),
         covers.levels(assessment),
+        *_if_any(by_line.costs(assessment)),
+        *_if_any(by_line.levels(assessment)),
         *_option_tables(assessment),
         *_if_any(years.near_capital(assessment)),
         *_if_any(years.events_near_capital(assessment)),
