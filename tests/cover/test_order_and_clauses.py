@@ -30,7 +30,7 @@ def paid(cover: Cover, loss: float) -> float:
         ([], 48_000),
     ],
 )
-def test_order_of_operations_of_the_practice_note(order: list[str], expected: float) -> None:
+def test_order_of_operations_by_hand(order: list[str], expected: float) -> None:
     """By hand, no published source: loss 100,000, deductible 10,000, share 80 %, limit 60,000."""
     assert paid(Cover(deductible=1e4, limit=6e4, share=0.8, order=order), 1e5) == pytest.approx(expected)
 
@@ -202,7 +202,7 @@ def test_stop_loss_in_loss_ratios() -> None:
     )
 
 
-def test_reinstatement_of_the_practice_note() -> None:
+def test_reinstatement_premium_loss_by_loss() -> None:
     """Computed by hand, no published source: 4m in excess of 1m, one reinstatement at 100 %, premium 0.6m."""
     cover = Cover(deductible=1e6, limit=4e6, reinstatements=Reinstatements(number=1, rates=1.0))
     running = np.cumsum(cover.event_schedule()(np.array([3e6, 5e6, 2e6, 6e6])))
