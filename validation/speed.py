@@ -196,7 +196,7 @@ def option_rows(workers: int) -> Iterator[Row]:
             lambda g=grid: sum(1 for _ in g.years(options)),  # type: ignore[misc]
             pairs,
             "slower",
-            2.0 if name == "Poisson" else 0.0,
+            2.0,
             repetitions=3,
         )
 
