@@ -91,6 +91,16 @@ def binomial(trials, probability):
     ]
 
 
+def zero_modified(counts, at_zero):
+    """The same counts with another probability of no loss, the others in proportion."""
+    return [at_zero, *((1 - at_zero) * p / sum(counts[1:]) for p in counts[1:])]
+
+
+def zero_inflated(counts, share):
+    """A share of years in which nothing can happen."""
+    return [share * (n == 0) + (1 - share) * p for n, p in enumerate(counts)]
+
+
 def event_payment(loss, deductible=0, limit=math.inf, franchise=False):
     """What a cover pays of one event, before annual terms and share."""
     if loss <= deductible:

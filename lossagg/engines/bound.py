@@ -19,7 +19,7 @@ from lossagg.engines.running import running_sums
 from lossagg.engines.span import places
 
 # The moments of the model are exact up to the round-off of the laws themselves.
-_MOMENTS = 1e-12
+MOMENTS = 1e-12
 _PANELS = 256
 
 
@@ -107,7 +107,7 @@ class LatticeBound(AnnualLoss):
 
     @property
     def _exact(self) -> float:
-        return 1.0 + _MOMENTS if self.upper else 1.0 - _MOMENTS
+        return 1.0 + MOMENTS if self.upper else 1.0 - MOMENTS
 
     @cached_property
     def _areas(self) -> FloatArray:

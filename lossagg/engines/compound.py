@@ -135,7 +135,6 @@ class CompoundSum:
         """
         pull = max(x - self.mean, 0.0) / self.variance if 0 < self.variance < np.inf else 0.0
         return sum(
-            share * (count.mean() + count.variance() * payment.mean * pull)
+            share * (count.mean() + (count.variance() * payment.mean * pull if pull > 0.0 else 0.0))
             for (count, payment), share in zip(self.parts, off_lattice, strict=True)
-            if payment.mean < np.inf or pull == 0.0
         )

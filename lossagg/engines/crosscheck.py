@@ -1,8 +1,9 @@
 """The gate: a figure is printed only where independent engines agree on it.
 
 Two kinds of evidence are compared, each on its own terms. The exact engines carry guaranteed
-brackets: each one's value must lie inside the other's bracket. The simulation carries chance: it must
-lie within four standard errors of the reference.
+brackets: they must overlap, and the value known better must lie inside the wider bracket. (The value of
+the coarser engine may well lie outside the narrower bracket: it is only as good as its own.) The simulation
+carries chance: it must lie within four standard errors of the reference.
 
 * A simulated VaR is judged in probability, not in money: the number of simulated years beyond the
   reference's bracket is binomial, whatever the tail, and atoms are no obstacle.
@@ -17,6 +18,7 @@ comparisons is withheld by bad luck less than once in a hundred seeds.
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 
@@ -30,7 +32,8 @@ STANDARD_ERRORS = 4.0
 YEARS_BEYOND = 20
 ROUND_OFF = 1e-9
 TOLERANCE = (
-    f"exact engines inside each other's bracket; simulation within {STANDARD_ERRORS:g} standard errors, "
+    "brackets of exact engines overlap, the better known value inside the wider bracket; simulation within "
+    f"{STANDARD_ERRORS:g} standard errors, "
     f"its mean and TVaR up to the amount that {YEARS_BEYOND} simulated years are expected to exceed"
 )
 
@@ -173,18 +176,24 @@ def _compare(
 
 
 def _exact_faults(values: Mapping[str, float], brackets: Mapping[str, Bracket]) -> list[str]:
-    """Pairs of exact engines of which one's value lies outside the other's bracket."""
+    """Pairs of exact engines whose brackets do not overlap, or whose better known value lies outside the
+    wider bracket."""
     faults = []
-    for name in brackets:
-        for other, (low, high) in brackets.items():
-            if name == other:
-                continue
-            slack = ROUND_OFF * abs(high) if np.isfinite(high) else 0.0
-            if not low - slack <= values[name] <= high + slack:
-                faults.append(
-                    f"{name} {values[name]:.6g} is outside {other}'s bracket [{low:.6g}, {high:.6g}]"
-                )
+    in_order = sorted(brackets, key=lambda name: _width(brackets[name]))
+    for better, wider in itertools.combinations(in_order, 2):
+        low, high = brackets[wider]
+        slack = ROUND_OFF * abs(high) if np.isfinite(high) else 0.0
+        if not low - slack <= values[better] <= high + slack:
+            faults.append(
+                f"{better} {values[better]:.6g} is outside {wider}'s bracket [{low:.6g}, {high:.6g}]"
+            )
+        elif not (brackets[better][0] <= high + slack and low - slack <= brackets[better][1]):
+            faults.append(f"the brackets of {better} and {wider} do not overlap")
     return faults
+
+
+def _width(bracket: Bracket) -> float:
+    return bracket[1] - bracket[0] if np.isfinite(bracket[1]) else np.inf
 
 
 def _quantile_faults(

@@ -16,8 +16,9 @@ import numpy as np
 from lossagg.arrays import FloatArray
 from lossagg.cover import Cover, Schedule
 from lossagg.engines.book import Book, Line, PlacedCover, Subject
-from lossagg.engines.bound import LatticeBound
+from lossagg.engines.bound import MOMENTS, LatticeBound
 from lossagg.engines.compound import CompoundSum
+from lossagg.engines.limited import LimitedMeans
 from lossagg.engines.pair import PairPlan, pair_plan
 from lossagg.engines.result import AnnualLoss, BookResult, TransformedAnnualLoss
 from lossagg.errors import EngineError
@@ -135,9 +136,15 @@ class Rounded:
 
 
 def bracket(
-    engine: str, compound: CompoundSum, step: float, down: Rounded, up: Rounded
+    engine: str,
+    compound: CompoundSum,
+    step: float,
+    down: Rounded,
+    up: Rounded,
+    limited: LimitedMeans | None = None,
 ) -> tuple[LatticeBound, LatticeBound]:
-    """The two sides of the bracket, from the sums of payments rounded down and rounded up.
+    """The two sides of the bracket, from the sums of payments rounded down and rounded up and, where they
+    are known, from bounds of the limited means.
 
     What is left beyond the lattice is the mean of the rounded sum less the integral on the lattice. A
     payment beyond the lattice loses or gains less than one step by rounding.
@@ -152,17 +159,25 @@ def bracket(
         max(low_mean - step * float(down.most.sum()), 0.0),
         max(high_mean - step * float(up.least.sum()), 0.0),
     )
+    least, most = down.least, up.most
+    if limited is not None:
+        low, high = limited.survival(compound.mean_count)
+        least, most = np.maximum(least, low), np.minimum(most, high)
+        if compound.mean < np.inf:
+            off = MOMENTS * compound.mean
+            below = compound.mean - off - float(limited.most[-1]) - step * float(most[-1])
+            means = max(means[0], below), min(means[1], compound.mean + off - float(limited.least[-1]))
     if compound.variance == np.inf:
         squares = (np.inf, np.inf)
     else:
         odd = step**2 * (2.0 * np.arange(points) + 1.0)
         squares = (
-            max(compound.second_moment - float(odd @ up.most) - 2.0 * top * means[1], 0.0),
-            max(compound.second_moment - float(odd @ down.least) - 2.0 * top * means[0], 0.0),
+            max(compound.second_moment - float(odd @ most) - 2.0 * top * means[1], 0.0),
+            max(compound.second_moment - float(odd @ least) - 2.0 * top * means[0], 0.0),
         )
     return (
-        LatticeBound(engine, compound, False, step, down.least, means[0], squares[0]),
-        LatticeBound(engine, compound, True, step, up.most, means[1], squares[1]),
+        LatticeBound(engine, compound, False, step, least, means[0], squares[0]),
+        LatticeBound(engine, compound, True, step, most, means[1], squares[1]),
     )
 
 

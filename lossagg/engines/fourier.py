@@ -19,6 +19,7 @@ from lossagg.engines.bound import LatticeBound
 from lossagg.engines.compound import CompoundSum
 from lossagg.engines.exact import ExactEngine, Rounded, bracket
 from lossagg.engines.lattice import LatticeLoss
+from lossagg.engines.limited import LimitedMeans
 from lossagg.engines.pair import PairPlan
 from lossagg.engines.pair_sum import paired_loss
 from lossagg.engines.placed import Line
@@ -67,8 +68,8 @@ class Fourier(ExactEngine):
         step: distance of the lattice points, in money; by default chosen from the accuracy, such that
             deductibles, limits and tabulated sizes fall on lattice points where they can.
         accuracy: width asked of the bracket of VaR 99.5 %, relative to it; VaR 99.9 % may take twice
-            that. Not used when both `points` and `step` are given. Where a quantile is close to zero
-            the width is relative to a hundredth of the amount exceeded once in 10,000 years.
+            that. Not used when both `points` and `step` are given. Where a quantile is below a thousandth
+            of the amount exceeded once in 10,000 years, the width is relative to a hundredth of that.
 
     Raises:
         InputError: a setting outside its range.
@@ -155,7 +156,9 @@ class Fourier(ExactEngine):
 
     def _refined(self, compound: CompoundSum, coarse: Quantiles) -> _Pass:
         """The pass on the coarsest lattice that gives the accuracy asked for, or the best allowed."""
-        step = min(coarse.step_for(self.accuracy), coarse.reach(LEAST_REACH) / _LEAST_POINTS)
+        reach = coarse.reach(LEAST_REACH)
+        rounded, limited = (coarse.step_for(self.accuracy, limited=flag) for flag in (False, True))
+        step = min(max(rounded, min(limited, reach / _EASY_POINTS)), reach / _LEAST_POINTS)
         best, shortfall = None, np.inf
         for _ in range(_PASSES):
             step = max(step, coarse.reach(REACHES[-1]) / (MOST_POINTS - 2))
@@ -166,10 +169,14 @@ class Fourier(ExactEngine):
             worst = max(width / (factor * self.accuracy) for _, width, factor in current.widths(coarse))
             if best is not None and worst > max(0.8 * shortfall, _CLOSE):
                 return best if worst >= shortfall else current
+            power = 1.0
+            if best is not None and worst < shortfall:
+                # The width falls with the step, but often more slowly: as fast as from pass to pass.
+                power = np.log(best.step / current.step) / np.log(shortfall / worst)
             best, shortfall = current, worst
             if worst <= _CLOSE or current.points > 0.9 * MOST_POINTS:
                 return current
-            step = 0.9 * current.step / worst
+            step = current.step * (0.9 / worst) ** float(np.clip(power, 1.0, 3.0))
         return best if best is not None else current
 
 
@@ -196,6 +203,7 @@ class _Pass:
     transform: LatticeTransform
     low: LatticeBound
     high: LatticeBound
+    limited: LimitedMeans | None
 
     @classmethod
     def over(cls, compound: CompoundSum, step: float, points: int) -> _Pass:
@@ -207,14 +215,15 @@ class _Pass:
             least = bounded_survival(total, upper=False, wrapped=transform.wrapped)
             most = bounded_survival(total, upper=True, wrapped=transform.wrapped)
             rounded.append(Rounded(least, most, step * inside))
-        low, high = bracket("fourier", compound, step, *rounded)
-        return cls(compound, step, points, transform, low, high)
+        limited = transform.limited(step)
+        low, high = bracket("fourier", compound, step, rounded[0], rounded[1], limited)
+        return cls(compound, step, points, transform, low, high, limited)
 
     def widths(self, coarse: Quantiles) -> Iterator[tuple[float, float, float]]:
         """(level, relative width of the bracket, how many times the accuracy it may be)."""
         for level, factor in LEVELS:
-            width = self.high.value_at_risk(level) - self.low.value_at_risk(level)
-            yield level, width / coarse.scale(level), factor
+            low, high = self.low.value_at_risk(level), self.high.value_at_risk(level)
+            yield level, (high - low) / coarse.scale(low), factor
 
     def loss(self) -> LatticeLoss:
         """The annual loss on this lattice."""
@@ -231,4 +240,5 @@ class _Pass:
             tie=8.0 * float(even.slack[0]),
             low=self.low,
             high=self.high,
+            limited=self.limited,
         )

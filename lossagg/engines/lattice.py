@@ -20,6 +20,7 @@ import numpy as np
 from lossagg.arrays import FloatArray, Floats, elementwise, require_probability
 from lossagg.engines.bound import LatticeBound
 from lossagg.engines.compound import CompoundSum
+from lossagg.engines.limited import LimitedMeans
 from lossagg.engines.result import AnnualLoss, BracketedAnnualLoss
 from lossagg.engines.running import running_sums
 from lossagg.engines.tail import Tail
@@ -43,6 +44,7 @@ class LatticeLoss(BracketedAnnualLoss):
         tie: probabilities closer than this are the same, the round-off of the engine.
         low: lower bound in stochastic order.
         high: upper bound in stochastic order.
+        limited: tighter bounds of the limited means, where the engine has them.
     """
 
     engine: str
@@ -55,6 +57,7 @@ class LatticeLoss(BracketedAnnualLoss):
     tie: float
     low: LatticeBound
     high: LatticeBound
+    limited: LimitedMeans | None = None
 
     def __repr__(self) -> str:
         return f"LatticeLoss(engine={self.engine!r}, points={len(self.density)}, step={self.step:.6g})"
@@ -94,13 +97,45 @@ class LatticeLoss(BracketedAnnualLoss):
 
     def tail_value_at_risk(self, level: float) -> float:
         """VaR + E[(S - VaR)+] / (1 - level), inside its bracket; `inf` where the mean is."""
-        value = super().tail_value_at_risk(level)
-        return min(max(value, self.low.tail_value_at_risk(level)), self.high.tail_value_at_risk(level))
+        low, high = self._tail_bracket(level)
+        return min(max(super().tail_value_at_risk(level), low), high)
 
     def layer_mean(self, low: float, high: float = np.inf) -> float:
         """E[min((S - low)+, high - low)]; with `high` infinite, the exact mean less the integral below."""
-        value = self._layer_mean(low, high)
-        return min(max(value, self.low.layer_mean(low, high)), self.high.layer_mean(low, high))
+        least, most = self.layer_bracket(low, high)
+        return min(max(self._layer_mean(low, high), least), most)
+
+    def layer_bracket(self, low: float, high: float = np.inf) -> tuple[float, float]:
+        """Guaranteed bounds of `layer_mean`."""
+        least, most = self.low.layer_mean(low, high), self.high.layer_mean(low, high)
+        limited = self.limited
+        if limited is None or low >= limited.top:
+            return least, most
+        if high <= limited.top:
+            below, above = limited.layer(low, high)
+        elif high == np.inf and self.compound.mean < np.inf:
+            first, second = limited.bounds(low)
+            below, above = self.low.mean() - second, self.high.mean() - first
+        else:
+            below, above = limited.layer(low, limited.top)
+            below += self.low.layer_mean(limited.top, high)
+            above += self.high.layer_mean(limited.top, high)
+        return max(least, below), min(most, above)
+
+    def accuracy(self, measure: str, level: float | None = None) -> tuple[float, float]:
+        """The guaranteed bracket."""
+        if measure == "tail_value_at_risk" and level is not None:
+            return self._tail_bracket(require_probability(level, "level", open_low=True, open_high=True))
+        return super().accuracy(measure, level)
+
+    def _tail_bracket(self, level: float) -> tuple[float, float]:
+        low, high = self.low.tail_value_at_risk(level), self.high.tail_value_at_risk(level)
+        last = self.high.value_at_risk(level)
+        if self.limited is None or last > self.limited.top or self.compound.mean == np.inf:
+            return low, high
+        means = self.low.mean(), self.high.mean()
+        below, above = self.limited.tail(level, self.low.value_at_risk(level), last, means)
+        return max(low, below), min(high, above)
 
     def _layer_mean(self, low: float, high: float) -> float:
         if low >= self.top:

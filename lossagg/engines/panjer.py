@@ -3,9 +3,9 @@
 Independent of the Fourier engine in how it puts a payment on the lattice (differences of the survival
 function at the middle of the cells, then the mean restored), and in how it adds payments up: Panjer's
 recursion for Poisson and negative binomial counts, repeated convolution for binomial counts, where the
-recursion is unstable (Panjer and Wang 1993), and direct convolution of the lines. Poisson lines are
-first joined into one compound Poisson sum. The work grows with the square of the number of points, so
-its lattice is coarser and its bracket wider than the Fourier engine's.
+recursion is unstable (Panjer and Wang 1993), and for tables of counts, and direct convolution of the lines.
+Poisson lines are first joined into one compound Poisson sum. The work grows with the square of the number
+of points, so its lattice is coarser and its bracket wider than the Fourier engine's.
 """
 
 from __future__ import annotations
@@ -17,13 +17,16 @@ import numpy as np
 
 from lossagg.arrays import FloatArray, require_positive
 from lossagg.engines.compound import CompoundSum
+from lossagg.engines.counted import countable, sums_of
 from lossagg.engines.exact import ExactEngine, Rounded, bracket
 from lossagg.engines.lattice import LatticeLoss
+from lossagg.engines.limited import LimitedMeans
 from lossagg.engines.quantiles import LEAST_REACH, REACHES, Quantiles
 from lossagg.engines.recursive import Lines
 from lossagg.engines.running import running_sums
 from lossagg.engines.span import arithmetic_span, fitting_step
 from lossagg.errors import EngineError, InputError
+from lossagg.families import Poisson
 
 MOST_POINTS = 2**17
 _COARSE_POINTS = 2**10
@@ -85,7 +88,8 @@ class Panjer(ExactEngine):
         )
         down = _rounded(lines.down(), compound, step, [masses.down for masses in lines.masses])
         up = _rounded(lines.up(), compound, step, [masses.up for masses in lines.masses])
-        low, high = bracket("panjer", compound, step, down, up)
+        limited = _limited(lines, step)
+        low, high = bracket("panjer", compound, step, down, up, limited)
         return LatticeLoss(
             engine="panjer",
             compound=compound,
@@ -97,6 +101,7 @@ class Panjer(ExactEngine):
             tie=slack / 64.0,
             low=low,
             high=high,
+            limited=limited,
         )
 
     def _lattice(self, compound: CompoundSum) -> tuple[float, int]:
@@ -111,11 +116,22 @@ class Panjer(ExactEngine):
             return fitting_step(compound, reach / (self.points - 1), longer=True), self.points
         span = arithmetic_span(compound)
         if span is not None and reach / span + 2 <= _LEAST_POINTS:
-            return span, int(reach / span) + 2
+            return span, int(max(quantiles.far_points(span, easy=_LEAST_POINTS, most=0), reach / span + 2))
         wanted = int(min(reach / quantiles.step_for(_ACCURACY), MOST_POINTS))
         points = min(max(_LEAST_POINTS, wanted), _most_points(compound, reach))
         step = fitting_step(compound, reach / points, longer=True)
         return step, int(reach / step) + 2
+
+
+def _limited(lines: Lines, step: float) -> LimitedMeans | None:
+    """Bounds of the limited means, from payments with their means kept."""
+    kept = lines.kept()
+    if kept is None:
+        return None
+    probabilities, slack, gap = kept
+    survival = 1.0 - running_sums(probabilities)
+    least, most = (np.minimum.accumulate(np.clip(survival + off, 0.0, 1.0)) for off in (-slack, slack))
+    return LimitedMeans.of(step, least, most, gap)
 
 
 def _rounded(
@@ -156,19 +172,22 @@ def _affordable(quantiles: Quantiles, step: float) -> int:
 def _most_points(compound: CompoundSum, reach: float) -> int:
     """Points at which one recursion or convolution stays within the work allowed: their square times
     the part of the lattice that single payments cover."""
-    widths = [
-        part.payment.upper(min(_NEGLIGIBLE / part.frequency.mean(), 0.5)) / reach for part in compound.parts
-    ]
-    others = sum((part.frequency.recursion or (0.0,))[0] != 0.0 for part in compound.parts)
-    share = max(min(max(widths), 1.0), 0.25 * min(others, 4) if len(compound.parts) > 1 else 0.0)
+    share = 0.0
+    for count, payment in compound.parts:
+        width = min(payment.upper(min(_NEGLIGIBLE / count.mean(), 0.5)) / reach, 1.0)
+        share = max(share, width * sums_of(count))
+    others = sum(not isinstance(part.frequency, Poisson) for part in compound.parts)
+    if len(compound.parts) > 1:
+        share = max(share, 0.25 * min(others, 4))
     return int(min(np.sqrt(_WORK / max(share, 1e-6)), MOST_POINTS))
 
 
 def _require_recursion(compound: CompoundSum) -> None:
     for count, _ in compound.parts:
-        if count.recursion is None:
+        if not countable(count):
             raise EngineError(
-                "Panjer's recursion needs a Poisson, negative binomial or binomial count",
+                "Panjer's recursion needs a Poisson, negative binomial or binomial count, one of these with "
+                "its own probability of no loss, or a table of up to 1,000 counts",
                 value=count.family,
                 remedy="The fourier engine and the simulation take any count.",
             )

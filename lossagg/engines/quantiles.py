@@ -20,6 +20,7 @@ LEAST_REACH = 1e-4
 REACHES = (1e-8, 1e-7, 1e-6, 1e-5, 3e-5, LEAST_REACH, 2e-4, 4e-4)
 # Levels whose brackets are watched, and how many times the accuracy each may be wide.
 LEVELS = ((0.995, 1.0), (0.999, 2.0))
+_CLOSE_TO_ZERO, _LEAST_SCALE = 0.001, 0.01
 _TRIES = 60
 
 
@@ -94,17 +95,26 @@ class Quantiles:
                 return points
         return most
 
-    def scale(self, level: float) -> float:
-        """The amount that the width of a bracket is judged against."""
-        return max(self.amount(1.0 - level), 0.01 * self.reach(LEAST_REACH))
+    def scale(self, quantile: float) -> float:
+        """The amount that the width of a quantile's bracket is judged against: the quantile, or where it is
+        close to zero a part of the amount exceeded once in 10,000 years."""
+        reach = self.reach(LEAST_REACH)
+        return quantile if quantile > _CLOSE_TO_ZERO * reach else _LEAST_SCALE * reach
 
-    def step_for(self, accuracy: float) -> float:
-        """The step expected to give brackets of this accuracy; `inf` where nothing is rounded."""
+    def step_for(self, accuracy: float, *, limited: bool = False) -> float:
+        """The step expected to give brackets of this accuracy; `inf` where nothing is rounded.
+
+        Args:
+            accuracy: relative width.
+            limited: whether the bracket uses bounds of limited means, where n losses move a quantile by
+                sqrt(2 n) steps, not by n.
+        """
         off_lattice = tuple(payment.continuous_mass for _, payment in self.compound.parts)
         steps = [np.inf]
         for level, factor in LEVELS:
             events = self.compound.rounded_events(self.amount(1.0 - level), off_lattice)
-            steps.append(0.9 * factor * accuracy * self.scale(level) / max(events, 1.0))
+            moved = max(min(events, np.sqrt(2.0 * events) + 1.0) if limited else events, 1.0)
+            steps.append(0.9 * factor * accuracy * self.scale(self.amount(1.0 - level)) / moved)
         return float(min(steps))
 
 

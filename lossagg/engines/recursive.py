@@ -1,9 +1,9 @@
-"""Payments on a lattice and their sums, the Panjer way; nothing here is shared with the Fourier engine.
+"""Payments on a lattice and their sums over lines, the Panjer way; nothing here is shared with the Fourier
+engine.
 
-A payment is put on the lattice by differences of its survival function. Poisson and negative binomial
-counts go through Panjer's recursion, started at the logarithm of its first value; a binomial count, for
-which the recursion is unstable, through repeated squaring of one trial by direct convolution; lines are
-added up by direct convolution, after Poisson lines have been joined into one compound Poisson sum.
+A payment is put on the lattice by differences of its survival function; the sum of a line's payments is
+that of `counted`. Lines are added up by direct convolution, after Poisson lines have been joined into one
+compound Poisson sum.
 """
 
 from __future__ import annotations
@@ -13,10 +13,13 @@ from typing import NamedTuple
 import numpy as np
 
 from lossagg.arrays import FloatArray
-from lossagg.engines.compound import CompoundSum, Part
+from lossagg.engines.compound import CompoundSum
+from lossagg.engines.counted import counted, log_none
 from lossagg.engines.payment import PaymentLaw
+from lossagg.engines.size_biased import size_biased
+from lossagg.families import Poisson
+from lossagg.families.base import CountLaw
 
-_NEGLIGIBLE = 1e-17
 _EPSILON = float(np.finfo(float).eps)
 
 
@@ -28,12 +31,16 @@ class Masses(NamedTuple):
         down: rounded down.
         up: rounded up.
         atoms: the part of `nearest` that are atoms, zero included.
+        kept: moved to the two nearest points with the mean kept.
+        bulge: by cell, a bound of E[u (1 - u)] over the position u of a payment in its cell.
     """
 
     nearest: FloatArray
     down: FloatArray
     up: FloatArray
     atoms: FloatArray
+    kept: FloatArray
+    bulge: FloatArray
 
 
 def severity_masses(payment: PaymentLaw, step: float, points: int) -> Masses:
@@ -52,6 +59,12 @@ def severity_masses(payment: PaymentLaw, step: float, points: int) -> Masses:
     nearest = np.concatenate(([payment.continuous_mass], middle[:-1])) - middle
     target = float(payment.continuous_areas(np.array([0.0, grid[-1]]))[0]) / step
     nearest = _with_mean(nearest, target - points * float(middle[-1]))
+    # The part of each cell's probability that belongs to its far end, if its mean is to be kept.
+    far = np.clip(payment.continuous_areas(grid) / step - above[1:], 0.0, down)
+    kept = down - far
+    kept[1:] += far[:-1]
+    with np.errstate(divide="ignore", invalid="ignore"):
+        bulge = np.where(down > 0, far * (1.0 - far / down), 0.0)
     atoms = np.zeros(points)
     for amount, chance in zip(*(values.tolist() for values in payment.atoms), strict=True):
         place = amount / step
@@ -65,7 +78,9 @@ def severity_masses(payment: PaymentLaw, step: float, points: int) -> Masses:
         ):
             if share > 0 and index < points:
                 target_masses[index] += chance * share
-    return Masses(nearest + atoms, down, up, atoms)
+        if below < points:
+            bulge[below] += chance * part * (1.0 - part)
+    return Masses(nearest + atoms, down, up, atoms, kept + atoms, bulge)
 
 
 def _with_mean(masses: FloatArray, mean: float) -> FloatArray:
@@ -84,11 +99,27 @@ def _with_mean(masses: FloatArray, mean: float) -> FloatArray:
     return np.asarray(masses - moved + arrived)
 
 
+class Group(NamedTuple):
+    """Lines whose payments are one compound sum: a single line, or all Poisson lines together.
+
+    Attributes:
+        frequency: law of the number of payments.
+        masses: one payment on the lattice, shape (n,).
+        positive: one less the mass at zero, without cancellation.
+        bulge: that of the masses, see `Masses`.
+    """
+
+    frequency: CountLaw
+    masses: FloatArray
+    positive: float
+    bulge: FloatArray
+
+
 class Lines:
     """All lines of a sum on one lattice.
 
     Args:
-        compound: the sum; every count law has a recursion.
+        compound: the sum; every count law is `countable`.
         step: distance of the lattice points.
         points: number of lattice points.
     """
@@ -110,95 +141,82 @@ class Lines:
         """The sum of payments rounded up."""
         return self._total([masses.up for masses in self.masses])
 
+    def kept(self) -> tuple[FloatArray, float, FloatArray] | None:
+        """The sum of payments with their means kept, a bound of the round-off in it, and by point x a bound
+        of E[min(S, x)] less that of this sum, in steps (see `limited`).
+
+        None where no payment is moved, or a count law does not say how many other losses there are.
+        """
+        groups = self._groups([masses.kept for masses in self.masses])
+        others = [size_biased(group.frequency) for group in groups]
+        if not any(masses.bulge.any() for masses in self.masses):
+            return None
+        total, slack, gap = _nothing(self.points), 0.0, np.zeros(self.points)
+        for index, (group, law) in enumerate(zip(groups, others, strict=True)):
+            if law is None:
+                return None
+            one, off = counted(group.frequency, group.masses, group.positive)
+            seen, far_off = (
+                (one, off) if law == group.frequency else counted(law, group.masses, group.positive)
+            )
+            own = group.frequency.mean() * _sum_of_two(group.bulge, seen)
+            gap = own if index == 0 else _sum_of_two(gap, one) + _sum_of_two(total, own)
+            total = one if index == 0 else _sum_of_two(total, one)
+            slack += off + far_off + (8.0 * self.points * _EPSILON)
+        return total, slack, gap * (1.0 + slack)
+
     def atoms(self) -> tuple[FloatArray, float]:
         """Probabilities of sums made of atoms alone, and the probability of any other sum."""
         continuous = [part.payment.continuous_mass for part in self.parts]
         log_atoms = sum(
-            log_start(*_class_of(part), mass) for part, mass in zip(self.parts, continuous, strict=True)
+            log_none(part.frequency, mass) for part, mass in zip(self.parts, continuous, strict=True)
         )
         if any(masses.atoms[1:].any() for masses in self.masses):
             alone, _ = self._total([masses.atoms for masses in self.masses])
         else:
             alone = np.zeros(self.points)
-            alone[0] = np.exp(sum(log_start(*_class_of(part), part.payment.paying) for part in self.parts))
+            alone[0] = np.exp(sum(log_none(part.frequency, part.payment.paying) for part in self.parts))
         return alone, float(-np.expm1(log_atoms)) if sum(continuous) > 0 else 0.0
 
     def _total(self, masses: list[FloatArray]) -> tuple[FloatArray, float]:
-        from lossagg.kernels.convolution import direct_convolution
-
-        lines = list(zip(self.parts, masses, strict=True))
-        poisson = [(part, one) for part, one in lines if _class_of(part)[0] == 0.0]
-        sums = [_compound_poisson(poisson)] if poisson else []
-        sums += [_compound(part, one) for part, one in lines if _class_of(part)[0] != 0.0]
-        total, slack = np.zeros(self.points), 0.0
-        total[0] = 1.0
-        for index, (one, off) in enumerate(sums):
-            total = one if index == 0 else direct_convolution(total, one, self.points)
+        total, slack = _nothing(self.points), 0.0
+        for index, group in enumerate(self._groups(masses)):
+            one, off = counted(group.frequency, group.masses, group.positive)
+            total = one if index == 0 else _sum_of_two(total, one)
             slack += off + (4.0 * self.points * _EPSILON if index else 0.0)
         return total, slack
 
-
-def log_start(a: float, b: float, positive: float) -> float:
-    """log pgf(1 - positive) of a count of the class (a, b), without cancellation and without underflow."""
-    if a == 0.0:
-        return -b * positive
-    return -(a + b) / a * float(np.log1p(a * positive / (1.0 - a)))
-
-
-def _class_of(part: Part) -> tuple[float, float]:
-    return part.frequency.recursion or (0.0, 0.0)
-
-
-def _compound_poisson(lines: list[tuple[Part, FloatArray]]) -> tuple[FloatArray, float]:
-    """Poisson lines as one compound Poisson sum: rates add up, payments mix by rate (Bowers et al. 1997,
-    theorem 12.4.1)."""
-    rates = np.array([part.frequency.mean() for part, _ in lines])
-    mixed = rates @ np.array([one for _, one in lines]) / rates.sum()
-    positive = float(rates @ np.array([_positive(*line) for line in lines])) / float(rates.sum())
-    return _recursive(0.0, float(rates.sum()), mixed, positive)
+    def _groups(self, masses: list[FloatArray]) -> list[Group]:
+        """Poisson lines as one: rates add up, payments mix by rate (Bowers et al. 1997, theorem 12.4.1)."""
+        lines = [
+            Group(part.frequency, one, _positive(part.payment, one), own.bulge)
+            for part, one, own in zip(self.parts, masses, self.masses, strict=True)
+        ]
+        poisson = [line for line in lines if isinstance(line.frequency, Poisson)]
+        if len(poisson) > 1:
+            rates = np.array([line.frequency.mean() for line in poisson])
+            shares = rates / rates.sum()
+            mixed = [
+                sum(share * np.asarray(value) for share, value in zip(shares, values, strict=True))
+                for values in list(zip(*poisson, strict=True))[1:]
+            ]
+            poisson = [Group(Poisson(mean=float(rates.sum())), mixed[0], float(mixed[1]), mixed[2])]
+        return poisson + [line for line in lines if not isinstance(line.frequency, Poisson)]
 
 
-def _compound(part: Part, masses: FloatArray) -> tuple[FloatArray, float]:
-    a, b = _class_of(part)
-    method = _recursive if a > 0 else _power
-    return method(a, b, masses, _positive(part, masses))
-
-
-def _positive(part: Part, masses: FloatArray) -> float:
-    """One less the mass at zero, without cancellation where hardly anything is paid."""
-    paying = part.payment.paying
-    return paying - (float(masses[0]) - (1.0 - paying))
-
-
-def _recursive(a: float, b: float, masses: FloatArray, positive: float) -> tuple[FloatArray, float]:
-    """Panjer's recursion, started at the logarithm of its first value.
-
-    All its terms are positive, so relative errors add up and are never amplified (Panjer and Wang 1993).
-    """
-    from lossagg.kernels.recursion import panjer_recursion
-
-    points, start = len(masses), log_start(a, b, positive)
-    beyond = np.cumsum(masses[::-1])[::-1]
-    used = max(int(np.sum(beyond > _NEGLIGIBLE / max(a + b, 1.0))), 1)
-    relative, scale = panjer_recursion(a, b, (1.0 - a) + a * positive, masses[:used], points)
-    with np.errstate(under="ignore"):
-        return relative * np.exp(start + scale), 8.0 * _EPSILON * (points + abs(start))
-
-
-def _power(a: float, b: float, masses: FloatArray, positive: float) -> tuple[FloatArray, float]:
-    """A binomial count: the payment of one trial, convolved with itself by repeated squaring."""
-    from lossagg.kernels.convolution import direct_convolution
-
-    points, trials, chance = len(masses), round(-(a + b) / a), -a / (1.0 - a)
-    square = chance * masses
-    square[0] = 1.0 - chance * positive
+def _nothing(points: int) -> FloatArray:
+    """The law of an amount that is always zero."""
     total = np.zeros(points)
     total[0] = 1.0
-    slack = 4.0 * _EPSILON * (trials + points * trials.bit_length())
-    while trials:
-        if trials & 1:
-            total = direct_convolution(total, square, points)
-        trials >>= 1
-        if trials:
-            square = direct_convolution(square, square, points)
-    return total, slack
+    return total
+
+
+def _sum_of_two(left: FloatArray, right: FloatArray) -> FloatArray:
+    from lossagg.kernels.convolution import direct_convolution
+
+    return direct_convolution(left, right, len(right))
+
+
+def _positive(payment: PaymentLaw, masses: FloatArray) -> float:
+    """One less the mass at zero, without cancellation where hardly anything is paid."""
+    return payment.paying - (float(masses[0]) - (1.0 - payment.paying))

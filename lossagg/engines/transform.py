@@ -24,6 +24,8 @@ from scipy import fft
 
 from lossagg.arrays import FloatArray, IntArray
 from lossagg.engines.compound import CompoundSum, Part
+from lossagg.engines.limited import LimitedMeans
+from lossagg.engines.pgf_slope import pgf_slope
 from lossagg.engines.running import running_sums
 from lossagg.engines.sampling import Masses, severity_masses
 from lossagg.families.base import CountLaw
@@ -112,6 +114,32 @@ class LatticeTransform:
             transform = self._of(line.masses.even + line.masses.atoms_even)
             product *= line.frequency.pgf(line.none + transform + line.masses.under[0] / self._shift)
         return self._back(product)
+
+    def limited(self, step: float) -> LimitedMeans | None:
+        """Bounds of the limited means from payments moved to the two nearest points with their means kept.
+        None where nothing is moved, or where the derivative of a count's generating function is not known.
+        """
+        if not any(line.masses.bulge.any() for line in self.lines):
+            return None
+        product, rising = self._one(), np.zeros(len(self._shift), dtype=np.complex128)
+        mean, spread = 0.0, 0.0
+        for line in self.lines:
+            one = line.none + self._of(line.masses.spread + line.masses.atoms_even)
+            pgf = line.frequency.pgf(one)
+            slope = pgf_slope(line.frequency, one, pgf)
+            if slope is None:
+                return None
+            rising *= pgf
+            rising += product * slope * self._of(line.masses.bulge)
+            product *= pgf
+            mean += line.frequency.mean()
+            spread += line.frequency.variance() / line.frequency.mean()
+        tilted = np.asarray(fft.irfft(rising, self.length))
+        relative = 4.0 * _EPSILON * (np.log2(self.length) + mean + spread)
+        off = relative * float(np.sqrt(np.sum(tilted**2)))
+        total = self._back(product)
+        least, most = (bounded_survival(total, upper=upper, wrapped=self.wrapped) for upper in (False, True))
+        return LimitedMeans.of(step, least, most, (tilted[: self.points] + off) / self._weights)
 
     def atoms(self) -> tuple[FloatArray, float]:
         """Probabilities of sums made of atoms alone, shape (n,), and the probability of any other sum."""

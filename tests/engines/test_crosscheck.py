@@ -123,7 +123,7 @@ def test_exact_engines_outside_each_others_bracket_are_stopped_and_named() -> No
         book, {"fourier": lossagg.Fourier().book(book), "panjer": lossagg.Panjer().book(other)}, LEVELS
     )
     assert not result.agrees
-    assert "is outside fourier's bracket" in (find(result, "value_at_risk", 0.99).note or "")
+    assert "is outside panjer's bracket" in (find(result, "value_at_risk", 0.99).note or "")
 
 
 def test_engines_that_differ_on_whether_a_mean_exists_are_stopped() -> None:

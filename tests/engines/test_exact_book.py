@@ -79,13 +79,16 @@ def test_the_engines_are_deterministic(engine):
 
 
 def test_counts_outside_the_recursion_are_refused_by_name():
-    """Panjer's engine refuses a table of counts and says who takes it; other lines are computed."""
-    odd = Line(name="odd", frequency=CountTable(probabilities=[0.5, 0.5]), severity=Exponential(mean=10.0))
+    """Panjer's engine refuses a table of more counts than it can add up one by one and says who takes it;
+    other lines are computed."""
+    many = CountTable(probabilities=[0.5, *[0.0] * 1000, 0.5])
+    odd = Line(name="odd", frequency=many, severity=Exponential(mean=10.0))
     result = Panjer().book(Book(lines=(odd, THEFT)))
     assert set(result.losses) == {Subject("line", "theft")}
     reason = result.refused[GROSS]
     assert reason == (
-        "Panjer's recursion needs a Poisson, negative binomial or binomial count; seen: 'count-table'. "
+        "Panjer's recursion needs a Poisson, negative binomial or binomial count, one of these with its own "
+        "probability of no loss, or a table of up to 1,000 counts; seen: 'count-table'. "
         "The fourier engine and the simulation take any count."
     )
     with pytest.raises(EngineError, match="simulation"):

@@ -4,8 +4,8 @@ import numpy as np
 import oracle
 import pytest
 
+from lossagg.engines.counted import log_start
 from lossagg.engines.panjer import Panjer
-from lossagg.engines.recursive import log_start
 from lossagg.families import Binomial, NegativeBinomial, Poisson, SizeTable
 from lossagg.kernels.convolution import direct_convolution
 from lossagg.kernels.recursion import panjer_recursion

@@ -11,9 +11,10 @@ import pytest
 from lossagg.cover import Cover, Schedule
 from lossagg.engines.book import GROSS, Book, Line
 from lossagg.engines.compound import CompoundSum
+from lossagg.engines.exact import Rounded, bracket
 from lossagg.engines.fourier import Fourier
 from lossagg.engines.panjer import Panjer
-from lossagg.engines.transform import LatticeTransform
+from lossagg.engines.transform import LatticeTransform, bounded_survival
 from lossagg.families import (
     Binomial,
     CountTable,
@@ -383,7 +384,7 @@ def test_c34_a_thousand_heavy_losses():
 
 
 @engines
-def test_d6_self_check_of_the_practice_note(engine):
+def test_compound_poisson_by_hand(engine):
     """Compound Poisson(2) on {1, 2, 3}: P(S = 5) = (437/600) exp(-2) and risk measures, by hand from the
     recursion."""
     loss = engine.annual_loss(Poisson(mean=2), table([0, 0.5, 0.3, 0.2]))
@@ -422,14 +423,31 @@ def test_d7_far_tail():
         (50, 1_297_700, 1_298_400),
     ],
 )
-def test_bracket_of_the_practice_note(step, low, high):
+def test_bracket_by_rounding(step, low, high):
     """Poisson(12)-lognormal(9, 1.5) limited to 1m: bracket of VaR 99.5 % by rounding down and up, four steps,
-    computed separately to the point; TVaR at the finest step."""
+    computed separately to the point; TVaR at the finest step. The engine's bracket lies inside."""
     loss = Fourier(step=step).annual_loss(Poisson(mean=12), Lognormal(mu=9, sigma=1.5), Cover(limit=1e6))
-    assert loss.accuracy("value_at_risk", 0.995) == pytest.approx((low, high), rel=1e-12)
-    assert low < loss.value_at_risk(0.995) < high
+    plain = rounded_bracket(loss)
+    assert [side.value_at_risk(0.995) for side in plain] == pytest.approx((low, high), rel=1e-12)
     if step == 50:
-        assert loss.accuracy("tail_value_at_risk", 0.995) == pytest.approx((1_488_239, 1_488_959), abs=1)
+        tails = [side.tail_value_at_risk(0.995) for side in plain]
+        assert tails == pytest.approx((1_488_239, 1_488_959), abs=1)
+    for measure in ("value_at_risk", "tail_value_at_risk"):
+        outer, inner = [side.measure(measure, 0.995) for side in plain], loss.accuracy(measure, 0.995)
+        assert outer[0] <= inner[0] < loss.measure(measure, 0.995) < inner[1] <= outer[1]
+
+
+def rounded_bracket(loss):
+    """The bracket of a loss from payments rounded down and up alone."""
+    transform = LatticeTransform(loss.compound, loss.step, loss.points)
+    rounded = []
+    for total, upward in zip(transform.sides(), (False, True), strict=True):
+        least, most = (
+            bounded_survival(total, upper=upper, wrapped=transform.wrapped) for upper in (False, True)
+        )
+        inside = sum(line.expected_rounded(np.arange(loss.points), upward) for line in transform.lines)
+        rounded.append(Rounded(least, most, loss.step * inside))
+    return bracket("fourier", loss.compound, loss.step, *rounded)
 
 
 @pytest.mark.parametrize(
@@ -441,7 +459,7 @@ def test_bracket_of_the_practice_note(step, low, high):
         (100e3, 226_920.16, 110_466.29, (375_700, 428_650, 535_950), 594_014),
     ],
 )
-def test_option_table_of_the_practice_note(deductible, mean, sd, quantiles, tail):
+def test_what_deductibles_keep(deductible, mean, sd, quantiles, tail):
     """What deductibles keep of Poisson(12)-lognormal(9, 1.5): closed-form moments; quantiles computed
     separately on a lattice of 50, checked by four million simulated years."""
     loss = Fourier().annual_loss(Poisson(mean=12), Lognormal(mu=9, sigma=1.5), Cover(limit=deductible))
@@ -540,7 +558,7 @@ def test_d33_sundt_reinstatements(engine):
 
 
 @engines
-def test_reinstatement_of_the_practice_note(engine):
+def test_reinstatements_by_hand(engine):
     """Poisson(2) on {1, 2, 3}, layer 2 in excess of 1, by hand: with one reinstatement 1.3380243637, with
     an annual retention of 1 and limit 2 .6094157124."""
     size = table([0, 0.5, 0.3, 0.2])
@@ -560,7 +578,7 @@ def test_d35_layer_of_an_exponential(engine):
     assert loss.cdf(0) == pytest.approx(0.162091874309, rel=1e-9)
 
 
-def test_lomax_retained_of_the_practice_note():
+def test_lomax_retained():
     """Lomax(3, 2000), Poisson(8), 500 kept of each loss: mean 2,880, sd sqrt(8 * 160,000) = 1131.3708."""
     loss = Fourier().annual_loss(Poisson(mean=8), Lomax(alpha=3, scale=2000), Cover(limit=500))
     assert loss.mean() == pytest.approx(2880, rel=1e-12)
@@ -591,7 +609,19 @@ def test_fourier_masses_of_the_textbook_example():
     )
     masses = LatticeTransform(compound, 2.0, 64).lines[0].masses
     plain = [0.0936537653899, 0.164292699398, 0.134511485504, 0.110128689824, 0.0901657451551]
-    sampled = [plain[k] - (plain[k - 1] - 2 * plain[k] + plain[k + 1]) / 12 for k in (1, 2, 3)]
-    assert masses.even[1:4] == pytest.approx(sampled, abs=1e-12)
-    assert masses.even[0] == pytest.approx(plain[0] - (plain[1] - 2 * plain[0]) / 12, abs=1e-12)
+    assert masses.spread[:5] == pytest.approx(plain, abs=1e-12)
     assert masses.down[:2] == pytest.approx([1 - np.exp(-0.2), np.exp(-0.2) - np.exp(-0.4)], abs=1e-14)
+
+
+def test_fourier_masses_keep_three_moments():
+    """What the Fourier engine adds up has the probability, the mean and the second moment of the law."""
+    law = Exponential(mean=10)
+    compound = CompoundSum.of(
+        (Line(name="x", frequency=CountTable(probabilities=[0, 1]), severity=law),),
+        {"x": Schedule.identity()},
+    )
+    masses = LatticeTransform(compound, 2.0, 400).lines[0].masses
+    places = 2.0 * np.arange(-1.0, 400.0)
+    weights = np.concatenate((masses.under, masses.even))
+    for power, moment in ((0, 1.0), (1, 10.0), (2, 200.0)):
+        assert places**power @ weights == pytest.approx(moment, rel=1e-6)
