@@ -135,12 +135,25 @@ class BracketedAnnualLoss(AnnualLoss):
     def bounds(self) -> tuple[AnnualLoss, AnnualLoss]:
         """Lower and upper distributions in stochastic order: P(low > x) <= P(S > x) <= P(high > x)."""
 
+    def layer_bracket(self, low: float, high: float = np.inf) -> tuple[float, float]:
+        """Guaranteed bounds of `layer_mean`."""
+        first, second = self.bounds()
+        return first.layer_mean(low, high), second.layer_mean(low, high)
+
     def accuracy(self, measure: str, level: float | None = None) -> tuple[float, float]:
-        """The guaranteed bracket: the measure of the lower and of the upper distribution."""
+        """The guaranteed bracket: the measure of the lower and of the upper distribution, a mean within
+        the bracket of its layer."""
         require_measure(measure, level)
         low, high = self.bounds()
         if measure != "sd":
-            return low.measure(measure, level), high.measure(measure, level)
+            least, most = low.measure(measure, level), high.measure(measure, level)
+            if measure == "mean":
+                below, above = self.layer_bracket(0.0)
+                least, most = max(least, below), min(most, above)
+            elif level is not None and measure == "tail_value_at_risk":
+                below, above = self._tail_bracket(level, low, high)
+                least, most = max(least, below), min(most, above)
+            return least, most
         seconds = low.layer_second_moment(0.0), high.layer_second_moment(0.0)
         if not np.isfinite(seconds[1]):
             return float(np.sqrt(max(seconds[0] - high.mean() ** 2, 0.0))) if np.isfinite(
@@ -149,6 +162,21 @@ class BracketedAnnualLoss(AnnualLoss):
         return (
             float(np.sqrt(max(seconds[0] - high.mean() ** 2, 0.0))),
             float(np.sqrt(max(seconds[1] - low.mean() ** 2, 0.0))),
+        )
+
+    def _tail_bracket(self, level: float, low: AnnualLoss, high: AnnualLoss) -> tuple[float, float]:
+        """Bounds of the TVaR from the brackets of the quantile and of layers: v + E[(S - v)+] / (1 - level) is
+        convex in v, least at the quantile, and has the slope 1 - P(S > v) / (1 - level)."""
+        share = 1.0 - level
+        ends = low.value_at_risk(level), high.value_at_risk(level)
+        if not np.isfinite(ends[1]):
+            return -np.inf, np.inf
+        slopes = float(high.sf(ends[0])) / share - 1.0, 1.0 - float(low.sf(ends[1])) / share
+        costs = [self.layer_bracket(end) for end in ends]
+        falls = [(ends[1] - ends[0]) * max(slope, 0.0) for slope in slopes]
+        return (
+            max(end + cost[0] / share - fall for end, cost, fall in zip(ends, costs, falls, strict=True)),
+            min(end + cost[1] / share for end, cost in zip(ends, costs, strict=True)),
         )
 
 
@@ -256,6 +284,13 @@ class TransformedAnnualLoss(BracketedAnnualLoss):
             )
         low, high = self.base.bounds()
         return TransformedAnnualLoss(low, self.payment), TransformedAnnualLoss(high, self.payment)
+
+    def layer_bracket(self, low: float, high: float = np.inf) -> tuple[float, float]:
+        """Guaranteed bounds of `layer_mean`: its pieces are layers of the underlying loss."""
+        if not isinstance(self.base, BracketedAnnualLoss):
+            return super().layer_bracket(low, high)
+        pieces = [(slope, *self.base.layer_bracket(a, b)) for a, b, _, slope in self._within(low, high)]
+        return sum(slope * least for slope, least, _ in pieces), sum(slope * most for slope, _, most in pieces)
 
     def _pieces(self) -> list[tuple[float, float, float, float]]:
         """(start, end, value at start, slope) of every piece."""
