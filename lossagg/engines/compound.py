@@ -1,4 +1,4 @@
-"""The year's sum of payments of one or more independent lines, before anything is discretised.
+"""The year's sum of payments of one or more lines, before anything is discretised.
 
 What is known without a lattice: the exact moments, the law of the largest payment, and how far out the
 distribution must be followed.
@@ -6,6 +6,7 @@ distribution must be followed.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cached_property
 from typing import NamedTuple, Self
@@ -14,8 +15,9 @@ import numpy as np
 
 from lossagg.arrays import FloatArray
 from lossagg.cover import Schedule
-from lossagg.engines.book import Line
-from lossagg.engines.payment import PaymentLaw
+from lossagg.engines.clusters import Alone, Cluster
+from lossagg.engines.payment import Payment, PaymentLaw
+from lossagg.engines.placed import Line
 from lossagg.families.base import CountLaw
 
 # Squares of amounts must not overflow.
@@ -26,18 +28,23 @@ class Part(NamedTuple):
     """One line of a compound sum: its count per year and the payment for each loss."""
 
     frequency: CountLaw
-    payment: PaymentLaw
+    payment: Payment
 
 
 @dataclass(frozen=True)
 class CompoundSum:
-    """Independent lines added up.
+    """Lines added up, independent of each other; see `tied` for those that are not.
 
     Args:
         parts: the lines that can have a payment above zero.
     """
 
     parts: tuple[Part, ...]
+
+    @cached_property
+    def clusters(self) -> tuple[Cluster, ...]:
+        """The lines that depend on each other, together; every line is in one of them."""
+        return tuple(Alone((k,)) for k in range(len(self.parts)))
 
     @classmethod
     def of(cls, lines: tuple[Line, ...], events: dict[str, Schedule]) -> Self:
@@ -60,14 +67,31 @@ class CompoundSum:
 
     @cached_property
     def variance(self) -> float:
-        """Var[S] = E[N] Var[Y] + Var[N] E[Y]**2 over the lines; `inf` where it does not exist."""
+        """Var[S], added up over the clusters; `inf` where it does not exist."""
         total = 0.0
-        for count, payment in self.parts:
-            if payment.second_moment == np.inf:
-                return np.inf
-            spread = max(payment.second_moment - payment.mean**2, 0.0)
-            total += count.mean() * spread + count.variance() * payment.mean**2
+        for cluster in self.clusters:
+            counts, payments = self._of(cluster)
+            means = np.array([payment.mean for payment in payments])
+            seconds = np.array([payment.second_moment for payment in payments])
+            total += cluster.variance(counts, means, seconds)
         return total
+
+    def _of(self, cluster: Cluster) -> tuple[list[CountLaw], list[Payment]]:
+        own = [self.parts[place] for place in cluster.members]
+        return [part.frequency for part in own], [part.payment for part in own]
+
+    def slack(self, step: float, points: int) -> FloatArray | float:
+        """How far P(S > kh) may be off before anything is discretised, shape (points,) or one for all."""
+        return 0.0
+
+    @property
+    def load(self) -> int:
+        """How many times the work and memory of its lines a lattice of this sum takes."""
+        return 1
+
+    def settled(self, survive: Callable[[CompoundSum, float, int], FloatArray]) -> CompoundSum:
+        """The sum ready to be computed: itself, where nothing is integrated numerically; see `TiedSum`."""
+        return self
 
     @property
     def second_moment(self) -> float:
@@ -82,14 +106,20 @@ class CompoundSum:
     @cached_property
     def no_payment(self) -> float:
         """P(S = 0)."""
-        return float(np.prod([count.pgf(1.0 - payment.paying) for count, payment in self.parts]))
+        log_none = 0.0
+        for cluster in self.clusters:
+            counts, payments = self._of(cluster)
+            log_none += float(cluster.log_pgf(counts, [1.0 - payment.paying for payment in payments]))
+        return float(np.exp(log_none))
 
     def largest_sf(self, x: FloatArray) -> FloatArray:
         """P(some payment of the year exceeds x), for increasing x: at most P(S > x)."""
         log_none = np.zeros(x.shape)
         with np.errstate(divide="ignore"):
-            for count, payment in self.parts:
-                log_none += count.log_pgf(np.maximum(1.0 - payment.sf(x), 0.0))
+            for cluster in self.clusters:
+                counts, payments = self._of(cluster)
+                below = [np.maximum(1.0 - payment.sf(x), 0.0) for payment in payments]
+                log_none += cluster.log_pgf(counts, below)
         return -np.expm1(log_none)
 
     def exceedances(self, x: FloatArray) -> FloatArray:
@@ -134,7 +164,12 @@ class CompoundSum:
         With the regression of the count on the sum: E[N | S = x] ~ E[N] + Cov[N, S] / Var[S] (x - E[S]).
         """
         pull = max(x - self.mean, 0.0) / self.variance if 0 < self.variance < np.inf else 0.0
-        return sum(
-            share * (count.mean() + (count.variance() * payment.mean * pull if pull > 0.0 else 0.0))
-            for (count, payment), share in zip(self.parts, off_lattice, strict=True)
-        )
+        total = 0.0
+        for cluster in self.clusters:
+            counts, payments = self._of(cluster)
+            expected = np.array([count.mean() for count in counts])
+            if pull > 0.0:
+                means = np.array([payment.mean for payment in payments])
+                expected = expected + pull * cluster.covariances(counts, means)
+            total += float(expected @ np.array([off_lattice[place] for place in cluster.members]))
+        return total

@@ -21,6 +21,7 @@ from lossagg.engines.compound import CompoundSum
 from lossagg.engines.limited import LimitedMeans
 from lossagg.engines.pair import PairPlan, pair_plan
 from lossagg.engines.result import AnnualLoss, BookResult, TransformedAnnualLoss
+from lossagg.engines.tied import annual_sum
 from lossagg.errors import EngineError
 from lossagg.families.base import CountLaw, SizeLaw
 
@@ -104,7 +105,7 @@ class ExactEngine(ABC):
             return subject, lambda: self.solve_pair(book.independent_lines(two.paid), two), two.beyond
         plan = book.plan(subject) if pair is None or pair.single is None else pair.single
         events = plan.events
-        compound = CompoundSum.of(book.independent_lines(events), events)
+        compound = annual_sum(book, events)
         return frozenset(events.items()), lambda: self.solve(compound), plan.annual
 
 

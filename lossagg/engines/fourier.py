@@ -109,6 +109,7 @@ class Fourier(ExactEngine):
         """
         if not compound.parts:
             return _Pass.over(compound, 1.0, 2).loss()
+        compound = compound.settled(_survival)
         coarse = (
             None
             if self.points and self.step
@@ -156,14 +157,15 @@ class Fourier(ExactEngine):
 
     def _refined(self, compound: CompoundSum, coarse: Quantiles) -> _Pass:
         """The pass on the coarsest lattice that gives the accuracy asked for, or the best allowed."""
+        most = MOST_POINTS // compound.load
         reach = coarse.reach(LEAST_REACH)
         rounded, limited = (coarse.step_for(self.accuracy, limited=flag) for flag in (False, True))
         step = min(max(rounded, min(limited, reach / _EASY_POINTS)), reach / _LEAST_POINTS)
         best, shortfall = None, np.inf
         for _ in range(_PASSES):
-            step = max(step, coarse.reach(REACHES[-1]) / (MOST_POINTS - 2))
+            step = max(step, coarse.reach(REACHES[-1]) / (most - 2))
             fitted = fitting_step(compound, step)
-            if coarse.points(fitted, REACHES[-1]) > MOST_POINTS:
+            if coarse.points(fitted, REACHES[-1]) > most:
                 fitted = step
             current = _Pass.over(compound, fitted, _far_points(coarse, fitted))
             worst = max(width / (factor * self.accuracy) for _, width, factor in current.widths(coarse))
@@ -174,23 +176,25 @@ class Fourier(ExactEngine):
                 # The width falls with the step, but often more slowly: as fast as from pass to pass.
                 power = np.log(best.step / current.step) / np.log(shortfall / worst)
             best, shortfall = current, worst
-            if worst <= _CLOSE or current.points > 0.9 * MOST_POINTS:
+            if worst <= _CLOSE or current.points > 0.9 * most:
                 return current
             step = current.step * (0.9 / worst) ** float(np.clip(power, 1.0, 3.0))
         return best if best is not None else current
 
 
 def _survival_of(compound: CompoundSum) -> Callable[[float, int], FloatArray]:
-    def survive(step: float, points: int) -> FloatArray:
-        even = LatticeTransform(compound, step, points).even()
-        return 1.0 - even.below[0] - running_sums(even.probabilities)
+    return lambda step, points: _survival(compound, step, points)
 
-    return survive
+
+def _survival(compound: CompoundSum, step: float, points: int) -> FloatArray:
+    even = LatticeTransform(compound, step, points).even()
+    return 1.0 - even.below[0] - running_sums(even.probabilities)
 
 
 def _far_points(quantiles: Quantiles, step: float) -> int:
-    easy = max(_EASY_POINTS, int(1.25 * quantiles.points(step, LEAST_REACH)))
-    return min(quantiles.far_points(step, easy=easy, most=MOST_POINTS), MOST_POINTS)
+    most = MOST_POINTS // quantiles.compound.load
+    easy = max(min(_EASY_POINTS, most), int(1.25 * quantiles.points(step, LEAST_REACH)))
+    return min(quantiles.far_points(step, easy=easy, most=most), most)
 
 
 @dataclass(frozen=True)

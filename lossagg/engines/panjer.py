@@ -21,6 +21,7 @@ from lossagg.engines.counted import countable, sums_of
 from lossagg.engines.exact import ExactEngine, Rounded, bracket
 from lossagg.engines.lattice import LatticeLoss
 from lossagg.engines.limited import LimitedMeans
+from lossagg.engines.pooled import pooled
 from lossagg.engines.quantiles import LEAST_REACH, REACHES, Quantiles
 from lossagg.engines.recursive import Lines
 from lossagg.engines.running import running_sums
@@ -79,6 +80,7 @@ class Panjer(ExactEngine):
             EngineError: a count law outside the class of the recursion, or a step so small that the
                 lattice would not reach the quantiles.
         """
+        compound = pooled(compound)
         _require_recursion(compound)
         step, points = self._lattice(compound) if compound.parts else (1.0, 2)
         lines = Lines(compound, step, points)

@@ -7,6 +7,7 @@ differently, atoms being placed on the lattice and the rest rounded onto it, so 
 
 from __future__ import annotations
 
+from abc import ABC, abstractmethod
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -21,8 +22,77 @@ from lossagg.families.base import SizeLaw
 _SAME = 1e-12
 
 
+class Payment(ABC):
+    """The law of one payment, as an engine sees it."""
+
+    @property
+    @abstractmethod
+    def stretches(self) -> tuple[Stretch, ...]:
+        """The sloped pieces that continuous losses reach."""
+
+    @property
+    @abstractmethod
+    def atoms(self) -> tuple[FloatArray, FloatArray]:
+        """Amounts with a probability of their own, increasing, and their probabilities; zero included."""
+
+    @property
+    @abstractmethod
+    def continuous_mass(self) -> float:
+        """Probability that the payment is none of the atoms."""
+
+    @abstractmethod
+    def continuous_sf(self, y: FloatArray) -> FloatArray:
+        """P(Y > y and Y is no atom), for increasing y >= 0, shape (n,)."""
+
+    @abstractmethod
+    def continuous_areas(self, edges: FloatArray) -> FloatArray:
+        """The integral of `continuous_sf` over each interval between increasing edges, shape (n - 1,)."""
+
+    @abstractmethod
+    def layer_second_moment(self, low: float, high: float) -> float:
+        """E[min((Y - low)+, high - low)**2]; `inf` where it does not exist."""
+
+    @abstractmethod
+    def upper(self, probability: float) -> float:
+        """An amount that a payment exceeds with at most this probability; the largest payment for 0."""
+
+    @cached_property
+    def paying(self) -> float:
+        """Probability of a payment above zero."""
+        amounts, chances = self.atoms
+        return min(self.continuous_mass + float(chances[amounts > 0].sum()), 1.0)
+
+    def sf(self, y: FloatArray) -> FloatArray:
+        """P(Y > y), for increasing y >= 0, shape (n,)."""
+        amounts, chances = self.atoms
+        above = np.append(np.cumsum(chances[::-1])[::-1], 0.0)
+        return np.asarray(self.continuous_sf(y) + above[np.searchsorted(amounts, y, side="right")])
+
+    def expected_excess(self, y: float) -> float:
+        """E[(Y - y)+]; `inf` where the mean is."""
+        amounts, chances = self.atoms
+        rest = float(self.continuous_areas(np.array([y, np.inf]))[0])
+        return rest + float(np.maximum(amounts - y, 0.0) @ chances)
+
+    def limited_mean(self, y: float) -> float:
+        """E[min(Y, y)]; exists for every law."""
+        amounts, chances = self.atoms
+        rest = float(self.continuous_areas(np.array([0.0, y]))[0])
+        return rest + float(np.minimum(amounts, y) @ chances)
+
+    @cached_property
+    def mean(self) -> float:
+        """E[Y]; `inf` where it does not exist."""
+        return self.expected_excess(0.0)
+
+    @cached_property
+    def second_moment(self) -> float:
+        """E[Y**2]; `inf` where it does not exist."""
+        return self.layer_second_moment(0.0, np.inf)
+
+
 @dataclass(frozen=True)
-class PaymentLaw:
+class PaymentLaw(Payment):
     """The payment for one loss.
 
     Args:
@@ -68,54 +138,20 @@ class PaymentLaw:
             if slope == 0:
                 above = self._losses.sf(np.array([start, end]))
                 found.append((max(value, 0.0), float(above[0] - above[1])))
-        return _merged(found)
+        return merged(found)
 
     @cached_property
     def continuous_mass(self) -> float:
         """Probability that the payment is none of the atoms."""
         return sum(stretch.mass for stretch in self.stretches)
 
-    @cached_property
-    def paying(self) -> float:
-        """Probability of a payment above zero."""
-        amounts, chances = self.atoms
-        return min(self.continuous_mass + float(chances[amounts > 0].sum()), 1.0)
-
     def continuous_sf(self, y: FloatArray) -> FloatArray:
         """P(Y > y and Y is no atom), for increasing y >= 0, shape (n,)."""
         return sum((stretch.sf(y) for stretch in self.stretches), start=np.zeros(y.shape))
 
-    def sf(self, y: FloatArray) -> FloatArray:
-        """P(Y > y), for increasing y >= 0, shape (n,)."""
-        amounts, chances = self.atoms
-        above = np.append(np.cumsum(chances[::-1])[::-1], 0.0)
-        return np.asarray(self.continuous_sf(y) + above[np.searchsorted(amounts, y, side="right")])
-
     def continuous_areas(self, edges: FloatArray) -> FloatArray:
         """The integral of `continuous_sf` over each interval between increasing edges, shape (n - 1,)."""
         return sum((stretch.areas(edges) for stretch in self.stretches), start=np.zeros(len(edges) - 1))
-
-    def expected_excess(self, y: float) -> float:
-        """E[(Y - y)+]; `inf` where the mean is."""
-        amounts, chances = self.atoms
-        rest = float(self.continuous_areas(np.array([y, np.inf]))[0])
-        return rest + float(np.maximum(amounts - y, 0.0) @ chances)
-
-    def limited_mean(self, y: float) -> float:
-        """E[min(Y, y)]; exists for every law."""
-        amounts, chances = self.atoms
-        rest = float(self.continuous_areas(np.array([0.0, y]))[0])
-        return rest + float(np.minimum(amounts, y) @ chances)
-
-    @cached_property
-    def mean(self) -> float:
-        """E[Y]; `inf` where it does not exist."""
-        return self.expected_excess(0.0)
-
-    @cached_property
-    def second_moment(self) -> float:
-        """E[Y**2]; `inf` where it does not exist."""
-        return self.layer_second_moment(0.0, np.inf)
 
     def layer_second_moment(self, low: float, high: float) -> float:
         """E[min((Y - low)+, high - low)**2]; `inf` where it does not exist."""
@@ -149,7 +185,7 @@ class PaymentLaw:
         return list(zip(schedule.starts, ends, schedule.values, schedule.slopes, strict=True))
 
 
-def _merged(found: list[tuple[float, float]]) -> tuple[FloatArray, FloatArray]:
+def merged(found: list[tuple[float, float]]) -> tuple[FloatArray, FloatArray]:
     """Atoms in increasing order, equal amounts joined, impossible ones left out."""
     amounts: list[float] = []
     chances: list[float] = []

@@ -15,7 +15,7 @@ import numpy as np
 from lossagg.arrays import FloatArray
 from lossagg.engines.compound import CompoundSum
 from lossagg.engines.counted import counted, log_none
-from lossagg.engines.payment import PaymentLaw
+from lossagg.engines.payment import Payment
 from lossagg.engines.size_biased import size_biased
 from lossagg.families import Poisson
 from lossagg.families.base import CountLaw
@@ -43,7 +43,7 @@ class Masses(NamedTuple):
     bulge: FloatArray
 
 
-def severity_masses(payment: PaymentLaw, step: float, points: int) -> Masses:
+def severity_masses(payment: Payment, step: float, points: int) -> Masses:
     """Discretise one payment by differences of its survival function.
 
     Args:
@@ -217,6 +217,6 @@ def _sum_of_two(left: FloatArray, right: FloatArray) -> FloatArray:
     return direct_convolution(left, right, len(right))
 
 
-def _positive(payment: PaymentLaw, masses: FloatArray) -> float:
+def _positive(payment: Payment, masses: FloatArray) -> float:
     """One less the mass at zero, without cancellation where hardly anything is paid."""
     return payment.paying - (float(masses[0]) - (1.0 - payment.paying))

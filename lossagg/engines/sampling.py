@@ -7,7 +7,7 @@ from typing import NamedTuple
 import numpy as np
 
 from lossagg.arrays import FloatArray, IntArray
-from lossagg.engines.payment import PaymentLaw
+from lossagg.engines.payment import Payment
 from lossagg.engines.span import places
 
 _NEVER = 1e-30
@@ -40,7 +40,7 @@ class Masses(NamedTuple):
     bulge: FloatArray
 
 
-def severity_masses(payment: PaymentLaw, step: float, points: int) -> Masses:
+def severity_masses(payment: Payment, step: float, points: int) -> Masses:
     """Discretise one payment above zero three ways: rounded down, mean-preserving, rounded up.
 
     Args:
@@ -90,7 +90,7 @@ def _gathered(index: IntArray, chances: FloatArray, points: int) -> FloatArray:
     return np.asarray(np.bincount(index, chances, points)[:points], dtype=np.float64)
 
 
-def _sampled(weights: FloatArray, payment: PaymentLaw, step: float) -> tuple[FloatArray, FloatArray]:
+def _sampled(weights: FloatArray, payment: Payment, step: float) -> tuple[FloatArray, FloatArray]:
     """Mean-preserving weights with the second moment of the payment restored; a little goes just below zero.
 
     A payment at position u of its cell has gained the variance u (1 - u) h**2 by moving to the ends. Half of

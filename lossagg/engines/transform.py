@@ -1,8 +1,9 @@
 """One pass of the Fourier method: severities on a lattice, through the pgf, back to probabilities.
 
 The transform of a compound sum is the count's generating function at the transform of one payment, so
-f = F^-1[ prod_l P_l( F[g_l] ) ] (Heckman and Meyers 1983; Grubel and Hermesmeier 1999). Its traps and
-their cures here:
+f = F^-1[ prod_l P_l( F[g_l] ) ] (Heckman and Meyers 1983; Grubel and Hermesmeier 1999); lines that depend on
+each other have a joint generating function in place of the product, see `clusters`. Its traps and their cures
+here:
 
 * wrap-around: payments beyond the lattice are left out, which changes no probability on it; sums that
   still run over twice the lattice are bounded by Chernoff's inequality, and the sequence is tilted by
@@ -15,6 +16,7 @@ their cures here:
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import NamedTuple
 
@@ -23,6 +25,7 @@ import numpy.typing as npt
 from scipy import fft
 
 from lossagg.arrays import FloatArray, IntArray
+from lossagg.engines.clusters import Alone, Cluster
 from lossagg.engines.compound import CompoundSum, Part
 from lossagg.engines.limited import LimitedMeans
 from lossagg.engines.pgf_slope import pgf_slope
@@ -86,6 +89,8 @@ class LatticeTransform:
 
     def __init__(self, compound: CompoundSum, step: float, points: int) -> None:
         self.points = points
+        self._compound = compound
+        self._lacking = compound.slack(step, points)
         self.lines = [_spread(part, step, points) for part in compound.parts]
         self.length = int(fft.next_fast_len(2 * points, real=True))
         reachable = self._chernoff()
@@ -98,21 +103,31 @@ class LatticeTransform:
     def sides(self) -> tuple[LatticeSum, LatticeSum]:
         """The sums of payments rounded down and rounded up."""
         down, up = self._one(), self._one()
-        for line in self.lines:
-            continuous, atoms = self._of(line.masses.down), self._of(line.masses.atoms_down)
-            raised = atoms
-            if not np.array_equal(line.masses.atoms_down, line.masses.atoms_up):
-                raised = self._of(line.masses.atoms_up)
-            down *= line.frequency.pgf(line.none + continuous + atoms)
-            up *= line.frequency.pgf(line.none + continuous * self._shift + raised)
+        for cluster in self._compound.clusters:
+            lines, lowered, raised = self._of(cluster), [], []
+            for line in lines:
+                continuous, atoms = self._transform(line.masses.down), self._transform(line.masses.atoms_down)
+                lowered.append(line.none + continuous + atoms)
+                if not np.array_equal(line.masses.atoms_down, line.masses.atoms_up):
+                    atoms = self._transform(line.masses.atoms_up)
+                raised.append(line.none + continuous * self._shift + atoms)
+            counts = [line.frequency for line in lines]
+            down *= cluster.pgf(counts, lowered)
+            up *= cluster.pgf(counts, raised)
         return self._back(down), self._back(up)
 
     def even(self) -> LatticeSum:
         """The sum of payments with their means kept and the sampling corrected."""
         product = self._one()
-        for line in self.lines:
-            transform = self._of(line.masses.even + line.masses.atoms_even)
-            product *= line.frequency.pgf(line.none + transform + line.masses.under[0] / self._shift)
+        for cluster in self._compound.clusters:
+            lines = self._of(cluster)
+            arguments = [
+                line.none
+                + self._transform(line.masses.even + line.masses.atoms_even)
+                + line.masses.under[0] / self._shift
+                for line in lines
+            ]
+            product *= cluster.pgf([line.frequency for line in lines], arguments)
         return self._back(product)
 
     def limited(self, step: float) -> LimitedMeans | None:
@@ -123,14 +138,17 @@ class LatticeTransform:
             return None
         product, rising = self._one(), np.zeros(len(self._shift), dtype=np.complex128)
         mean, spread = 0.0, 0.0
-        for line in self.lines:
-            one = line.none + self._of(line.masses.spread + line.masses.atoms_even)
+        for cluster in self._compound.clusters:
+            if not isinstance(cluster, Alone):
+                return None
+            (line,) = self._of(cluster)
+            one = line.none + self._transform(line.masses.spread + line.masses.atoms_even)
             pgf = line.frequency.pgf(one)
             slope = pgf_slope(line.frequency, one, pgf)
             if slope is None:
                 return None
             rising *= pgf
-            rising += product * slope * self._of(line.masses.bulge)
+            rising += product * slope * self._transform(line.masses.bulge)
             product *= pgf
             mean += line.frequency.mean()
             spread += line.frequency.variance() / line.frequency.mean()
@@ -143,23 +161,40 @@ class LatticeTransform:
 
     def atoms(self) -> tuple[FloatArray, float]:
         """Probabilities of sums made of atoms alone, shape (n,), and the probability of any other sum."""
-        log_atoms = sum(float(line.frequency.log_pgf(line.none + line.atom)) for line in self.lines)
+        log_atoms = self._log_joint([line.none + line.atom for line in self.lines])
         if any(line.masses.atoms_even.any() for line in self.lines):
             product = self._one()
-            for line in self.lines:
-                product *= line.frequency.pgf(line.none + self._of(line.masses.atoms_even))
+            for cluster in self._compound.clusters:
+                lines = self._of(cluster)
+                arguments = [line.none + self._transform(line.masses.atoms_even) for line in lines]
+                product *= cluster.pgf([line.frequency for line in lines], arguments)
             alone = self._back(product).probabilities
             alone = np.where(alone > _EPSILON, alone, 0.0)
         else:
             alone = np.zeros(self.points)
-            alone[0] = np.exp(sum(float(line.frequency.log_pgf(line.none)) for line in self.lines))
+            alone[0] = np.exp(self._log_joint([line.none for line in self.lines]))
         continuous = any(line.masses.even.any() for line in self.lines)
         return alone, float(-np.expm1(log_atoms)) if continuous else 0.0
+
+    def _of(self, cluster: Cluster) -> list[Spread]:
+        return [self.lines[place] for place in cluster.members]
+
+    def _log_joint(self, arguments: Sequence[float]) -> float:
+        """The logarithm of the joint generating function of all lines at a number for each."""
+        return sum(
+            float(
+                cluster.log_pgf(
+                    [line.frequency for line in self._of(cluster)],
+                    [arguments[place] for place in cluster.members],
+                )
+            )
+            for cluster in self._compound.clusters
+        )
 
     def _one(self) -> ComplexArray:
         return np.ones(len(self._shift), dtype=np.complex128)
 
-    def _of(self, masses: FloatArray) -> ComplexArray:
+    def _transform(self, masses: FloatArray) -> ComplexArray:
         if not masses.any():
             return np.zeros(len(self._shift), dtype=np.complex128)
         return np.asarray(fft.rfft(masses * self._weights, self.length))
@@ -177,7 +212,8 @@ class LatticeTransform:
         return float(negative.sum()), float(index @ negative), float(index**2 @ negative)
 
     def _slack(self, tilted: FloatArray) -> FloatArray:
-        """Round-off of the running sums: relative errors of the transform, by Cauchy and Schwarz.
+        """Round-off of the running sums: relative errors of the transform, by Cauchy and Schwarz; and what
+        a rule for the factors that lines share may still lack.
 
         Each transform is off by a few log2(length) roundings, and the count multiplies a relative
         error of one payment's transform by at most its mean.
@@ -188,7 +224,7 @@ class LatticeTransform:
         terms = np.arange(1.0, self.points + 1.0)
         if self._tilt > 0:
             terms = np.minimum(terms, 1.0 / -np.expm1(-2.0 * self._tilt))
-        return np.asarray(size * np.sqrt(terms) / self._weights)
+        return np.asarray(size * np.sqrt(terms) / self._weights + self._lacking)
 
     def _chernoff(self) -> float:
         """Bound of the probability that payments on the lattice add up to its transform length."""
@@ -197,9 +233,8 @@ class LatticeTransform:
             rate = scale / self.points
             exponent = -rate * self.length
             with np.errstate(over="ignore", invalid="ignore"):
-                for line in self.lines:
-                    moment = line.none + _exponential_moment(line.masses, rate)
-                    exponent += float(line.frequency.log_pgf(moment))
+                moments = [line.none + _exponential_moment(line.masses, rate) for line in self.lines]
+                exponent += self._log_joint(moments)
             if not np.isfinite(exponent):
                 break
             bound = min(bound, exponent)
