@@ -15,7 +15,7 @@ if TYPE_CHECKING:
     from pathlib import Path
 
     from lossagg.cover import Cover
-    from lossagg.engines import FarTail, Fourier, Panjer, Simulation, annual_loss
+    from lossagg.engines import FarTail, Fourier, Panjer, Simulation, allocate, annual_loss
     from lossagg.families import (
         Binomial,
         Burr,
@@ -49,7 +49,7 @@ _ROOMS = {
     ),
     "cover": "Cover",
     "fitting": "fit_severity fit_frequency",
-    "engines": "annual_loss FarTail Fourier Panjer Simulation",
+    "engines": "allocate annual_loss FarTail Fourier Panjer Simulation",
 }
 _HOME = {name: room for room, names in _ROOMS.items() for name in names.split()}
 
@@ -80,6 +80,7 @@ __all__ = [
     "ZeroInflated",
     "ZeroModified",
     "__version__",
+    "allocate",
     "annual_loss",
     "fit_frequency",
     "fit_severity",

@@ -9,19 +9,21 @@ import importlib
 from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
+    from lossagg.engines.allocation import allocate
     from lossagg.engines.annual import annual_loss
     from lossagg.engines.far_tail import FarTail
     from lossagg.engines.fourier import Fourier
     from lossagg.engines.panjer import Panjer
     from lossagg.engines.simulation import Simulation
 
-__all__ = ["FarTail", "Fourier", "Panjer", "Simulation", "annual_loss"]
+__all__ = ["FarTail", "Fourier", "Panjer", "Simulation", "allocate", "annual_loss"]
 
 _HOME = {
     "FarTail": "far_tail",
     "Fourier": "fourier",
     "Panjer": "panjer",
     "Simulation": "simulation",
+    "allocate": "allocation",
     "annual_loss": "annual",
 }
 

@@ -18,6 +18,9 @@ import numpy as np
 from scipy.special import logsumexp
 
 from lossagg.arrays import FloatArray
+from lossagg.engines.pgf_slope import pgf_slope
+from lossagg.engines.size_biased import size_biased
+from lossagg.errors import EngineError
 from lossagg.families import Poisson, ZeroInflated
 from lossagg.families.base import CountLaw
 from lossagg.families.polar import exponential
@@ -49,6 +52,22 @@ class Cluster(ABC):
     def pgf(self, counts: Sequence[CountLaw], arguments: Sequence[Any]) -> Any:
         """E[prod z_l ** N_l] for arrays, arguments as `log_pgf`."""
         return exponential(self.log_pgf(counts, arguments))
+
+    @abstractmethod
+    def slope(
+        self, counts: Sequence[CountLaw], arguments: Sequence[Any], member: int, pgf: Any = None
+    ) -> Any:
+        """The derivative of the joint generating function by the argument of one member, shape (n,).
+
+        Args:
+            counts: as for `log_pgf`.
+            arguments: as for `log_pgf`.
+            member: which one.
+            pgf: the joint generating function there, where it is at hand.
+
+        Raises:
+            EngineError: a count law whose derivative is not known.
+        """
 
     @abstractmethod
     def covariances(self, counts: Sequence[CountLaw], means: FloatArray) -> FloatArray:
@@ -84,6 +103,13 @@ class Alone(Cluster):
         """That of its count."""
         return counts[0].pgf(arguments[0])
 
+    def slope(
+        self, counts: Sequence[CountLaw], arguments: Sequence[Any], member: int, pgf: Any = None
+    ) -> Any:
+        """That of its count."""
+        slope = pgf_slope(counts[0], arguments[0], pgf)
+        return slope if slope is not None else counts[0].mean() * others(counts[0]).pgf(arguments[0])
+
     def covariances(self, counts: Sequence[CountLaw], means: FloatArray) -> FloatArray:
         """Var[N] E[Y]."""
         return np.array([counts[0].variance()]) * means
@@ -103,9 +129,19 @@ class GammaPoisson(Cluster):
 
     def log_pgf(self, counts: Sequence[CountLaw], arguments: Sequence[Any]) -> Any:
         """The closed form."""
+        return -self._log_base(counts, arguments) / self.dispersion
+
+    def slope(
+        self, counts: Sequence[CountLaw], arguments: Sequence[Any], member: int, pgf: Any = None
+    ) -> Any:
+        """m_l (1 - v sum m (z - 1)) ** (-1 / v - 1)."""
+        log_base = self._log_base(counts, arguments)
+        pgf = exponential(-log_base / self.dispersion) if pgf is None else pgf
+        return counts[member].mean() * pgf * exponential(-log_base)
+
+    def _log_base(self, counts: Sequence[CountLaw], arguments: Sequence[Any]) -> Any:
         pairs = zip(counts, arguments, strict=True)
-        exponent = sum(count.mean() * (z - 1.0) for count, z in pairs)
-        return -np.log1p(-self.dispersion * exponent) / self.dispersion
+        return np.log1p(-self.dispersion * sum(count.mean() * (z - 1.0) for count, z in pairs))
 
     def covariances(self, counts: Sequence[CountLaw], means: FloatArray) -> FloatArray:
         """m (E[Y] + v sum m E[Y])."""
@@ -159,6 +195,20 @@ class Mixed(Cluster):
                 given = self._given(state, counts, own) + np.log(state.weight)
                 if given.real.max() > _NOTHING:
                     total[piece] += exponential(given)
+        return total
+
+    def slope(
+        self, counts: Sequence[CountLaw], arguments: Sequence[Any], member: int, pgf: Any = None
+    ) -> Any:
+        """The mean over the states of the member, of the product with one of its losses set apart."""
+        total = np.zeros(len(arguments[0]), dtype=np.result_type(*arguments))
+        for weight, lines in self.states:
+            laws = {place: self._law(counts, place, ratio) for place, ratio in lines}
+            if member in laws:
+                rate = weight * laws[member].mean()
+                laws[member] = others(laws[member])
+                logs = sum(law.log_pgf(arguments[place]) for place, law in laws.items())
+                total += rate * exponential(logs)
         return total
 
     def covariances(self, counts: Sequence[CountLaw], means: FloatArray) -> FloatArray:
@@ -219,15 +269,48 @@ class Shocked(Cluster):
 
     def log_pgf(self, counts: Sequence[CountLaw], arguments: Sequence[Any]) -> Any:
         """The closed form; of a thinned count z stands for losses that pay."""
-        exponent: Any = 0.0
-        joint: Any = 0.0
-        for count, mean, z in zip(counts, self.means, arguments, strict=True):
-            beyond = count.mean() / mean * (z - 1.0)
-            exponent = exponent + max(mean - self.rate, 0.0) * beyond
-            joint = joint + beyond + joint * beyond
-        return exponent + self.rate * joint
+        beyond = self._beyond(counts, arguments)
+        alone = sum(max(mean - self.rate, 0.0) * own for mean, own in zip(self.means, beyond, strict=True))
+        return alone + self.rate * _product_less_one(beyond)
+
+    def slope(
+        self, counts: Sequence[CountLaw], arguments: Sequence[Any], member: int, pgf: Any = None
+    ) -> Any:
+        """The loss set apart is its own, or part of a shock that costs the others one each."""
+        beyond = self._beyond(counts, arguments)
+        rest = _product_less_one([own for place, own in enumerate(beyond) if place != member])
+        mean = self.means[member]
+        rate = counts[member].mean() / mean * (max(mean - self.rate, 0.0) + self.rate * (1.0 + rest))
+        return rate * (self.pgf(counts, arguments) if pgf is None else pgf)
+
+    def _beyond(self, counts: Sequence[CountLaw], arguments: Sequence[Any]) -> list[Any]:
+        """z - 1 of each member, thinning undone."""
+        triples = zip(counts, self.means, arguments, strict=True)
+        return [count.mean() / mean * (z - 1.0) for count, mean, z in triples]
 
     def covariances(self, counts: Sequence[CountLaw], means: FloatArray) -> FloatArray:
         """m E[Y] + r times the expected payments of the others."""
         own = np.array([count.mean() for count in counts])
         return np.asarray(own * means + self.rate * (float(means.sum()) - means))
+
+
+def _product_less_one(beyond: Sequence[Any]) -> Any:
+    """prod (1 + x) - 1 without cancellation."""
+    total: Any = 0.0
+    for own in beyond:
+        total = total + own + total * own
+    return total
+
+
+def others(count: CountLaw) -> CountLaw:
+    """The number of the other losses of the year, as one of its losses sees it: P'(z) is mean times its pgf.
+
+    Raises:
+        EngineError: a count law whose derivative is not known here.
+    """
+    law = size_biased(count)
+    if law is not None:
+        return law
+    raise EngineError(
+        "no law is known for the other losses of a year", value=count.family, remedy="Use another frequency."
+    )

@@ -109,7 +109,7 @@ class Fourier(ExactEngine):
         """
         if not compound.parts:
             return _Pass.over(compound, 1.0, 2).loss()
-        compound = compound.settled(_survival)
+        compound = compound.settled(survival)
         coarse = (
             None
             if self.points and self.step
@@ -183,10 +183,11 @@ class Fourier(ExactEngine):
 
 
 def _survival_of(compound: CompoundSum) -> Callable[[float, int], FloatArray]:
-    return lambda step, points: _survival(compound, step, points)
+    return lambda step, points: survival(compound, step, points)
 
 
-def _survival(compound: CompoundSum, step: float, points: int) -> FloatArray:
+def survival(compound: CompoundSum, step: float, points: int) -> FloatArray:
+    """P(S > kh) on a lattice as it comes, without bracket, shape (points,)."""
     even = LatticeTransform(compound, step, points).even()
     return 1.0 - even.below[0] - running_sums(even.probabilities)
 

@@ -290,7 +290,9 @@ class TransformedAnnualLoss(BracketedAnnualLoss):
         if not isinstance(self.base, BracketedAnnualLoss):
             return super().layer_bracket(low, high)
         pieces = [(slope, *self.base.layer_bracket(a, b)) for a, b, _, slope in self._within(low, high)]
-        return sum(slope * least for slope, least, _ in pieces), sum(slope * most for slope, _, most in pieces)
+        return sum(slope * least for slope, least, _ in pieces), sum(
+            slope * most for slope, _, most in pieces
+        )
 
     def _pieces(self) -> list[tuple[float, float, float, float]]:
         """(start, end, value at start, slope) of every piece."""

@@ -42,6 +42,7 @@ _LEAST_EXCEEDANCE = 1e-3
 _RARE = 1e-15
 _LOOK = 2**12
 
+Named = tuple[str, Part]
 Survive = Callable[[CompoundSum, float, int], FloatArray]
 
 
@@ -52,12 +53,14 @@ class TiedSum(CompoundSum):
     Args:
         parts: the lines that can have a payment above zero; under a factor on size, each once for every
             value of it, with the losses of the years in which the factor has that value.
+        owners: name of the line of every part.
         tied: which of them depend on each other, and how.
         values: number of values of every factor that is integrated numerically.
         lacking: step and values of how far that leaves P(S > kh) off or any beyond it, non-increasing.
         build: makes the same sum with another number of values.
     """
 
+    owners: tuple[str, ...]
     tied: tuple[Cluster, ...]
     values: int
     lacking: tuple[float, FloatArray]
@@ -118,10 +121,16 @@ def annual_sum(book: Book, events: Mapping[str, Schedule]) -> CompoundSum:
     Raises:
         EngineError: lines tied by a copula, or by a factor on size and a common shock at once.
     """
+    names = [line.name for line in book.lines if line.name in events]
+    if any(_between(own, names) for own in book.dependences):
+        return tied_sum(book, events)
+    return CompoundSum.of(tuple(line for line in book.lines if line.name in events), dict(events))
+
+
+def tied_sum(book: Book, events: Mapping[str, Schedule]) -> TiedSum:
+    """The same, with the line of every part."""
     lines = {line.name: line for line in book.lines if line.name in events}
     acting = [own for own in book.dependences if _between(own, lines)]
-    if not acting:
-        return CompoundSum.of(tuple(lines.values()), dict(events))
     groups = _connected(tuple(lines), acting)
     for own in acting:
         if isinstance(own, Copula):
@@ -133,13 +142,15 @@ def annual_sum(book: Book, events: Mapping[str, Schedule]) -> CompoundSum:
 
     def build(values: int) -> TiedSum:
         parts: list[Part] = []
+        owners: list[str] = []
         clusters: list[Cluster] = []
         for names, ties in groups:
             own = [lines[name] for name in names]
             new, cluster = _cluster(own, events, ties, values, len(parts))
-            parts += new
+            parts += [part for _, part in new]
+            owners += [name for name, _ in new]
             clusters += [cluster] if new else []
-        return TiedSum(tuple(parts), tuple(clusters), values, (1.0, np.zeros(1)), build)
+        return TiedSum(tuple(parts), tuple(owners), tuple(clusters), values, (1.0, np.zeros(1)), build)
 
     return build(FIRST_VALUES)
 
@@ -170,11 +181,12 @@ def _connected(
 
 def _cluster(
     lines: Sequence[Line], events: Mapping[str, Schedule], ties: Sequence[Dependence], values: int, first: int
-) -> tuple[list[Part], Cluster]:
+) -> tuple[list[Named], Cluster]:
     """The parts of lines that have something in common, placed from `first` on, and how they are tied."""
     plain = [Part(line.frequency, PaymentLaw(line.severity, events[line.name])) for line in lines]
     paying = [k for k, part in enumerate(plain) if part.frequency.mean() > 0 and part.payment.paying > 0]
     lines, parts = [lines[k] for k in paying], [plain[k] for k in paying]
+    named = [(line.name, part) for line, part in zip(lines, parts, strict=True)]
     members = tuple(range(first, first + len(parts)))
     factors = [own for own in ties if isinstance(own, SharedFactor)]
     shocks = [own for own in ties if isinstance(own, CommonShock)]
@@ -185,17 +197,17 @@ def _cluster(
         )
     if shocks and len(parts) > 1:
         means = tuple(part.frequency.mean() for part in parts)
-        return parts, Shocked(members, shocks[0].rate, means)
+        return named, Shocked(members, shocks[0].rate, means)
     if not factors:
-        return parts, Alone(members)
+        return named, Alone(members)
     if [own.on for own in factors] == ["frequency"]:
         if factors[0].law == "gamma" and all(isinstance(part.frequency, Poisson) for part in parts):
-            return parts, GammaPoisson(members, factors[0].variance)
+            return named, GammaPoisson(members, factors[0].variance)
         states = tuple(
             State(float(weight), tuple((place, float(value)) for place in range(len(parts))))
             for value, weight in zip(*factor_rule(factors[0], values), strict=True)
         )
-        return parts, Mixed(members, states)
+        return named, Mixed(members, states)
     return _inflated(lines, events, factors, values, first)
 
 
@@ -205,7 +217,7 @@ def _inflated(
     factors: Sequence[SharedFactor],
     values: int,
     first: int,
-) -> tuple[list[Part], Cluster]:
+) -> tuple[list[Named], Cluster]:
     """Lines of which some have a factor on size: a part for each line and value of it."""
     pairs = [zip(*(side.tolist() for side in factor_rule(own, values)), strict=True) for own in factors]
     rules = [[(value, weight) for value, weight in pair if weight > _RARE] for pair in pairs]
@@ -213,7 +225,7 @@ def _inflated(
         {line.name: _acting(factors, line.name, target) for line in lines}
         for target in ("frequency", "inflation")
     )
-    parts: list[Part] = []
+    parts: list[Named] = []
     places: dict[tuple[str, int], int] = {}
     for line in lines:
         acting = size[line.name]
@@ -225,7 +237,7 @@ def _inflated(
             payment = PaymentLaw(line.severity, seen)
             if payment.paying > 0:
                 places[line.name, value] = len(parts)
-                parts.append(Part(count, payment))
+                parts.append((line.name, Part(count, payment)))
     states = []
     for chosen in product(*(range(len(rule)) for rule in rules)):
         weight = float(np.prod([rule[k][1] for rule, k in zip(rules, chosen, strict=True)]))

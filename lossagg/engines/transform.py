@@ -25,12 +25,12 @@ import numpy.typing as npt
 from scipy import fft
 
 from lossagg.arrays import FloatArray, IntArray
-from lossagg.engines.clusters import Alone, Cluster
+from lossagg.engines.clusters import Cluster, Mixed
 from lossagg.engines.compound import CompoundSum, Part
 from lossagg.engines.limited import LimitedMeans
-from lossagg.engines.pgf_slope import pgf_slope
 from lossagg.engines.running import running_sums
 from lossagg.engines.sampling import Masses, severity_masses
+from lossagg.engines.size_biased import size_biased
 from lossagg.families.base import CountLaw
 
 ComplexArray = npt.NDArray[np.complex128]
@@ -121,37 +121,37 @@ class LatticeTransform:
         product = self._one()
         for cluster in self._compound.clusters:
             lines = self._of(cluster)
-            arguments = [
-                line.none
-                + self._transform(line.masses.even + line.masses.atoms_even)
-                + line.masses.under[0] / self._shift
-                for line in lines
-            ]
+            arguments = [self._even_of(line) for line in lines]
             product *= cluster.pgf([line.frequency for line in lines], arguments)
         return self._back(product)
 
     def limited(self, step: float) -> LimitedMeans | None:
         """Bounds of the limited means from payments moved to the two nearest points with their means kept.
-        None where nothing is moved, or where the derivative of a count's generating function is not known.
+        None where nothing is moved, where the derivative of a count's generating function is not known,
+        and for factors that are integrated numerically, whose derivative would take too long.
         """
         if not any(line.masses.bulge.any() for line in self.lines):
             return None
         product, rising = self._one(), np.zeros(len(self._shift), dtype=np.complex128)
         mean, spread = 0.0, 0.0
         for cluster in self._compound.clusters:
-            if not isinstance(cluster, Alone):
+            lines = self._of(cluster)
+            counts = [line.frequency for line in lines]
+            if isinstance(cluster, Mixed) or any(size_biased(count) is None for count in counts):
                 return None
-            (line,) = self._of(cluster)
-            one = line.none + self._transform(line.masses.spread + line.masses.atoms_even)
-            pgf = line.frequency.pgf(one)
-            slope = pgf_slope(line.frequency, one, pgf)
-            if slope is None:
-                return None
+            ones = [
+                line.none + self._transform(line.masses.spread + line.masses.atoms_even) for line in lines
+            ]
+            pgf = cluster.pgf(counts, ones)
+            moved = np.zeros(len(self._shift), dtype=np.complex128)
+            for member, line in enumerate(lines):
+                moved += cluster.slope(counts, ones, member, pgf) * self._transform(line.masses.bulge)
             rising *= pgf
-            rising += product * slope * self._transform(line.masses.bulge)
+            rising += product * moved
             product *= pgf
-            mean += line.frequency.mean()
-            spread += line.frequency.variance() / line.frequency.mean()
+            own = sum(count.mean() for count in counts)
+            mean += own
+            spread += float(cluster.covariances(counts, np.ones(len(counts))).sum()) / own
         tilted = np.asarray(fft.irfft(rising, self.length))
         relative = 4.0 * _EPSILON * (np.log2(self.length) + mean + spread)
         off = relative * float(np.sqrt(np.sum(tilted**2)))
@@ -175,6 +175,11 @@ class LatticeTransform:
             alone[0] = np.exp(self._log_joint([line.none for line in self.lines]))
         continuous = any(line.masses.even.any() for line in self.lines)
         return alone, float(-np.expm1(log_atoms)) if continuous else 0.0
+
+    def _even_of(self, line: Spread) -> ComplexArray:
+        masses = line.masses
+        transform = self._transform(masses.even + masses.atoms_even)
+        return np.asarray(line.none + transform + masses.under[0] / self._shift)
 
     def _of(self, cluster: Cluster) -> list[Spread]:
         return [self.lines[place] for place in cluster.members]

@@ -9,6 +9,7 @@ from lossagg.engines import Fourier, Panjer, Simulation
 from lossagg.engines.book import GROSS, NET, Book, Subject
 from lossagg.engines.crosscheck import crosscheck
 from lossagg.engines.result import AnnualLoss, BookResult
+from lossagg.portfolio.allocating import allocation_data
 from lossagg.portfolio.assessment import (
     WITHHELD,
     Data,
@@ -100,6 +101,13 @@ def figures(
             cover_of(book, cover, best[Subject("cover", cover.name)][0], levels, withheld=withheld)
             for cover in book.covers
         ],
+        "allocation": allocation_data(
+            book,
+            {subject: loss for subject, (loss, _) in best.items()},
+            results["simulation"].losses,
+            capital_level,
+            withheld=withheld,
+        ),
         "crosscheck": crosscheck_of(check),
         "years_near_capital": None
         if withheld

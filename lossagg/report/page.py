@@ -83,7 +83,9 @@ def render_report(assessment: Assessment) -> str:
         "lines": tables.lines.overview(assessment),
         "line_levels": tables.lines.levels(assessment),
         "dependence": _filled(
-            tables.dependence.assumptions(assessment), tables.dependence.compared(assessment)
+            tables.allocation.allocation(assessment),
+            tables.dependence.assumptions(assessment),
+            tables.dependence.compared(assessment),
         ),
         "years": _filled(tables.years.near_capital(assessment), tables.years.events_near_capital(assessment)),
         "sections": [

@@ -102,6 +102,24 @@ def test_the_assumption_its_evidence_and_the_figures_without_it(factor: tuple[Pa
     assert "dependence-without-evidence" not in codes
 
 
+@pytest.mark.parametrize(("which", "engine"), [("factor", "fourier"), ("copula", "simulation")])
+def test_the_capital_is_divided_among_the_lines(
+    which: str, engine: str, request: pytest.FixtureRequest
+) -> None:
+    folder, data = request.getfixturevalue(which)
+    found = data["allocation"]
+    assert found["engine"] == engine
+    assert found["level"] == data["portfolio"]["capital_level"]
+    assert sum(line["value"] for line in found["lines"]) == pytest.approx(found["total"]["value"], rel=1e-9)
+    assert sum(line["share"] for line in found["lines"]) == pytest.approx(1.0, abs=1e-12)
+    for line in found["lines"]:
+        assert line["low"] <= line["value"] <= line["high"]
+        assert line["value"] < line["alone"]
+    page = (folder / "out" / "report.html").read_text(encoding="utf-8")
+    assert "Allocation of the gross TVaR at 99.5% to lines" in page
+    assert "Saved by diversification" in page
+
+
 def test_a_gaussian_copula_and_missing_evidence_are_warned_of(copula: tuple[Path, dict]) -> None:
     _, data = copula
     messages = {caution["code"]: caution["message"] for caution in data["cautions"]}

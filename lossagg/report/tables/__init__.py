@@ -5,6 +5,7 @@ from __future__ import annotations
 from lossagg.report.cells import Table
 from lossagg.report.reading import Assessment, Entry
 from lossagg.report.tables import (
+    allocation,
     by_line,
     controls,
     covers,
@@ -20,6 +21,7 @@ from lossagg.report.tables import (
 )
 
 __all__ = [
+    "allocation",
     "by_line",
     "controls",
     "covers",
@@ -46,6 +48,7 @@ def every_table(assessment: Assessment) -> tuple[Table, ...]:
         totals.curves(assessment),
         lines.overview(assessment),
         lines.levels(assessment),
+        *_if_any(allocation.allocation(assessment)),
         *_if_any(dependence.assumptions(assessment)),
         *_if_any(dependence.compared(assessment)),
         covers.terms(assessment),
