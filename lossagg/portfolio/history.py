@@ -8,9 +8,11 @@ from lossagg.portfolio.assessment import Data
 from lossagg.portfolio.files import LineRecords
 from lossagg.portfolio.schema import LineSection, PortfolioFile
 from lossagg.records import (
+    Finding,
     Followed,
     PreparedLosses,
     Reconciliation,
+    RecordsError,
     check_counts,
     follow_claims,
     midpoint,
@@ -57,8 +59,26 @@ def prepare_line(file: PortfolioFile, line: LineSection, records: LineRecords) -
         trend=records.index or line.trend,
         **line.preparation(),
     )
+    if not len(prepared) and line.severity.fit is not None:
+        raise RecordsError([*prepared.findings, _no_losses(line, records)])
     more = (*(records.counts.findings if records.counts else ()), *(followed.findings if followed else ()))
     return replace(prepared, findings=(*prepared.findings, *more))
+
+
+def _no_losses(line: LineSection, records: LineRecords) -> Finding:
+    return Finding(
+        "no-losses",
+        "stop",
+        records.losses.table.file,
+        None,
+        None,
+        None,
+        "no loss of the line is left, so there is no severity to fit",
+        "Give the line a law for its severity, or put it together with similar ones.",
+        sheet=records.losses.table.sheet,
+        line=line.name,
+        count=0,
+    )
 
 
 def follow(line: LineSection, records: LineRecords) -> Followed | None:

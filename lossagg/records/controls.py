@@ -23,7 +23,7 @@ from lossagg.records.money import Money
 COUNT = "count"
 MONEY = ("amount", "paid", "outstanding", "recoveries")
 CENT_TOLERANCE = 0.005
-NOT_CLAIMS = ("duplicate-row", "superseded", "later-valuation", "blank-row", "totals-row")
+NOT_CLAIMS = ("duplicate-row", "superseded", "later-valuation", "blank-row", "totals-row", "subtotal-row")
 _THOUSAND, _NEARLY = 1000, 0.02
 
 

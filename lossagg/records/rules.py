@@ -22,7 +22,8 @@ from lossagg.records.table import LossTable
 from lossagg.records.word_rules import repeated_faults, status_faults, word_faults
 
 LARGEST = 1e18
-EARLIEST = np.datetime64("1900-01-01")
+EARLIEST = np.datetime64("1900-03-01")
+"""Before it workbooks are a day off: they count a 29 February 1900, which there never was."""
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -147,8 +148,8 @@ def _dates(table: LossTable, terms: CheckTerms, live: BoolArray) -> list[Fault]:
             "set aside",
             "date",
             live & (date < EARLIEST),
-            "the date is before 1900",
-            "Correct it.",
+            "the date is before March 1900",
+            "Correct it; workbooks count a 29 February 1900 that never was, and show an empty date as 1900.",
         ),
         Fault(
             "future-date",

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import re
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from functools import cached_property
@@ -19,9 +18,10 @@ from lossagg.records.faults import Fault, Rows, list_faults
 from lossagg.records.findings import Finding, raise_stops
 from lossagg.records.headings import Wanted, heading_findings, locate_columns
 from lossagg.records.identifiers import identifier_faults
-from lossagg.records.money import Money, exact_sum
+from lossagg.records.money import Money
 from lossagg.records.raw import Choose, Layout, RawTable
 from lossagg.records.sources import Source, read_source
+from lossagg.records.totals import Totals, find_totals
 from lossagg.records.typed import TypedColumns, type_columns
 from lossagg.records.words import WordArray
 
@@ -46,7 +46,6 @@ COLUMNS: Mapping[str, str] = {
 }
 _WANTED = Wanted(COLUMNS, ("amount", "date"))
 _STRETCH = 1_000_000
-_TOTAL = re.compile(r"^(grand |sub ?-?)?(totals?|sum|somme|summe|gesamt|totale|total general)\b[ :.]*$", re.I)
 
 
 @dataclass(frozen=True)
@@ -197,10 +196,10 @@ def read_losses(
     raw = source.table
     typed = type_columns(raw, COLUMNS, style, date_format, raw.empty, time_zone)
     exact = typed.numbers["amount"].exact()
-    total = _total_row(raw, typed, exact)
-    if total.any():
-        typed = type_columns(raw, COLUMNS, style, date_format, raw.empty | total, time_zone)
-    return _assemble(source, typed, exact, total)
+    totals = find_totals(raw, typed, exact)
+    if totals.rows.any():
+        typed = type_columns(raw, COLUMNS, style, date_format, raw.empty | totals.rows, time_zone)
+    return _assemble(source, typed, exact, totals)
 
 
 def chooser(file: str, wanted: Wanted, mapping: Mapping[str, str]) -> Choose:
@@ -219,11 +218,11 @@ def file_findings(source: Source, wanted: Wanted) -> list[Finding]:
     return [*raw.findings, *unread]
 
 
-def _assemble(source: Source, typed: TypedColumns, exact: Money, total: BoolArray) -> LossTable:
+def _assemble(source: Source, typed: TypedColumns, exact: Money, totals: Totals) -> LossTable:
     raw = source.table
     amount = typed.numbers["amount"]
     unreadable = ~np.isfinite(amount.values)
-    faults = [*_row_faults(raw, typed, total), *typed.faults]
+    faults = [*_row_faults(raw, typed, totals), *typed.faults]
     table = LossTable(
         file=source.file,
         sheet=raw.sheet,
@@ -236,7 +235,7 @@ def _assemble(source: Source, typed: TypedColumns, exact: Money, total: BoolArra
         words=typed.words,
         exact=exact,
         unreadable=unreadable,
-        blank=raw.empty | total,
+        blank=raw.empty | totals.rows,
         fingerprint=raw.fingerprint,
         faults=tuple(fault for fault in faults if fault.mask.any()),
         findings=tuple(file_findings(source, _WANTED)),
@@ -245,17 +244,26 @@ def _assemble(source: Source, typed: TypedColumns, exact: Money, total: BoolArra
     return table
 
 
-def _row_faults(raw: RawTable, typed: TypedColumns, total: BoolArray) -> list[Fault]:
+def _row_faults(raw: RawTable, typed: TypedColumns, totals: Totals) -> list[Fault]:
     amount = typed.numbers["amount"]
-    live = ~(raw.empty | total)
+    live = ~(raw.empty | totals.rows)
     faults = [
         Fault("blank-row", "set aside", None, raw.empty, "the row is blank", "Delete it.", tolerated=True),
         Fault(
             "totals-row",
             "set aside",
             "amount",
-            total,
+            totals.last,
             "the last row is a total of the others and would count every loss twice",
+            "Delete it.",
+            tolerated=True,
+        ),
+        Fault(
+            "subtotal-row",
+            "set aside",
+            "amount",
+            totals.between,
+            "the row is the total of the rows above it and would count their losses twice",
             "Delete it.",
             tolerated=True,
         ),
@@ -278,19 +286,3 @@ def _row_faults(raw: RawTable, typed: TypedColumns, total: BoolArray) -> list[Fa
     ]
     faults += identifier_faults(raw, typed, live)
     return faults
-
-
-def _total_row(raw: RawTable, typed: TypedColumns, exact: Money) -> BoolArray:
-    """Recognise a row of totals at the foot.
-
-    It is one if it is labelled so and lacks a date or equals the sum, or if it equals the sum of all
-    other amounts exactly and lacks a date or sums at least five.
-    """
-    total = np.zeros(len(raw.row), dtype=np.bool_)
-    amount = typed.numbers["amount"]
-    others = int(np.count_nonzero(np.isfinite(amount.values[:-1])))
-    undated = bool(np.isnat(typed.dates["date"][-1]))
-    is_sum = others >= 2 and exact[-1] != 0 and exact[-1] == exact_sum(exact[:-1])
-    labelled = any(_TOTAL.match(cell.strip()) for cell in raw.foot)
-    total[-1] = (labelled and (undated or is_sum)) or (is_sum and (undated or others >= 5))
-    return total

@@ -8,6 +8,7 @@ so are packages that unpack to far more than they weigh.
 from __future__ import annotations
 
 import re
+import warnings
 import zipfile
 import zlib
 from collections.abc import Iterator, Sequence
@@ -57,7 +58,10 @@ def read_workbook(path: Path, layout: Layout, choose: Choose) -> RawTable:
                 where=place(file=path.name, sheet=sheet.title),
                 remedy="Unmerge them, so that each row stands on its own.",
             )
-        return _read_sheet(path, sheet, marks, choose)
+        with warnings.catch_warnings():
+            # A day number beyond the calendar comes as an error value, which is reported as one.
+            warnings.filterwarnings("ignore", message="Cell .* is marked as a date", category=UserWarning)
+            return _read_sheet(path, sheet, marks, choose)
 
 
 def _read_sheet(path: Path, sheet: Any, marks: dict[str, bool], choose: Choose) -> RawTable:

@@ -80,6 +80,8 @@ TEXT_CASES = [
         "the file contains a NUL character, in file losses.csv, line 3, byte 36",
     ),
     Case(4, "semicolons", _table(GOOD).replace(",", ";"), "normalise", "divided by a semicolon"),
+    Case(4, "tabs", _table(GOOD).replace(",", "\t"), "normalise", "divided by a tab"),
+    Case(4, "bars", _table(GOOD).replace(",", "|"), "normalise", "divided by a bar"),
     Case(
         4,
         "two delimiters alike",
@@ -203,7 +205,7 @@ TEXT_CASES = [
         "Two-digit years do not say the century.",
         options={"date_format": "%d/%m/%y"},
     ),
-    Case(19, "year 0205", _with("0205-03-04", "date"), "set aside", "the date is before 1900"),
+    Case(19, "year 0205", _with("0205-03-04", "date"), "set aside", "the date is before March 1900"),
     Case(19, "year 2925", _with("2925-03-04", "date"), "set aside", "the date is after the valuation date"),
     Case(19, "a future loss", _with("2026-03-04", "date"), "set aside", "the date is after the valuation"),
     Case(20, "31 February", _with("2024-02-31", "date"), "set aside", "the date names a day that does not"),
@@ -354,6 +356,15 @@ TEXT_CASES = [
         "the last row is a total of the others and would count every loss twice",
         2,
     ),
+    Case(
+        48,
+        "subtotals between the rows, and a total",
+        _table("10,2024-01-01\n20,2024-01-02\n30,\n5,2024-02-01\n7,2024-02-02\n12,\n42,"),
+        "set aside",
+        "the row is the total of the rows above it and would count their losses twice, in file losses.csv, "
+        "row 4, column 'amount'; seen: '30'",
+        4,
+    ),
     Case(48, "notes above the headings", f"Export of May\n{_table(GOOD)}", "stop", "remove notes above"),
     Case(50, "text like a formula", _table(f"{GOOD},=cmd|x", "amount,date,event"), "use", ""),
     Case(
@@ -435,27 +446,32 @@ TEXT_CASES = [
 ]  # fmt: skip
 
 ELSEWHERE = {
+    13: "tests/records/test_catalogue.py::test_13_whole_numbers_of_a_parquet_file_become_floats",
     15: "tests/records/test_history.py::test_the_latest_valuation_is_the_claim",
     28: "tests/records/test_basis_and_currency.py::test_rates_that_cannot_be_used_stop",
     29: "tests/records/test_mixups.py::test_29_a_file_that_mixes_units_row_by_row_warns_with_both_heaps",
-    30: "tests/records/test_preparing.py::test_a_year_without_exposure_stops",
-    31: "tests/records/test_preparing.py::test_years_without_losses_stay_and_the_last_is_observed_in_part",
-    32: "tests/records/test_preparing.py::test_bad_exposures_stop",
-    33: "tests/records/test_preparing.py::test_years_without_losses_stay_and_the_last_is_observed_in_part",
-    35: "tests/records/test_preparing.py::"
-    "test_no_loss_and_no_window_stops_but_a_declared_window_counts_zero_years",
-    36: "tests/fitting/test_refusals.py::test_one_loss_supports_no_free_shape",
-    37: "tests/fitting/test_refusals.py::test_all_losses_equal",
-    38: "tests/fitting/test_refusals.py::test_counts_without_overdispersion_have_no_negative_binomial",
-    40: "tests/fitting/test_notes.py::test_alarms_of_the_tail",
     50: "tests/report/test_workbook.py::test_text_never_runs_as_a_formula",
-    51: "tests/batch/test_batch_names.py::test_result_names_are_safe_unique_and_free_of_order",
     52: "tests/report/test_page.py::test_names_cannot_inject",
     54: "tests/portfolio/test_portfolio_file.py::test_faults_name_their_key_and_remedy",
     59: "tests/records/test_previous.py::test_59_last_quarters_file_again_stops_unless_it_is_confirmed",
     60: "tests/records/test_previous.py::test_60_claims_that_vanished_or_were_rewritten_are_listed",
-    61: "tests/batch/test_batch_names.py::test_result_names_are_safe_unique_and_free_of_order",
-    67: "tests/families/test_registry.py::test_slips_are_met_with_the_nearest_name",
     69: "tests/records/test_counts.py::test_69_counts_and_claims_that_disagree_stop_with_both_shown",
+    **{
+        number: f"tests/portfolio/test_catalogue_of_portfolios.py::test_{number}_{name}"
+        for number, name in (
+            (30, "a_year_without_exposure_stops"),
+            (31, "a_year_without_losses_stays_a_year"),
+            (32, "exposures_that_are_zero_stop_and_jumps_warn"),
+            (33, "the_year_of_the_valuation_date_counts_in_part"),
+            (35, "no_claims_at_all"),
+            (36, "one_claim_supports_no_free_shape"),
+            (37, "equal_amounts_are_warned_of_and_not_fitted"),
+            (38, "constant_counts_have_no_negative_binomial"),
+            (40, "a_tail_without_a_mean_is_said"),
+            (51, "a_link_out_of_the_folder_is_refused"),
+            (61, "two_portfolios_of_one_name_do_not_share_a_folder"),
+            (67, "probabilities_that_do_not_sum_to_one_stop"),
+        )
+    },
 }
 """Rows that concern preparing, fitting, names and reports: where they are tested."""

@@ -18,7 +18,7 @@ from lossagg.records import check_losses, columnar, delimited, read_losses
 
 ROOT = Path(__file__).resolve().parents[2]
 DAY = dt.date(2024, 5, 6)
-OTHER_FILES = {18, 48, 49, 53, 55, 57, 58, 62}
+OTHER_FILES = {13, 18, 48, 49, 53, 55, 57, 58, 62}
 """Rows with cases among the workbooks, Parquet and odd files of this module."""
 
 
@@ -65,6 +65,42 @@ def notes(path: Path, **options: object) -> list[tuple[str, str]]:
     table = read_losses(path, **options)  # type: ignore[arg-type]
     checked = check_losses(table, valuation_date=dt.date(2025, 12, 31), currency="EUR", tolerance=0.9)
     return [(finding.code, str(finding)) for finding in checked.findings]
+
+
+def test_13_whole_numbers_of_a_parquet_file_become_floats(tmp_path: Path) -> None:
+    """An integer grid truncates silently later on; the table is all float64 and the sum exact."""
+    amounts = pa.array([7, 2**53 + 1], pa.int64())
+    pq.write_table(pa.table({"amount": amounts, "date": [DAY] * 2}), tmp_path / "a.parquet")
+    table = read_losses(tmp_path / "a.parquet")
+    assert table.amount.dtype == "float64"
+    assert table.exact.total() == 2**53 + 8
+    assert ("precision", "warn") in {(fault.code, fault.action) for fault in table.faults}
+
+
+def test_18_a_29_february_1900_and_an_empty_date_that_became_one(tmp_path: Path) -> None:
+    """Serial 60 is a day that never was, 1 the first of January 1900: what a workbook makes of nothing."""
+    book = openpyxl.Workbook()
+    for row in (["amount", "date"], [5, DAY], [6, 60], [7, 1], [8, 61]):
+        book.active.append(row)
+    for row in (3, 4, 5):
+        book.active.cell(row, 2).number_format = "yyyy-mm-dd"
+    book.save(tmp_path / "a.xlsx")
+    assert [text for code, text in notes(tmp_path / "a.xlsx") if code == "early-date"] == [
+        f"the date is before March 1900, in file a.xlsx, sheet 'Sheet', row {row}, column 'date'; seen: "
+        f"'{seen}'. Correct it; workbooks count a 29 February 1900 that never was, and show "
+        "an empty date as 1900."
+        for row, seen in ((3, "1900-02-28"), (4, "1900-01-01"))
+    ]
+
+
+def test_18_a_day_number_beyond_the_calendar(tmp_path: Path, recwarn: pytest.WarningsRecorder) -> None:
+    book = openpyxl.Workbook()
+    for row in (["amount", "date"], [5, DAY], [6, 2958466]):
+        book.active.append(row)
+    book.active.cell(3, 2).number_format = "yyyy-mm-dd"
+    book.save(tmp_path / "a.xlsx")
+    assert "missing-date" in dict(notes(tmp_path / "a.xlsx"))
+    assert not recwarn.list
 
 
 def test_18_serial_and_text_dates_in_one_column(tmp_path: Path) -> None:

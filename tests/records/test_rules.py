@@ -42,9 +42,9 @@ def only(checked, code: str):
             "amount,date",
             "5,1899-12-31",
             "early-date",
-            "the date is before 1900, in file losses.csv, row 3, column 'date'; seen: '1899-12-31'. "
-            "Correct it.",
-            id="before 1900",
+            "the date is before March 1900, in file losses.csv, row 3, column 'date'; seen: '1899-12-31'. "
+            "Correct it; workbooks count a 29 February 1900 that never was, and show an empty date as 1900.",
+            id="before March 1900",
         ),
         pytest.param(
             "amount,date",
@@ -138,7 +138,7 @@ def test_row_is_set_aside(check, columns: str, row: str, code: str, text: str) -
     ("columns", "row"),
     [
         ("amount,date", "5,2025-12-31"),
-        ("amount,date", "5,1900-01-01"),
+        ("amount,date", "5,1900-03-01"),
         ("amount,date,reported", "5,2024-03-01,2024-03-01"),
         ("amount,date,reported", "5,2024-03-01,"),
         ("amount,date,threshold", "5,2024-03-01,5"),
