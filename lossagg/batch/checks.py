@@ -36,6 +36,7 @@ def check_folder(
         EnvironmentFault: a portfolio checked alone cannot be opened, or the results cannot be written.
     """
     from lossagg.portfolio.checking import check_portfolio
+    from lossagg.pricing.checking import check_options
     from lossagg.records.trail import TEXTS
     from lossagg.report.checking import write_check
     from lossagg.report.folder import CHECK_FILES, check_destination
@@ -50,9 +51,9 @@ def check_folder(
         check = _check_all(source, progress)
         return check, None if out is None else write_check(check, out, facts=facts)
     if out is None:
-        return check_portfolio(source), None
+        return check_portfolio(source, further=check_options), None
     trail: list[Any] = []
-    check = check_portfolio(source, trail=trail)
+    check = check_portfolio(source, further=check_options, trail=trail)
     return check, write_check(check, out, trail=trail_csv(trail, TEXTS), facts=facts)
 
 
@@ -83,9 +84,10 @@ def _check_all(folder: Path, progress: Progress) -> dict[str, Any]:
 def _checked(path: Path) -> dict[str, Any]:
     """The check of one portfolio of several; whatever stops it does not stop the others."""
     from lossagg.portfolio.checking import check_portfolio, stopped_check
+    from lossagg.pricing.checking import check_options
 
     try:
-        return check_portfolio(path)
+        return check_portfolio(path, further=check_options)
     # The outermost boundary of one portfolio: the others must be checked whatever it is.
     except Exception as error:  # noqa: BLE001
         failure = explain(error)

@@ -40,11 +40,17 @@ _LONGEST_VALUE = 60
 Made = TypeVar("Made")
 
 
-def check_portfolio(path: str | Path, *, trail: list[pd.DataFrame] | None = None) -> Data:
+def check_portfolio(
+    path: str | Path,
+    *,
+    further: Callable[[PortfolioFile], None] | None = None,
+    trail: list[pd.DataFrame] | None = None,
+) -> Data:
     """Read and check a portfolio, and say what stands in the way of an assessment.
 
     Args:
         path: the folder, or its portfolio file.
+        further: checks what rooms above this one know of the portfolio file; stops like the rest.
         trail: receives the trail of every line that has records, see `lossagg.records.row_trail`.
 
     Returns:
@@ -57,7 +63,7 @@ def check_portfolio(path: str | Path, *, trail: list[pd.DataFrame] | None = None
         EnvironmentFault: a file cannot be opened.
     """
     folder, path = portfolio_file(Path(path))
-    check = _Check(folder, path)
+    check = _Check(folder, path, further)
     data = check.data()
     if trail is not None:
         trail += check.trail()
@@ -79,8 +85,10 @@ def stopped_check(path: Path, what: str, where: str | None, remedy: str | None) 
 class _Check:
     """A check under way: what stops one part is kept as a finding, and the next part is looked at."""
 
-    def __init__(self, folder: Path, path: Path) -> None:
-        self.folder, self.path = folder, path
+    def __init__(
+        self, folder: Path, path: Path, further: Callable[[PortfolioFile], None] | None = None
+    ) -> None:
+        self.folder, self.path, self.further = folder, path, further
         self.findings: list[Finding] = []
         self.inputs: dict[str, Data] = {}
         self.controls: list[Data] = []
@@ -128,6 +136,8 @@ class _Check:
         self.kept(lambda: placed_covers(file), "portfolio-file")
         self.kept(lambda: assumed(file.dependence, [line.name for line in file.line]), "portfolio-file")
         self.kept(lambda: _require_own_names(file.line), "portfolio-file")
+        if self.further is not None:
+            self.kept(partial(self.further, file), "portfolio-file")
         records = self.records(file)
         return [
             self.line(file, line, records.get(line.name), f"line[{k}]")

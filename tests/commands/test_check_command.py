@@ -178,6 +178,30 @@ def test_a_hundred_portfolios_one_bad_within_a_minute(tmp_path: Path) -> None:
     assert [part["folder"] for part in check["portfolios"]] == [f"p{k:03}" for k in range(100)]
 
 
+@pytest.mark.parametrize(
+    ("options", "message"),
+    [
+        ('[pricing]\nlines = ["Fier"]\n', "options are for lines of the portfolio, each named once"),
+        ('[pricing]\nbase = "none"\n[[option]]\nname = "A"\n', "the base is no option of the table"),
+        ('[[option]]\nname = "A"\n[[option]]\nname = "A"\nlimit = 5\n', "two options have the same name"),
+        (
+            '[[option]]\nname = "A"\nlimit = 5\nreinstatements = 1\nreinstatement-rate = 1.0\n',
+            "paid reinstatements make the premium depend on the losses",
+        ),
+        ('[[option]]\nname = "A"\nretained-cap = 5\n', "retained"),
+        ("[option-grid]\ndeductibles = [100]\nlimits = [50, 0]\n", "greater than 0"),
+    ],
+)
+def test_options_are_checked_as_far_as_they_can_be_without_a_model(
+    tmp_path: Path, options: str, message: str
+) -> None:
+    check = checked(recorded_portfolio(tmp_path, RECORDS + options))
+    assert check["status"] == "stopped"
+    (stop,) = (found for found in check["findings"] if found["severity"] == "stop")
+    assert message in stop["message"]
+    assert stop["remedy"]
+
+
 def test_a_portfolio_that_breaks_the_check_itself_stops_no_other(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
@@ -185,10 +209,10 @@ def test_a_portfolio_that_breaks_the_check_itself_stops_no_other(
 
     check = checking.check_portfolio
 
-    def breaking(path: Path) -> dict:
+    def breaking(path: Path, **options: object) -> dict:
         if path.name == "a":
             raise IndexError("planted")
-        return check(path)
+        return check(path, **options)
 
     monkeypatch.setattr(checking, "check_portfolio", breaking)
     for name in ("a", "b"):
