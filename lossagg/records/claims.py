@@ -9,7 +9,7 @@ import numpy as np
 from lossagg.arrays import BoolArray, FloatArray, IntArray
 from lossagg.records.check import CheckedLosses
 from lossagg.records.controls import standing_claims
-from lossagg.records.events import CLOSED, is_open
+from lossagg.records.events import CLOSED_WORDS, is_open
 from lossagg.records.words import WordArray, by_word
 
 NEVER = np.iinfo(np.int64).max
@@ -43,7 +43,7 @@ class Claims:
         self.row: IntArray = _first(rows, code, size)
         self.amount: FloatArray = table.exact[rows].by_group(code, size).to_floats()
         self.open: BoolArray = np.bincount(code, is_open(table)[rows], size) > 0
-        closed = by_word(table.word("status"), lambda status: status.casefold() in CLOSED)[rows]
+        closed = by_word(table.word("status"), lambda status: status.casefold() in CLOSED_WORDS)[rows]
         self.closed: BoolArray = np.bincount(code, ~closed, size) == 0
         # Days as they are, a missing one as the latest there is.
         days = np.where(np.isnat(table.date[rows]), NEVER, table.date[rows].astype(np.int64))

@@ -23,6 +23,9 @@ from lossagg.records.words import WordArray, by_word, word_codes
 
 OPEN = ("open", "reopened", "re-opened")
 CLOSED = ("closed", "settled", "final")
+OPEN_WORDS = (*OPEN, "offen", "ouvert", "abierto", "aperto")
+CLOSED_WORDS = (*CLOSED, "geschlossen", "clos", "cerrado", "chiuso")
+"""What is understood of a status, in any case: the English words and their like in files from elsewhere."""
 HOURS_PER_DAY = 24
 
 
@@ -112,7 +115,7 @@ def is_open(table: LossTable) -> BoolArray:
     """True for rows whose status says that the claim is open; shape (rows,)."""
     if "status" not in table.words:
         return np.zeros(len(table), dtype=np.bool_)
-    return by_word(table.word("status"), lambda status: status.casefold() in OPEN)
+    return by_word(table.word("status"), lambda status: status.casefold() in OPEN_WORDS)
 
 
 def event_sums(values: FloatArray, index: IntArray, claims: IntArray) -> FloatArray:

@@ -30,7 +30,8 @@ WORDS: Mapping[str, str] = {
     ),
     "claim": (
         "claim, claim number, claim no, claim id, claim reference, claim ref, reference, reference number, "
-        "loss id, loss number, schadennummer, numéro de sinistre, siniestro, sinistro"
+        "loss id, loss number, claim nr, schadennummer, schaden nr, schadennr, numéro de sinistre, "
+        "no sinistre, siniestro, sinistro"
     ),
     "status": "status, claim status, state, open or closed, stand, statut, estado, stato",
     "paid": "paid, paid to date, total paid, paid amount, payments, bezahlt, payé, pagado, pagato",

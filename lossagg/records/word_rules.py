@@ -7,7 +7,7 @@ from collections.abc import Mapping, Sequence
 import numpy as np
 
 from lossagg.arrays import BoolArray
-from lossagg.records.events import CLOSED, OPEN, is_open
+from lossagg.records.events import CLOSED, CLOSED_WORDS, OPEN, OPEN_WORDS, is_open
 from lossagg.records.faults import Fault
 from lossagg.records.findings import Finding
 from lossagg.records.headings import nearest
@@ -20,8 +20,8 @@ def status_faults(table: LossTable, live: BoolArray) -> list[Fault]:
     if "status" not in table.words:
         return []
     status = table.words["status"]
-    known = by_word(status, lambda word: word.casefold() in (*OPEN, *CLOSED, ""))
-    closed = by_word(status, lambda word: word.casefold() in CLOSED)
+    known = by_word(status, lambda word: word.casefold() in (*OPEN_WORDS, *CLOSED_WORDS, ""))
+    closed = by_word(status, lambda word: word.casefold() in CLOSED_WORDS)
     return [
         Fault(
             "unknown-status",

@@ -9,8 +9,9 @@ import numpy as np
 import pytest
 
 from lossagg.errors import InputError
-from lossagg.records import read_losses
+from lossagg.records import check_losses, read_losses
 from lossagg.records.amounts import NumberStyle
+from lossagg.records.events import is_open
 from lossagg.records.findings import RecordsError
 from lossagg.records.propose import propose_reading
 from lossagg.records.suggest import main_span, suggested_threshold
@@ -168,3 +169,26 @@ def test_a_slip_of_two_centuries_does_not_make_the_window() -> None:
     days = np.arange("2015-01-01", "2025-01-01", 7, dtype="datetime64[D]")
     first, last = main_span(np.append(days, np.datetime64("2204-05-01")))
     assert (first, last) == (days[0], days[-1])
+
+
+def test_a_german_export_is_understood_to_the_status(tmp_path: Path) -> None:
+    """Semicolons, decimal commas, day first, cp1252: nothing is left over, and open claims are open."""
+    rows = [
+        f"SCH-{k:03};{1 + k % 28:02}.{1 + k % 12:02}.2023;1.{k:03},50;{'offen' if k % 3 else 'Geschlossen'}"
+        for k in range(40)
+    ]
+    text = "\r\n".join(["Schaden-Nr;Schadendatum;Schadenhöhe;Status", *rows]) + "\r\n"
+    (tmp_path / "schaden.csv").write_bytes(text.encode("cp1252"))
+    proposal = propose_reading(tmp_path / "schaden.csv", encoding="cp1252")
+    table = read_losses(
+        tmp_path / "schaden.csv",
+        columns=proposal.columns,
+        encoding="cp1252",
+        decimal=",",
+        thousands=".",
+        date_format="%d.%m.%Y",
+    )
+    assert set(proposal.columns) == {"claim", "date", "amount", "status"}
+    checked = check_losses(table, valuation_date=dt.date(2023, 12, 31), currency="EUR")
+    assert "unknown-status" not in {finding.code for finding in checked.findings}
+    assert int(is_open(table).sum()) == sum(k % 3 > 0 for k in range(40))
