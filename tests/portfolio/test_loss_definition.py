@@ -39,6 +39,7 @@ def test_collection_threshold(tmp_path: Path) -> None:
         tmp_path, "amount,date,threshold\n" + "".join(f"{x}000,2024-01-01,10000\n" for x in (12, 15, 20, 40))
     )
     assert fitted(losses, "exponential")["mean"] == pytest.approx(11_750, rel=1e-12)
+    assert fit_severity(losses.amount, "exponential").parameters["mean"] == pytest.approx(21_750, rel=1e-12)
     alpha = 4 / sum(math.log(x / 10) for x in (12, 15, 20, 40))
     assert fitted(losses, "pareto")["alpha"] == pytest.approx(alpha, rel=1e-9)
     assert round(alpha, 5) == 1.49968
@@ -82,6 +83,37 @@ def test_policy_limit(tmp_path: Path) -> None:
     assert round(fitted(losses, "pareto")["alpha"], 5) == 0.52539
     blind = prepared(tmp_path, (text + "100000,2024-01-01,10000,\n"))
     assert round(fitted(blind, "pareto")["alpha"], 5) == 0.78809
+
+
+def test_amounts_net_of_a_deductible_and_from_the_ground_up_give_one_fit(tmp_path: Path) -> None:
+    """The same 40 invented claims above a deductible of 1,000, given both ways: every parameter to 1e-9."""
+    head = """
+[portfolio]
+name = "B"
+currency = "EUR"
+valuation-date = 2025-12-31
+[[line]]
+name = "A"
+records = "losses.csv"
+first-year = 2021
+trend = 0.03
+frequency = { fit = ["poisson"] }
+severity = { fit = ["lognormal"] }
+"""
+    found = []
+    for name, shift, keys in (
+        ("net", 1000.0, 'amount-basis = "excess"\ndeductible = 1000\n'),
+        ("ground-up", 0.0, "reporting-threshold = 1000\n"),
+    ):
+        folder = tmp_path / name
+        folder.mkdir()
+        amounts = [1000 + 50.37 * (k * 7919 % 101 + 1) - shift for k in range(40)]
+        rows = "".join(f"{x:.2f},{2021 + k % 5}-05-0{1 + k % 9}\n" for k, x in enumerate(amounts))
+        (folder / "losses.csv").write_text("amount,date\n" + rows)
+        (folder / "portfolio.toml").write_text(head + keys)
+        model = read_portfolio(folder).models()[0]
+        found.append([*model.severity.parameters.values(), model.frequency.mean()])
+    assert found[0] == pytest.approx(found[1], rel=1e-9)
 
 
 def test_claims_of_one_occurrence_meet_the_deductible_once(tmp_path: Path) -> None:

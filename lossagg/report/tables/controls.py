@@ -36,7 +36,7 @@ def control_totals(assessment: Assessment) -> Table:
         Column("Records used", "amount"),
         Column("Records set aside", "amount"),
         Column("Difference", "amount"),
-        Column("Tolerance", "amount"),
+        Column("Tolerance", "number"),
         Column("Agrees"),
     )
     currency = assessment["portfolio"]["currency"]
