@@ -137,6 +137,8 @@ class Money:
         Returns:
             The sums, shape (groups,).
         """
+        if groups == len(self) and (np.bincount(group, minlength=groups) == 1).all():
+            return self._placed(group)
         most = np.zeros(groups, dtype=np.int8)
         np.maximum.at(most, group, self.places)
         lift = most[group] - self.places
@@ -153,6 +155,13 @@ class Money:
         hard |= {int(group[at]) for at in self.odd}
         if hard:
             _sum_hard_groups(self, column, group, hard)
+        return column
+
+    def _placed(self, place: IntArray) -> Money:
+        """The amounts in other places, each of which is taken once."""
+        column = Money.zeros(len(self))
+        column.units[place], column.places[place] = self.units, self.places
+        column.odd.update({int(place[at]): amount for at, amount in self.odd.items()})
         return column
 
     def to_floats(self) -> FloatArray:

@@ -52,3 +52,11 @@ def test_changing_a_copy_leaves_the_column() -> None:
     assert column.tolist() == [Decimal("1.10"), Decimal("1e300")]
     assert other.tolist() == [Decimal("1e300"), Decimal("2.2")]
     assert other.odd.keys() == {0}
+
+
+def test_groups_of_one_are_moved_not_summed() -> None:
+    """Each amount its own group, in another order, those of many digits too."""
+    written = ["1.25", "123456789012345678901234.5", "-7", "0.001"]
+    place = np.array([2, 0, 3, 1])
+    found = Money.of([Decimal(text) for text in written]).by_group(place, 4)
+    assert [str(amount) for amount in found] == [written[k] for k in np.argsort(place)]
