@@ -54,7 +54,7 @@ def check_folder(
         return check_portfolio(source, further=check_options), None
     trail: list[Any] = []
     check = check_portfolio(source, further=check_options, trail=trail)
-    return check, write_check(check, out, trail=trail_csv(trail, TEXTS), facts=facts)
+    return check, write_check(check, out, trail=trail_csv(trail, TEXTS) or None, facts=facts)
 
 
 def exit_code(check: dict[str, Any]) -> int:
@@ -71,6 +71,7 @@ def _check_all(folder: Path, progress: Progress) -> dict[str, Any]:
     for place, name in enumerate(names):
         progress(f"{place} of {len(names)} portfolios", place / len(names))
         parts.append({"folder": name, **_checked(folder / name)})
+    _warn_of_one_name(parts)
     statuses = [part["status"] for part in parts]
     return {
         "format": "lossagg.check-folder/1",
@@ -79,6 +80,35 @@ def _check_all(folder: Path, progress: Progress) -> dict[str, Any]:
         "run": {"version": __version__},
         "portfolios": parts,
     }
+
+
+def _warn_of_one_name(parts: list[dict[str, Any]]) -> None:
+    """Warn of portfolios that bear one name: one may be a copy, and would count twice in any sum."""
+    from lossagg.records import Finding
+
+    folders: dict[str, list[str]] = {}
+    for part in parts:
+        folders.setdefault(str(part["portfolio"]["name"]).casefold(), []).append(part["folder"])
+    for part in parts:
+        others = [
+            name for name in folders[str(part["portfolio"]["name"]).casefold()] if name != part["folder"]
+        ]
+        if others:
+            more = f" and {len(others) - 1} more" if len(others) > 1 else ""
+            found = Finding(
+                "same-name",
+                "warn",
+                PORTFOLIO_FILE,
+                None,
+                None,
+                others[0],
+                f"the portfolio bears the name of that in folder {others[0]}{more}",
+                "Give each its own name; if one is a copy, take it out of the folder.",
+                count=0,
+            )
+            last = sum(part["counts"][severity] for severity in ("stop", "set aside", "warning"))
+            part["findings"].insert(last, found.to_dict())
+            part["counts"]["warning"] += 1
 
 
 def _checked(path: Path) -> dict[str, Any]:

@@ -5,6 +5,7 @@ from pathlib import Path
 import pytest
 from folders import GIVEN, RECORDS, given_portfolio, recorded_portfolio
 
+from lossagg.batch.checks import check_folder
 from lossagg.batch.names import result_names
 from lossagg.errors import FitError, InputError
 from lossagg.portfolio import read_portfolio
@@ -130,10 +131,20 @@ def test_51_a_link_out_of_the_folder_is_refused(tmp_path: Path) -> None:
         read_portfolio(folder)
 
 
-def test_61_two_portfolios_of_one_name_do_not_share_a_folder(tmp_path: Path) -> None:
-    """What tells portfolios apart are their folders, which cannot be equal; equal slugs are told apart."""
-    found = result_names(["Pool A", "pool-a", "POOL_A"])
-    assert len(set(found.values())) == 3
+def test_61_two_portfolios_of_one_name_are_named_and_do_not_share_a_folder(tmp_path: Path) -> None:
+    """What tells portfolios apart are their folders; results of equal slugs go to different places."""
+    for name in ("a", "b"):
+        given_portfolio(tmp_path / name)
+    given_portfolio(tmp_path / "c", GIVEN.replace("Two lines", "Others"))
+    check, _ = check_folder(tmp_path)
+    found = {part["folder"]: part["findings"] for part in check["portfolios"]}
+    assert [found["a"][0]["message"], found["b"][0]["message"], found["c"]] == [
+        "the portfolio bears the name of that in folder b",
+        "the portfolio bears the name of that in folder a",
+        [],
+    ]
+    assert [part["counts"]["warning"] for part in check["portfolios"]] == [1, 1, 0]
+    assert len(set(result_names(["Pool A", "pool-a", "POOL_A"]).values())) == 3
 
 
 @pytest.mark.parametrize(
