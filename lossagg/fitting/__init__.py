@@ -17,6 +17,7 @@ from lossagg.fitting.credibility import (
     limited_fluctuation,
     posterior_rate,
 )
+from lossagg.fitting.cross_reference import CrossReference, cross_reference
 from lossagg.fitting.diagnostics import (
     CountPoints,
     QuantilePoints,
@@ -31,6 +32,11 @@ from lossagg.fitting.goodness_test import GoodnessTest, goodness_test
 from lossagg.fitting.grouped import GroupedFit, fit_grouped
 from lossagg.fitting.notes import Note
 from lossagg.fitting.overdispersion import Overdispersion, overdispersion
+from lossagg.fitting.parameter_bootstrap import (
+    ParameterBootstrap,
+    bootstrap_frequency,
+    bootstrap_severity,
+)
 from lossagg.fitting.regression import PoissonRegression, poisson_regression
 from lossagg.fitting.results import Fit, FrequencyFit, SeverityFit
 from lossagg.fitting.severity import fit_severity
@@ -43,6 +49,7 @@ __all__ = [
     "CountGoodness",
     "CountPoints",
     "Credibility",
+    "CrossReference",
     "Fit",
     "FrequencyFit",
     "FrequencyTrend",
@@ -51,6 +58,7 @@ __all__ = [
     "GroupedFit",
     "Note",
     "Overdispersion",
+    "ParameterBootstrap",
     "PoissonRegression",
     "PosteriorRate",
     "QuantilePoints",
@@ -60,11 +68,14 @@ __all__ = [
     "TailPoint",
     "TailQuantile",
     "ThresholdChoice",
+    "bootstrap_frequency",
+    "bootstrap_severity",
     "buhlmann_straub",
     "compare_frequencies",
     "compare_severities",
     "count_goodness",
     "count_points",
+    "cross_reference",
     "fit_frequency",
     "fit_grouped",
     "fit_severity",
