@@ -8,7 +8,7 @@ from typing import Any
 
 import numpy as np
 
-from lossagg.fitting import Candidates, Fit, count_points, quantile_points, survival_points
+from lossagg.fitting import Candidates, Fit, FrequencyFit, count_points, quantile_points, survival_points
 from lossagg.portfolio.assessment import Data, number
 from lossagg.portfolio.fit_tests import DRAWS, THRESHOLDS, frequency_tests, severity_tests, tail_evidence
 from lossagg.portfolio.history import history_data
@@ -55,6 +55,7 @@ def _frequency(model: LineModel, draws: int) -> Data:
         "family": law.family,
         "parameters": law.parameters,
         "standard_errors": None,
+        "intervals": None,
         "source": "given" if tried is None else "fitted",
         "mean": law.mean(),
         "variance": law.variance(),
@@ -71,6 +72,7 @@ def _frequency(model: LineModel, draws: int) -> Data:
             at_forecast["mean"] = error * model.forecast_exposure
         entry |= {
             "standard_errors": at_forecast,
+            "intervals": _intervals(model, fit),
             "candidates": _candidates(tried),
             "choice": _choice(tried),
             "credibility": None if model.rate is None else model.rate.to_dict(),
@@ -86,6 +88,7 @@ def _severity(model: LineModel, draws: int) -> Data:
         "family": law.family,
         "parameters": law.parameters,
         "standard_errors": None,
+        "intervals": None,
         "source": "given" if tried is None else "fitted",
         "mean": number(law.mean()),
         "sd": number(law.sd()),
@@ -100,6 +103,7 @@ def _severity(model: LineModel, draws: int) -> Data:
         fit = tried.chosen
         entry |= {
             "standard_errors": fit.standard_errors,
+            "intervals": _intervals(model, fit),
             "threshold": float(prepared.threshold.min()) if prepared.threshold.size else None,
             "observations": fit.observations,
             "censored": fit.censored,
@@ -108,6 +112,19 @@ def _severity(model: LineModel, draws: int) -> Data:
             "notes": [str(note) for note in fit.notes],
         }
     return entry
+
+
+def _intervals(model: LineModel, fit: Fit) -> Data:
+    """95 % interval of every estimated parameter; that of a mean count at the forecast exposure."""
+    intervals: Data = {}
+    for name in fit.parameters:
+        if name in fit.fixed or (model.rate is not None and name == "mean"):
+            continue
+        scale = model.forecast_exposure if name == "mean" and isinstance(fit, FrequencyFit) else 1.0
+        low, high = fit.interval(name)
+        if np.isfinite(low) and np.isfinite(high):
+            intervals[name] = [low * scale, high * scale]
+    return intervals
 
 
 def _choice(tried: Candidates[Any]) -> Data:

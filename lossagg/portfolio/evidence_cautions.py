@@ -8,6 +8,7 @@ from lossagg.portfolio.assessment import Data
 from lossagg.portfolio.cautions import Caution
 
 QUESTIONABLE = 0.05  # a p-value from here down is told; common practice, no source
+SENSITIVE = 0.1  # change of the value at risk that is told (our choice, no source)
 _DISTANCES = {
     "kolmogorov_smirnov": "Kolmogorov-Smirnov",
     "anderson_darling": "Anderson-Darling",
@@ -26,6 +27,28 @@ def evidence_cautions(lines: Sequence[Data]) -> list[Caution]:
         for line in lines
         for code, message in _of_line(line)
     ]
+
+
+def tail_cautions(lines: Sequence[Data]) -> list[Caution]:
+    """Cautions from the sensitivity of the value at risk to where the tail begins, as `lossagg fit` finds it.
+
+    Args:
+        lines: the entries of a fit report.
+    """
+    found = []
+    for line in lines:
+        moved = [row for row in line["sensitivity"] if row["relative"] is not None]
+        widest = max(moved, key=lambda row: abs(row["relative"]), default=None)
+        if widest is not None and abs(widest["relative"]) >= SENSITIVE:
+            found.append(
+                {
+                    "code": "tail-sensitive",
+                    "message": f"Line {line['name']!r}: its value at risk at {line['level']:g} changes by "
+                    f"{100 * widest['relative']:+.0f} % where the tail is a generalized Pareto law from "
+                    f"{widest['threshold']:,.6g} on: the choice of the tail is part of the figure.",
+                }
+            )
+    return found
 
 
 def _of_line(line: Data) -> Iterator[tuple[str, str]]:

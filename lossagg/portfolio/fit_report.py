@@ -6,8 +6,9 @@ from lossagg.portfolio.assess import Progress, silent
 from lossagg.portfolio.assessment import Data
 from lossagg.portfolio.cautions import cautions
 from lossagg.portfolio.evidence import line_evidence
-from lossagg.portfolio.evidence_cautions import evidence_cautions
+from lossagg.portfolio.evidence_cautions import evidence_cautions, tail_cautions
 from lossagg.portfolio.line import LineModel
+from lossagg.portfolio.parameter_error import parameter_error
 from lossagg.portfolio.portfolio import Portfolio
 from lossagg.portfolio.what_if import influence, sensitivity
 from lossagg.version import __version__
@@ -25,8 +26,9 @@ def fit_report(portfolio: Portfolio, *, draws: int = _DRAWS, progress: Progress 
         progress: called with the stage and the fraction done.
 
     Returns:
-        Plain data: per line what an assessment says of its fits, and beside it the sensitivity of the
-        line's value at risk at the capital level to the tail threshold and to single losses.
+        Plain data: per line what an assessment says of its fits, and beside it the parameter
+        error of the line's value at risk at the capital level, and its sensitivity to the tail threshold and
+        to single losses.
 
     Raises:
         InputError: a value of the portfolio file that cannot be used.
@@ -56,6 +58,7 @@ def fit_report(portfolio: Portfolio, *, draws: int = _DRAWS, progress: Progress 
         "cautions": [
             *cautions(models, sorted({*section.levels, section.capital_level})),
             *evidence_cautions(lines),
+            *tail_cautions(lines),
         ],
     }
 
@@ -63,9 +66,11 @@ def fit_report(portfolio: Portfolio, *, draws: int = _DRAWS, progress: Progress 
 def _line(model: LineModel, level: float, draws: int) -> Data:
     entry = line_evidence(model, draws, _THRESHOLDS, min(draws, _TAIL_DRAWS))
     fitted = model.severities is not None and model.prepared is not None
+    uncertain = fitted or model.frequencies is not None
     return {
         **entry,
         "level": level,
+        "parameter_error": parameter_error(model, level) if uncertain else None,
         "sensitivity": sensitivity(model, entry["tail"], level) if fitted else [],
         "influence": influence(model, level) if fitted else [],
     }

@@ -2,13 +2,13 @@
 
 Sensitivity: the chosen law keeps its body, and above a threshold its tail gives way to the generalized Pareto
 law fitted to the losses above; the share above is that of the chosen law at the largest reporting threshold,
-times the share of the losses recorded there that exceed the threshold. Two neighbouring thresholds on either
-side of the first show how much hangs on that choice.
+times the share of the losses recorded there that exceed the threshold. It begins where each rule would have
+it begin, and at two neighbouring thresholds on either side of the first, which shows how much hangs on it.
 
 Influence: severity and frequency of the line are fitted again, the same families, without each of the largest
-losses in turn and with one more as large as the expected largest of as many losses (the quantile at
-1 - 1 / (2 n) of the fitted law), and the line is computed again. No approximation is taken, so leaving one
-out here is leaving it out.
+losses in turn, with one more of median size, and with one more as large as is exceeded once in twice as many
+losses (the quantile at 1 - 1 / (2 n) of the fitted law above the threshold), and the line
+is computed again. No approximation is taken, so leaving one out here is leaving it out.
 """
 
 from __future__ import annotations
@@ -58,10 +58,14 @@ def sensitivity(model: LineModel, tail: Data, level: float) -> list[Data]:
     if start is None:
         return rows
     large = Large.of(prepared.amount, prepared.threshold, prepared.censored)
+    for rule in tail["rules"]:
+        if rule["threshold"] is not None and rule["threshold"] != thresholds[start]:
+            rows.append(_at(model, large, rule["threshold"], rule["rule"], level, base))
     for step in range(-STEPS, STEPS + 1):
         place = start + step
         if 0 <= place < len(thresholds):
-            rows.append(_at(model, large, thresholds[place], step, level, base))
+            basis = "from here" if step == 0 else f"{step:+d} step{'s' if abs(step) > 1 else ''}"
+            rows.append(_at(model, large, thresholds[place], basis, level, base))
     return rows
 
 
@@ -76,8 +80,7 @@ def _start(model: LineModel, tail: Data, thresholds: list[float]) -> int | None:
     return int(np.argmin(np.abs(np.log(np.asarray(thresholds) / wanted[0]))))
 
 
-def _at(model: LineModel, large: Large, threshold: float, step: int, level: float, base: float) -> Data:
-    basis = "from here" if step == 0 else f"{step:+d} step{'s' if abs(step) > 1 else ''}"
+def _at(model: LineModel, large: Large, threshold: float, basis: str, level: float, base: float) -> Data:
     entry: Data = {"basis": basis, "threshold": threshold, "shape": None}
     amounts, marks = large.above(threshold)
     try:
@@ -92,7 +95,7 @@ def _at(model: LineModel, large: Large, threshold: float, step: int, level: floa
 
 
 def influence(model: LineModel, level: float, largest: int = LARGEST) -> list[Data]:
-    """The line's value at risk without each of its largest losses, and with one more plausible one.
+    """The line's value at risk without each of its largest losses, and with one more.
 
     Args:
         model: the line, both laws fitted.
@@ -111,10 +114,13 @@ def influence(model: LineModel, level: float, largest: int = LARGEST) -> list[Da
         year = int(prepared.year[place] - prepared.years.year[0])
         change = {"change": f"without the {_ordinal(rank)}", "amount": float(prepared.amount[place])}
         rows.append(_again(model, change, _Losses.of(prepared, kept), (year, -1), level, base))
-    more = float(model.severity.isf(_seen(model, prepared) / (2 * len(prepared))))
-    added = _Losses.of(prepared, np.ones(len(prepared), dtype=np.bool_)).with_one_more(more)
-    change = {"change": "with one more", "amount": more}
-    rows.append(_again(model, change, added, (len(prepared.years) - 1, 1), level, base))
+    every = _Losses.of(prepared, np.ones(len(prepared), dtype=np.bool_))
+    large = float(model.severity.isf(_seen(model, prepared) / (2 * len(prepared))))
+    sizes = {"of median size": float(np.median(prepared.amount)), "of a size yet to come": large}
+    for words, more in sizes.items():
+        change = {"change": f"with one more {words}", "amount": more}
+        added = every.with_one_more(more)
+        rows.append(_again(model, change, added, (len(prepared.years) - 1, 1), level, base))
     return rows
 
 

@@ -13,7 +13,9 @@ from typing import Literal
 
 from lossagg.report import digits
 
-Kind = Literal["text", "count", "money", "amount", "probability", "level", "number", "ratio", "period"]
+Kind = Literal[
+    "text", "count", "money", "amount", "probability", "level", "number", "ratio", "statistic", "period"
+]
 _UNPRINTABLE = re.compile(r"[\x00-\x08\x0b-\x1f\x7f-\x9f\u2028-\u202e\u2066-\u2069\ud800-\udfff\ufffe\uffff]")
 
 
@@ -118,8 +120,19 @@ def show(cell: Cell, kind: Kind) -> Shown:
 def _show_ranged(cell: Ranged) -> Shown:
     if cell.reason is not None:
         return Shown(digits.unsupported(cell.value), "no interval", repr(float(cell.value)), numeric=True)
+    if (cell.low is None) != (cell.high is None):
+        return _show_half_open(cell)
     unit = digits.supported_unit(cell.value, cell.low, cell.high)
     limits = "" if cell.low is None or cell.high is None else digits.enclosing(cell.low, cell.high, unit)
+    return Shown(digits.rounded(cell.value, unit), limits, repr(float(cell.value)), numeric=True)
+
+
+def _show_half_open(cell: Ranged) -> Shown:
+    """A figure bounded on one side only: its digits follow from the side that is known."""
+    known, words = (cell.low, "from") if cell.high is None else (cell.high, "up to")
+    assert known is not None
+    unit = digits.supported_unit(cell.value, min(known, cell.value), max(known, cell.value))
+    limits = f"{words} {digits.rounded(known, unit)}"
     return Shown(digits.rounded(cell.value, unit), limits, repr(float(cell.value)), numeric=True)
 
 
@@ -131,6 +144,8 @@ def _show_number(value: float, kind: Kind) -> str:
             return f"{value:,.2f}"
         case "money":
             return digits.rounded(value, digits.supported_unit(value, None, None))
+        case "statistic":
+            return digits.significant(value, 3)
         case "level":
             return digits.percent(value)
         case "probability":

@@ -54,6 +54,7 @@ def fit_tables(fits: Entry) -> tuple[Table, ...]:
         tables.fit_tests.goodness(lines),
         tables.fit_tests.frequency(lines),
         tables.fit_tests.tail_rules(lines, currency),
+        tables.fit_tests.parameter_error(lines, currency),
         tables.fit_tests.sensitivity(lines, currency),
         tables.fit_tests.influence(lines, currency),
         tables.fit_tests.tail_points(lines, currency),
@@ -94,6 +95,7 @@ def render_fit(fits: Entry) -> str:
 
 def _extra(line: Entry, currency: str) -> tuple[Table, ...]:
     return (
+        tables.fit_tests.parameter_error([line], currency),
         tables.fit_tests.sensitivity([line], currency),
         tables.fit_tests.influence([line], currency),
         tables.fit_tests.tail_points([line], currency),

@@ -180,7 +180,8 @@ def _line_facts(line: Entry, currency: str) -> list[tuple[str, str]]:
     ]
     if line["source"] == "given":
         return [*facts, ("Source", tables.lines.GIVEN)]
-    facts += [("Why this law", text) for law in (line["frequency"], size) if (text := _choice_text(law))]
+    laws = (("frequency", line["frequency"]), ("severity", size))
+    facts += [(f"Why this {name}", text) for name, law in laws if (text := _choice_text(law))]
     if weighed := _credibility_text(line["frequency"]):
         facts.append(("Credibility of the rate", weighed))
     threshold = size["threshold"]

@@ -24,6 +24,7 @@ SECOND = "#c0661b"
 PALE = "#c9d4dc"
 GRID = "#e3e7ea"
 MOST_MARKS = 400
+SHORT_AXIS = 60.0  # ends of a logarithmic axis this close get ticks between the powers of ten
 
 _STYLE: dict[Any, Any] = {
     "svg.fonttype": "none",
@@ -107,13 +108,20 @@ def log_amounts(axis: Axes, *, which: str) -> None:
     """Make an axis logarithmic with amounts as labels."""
     from matplotlib.ticker import FuncFormatter, LogLocator, NullLocator
 
+    class Amounts(LogLocator):
+        """Powers of ten, and 2 and 5 times them where the axis spans few."""
+
+        def tick_values(self, vmin: float, vmax: float) -> Any:
+            self.set_params(subs=(1.0, 2.0, 5.0) if vmax < SHORT_AXIS * vmin else (1.0,))
+            return super().tick_values(vmin, vmax)
+
     if which in ("x", "both"):
         axis.set_xscale("log")
-        axis.xaxis.set_major_locator(LogLocator(numticks=8))
+        axis.xaxis.set_major_locator(Amounts(numticks=8))
         axis.xaxis.set_major_formatter(FuncFormatter(amount_label))
         axis.xaxis.set_minor_locator(NullLocator())
     if which in ("y", "both"):
         axis.set_yscale("log")
-        axis.yaxis.set_major_locator(LogLocator(numticks=8))
+        axis.yaxis.set_major_locator(Amounts(numticks=8))
         axis.yaxis.set_major_formatter(FuncFormatter(amount_label))
         axis.yaxis.set_minor_locator(NullLocator())

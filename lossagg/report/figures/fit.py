@@ -44,6 +44,7 @@ def survival_figure(line: Entry, name: str, currency: str) -> str | None:
             alpha=0.7,
             linewidth=0,
             step="post",
+            label="95 % interval",
         )
         axis.step(
             amounts,

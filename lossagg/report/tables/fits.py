@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from lossagg.report.cells import Absent, Cell, Column, Estimated, Table
+from lossagg.report.cells import Absent, Cell, Column, Estimated, Ranged, Table
 from lossagg.report.reading import Entry, computed
 from lossagg.report.tables.lines import GIVEN, law_text
 
@@ -17,23 +17,27 @@ def parameters(lines: Sequence[Entry]) -> Table:
     for line in lines:
         for key, title in LAWS:
             law = line[key]
-            errors = law["standard_errors"] or {}
+            errors, intervals = law["standard_errors"] or {}, law.get("intervals") or {}
             for name, value in law["parameters"].items():
                 error = errors.get(name)
-                shown = Absent(_no_error(law)) if error is None else error
-                rows.append(
-                    (line["name"], title, law["family"], name, Estimated(value, error), shown, law["source"])
-                )
+                known = error if error else Absent(_no_error(law))
+                low, high = intervals.get(name, (None, None))
+                own: Cell = Estimated(value, error) if low is None else Ranged(value, low, high)
+                rows.append((line["name"], title, law["family"], name, own, known, law["source"]))
     columns = (
         Column("Line"),
         Column("Law of"),
         Column("Family"),
         Column("Parameter"),
-        Column("Value", "number"),
-        Column("Standard error", "number"),
+        Column("Value", "number", ranged=True),
+        Column("Standard error", "statistic"),
         Column("Source"),
     )
-    return Table("Parameters", "Parameters", columns, tuple(rows))
+    notes = (
+        "Below a value: its 95 % interval from the standard error, on the logarithmic scale where only "
+        "positive values make sense. It tells the error of the parameter, given that the law is right.",
+    )
+    return Table("Parameters", "Parameters", columns, tuple(rows), notes if any(rows) else ())
 
 
 def _no_error(law: Entry) -> str:
