@@ -9,7 +9,7 @@ from scipy import special
 
 from lossagg.arrays import FloatArray, Floats, IntArray, as_floats
 from lossagg.errors import FitError, InputError
-from lossagg.families import Binomial, NegativeBinomial
+from lossagg.families import Binomial, NegativeBinomial, Poisson
 from lossagg.families.base import CountLaw
 from lossagg.fitting.counts import counts_of
 from lossagg.fitting.frequency import fit_frequency
@@ -258,7 +258,12 @@ def draw_counts(law: CountLaw, size: int, random: np.random.Generator) -> FloatA
         return random.poisson(rates).astype(np.float64)
     if isinstance(law, Binomial):
         return random.binomial(int(law.trials), law.probability, size).astype(np.float64)
-    return random.poisson(law.mean(), size).astype(np.float64)
+    if isinstance(law, Poisson | NegativeBinomial):
+        return random.poisson(law.mean(), size).astype(np.float64)
+    most = 16
+    while float(law.sf(most)) > 1e-17:
+        most *= 2
+    return np.searchsorted(np.asarray(law.cdf(np.arange(most))), random.random(size)).astype(np.float64)
 
 
 def _refitted(drawn: FloatArray, fit: FrequencyFit, exposures: FloatArray) -> FrequencyFit:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from itertools import zip_longest
 from typing import Any
 
@@ -14,6 +14,8 @@ from lossagg.portfolio.fit_tests import DRAWS, THRESHOLDS, frequency_tests, seve
 from lossagg.portfolio.history import history_data
 from lossagg.portfolio.line import LineModel
 from lossagg.records import PreparedLosses
+
+_MEANS = ("mean", "base.mean")
 
 
 def line_evidence(
@@ -66,10 +68,9 @@ def _frequency(model: LineModel, draws: int) -> Data:
     }
     if tried is not None and model.prepared is not None:
         fit = tried.chosen
-        at_forecast = {**fit.standard_errors}
-        if "mean" in at_forecast:  # per unit of exposure; other parameters do not change with it
-            error = at_forecast["mean"] if model.rate is None else model.rate.standard_error
-            at_forecast["mean"] = error * model.forecast_exposure
+        at_forecast = _at_forecast(model, fit.standard_errors)
+        if model.rate is not None:
+            at_forecast["mean"] = model.rate.standard_error * model.forecast_exposure
         entry |= {
             "standard_errors": at_forecast,
             "intervals": _intervals(model, fit),
@@ -116,15 +117,25 @@ def _severity(model: LineModel, draws: int) -> Data:
 
 def _intervals(model: LineModel, fit: Fit) -> Data:
     """95 % interval of every estimated parameter; that of a mean count at the forecast exposure."""
-    intervals: Data = {}
-    for name in fit.parameters:
-        if name in fit.fixed or (model.rate is not None and name == "mean"):
-            continue
-        scale = model.forecast_exposure if name == "mean" and isinstance(fit, FrequencyFit) else 1.0
-        low, high = fit.interval(name)
-        if np.isfinite(low) and np.isfinite(high):
-            intervals[name] = [low * scale, high * scale]
-    return intervals
+    ends = {name: fit.interval(name) for name in fit.parameters if name not in fit.fixed}
+    known = {name: np.array(pair) for name, pair in ends.items() if np.isfinite(pair).all()}
+    if isinstance(fit, FrequencyFit):
+        known = _at_forecast(model, known)
+        if model.rate is not None:
+            known.pop("mean", None)
+    return {name: pair.tolist() for name, pair in known.items()}
+
+
+def _at_forecast(model: LineModel, values: Mapping[str, Any]) -> dict[str, Any]:
+    """What is known of the parameters at exposure 1, for the forecast: means in proportion to exposure, those
+    that exposure leaves alone as they are. Others, such as a probability of no loss, are left out."""
+    assert model.frequencies is not None
+    own, forecast = model.frequencies.chosen.parameters, model.frequency.parameters
+    return {
+        name: value * model.forecast_exposure if name in _MEANS else value
+        for name, value in values.items()
+        if name in _MEANS or forecast.get(name) == own[name]
+    }
 
 
 def _choice(tried: Candidates[Any]) -> Data:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from lossagg.portfolio.assess import Progress, silent
 from lossagg.portfolio.assessment import Data
 from lossagg.portfolio.cautions import cautions
+from lossagg.portfolio.estimates import estimates
 from lossagg.portfolio.evidence import line_evidence
 from lossagg.portfolio.evidence_cautions import evidence_cautions, tail_cautions
 from lossagg.portfolio.line import LineModel
@@ -70,6 +71,7 @@ def _line(model: LineModel, level: float, draws: int) -> Data:
     return {
         **entry,
         "level": level,
+        "estimates": estimates(model, draws),
         "parameter_error": parameter_error(model, level) if uncertain else None,
         "sensitivity": sensitivity(model, entry["tail"], level) if fitted else [],
         "influence": influence(model, level) if fitted else [],

@@ -116,6 +116,7 @@ def _modelled(section: LineSection, prepared: PreparedLosses | None, key: str) -
             truncation=prepared.threshold,
             censored=prepared.censored,
             tail_threshold=section.severity.tail_threshold,
+            continuous=section.severity.continuous,
             least_seen=LEAST_SEEN,
         )
         severities = _preferred(severities, section.severity, f"{key}.severity")

@@ -121,12 +121,16 @@ class Frequency(Law):
 
 
 class Severity(Law):
-    """The severity of a line; a fit may splice a generalized Pareto tail above a threshold."""
+    """The severity of a line; a fit may splice a generalized Pareto tail above a threshold, without a jump of
+    the density where `continuous`."""
 
     tail_threshold: Positive | None = None
+    continuous: bool = False
 
     @model_validator(mode="after")
     def _tail_belongs_to_a_fit(self) -> Severity:
+        if self.continuous and self.tail_threshold is None:
+            raise ValueError("continuous belongs to a tail-threshold | State the threshold, or leave it out.")
         if self.tail_threshold is not None and self.fit is None:
             raise ValueError('tail-threshold belongs to a fit | For given parameters use family = "spliced".')
         return self

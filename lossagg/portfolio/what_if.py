@@ -22,6 +22,7 @@ from lossagg.families import SizeTable, Spliced
 from lossagg.families.base import CountLaw, SizeLaw
 from lossagg.fitting import FrequencyFit, SeverityFit, fit_frequency, fit_severity, fit_spliced
 from lossagg.fitting.empirical import EMPIRICAL
+from lossagg.fitting.solution import TiedSolution
 from lossagg.fitting.tail import Large, tail_fit
 from lossagg.portfolio.assessment import Data
 from lossagg.portfolio.line import LineModel, survival_by_year
@@ -169,9 +170,11 @@ def refitted_severity(
     assert model.severities is not None
     chosen = model.severities.chosen
     if isinstance(chosen.model, Spliced):
-        tail, body = chosen.solution.likelihood.law.family, chosen.model.body.family
+        tail, body = chosen.model.tail.family, chosen.model.body.family
         body = EMPIRICAL if body == SizeTable.family else body
-        return fit_spliced(amounts, body, chosen.model.threshold, thresholds, censored, tail)
+        tied = isinstance(chosen.solution, TiedSolution)
+        threshold = chosen.model.threshold
+        return fit_spliced(amounts, body, threshold, thresholds, censored, tail, continuous=tied)
     held = {name: chosen.parameters[name] for name in chosen.fixed}
     return fit_severity(amounts, chosen.family, thresholds, censored, fixed=held)
 

@@ -50,6 +50,7 @@ def fit_tables(fits: Entry) -> tuple[Table, ...]:
     lines, currency = fits["lines"], fits["portfolio"]["currency"]
     built = (
         tables.fits.parameters(lines),
+        tables.fits.estimates(lines),
         tables.fits.candidates(lines),
         tables.fit_tests.goodness(lines),
         tables.fit_tests.frequency(lines),
@@ -95,6 +96,7 @@ def render_fit(fits: Entry) -> str:
 
 def _extra(line: Entry, currency: str) -> tuple[Table, ...]:
     return (
+        tables.fits.estimates([line]),
         tables.fit_tests.parameter_error([line], currency),
         tables.fit_tests.sensitivity([line], currency),
         tables.fit_tests.influence([line], currency),
