@@ -41,6 +41,7 @@ class Pricer(Protocol):
         portfolio: Portfolio,
         models: Sequence[LineModel],
         *,
+        years: int,
         seed: int,
         workers: int | None,
         withheld: str,
@@ -192,6 +193,7 @@ class Portfolio:
             priced = self.pricer(
                 self,
                 models,
+                years=years,
                 seed=seed,
                 workers=workers,
                 withheld=data["headline"]["reason"] if data["headline"]["withheld"] else "",

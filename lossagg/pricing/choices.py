@@ -78,7 +78,7 @@ def base_of(options: Sequence[Option], name: str | None) -> int:
         "the base is no option of the table",
         where=place(file=PORTFOLIO_FILE, key="pricing.base"),
         value=name,
-        remedy=f"Name one of: {', '.join(option.name for option in options[:8])}.",
+        remedy=f"Name one of: {'; '.join(option.name for option in options[:8])}.",
     )
 
 

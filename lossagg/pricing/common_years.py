@@ -115,7 +115,8 @@ class _Columns:
 
     @classmethod
     def of(cls, options: Sequence[Option]) -> _Columns:
-        needed = [s for option in options for s in (option.scope, option.paid, option.kept)]
+        needed = [s for option in options for s in (option.scope, option.paid)]
+        needed += [o.kept for o in options if o.terms is not None and o.terms.retained_cap < np.inf]
         return cls({events: k for k, events in enumerate(dict.fromkeys(needed))})
 
     @property
@@ -149,13 +150,13 @@ class _Room:
     def add(self, number: int, first: int, size: int, sums: Mapping[Events, FloatArray]) -> None:
         """Apply every option to one block of years."""
         base = self.options[self.base]
-        base_ceded, base_paid = base.ceded(sums[base.paid], sums[base.kept]), self.paid[self.base]
+        base_ceded, base_paid = base.ceded(sums[base.paid], sums.get(base.kept)), self.paid[self.base]
         base_cost = None
         if base_paid is not None:
             base_cost = sums[base.scope] - base_ceded + base_paid(base_ceded)
         found = []
         for k, option in enumerate(self.options):
-            ceded = option.ceded(sums[option.paid], sums[option.kept])
+            ceded = option.ceded(sums[option.paid], sums.get(option.kept))
             retained = np.maximum(sums[option.scope] - ceded, 0.0)
             tiny = 1e-9 * np.maximum(sums[option.scope], 1.0)
             retained[retained <= tiny] = 0.0

@@ -24,7 +24,6 @@ from scipy import fft
 from lossagg.arrays import FloatArray
 from lossagg.cover import Schedule
 from lossagg.engines.book import Line
-from lossagg.engines.payment import PaymentLaw
 from lossagg.engines.simulation import available_cores
 from lossagg.kernels.pricing import survival_and_areas
 from lossagg.pricing.lattice_year import LatticeYear
@@ -39,6 +38,7 @@ HALF_OCTAVE = float(np.sqrt(2.0))
 _UNCOVERED = 1e-7
 _ROUND_OFF = 1e-9
 _SHORT = 1e-4
+_SAME = 1e-12
 
 
 @dataclass(frozen=True)
@@ -82,7 +82,8 @@ class Grid:
         lines: the lines; a schedule for each of them makes one annual sum.
         points: length of lattice and transform; a power of two is fastest.
         workers: threads; by default one for each core. The figures do not depend on it.
-        ratio: annual sums whose reaches differ by less than this factor share a lattice.
+        ratio: annual sums whose reaches differ by less than this factor share a lattice, which beyond the
+            default ends where the farthest of them does.
         bracketed: whether a bracket is wanted; without one it is as wide as can be.
     """
 
@@ -133,12 +134,17 @@ class Grid:
         distinct = list(dict.fromkeys(schedules))
         moments = dict(zip(distinct, self.moments(distinct), strict=True))
         scales: dict[int, list[Events]] = {}
+        reaches: dict[int, float] = {}
         for schedule in distinct:
             reach = max(self._reach(schedule, moments[schedule]), 1.01 * (least or {}).get(schedule, 0.0))
-            scales.setdefault(int(np.ceil(np.log(reach) / np.log(self.ratio))), []).append(schedule)
+            scale = int(np.ceil(np.log(reach) / np.log(self.ratio)))
+            scales.setdefault(scale, []).append(schedule)
+            reaches[scale] = max(reach, reaches.get(scale, 0.0))
         finished = 0
         for scale, members in sorted(scales.items()):
             top, left = self.ratio**scale, members
+            if self.ratio > HALF_OCTAVE:
+                top = min(top, reaches[scale])
             while left:
                 own = sorted({own for events in left for own in events}, key=_order)
                 room = Scale(self.lines, own, top, self.points)
@@ -200,18 +206,39 @@ def _most_of(schedule: Schedule) -> float:
 
 
 def event_moments(line: Line, schedules: Sequence[Schedule]) -> tuple[FloatArray, FloatArray]:
-    """First and second moment of each schedule of one loss of a line, shape (schedules,) each."""
+    """First and second moment of each schedule g of one loss of a line, shape (schedules,) each.
+
+    E[g] is the sum of slope times layer over the pieces, and of jump times survival; E[g**2] likewise of the
+    second moments of the layers: all pieces of all schedules in one call of the law.
+    """
     law = line.severity
-    first, second = np.empty(len(schedules)), np.empty(len(schedules))
-    caps = [cap_of(schedule) for schedule in schedules]
-    plain = [k for k, cap in enumerate(caps) if cap is not None]
-    amounts = np.array([caps[k] for k in plain], dtype=np.float64)
-    first[plain] = law.limited_mean(amounts)
-    second[plain] = law.limited_second_moment(amounts)
-    for k in sorted(set(range(len(schedules))) - set(plain)):
-        payment = PaymentLaw(law, schedules[k])
-        first[k], second[k] = payment.mean, payment.second_moment
-    return first, second
+    owner, start, end, value, slope, before = _every_piece(schedules)
+    rising, jumps = slope != 0.0, value != before
+    layer, square, above = np.zeros(len(start)), np.zeros(len(start)), np.zeros(len(start))
+    layer[rising] = law.layer_mean(start[rising], end[rising])
+    square[rising] = law.layer_second_moment(start[rising], end[rising])
+    above[jumps] = law.sf(start[jumps])
+    at_start = np.zeros(len(start))
+    raised = rising & (value != 0.0)
+    at_start[raised] = 2.0 * value[raised] * slope[raised] * layer[raised]
+    first = slope * np.where(rising, layer, 0.0) + (value - before) * above
+    second = slope**2 * np.where(rising, square, 0.0) + at_start + (value**2 - before**2) * above
+    whose, count = owner.astype(np.int64), len(schedules)
+    return np.asarray(np.bincount(whose, first, count)), np.asarray(np.bincount(whose, second, count))
+
+
+def _every_piece(schedules: Sequence[Schedule]) -> FloatArray:
+    """Schedule, start, end, value, slope of every piece, and what the one before reaches: six rows."""
+    rows = []
+    for k, schedule in enumerate(schedules):
+        reached = 0.0
+        ends = (*schedule.starts[1:], np.inf)
+        pieces = zip(schedule.starts, ends, schedule.values, schedule.slopes, strict=True)
+        for start, end, value, slope in pieces:
+            joined = abs(reached - value) <= _SAME * value
+            rows.append((float(k), start, end, value, slope, value if joined else reached))
+            reached = value + slope * (end - start) if slope and end < np.inf else value
+    return np.array(rows).T
 
 
 def _bracket(counts: list[float], step: float) -> tuple[float, float]:

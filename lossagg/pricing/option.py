@@ -120,8 +120,8 @@ class Option:
         starts = tuple((limit * np.arange(len(paid))).tolist())
         return Schedule(starts, tuple(paid.tolist()), tuple(rate / limit for rate in (*rates, 0.0)))
 
-    def ceded(self, paid: FloatArray, kept: FloatArray) -> FloatArray:
-        """What the cover pays for each year, from the year's sums of `paid` and `kept`."""
+    def ceded(self, paid: FloatArray, kept: FloatArray | None) -> FloatArray:
+        """What the cover pays for each year, from the year's sums of `paid` and, for a cap, of `kept`."""
         return np.zeros(paid.shape) if self.terms is None else self.terms.annual_payment(paid, kept)
 
     @property

@@ -40,7 +40,7 @@ def price_options(
         portfolio: the portfolio, read.
         grid: options in place of those of the portfolio file.
         lines: names of the lines priced together, in place of those of the file.
-        base: name of the base option, in place of that of the file.
+        base: name of the base option, in place of that of the file; with a grid the first by default.
         years: simulated years.
         seed: seed of simulation and parameter draws; the same seed gives the same figures.
         workers: threads; the figures do not depend on it.
@@ -86,6 +86,7 @@ def options_of_assessment(
     portfolio: Portfolio,
     models: Sequence[LineModel],
     *,
+    years: int,
     seed: int,
     workers: int | None,
     withheld: str,
@@ -96,6 +97,7 @@ def options_of_assessment(
     Args:
         portfolio: the portfolio.
         models: its lines with their laws.
+        years: simulated years of the assessment; the options take no more than `YEARS` of them.
         seed, workers, progress: see `price_options`.
         withheld: why no figure may be printed; empty where all may.
 
@@ -104,10 +106,11 @@ def options_of_assessment(
     """
     if not portfolio.file.option and portfolio.file.option_grid is None:
         return None
+    years = min(years, YEARS)
     table = _table(
-        portfolio, models, years=YEARS, seed=seed, workers=workers, progress=progress, broken=withheld
+        portfolio, models, years=years, seed=seed, workers=workers, progress=progress, broken=withheld
     )
-    return {"years": YEARS, **table.data(), "cautions": [CAUTION]}
+    return {"years": years, **table.data(), "cautions": [CAUTION]}
 
 
 def _table(
@@ -126,5 +129,5 @@ def _table(
     basis = portfolio.file.pricing
     chosen = tuple(models[k] for k in lines_of([model.line for model in models], lines or basis.lines))
     options = options_of(portfolio.file, tuple(model.line for model in chosen), grid)
-    start = base_of(options, base or basis.base)
+    start = base_of(options, base or (basis.base if grid is None else None))
     return OptionTable(basis, chosen, options, start, years, seed, workers, progress, broken)

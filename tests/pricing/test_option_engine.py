@@ -12,10 +12,11 @@ from hypothesis import strategies as st
 import lossagg
 from lossagg.cover import Cover, Schedule
 from lossagg.engines.book import Line
+from lossagg.engines.payment import PaymentLaw
 from lossagg.engines.result import TransformedAnnualLoss
 from lossagg.kernels.pricing import survival_and_areas
 from lossagg.pricing.common_years import simulate_options
-from lossagg.pricing.grid import Grid
+from lossagg.pricing.grid import Grid, event_moments
 from lossagg.pricing.lattice_year import LatticeYear
 from lossagg.pricing.option import Option
 
@@ -242,3 +243,35 @@ def test_annual_cap_is_a_function_of_the_retained_sum() -> None:
 )
 def test_two_sums_at_once_are_left_to_the_simulation(terms: Cover) -> None:
     assert Option("o", terms, (CASUALTY,)).retained_plan is None
+
+
+LAWS = {
+    "lognormal": lossagg.Lognormal(mu=9, sigma=1.5),
+    "infinite variance": lossagg.Lomax(alpha=1.4, scale=2e4),
+    "infinite mean": lossagg.Lomax(alpha=0.8, scale=2e4),
+    "atoms": lossagg.SizeTable(sizes=[0, 1e4, 2e4, 5e4, 1e6], probabilities=[0.1, 0.3, 0.3, 0.2, 0.1]),
+    "both": lossagg.Mixture(
+        weights=[0.3, 0.7],
+        parts=[lossagg.SizeTable(sizes=[0, 5e4], probabilities=[0.5, 0.5]), lossagg.Exponential(mean=1e4)],
+    ),
+}
+
+
+@pytest.mark.parametrize("law", LAWS.values(), ids=LAWS)
+def test_moments_of_all_schedules_at_once_are_those_of_each(law) -> None:
+    """Layer by layer in one call, against the law of each payment by itself: jumps, falls and shares too."""
+    line, capped = Line(name="x", frequency=lossagg.Poisson(mean=1.0), severity=law), Schedule.capped(1e6)
+    schedules = [Schedule.identity(), capped, Schedule.capped(0.0)]
+    for terms in (
+        Cover(deductible=1e4, limit=5e4),
+        Cover(deductible=1e4, franchise=True),
+        Cover(deductible=1e4, disappears_at=3e4),
+        Cover(deductible=1e4, limit=6e4, limit_includes_deductible=True),
+        Cover(deductible=5e7, limit=1e8),
+    ):
+        paid, whole = terms.event_schedule(), terms.event_schedule().after(capped)
+        schedules += [paid, Schedule.identity() - paid, whole, capped - whole, capped - whole.scaled(0.3)]
+    first, second = event_moments(line, schedules)
+    payments = [PaymentLaw(law, schedule) for schedule in schedules]
+    assert first == pytest.approx([payment.mean for payment in payments], rel=1e-9)
+    assert second == pytest.approx([payment.second_moment for payment in payments], rel=1e-8)
