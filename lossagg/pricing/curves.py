@@ -15,6 +15,8 @@ import numpy as np
 
 from lossagg.arrays import FloatArray
 from lossagg.engines.book import Line
+from lossagg.portfolio.pricing_sections import PricingSection
+from lossagg.pricing.option import Option
 
 EXPOSURE_SHARES = (0.01, 0.02, 0.05, 0.1, 0.15, 0.2, 0.25, 0.3, 0.4, 0.5, 0.6, 0.7, 0.75, 0.8, 0.9, 1.0)
 MOST_AMOUNTS = 60
@@ -129,6 +131,27 @@ def curves_of(
             for s, f in zip(shares.tolist(), exposure_curve(cost, shares, largest).tolist(), strict=True)
         ]
     return data
+
+
+def curves_of_options(options: Sequence[Option], basis: PricingSection) -> dict[str, Any]:
+    """The curves of the lines that options are for, through the options' own deductibles and tops."""
+    own = sorted(
+        {
+            amount
+            for option in options
+            if option.terms is not None
+            for amount in (option.terms.deductible, option.terms.deductible + option.terms.limit)
+            if 0 < amount < np.inf
+        }
+    )
+    cap = np.inf if basis.event_cap is None else basis.event_cap
+    return curves_of(
+        CappedCost(options[0].lines, cap),
+        own,
+        basic=basis.basic_limit,
+        expense=basis.basic_limit_expense,
+        largest=basis.event_cap or max(own, default=None),
+    )
 
 
 def _amounts(cost: CappedCost, own: Sequence[float]) -> FloatArray:

@@ -7,19 +7,17 @@ the fits; then what options are to each other.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import Any
 
-import numpy as np
-
-from lossagg.arrays import FloatArray
 from lossagg.portfolio.assessment import number
 from lossagg.portfolio.line import LineModel
 from lossagg.portfolio.pricing_sections import PricingSection, RiskLoad
 from lossagg.pricing.agreement import agreement, thresholds
-from lossagg.pricing.common_years import Paid, Tally, simulate_options
-from lossagg.pricing.curves import CappedCost, curves_of
+from lossagg.pricing.beating import beat_by_years, beats_data, paid_of
+from lossagg.pricing.common_years import Tally, simulate_options
+from lossagg.pricing.curves import curves_of_options
 from lossagg.pricing.draws import Draws, under_other_laws
 from lossagg.pricing.evaluate import (
     COARSE,
@@ -112,7 +110,8 @@ class OptionTable:
         for k, row in enumerate(rows):
             entry = row_data(row, rows[self.base], self.levels, self.gross.mean)
             entry["base"] = k == self.base
-            entry["beats_base"] = self._beats(tallies[k], k) if checks[k]["agrees"] else None
+            compared = k != self.base and checks[k]["agrees"]
+            entry["beats_base"] = beats_data(tallies[k]) if compared else None
             entry["parameters"] = None if draws is None else draws.ranges(k, row, frontier)
             entry["dominated_by"] = dominated[row.option.name]
             entry["dominated_at_estimates"] = at_estimates[row.option.name]
@@ -136,7 +135,7 @@ class OptionTable:
             "draws": 0 if draws is None else draws.count,
             "appetite": self._appetite(rows, positions, dominated),
             "history": as_if(self.models, rows),
-            "curves": self._curves(),
+            "curves": curves_of_options(self.options, self.basis),
         }
 
     def _nothing(self) -> Data:
@@ -179,7 +178,7 @@ class OptionTable:
         ]
         keep[self.base] = keep[self.base] or any(waits)
         known = [
-            None if wait else _paid(row_of(option, found, self.basis))
+            None if wait else paid_of(row_of(option, found, self.basis))
             for option, found, wait in zip(self.options, exact, waits, strict=True)
         ]
         tallies = simulate_options(
@@ -204,23 +203,8 @@ class OptionTable:
                 continue
             filled = simulated_figures(option, found, tally, self.levels, self.gross.mean, tail_level)
             rows.append(with_years(row_of(option, filled, self.basis), tally))
-        self._beat_by_years(rows, tallies)
+        beat_by_years(rows, tallies, self.base)
         return rows, checks, tallies
-
-    def _beat_by_years(self, rows: Sequence[Row], tallies: Sequence[Tally]) -> None:
-        """Years that beat the base, for options whose premium had to wait for the simulation."""
-        base = _costs(rows[self.base], tallies[self.base])
-        for row, tally in zip(rows, tallies, strict=True):
-            own = _costs(row, tally)
-            if np.isnan(tally.beats_base) and own is not None and base is not None:
-                less = own < base - 1e-9 * np.maximum(np.abs(base), 1.0)
-                tally.beats_base = float(np.mean(less))
-
-    def _beats(self, tally: Tally, k: int) -> Data | None:
-        if k == self.base or np.isnan(tally.beats_base):
-            return None
-        chance = tally.beats_base
-        return {"value": chance, "standard_error": float(np.sqrt(chance * (1.0 - chance) / tally.years))}
 
     def _draws(self, rows: Sequence[Row]) -> Draws | None:
         if not uncertain(self.models) or self.basis.parameter_draws == 0:
@@ -254,38 +238,12 @@ class OptionTable:
             "why": choice.why,
         }
 
-    def _curves(self) -> Data:
-        own = sorted(set(_amounts(self.options)))
-        largest = self.basis.event_cap or max((a for a in own), default=None)
-        cost = CappedCost(self.lines, np.inf if self.basis.event_cap is None else self.basis.event_cap)
-        return curves_of(
-            cost,
-            own,
-            basic=self.basis.basic_limit,
-            expense=self.basis.basic_limit_expense,
-            largest=largest or None,
-        )
-
 
 def _load_waits(found: Exact, load: RiskLoad | None) -> bool:
     """Whether the risk load rests on a figure of the ceded year that only the simulation can give."""
     if load is None or load.factor == 0:
         return False
     return (found.ceded_tail if load.method == "cost-of-capital" else found.ceded_sd) is None
-
-
-def _paid(row: Row) -> Paid | None:
-    """What an option costs beside retained losses, as a function of what the cover pays for the years."""
-    fixed = row.fixed
-    return None if fixed is None else lambda ceded: fixed + row.reinstatement(ceded)
-
-
-def _costs(row: Row, tally: Tally) -> FloatArray | None:
-    """Total cost of every simulated year, where the years were kept."""
-    paid = _paid(row)
-    if paid is None or tally.kept is None or tally.paid is None:
-        return None
-    return tally.kept.annual + paid(tally.paid.annual)
 
 
 def _withheld(levels: Sequence[float]) -> Exact:
@@ -296,12 +254,3 @@ def _withheld(levels: Sequence[float]) -> Exact:
 def _basis(basis: PricingSection) -> Data:
     """The keys of `[pricing]` as stated, with underscores."""
     return basis.model_dump(mode="json", exclude={"lines", "event_cap"})
-
-
-def _amounts(options: Sequence[Option]) -> Iterable[float]:
-    """Deductibles and tops of the options: where the curves should pass through."""
-    for option in options:
-        if option.terms is not None:
-            for amount in (option.terms.deductible, option.terms.deductible + option.terms.limit):
-                if 0 < amount < np.inf:
-                    yield amount
