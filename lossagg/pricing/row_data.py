@@ -88,7 +88,10 @@ def _terms(option: Option) -> dict[str, Any] | None:
 
 def _premium(row: Row) -> dict[str, Any]:
     premium, modelled, reinstated = row.premium, row.modelled, row.exact.reinstated
-    low, high = (None if end is None else end / (1.0 + premium.reinstated) for end in row.premium_range)
+    low, high = row.premium_range
+    if reinstated is not None:  # the initial premium is least where most is paid again
+        low = None if low is None or reinstated.high is None else low / (1.0 + reinstated.high)
+        high = None if high is None or reinstated.low is None else high / (1.0 + reinstated.low)
     return {
         "value": premium.value,
         "source": premium.source,

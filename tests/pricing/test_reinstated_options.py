@@ -100,6 +100,7 @@ def test_pure_premium_with_one_reinstatement(table: dict[str, Any]) -> None:
     premium = entry_of(table, "one at 100 %")["premium"]
     assert premium["value"] == pytest.approx(0.8792629863, abs=5e-11)
     assert premium["value"] == pytest.approx(twice / (1 + once / 2), abs=1e-10)
+    assert premium["low"] <= premium["value"] <= premium["high"]
     again = premium["reinstatement"]
     assert again["expected"] == pytest.approx(0.4587613774, abs=5e-11)
     assert again["fraction"]["value"] == pytest.approx(once / 2, abs=1e-10)
