@@ -36,7 +36,7 @@ _COARSE_POINTS = 2**13
 _LEAST_POINTS = 2**15
 _EASY_POINTS = 2**18
 _PASSES = 4
-_CLOSE = 1.1
+_CLOSE = 1.0
 
 
 class BracketWarning(LossaggWarning):
@@ -68,7 +68,7 @@ class Fourier(ExactEngine):
         step: distance of the lattice points, in money; by default chosen from the accuracy, such that
             deductibles, limits and tabulated sizes fall on lattice points where they can.
         accuracy: width asked of the bracket of VaR 99.5 %, relative to it; VaR 99.9 % may take twice
-            that. Not used when both `points` and `step` are given. Where a quantile is below a thousandth
+            that. Not used when both `points` and `step` are given. Where a quantile is below a 2,000th
             of the amount exceeded once in 10,000 years, the width is relative to a hundredth of that.
 
     Raises:

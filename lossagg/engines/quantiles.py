@@ -20,7 +20,7 @@ LEAST_REACH = 1e-4
 REACHES = (1e-8, 1e-7, 1e-6, 1e-5, 3e-5, LEAST_REACH, 2e-4, 4e-4)
 # Levels whose brackets are watched, and how many times the accuracy each may be wide.
 LEVELS = ((0.995, 1.0), (0.999, 2.0))
-_CLOSE_TO_ZERO, _LEAST_SCALE = 0.001, 0.01
+_CLOSE_TO_ZERO, _LEAST_SCALE = 0.0005, 0.01
 _TRIES = 60
 
 
