@@ -135,3 +135,85 @@ def test_engines_that_differ_on_whether_a_mean_exists_are_stopped() -> None:
         LEVELS,
     )
     assert "differ on whether it exists" in (find(result, "mean").note or "")
+
+
+def _tilted_back_by_less(monkeypatch: pytest.MonkeyPatch) -> None:
+    """The sequence is not tilted back by as much as it was tilted."""
+    from lossagg.engines.transform import LatticeTransform
+
+    right = LatticeTransform._back
+
+    def wrong(self: LatticeTransform, product: np.ndarray) -> object:
+        kept, self._weights = self._weights, self._weights**0.9
+        result = right(self, product)
+        self._weights = kept
+        return result
+
+    monkeypatch.setattr(LatticeTransform, "_back", wrong)
+
+
+def _moved_lattice(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Every payment is put one lattice point too high, in whole numbers, as an integer-typed grid does."""
+    from lossagg.engines import transform
+
+    right = transform.severity_masses
+
+    def wrong(payment: object, step: float, points: int) -> object:
+        masses = right(payment, step, points)  # type: ignore[arg-type]
+        moved = {
+            name: np.insert(getattr(masses, name)[:-1], 0, 0.0)
+            for name in ("down", "even", "spread", "atoms_down", "atoms_even", "atoms_up")
+        }
+        return masses._replace(**moved)
+
+    monkeypatch.setattr(transform, "severity_masses", wrong)
+
+
+def _slipped_kernel(monkeypatch: pytest.MonkeyPatch) -> None:
+    """The recursion divides by the wrong index."""
+    from lossagg.kernels import recursion
+
+    right = recursion.panjer_recursion
+
+    def wrong(a: float, b: float, remainder: float, masses: np.ndarray, points: int) -> object:
+        return right(a, b * 1.01, remainder, masses, points)
+
+    monkeypatch.setattr(recursion, "panjer_recursion", wrong)
+
+
+def _lost_line(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Adding up the lines leaves a tenth of the last one's losses out."""
+    from lossagg.engines.transform import LatticeTransform
+
+    right = LatticeTransform.__init__
+
+    def wrong(self: LatticeTransform, *given: object) -> None:
+        right(self, *given)  # type: ignore[arg-type]
+        last = self.lines[-1]
+        if len(self.lines) > 1:
+            self.lines[-1] = last._replace(frequency=last.frequency.with_exposure(0.9))
+
+    monkeypatch.setattr(LatticeTransform, "__init__", wrong)
+
+
+@pytest.mark.parametrize("plant", [None, _tilted_back_by_less, _moved_lattice, _slipped_kernel, _lost_line])
+def test_a_planted_fault_trips_the_gate(plant: object, monkeypatch: pytest.MonkeyPatch) -> None:
+    """In the tilt, the lattice, the kernel and the combination of lines; without a fault nothing trips. The
+    exact engines find it between themselves, with no simulation to help."""
+    book = Book(
+        lines=(
+            Line(name="A", frequency=lossagg.Poisson(mean=4), severity=lossagg.Lomax(alpha=1.8, scale=10)),
+            Line(
+                name="B",
+                frequency=lossagg.NegativeBinomial(mean=2, dispersion=0.5),
+                severity=lossagg.Lognormal(mu=2, sigma=1),
+            ),
+        )
+    )
+    if plant is not None:
+        plant(monkeypatch)  # type: ignore[operator]
+    engines = (lossagg.Fourier(points=2**14, step=0.5), lossagg.Panjer(points=2**12, step=2.0))
+    result = crosscheck(book, {engine.name: engine.book(book) for engine in engines}, LEVELS)
+    assert result.agrees == (plant is None)
+    gross = [c for c in result.comparisons if c.subject == GROSS]
+    assert all(c.agrees for c in gross) == (plant is None)
