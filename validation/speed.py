@@ -3,7 +3,7 @@
 Both sides of a row are timed in turns and the medians compared, so that a machine that slows down
 slows both. Rows are built by the functions below; a row that cannot be measured says why.
 
-    python validation/speed.py [--workers 2] [--repetitions 5] [--processor-time]
+    python validation/speed.py [--workers 2] [--repetitions 5] [--processor-time] [--growth]
 
 On a machine busy with other work, --processor-time measures what each side uses of the processors instead
 of what the clock says; a side that works on several threads is then credited with all of them being free.
@@ -279,6 +279,85 @@ def records_rows(workers: int) -> Iterator[Row]:
     )
 
 
+def exact_rows(workers: int) -> Iterator[Row]:
+    """One compound distribution by transform, against a bare pair of real transforms as long as it needs (twice
+    the lattice, so that nothing wraps around); with its bracket, against three times as much."""
+    from scipy import fft
+
+    from lossagg.cover import Schedule
+    from lossagg.engines.book import Line
+    from lossagg.engines.compound import CompoundSum
+    from lossagg.engines.transform import LatticeTransform
+
+    del workers
+    points, step = 2**20, 20.0
+    frequency = lossagg.Poisson(mean=12.0)
+    line = Line(name="x", frequency=frequency, severity=LOGNORMAL)
+    compound = CompoundSum.of((line,), {"x": Schedule.identity()})
+    values = np.random.default_rng(1).random(points)
+
+    def pair() -> None:
+        fft.irfft(fft.rfft(values, 2 * points), 2 * points)
+
+    yield Row(
+        f"one compound distribution of {points:,} points, against its bare transforms",
+        lambda: LatticeTransform(compound, step, points).even(),
+        pair,
+        "slower",
+        2.0,
+        single=True,
+    )
+    yield Row(
+        f"the same with its bracket, {points:,} points, against the bare transforms",
+        lambda: lossagg.Fourier(points=points, step=step).annual_loss(frequency, LOGNORMAL),
+        pair,
+        "slower",
+        6.0,
+    )
+
+
+def recursion_rows(workers: int) -> Iterator[Row]:
+    """Panjer's recursion, against as many multiplications and additions by numpy.dot of growing length."""
+    from lossagg.kernels.recursion import panjer_recursion
+
+    del workers
+    points = 2**16
+    masses = np.random.default_rng(1).dirichlet(np.ones(points))
+
+    def dots() -> None:
+        reversed_masses = np.ascontiguousarray(masses[::-1])
+        for n in range(1, points):
+            np.dot(masses[:n], reversed_masses[points - n :])
+
+    yield Row(
+        f"Panjer's recursion on {points:,} points, against numpy.dot",
+        lambda: panjer_recursion(0.0, 12.0, 1.0, masses, points),
+        dots,
+        "slower",
+        3.0,
+        repetitions=1,
+        single=True,
+    )
+
+
+def growth() -> None:
+    """Print how the cost of the exact engines grows with the number of points: n log n and n squared."""
+    model = lossagg.Poisson(mean=12.0), LOGNORMAL
+    for name, powers, rule in (
+        ("Fourier", range(14, 23, 2), lambda n: n * np.log2(n)),
+        ("Panjer", range(12, 18), lambda n: float(n) ** 2),
+    ):
+        print(f"\n{name + ', points':<20} {'seconds':>10} {'against the rule':>18}")
+        first = None
+        for power in powers:
+            points = 2**power
+            engine = getattr(lossagg, name)(points=points, step=2e7 / points)
+            engine.annual_loss(*model) if power == powers[0] else None
+            taken = min(seconds(lambda e=engine: e.annual_loss(*model), 1) for _ in range(2))  # type: ignore[misc]
+            first = first or taken / rule(points)
+            print(f"{points:<20,} {taken:>10.3f} {taken / rule(points) / first:>18.2f}")
+
+
 def _command(needed: str) -> list[str]:
     command = Path(sys.executable).with_name("lossagg")
     if not command.exists():
@@ -329,9 +408,22 @@ def main() -> int:
     parser.add_argument("--workers", type=int, default=2)
     parser.add_argument("--repetitions", type=int, default=5)
     parser.add_argument("--processor-time", action="store_true")
+    parser.add_argument("--growth", action="store_true", help="only how the cost grows with the points")
     given = parser.parse_args()
+    if given.growth:
+        growth()
+        return 0
     threads = given.workers if given.processor_time else 0
-    in_process = (simulation_rows, fill_rows, far_tail_rows, option_rows, records_rows, fit_rows)
+    in_process = (
+        exact_rows,
+        recursion_rows,
+        simulation_rows,
+        fill_rows,
+        far_tail_rows,
+        option_rows,
+        records_rows,
+        fit_rows,
+    )
     print(f"{'':<72} {'lossagg s':>9} {'against s':>9} {'figure':>8} {'':<13} asked")
     all_met = True
     for rows in in_process if threads else (*in_process, help_rows, assessment_rows):

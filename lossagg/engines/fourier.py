@@ -10,6 +10,7 @@ from __future__ import annotations
 
 import warnings
 from collections.abc import Callable, Iterator
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 
 import numpy as np
@@ -27,7 +28,7 @@ from lossagg.engines.quantiles import LEAST_REACH, LEVELS, REACHES, Quantiles
 from lossagg.engines.result import AnnualLoss
 from lossagg.engines.running import running_sums
 from lossagg.engines.span import arithmetic_span, fitting_step
-from lossagg.engines.transform import LatticeTransform, bounded_survival
+from lossagg.engines.transform import LatticeTransform, bounded_survivals
 from lossagg.errors import EngineError, InputError, LossaggWarning
 
 MOST_POINTS = 2**22
@@ -213,14 +214,15 @@ class _Pass:
     @classmethod
     def over(cls, compound: CompoundSum, step: float, points: int) -> _Pass:
         transform = LatticeTransform(compound, step, points)
-        index = np.arange(points)
-        rounded = []
-        for total, upward in zip(transform.sides(), (False, True), strict=True):
-            inside = sum(line.expected_rounded(index, upward) for line in transform.lines)
-            least = bounded_survival(total, upper=False, wrapped=transform.wrapped)
-            most = bounded_survival(total, upper=True, wrapped=transform.wrapped)
-            rounded.append(Rounded(least, most, step * inside))
-        limited = transform.limited(step)
+        with ThreadPoolExecutor(max_workers=1) as pool:
+            beside = pool.submit(transform.limited, step)
+            index = np.arange(float(points))
+            rounded = []
+            for total, upward in zip(transform.sides(), (False, True), strict=True):
+                inside = sum(line.expected_rounded(index, upward) for line in transform.lines)
+                least, most = bounded_survivals(total, transform.wrapped)
+                rounded.append(Rounded(least, most, step * inside))
+            limited = beside.result()
         low, high = bracket("fourier", compound, step, rounded[0], rounded[1], limited)
         return cls(compound, step, points, transform, low, high, limited)
 

@@ -165,8 +165,8 @@ class BracketedAnnualLoss(AnnualLoss):
         )
 
     def _tail_bracket(self, level: float, low: AnnualLoss, high: AnnualLoss) -> tuple[float, float]:
-        """Bounds of the TVaR from the brackets of the quantile and of layers: v + E[(S - v)+] / (1 - level) is
-        convex in v, least at the quantile, and has the slope 1 - P(S > v) / (1 - level)."""
+        """Bounds of the TVaR from the brackets of the quantile and of layers: v + E[(S - v)+] / (1 - level)
+        is convex in v, least at the quantile, and has the slope 1 - P(S > v) / (1 - level)."""
         share = 1.0 - level
         ends = low.value_at_risk(level), high.value_at_risk(level)
         if not np.isfinite(ends[1]):

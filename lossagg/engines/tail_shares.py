@@ -43,23 +43,19 @@ class TailShares(LatticeTransform):
         taken = min(max((below[place] - level) / atom, 0.0), 1.0) if atom > 0 else 0.0
         shares = np.empty(len(self.lines))
         index = np.arange(self.points, dtype=np.float64)
-        for cluster in self._compound.clusters:
+        parts = self._even_parts()
+        for place_of, cluster in enumerate(self._compound.clusters):
             lines = self._of(cluster)
             counts = [line.frequency for line in lines]
             arguments = [self._even_of(line) for line in lines]
-            others = self._one()
-            for other in self._compound.clusters:
-                if other is not cluster:
-                    own = self._of(other)
-                    others *= other.pgf(
-                        [line.frequency for line in own], [self._even_of(line) for line in own]
-                    )
+            others = self._product([part.copy() for k, part in enumerate(parts) if k != place_of])
             for member, (line, part) in enumerate(zip(lines, cluster.members, strict=True)):
                 masses = line.masses
-                biased = (
-                    self._transform(index * (masses.even + masses.atoms_even)) - masses.under[0] / self._shift
-                )
-                brought = self._back(others * biased * cluster.slope(counts, arguments, member))
+                biased = self._transform(index * (masses.even + masses.atoms_even))
+                biased = np.zeros_like(others) if biased is None else biased
+                biased -= masses.under[0] / self._shift
+                slope = cluster.slope(counts, arguments, member)
+                brought = self._back(others * biased * slope, below=True)
                 inside = brought.below[0] + float(running_sums(brought.probabilities[: place + 1])[-1])
                 mean = self._compound.parts[part].frequency.mean() * self._compound.parts[part].payment.mean
                 shares[part] = mean - step * (inside - taken * float(brought.probabilities[place]))

@@ -63,8 +63,10 @@ def within(
     function: Callable[[FloatArray], FloatArray], x: FloatArray, *, below: float, above: float
 ) -> FloatArray:
     """Apply a function to the amounts in [0, inf), and set the values below 0 and at infinity."""
-    result = np.where(x < 0, below, above)
     inside = (x >= 0) & (x < np.inf)
+    if inside.all():
+        return function(x)
+    result = np.where(x < 0, below, above)
     result[inside] = function(x[inside])
     return result
 

@@ -67,4 +67,6 @@ class Poisson(CountLaw):
         return np.asarray(exponential(self._log_pgf(z)))
 
     def _log_pgf(self, z: ComplexArray) -> ComplexArray:
-        return self._mean * (z - 1.0)
+        logarithm = z - 1.0
+        logarithm *= self._mean
+        return logarithm

@@ -14,7 +14,7 @@ from lossagg.engines.compound import CompoundSum
 from lossagg.engines.exact import Rounded, bracket
 from lossagg.engines.fourier import Fourier
 from lossagg.engines.panjer import Panjer
-from lossagg.engines.transform import LatticeTransform, bounded_survival
+from lossagg.engines.transform import LatticeTransform, bounded_survivals
 from lossagg.families import (
     Binomial,
     CountTable,
@@ -442,10 +442,9 @@ def rounded_bracket(loss):
     transform = LatticeTransform(loss.compound, loss.step, loss.points)
     rounded = []
     for total, upward in zip(transform.sides(), (False, True), strict=True):
-        least, most = (
-            bounded_survival(total, upper=upper, wrapped=transform.wrapped) for upper in (False, True)
-        )
-        inside = sum(line.expected_rounded(np.arange(loss.points), upward) for line in transform.lines)
+        least, most = bounded_survivals(total, transform.wrapped)
+        index = np.arange(float(loss.points))
+        inside = sum(line.expected_rounded(index, upward) for line in transform.lines)
         rounded.append(Rounded(least, most, loss.step * inside))
     return bracket("fourier", loss.compound, loss.step, *rounded)
 
