@@ -24,6 +24,7 @@ from lossagg.portfolio.by_line import by_line_of
 from lossagg.portfolio.dependences import independent_data
 from lossagg.portfolio.evidence import line_evidence
 from lossagg.portfolio.line import LineModel
+from lossagg.portfolio.sanity import sanity_data
 from lossagg.portfolio.years import years_near
 
 Progress = Callable[[str, float], None]
@@ -109,6 +110,9 @@ def figures(
             withheld=withheld,
         ),
         "crosscheck": crosscheck_of(check),
+        "sanity": sanity_data(
+            book, {subject: loss for subject, (loss, _) in best.items()}, asked, withheld=withheld
+        ),
         "years_near_capital": None
         if withheld
         else years_near(

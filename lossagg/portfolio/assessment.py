@@ -16,6 +16,7 @@ import numpy as np
 from lossagg.engines.book import Book, PlacedCover, Subject
 from lossagg.engines.crosscheck import TOLERANCE, Comparison, Crosscheck
 from lossagg.engines.result import AnnualLoss
+from lossagg.engines.tied import annual_sum
 from lossagg.errors import DoesNotExistError, EngineError, InputError
 from lossagg.portfolio.cover_data import reinstatement_of, terms_of
 
@@ -148,26 +149,25 @@ def cover_of(
 def _exhaustion(book: Book, cover: PlacedCover, loss: AnnualLoss) -> float | None:
     """Probability that the year's limit is used up; without one, that some event uses up its limit.
 
-    None where neither is limited, or where how many events there are depends on what lines share.
+    None where neither is limited, or where lines are tied in a way that only the simulation follows.
     """
     most = cover.terms.most_per_year
     if np.isfinite(most):
         return float(loss.sf(most * (1.0 - 1e-9)))
     if not np.isfinite(cover.terms.limit):
         return None
-    none_exhausted = 1.0
-    try:
-        lines = book.independent_lines(line.name for line in book.lines if book.covers_line(cover, line.name))
-    except EngineError:
-        return None
-    for line in lines:
+    events = {}
+    for line in book.lines:
         paid = book.event_payment(cover, line.name)
         if paid is not None and not np.isfinite(paid.most):
             return None
-        if paid is not None and np.isfinite(paid.most) and paid.most > 0:
-            reached = float(line.severity.sf(np.nextafter(paid.starts[-1], 0.0)))
-            none_exhausted *= float(np.real(line.frequency.pgf(1.0 - reached)))
-    return 1.0 - none_exhausted
+        if paid is not None and paid.most > 0:
+            events[line.name] = paid.scaled(1.0 / paid.most)
+    try:
+        compound = annual_sum(book, events)
+    except EngineError:
+        return None
+    return float(compound.largest_sf(np.array([1.0 - 1e-12]))[0])
 
 
 def crosscheck_of(check: Crosscheck) -> Data:

@@ -82,6 +82,7 @@ def render_report(assessment: Assessment) -> str:
         "supported": years_observed(assessment),
         "lines": tables.lines.overview(assessment),
         "line_levels": tables.lines.levels(assessment),
+        "sanity": _filled(tables.sanity.sanity_of_gross(assessment)),
         "dependence": _filled(
             tables.allocation.allocation(assessment),
             tables.dependence.assumptions(assessment),

@@ -16,6 +16,7 @@ from lossagg.report.tables import (
     lines,
     option_details,
     records,
+    sanity,
     totals,
     years,
 )
@@ -33,6 +34,7 @@ __all__ = [
     "lines",
     "options_of",
     "records",
+    "sanity",
     "totals",
     "years",
 ]
@@ -60,6 +62,7 @@ def every_table(assessment: Assessment) -> tuple[Table, ...]:
         *_if_any(years.near_capital(assessment)),
         *_if_any(years.events_near_capital(assessment)),
         evidence.crosscheck(assessment),
+        *_if_any(sanity.sanity(assessment)),
         records.reconciliation(assessment),
         controls.control_totals(assessment),
         records.by_year(entries, currency),
