@@ -112,6 +112,22 @@ def nearest_correlation(matrix: FloatArray) -> FloatArray:
     return np.asarray(nearest)
 
 
+def correlation_interval(value: float, years: int) -> tuple[float, float]:
+    """The 95 % interval of a correlation seen in so many years, by Fisher's z (Fisher 1921, "On the probable
+    error of a coefficient of correlation", Metron 1): atanh r is near normal with variance 1 / (years - 3).
+
+    Args:
+        value: the correlation, -1 to 1.
+        years: number of years behind it, at least 1; three or fewer say nothing.
+    """
+    if years <= 3:
+        return -1.0, 1.0
+    if abs(value) == 1.0:
+        return value, value
+    centre, reach = np.arctanh(value), 1.959963984540054 / np.sqrt(years - 3.0)
+    return float(np.tanh(centre - reach)), float(np.tanh(centre + reach))
+
+
 def factor_of(matrix: FloatArray) -> FloatArray:
     """F with F F' = the matrix, also where it has eigenvalues of 0, shape (n, n)."""
     values, vectors = np.linalg.eigh(matrix)

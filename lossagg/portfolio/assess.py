@@ -21,7 +21,7 @@ from lossagg.portfolio.assessment import (
     subject_of,
 )
 from lossagg.portfolio.by_line import by_line_of
-from lossagg.portfolio.dependences import independent_data
+from lossagg.portfolio.dependences import bounds_data, independent_data
 from lossagg.portfolio.evidence import line_evidence
 from lossagg.portfolio.line import LineModel
 from lossagg.portfolio.sanity import sanity_data
@@ -83,6 +83,8 @@ def figures(
     withheld = broken or ("" if check.agrees else WITHHELD)
     best = {subject: _best(results, subject) for subject in book.subjects}
 
+    reported = {subject: loss for subject, (loss, _) in best.items()}
+
     def whole(subject: Subject) -> Data:
         loss, exact = best[subject]
         note = None if exact else results["fourier"].refused.get(subject)
@@ -104,15 +106,13 @@ def figures(
         ],
         "allocation": allocation_data(
             book,
-            {subject: loss for subject, (loss, _) in best.items()},
+            reported,
             results["simulation"].losses,
             capital_level,
             withheld=withheld,
         ),
         "crosscheck": crosscheck_of(check),
-        "sanity": sanity_data(
-            book, {subject: loss for subject, (loss, _) in best.items()}, asked, withheld=withheld
-        ),
+        "sanity": sanity_data(book, reported, asked, withheld=withheld),
         "years_near_capital": None
         if withheld
         else years_near(
@@ -123,11 +123,16 @@ def figures(
             seed=seed,
             years=years,
         ),
+        "dependence_bounds": bounds_data(
+            book,
+            reported,
+            None if apart is None else apart[GROSS],
+            capital_level,
+            withheld=withheld,
+        ),
         "independent": None
         if apart is None
-        else independent_data(
-            apart, {subject: loss for subject, (loss, _) in best.items()}, book, levels, withheld=withheld
-        ),
+        else independent_data(apart, reported, book, levels, withheld=withheld),
     }
 
 

@@ -38,7 +38,8 @@ class DependenceSection(Section):
     events a year that cost each line one of its losses), "gaussian-copula" or "t-copula" (ranks of annual
     totals tied by `correlation`, one number or a matrix in the order of `lines`, and
     `degrees-of-freedom`). `nearest = true` replaces a matrix that is no correlation matrix by the nearest
-    that is, and prints the change. `evidence` says what the choice rests on; it is printed.
+    that is, and prints the change. `evidence` says what the choice rests on, `evidence-years` how many
+    years of data; both are printed, the latter as an interval of each correlation.
     """
 
     name: Name
@@ -51,10 +52,11 @@ class DependenceSection(Section):
     degrees_of_freedom: Positive | None = None
     nearest: bool = False
     evidence: str | None = None
+    evidence_years: Annotated[int, Field(ge=1)] | None = None
 
     @model_validator(mode="after")
     def _keys_of_its_kind(self) -> DependenceSection:
-        given = self.model_fields_set - {"name", "kind", "lines", "evidence"}
+        given = self.model_fields_set - {"name", "kind", "lines", "evidence", "evidence_years"}
         for name in sorted(given - KEYS[self.kind]):
             allowed = ", ".join(sorted(key.replace("_", "-") for key in KEYS[self.kind]))
             raise ValueError(f"a {self.kind} has no key {name.replace('_', '-')!r} | Its keys: {allowed}.")

@@ -13,8 +13,10 @@ from dataclasses import dataclass
 import numpy as np
 
 from lossagg.engines.book import GROSS, NET, Book, Subject
+from lossagg.engines.correlation import correlation_interval
 from lossagg.engines.dependence import Copula, Dependence
 from lossagg.engines.result import AnnualLoss
+from lossagg.engines.worst_case import worst_value_at_risk
 from lossagg.errors import InputError, place
 from lossagg.portfolio.assessment import Data, figure, levels_of, number
 from lossagg.portfolio.dependence_sections import DependenceSection, given_dependence
@@ -35,14 +37,19 @@ DEPENDENT = (
     "own figures."
 )
 
+# Of the tail of each line: within a thousandth of the worst case for tails as heavy as alpha 2.
+SLICES = 1000
+
 
 @dataclass(frozen=True)
 class Assumed:
-    """A dependence of the portfolio file: what it is, its kind, its evidence, what had to be changed."""
+    """A dependence of the portfolio file: what it is, its kind, its evidence and how many years of it there
+    are, what had to be changed."""
 
     dependence: Dependence
     kind: str
     evidence: str | None
+    years: int | None
     change: str
 
 
@@ -67,7 +74,7 @@ def assumed(sections: Sequence[DependenceSection], names: Sequence[str]) -> tupl
                     remedy=f"Lines: {', '.join(names)}.",
                 )
         dependence, change = given_dependence(section, f"dependence[{k}]")
-        found.append(Assumed(dependence, section.kind, section.evidence, change))
+        found.append(Assumed(dependence, section.kind, section.evidence, section.evidence_years, change))
     return tuple(found)
 
 
@@ -98,10 +105,26 @@ def dependence_data(found: Sequence[Assumed]) -> list[Data]:
             "lines": list(own.dependence.lines),
             "description": own.dependence.describe(),
             "evidence": own.evidence,
+            "evidence_years": own.years,
+            "correlations": _correlations(own),
             "change": own.change or None,
         }
         for own in found
     ]
+
+
+def _correlations(own: Assumed) -> list[Data]:
+    """Every pair of a copula with the interval that the years behind it leave; no interval without years."""
+    copula = own.dependence
+    if not isinstance(copula, Copula):
+        return []
+    pairs = []
+    for i, first in enumerate(copula.lines):
+        for j in range(i + 1, len(copula.lines)):
+            value = float(copula.matrix[i, j])
+            low, high = (None, None) if own.years is None else correlation_interval(value, own.years)
+            pairs.append({"lines": [first, copula.lines[j]], "value": value, "low": low, "high": high})
+    return pairs
 
 
 def independent_losses(
@@ -156,6 +179,40 @@ def independent_data(
         for level in levels
     ]
     return data
+
+
+def bounds_data(
+    book: Book,
+    best: Mapping[Subject, AnnualLoss],
+    apart: AnnualLoss | None,
+    level: float,
+    *,
+    withheld: str,
+) -> Data | None:
+    """`dependence_bounds` of the assessment: gross VaR at the capital level if the lines were independent, as
+    assumed, comonotonic, and in the worst dependence there is. None for a portfolio of one line.
+
+    Args:
+        book: the lines and how they depend on each other.
+        best: the annual loss reported of gross and of every line.
+        apart: gross of independent lines; None where the lines are taken as independent.
+        level: the capital level.
+        withheld: why figures are withheld, "" where they are not.
+    """
+    if len(book.lines) < 2:
+        return None
+    own = [best[Subject("line", line.name)] for line in book.lines]
+    chosen = figure(best[GROSS], "value_at_risk", level, withheld=withheld)
+    added = _sum([figure(loss, "value_at_risk", level, withheld=withheld) for loss in own])
+    low, high = (None, None) if withheld else worst_value_at_risk(own, level, SLICES)
+    return {
+        "level": level,
+        "independent": figure(apart or best[GROSS], "value_at_risk", level, withheld=withheld),
+        "chosen": chosen,
+        "comonotonic": added,
+        "worst": {"value": high, "low": low, "high": high, "engine": None, "reason": withheld or None},
+        "subadditive": None if withheld else chosen["value"] <= added["value"] * (1.0 + 1e-9),
+    }
 
 
 def _sum(figures: list[Data]) -> Data:

@@ -86,6 +86,8 @@ def render_report(assessment: Assessment) -> str:
         "dependence": _filled(
             tables.allocation.allocation(assessment),
             tables.dependence.assumptions(assessment),
+            tables.dependence.correlations(assessment),
+            tables.dependence.bounds(assessment),
             tables.dependence.compared(assessment),
         ),
         "years": _filled(tables.years.near_capital(assessment), tables.years.events_near_capital(assessment)),

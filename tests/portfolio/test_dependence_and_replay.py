@@ -7,12 +7,14 @@ from pathlib import Path
 import numpy as np
 import pytest
 from folders import GIVEN, given_portfolio
+from scipy import stats
 from typer.testing import CliRunner
 
 import lossagg
 from lossagg.commands.app import build_app
 from lossagg.cover import Corridor, Cover, Reinstatements, Surplus
 from lossagg.engines.book import Book, Line, PlacedCover
+from lossagg.engines.correlation import correlation_interval
 from lossagg.engines.dependence import CommonShock, Copula, SharedFactor
 from lossagg.engines.fourier import Fourier
 from lossagg.errors import InputError
@@ -36,7 +38,8 @@ COPULA = """
 name = "Weather"
 kind = "gaussian-copula"
 lines = ["Theft", "Fire"]
-correlation = [[1, 0.4], [0.4, 1]]
+correlation = [[1, 0.5], [0.5, 1]]
+evidence-years = 10
 """
 
 
@@ -69,6 +72,8 @@ def test_the_assumption_its_evidence_and_the_figures_without_it(factor: tuple[Pa
             "description": "the expected number of losses of Fire, Theft is multiplied by one gamma factor "
             "with mean 1 and variance 0.25",
             "evidence": "invented for this test",
+            "evidence_years": None,
+            "correlations": [],
             "change": None,
         }
     ]
@@ -118,6 +123,51 @@ def test_the_capital_is_divided_among_the_lines(
     page = (folder / "out" / "report.html").read_text(encoding="utf-8")
     assert "Allocation of the gross TVaR at 99.5% to lines" in page
     assert "Saved by diversification" in page
+
+
+def test_what_the_years_say_of_a_correlation_is_printed(copula: tuple[Path, dict]) -> None:
+    """r = 0.5 from 10 years: -0.189 to 0.859 (Fisher 1921; computed here, two routes)."""
+    folder, data = copula
+    (pair,) = data["dependence"][0]["correlations"]
+    assert pair["lines"] == ["Theft", "Fire"]
+    reach = stats.norm.isf(0.025) / np.sqrt(7)
+    assert pair["low"] == pytest.approx(np.tanh(0.5 * np.log(3) - reach), abs=1e-12)
+    assert (pair["low"], pair["high"]) == pytest.approx((-0.189, 0.859), abs=5e-4)
+    assert "-0.189 to 0.859" in (folder / "out" / "report.html").read_text(encoding="utf-8")
+    assert correlation_interval(0.5, 3) == (-1.0, 1.0)
+    assert correlation_interval(1.0, 50) == (1.0, 1.0)
+
+
+def test_the_figure_between_independent_lines_and_the_worst_case(factor: tuple[Path, dict]) -> None:
+    folder, data = factor
+    bounds = data["dependence_bounds"]
+    order = [bounds[key]["value"] for key in ("independent", "chosen", "comonotonic", "worst")]
+    assert order == sorted(order)
+    assert bounds["chosen"]["value"] == next(
+        row["var"]["value"] for row in data["gross"]["levels"] if row["level"] == bounds["level"]
+    )
+    assert bounds["subadditive"] is True
+    assert "Worst case over all dependences" in (folder / "out" / "report.html").read_text(encoding="utf-8")
+
+
+def test_a_value_at_risk_above_the_sum_of_the_lines_is_shown_and_explained(tmp_path: Path) -> None:
+    """Two independent lines with Pareto tails of alpha 0.8: VaR is not subadditive (Embrechts, McNeil and
+    Straumann 2002, section 6): for such tails the sum's is about 2**(1 / 0.8) of one, not 2."""
+    line = """
+[[line]]
+name = "{}"
+frequency = {{ family = "poisson", mean = 1 }}
+severity = {{ family = "pareto", alpha = 0.8, minimum = 1000 }}
+"""
+    head = GIVEN[: GIVEN.index("[[line]]")]
+    data = written(tmp_path, head + line.format("A") + line.format("B"))
+    bounds = data["dependence_bounds"]
+    assert bounds["subadditive"] is False
+    ratio = bounds["chosen"]["value"] / bounds["comonotonic"]["value"]
+    assert ratio == pytest.approx(2**1.25 / 2, rel=0.02)
+    page = (tmp_path / "out" / "report.html").read_text(encoding="utf-8")
+    assert "value at risk is not subadditive" in page
+    assert data["allocation"]["reason"] == "there is no tail value at risk to divide: the mean is infinite"
 
 
 def test_a_gaussian_copula_and_missing_evidence_are_warned_of(copula: tuple[Path, dict]) -> None:

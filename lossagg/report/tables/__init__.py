@@ -52,6 +52,8 @@ def every_table(assessment: Assessment) -> tuple[Table, ...]:
         lines.levels(assessment),
         *_if_any(allocation.allocation(assessment)),
         *_if_any(dependence.assumptions(assessment)),
+        *_if_any(dependence.correlations(assessment)),
+        *_if_any(dependence.bounds(assessment)),
         *_if_any(dependence.compared(assessment)),
         covers.terms(assessment),
         covers.results(assessment),
