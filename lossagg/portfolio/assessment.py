@@ -200,6 +200,17 @@ def _comparison(comparison: Comparison) -> Data:
         "bracket": {name: brackets[name] for name in ("fourier", "panjer")},
         "standard_error": comparison.standard_error,
         "tolerance": TOLERANCE,
+        "tests": [
+            {
+                "engine": test.engine,
+                "reference": test.reference,
+                "difference": number(test.difference),
+                "allowed": number(test.allowed),
+                "unit": test.unit,
+                "used": number(test.used),
+            }
+            for test in comparison.tests
+        ],
         "agrees": comparison.agrees,
         "note": comparison.note,
     }

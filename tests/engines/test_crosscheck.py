@@ -92,6 +92,21 @@ def test_too_few_years_beyond_a_level_are_not_compared_and_said() -> None:
     assert comparison.note == "not compared with the simulation: it has only 20 years beyond the level"
 
 
+def test_every_comparison_states_its_tolerance_and_how_much_of_it_was_used() -> None:
+    result = check(one_line(lossagg.Poisson(mean=3), lossagg.Exponential(mean=10)))
+    for comparison in result.comparisons:
+        assert comparison.tests
+        for test in comparison.tests:
+            assert 0 <= test.used <= 1
+            assert test.used == pytest.approx(test.difference / test.allowed)
+    units = {test.unit for test in find(result, "value_at_risk", 0.99).tests}
+    assert units == {"of the way from the figure to the end of its bracket", "years beyond"}
+    (allowed,) = {test.allowed for test in find(result, "mean").tests if test.engine == "simulation"}
+    assert allowed == 4.0
+    beyond = next(test for test in find(result, "value_at_risk", 0.99).tests if test.engine == "simulation")
+    assert beyond.allowed == pytest.approx(4 * np.sqrt(20_000 * 0.99 * 0.01) + 1)
+
+
 def scaled(result: BookResult, factor: float) -> BookResult:
     from lossagg.engines.sampled import SimulatedAnnualLoss
 
@@ -124,6 +139,7 @@ def test_exact_engines_outside_each_others_bracket_are_stopped_and_named() -> No
     )
     assert not result.agrees
     assert "is outside panjer's bracket" in (find(result, "value_at_risk", 0.99).note or "")
+    assert max(test.used for test in find(result, "value_at_risk", 0.99).tests) > 1
 
 
 def test_engines_that_differ_on_whether_a_mean_exists_are_stopped() -> None:

@@ -81,7 +81,7 @@ def bounds(assessment: Assessment) -> Table:
     rows: list[tuple[Cell, ...]] = []
     for name, key in CASES:
         value = entry[key]["value"]
-        part: Cell = Absent("n/a") if value is None or not whole else value / whole
+        part: Cell = Absent("n/a") if value is None or not whole else round(value / whole, 3)
         rows.append((name, ranged(entry[key]), part))
     title = f"Gross VaR at {percent(entry['level'])} from independent lines to the worst case, {currency}"
     notes = (*reasons([cell for row in rows for cell in row]), WORST)

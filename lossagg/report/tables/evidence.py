@@ -12,24 +12,39 @@ from lossagg.report.wording import MEASURES
 ENGINES = ("fourier", "panjer", "simulation")
 TOTALS = ("gross", "net")
 
+FURTHEST = (
+    "Furthest apart: the pair of engines that used most of its tolerance, and what that is. Below 100% they "
+    "agree. A simulated VaR is tested by the number of simulated years beyond the other engine's figure, an "
+    "exact figure by how far it lies on the way to the end of the other engine's bracket."
+)
+
 
 def crosscheck(assessment: Assessment) -> Table:
     """What each engine says of each measure, and whether they agree."""
     currency = assessment["portfolio"]["currency"]
     check = assessment["crosscheck"]
     table = crosscheck_rows(check["comparisons"], "Crosscheck", f"Crosscheck of the engines, {currency}")
-    outside = tuple(
-        f"{entry['engine']} does not compute {entry['subject']}: {entry['reason']}."
-        for entry in check.get("refused", ())
-    )
-    return replace(table, notes=(*table.notes, *outside))
+    return replace(table, notes=(*table.notes, *_refusals(check.get("refused", ()))))
 
 
 def crosscheck_of_totals(assessment: Assessment) -> Table:
     """The same for gross and net only, and for whatever disagrees."""
     check, currency = assessment["crosscheck"], assessment["portfolio"]["currency"]
     shown = [row for row in check["comparisons"] if row["subject"] in TOTALS or not row["agrees"]]
-    return crosscheck_rows(shown, "Crosscheck", f"Crosscheck of the engines, {currency}")
+    table = crosscheck_rows(shown, "Crosscheck", f"Crosscheck of the engines, {currency}")
+    refused = [entry for entry in check.get("refused", ()) if entry["subject"] in TOTALS]
+    return replace(table, notes=(*table.notes, *_refusals(refused)))
+
+
+def _refusals(refused: Sequence[Entry]) -> tuple[str, ...]:
+    """Why engines left subjects out, each reason once."""
+    subjects: dict[tuple[str, str], list[str]] = {}
+    for entry in refused:
+        subjects.setdefault((entry["engine"], entry["reason"]), []).append(entry["subject"])
+    return tuple(
+        f"{engine} does not compute {', '.join(names)}: {reason.rstrip('.')}."
+        for (engine, reason), names in subjects.items()
+    )
 
 
 def crosscheck_rows(comparisons: Sequence[Entry], key: str, title: str) -> Table:
@@ -48,6 +63,7 @@ def crosscheck_rows(comparisons: Sequence[Entry], key: str, title: str) -> Table
                 level,
                 *values,
                 spread,
+                *_closest(entry),
                 verdict,
                 entry["note"] or "",
             )
@@ -60,12 +76,32 @@ def crosscheck_rows(comparisons: Sequence[Entry], key: str, title: str) -> Table
         Column("panjer", "money", ranged=True),
         Column("simulation", "money"),
         Column("Standard error", "number"),
+        Column("Furthest apart"),
+        Column("Tolerance used", "probability"),
         Column("Verdict"),
         Column("Note"),
     )
     tolerances = tuple(dict.fromkeys(entry["tolerance"] for entry in comparisons))
     notes = tuple(f"Tolerance: {tolerance}." for tolerance in tolerances)
+    if any(entry.get("tests") for entry in comparisons):
+        notes = (*notes, FURTHEST)
     return Table(key, title, columns, tuple(rows), notes)
+
+
+def _closest(entry: Entry) -> tuple[Cell, Cell]:
+    """The pair of engines that used most of its tolerance, and how much of it."""
+    tests = entry.get("tests") or ()
+    if not tests:
+        return Absent("not tested"), Absent("n/a")
+    worst = max(tests, key=lambda test: test["used"])
+    pair = f"{worst['engine']} from {worst['reference']}"
+    if worst["unit"] == "standard errors":
+        words = f"{pair}: {worst['difference']:.1f} of {worst['allowed']:g} standard errors"
+    elif worst["unit"] == "years beyond":
+        words = f"{pair}: {worst['difference']:,.0f} of {worst['allowed']:,.0f} years beyond"
+    else:
+        words = f"{pair}: {'inside' if worst['used'] < 1 else 'OUTSIDE'} its bracket"
+    return words, worst["used"]
 
 
 def _engine_cell(entry: Entry, engine: str) -> Cell:

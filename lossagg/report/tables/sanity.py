@@ -49,6 +49,6 @@ def _row(entry: Entry) -> tuple[Cell, ...]:
         value = entry[key]
         cells += [
             Absent("not computed") if value is None else value,
-            Absent("n/a") if value is None or not var else value / var,
+            Absent("n/a") if value is None or not var else round(value / var, 3),
         ]
     return tuple(cells)
