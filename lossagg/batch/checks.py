@@ -4,12 +4,15 @@ from __future__ import annotations
 
 from datetime import UTC, datetime
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from lossagg.batch.failure import explain
 from lossagg.batch.run import PORTFOLIO_FILE, find_portfolios
 from lossagg.batch.single import Progress, silent
 from lossagg.version import __version__
+
+if TYPE_CHECKING:
+    from lossagg.portfolio.schema import PortfolioFile
 
 
 def check_folder(
@@ -36,7 +39,6 @@ def check_folder(
         EnvironmentFault: a portfolio checked alone cannot be opened, or the results cannot be written.
     """
     from lossagg.portfolio.checking import check_portfolio
-    from lossagg.pricing.checking import check_options
     from lossagg.records.trail import TEXTS
     from lossagg.report.checking import write_check
     from lossagg.report.folder import CHECK_FILES, check_destination
@@ -51,9 +53,9 @@ def check_folder(
         check = _check_all(source, progress)
         return check, None if out is None else write_check(check, out, facts=facts)
     if out is None:
-        return check_portfolio(source, further=check_options), None
+        return check_portfolio(source, further=_check_options), None
     trail: list[Any] = []
-    check = check_portfolio(source, further=check_options, trail=trail)
+    check = check_portfolio(source, further=_check_options, trail=trail)
     return check, write_check(check, out, trail=trail_csv(trail, TEXTS) or None, facts=facts)
 
 
@@ -63,6 +65,14 @@ def exit_code(check: dict[str, Any]) -> int:
     if check["status"] == "usable":
         return 0
     return 2 if check["status"] == "stopped" and "portfolios" not in check else 1
+
+
+def _check_options(file: PortfolioFile) -> None:
+    """Check the options of a portfolio file; one without any loads nothing of the engines."""
+    if file.option or file.option_grid is not None or file.pricing.lines is not None:
+        from lossagg.pricing.checking import check_options
+
+        check_options(file)
 
 
 def _check_all(folder: Path, progress: Progress) -> dict[str, Any]:
@@ -114,10 +124,9 @@ def _warn_of_one_name(parts: list[dict[str, Any]]) -> None:
 def _checked(path: Path) -> dict[str, Any]:
     """The check of one portfolio of several; whatever stops it does not stop the others."""
     from lossagg.portfolio.checking import check_portfolio, stopped_check
-    from lossagg.pricing.checking import check_options
 
     try:
-        return check_portfolio(path, further=check_options)
+        return check_portfolio(path, further=_check_options)
     # The outermost boundary of one portfolio: the others must be checked whatever it is.
     except Exception as error:  # noqa: BLE001
         failure = explain(error)
