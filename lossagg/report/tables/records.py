@@ -82,6 +82,7 @@ def by_year(lines: Sequence[Entry], currency: str) -> Table:
     notes = (
         "Exposure is that of the whole year; events and amounts are of the part observed. At ultimate: as "
         "developed, in money of the time; the same as recorded where no development is asked for.",
+        "The rows behind each figure stand in trail.csv, which lossagg check PORTFOLIO --out DIR writes.",
     )
     return Table("By year", f"Losses by year, {currency}", columns, rows, notes)
 
