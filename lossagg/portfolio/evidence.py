@@ -8,6 +8,9 @@ from typing import Any
 
 import numpy as np
 
+from lossagg.arrays import FloatArray
+from lossagg.families import SizeTable, Spliced
+from lossagg.families.base import SizeLaw
 from lossagg.fitting import Candidates, Fit, FrequencyFit, count_points, quantile_points, survival_points
 from lossagg.portfolio.assessment import Data, number
 from lossagg.portfolio.fit_tests import DRAWS, THRESHOLDS, frequency_tests, severity_tests, tail_evidence
@@ -97,6 +100,8 @@ def _severity(model: LineModel, draws: int) -> Data:
         "threshold": None,
         "observations": None,
         "censored": None,
+        "observed": None,
+        "density_jump": _jump(law),
         "candidates": [],
         "choice": None,
     }
@@ -108,11 +113,38 @@ def _severity(model: LineModel, draws: int) -> Data:
             "threshold": float(prepared.threshold.min()) if prepared.threshold.size else None,
             "observations": fit.observations,
             "censored": fit.censored,
+            "observed": observed(prepared.amount),
             "candidates": _candidates(tried, severity_tests(model, prepared, tried, draws)),
             "choice": _choice(tried),
             "notes": [str(note) for note in fit.notes],
         }
     return entry
+
+
+def _jump(law: SizeLaw) -> float | None:
+    """Density just above the threshold of a splice over that just below; None without two densities."""
+    if not isinstance(law, Spliced) or isinstance(law.body, SizeTable):
+        return None
+    return number(law.jump)
+
+
+def observed(amounts: FloatArray) -> Data:
+    """The losses before any law: centre, spread, skewness, kurtosis and the largest, as they are recorded."""
+    scale = float(amounts.max())
+    parts = amounts / scale
+    deviations = parts - parts.mean()
+    sd = float(np.sqrt(np.mean(deviations**2)))
+    steep = sd > 1e-12
+    return {
+        "losses": len(amounts),
+        "mean": float(parts.mean()) * scale,
+        "median": float(np.median(amounts)),
+        "sd": sd * scale,
+        "skewness": float(np.mean((deviations / sd) ** 3)) if steep else None,
+        "kurtosis": float(np.mean((deviations / sd) ** 4)) if steep else None,
+        "largest": scale,
+        "largest_share": 1.0 / float(parts.sum()),
+    }
 
 
 def _intervals(model: LineModel, fit: Fit) -> Data:

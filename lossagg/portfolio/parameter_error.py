@@ -24,9 +24,9 @@ from lossagg.families.base import CountLaw, SizeLaw
 from lossagg.fitting import Fit
 from lossagg.portfolio.assessment import Data, number
 from lossagg.portfolio.line import LineModel, survival_by_year
+from lossagg.portfolio.what_if import value_at_risk
 
 _STEP = 0.25  # of a standard error: far above the round-off of the engine, and near enough for a slope
-_COARSE = Fourier(accuracy=0.01)  # values on it are good to many more digits than their bracket says
 _WIDTH = float(special.ndtri(0.975))
 
 
@@ -64,7 +64,7 @@ def _severity_variance(model: LineModel, level: float) -> float:
 
     def at(law: Data) -> float:
         severity = make_size_law(**law)
-        return _value(_seen_through(model, severity), severity, level)
+        return value_at_risk(_seen_through(model, severity), severity, level)
 
     return _variance(fit, fit.model.to_dict(), at)
 
@@ -78,13 +78,9 @@ def _frequency_variance(model: LineModel, level: float) -> float:
         own = make_count_law(**law)
         exposure = model.forecast_exposure
         frequency = own.with_exposure(exposure) if model.rate is None else model.rate.redrawn(own, exposure)
-        return _value(frequency, model.severity, level)
+        return value_at_risk(frequency, model.severity, level)
 
     return _variance(fit, fit.model.to_dict(), at)
-
-
-def _value(frequency: CountLaw, severity: SizeLaw, level: float) -> float:
-    return float(_COARSE.annual_loss(frequency, severity).value_at_risk(level))
 
 
 def _seen_through(model: LineModel, severity: SizeLaw) -> CountLaw:

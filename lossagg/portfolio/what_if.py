@@ -30,16 +30,20 @@ from lossagg.portfolio.prior import weighted_rate
 from lossagg.records import PreparedLosses
 
 STEPS = 2
+_ENGINE = Fourier(accuracy=0.01)
 LARGEST = 5
 
 
 def value_at_risk(frequency: CountLaw, severity: SizeLaw, level: float) -> float:
-    """Value at risk of a line without covers, by the Fourier engine.
+    """Value at risk of a line without covers, by the Fourier engine on a coarse lattice.
+
+    A tenth of the points make the guaranteed bracket ten times as wide, and the value no worse than one part
+    in a million: it is interpolated far more finely than it is bounded.
 
     Raises:
         EngineError: a line beyond its reach.
     """
-    return float(Fourier().annual_loss(frequency, severity).value_at_risk(level))
+    return float(_ENGINE.annual_loss(frequency, severity).value_at_risk(level))
 
 
 def sensitivity(model: LineModel, tail: Data, level: float) -> list[Data]:

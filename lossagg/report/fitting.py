@@ -50,6 +50,7 @@ def fit_tables(fits: Entry) -> tuple[Table, ...]:
     lines, currency = fits["lines"], fits["portfolio"]["currency"]
     built = (
         tables.fits.parameters(lines),
+        tables.fits.observed(lines, currency),
         tables.fits.estimates(lines),
         tables.fits.candidates(lines),
         tables.fit_tests.goodness(lines),

@@ -16,6 +16,7 @@ if TYPE_CHECKING:
     import jinja2
 
 
+SMOOTH = 1e-4  # a density that jumps by less is continuous but for the stopping of a fit
 CLOSE_AIC = 2.0  # a difference below it says little: Burnham & Anderson 2002, section 2.6
 
 
@@ -149,6 +150,7 @@ def line_section(line: Entry, index: int, currency: str, extra: Sequence[Table] 
     built = (
         tables.records.by_year([line], currency),
         tables.records.development([line], currency),
+        tables.fits.observed([line], currency),
         tables.fits.candidates([line]),
         tables.fit_tests.goodness([line]),
         tables.fit_tests.frequency([line]),
@@ -189,6 +191,8 @@ def _line_facts(line: Entry, currency: str) -> list[tuple[str, str]]:
         facts.append(("Credibility of the rate", weighed))
     threshold = size["threshold"]
     facts.append(("Threshold", f"{threshold:,.2f} {currency}, trended" if threshold else "none"))
+    if size.get("density_jump") is not None:
+        facts.append(("Density at the splice", _jump_text(size["density_jump"])))
     facts.append(
         ("Losses fitted", f"{size['observations']:,}, of which {size['censored']:,} at a policy limit")
     )
@@ -219,6 +223,13 @@ def _choice_text(law: Entry) -> str:
     lead = fitted[1]["aic"] - fitted[0]["aic"]
     close = ", too little to tell them apart" if lead < CLOSE_AIC else ""
     return f"{choice['chosen']} has the lowest AIC, by {lead:.1f} before {fitted[1]['family']}{close}"
+
+
+def _jump_text(jump: float) -> str:
+    """Whether the density of a splice jumps."""
+    if abs(jump - 1.0) < SMOOTH:
+        return "continuous"
+    return f"jumps: just above the threshold it is {digits.significant(jump, 3)} times that just below"
 
 
 def _credibility_text(law: Entry) -> str:

@@ -3,11 +3,12 @@
 import numpy as np
 import pytest
 from folders import RECORDS, given_portfolio, recorded_portfolio
+from scipy import stats
 
 from lossagg.errors import InputError
 from lossagg.portfolio import read_portfolio
 from lossagg.portfolio.estimates import estimates
-from lossagg.portfolio.evidence import line_evidence
+from lossagg.portfolio.evidence import line_evidence, observed
 from lossagg.portfolio.what_if import refitted_severity
 from lossagg.report.tables.fits import estimates as table
 
@@ -90,3 +91,14 @@ def test_years_without_a_loss_may_have_a_probability_of_their_own(tmp_path):
     entry = line_evidence(model, draws=2, thresholds=1)
     assert entry["frequency"]["tests"]["goodness"]["pearson_p_value"] > 0
     assert entry["frequency"]["standard_errors"]["base.mean"] > 0
+
+
+def test_losses_before_any_law_agree_with_scipy(tmp_path):
+    x = without_threshold(tmp_path).prepared.amount
+    found = observed(x)
+    assert found["skewness"] == pytest.approx(stats.skew(x), rel=1e-9)
+    assert found["kurtosis"] == pytest.approx(stats.kurtosis(x, fisher=False), rel=1e-9)
+    assert found["sd"] == pytest.approx(np.std(x), rel=1e-12)
+    assert found["largest_share"] == pytest.approx(x.max() / x.sum(), rel=1e-12)
+    assert observed(np.full(5, 7e300))["kurtosis"] is None
+    assert observed(np.array([1e300, 2e300, 9e300]))["mean"] == pytest.approx(4e300)

@@ -57,7 +57,7 @@ def test_leaving_the_largest_out_agrees_with_fitting_the_rest_by_hand(portfolio,
     row = report["lines"][0]["influence"][1]
     assert row["change"] == "without the largest"
     assert row["amount"] == pytest.approx(prepared.amount.max())
-    assert row["value_at_risk"] == pytest.approx(by_hand, rel=1e-9)
+    assert row["value_at_risk"] == pytest.approx(by_hand, rel=1e-6)
 
 
 def test_influence_falls_with_the_rank_and_one_more_raises(report):
@@ -127,7 +127,7 @@ def test_sensitivity_keeps_the_body_and_replaces_the_tail(portfolio, report):
     (model,) = portfolio.models()
     rows = report["lines"][0]["sensitivity"]
     base = lossagg.annual_loss(model.frequency, model.severity).value_at_risk(0.99)
-    assert rows[0]["value_at_risk"] == pytest.approx(base)
+    assert rows[0]["value_at_risk"] == pytest.approx(base, rel=1e-6)
     moved = [row for row in rows[1:] if row["value_at_risk"] is not None]
     assert len(moved) >= 3
     row = moved[0]
@@ -139,7 +139,7 @@ def test_sensitivity_keeps_the_body_and_replaces_the_tail(portfolio, report):
         body=model.severity, tail=tail.model, threshold=row["threshold"], tail_probability=share
     )
     by_hand = lossagg.annual_loss(model.frequency, law).value_at_risk(0.99)
-    assert row["value_at_risk"] == pytest.approx(by_hand, rel=1e-9)
+    assert row["value_at_risk"] == pytest.approx(by_hand, rel=1e-6)
     assert row["shape"] == pytest.approx(tail.parameters["shape"])
 
 

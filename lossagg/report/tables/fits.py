@@ -44,6 +44,32 @@ def _no_error(law: Entry) -> str:
     return GIVEN if law["source"] == "given" else "fixed, not estimated"
 
 
+def observed(lines: Sequence[Entry], currency: str) -> Table:
+    """The recorded losses in figures, before any law."""
+    rows = []
+    for line in lines:
+        found = line["severity"].get("observed")
+        if found:
+            shape = (computed(found[name]) for name in ("skewness", "kurtosis"))
+            amounts = (found[name] for name in ("mean", "median", "sd"))
+            rows.append(
+                (line["name"], found["losses"], *amounts, *shape, found["largest"], found["largest_share"])
+            )
+    columns = (
+        Column("Line"),
+        Column("Losses", "count"),
+        Column("Mean", "money"),
+        Column("Median", "money"),
+        Column("Standard deviation", "money"),
+        Column("Skewness", "statistic"),
+        Column("Kurtosis", "statistic"),
+        Column("Largest", "money"),
+        Column("Its share of all", "probability"),
+    )
+    notes = ("Events as prepared, trended; limits and thresholds not corrected for. Normal kurtosis: 3.",)
+    return Table("Observed sizes", f"The losses before any law, {currency}", columns, tuple(rows), notes)
+
+
 def estimates(lines: Sequence[Entry]) -> Table:
     """The parameters by a bootstrap that refits, by moments and by percentiles, beside those used."""
     rows: list[tuple[Cell, ...]] = []
