@@ -159,9 +159,9 @@ def _tilted_back_by_less(monkeypatch: pytest.MonkeyPatch) -> None:
 
     right = LatticeTransform._back
 
-    def wrong(self: LatticeTransform, product: np.ndarray) -> object:
+    def wrong(self: LatticeTransform, product: np.ndarray, **options: bool) -> object:
         kept, self._weights = self._weights, self._weights**0.9
-        result = right(self, product)
+        result = right(self, product, **options)
         self._weights = kept
         return result
 
