@@ -109,12 +109,12 @@ class LatticeTransform:
             for line in lines:
                 masses = line.masses
                 continuous, atoms = self._transform(masses.down), self._transform(masses.atoms_down)
-                lowered.append(_total(line.none, continuous, atoms))
+                lowered.append(self._total(line.none, continuous, atoms))
                 if not np.array_equal(masses.atoms_down, masses.atoms_up):
                     atoms = self._transform(masses.atoms_up)
                 if continuous is not None:
                     continuous *= self._shift
-                raised.append(_total(line.none, continuous, atoms))
+                raised.append(self._total(line.none, continuous, atoms))
             counts = [line.frequency for line in lines]
             downs.append(cluster.pgf(counts, lowered))
             ups.append(cluster.pgf(counts, raised))
@@ -140,7 +140,7 @@ class LatticeTransform:
             if isinstance(cluster, Mixed) or any(size_biased(count) is None for count in counts):
                 return None
             ones = [
-                _total(line.none, self._transform(line.masses.spread + line.masses.atoms_even))
+                self._total(line.none, self._transform(line.masses.spread + line.masses.atoms_even))
                 for line in lines
             ]
             pgf = cluster.pgf(counts, ones)
@@ -171,7 +171,7 @@ class LatticeTransform:
                 cluster.pgf(
                     [line.frequency for line in self._of(cluster)],
                     [
-                        _total(line.none, self._transform(line.masses.atoms_even))
+                        self._total(line.none, self._transform(line.masses.atoms_even))
                         for line in self._of(cluster)
                     ],
                 )
@@ -196,7 +196,7 @@ class LatticeTransform:
         ]
 
     def _even_of(self, line: Spread) -> ComplexArray:
-        one = _total(line.none, self._transform(line.masses.even + line.masses.atoms_even))
+        one = self._total(line.none, self._transform(line.masses.even + line.masses.atoms_even))
         if line.masses.under[0] != 0.0:
             one += line.masses.under[0] / self._shift
         return one
@@ -215,6 +215,16 @@ class LatticeTransform:
             )
             for cluster in self._compound.clusters
         )
+
+    def _total(self, none: float, *parts: ComplexArray | None) -> ComplexArray:
+        """The transform of one payment: the probability of none and what is on the lattice."""
+        given = [part for part in parts if part is not None]
+        if not given:
+            return np.full(len(self._shift), none, dtype=np.complex128)
+        total = given[0] + given[1] if len(given) > 1 else given[0] + none
+        if len(given) > 1 and none != 0.0:
+            total += none
+        return np.asarray(total)
 
     def _product(self, parts: Sequence[ComplexArray]) -> ComplexArray:
         """The product of transforms; 1 where there are none."""
@@ -298,15 +308,6 @@ def bounded_survivals(total: LatticeSum, wrapped: float) -> tuple[FloatArray, Fl
     survival += wrapped
     most = np.clip(survival, 0.0, 1.0, out=survival)[::-1]
     return least, np.maximum.accumulate(most)[::-1]
-
-
-def _total(none: float, *parts: ComplexArray | None) -> ComplexArray:
-    """The transform of one payment: the probability of none and what is on the lattice."""
-    given = [part for part in parts if part is not None]
-    total = given[0] + given[1] if len(given) > 1 else given[0] + none
-    if len(given) > 1 and none != 0.0:
-        total += none
-    return np.asarray(total)
 
 
 def _norm(values: FloatArray) -> float:
