@@ -83,5 +83,7 @@ class LogGammaLikelihood(GammaLikelihood):
     def log_survival(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
         y = self.above(points)
         inside = y > 0
+        if not inside.any():
+            return inner[0] * np.zeros(len(y))
         survival = log_gamma_survival(inner[0], np.log(np.where(inside, y, 1.0)) - log(inner[1]))
         return survival * inside.astype(np.float64)

@@ -13,6 +13,7 @@ from lossagg.families.base import SizeLaw
 from lossagg.fitting.sample import Sample
 
 FEW = 30  # uncensored losses; common practice, no source
+_REPEATED, _FEWEST_REPEATED = 0.2, 5  # share and number of losses of one amount; no source
 _LITTLE_SEEN = 0.1  # share of losses above the reporting threshold
 _TWO_SIDED = float(special.ndtri(0.975))
 _INDEX_OF = {
@@ -59,6 +60,7 @@ def severity_notes(
             "large-sample theory."
         )
         notes.append(Note("few-losses", text))
+    notes += _repeated(sample)
     if sample.floor > 0:
         above = float(model.sf(sample.floor * sample.scale))
         if above < _LITTLE_SEEN:
@@ -68,6 +70,17 @@ def severity_notes(
             )
             notes.append(Note("little-seen", text))
     return (*notes, *_loose(values, covariance))
+
+
+def _repeated(sample: Sample) -> list[Note]:
+    amount, times = sample.commonest
+    if times < _FEWEST_REPEATED or times < _REPEATED * sample.count:
+        return []
+    text = (
+        f"{times:g} of {sample.count:g} uncensored losses are {amount * sample.scale:.10g}: a law of this "
+        "family gives no probability to a single amount. Check for limits, deductibles and placeholders."
+    )
+    return [Note("repeated-amount", text)]
 
 
 def tail_notes(

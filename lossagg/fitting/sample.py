@@ -143,6 +143,15 @@ class Sample:
         return float(np.sqrt(self.log_squares / self.count))
 
     @property
+    def commonest(self) -> tuple[float, float]:
+        """The uncensored amount shared by most losses, and by how many."""
+        first = np.flatnonzero(np.diff(self.exact, prepend=-1.0))
+        weights = np.ones(len(self.exact)) if self.weights is None else self.weights
+        times = np.add.reduceat(weights, first)
+        place = int(np.argmax(times))
+        return float(self.exact[first[place]]), float(times[place])
+
+    @property
     def exposure_above(self) -> float:
         """Sum of all losses less all thresholds: the total time at risk of survival analysis."""
         return self.sum + _dot(self.stopped) - _dot(self.thresholds)

@@ -47,6 +47,7 @@ FAMILIES = (
 _ORIGINS = {"pareto": "minimum", "generalized-pareto": "threshold", "log-gamma": "minimum"}
 _HELD = {**_ORIGINS, "gamma": "shape"}
 MOST_STARTS = 4
+_EQUAL = 1e-9  # relative: amounts that differ by less do so by rounding
 _SEVERAL_STARTS = 20_000  # losses above which only the best start climbs, unless it fails
 
 
@@ -231,6 +232,12 @@ def require_support(sample: Sample, family: str, parameters: int) -> None:
             f"{distinct} distinct amount{'s' if distinct != 1 else ''}",
             value=f"{sample.count} uncensored losses",
             remedy="Use a law with fewer parameters, pool with similar lines, or give the law.",
+        )
+    if parameters > 1 and sample.exact[-1] - sample.exact[0] <= _EQUAL * sample.exact[0]:
+        raise FitError(
+            "the uncensored losses are equal to within one part in a thousand million, so no shape shows",
+            value=float(sample.exact[0] * sample.scale),
+            remedy="Check for a limit or a placeholder in the records; a fixed amount is a SizeTable.",
         )
     if distinct == 1 and sample.observations > 1 and not sample.censored:
         raise FitError(
