@@ -5,6 +5,7 @@ from __future__ import annotations
 import pytest
 from law_cases import COUNTS, SIMPLE
 
+import lossagg
 from lossagg.errors import InputError
 from lossagg.families import (
     COUNT_FAMILIES,
@@ -50,6 +51,13 @@ def test_the_family_names_are_those_of_the_portfolio_file():
     ]
     for family, law in [*COUNT_FAMILIES.items(), *SIZE_FAMILIES.items()]:
         assert law.family == family
+
+
+def test_the_public_surface_names_every_law():
+    laws = {law.__name__: law for law in (*COUNT_FAMILIES.values(), *SIZE_FAMILIES.values())}
+    assert set(laws) <= set(lossagg.__all__)
+    for name, law in laws.items():
+        assert getattr(lossagg, name) is law
 
 
 def test_laws_from_their_parameters():

@@ -2,7 +2,9 @@
 
 import numpy as np
 import pytest
+from scipy import optimize
 
+from lossagg import Pareto
 from lossagg.errors import FitError, InputError
 from lossagg.fitting import fit_grouped, fit_severity
 
@@ -38,6 +40,24 @@ def test_grouped_exponential_in_closed_form():
     fit = fit_grouped([0, 1000, 2000, np.inf], [7, 6, 7], "exponential")
     assert fit.parameters["mean"] == pytest.approx(1996.90364948, rel=1e-9)
     assert round(fit.parameters["mean"], 2) == 1996.90
+
+
+def test_grouped_single_parameter_pareto_in_closed_form():
+    """SOA Exam C / STAM sample question: F(x) = 1 - theta / x, losses 9 up to 10, 6 up to 25, 5 beyond: 5.50.
+
+    That is the Pareto law of alpha 1 with an unknown minimum; the likelihood is written from its survival
+    function."""
+
+    def log_likelihood(theta):
+        survival = Pareto(alpha=1, minimum=theta).sf([10.0, 25.0])
+        parts = -np.diff(np.concatenate([[1.0], survival, [0.0]]))
+        return float(np.sum(np.array([9, 6, 5]) * np.log(parts)))
+
+    found = optimize.minimize_scalar(
+        lambda theta: -log_likelihood(theta), bounds=(1, 9.9), method="bounded", options={"xatol": 1e-9}
+    )
+    assert round(found.x, 2) == 5.50
+    assert found.x == pytest.approx(10 * 11 / 20, rel=1e-6)
 
 
 def test_fine_intervals_give_the_fit_of_the_losses_and_its_errors():

@@ -5,7 +5,9 @@ Fits and counts are quoted from memory and were recomputed with mpmath, unless a
 
 import numpy as np
 import pytest
+from scipy import optimize
 
+from lossagg import NegativeBinomial, Poisson
 from lossagg.fitting import fit_frequency, overdispersion
 
 
@@ -67,3 +69,42 @@ def test_no_losses_never_become_rate_zero(years, upper, mean):
     assert fit.maximum_likelihood_mean == 0.0
     assert "the estimate of maximum likelihood is 0 and is not used" in fit.notes[0]
     assert f"{upper:.5g}" in fit.notes[0]
+
+
+def test_data_set_a_with_an_open_last_cell():
+    """Klugman, Panjer & Willmot, Loss Models, Data Set A: 94,935 drivers, 7 of them with 5 accidents or more.
+    Maxima of the likelihood with that cell open, values computed here with mpmath: Poisson .16313471397 and
+    -45297.7909, negative binomial r .897895, beta .181698 and -44763.3406."""
+    table = np.array([81714, 11306, 1618, 250, 40])
+    assert table.sum() + 7 == 94935
+
+    def log_likelihood(law):
+        return float(np.sum(table * np.log(law.pmf(np.arange(5.0)))) + 7 * np.log(law.sf(4)))
+
+    assert log_likelihood(Poisson(mean=0.16313471397)) == pytest.approx(-45297.7909347, abs=1e-6)
+    found = optimize.minimize_scalar(
+        lambda mean: -log_likelihood(Poisson(mean=mean)),
+        bounds=(0.1, 0.2),
+        method="bounded",
+        options={"xatol": 1e-10},
+    )
+    assert found.x == pytest.approx(0.16313471397, rel=1e-6)
+    r, beta = 0.897895488898, 0.18169799647
+    best = log_likelihood(NegativeBinomial(mean=r * beta, dispersion=1 / r))
+    assert best == pytest.approx(-44763.3406219, abs=1e-6)
+    for factor in (0.99, 1.01):
+        assert log_likelihood(NegativeBinomial(mean=r * beta * factor, dispersion=1 / r)) < best
+        assert log_likelihood(NegativeBinomial(mean=r * beta, dispersion=factor / r)) < best
+    closed = fit_frequency(expanded([*table, 7]), "negative-binomial")
+    assert closed.parameters["mean"] == pytest.approx(r * beta, rel=1e-4)
+
+
+def test_moments_of_an_overdispersed_record():
+    """Counts 3,5,4,9,2,7,12,4,6,8: variance 9.3333 gives r = 10.8 and beta = .5556 by moments, r beta = 6
+    (closed forms; own numbers)."""
+    counts = np.array([3, 5, 4, 9, 2, 7, 12, 4, 6, 8])
+    mean, variance = counts.mean(), counts.var(ddof=1)
+    r, beta = mean**2 / (variance - mean), (variance - mean) / mean
+    assert (round(variance, 4), round(r, 1), round(beta, 4)) == (9.3333, 10.8, 0.5556)
+    law = NegativeBinomial(mean=r * beta, dispersion=1 / r)
+    assert (law.mean(), law.variance()) == (pytest.approx(mean), pytest.approx(variance))

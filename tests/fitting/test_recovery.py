@@ -12,6 +12,7 @@ import pytest
 from scipy import optimize, stats
 
 from lossagg.fitting import fit_severity
+from lossagg.fitting.severity import FAMILIES
 
 
 @dataclass(frozen=True)
@@ -93,6 +94,10 @@ CASES = [
     ),
 ]
 by_family = pytest.mark.parametrize("case", CASES, ids=lambda case: case.family)
+
+
+def test_every_family_is_among_the_cases():
+    assert {case.family for case in CASES} == set(FAMILIES)
 
 
 def draw(case, count, seed):
