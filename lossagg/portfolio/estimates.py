@@ -41,7 +41,11 @@ def estimates(model: LineModel, draws: int) -> Data:
         entry = _bootstrapped(lambda: bootstrap_severity(*losses, *beside, draws=some, seed=seed))
         other = cross_reference(prepared.amount, chosen, *beside)
         entry |= {"moments": other.moments, "percentiles": other.percentiles}
-        found["severity"] = {**entry, "reasons": [*entry["reasons"], *dict.fromkeys(other.reasons.values())]}
+        missing: dict[str, list[str]] = {}
+        for method, why in other.reasons.items():
+            missing.setdefault(why, []).append(method)
+        none = [f"no {' or '.join(methods)}: {why}" for why, methods in missing.items()]
+        found["severity"] = {**entry, "reasons": [*entry["reasons"], *none]}
     return found
 
 
