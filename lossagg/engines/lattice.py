@@ -97,7 +97,7 @@ class LatticeLoss(BracketedAnnualLoss):
 
     def tail_value_at_risk(self, level: float) -> float:
         """VaR + E[(S - VaR)+] / (1 - level), inside its bracket; `inf` where the mean is."""
-        low, high = self._narrowed_tail(level)
+        low, high = self._tail_range(level)
         return min(max(super().tail_value_at_risk(level), low), high)
 
     def layer_mean(self, low: float, high: float = np.inf) -> float:
@@ -125,10 +125,10 @@ class LatticeLoss(BracketedAnnualLoss):
     def accuracy(self, measure: str, level: float | None = None) -> tuple[float, float]:
         """The guaranteed bracket."""
         if measure == "tail_value_at_risk" and level is not None:
-            return self._narrowed_tail(require_probability(level, "level", open_low=True, open_high=True))
+            return self._tail_range(require_probability(level, "level", open_low=True, open_high=True))
         return super().accuracy(measure, level)
 
-    def _narrowed_tail(self, level: float) -> tuple[float, float]:
+    def _tail_range(self, level: float) -> tuple[float, float]:
         low, high = self.low.tail_value_at_risk(level), self.high.tail_value_at_risk(level)
         last = self.high.value_at_risk(level)
         if self.limited is None or last > self.limited.top or self.compound.mean == np.inf:

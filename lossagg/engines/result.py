@@ -165,8 +165,11 @@ class BracketedAnnualLoss(AnnualLoss):
         )
 
     def _tail_bracket(self, level: float, low: AnnualLoss, high: AnnualLoss) -> tuple[float, float]:
-        """Bounds of the TVaR from the brackets of the quantile and of layers: v + E[(S - v)+] / (1 - level)
-        is convex in v, least at the quantile, and has the slope 1 - P(S > v) / (1 - level)."""
+        """Bounds of the TVaR from the brackets of the quantile and of layers.
+
+        v + E[(S - v)+] / (1 - level) is convex in v, least at the quantile, and has the slope
+        1 - P(S > v) / (1 - level).
+        """
         share = 1.0 - level
         ends = low.value_at_risk(level), high.value_at_risk(level)
         if not np.isfinite(ends[1]):
@@ -256,6 +259,14 @@ class TransformedAnnualLoss(BracketedAnnualLoss):
     def value_at_risk(self, level: float) -> float:
         """The payment at the quantile of the underlying loss."""
         return float(self.payment(np.array([self.base.value_at_risk(level)]))[0])
+
+    def tail_value_at_risk(self, level: float) -> float:
+        """Mean of the worst 1 - level of years, inside its bracket where there is one."""
+        value = super().tail_value_at_risk(level)
+        if not isinstance(self.base, BracketedAnnualLoss):
+            return value
+        low, high = self.accuracy("tail_value_at_risk", level)
+        return min(max(value, low), high)
 
     def mean(self) -> float:
         """The expected payment; of a share of the loss, the share of its mean, exact where that is."""

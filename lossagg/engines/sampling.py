@@ -1,8 +1,8 @@
-"""One payment on the lattice of the Fourier engine: rounded down, sampled with its mean kept, rounded up."""
+"""One payment on the lattice of the Fourier engine: rounded down, its mean kept, rounded up."""
 
 from __future__ import annotations
 
-from typing import NamedTuple
+from functools import cached_property
 
 import numpy as np
 
@@ -16,59 +16,108 @@ _NODES, _SHARES = (part / 2.0 for part in np.polynomial.legendre.leggauss(12))
 _NODES = _NODES + 0.5
 
 
-class Masses(NamedTuple):
-    """One payment on the lattice, shape (n,) each; what lies beyond the lattice is left out.
-
-    Attributes:
-        down: the continuous part rounded down; shifted by one step it is the part rounded up.
-        even: the continuous part with every cell's mean kept and the sampling corrected.
-        under: what the correction puts at -h.
-        atoms_down: atoms rounded down.
-        atoms_even: atoms split so that their mean is kept.
-        atoms_up: atoms rounded up.
-        spread: the continuous part with every cell's mean kept, nothing corrected.
-        bulge: by cell, a bound of what keeping the mean adds to E[max(Y - x, 0)] summed over x, in steps.
-    """
-
-    down: FloatArray
-    even: FloatArray
-    under: FloatArray
-    atoms_down: FloatArray
-    atoms_even: FloatArray
-    atoms_up: FloatArray
-    spread: FloatArray
-    bulge: FloatArray
-
-
-def severity_masses(payment: Payment, step: float, points: int) -> Masses:
-    """Discretise one payment above zero three ways: rounded down, mean-preserving, rounded up.
+class Masses:
+    """One payment above zero on the lattice, each way when first asked for, shape (n,) each; what lies beyond
+    the lattice is left out.
 
     Args:
         payment: the law of the payment.
         step: distance of the lattice points.
         points: number of lattice points, from 0.
+        share: what all probabilities are divided by.
     """
-    if payment.stretches:
-        reached = min(points, int(payment.upper(_NEVER) / step) + 2)
-        edges = step * np.arange(reached + 1.0)
-        down = _padded(-np.diff(payment.continuous_sf(edges)), points)
-        averages = payment.continuous_areas(edges) / step
-        spread = _padded(-np.diff(averages, prepend=payment.continuous_mass), points)
-        even, under = _sampled(spread, payment, step)
-        bulge = _bulges(down, averages - payment.continuous_sf(edges[1:]))
-    else:
-        down, even, under = np.zeros(points), np.zeros(points), np.zeros(1)
-        spread, bulge = even, np.zeros(points)
-    amounts, chances = payment.atoms
-    index, part = places(amounts, step)
-    inside = (amounts > 0) & (index < points)
-    index, part, chances = index[inside], part[inside], chances[inside]
-    up = index + (part > 0).astype(np.int64)
-    atoms_down = _gathered(index, chances, points)
-    atoms_up = _gathered(up, chances, points)
-    atoms_even = _gathered(index, chances * (1 - part), points) + _gathered(index + 1, chances * part, points)
-    bulge = bulge + _gathered(index, chances * part * (1 - part), points)
-    return Masses(down, even, under, atoms_down, atoms_even, atoms_up, spread, bulge)
+
+    def __init__(self, payment: Payment, step: float, points: int, share: float = 1.0) -> None:
+        self._payment, self._step, self._points, self._share = payment, step, points, share
+        reached = min(points, int(payment.upper(_NEVER) / step) + 2) if payment.stretches else 0
+        self._edges = step * np.arange(reached + 1.0)
+
+    @cached_property
+    def down(self) -> FloatArray:
+        """The continuous part rounded down; shifted by one step it is the part rounded up."""
+        return self._padded(-np.diff(self._survival))
+
+    @cached_property
+    def spread(self) -> FloatArray:
+        """The continuous part with every cell's mean kept, nothing corrected."""
+        if not self._payment.stretches:
+            return np.zeros(self._points)
+        return self._padded(-np.diff(self._averages, prepend=self._payment.continuous_mass / self._share))
+
+    @cached_property
+    def bulge(self) -> FloatArray:
+        """By cell, a bound of what keeping the mean adds to E[max(Y - x, 0)] summed over x, in steps."""
+        index, part, chances = self._atoms
+        bulge = _bulges(self.down, self._averages - self._survival[1:])
+        return bulge + self._gathered(index, chances * part * (1 - part))
+
+    @property
+    def even(self) -> FloatArray:
+        """The continuous part with every cell's mean kept and the sampling corrected."""
+        return self._sampled[0]
+
+    @property
+    def under(self) -> FloatArray:
+        """What the correction puts at -h."""
+        return self._sampled[1]
+
+    @cached_property
+    def atoms_down(self) -> FloatArray:
+        """Atoms rounded down."""
+        index, _, chances = self._atoms
+        return self._gathered(index, chances)
+
+    @cached_property
+    def atoms_even(self) -> FloatArray:
+        """Atoms split so that their mean is kept."""
+        index, part, chances = self._atoms
+        return self._gathered(index, chances * (1 - part)) + self._gathered(index + 1, chances * part)
+
+    @cached_property
+    def atoms_up(self) -> FloatArray:
+        """Atoms rounded up."""
+        index, part, chances = self._atoms
+        return self._gathered(index + (part > 0), chances)
+
+    @cached_property
+    def _survival(self) -> FloatArray:
+        return self._shared(self._payment.continuous_sf(self._edges))
+
+    @cached_property
+    def _averages(self) -> FloatArray:
+        return self._shared(self._payment.continuous_areas(self._edges)) / self._step
+
+    @cached_property
+    def _sampled(self) -> tuple[FloatArray, FloatArray]:
+        if not self._payment.stretches:
+            return np.zeros(self._points), np.zeros(1)
+        return _sampled(self.spread, self._payment, self._step, self._share)
+
+    @cached_property
+    def _atoms(self) -> tuple[IntArray, FloatArray, FloatArray]:
+        amounts, chances = self._payment.atoms
+        index, part = places(amounts, self._step)
+        inside = (amounts > 0) & (index < self._points)
+        return index[inside], part[inside], self._shared(chances[inside])
+
+    def _shared(self, chances: FloatArray) -> FloatArray:
+        return chances if self._share == 1.0 else chances / self._share
+
+    def _padded(self, masses: FloatArray) -> FloatArray:
+        """Masses followed by zeros: what a payment reaches with no chance that any sum could show."""
+        if len(masses) == self._points:
+            return masses
+        return np.concatenate((masses, np.zeros(self._points - len(masses))))
+
+    def _gathered(self, index: IntArray, chances: FloatArray) -> FloatArray:
+        """Probabilities added up by lattice index, those beyond the lattice left out."""
+        found = np.bincount(index, chances, self._points)[: self._points]
+        return np.asarray(found, dtype=np.float64)
+
+
+def severity_masses(payment: Payment, step: float, points: int, share: float = 1.0) -> Masses:
+    """One payment above zero on the lattice; the arguments are those of `Masses`."""
+    return Masses(payment, step, points, share)
 
 
 def _bulges(masses: FloatArray, levers: FloatArray) -> FloatArray:
@@ -80,17 +129,9 @@ def _bulges(masses: FloatArray, levers: FloatArray) -> FloatArray:
     return raised
 
 
-def _padded(masses: FloatArray, points: int) -> FloatArray:
-    """Masses followed by zeros: what a payment reaches with no chance that any sum could show."""
-    return np.concatenate((masses, np.zeros(points - len(masses))))
-
-
-def _gathered(index: IntArray, chances: FloatArray, points: int) -> FloatArray:
-    """Probabilities added up by lattice index, those beyond the lattice left out."""
-    return np.asarray(np.bincount(index, chances, points)[:points], dtype=np.float64)
-
-
-def _sampled(weights: FloatArray, payment: Payment, step: float) -> tuple[FloatArray, FloatArray]:
+def _sampled(
+    weights: FloatArray, payment: Payment, step: float, share: float
+) -> tuple[FloatArray, FloatArray]:
     """Mean-preserving weights with the second moment of the payment restored; a little goes just below zero.
 
     A payment at position u of its cell has gained the variance u (1 - u) h**2 by moving to the ends. Half of
@@ -102,7 +143,7 @@ def _sampled(weights: FloatArray, payment: Payment, step: float) -> tuple[FloatA
     first = min(_FIRST, len(weights) - 1)
     places = step * (np.arange(float(first))[:, None] + _NODES[None, :])
     above = payment.continuous_sf(places.reshape(-1)).reshape(places.shape)
-    gained = above @ (_SHARES * (1.0 - 2.0 * _NODES))
+    gained = above @ (_SHARES * (1.0 - 2.0 * _NODES)) / share
     taken[:first] = (gained + np.concatenate(([0.0], gained[:-1]))) / 4.0
     padded = np.concatenate(([0.0], taken, [taken[-1]]))
     return weights - np.diff(padded, 2), np.array([-taken[0]])

@@ -1,8 +1,9 @@
 """How an annual loss goes on beyond the last point of its lattice.
 
 An estimate, with the exact mean beyond the point kept. Where single payments can exceed the point, a sum
-beyond it is nearly always one large payment, so the survival function follows the expected number of
-payments above an amount. Where payments are capped below it, the survival function falls exponentially.
+beyond it is nearly always one large payment and what the others add to it: the survival function is the
+expected number of payments above an amount less theirs, chosen so that it starts as it should. Where
+payments are capped below it, the survival function falls exponentially.
 """
 
 from __future__ import annotations
@@ -36,7 +37,7 @@ class Tail:
         if self.survival == 0:
             return 0.0
         if self._follows_payments:
-            return min(self._factor * self._expected(x), self.survival)
+            return min(self._factor * self._expected(x - self._others), self.survival)
         return self.survival * float(np.exp(-self._rate * (x - self.start)))
 
     def quantile(self, tail: float) -> float:
@@ -62,9 +63,10 @@ class Tail:
         if not self._follows_payments:
             decay = np.exp(-self._rate * np.array([low - self.start, high - self.start]))
             return self.rest * float(decay[0] - decay[1])
+        low, high = low - self._others, high - self._others
         if high < np.inf:
             return self._factor * self.compound.layer_cost(low, high)
-        whole = self.compound.layer_cost(self.start, np.inf)
+        whole = self.compound.layer_cost(self.start - self._others, np.inf)
         return self.rest * self.compound.layer_cost(low, np.inf) / whole if whole < np.inf else np.inf
 
     def layer_second_moment(self, low: float, high: float) -> float:
@@ -72,7 +74,7 @@ class Tail:
         if self.survival == 0 or low >= high:
             return 0.0
         if self._follows_payments:
-            return self._factor * self.compound.layer_square(low, high)
+            return self._factor * self.compound.layer_square(low - self._others, high - self._others)
         width = self._rate * (high - low)
         part = 1.0 if width == np.inf else 1.0 - (1.0 + width) * float(np.exp(-width))
         return 2.0 * self.sf(low) / self._rate**2 * part
@@ -85,8 +87,21 @@ class Tail:
         return self._expected(self.start) > 1e-3 * self.survival or self.rest <= 0
 
     @cached_property
+    def _others(self) -> float:
+        """What the other payments of such a year add, at least nothing: by bisection."""
+        low, high = 0.0, self.start
+        if self._expected(self.start) >= self.survival:
+            return 0.0
+        for _ in range(60):
+            middle = (low + high) / 2
+            low, high = (
+                (low, middle) if self._expected(self.start - middle) > self.survival else (middle, high)
+            )
+        return low
+
+    @cached_property
     def _factor(self) -> float:
-        expected = self._expected(self.start)
+        expected = self._expected(self.start - self._others)
         return self.survival / expected if expected > 0 else 0.0
 
     @property

@@ -43,7 +43,7 @@ class TailShares(LatticeTransform):
         taken = min(max((below[place] - level) / atom, 0.0), 1.0) if atom > 0 else 0.0
         shares = np.empty(len(self.lines))
         index = np.arange(self.points, dtype=np.float64)
-        parts = self._even_parts()
+        parts = self._joint(self._even_of)
         for place_of, cluster in enumerate(self._compound.clusters):
             lines = self._of(cluster)
             counts = [line.frequency for line in lines]

@@ -16,7 +16,7 @@ here:
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import cached_property
 from typing import NamedTuple
@@ -33,6 +33,7 @@ from lossagg.engines.running import running_sums
 from lossagg.engines.sampling import Masses, severity_masses
 from lossagg.engines.size_biased import size_biased
 from lossagg.families.base import CountLaw
+from lossagg.families.polar import exponential
 
 ComplexArray = npt.NDArray[np.complex128]
 
@@ -98,8 +99,27 @@ class LatticeTransform:
         total_tilt = min(float(np.log(max(reachable / _WRAPPED, 1.0))), _MOST_TILT)
         self.wrapped = float(np.exp(-total_tilt)) * reachable
         self._tilt = total_tilt / self.length
-        self._shift = np.exp(-self._tilt - 2j * np.pi * np.arange(self.length // 2 + 1) / self.length)
         self._weights = np.exp(-self._tilt * np.arange(points))
+
+    @cached_property
+    def _shift(self) -> ComplexArray:
+        """The transform of one step."""
+        angles = np.arange(self.length // 2 + 1) * (-2j * np.pi / self.length)
+        return np.asarray(np.exp(-self._tilt) * exponential(angles))
+
+    def down(self) -> LatticeSum:
+        """The sum of payments rounded down."""
+        return self._back(
+            self._product(
+                self._joint(
+                    lambda line: self._total(
+                        line.none,
+                        self._transform(line.masses.down),
+                        self._transform(line.masses.atoms_down),
+                    )
+                )
+            )
+        )
 
     def sides(self) -> tuple[LatticeSum, LatticeSum]:
         """The sums of payments rounded down and rounded up."""
@@ -122,7 +142,7 @@ class LatticeTransform:
 
     def even(self) -> LatticeSum:
         """The sum of payments with their means kept and the sampling corrected."""
-        return self._back(self._product(self._even_parts()), below=True)
+        return self._back(self._product(self._joint(self._even_of)), below=True)
 
     def limited(self, step: float) -> LimitedMeans | None:
         """Bounds of the limited means from payments moved to the two nearest points with their means kept.
@@ -131,8 +151,8 @@ class LatticeTransform:
         """
         if not any(line.masses.bulge.any() for line in self.lines):
             return None
-        product: ComplexArray | None = None
-        rising: ComplexArray | None = None
+        products: list[ComplexArray] = []
+        rising = np.zeros(0, dtype=np.complex128)
         mean, spread = 0.0, 0.0
         for cluster in self._compound.clusters:
             lines = self._of(cluster)
@@ -150,16 +170,14 @@ class LatticeTransform:
                 if bulge is not None:
                     bulge *= cluster.slope(counts, ones, member, pgf)
                     own += bulge
-            rising = own if product is None else rising * pgf + product * own
-            product = pgf if product is None else product * pgf
+            rising = rising * pgf + products[-1] * own if products else own
+            products = [products[-1] * pgf if products else pgf]
             expected = sum(count.mean() for count in counts)
             mean += expected
             spread += float(cluster.covariances(counts, np.ones(len(counts))).sum()) / expected
-        if product is None or rising is None:
-            return None
-        tilted = np.asarray(fft.irfft(rising, self.length))
+        tilted = np.asarray(fft.irfft(rising, self.length, overwrite_x=True))
         off = self._relative(mean + spread) * _norm(tilted)
-        total = self._back(product)
+        total = self._back(products[-1])
         least, most = bounded_survivals(total, self.wrapped)
         return LimitedMeans.of(step, least, most, (tilted[: self.points] + off) / self._weights)
 
@@ -167,16 +185,7 @@ class LatticeTransform:
         """Probabilities of sums made of atoms alone, shape (n,), and the probability of any other sum."""
         log_atoms = self._log_joint([line.none + line.atom for line in self.lines])
         if any(line.masses.atoms_even.any() for line in self.lines):
-            parts = [
-                cluster.pgf(
-                    [line.frequency for line in self._of(cluster)],
-                    [
-                        self._total(line.none, self._transform(line.masses.atoms_even))
-                        for line in self._of(cluster)
-                    ],
-                )
-                for cluster in self._compound.clusters
-            ]
+            parts = self._joint(lambda line: self._total(line.none, self._transform(line.masses.atoms_even)))
             alone = self._back(self._product(parts)).probabilities
             alone = np.where(alone > _EPSILON, alone, 0.0)
         else:
@@ -185,15 +194,13 @@ class LatticeTransform:
         continuous = any(line.masses.even.any() for line in self.lines)
         return alone, float(-np.expm1(log_atoms)) if continuous else 0.0
 
-    def _even_parts(self) -> list[ComplexArray]:
-        """The joint generating function of every cluster at its payments with their means kept."""
-        return [
-            cluster.pgf(
-                [line.frequency for line in self._of(cluster)],
-                [self._even_of(line) for line in self._of(cluster)],
-            )
-            for cluster in self._compound.clusters
-        ]
+    def _joint(self, argument: Callable[[Spread], ComplexArray]) -> list[ComplexArray]:
+        """The joint generating function of every cluster, at a transform for each of its lines."""
+        joint = []
+        for cluster in self._compound.clusters:
+            lines = self._of(cluster)
+            joint.append(cluster.pgf([line.frequency for line in lines], [argument(line) for line in lines]))
+        return joint
 
     def _even_of(self, line: Spread) -> ComplexArray:
         one = self._total(line.none, self._transform(line.masses.even + line.masses.atoms_even))
@@ -229,7 +236,7 @@ class LatticeTransform:
     def _product(self, parts: Sequence[ComplexArray]) -> ComplexArray:
         """The product of transforms; 1 where there are none."""
         if not parts:
-            return np.ones(len(self._shift), dtype=np.complex128)
+            return np.ones(self.length // 2 + 1, dtype=np.complex128)
         total = np.asarray(parts[0])
         for part in parts[1:]:
             total = np.multiply(total, part, out=total)
@@ -282,11 +289,15 @@ class LatticeTransform:
     def _chernoff(self) -> float:
         """Bound of the probability that payments on the lattice add up to its transform length."""
         bound = 0.0
+        binned = [_binned(line.masses) for line in self.lines]
         for scale in (1.0, 2.0, 4.0, 8.0, 16.0, 32.0, 64.0, 128.0):
             rate = scale / self.points
             exponent = -rate * self.length
             with np.errstate(over="ignore", invalid="ignore"):
-                moments = [line.none + _exponential_moment(line.masses, rate) for line in self.lines]
+                moments = [
+                    line.none + float(chances @ np.exp(rate * tops))
+                    for line, (tops, chances) in zip(self.lines, binned, strict=True)
+                ]
                 exponent += self._log_joint(moments)
             if not np.isfinite(exponent):
                 break
@@ -317,21 +328,20 @@ def _norm(values: FloatArray) -> float:
 def _spread(part: Part, step: float, points: int) -> Spread:
     """A line on the lattice, its count thinned to losses that pay where the family is closed under it."""
     count, payment = part
-    masses = severity_masses(payment, step, points)
     amounts, chances = payment.atoms
     atom = float(chances[amounts > 0].sum())
     paying = payment.paying
     if paying == 1.0 or count.recursion is None:
-        return Spread(count, masses, 1.0 - paying, atom)
-    return Spread(count.thinned(paying), Masses(*(part / paying for part in masses)), 0.0, atom / paying)
+        return Spread(count, severity_masses(payment, step, points), 1.0 - paying, atom)
+    masses = severity_masses(payment, step, points, paying)
+    return Spread(count.thinned(paying), masses, 0.0, atom / paying)
 
 
-def _exponential_moment(masses: Masses, rate: float) -> float:
-    """A bound of E[exp(rate * index)] of one payment rounded up, from masses gathered in bins."""
+def _binned(masses: Masses) -> tuple[FloatArray, FloatArray]:
+    """One payment rounded up, gathered in bins: their highest indices and probabilities."""
     up = np.append(0.0, masses.down) + np.append(masses.atoms_up, 0.0)
     width = -(-len(up) // _BINS)
     padded = np.zeros(width * -(-len(up) // width))
     padded[: len(up)] = up
     binned = padded.reshape(-1, width).sum(axis=1)
-    tops = np.minimum(width * np.arange(1.0, len(binned) + 1.0) - 1.0, len(up) - 1.0)
-    return float(binned @ np.exp(rate * tops))
+    return np.minimum(width * np.arange(1.0, len(binned) + 1.0) - 1.0, len(up) - 1.0), binned

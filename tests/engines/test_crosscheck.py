@@ -170,19 +170,14 @@ def _tilted_back_by_less(monkeypatch: pytest.MonkeyPatch) -> None:
 
 def _moved_lattice(monkeypatch: pytest.MonkeyPatch) -> None:
     """Every payment is put one lattice point too high, in whole numbers, as an integer-typed grid does."""
-    from lossagg.engines import transform
+    from lossagg.engines.sampling import Masses
 
-    right = transform.severity_masses
+    right = Masses._padded
 
-    def wrong(payment: object, step: float, points: int) -> object:
-        masses = right(payment, step, points)  # type: ignore[arg-type]
-        moved = {
-            name: np.insert(getattr(masses, name)[:-1], 0, 0.0)
-            for name in ("down", "even", "spread", "atoms_down", "atoms_even", "atoms_up")
-        }
-        return masses._replace(**moved)
+    def wrong(self: Masses, masses: np.ndarray) -> np.ndarray:
+        return np.insert(right(self, masses)[:-1], 0, 0.0)
 
-    monkeypatch.setattr(transform, "severity_masses", wrong)
+    monkeypatch.setattr(Masses, "_padded", wrong)
 
 
 def _slipped_kernel(monkeypatch: pytest.MonkeyPatch) -> None:

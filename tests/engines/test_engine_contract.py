@@ -29,6 +29,8 @@ from lossagg.families import (
     Gamma,
     GeneralizedPareto,
     InverseGaussian,
+    LogGamma,
+    LogLogistic,
     Lognormal,
     Lomax,
     Mixture,
@@ -60,6 +62,8 @@ SIZES = {
     "weibull": Weibull(shape=0.8, scale=900.0),
     "generalized pareto": GeneralizedPareto(shape=0.3, scale=700.0),
     "inverse gaussian": InverseGaussian(mean=1000.0, shape=600.0),
+    "log-logistic": LogLogistic(gamma=2.5, scale=800.0),
+    "log-gamma": LogGamma(shape=1.5, rate=2.8, minimum=200.0),
     "burr": Burr(alpha=2.0, gamma=1.5, scale=1000.0),
     "table": SizeTable(sizes=[0, 250, 1000, 1250, 4000], probabilities=[0.1, 0.3, 0.3, 0.2, 0.1]),
     "spliced": Spliced(
@@ -81,11 +85,11 @@ COVERS = {
     "annual terms": Cover(deductible=250.0, limit=2000.0, annual_retention=1000.0, annual_limit=6000.0),
     "share": Cover(limit=3000.0, share=0.4),
 }
-# Two thirds of all pairs of size and cover, every one with four of the other; the counts take turns.
+# A third of all pairs of size and cover, every one with two of the other or more; the counts take turns.
 CASES = [
     (list(COUNTS)[(i + j) % len(COUNTS)], size, cover)
     for (i, size), (j, cover) in itertools.product(enumerate(SIZES), enumerate(COVERS))
-    if (i + j) % 3 < 2
+    if (i + j) % 3 == 0
 ]
 YEARS = 20_000
 
@@ -103,18 +107,31 @@ def test_the_engines_agree(count, size, cover):
     agree_by_chance(fourier, Simulation(years=YEARS, seed=11).annual_loss(*model))
 
 
-def measures():
+@pytest.mark.parametrize("cover", COVERS)
+@pytest.mark.parametrize("size", SIZES)
+def test_every_count_size_and_cover(size, cover):
+    """Every count law of the public surface with every size law and cover, the exact engines on coarse
+    lattices: the brackets overlap, the better known value lies inside the wider bracket."""
+    place = Fourier(points=128).annual_loss(COUNTS["negative binomial"], SIZES[size], COVERS[cover])
+    step = getattr(place, "base", place).step
+    for count in COUNTS.values():
+        model = count, SIZES[size], COVERS[cover]
+        losses = (engine(points=256, step=step).annual_loss(*model) for engine in (Fourier, Panjer))
+        agree_exactly(*losses, levels=(0.5, 0.99))
+
+
+def measures(levels=(0.5, 0.9, 0.99, 0.995, 0.999)):
     yield from (("mean", None), ("sd", None))
-    yield from itertools.product(("value_at_risk", "tail_value_at_risk"), (0.5, 0.9, 0.99, 0.995, 0.999))
+    yield from itertools.product(("value_at_risk", "tail_value_at_risk"), levels)
 
 
 def within(value, low, high):
-    """Between two bounds, to the round-off of the laws."""
-    return low - 1e-9 * abs(low) - 1e-9 <= value <= high + 1e-9 * abs(high) + 1e-9
+    """Between two bounds, to the round-off of the laws and of the engines."""
+    return low - 1e-8 * abs(low) - 1e-9 <= value <= high + 1e-8 * abs(high) + 1e-9
 
 
-def agree_exactly(fourier, panjer):
-    for measure, level in measures():
+def agree_exactly(fourier, panjer, levels=(0.5, 0.9, 0.99, 0.995, 0.999)):
+    for measure, level in measures(levels):
         ours, theirs = fourier.accuracy(measure, level), panjer.accuracy(measure, level)
         assert within(max(ours[0], theirs[0]), -np.inf, min(ours[1], theirs[1])), (measure, level)
         assert within(fourier.measure(measure, level), *theirs), (measure, level)

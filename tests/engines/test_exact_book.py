@@ -211,9 +211,13 @@ def test_the_front_door():
 def shifted(discretise):
     """A lattice off by one step: every payment one step too high."""
 
-    def masses(payment, step, points):
-        sound = discretise(payment, step, points)
-        return type(sound)(*(np.roll(part, 1) if len(part) > 1 else part for part in sound))
+    def masses(*given):
+        sound = discretise(*given)
+        if isinstance(sound, tuple):
+            return type(sound)(*(np.roll(part, 1) if len(part) > 1 else part for part in sound))
+        for name in ("down", "spread", "bulge", "atoms_down", "atoms_even", "atoms_up"):
+            setattr(sound, name, np.roll(getattr(sound, name), 1))
+        return sound
 
     return masses
 

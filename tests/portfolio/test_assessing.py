@@ -120,9 +120,13 @@ def test_no_trend_and_no_threshold_leave_amounts_as_recorded(tmp_path: Path) -> 
 def shifted(function):
     """A discretisation whose lattice is off by one step."""
 
-    def planted(payment, step, points):
-        masses = function(payment, step, points)
-        return type(masses)(*(np.roll(part, 1) if part.size == points else part for part in masses))
+    def planted(*given):
+        masses = function(*given)
+        if isinstance(masses, tuple):
+            return type(masses)(*(np.roll(part, 1) for part in masses))
+        for name in ("down", "spread", "bulge", "atoms_down", "atoms_even", "atoms_up"):
+            setattr(masses, name, np.roll(getattr(masses, name), 1))
+        return masses
 
     return planted
 
