@@ -28,10 +28,13 @@ from lossagg.engines.agreement import (
 from lossagg.engines.book import Book, Subject
 from lossagg.engines.result import AnnualLoss, BookResult, BracketedAnnualLoss
 
+# Relative width of a bracket up to which averages are compared.
+TIGHT = 0.1
 TOLERANCE = (
     "brackets of exact engines overlap, the better known value inside the wider bracket; simulation within "
     f"{STANDARD_ERRORS:g} standard errors, "
-    f"its mean and TVaR up to the amount that {YEARS_BEYOND} simulated years are expected to exceed"
+    f"its mean and TVaR up to the amount that {YEARS_BEYOND} simulated years are expected to exceed, or as "
+    f"far as the bracket of the exact engine is within {TIGHT:.0%}"
 )
 
 
@@ -121,15 +124,25 @@ def crosscheck(book: Book, results: Mapping[str, BookResult], levels: Sequence[f
 
 
 def _caps(losses: Mapping[str, AnnualLoss]) -> dict[tuple[str, str], float]:
-    """By simulation and exact engine, the amount that twenty simulated years are expected to exceed."""
+    """By simulation and exact engine, the amount that twenty simulated years are expected to exceed, or the
+    largest before it at which the engine's bracket is tight: beyond its lattice it knows little of them.
+    """
     caps = {}
     for reference, known in losses.items():
         for name, loss in losses.items():
             if isinstance(known, BracketedAnnualLoss) and not isinstance(loss, BracketedAnnualLoss):
                 years = loss.years  # type: ignore[attr-defined]
-                if years >= 2 * YEARS_BEYOND:
-                    caps[name, reference] = known.value_at_risk(1.0 - YEARS_BEYOND / years)
+                exceedance = YEARS_BEYOND / years
+                while exceedance < 0.5 and not _is_tight(known, 1.0 - exceedance):
+                    exceedance *= 2.0
+                if exceedance <= 0.5:
+                    caps[name, reference] = known.value_at_risk(1.0 - exceedance)
     return caps
+
+
+def _is_tight(known: BracketedAnnualLoss, level: float) -> bool:
+    low, high = known.accuracy("value_at_risk", level)
+    return high - low <= TIGHT * high
 
 
 def _compare(

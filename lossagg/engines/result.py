@@ -258,7 +258,8 @@ class TransformedAnnualLoss(BracketedAnnualLoss):
 
     def value_at_risk(self, level: float) -> float:
         """The payment at the quantile of the underlying loss."""
-        return float(self.payment(np.array([self.base.value_at_risk(level)]))[0])
+        amount = self.base.value_at_risk(level)
+        return float(self.payment(np.array([amount]))[0]) if amount < np.inf else self.payment.most
 
     def tail_value_at_risk(self, level: float) -> float:
         """Mean of the worst 1 - level of years, inside its bracket where there is one."""

@@ -228,3 +228,15 @@ def test_a_planted_fault_trips_the_gate(plant: object, monkeypatch: pytest.Monke
     assert result.agrees == (plant is None)
     gross = [c for c in result.comparisons if c.subject == GROSS]
     assert all(c.agrees for c in gross) == (plant is None)
+
+
+def test_averages_are_compared_no_further_than_the_lattice_reaches() -> None:
+    """A lattice that ends at the amount exceeded once in 100 years, and 20 of 10,000 years beyond the cap:
+    what lies beyond the lattice is known by a wide bracket only, and is no ground for an alarm."""
+    book = one_line(lossagg.Poisson(mean=20), lossagg.Lomax(alpha=2.3, scale=10))
+    whole = lossagg.Fourier().book(book)
+    top = whole.losses[GROSS].value_at_risk(0.99)
+    short = lossagg.Fourier(points=4096, step=top / 4096).book(book)
+    simulated = lossagg.Simulation(years=10_000, seed=3).book(book)
+    result = crosscheck(book, {"fourier": short, "simulation": simulated}, LEVELS)
+    assert result.agrees, result.summary
