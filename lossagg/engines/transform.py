@@ -227,7 +227,7 @@ class LatticeTransform:
         """The transform of one payment: the probability of none and what is on the lattice."""
         given = [part for part in parts if part is not None]
         if not given:
-            return np.full(len(self._shift), none, dtype=np.complex128)
+            return np.full(self.length // 2 + 1, none, dtype=np.complex128)
         total = given[0] + given[1] if len(given) > 1 else given[0] + none
         if len(given) > 1 and none != 0.0:
             total += none

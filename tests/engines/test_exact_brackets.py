@@ -149,6 +149,13 @@ def test_far_beyond_the_lattice_against_conditional_simulation():
     assert 0.99 * low <= loss.value_at_risk(level) <= 1.01 * high
 
 
+def test_a_line_whose_payments_all_lie_beyond_the_lattice():
+    """Nothing of it is on the lattice; the year still counts it as one with a payment."""
+    size = SizeTable(sizes=[1000.0], probabilities=[1.0])
+    loss = Fourier(points=50, step=1.0).annual_loss(Poisson(mean=0.1), size)
+    assert loss.sf(0.0) == pytest.approx(-np.expm1(-0.1), rel=1e-12)
+
+
 def test_costs_of_annual_terms_are_bracketed_by_layers():
     """A stop loss on a coarse lattice: mean and TVaR from a fine one inside, the widths of second order."""
     model = (Poisson(mean=50), Lognormal(mu=0, sigma=1.5), Cover(annual_retention=200, annual_limit=300))
