@@ -32,8 +32,8 @@ from lossagg.families import Poisson
 MOST_POINTS = 2**17
 _COARSE_POINTS = 2**10
 _LEAST_POINTS = 2**13
-# Products in one recursion, a few tenths of a second.
-_WORK = 2.0**27
+# Products in one recursion, a tenth of a second or two.
+_WORK = 2.0**26
 _ACCURACY = 0.005
 _LEAST_EXCEEDANCE = 7e-4
 _NEGLIGIBLE = 1e-17
