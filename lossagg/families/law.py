@@ -65,7 +65,7 @@ def within(
     """Apply a function to the amounts in [0, inf), and set the values below 0 and at infinity."""
     inside = (x >= 0) & (x < np.inf)
     if inside.all():
-        return function(x)
+        return function(x.ravel()).reshape(x.shape)
     result = np.where(x < 0, below, above)
     result[inside] = function(x[inside])
     return result

@@ -16,7 +16,7 @@ import numpy as np
 
 from lossagg.arrays import FloatArray
 from lossagg.engines.book import Line
-from lossagg.engines.result import TransformedAnnualLoss
+from lossagg.engines.result import AnnualLoss, TransformedAnnualLoss
 from lossagg.engines.sampled import SimulatedAnnualLoss
 from lossagg.portfolio.assessment import number
 from lossagg.pricing.common_years import simulate_options
@@ -105,7 +105,8 @@ def under_other_laws(
             loss = year if retained.annual.is_identity else TransformedAnnualLoss(year, retained.annual)
             result[k, 0] = loss.mean()
             result[k, 2:-2] = [loss.value_at_risk(level) for level in levels]
-            result[k, -2] = loss.tail_value_at_risk(WORST_LEVELS[-1])
+            # The value itself: the grid has no bracket here that it could be held in.
+            result[k, -2] = AnnualLoss.tail_value_at_risk(loss, WORST_LEVELS[-1])
         if np.isfinite(result[k, 0]) and np.isfinite(whole):
             result[k, 1] = whole - result[k, 0]
         elif ceded is not None and ceded.annual.is_identity:

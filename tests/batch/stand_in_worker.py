@@ -21,7 +21,7 @@ from lossagg.batch import worker
 from lossagg.errors import InputError
 
 
-def read_portfolio(folder: str) -> SimpleNamespace:
+def read_portfolio(folder: str, pricer: object = None) -> SimpleNamespace:
     fault = (Path(folder) / "portfolio.toml").read_text().strip()
     match fault:
         case "broken":
@@ -57,4 +57,5 @@ def read_portfolio(folder: str) -> SimpleNamespace:
 
 if __name__ == "__main__":
     sys.modules["lossagg.portfolio"] = SimpleNamespace(read_portfolio=read_portfolio)  # type: ignore[assignment]
+    sys.modules["lossagg.pricing"] = SimpleNamespace(options_of_assessment=None)  # type: ignore[assignment]
     sys.exit(worker.main(sys.argv[1:]))

@@ -184,10 +184,6 @@ def test_a_hundred_portfolios_one_bad_within_a_minute(tmp_path: Path) -> None:
         ('[pricing]\nlines = ["Fier"]\n', "options are for lines of the portfolio, each named once"),
         ('[pricing]\nbase = "none"\n[[option]]\nname = "A"\n', "the base is no option of the table"),
         ('[[option]]\nname = "A"\n[[option]]\nname = "A"\nlimit = 5\n', "two options have the same name"),
-        (
-            '[[option]]\nname = "A"\nlimit = 5\nreinstatements = 1\nreinstatement-rate = 1.0\n',
-            "paid reinstatements make the premium depend on the losses",
-        ),
         ('[[option]]\nname = "A"\nretained-cap = 5\n', "retained"),
         ("[option-grid]\ndeductibles = [100]\nlimits = [50, 0]\n", "greater than 0"),
     ],

@@ -32,7 +32,7 @@ def stand_in(monkeypatch: pytest.MonkeyPatch):
     asked: dict[str, Any] = {}
 
     def plant(action) -> dict[str, Any]:
-        def read_portfolio(path: Path) -> SimpleNamespace:
+        def read_portfolio(path: Path, pricer: object = None) -> SimpleNamespace:
             def assess(**settings: Any) -> SimpleNamespace:
                 asked.update(settings, path=path)
                 document = action()
@@ -42,6 +42,7 @@ def stand_in(monkeypatch: pytest.MonkeyPatch):
 
         module = SimpleNamespace(read_portfolio=read_portfolio)
         monkeypatch.setitem(sys.modules, "lossagg.portfolio", module)
+        monkeypatch.setitem(sys.modules, "lossagg.pricing", SimpleNamespace(options_of_assessment=None))
         return asked
 
     return plant

@@ -455,7 +455,7 @@ ELSEWHERE = {
     54: "tests/portfolio/test_portfolio_file.py::test_faults_name_their_key_and_remedy",
     59: "tests/records/test_previous.py::test_59_last_quarters_file_again_stops_unless_it_is_confirmed",
     60: "tests/records/test_previous.py::test_60_claims_that_vanished_or_were_rewritten_are_listed",
-    69: "tests/records/test_counts.py::test_69_counts_and_claims_that_disagree_stop_with_both_shown",
+    69: "tests/records/test_count_table.py::test_69_counts_and_claims_that_disagree_stop_with_both_shown",
     **{
         number: f"tests/portfolio/test_catalogue_of_portfolios.py::test_{number}_{name}"
         for number, name in (
