@@ -3,7 +3,7 @@
 Both sides of a row are timed in turns and the medians compared, so that a machine that slows down
 slows both. Rows are built by the functions below; a row that cannot be measured says why.
 
-    python validation/speed.py [--workers 2] [--repetitions 5] [--processor-time] [--growth]
+    python validation/speed.py [--workers 2] [--repetitions 5] [--processor-time] [--growth] [--write]
 
 On a machine busy with other work, --processor-time measures what each side uses of the processors instead
 of what the clock says; a side that works on several threads is then credited with all of them being free.
@@ -13,6 +13,10 @@ Leaves with exit code 1 when a row misses the figure asked of it.
 from __future__ import annotations
 
 import argparse
+import contextlib
+import io
+import os
+import platform
 import statistics
 import subprocess
 import sys
@@ -24,6 +28,7 @@ from dataclasses import dataclass
 from datetime import date
 from pathlib import Path
 
+import numba
 import numpy as np
 import plain_fit
 import plain_simulation as plain
@@ -402,6 +407,17 @@ def measure(row: Row, repetitions: int, workers: int = 0) -> tuple[str, bool]:
     return f"{row.name:<72} {mine:9.3f} {against} {figure:8.2f} {unit:<13} {asked}{verdict}", met
 
 
+class Kept(io.StringIO):
+    """What is printed, kept as well."""
+
+    def write(self, text: str) -> int:
+        """Print and keep."""
+        assert sys.__stdout__ is not None
+        sys.__stdout__.write(text)
+        sys.__stdout__.flush()
+        return super().write(text)
+
+
 def main() -> int:
     """Measure every row and print the table."""
     parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawTextHelpFormatter)
@@ -409,11 +425,27 @@ def main() -> int:
     parser.add_argument("--repetitions", type=int, default=5)
     parser.add_argument("--processor-time", action="store_true")
     parser.add_argument("--growth", action="store_true", help="only how the cost grows with the points")
+    parser.add_argument("--write", action="store_true", help="keep all of it in speed.txt beside this script")
     given = parser.parse_args()
-    if given.growth:
-        growth()
-        return 0
-    threads = given.workers if given.processor_time else 0
+    kept = Kept()
+    with contextlib.redirect_stdout(kept):
+        if given.write:
+            print(
+                f"{given.workers} threads on {os.cpu_count()} processors, medians of {given.repetitions}; ",
+                end="",
+            )
+            print(f"Python {platform.python_version()}, numpy {np.__version__}, numba {numba.__version__}\n")
+        met = given.growth or table(given.workers, given.repetitions, given.processor_time)
+        if given.growth or given.write:
+            growth()
+    if given.write:
+        Path(__file__).with_name("speed.txt").write_text(kept.getvalue(), encoding="utf-8")
+    return 0 if met else 1
+
+
+def table(workers: int, repetitions: int, processor_time: bool) -> bool:
+    """Print every row; whether all bounds are met."""
+    threads = workers if processor_time else 0
     in_process = (
         exact_rows,
         recursion_rows,
@@ -428,13 +460,13 @@ def main() -> int:
     all_met = True
     for rows in in_process if threads else (*in_process, help_rows, assessment_rows):
         try:
-            for row in rows(given.workers):
-                text, met = measure(row, given.repetitions, threads)
+            for row in rows(workers):
+                text, met = measure(row, repetitions, threads)
                 all_met &= met
-                print(text, flush=True)
+                print(text)
         except CannotMeasureError as error:
-            print(f"not measured: {error}", flush=True)
-    return 0 if all_met else 1
+            print(f"not measured: {error}")
+    return all_met
 
 
 if __name__ == "__main__":
