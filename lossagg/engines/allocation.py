@@ -33,7 +33,10 @@ if TYPE_CHECKING:
 
 _POINTS = 2**15
 _MOST_EXACT = 2**18
-_BEYOND = 1.05
+# The lattice ends at this many times the quantile: what lies near twice its end would pass for what the
+# mean-preserving masses put just below zero.
+_BEYOND = 2.0
+_LEAST_POINTS = 256
 _NEAREST = 400
 _WIDTH = 1.96
 
@@ -247,7 +250,7 @@ def _lattice(compound: CompoundSum, amount: float, points: int) -> tuple[float, 
         return 0.0, 2
     span = arithmetic_span(compound)
     if span is not None and _BEYOND * amount / span <= _MOST_EXACT:
-        return span, int(_BEYOND * amount / span) + 3
+        return span, max(int(_BEYOND * amount / span) + 3, _LEAST_POINTS)
     step = fitting_step(compound, _BEYOND * amount / points)
     if _BEYOND * amount / step > _MOST_EXACT:
         step = _BEYOND * amount / points

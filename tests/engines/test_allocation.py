@@ -4,7 +4,7 @@ import itertools
 
 import numpy as np
 import pytest
-from hypothesis import given, settings
+from hypothesis import example, given, settings
 from hypothesis import strategies as st
 
 import lossagg
@@ -48,7 +48,8 @@ def test_two_lines_by_hand():
     assert frame["share"].sum() == pytest.approx(1.0, abs=1e-12)
 
 
-@settings(max_examples=15, deadline=None)
+@settings(max_examples=15, deadline=None, derandomize=True)
+@example(chances=[[1.0, 1.0, 0.5, 0.5], [1.0, 1.0, 0.5, 0.25]], level=0.3125)
 @given(
     chances=st.lists(st.lists(st.floats(0.05, 1.0), min_size=2, max_size=5), min_size=2, max_size=3),
     level=st.floats(0.3, 0.99),
