@@ -82,7 +82,7 @@ class LimitedMeans:
             mean: bounds of the mean, finite.
         """
         share = 1.0 - level
-        k = int(first / self.step)
+        k = min(int(first / self.step), len(self.least) - 2)
         end = min(max(int(np.ceil(last / self.step)), k + 1), len(self.least) - 1)
         part = slice(k, end + 1)
         values = self.step * np.arange(float(k), float(end + 1))
