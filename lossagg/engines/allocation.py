@@ -4,7 +4,7 @@ Euler's principle (Tasche 1999, "Risk contributions and performance measurement"
 allocation of risk capital", Journal of Risk 4): a line is charged E[X_l | the worst 1 - level of years], the
 years at the quantile itself taken in proportion. The charges add up to the total, and none is above the
 line's own tail value at risk. They come from the size-biased transform where the lines have one, see
-`size_biased`, and from the simulated years where they are tied by a copula.
+`tail_shares`, and from the simulated years where they are tied by a copula.
 """
 
 from __future__ import annotations

@@ -107,8 +107,7 @@ class Alone(Cluster):
         self, counts: Sequence[CountLaw], arguments: Sequence[Any], member: int, pgf: Any = None
     ) -> Any:
         """That of its count."""
-        slope = pgf_slope(counts[0], arguments[0], pgf)
-        return slope if slope is not None else counts[0].mean() * others(counts[0]).pgf(arguments[0])
+        return pgf_slope(counts[0], arguments[0], pgf)
 
     def covariances(self, counts: Sequence[CountLaw], means: FloatArray) -> FloatArray:
         """Var[N] E[Y]."""

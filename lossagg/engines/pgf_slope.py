@@ -11,6 +11,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
+from lossagg.errors import EngineError
 from lossagg.families import (
     Binomial,
     CountTable,
@@ -24,13 +25,16 @@ from lossagg.families.base import CountLaw
 Array = npt.NDArray[Any]
 
 
-def pgf_slope(count: CountLaw, z: Array, pgf: Array | None = None) -> Array | None:
-    """The derivative of `count.pgf` at z; None for a law whose derivative is not known here.
+def pgf_slope(count: CountLaw, z: Array, pgf: Array | None = None) -> Array:
+    """The derivative of `count.pgf` at z.
 
     Args:
         count: the law.
         z: real or complex, |z| <= 1.
         pgf: `count.pgf(z)` where it is at hand, which saves computing it again.
+
+    Raises:
+        EngineError: a law whose derivative is not known here.
     """
     if isinstance(count, Poisson):
         return np.asarray(count.mean() * (count.pgf(z) if pgf is None else pgf))
@@ -47,6 +51,9 @@ def pgf_slope(count: CountLaw, z: Array, pgf: Array | None = None) -> Array | No
             total = total * z + n * weights[n]
         return np.asarray(total)
     if isinstance(count, (ZeroModified, ZeroInflated)):
-        inner = pgf_slope(count.base, z)
-        return None if inner is None else np.asarray(count.mean() / count.base.mean() * inner)
-    return None
+        return np.asarray(count.mean() / count.base.mean() * pgf_slope(count.base, z))
+    raise EngineError(
+        "the derivative of this count's generating function is not known",
+        value=count.family,
+        remedy="Use another frequency.",
+    )

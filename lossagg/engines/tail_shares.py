@@ -36,25 +36,26 @@ class TailShares(LatticeTransform):
         Returns:
             Amounts, shape (parts,).
         """
-        total = self.even()
+        clusters = self._compound.clusters
+        counts = [[line.frequency for line in self._of(cluster)] for cluster in clusters]
+        arguments = [[self._even_of(line) for line in self._of(cluster)] for cluster in clusters]
+        joint = [cluster.pgf(counts[k], arguments[k]) for k, cluster in enumerate(clusters)]
+        total = self._back(self._product([part.copy() for part in joint]), below=True)
         below = total.below[0] + running_sums(total.probabilities)
         place = int(np.searchsorted(below, level - _SAME))
         atom = total.probabilities[place]
         taken = min(max((below[place] - level) / atom, 0.0), 1.0) if atom > 0 else 0.0
         shares = np.empty(len(self.lines))
         index = np.arange(self.points, dtype=np.float64)
-        parts = self._joint(self._even_of)
-        for place_of, cluster in enumerate(self._compound.clusters):
+        for own, cluster in enumerate(clusters):
             lines = self._of(cluster)
-            counts = [line.frequency for line in lines]
-            arguments = [self._even_of(line) for line in lines]
-            others = self._product([part.copy() for k, part in enumerate(parts) if k != place_of])
+            others = self._product([part.copy() for k, part in enumerate(joint) if k != own])
             for member, (line, part) in enumerate(zip(lines, cluster.members, strict=True)):
                 masses = line.masses
                 biased = self._transform(index * (masses.even + masses.atoms_even))
                 biased = np.zeros_like(others) if biased is None else biased
                 biased -= masses.under[0] / self._shift
-                slope = cluster.slope(counts, arguments, member)
+                slope = cluster.slope(counts[own], arguments[own], member, joint[own])
                 brought = self._back(others * biased * slope, below=True)
                 inside = brought.below[0] + float(running_sums(brought.probabilities[: place + 1])[-1])
                 mean = self._compound.parts[part].frequency.mean() * self._compound.parts[part].payment.mean
