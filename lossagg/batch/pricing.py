@@ -27,6 +27,7 @@ def price_folder(
     years: int | None = None,
     seed: int = 1,
     workers: int | None = None,
+    annual: Path | None = None,
     command: tuple[str, ...] = (),
     progress: Progress = silent,
 ) -> Outcome:
@@ -41,6 +42,7 @@ def price_folder(
         years: simulated years; the default when `None`.
         seed: seed of simulation and parameter draws.
         workers: most processors used; all when `None`. The figures do not depend on it.
+        annual: a Parquet file to receive what every option keeps and cedes in the simulated years.
         command: the command line, for the manifest.
         progress: called with the stage and the fraction done, 0 to 1.
 
@@ -68,6 +70,7 @@ def price_folder(
             base=base,
             seed=seed,
             workers=workers,
+            annual=annual,
             progress=progress,
             **asked,
         )

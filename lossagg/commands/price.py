@@ -79,11 +79,20 @@ def price(
     ] = None,
     seed: Seed = 1,
     workers: Workers = None,
+    annual: Annotated[
+        Path | None,
+        typer.Option(
+            "--annual",
+            metavar="FILE",
+            help="Parquet file for every simulated year: the loss, and what each option keeps and cedes.",
+            show_default=False,
+        ),
+    ] = None,
 ) -> int:
     """Price options: what each deductible, limit or cap keeps, costs and risks.
 
     Takes the options of PORTFOLIO, or a grid from the arguments, and writes options.json, options.html,
-    options.xlsx, options.csv, curves.csv and manifest.json into DIR.
+    options.xlsx, options.csv, curves.csv, draws.csv and manifest.json into DIR.
     """
     from lossagg.batch.pricing import grid_of, price_folder
     from lossagg.commands.terminal import print_summary, progress_bar, warn
@@ -100,6 +109,7 @@ def price(
             years=years,
             seed=seed,
             workers=workers,
+            annual=annual,
             command=("lossagg", *sys.argv[1:]),
             progress=progress,
         )

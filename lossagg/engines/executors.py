@@ -23,7 +23,12 @@ T = TypeVar("T")
 
 
 def on_executor(
-    executor: Executor, work: Callable[[int], T], blocks: range, after: Callable[[int, T], None]
+    executor: Executor,
+    work: Callable[[int], T],
+    blocks: range,
+    after: Callable[[int, T], None],
+    *,
+    under_way: int = UNDER_WAY,
 ) -> None:
     """Do the work of every block on an executor; `after` is called for each in order, in this thread.
 
@@ -32,30 +37,31 @@ def on_executor(
         work: what is done with the number of a block; it travels to the workers, so it must be picklable.
         blocks: numbers of the blocks.
         after: receives the number and the result of each block.
+        under_way: most blocks begun and not yet given to `after`.
 
     Raises:
         EnvironmentFault: the executor broke, because one of its processes died, or was shut down.
     """
-    under_way: deque[tuple[int, Future[T]]] = deque()
+    begun: deque[tuple[int, Future[T]]] = deque()
     try:
         for block in blocks:
-            under_way.append((block, executor.submit(work, block)))
-            if len(under_way) >= UNDER_WAY:
-                _finish(under_way, after)
-        while under_way:
-            _finish(under_way, after)
+            begun.append((block, executor.submit(work, block)))
+            if len(begun) >= under_way:
+                _finish(begun, after)
+        while begun:
+            _finish(begun, after)
     except (BrokenExecutor, CancelledError) as error:
         raise EnvironmentFault(
             f"the workers were lost before the simulation was done: {type(error).__name__}",
             remedy="Run it again with workers that stay; a cluster survives the loss of some of them.",
         ) from error
     finally:
-        for _, future in under_way:
+        for _, future in begun:
             future.cancel()
 
 
-def _finish(under_way: deque[tuple[int, Future[T]]], after: Callable[[int, T], None]) -> None:
-    block, future = under_way.popleft()
+def _finish(begun: deque[tuple[int, Future[T]]], after: Callable[[int, T], None]) -> None:
+    block, future = begun.popleft()
     after(block, future.result())
 
 

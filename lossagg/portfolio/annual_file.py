@@ -18,14 +18,11 @@ from lossagg.engines.book import Subject
 from lossagg.errors import InputError
 
 
-def column_name(subject: Subject) -> str:
-    """The column of a subject: "line fire", "gross", "cover stop", "net", "ceded fire", "retained fire",
-    "largest fire" (largest loss of the year), "largest" (of all lines)."""
-    return str(subject)
-
-
 class AnnualFile:
     """A Parquet file that takes in the simulated years, to be used as a context.
+
+    Of an assessment its columns are named as subjects are: "line fire", "gross", "cover stop", "net", "ceded
+    fire", "retained fire", "largest fire" (largest loss of the year), "largest" (of all lines).
 
     Args:
         path: where it goes; an existing file is replaced when the new one is complete.
@@ -54,14 +51,15 @@ class AnnualFile:
     def __enter__(self) -> AnnualFile:
         return self
 
-    def add(self, first: int, amounts: Mapping[Subject, FloatArray]) -> None:
-        """Append consecutive years; `first`, the number of the first of them, counts from 0."""
+    def add(self, first: int, amounts: Mapping[Subject, FloatArray] | Mapping[str, FloatArray]) -> None:
+        """Append consecutive years, a column per subject or name; `first`, the number of the first of them,
+        counts from 0."""
         import pyarrow as pa
         import pyarrow.parquet as pq
 
         years = next(iter(amounts.values())).size
         columns: dict[str, np.ndarray] = {"year": np.arange(first, first + years)}
-        columns |= {column_name(subject): values for subject, values in amounts.items()}
+        columns |= {str(name): values for name, values in amounts.items()}
         table = pa.table(columns)
         if self._writer is None:
             self._writer = pq.ParquetWriter(self._partial, table.schema)

@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 
 from lossagg.arrays import FloatArray
-from lossagg.pricing.common_years import Paid, Tally
+from lossagg.pricing.common_years import Paid, Tally, costs_less
 from lossagg.pricing.rows import Row
 
 
@@ -24,8 +24,7 @@ def beat_by_years(rows: Sequence[Row], tallies: Sequence[Tally], base: int) -> N
     for row, tally in zip(rows, tallies, strict=True):
         own = _costs(row, tally)
         if np.isnan(tally.beats_base) and own is not None and theirs is not None:
-            less = own < theirs - 1e-9 * np.maximum(np.abs(theirs), 1.0)
-            tally.beats_base = float(np.mean(less))
+            tally.beats_base = float(np.mean(costs_less(own, theirs)))
 
 
 def beats_data(tally: Tally) -> dict[str, Any] | None:

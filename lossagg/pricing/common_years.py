@@ -14,6 +14,7 @@ import numpy as np
 
 from lossagg.arrays import FloatArray
 from lossagg.engines.book import Book, Line
+from lossagg.engines.executors import UNDER_WAY, on_executor
 from lossagg.engines.quantile_table import quantile_table
 from lossagg.engines.sampled import SimulatedAnnualLoss
 from lossagg.engines.search_table import count_sampler
@@ -23,7 +24,10 @@ from lossagg.engines.yearly import LineColumns, ramps
 from lossagg.pricing.option import Events, Option
 
 MEMORY = 2 * 10**9
+ROUNDING = 1e-9
 Paid = Callable[[FloatArray], FloatArray]
+EveryYear = Callable[[int, Mapping[str, FloatArray]], None]
+"""Called with the number of the first of some simulated years and the amounts of every column in them."""
 
 
 @dataclass(eq=False)
@@ -65,6 +69,7 @@ def simulate_options(
     seed: int,
     workers: int | None = None,
     progress: Callable[[float], None] | None = None,
+    every_year: EveryYear | None = None,
 ) -> list[Tally]:
     """Simulate years once and apply every option to them.
 
@@ -80,6 +85,8 @@ def simulate_options(
         seed: seed of the simulation engine.
         workers: threads; the results do not depend on it.
         progress: called with the part done.
+        every_year: receives the years in their order: columns "loss" (all lines, before any option),
+            "retained NAME" and "ceded NAME" of every option.
 
     Raises:
         EngineError: more years than the machine can hold.
@@ -90,21 +97,37 @@ def simulate_options(
     prepared = [columns.line(number, line) for number, line in by_name]
     room = _Room(options, base, paid, thresholds, keep, years)
 
-    def block(number: int) -> None:
+    def block(number: int) -> dict[str, FloatArray]:
         first = number * BLOCK_YEARS
         size = min(BLOCK_YEARS, years - first)
         sums = sum(
             (line_sums(line, seed=seed, block=number, years=size) for line in prepared),
             start=np.zeros((columns.count, size)),
         )
-        room.add(number, first, size, {events: sums[k] for events, k in columns.place.items()})
+        by_events = {events: sums[k] for events, k in columns.place.items()}
+        return room.add(number, first, size, by_events, shown=every_year is not None)
 
     blocks = range(-(-years // BLOCK_YEARS))
+
+    def finished(number: int, amounts: dict[str, FloatArray]) -> None:
+        if every_year:
+            every_year(number * BLOCK_YEARS, amounts)
+        if progress:
+            progress((number + 1) / len(blocks))
+
     with ThreadPoolExecutor(workers or available_cores()) as pool:
-        for finished, _ in enumerate(pool.map(block, blocks), start=1):
-            if progress:
-                progress(finished / len(blocks))
+        on_executor(pool, block, blocks, finished, under_way=_under_way(len(options)))
     return room.tallies(lines)
+
+
+def _under_way(options: int) -> int:
+    """Blocks computed ahead of the one written: as many as the memory holds the columns of."""
+    return int(np.clip(MEMORY // (16 * options * BLOCK_YEARS), 2, UNDER_WAY))
+
+
+def costs_less(own: FloatArray, other: FloatArray) -> FloatArray:
+    """Where a cost is below another by more than rounding: by more than 1e-9 of it, or of 1 if it is less."""
+    return np.asarray(own < other - ROUNDING * np.maximum(np.abs(other), 1.0))
 
 
 @dataclass(frozen=True)
@@ -147,25 +170,23 @@ class _Room:
         self.kept = {k: np.empty((2, years)) for k, wanted in enumerate(keep) if wanted}
         self.sums: dict[int, list[FloatArray]] = {}
 
-    def add(self, number: int, first: int, size: int, sums: Mapping[Events, FloatArray]) -> None:
-        """Apply every option to one block of years."""
-        base = self.options[self.base]
-        base_ceded, base_paid = base.ceded(sums[base.paid], sums.get(base.kept)), self.paid[self.base]
-        base_cost = None
-        if base_paid is not None:
-            base_cost = sums[base.scope] - base_ceded + base_paid(base_ceded)
+    def add(
+        self, number: int, first: int, size: int, sums: Mapping[Events, FloatArray], shown: bool
+    ) -> dict[str, FloatArray]:
+        """Apply every option to one block of years; returns what each keeps and cedes where it is shown."""
+        columns = {"loss": sums[self.options[self.base].scope]} if shown else {}
+        base_cost = self._cost(self.base, *self._parts(self.base, sums))
         found = []
         for k, option in enumerate(self.options):
-            ceded = option.ceded(sums[option.paid], sums.get(option.kept))
-            retained = np.maximum(sums[option.scope] - ceded, 0.0)
-            tiny = 1e-9 * np.maximum(sums[option.scope], 1.0)
-            retained[retained <= tiny] = 0.0
+            retained, ceded = self._parts(k, sums)
+            if shown:
+                columns |= {f"retained {option.name}": retained, f"ceded {option.name}": ceded}
             if k in self.kept:
                 self.kept[k][:, first : first + size] = retained, ceded
-            beats, counted = np.nan, self.thresholds.get(option.name, ())
-            mine = self.paid[k]
-            if mine is not None and base_cost is not None:
-                beats = float(np.count_nonzero(retained + mine(ceded) < base_cost - tiny))
+            cost, beats = self._cost(k, retained, ceded), np.nan
+            if cost is not None and base_cost is not None:
+                beats = float(np.count_nonzero(costs_less(cost, base_cost)))
+            above = [np.count_nonzero(retained > x) for x in self.thresholds.get(option.name, ())]
             found.append(
                 np.array(
                     [
@@ -175,11 +196,26 @@ class _Room:
                         ceded @ ceded,
                         np.count_nonzero(retained == 0.0),
                         beats,
-                        *(np.count_nonzero(retained > amount) for amount in counted),
+                        *above,
                     ]
                 )
             )
         self.sums[number] = found
+        return columns
+
+    def _parts(self, k: int, sums: Mapping[Events, FloatArray]) -> tuple[FloatArray, FloatArray]:
+        """What an option keeps and cedes of every year; what rounding adds to it comes off."""
+        option = self.options[k]
+        whole = sums[option.scope]
+        ceded = option.ceded(sums[option.paid], sums.get(option.kept))
+        retained = np.clip(whole - ceded, 0.0, option.most_retained)
+        retained[retained <= ROUNDING * np.maximum(whole, 1.0)] = 0.0
+        return retained, ceded
+
+    def _cost(self, k: int, retained: FloatArray, ceded: FloatArray) -> FloatArray | None:
+        """What an option costs in every year; None where its premium is not known yet."""
+        paid = self.paid[k]
+        return None if paid is None else retained + paid(ceded)
 
     def tallies(self, lines: Sequence[Line]) -> list[Tally]:
         """The sums as means and shares."""

@@ -73,6 +73,28 @@ class Draws:
             "total": None if total is None else _range(total),
         }
 
+    def data(self, options: Sequence[Option]) -> Data:
+        """Every draw of every option: what the ranges and the dominated options are taken from."""
+        return {
+            "levels": list(self.levels),
+            "tail_level": WORST_LEVELS[-1],
+            "options": [
+                {
+                    "option": option.name,
+                    "retained": _numbers(own[:, 0]),
+                    "ceded": _numbers(own[:, 1]),
+                    "worst_years": [_numbers(own[:, 2 + k]) for k in range(len(self.levels))],
+                    "tail": _numbers(own[:, -2]),
+                    "reinstatement": _numbers(own[:, -1]),
+                }
+                for option, own in zip(options, self.values, strict=True)
+            ],
+        }
+
+
+def _numbers(values: FloatArray) -> list[float | None]:
+    return [number(value) for value in values.tolist()]
+
 
 def is_simulated(option: Option) -> bool:
     """Whether the worst year of an option takes a simulation."""

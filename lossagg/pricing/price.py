@@ -3,8 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from contextlib import nullcontext
+from pathlib import Path
 
 from lossagg.portfolio import Portfolio
+from lossagg.portfolio.annual_file import AnnualFile
 from lossagg.portfolio.assess import silent
 from lossagg.portfolio.cautions import cautions
 from lossagg.portfolio.line import LineModel
@@ -32,6 +35,7 @@ def price_options(
     years: int = YEARS,
     seed: int = 1,
     workers: int | None = None,
+    annual: Path | None = None,
     progress: Progress = silent,
 ) -> Data:
     """Price the options of a portfolio.
@@ -44,13 +48,15 @@ def price_options(
         years: simulated years.
         seed: seed of simulation and parameter draws; the same seed gives the same figures.
         workers: threads; the figures do not depend on it.
+        annual: a Parquet file to receive every simulated year: the loss, and what every option keeps and
+            cedes of it.
         progress: called with the stage and the part done.
 
     Returns:
         The content of `options.json`, format "lossagg.options/1".
 
     Raises:
-        InputError: no option, or options, lines or a base that cannot be used.
+        InputError: no option, or options, lines, a base or a file of years that cannot be used.
         FitError: records that support none of the laws asked for.
         EngineError: a model beyond the engines.
     """
@@ -67,6 +73,9 @@ def price_options(
         progress=progress,
         broken=reconcile_portfolio(portfolio.file, portfolio.records).withheld,
     )
+    with AnnualFile(annual) if annual else nullcontext() as file:
+        table.every_year = file.add if file else None
+        data = table.data()
     section = portfolio.file.portfolio
     return {
         "format": FORMAT,
@@ -77,7 +86,7 @@ def price_options(
             "forecast": dict(zip(("start", "end"), (d.isoformat() for d in section.forecast), strict=True)),
         },
         "run": {"version": __version__, "seed": seed, "years": years, "inputs": list(portfolio.inputs)},
-        **table.data(),
+        **data,
         "cautions": [*cautions(table.models, table.levels), CAUTION],
     }
 
@@ -110,7 +119,9 @@ def options_of_assessment(
     table = _table(
         portfolio, models, years=years, seed=seed, workers=workers, progress=progress, broken=withheld
     )
-    return {"years": years, **table.data(), "cautions": [CAUTION]}
+    data = table.data()
+    del data["drawn"]  # the table of `price` has it
+    return {"years": years, **data, "cautions": [CAUTION]}
 
 
 def _table(

@@ -16,7 +16,7 @@ from lossagg.portfolio.line import LineModel
 from lossagg.portfolio.pricing_sections import PricingSection, RiskLoad
 from lossagg.pricing.agreement import agreement, thresholds
 from lossagg.pricing.beating import beat_by_years, beats_data, paid_of
-from lossagg.pricing.common_years import Tally, simulate_options
+from lossagg.pricing.common_years import EveryYear, Tally, simulate_options
 from lossagg.pricing.curves import curves_of_options
 from lossagg.pricing.draws import Draws, under_other_laws
 from lossagg.pricing.evaluate import (
@@ -65,6 +65,7 @@ class OptionTable:
         workers: threads; the figures do not depend on it.
         progress: called with the stage and the part done.
         broken: why every figure is withheld; empty where none is.
+        every_year: receives what every option keeps and cedes in the simulated years.
     """
 
     basis: PricingSection
@@ -76,6 +77,7 @@ class OptionTable:
     workers: int | None
     progress: Progress
     broken: str = ""
+    every_year: EveryYear | None = None
 
     def __post_init__(self) -> None:
         self.lines = tuple(model.line for model in self.models)
@@ -133,6 +135,7 @@ class OptionTable:
             "agrees": all(check["agrees"] for check in checks),
             "withheld": None,
             "draws": 0 if draws is None else draws.count,
+            "drawn": None if draws is None else draws.data(self.options),
             "appetite": self._appetite(rows, positions, dominated),
             "history": as_if(self.models, rows),
             "curves": curves_of_options(self.options, self.basis),
@@ -155,6 +158,7 @@ class OptionTable:
             "agrees": False,
             "withheld": self.broken,
             "draws": 0,
+            "drawn": None,
             "appetite": None,
             "history": None,
             "curves": None,
@@ -194,6 +198,7 @@ class OptionTable:
             seed=self.seed,
             workers=self.workers,
             progress=lambda done: self.progress("simulation", 0.4 + 0.3 * done),
+            every_year=self.every_year,
         )
         checks = [agreement(found, tally) for found, tally in zip(exact, tallies, strict=True)]
         rows = []

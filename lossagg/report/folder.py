@@ -19,7 +19,15 @@ from lossagg.errors import EnvironmentFault, InputError
 from lossagg.report.manifest import FORMAT
 
 FILES = ("assessment.json", "report.html", "tables.xlsx", "manifest.json")
-OPTION_FILES = ("options.json", "options.html", "options.xlsx", "options.csv", "curves.csv", "manifest.json")
+OPTION_FILES = (
+    "options.json",
+    "options.html",
+    "options.xlsx",
+    "options.csv",
+    "curves.csv",
+    "draws.csv",
+    "manifest.json",
+)
 FIT_FILES = ("fit.json", "fit.html", "fit.xlsx", "manifest.json")
 CHECK_FILES = ("check.json", "check.html", "trail.csv", "manifest.json")
 _NEW_FOLDER = "Name a folder that does not exist yet."

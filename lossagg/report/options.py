@@ -26,7 +26,7 @@ FORMAT = "lossagg.options/1"
 
 
 def write_options(options: Entry, out: str | Path, *, facts: RunFacts | None = None) -> Path:
-    """Write the table of options into a folder: JSON, page, workbook, two CSV files and a manifest.
+    """Write the table of options into a folder: JSON, page, workbook, three CSV files and a manifest.
 
     All but the manifest depend on the table alone: the same table gives the same bytes. They appear
     together, or not at all.
@@ -52,6 +52,7 @@ def write_options(options: Entry, out: str | Path, *, facts: RunFacts | None = N
             "options.xlsx": render_workbook(sheets, valued),
             "options.csv": _csv([_joined(options)]).encode(),
             "curves.csv": _csv(details.curves(options)).encode(),
+            "draws.csv": _csv([details.draws(options)]).encode(),
         }
 
     described = {**options, "headline": {"withheld": not options["agrees"]}}

@@ -115,11 +115,42 @@ def ranges(options: Entry) -> Table:
         Column("Expected total cost", "money", ranged=True),
     )
     notes = (
-        f"The range below a figure holds 95% of {options['draws']} draws of the fitted parameters. Premium "
-        "and costs stay at the figures of the table: they are agreed before anybody knows the parameters.",
+        f"The range below a figure holds 95% of {options['draws']} draws of the fitted parameters, all of "
+        "which `lossagg price` writes to draws.csv. Premium and costs stay at the figures of the table: they "
+        "are agreed before anybody knows the parameters.",
         *_simulated_note(options["options"]),
     )
     return Table("Option ranges", f"Range of the parameters, {currency} a year", columns, tuple(rows), notes)
+
+
+def draws(options: Entry) -> Table:
+    """Every parameter draw of every option: what the ranges and the dominated options are taken from."""
+    drawn = options["drawn"] or {"levels": [], "tail_level": 0.99, "options": []}
+    columns = (
+        Column("Option"),
+        Column("Draw", "count"),
+        Column("Expected retained", "amount"),
+        Column("Expected ceded", "amount"),
+        *(Column(f"Worst year at {digits.percent(level)}", "amount") for level in drawn["levels"]),
+        Column(f"TVaR {digits.percent(drawn['tail_level'])}", "amount"),
+        Column("Reinstatement premium, times the initial", "number"),
+    )
+    rows = tuple(
+        (own["option"], k, *(plain(value, "") for value in values))
+        for own in drawn["options"]
+        for k, values in enumerate(
+            zip(
+                own["retained"],
+                own["ceded"],
+                *own["worst_years"],
+                own["tail"],
+                own["reinstatement"],
+                strict=True,
+            ),
+            start=1,
+        )
+    )
+    return Table("Option draws", "Options under drawn parameters", columns, rows)
 
 
 def _simulated_note(entries: Sequence[Entry]) -> tuple[str, ...]:

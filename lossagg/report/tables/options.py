@@ -12,6 +12,10 @@ MOST_ROWS = 60
 UNLIMITED = Absent("unlimited")
 NONE = Absent("none")
 BASE = Absent("base")
+AGAIN = (
+    " Where reinstatements are paid, the expected reinstatement premium with its tax comes off, and that of "
+    "the year, pro rata to what the cover pays in it, goes on."
+)
 PERIODS = {0.9: "1-in-10", 0.95: "1-in-20", 0.99: "1-in-100"}
 
 
@@ -231,13 +235,18 @@ def bad_years(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
         Column("Dominated by"),
     )
     held = f" and in each of {options['draws']} parameter draws" if options["draws"] else ""
+    again = reinstated(options["options"])
     notes = (
         "Total cost in a bad year: the worst year retained at that level, and everything that is paid "
         "whatever happens"
-        f"{', with the reinstatement premium of that year' if reinstated(options['options']) else ''}. All "
+        f"{', with the reinstatement premium of that year' if again else ''}. All "
         "options meet the same simulated years.",
         "Dominated: another option costs no more on average, in every bad year of the table and in the mean "
         f"of the worst hundredth, at the estimates{held}.",
+        "Years in which it costs less than the base: counted in the simulated years. `lossagg price --annual "
+        "FILE` writes what every option keeps and cedes in each of them; to what is kept, add the expected "
+        "total cost less the expected retained."
+        f"{AGAIN if again else ''}",
         *_left_out(options, chosen),
     )
     return Table("Option years", f"What it costs in a bad year, {currency}", columns, tuple(rows), notes)
