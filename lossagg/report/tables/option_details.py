@@ -116,8 +116,8 @@ def ranges(options: Entry) -> Table:
     )
     notes = (
         f"The range below a figure holds 95% of {options['draws']} draws of the fitted parameters, all of "
-        "which `lossagg price` writes to draws.csv. Premium and costs stay at the figures of the table: they "
-        "are agreed before anybody knows the parameters.",
+        "which the command lossagg price writes to draws.csv. Premium and costs stay at the figures of the "
+        "table: they are agreed before anybody knows the parameters.",
         *_simulated_note(options["options"]),
     )
     return Table("Option ranges", f"Range of the parameters, {currency} a year", columns, tuple(rows), notes)

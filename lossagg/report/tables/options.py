@@ -243,9 +243,9 @@ def bad_years(options: Entry, entries: Sequence[Entry] | None = None) -> Table:
         "options meet the same simulated years.",
         "Dominated: another option costs no more on average, in every bad year of the table and in the mean "
         f"of the worst hundredth, at the estimates{held}.",
-        "Years in which it costs less than the base: counted in the simulated years. `lossagg price --annual "
-        "FILE` writes what every option keeps and cedes in each of them; to what is kept, add the expected "
-        "total cost less the expected retained."
+        "Years in which it costs less than the base: counted in the simulated years. The command lossagg "
+        "price --annual FILE writes what every option keeps and cedes in each of them; to what is kept, add "
+        "the expected total cost less the expected retained."
         f"{AGAIN if again else ''}",
         *_left_out(options, chosen),
     )

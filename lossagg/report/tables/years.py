@@ -10,7 +10,7 @@ from lossagg.report.reading import Assessment, Entry
 NOT_COVERED = Absent("not covered")
 ABOUT = (
     "A simulated year is one possible year, not a forecast: it shows of what events a year of this size can "
-    "be made. `lossagg replay` shows any other year, and how each payment comes about."
+    "be made. The command lossagg replay shows any other year, and how each payment comes about."
 )
 
 
