@@ -60,6 +60,7 @@ def price_options(
         FitError: records that support none of the laws asked for.
         EngineError: a model beyond the engines.
     """
+    file = AnnualFile(annual) if annual else None
     progress("preparing and fitting", 0.0)
     table = _table(
         portfolio,
@@ -73,7 +74,7 @@ def price_options(
         progress=progress,
         broken=reconcile_portfolio(portfolio.file, portfolio.records).withheld,
     )
-    with AnnualFile(annual) if annual else nullcontext() as file:
+    with file or nullcontext():
         table.every_year = file.add if file else None
         data = table.data()
     section = portfolio.file.portfolio

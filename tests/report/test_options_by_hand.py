@@ -57,6 +57,15 @@ def written(tmp_path_factory: pytest.TempPathFactory) -> Written:
     return Written(out, years)
 
 
+def test_a_file_of_years_that_cannot_be_is_refused_first(tmp_path: Path) -> None:
+    folder = folder_with(tmp_path)
+    settings = ["--out", str(tmp_path / "out"), "--annual", str(tmp_path / "years.csv")]
+    result = CliRunner().invoke(build_app(), ["price", str(folder), *settings])
+    assert result.exit_code == 2
+    assert "must end in .parquet" in result.stderr
+    assert not (tmp_path / "out").exists()
+
+
 def near_mean(found: float, sample: np.ndarray) -> None:
     """A mean within four standard errors of that of the years."""
     assert abs(found - sample.mean()) <= 4 * sample.std() / np.sqrt(sample.size) + 1e-9 * abs(found)
