@@ -2,6 +2,11 @@
 
 A block of a line draws its counts, then its sizes, from a stream of its own (`streams`), so a block is a
 function of the seed, the names of the lines and its number, wherever and whenever it is computed.
+
+Where a line has a Poisson count of few losses a year, most of the work would be years without any. There
+the number of losses of a whole strip of years is drawn, and each loss is put into one of its years: given
+their number, Poisson losses are independent and spread evenly (Kingman 1993, "Poisson Processes", section
+2.4), so the counts of single years are what they would have been.
 """
 
 from __future__ import annotations
@@ -17,27 +22,49 @@ from lossagg.engines.quantile_table import QuantileTable, quantile_table
 from lossagg.engines.search_table import CountSampler, count_sampler
 from lossagg.engines.streams import BLOCK_YEARS, block_entropy, block_state, line_key
 from lossagg.engines.yearly import LOSS, LineColumns, annual_amounts, line_columns
+from lossagg.families import Poisson
+from lossagg.families.base import CountLaw
 from lossagg.kernels.simulation import (
+    GROUP,
     LANES,
+    STRIP,
     TILE,
+    U63,
     Kept,
     Notes,
     Sums,
     add_events,
     add_years,
+    begin_strips,
     begin_years,
+    draw_bits,
+    half_probability,
+    scatter_losses,
+    sizes_of_bits,
+    whole_lanes,
 )
 
 NOTES = 2**13
+MOST_SCATTERED = 1.0  # losses a year up to which scattering them is the faster way, with several covers too
 
 
 @dataclass(frozen=True, eq=False)
 class PreparedLine:
-    """A line as the kernels take it: key of its streams, samplers, columns to add up."""
+    """A line as the kernels take it: key of its streams, samplers, columns to add up.
+
+    Attributes:
+        name: the line's name.
+        key: of its streams.
+        counts: draws the losses of a year.
+        strips: draws the losses of a whole strip of years where they are scattered; None elsewhere.
+        sizes: draws sizes.
+        columns: what is added up.
+    """
 
     name: str
     key: tuple[int, int]
     counts: CountSampler
+    strips: CountSampler | None
     sizes: QuantileTable
     columns: LineColumns
 
@@ -48,9 +75,16 @@ def prepare_line(line: Line, book: Book, subjects: tuple[Subject, ...]) -> Prepa
         line.name,
         line_key(line.name),
         count_sampler(line.frequency, f"line {line.name!r}"),
+        _strip_sampler(line.frequency),
         quantile_table(line.severity),
         line_columns(book, line.name, subjects),
     )
+
+
+def _strip_sampler(law: CountLaw) -> CountSampler | None:
+    if not isinstance(law, Poisson) or law.mean() > MOST_SCATTERED:
+        return None
+    return count_sampler(Poisson(mean=STRIP * law.mean()), "a strip of years")
 
 
 def run_block(
@@ -99,7 +133,9 @@ def line_sums(
     if not line.columns.count:
         return annual[:, :years]
     sums = Sums(line.columns.ramps, line.columns.largest, joint.scale.get(line.name, nothing), annual)
-    if line.name in joint.counts or not line.counts.guide.size:
+    if line.strips is not None and line.name not in joint.counts:
+        _scatter(line, line.strips, sums, years, seed=seed, block=block)
+    elif line.name in joint.counts or not line.counts.guide.size:
         state = block_state(seed, line.key, block)
         _simulate_years(line, state, sums, _counts(line, joint, state)[: annual.shape[1]], years, kept)
     else:
@@ -123,6 +159,11 @@ def block_events(
     Returns:
         Counts per year, shape (last - first,), and sizes in the order of the years, as `line_sums` has them.
     """
+    scale = joint.scale.get(line.name)
+    if line.strips is not None and line.name not in joint.counts:
+        years, sizes = _scattered(line, line.strips, first, last, seed=seed, block=block)
+        own = np.bincount(years - first, minlength=last - first)
+        return own, sizes if scale is None else sizes * scale[years]
     state = block_state(seed, line.key, block)
     counts = _counts(line, joint, state)
     own = counts[first:last]
@@ -133,7 +174,6 @@ def block_events(
     inside = (years >= first) & (years < last)
     by_year = np.argsort(years[inside], kind="stable")
     kept.sizes[np.isnan(kept.sizes)] = sizes[inside][by_year]
-    scale = joint.scale.get(line.name)
     return own, kept.sizes if scale is None else kept.sizes * np.repeat(scale[first:last], own)
 
 
@@ -141,6 +181,47 @@ def _counts(line: PreparedLine, joint: JointBlock, state: np.ndarray) -> IntArra
     """Losses of each year of a block: those the dependences say, or the line's own."""
     given = joint.counts.get(line.name)
     return line.counts.draw(state, BLOCK_YEARS) if given is None else given
+
+
+def _scatter(
+    line: PreparedLine, strips: CountSampler, sums: Sums, years: int, *, seed: int, block: int
+) -> None:
+    """A block of a line with few losses a year."""
+    state = np.empty((4, LANES), dtype=np.uint64)
+    totals = np.empty(BLOCK_YEARS // STRIP, dtype=np.int64)
+    notes, cursor = _notes(), np.zeros(2, dtype=np.int64)
+    wanted = -(-years // STRIP)
+    entropy, table = block_entropy(seed, line.key, block), line.sizes.arrays
+    found = begin_strips(
+        entropy, state, strips.guide, strips.survival, table, sums, totals, wanted, cursor, notes
+    )
+    _answer(line, notes, found, sums)
+    while cursor[0] < wanted:
+        _answer(line, notes, scatter_losses(state, table, sums, totals[:wanted], cursor, notes), sums)
+
+
+def _scattered(
+    line: PreparedLine, strips: CountSampler, first: int, last: int, *, seed: int, block: int
+) -> tuple[IntArray, FloatArray]:
+    """(year, size) of the losses that `_scatter` adds to some years, in the order of the years."""
+    state = block_state(seed, line.key, block)
+    totals = strips.draw(state, BLOCK_YEARS // STRIP)
+    years, sizes = [np.empty(0, dtype=np.int64)], [np.empty(0)]
+    for strip in range(-(-last // STRIP)):
+        bits = np.empty(whole_lanes(totals[strip]), dtype=np.uint64)
+        draw_bits(state, bits)
+        bits = bits[: totals[strip]]
+        year = strip * STRIP + (bits & np.uint64(STRIP - 1)).astype(np.int64)
+        bits, year = bits[(year >= first) & (year < last)], year[(year >= first) & (year < last)]
+        size = np.empty(bits.size)
+        sizes_of_bits(line.sizes.arrays, bits, size, np.empty(bits.size // GROUP, dtype=np.uint8))
+        for k in np.flatnonzero(np.isnan(size)):
+            t = half_probability(bits[k])
+            size[k] = line.sizes.exact(np.array([-t if bits[k] >> U63 else t]))[0]
+        years.append(year)
+        sizes.append(size)
+    by_year = np.argsort(found := np.concatenate(years), kind="stable")
+    return found[by_year], np.concatenate(sizes)[by_year]
 
 
 def _simulate_alone(line: PreparedLine, sums: Sums, years: int, kept: Kept, *, seed: int, block: int) -> None:

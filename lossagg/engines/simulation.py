@@ -49,7 +49,7 @@ from lossagg.engines.yearly import growth
 from lossagg.errors import EngineError, InputError
 from lossagg.families.base import CountLaw, SizeLaw
 from lossagg.kernels.compile import awaits_compilation
-from lossagg.kernels.simulation import add_years
+from lossagg.kernels.simulation import add_years, begin_strips
 
 __all__ = ["PreparedLine", "Simulation", "block_events", "line_sums", "prepare_line", "run_block"]
 
@@ -183,11 +183,11 @@ class Run:
         progress: Callable[[float], None] | None = None,
         every_year: Callable[[int, Amounts], None] | None = None,
     ) -> None:
-        if awaits_compilation(add_years):
-            log.info("compiling the simulation for this machine; later runs start at once")
         self.settings, self.book, self.subjects, self.capital = settings, book, subjects, capital
         self.progress, self.every_year = progress, every_year
         self.lines = tuple(prepare_line(line, book, subjects) for line in book.lines)
+        if any(awaits_compilation(add_years if line.strips is None else begin_strips) for line in self.lines):
+            log.info("compiling the simulation for this machine; later runs start at once")
         self.orders = {s: (_moment_order(book, s), _most(book, s)) for s in subjects}
         self.workers = settings.workers or available_cores()
 

@@ -42,6 +42,7 @@ BUFFER = 2048  # draws between two visits of the annual sums; a multiple of LANE
 TILE = 4096  # years sorted together by their counts
 LONG = 512  # losses from which on a year is simulated by itself
 NARROW = 8  # least number of years of one count that are simulated together
+STRIP = 2048  # years among which losses are scattered: what the bits that no size uses can tell apart
 COUNT_BITS = 10
 COUNTS_PER_WORD = 6
 GUIDES = 2**COUNT_BITS
@@ -739,6 +740,113 @@ def add_years(
                 cursor[1], cursor[2] = place + width, 0
         cursor[0], cursor[1], cursor[2] = tile + number, 0, 0
     return found
+
+
+@compiled
+def scatter_buffer(sizes: FloatArray, bits: np.ndarray, first: int, sums: Sums) -> None:
+    """Add losses, each to the year of its strip that the low bits of its draw say.
+
+    Args:
+        sizes: the losses; changed where years have factors.
+        bits: the draws they come from, at least as many.
+        first: first year of the strip.
+        sums: what is added up.
+    """
+    own = np.uint64(STRIP - 1)
+    if sums.scale.shape[0] > 0:
+        scale = sums.scale[first : first + STRIP]
+        for i in range(sizes.shape[0]):
+            sizes[i] *= scale[bits[i] & own]
+    for r in range(sums.ramps.shape[0]):
+        start, end, slope, jump = sums.ramps[r, 1], sums.ramps[r, 2], sums.ramps[r, 3], sums.ramps[r, 4]
+        annual = sums.annual[np.int64(sums.ramps[r, 0]), first : first + STRIP]
+        if jump == 0.0:
+            for i in range(sizes.shape[0]):
+                annual[bits[i] & own] += slope * (min(max(sizes[i], start), end) - start)
+        else:
+            for i in range(sizes.shape[0]):
+                annual[bits[i] & own] += paid_of(sizes[i], sums.ramps[r])
+    if sums.largest >= 0:
+        annual = sums.annual[sums.largest, first : first + STRIP]
+        for i in range(sizes.shape[0]):
+            annual[bits[i] & own] = max(annual[bits[i] & own], sizes[i])
+
+
+@compiled
+def scatter_losses(
+    lanes: np.ndarray, table: SizeArrays, sums: Sums, totals: IntArray, cursor: IntArray, notes: Notes
+) -> int:
+    """Scatter the losses of strips of years, until they are done or the notes are nearly full.
+
+    Given their number, Poisson losses fall on the years of a strip independently and evenly. The year is
+    the low bits of a draw, the size the others.
+
+    Args:
+        lanes: the generator, advanced.
+        table: the size law.
+        sums: what is added up.
+        totals: losses of each strip, those that are wanted only.
+        cursor: where to go on: strip, losses done there. Zeros to begin with; the first entry is the
+            number of strips at the end.
+        notes: receives losses to be evaluated exactly.
+
+    Returns:
+        How many losses are in the notes.
+    """
+    bits, missing = np.empty(BUFFER, np.uint64), np.empty(BUFFER // GROUP, np.uint8)
+    sizes = np.empty(BUFFER)
+    found = 0
+    while cursor[0] < totals.shape[0]:
+        first = cursor[0] * STRIP
+        while cursor[1] < totals[cursor[0]]:
+            if found + BUFFER > notes.year.shape[0]:
+                return found
+            drawn = sizes[: min(BUFFER, totals[cursor[0]] - cursor[1])]
+            draw_bits(lanes, bits[: whole_lanes(drawn.shape[0])])
+            if sizes_of_bits(table, bits, drawn, missing) > 0:
+                before = found
+                found = note_missing(drawn, bits, notes.year, notes.probability, found)
+                for i in range(before, found):
+                    notes.year[i] = first + np.int64(bits[notes.year[i]] & np.uint64(STRIP - 1))
+            scatter_buffer(drawn, bits, first, sums)
+            cursor[1] += drawn.shape[0]
+        cursor[0], cursor[1] = cursor[0] + 1, 0
+    return found
+
+
+@compiled
+def begin_strips(
+    entropy: np.ndarray,
+    lanes: np.ndarray,
+    guide: IntArray,
+    survival: FloatArray,
+    table: SizeArrays,
+    sums: Sums,
+    totals: IntArray,
+    strips: int,
+    cursor: IntArray,
+    notes: Notes,
+) -> int:
+    """Seed the lanes, draw the losses of every strip of the block and begin to scatter them.
+
+    Args:
+        entropy: as for `seed_lanes`.
+        lanes: shape (4, LANES), uint64, overwritten.
+        guide: as for `draw_counts`, of the losses of a strip.
+        survival: as for `draw_counts`.
+        table: as for `scatter_losses`, like all that follow.
+        sums: what is added up.
+        totals: overwritten by the losses of every strip of the block.
+        strips: strips wanted.
+        cursor: where to go on.
+        notes: receives losses to be evaluated exactly.
+
+    Returns:
+        How many losses are in the notes.
+    """
+    seed_lanes(entropy, lanes)
+    draw_counts(lanes, guide, survival, totals)
+    return scatter_losses(lanes, table, sums, totals[:strips], cursor, notes)
 
 
 @compiled
