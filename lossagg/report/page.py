@@ -193,9 +193,9 @@ def _line_facts(line: Entry, currency: str) -> list[tuple[str, str]]:
     facts.append(("Threshold", f"{threshold:,.2f} {currency}, trended" if threshold else "none"))
     if size.get("density_jump") is not None:
         facts.append(("Density at the splice", _jump_text(size["density_jump"])))
-    facts.append(
-        ("Losses fitted", f"{size['observations']:,}, of which {size['censored']:,} at a policy limit")
-    )
+    if size["observations"] is not None:
+        fitted = f"{size['observations']:,}, of which {size['censored']:,} at a policy limit"
+        facts.append(("Losses fitted", fitted))
     if exposure:
         base = f" {exposure['base']}" if exposure["base"] else ""
         forecast = f"{digits.significant(exposure['forecast'], 6)}{base}"
