@@ -70,14 +70,19 @@ class PreparedLine:
 
 
 def prepare_line(line: Line, book: Book, subjects: tuple[Subject, ...]) -> PreparedLine:
-    """Tables and columns of a line of a book."""
+    """Samplers and columns of a line of a book."""
+    return prepare_columns(line, line_columns(book, line.name, subjects))
+
+
+def prepare_columns(line: Line, columns: LineColumns) -> PreparedLine:
+    """Samplers of a line, with the columns to add up."""
     return PreparedLine(
         line.name,
         line_key(line.name),
         count_sampler(line.frequency, f"line {line.name!r}"),
         _strip_sampler(line.frequency),
         quantile_table(line.severity),
-        line_columns(book, line.name, subjects),
+        columns,
     )
 
 

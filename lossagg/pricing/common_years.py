@@ -13,13 +13,12 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from lossagg.arrays import FloatArray
+from lossagg.engines.blocks import PreparedLine, line_sums, prepare_columns
 from lossagg.engines.book import Book, Line
 from lossagg.engines.executors import UNDER_WAY, on_executor
-from lossagg.engines.quantile_table import quantile_table
 from lossagg.engines.sampled import SimulatedAnnualLoss
-from lossagg.engines.search_table import count_sampler
-from lossagg.engines.simulation import PreparedLine, available_cores, line_sums, require_resources
-from lossagg.engines.streams import BLOCK_YEARS, line_key
+from lossagg.engines.simulation import available_cores, require_resources
+from lossagg.engines.streams import BLOCK_YEARS
 from lossagg.engines.yearly import LineColumns, ramps
 from lossagg.pricing.option import Events, Option
 
@@ -149,8 +148,7 @@ class _Columns:
     def line(self, number: int, line: Line) -> PreparedLine:
         rows = [row for events, k in self.place.items() for row in ramps(events[number], k)]
         columns = LineColumns({}, np.array(rows, dtype=np.float64).reshape(-1, 5), self.count)
-        counts = count_sampler(line.frequency, f"line {line.name!r}")
-        return PreparedLine(line.name, line_key(line.name), counts, quantile_table(line.severity), columns)
+        return prepare_columns(line, columns)
 
 
 class _Room:

@@ -11,7 +11,8 @@ from hypothesis import strategies as st
 
 import lossagg
 from lossagg.cover import Cover, Schedule
-from lossagg.engines.book import Line
+from lossagg.engines import Simulation
+from lossagg.engines.book import GROSS, Book, Line
 from lossagg.engines.payment import PaymentLaw
 from lossagg.engines.result import TransformedAnnualLoss
 from lossagg.kernels.pricing import survival_and_areas
@@ -275,3 +276,28 @@ def test_moments_of_all_schedules_at_once_are_those_of_each(law) -> None:
     payments = [PaymentLaw(law, schedule) for schedule in schedules]
     assert first == pytest.approx([payment.mean for payment in payments], rel=1e-9)
     assert second == pytest.approx([payment.second_moment for payment in payments], rel=1e-8)
+
+
+@pytest.mark.parametrize("mean", [0.3, 0.9, 12.0])
+def test_options_meet_the_losses_of_the_simulation(mean: float) -> None:
+    """Same seed, lines and years: the loss of every year is the engine's, however rare losses are."""
+    lines = tuple(
+        Line(name=name, frequency=lossagg.Poisson(mean=own), severity=lossagg.Lognormal(mu=9.0, sigma=1.5))
+        for name, own in (("Fire", mean), ("Theft", 4.0))
+    )
+    ours: list[np.ndarray] = []
+    simulate_options(
+        lines,
+        [Option("none", None, lines), Option("5k", Cover(deductible=5000.0), lines)],
+        base=0,
+        paid=[None, None],
+        thresholds={},
+        keep=[False, False],
+        years=70_000,
+        seed=5,
+        every_year=lambda _, amounts: ours.append(amounts["loss"]),
+    )
+    theirs: list[np.ndarray] = []
+    engine = Simulation(years=70_000, seed=5)
+    engine.book(Book(lines=lines), every_year=lambda _, amounts: theirs.append(amounts[GROSS]))
+    np.testing.assert_allclose(np.concatenate(ours), np.concatenate(theirs), rtol=1e-12)
