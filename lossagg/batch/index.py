@@ -48,10 +48,11 @@ def index_row(entry: Entry) -> dict[str, Any]:
         return row
     view, currency = front.headline(found), found["portfolio"]["currency"]
     figure = f"{currency} {view['view'].text}" if view["found"] else view["view"].text
+    label = f" ({view['label']})" if view["label"] else ""
     return row | {
         "name": found["portfolio"]["name"],
         "link": f"{entry.slug}/report.html",
-        "headline": f"{figure}, {view['measure']} at {view['level']}, {found['headline']['subject']}",
+        "headline": f"{figure}, {view['measure']} at {view['level']}, {found['headline']['subject']}{label}",
         "gross": _at_capital_level(found, "gross"),
         "net": _at_capital_level(found, "net"),
         "verdict": _verdict(found),

@@ -16,6 +16,7 @@ from lossagg.portfolio.assessment import (
     cover_of,
     crosscheck_of,
     headline_of,
+    label_of,
     levels_of,
     number,
     subject_of,
@@ -92,7 +93,14 @@ def figures(
 
     headline = NET if book.covers else GROSS
     return {
-        "headline": headline_of(headline, best[headline][0], capital_level, check, withheld=broken),
+        "headline": headline_of(
+            headline,
+            best[headline][0],
+            capital_level,
+            check,
+            withheld=broken,
+            label=label_of({line["name"]: line["label"] is None for line in evidence}),
+        ),
         "lines": [
             _line(entry, best[Subject("line", entry["name"])][0], levels, withheld=withheld)
             for entry in evidence

@@ -23,6 +23,7 @@ from lossagg.portfolio.cover_data import reinstatement_of, terms_of
 FORMAT = "lossagg.assessment/1"
 WITHHELD = "withheld: the engines disagree"
 NO_MEAN = "does not exist: the mean is infinite"
+NO_OWN_DATA = "no own data"
 NO_VARIANCE = "does not exist: the variance is infinite"
 CURVE = np.concatenate([np.geomspace(0.9, 5e-4, 60)])
 
@@ -66,7 +67,8 @@ class Assessment:
     def __repr__(self) -> str:
         headline = self.data["headline"]
         value = "withheld" if self.withheld else f"{headline['value']:,.0f}"
-        return f"<Assessment of {self.data['portfolio']['name']!r}: {value} at {headline['level']:g}>"
+        label = f", {headline['label']}" if headline["label"] else ""
+        return f"<Assessment of {self.data['portfolio']['name']!r}: {value} at {headline['level']:g}{label}>"
 
 
 def number(value: float) -> float | None:
@@ -216,8 +218,26 @@ def _comparison(comparison: Comparison) -> Data:
     }
 
 
+def label_of(own_data: Mapping[str, bool]) -> str | None:
+    """What a figure must be labelled with where lines it rests on had no loss of their own; None elsewhere.
+
+    Args:
+        own_data: by name of the line, False where it was observed and had no loss.
+    """
+    bare = [name for name, own in own_data.items() if not own]
+    if not bare:
+        return None
+    return NO_OWN_DATA if len(bare) == len(own_data) else f"{NO_OWN_DATA} for {', '.join(bare)}"
+
+
 def headline_of(
-    subject: Subject, loss: AnnualLoss, level: float, check: Crosscheck, *, withheld: str = ""
+    subject: Subject,
+    loss: AnnualLoss,
+    level: float,
+    check: Crosscheck,
+    *,
+    withheld: str = "",
+    label: str | None = None,
 ) -> Data:
     """The capital figure: VaR at the capital level, and the same less the mean.
 
@@ -227,6 +247,7 @@ def headline_of(
         level: the capital level.
         check: the crosscheck, which withholds it where the engines disagree.
         withheld: why else it is withheld, "" where nothing else does.
+        label: what it must be labelled with, see `label_of`.
     """
     reason = withheld if check.agrees else check.summary
     withheld = withheld or ("" if check.agrees else WITHHELD)
@@ -241,4 +262,5 @@ def headline_of(
         "less_mean": None if mean is None or var["value"] is None else var["value"] - mean,
         "withheld": bool(withheld),
         "reason": reason or None,
+        "label": label,
     }

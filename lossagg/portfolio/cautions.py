@@ -82,6 +82,8 @@ def _caution(code: str, message: str) -> Caution:
 def _of_line(line: LineModel, levels: Sequence[float]) -> Iterator[tuple[str, str]]:
     for note in line.fit_notes:
         yield note.code, note
+    if line.prepared is not None and not line.own_data:
+        yield "no-own-data", _without_own_data(line, line.prepared)
     if line.severities is None:
         index = line.severity.tail_index
         if line.severity.mean() == float("inf"):
@@ -94,10 +96,31 @@ def _of_line(line: LineModel, levels: Sequence[float]) -> Iterator[tuple[str, st
         yield from _of_records(line.prepared, levels)
 
 
+def _without_own_data(line: LineModel, prepared: PreparedLosses) -> str:
+    """What the figures of a line rest on that had no loss."""
+    years, stated = float(prepared.years.fraction.sum()), line.sources
+    if line.bound is not None:
+        rate = f"its rate of events is {line.bound.method}, not an estimate"
+    elif line.rate is not None:
+        rate = f"its rate of events, {line.rate.rate:.5g} per unit of exposure, rests on the stated prior"
+    elif line.frequencies is not None:
+        fit = line.frequencies.chosen
+        rate = (
+            f"its rate of events is {fit.model.mean():.5g} per unit of exposure, the mean of its posterior "
+            f"law under Jeffreys' prior; the one-sided 95 % upper bound is {fit.upper_rate():.5g}"
+        )
+    else:
+        rate = f"its frequency is given (source: {stated['frequency'].rstrip('.')})"
+    return (
+        f"no own data. There was no loss in {years:.4g} years; {rate}. Its severity is given (source: "
+        f"{stated['severity'].rstrip('.')}). Nothing observed supports the size of its figures."
+    )
+
+
 def _of_records(prepared: PreparedLosses, levels: Sequence[float]) -> Iterator[tuple[str, str]]:
     years = float(prepared.years.fraction.sum())
     top = max(levels)
-    if 1.0 / (1.0 - top) > years * (1.0 + 1e-9):
+    if len(prepared) and 1.0 / (1.0 - top) > years * (1.0 + 1e-9):
         yield (
             "extrapolation",
             f"{years:.4g} years of records support levels up to {max(1 - 1 / years, 0):.3g}; the "

@@ -19,7 +19,13 @@ from lossagg.fitting.severity import FAMILIES as SIZE_FAMILIES
 from lossagg.portfolio.assessment import Data
 from lossagg.portfolio.dependences import assumed
 from lossagg.portfolio.files import PORTFOLIO_FILE, LineRecords, portfolio_file, read_records
-from lossagg.portfolio.history import follow, history_data, prepare_line, reconciliation_data
+from lossagg.portfolio.history import (
+    development_data,
+    follow,
+    history_data,
+    prepare_line,
+    reconciliation_data,
+)
 from lossagg.portfolio.laws import given_frequency, given_severity
 from lossagg.portfolio.places import placed_covers
 from lossagg.portfolio.reconciling import reconcile_portfolio
@@ -171,7 +177,7 @@ class _Check:
                 part = file.model_copy(update={"line": lines})
                 found |= self.kept(partial(self.read, part), "file") or {}
             self.bare |= set(found)
-            if len(found) == sum(line.records is not None for line in bare):
+            if len(found) == sum(line.observed for line in bare):
                 self.keep(error, "file")  # Every file of records is fine: it lies in what stands beside them.
             return found
 
@@ -187,7 +193,7 @@ class _Check:
             # What the checks found and reconciled stands also where preparing stops.
             self.findings += records.losses.findings if prepared is None else prepared.findings
             history = history_data(prepared) | reconciliation_data(
-                (prepared or records.losses).reconciliation
+                (records.losses if prepared is None else prepared).reconciliation
             )
             controls = self.kept(
                 lambda: reconcile_portfolio(file, {line.name: records}), "control-total", line.name
@@ -197,14 +203,14 @@ class _Check:
                 self.findings += controls.findings
         return {
             "name": line.name,
-            "source": "given" if line.records is None else "records",
-            "status": "given" if line.records is None else USABLE if prepared is not None else STOPPED,
+            "source": "records" if line.observed else "given",
+            "status": "given" if not line.observed else USABLE if prepared is not None else STOPPED,
             **history,
-            "development": prepared.developed.to_dict() if prepared and prepared.developed else None,
+            "development": development_data(prepared),
             "exposure": None if prepared is None else prepared.base,
             "window": None if prepared is None else _window(file, prepared),
             "largest_losses": largest_losses(records.losses, prepared, LARGEST)
-            if records and prepared
+            if records is not None and prepared is not None
             else [],
             "previous": None if followed is None else followed.to_dict(),
         }
@@ -297,7 +303,7 @@ def _window(file: PortfolioFile, prepared: PreparedLosses) -> Data:
         "until": file.portfolio.valuation_date.isoformat(),
         "years": years,
         "events": len(prepared),
-        "supported_level": max(0.0, 1.0 - 1.0 / years),
+        "supported_level": max(0.0, 1.0 - 1.0 / years) if len(prepared) else 0.0,
         "complete_above": prepared.largest_threshold,
     }
 

@@ -29,7 +29,7 @@ def estimates(model: LineModel, draws: int) -> Data:
     if prepared is None:
         return found
     draws = max(_LEAST, draws)
-    if model.frequencies is not None and model.seen is not None:
+    if model.frequencies is not None and model.seen is not None and model.own_data:
         counts, fit, seen = prepared.years.losses, model.frequencies.chosen, model.seen
         found["frequency"] = _bootstrapped(
             lambda: bootstrap_frequency(counts, fit, seen, draws=draws, seed=seed)

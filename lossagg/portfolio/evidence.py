@@ -12,9 +12,9 @@ from lossagg.arrays import FloatArray
 from lossagg.families import SizeTable, Spliced
 from lossagg.families.base import SizeLaw
 from lossagg.fitting import Candidates, Fit, FrequencyFit, count_points, quantile_points, survival_points
-from lossagg.portfolio.assessment import Data, number
+from lossagg.portfolio.assessment import NO_OWN_DATA, Data, number
 from lossagg.portfolio.fit_tests import DRAWS, THRESHOLDS, frequency_tests, severity_tests, tail_evidence
-from lossagg.portfolio.history import history_data
+from lossagg.portfolio.history import development_data, history_data
 from lossagg.portfolio.line import LineModel
 from lossagg.records import PreparedLosses
 
@@ -36,6 +36,7 @@ def line_evidence(
     return {
         "name": model.name,
         "source": "given" if prepared is None else "records",
+        "label": None if model.own_data else NO_OWN_DATA,
         **history_data(prepared),
         "exposure": None
         if prepared is None
@@ -44,7 +45,7 @@ def line_evidence(
             "base": prepared.base,
             "last_year": float(prepared.years.exposure[-1]),
         },
-        "development": prepared.developed.to_dict() if prepared and prepared.developed else None,
+        "development": development_data(prepared),
         "frequency": _frequency(model, draws),
         "severity": _severity(model, draws),
         "fit": None if prepared is None else _fit_points(model, prepared),
@@ -62,16 +63,18 @@ def _frequency(model: LineModel, draws: int) -> Data:
         "standard_errors": None,
         "intervals": None,
         "source": "given" if tried is None else "fitted",
+        "stated_source": model.sources.get("frequency"),
         "mean": law.mean(),
         "variance": law.variance(),
         "candidates": [],
         "choice": None,
         "credibility": None,
+        "bound": None,
         "tests": None,
     }
     if tried is not None and model.prepared is not None:
         fit = tried.chosen
-        at_forecast = _at_forecast(model, fit.standard_errors)
+        at_forecast = _at_forecast(model, fit.standard_errors if model.count_estimated else {})
         if model.rate is not None:
             at_forecast["mean"] = model.rate.standard_error * model.forecast_exposure
         entry |= {
@@ -80,8 +83,9 @@ def _frequency(model: LineModel, draws: int) -> Data:
             "candidates": _candidates(tried),
             "choice": _choice(tried),
             "credibility": None if model.rate is None else model.rate.to_dict(),
+            "bound": None if model.bound is None else model.bound.to_dict(),
             "tests": frequency_tests(model, model.prepared, draws),
-            "notes": [str(note) for note in fit.notes],
+            "notes": [str(note) for note in fit.notes if note in model.fit_notes],
         }
     return entry
 
@@ -94,6 +98,7 @@ def _severity(model: LineModel, draws: int) -> Data:
         "standard_errors": None,
         "intervals": None,
         "source": "given" if tried is None else "fitted",
+        "stated_source": model.sources.get("severity"),
         "mean": number(law.mean()),
         "sd": number(law.sd()),
         "tail_index": number(law.tail_index),
@@ -153,7 +158,7 @@ def _intervals(model: LineModel, fit: Fit) -> Data:
     known = {name: np.array(pair) for name, pair in ends.items() if np.isfinite(pair).all()}
     if isinstance(fit, FrequencyFit):
         known = _at_forecast(model, known)
-        if model.rate is not None:
+        if model.rate is not None or model.bound is not None:
             known.pop("mean", None)
     return {name: pair.tolist() for name, pair in known.items()}
 

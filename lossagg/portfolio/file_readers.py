@@ -72,6 +72,7 @@ def losses_of(
         grouping=line.grouping,
         date_format=line.date_format,
         time_zone=line.time_zone,
+        may_be_empty=all(other.without_losses for other in file.line if other.records == name),
     )
 
 

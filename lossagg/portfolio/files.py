@@ -29,6 +29,7 @@ from lossagg.records import (
     convert_losses,
     ground_up_losses,
     line_rows,
+    no_records,
     undeclared_deductibles,
 )
 
@@ -83,6 +84,9 @@ def read_records(folder: Path, file: PortfolioFile) -> tuple[dict[str, LineRecor
             inputs.append({"path": table.file, "sha256": table.sha256, "rows": table.rows})
             # Its faults were those of the quarter before: it is not held to the tolerance again.
             previous |= _check(_as_modelled(table, sharers, file, rates), sharers, file, tolerance=1.0)
+    for line in file.line:
+        if line.records is None and line.without_losses:
+            checked |= _check(no_records(PORTFOLIO_FILE), [line], file)
     exposures: dict[str, ExposureTable] = {}
     for name, sharers in _by_file(file.line, "exposure").items():
         exposure = exposure_of(folder, name, sharers, file)

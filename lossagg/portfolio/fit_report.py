@@ -43,7 +43,7 @@ def fit_report(portfolio: Portfolio, *, draws: int = _DRAWS, progress: Progress 
     for place, model in enumerate(models):
         progress(f"testing the fits of {model.name}", (1 + place) / (1 + len(models)))
         lines.append(_line(model, section.capital_level, draws))
-    findings = [finding for model in models if model.prepared for finding in model.prepared.findings]
+    findings = [finding for model in models for finding in model.findings]
     return {
         "format": FIT_FORMAT,
         "portfolio": portfolio.description(),
@@ -67,7 +67,7 @@ def fit_report(portfolio: Portfolio, *, draws: int = _DRAWS, progress: Progress 
 def _line(model: LineModel, level: float, draws: int) -> Data:
     entry = line_evidence(model, draws, _THRESHOLDS, min(draws, _TAIL_DRAWS))
     fitted = model.severities is not None and model.prepared is not None
-    uncertain = fitted or model.frequencies is not None
+    uncertain = fitted or model.count_estimated
     return {
         **entry,
         "level": level,

@@ -6,9 +6,9 @@ from dataclasses import replace
 
 from lossagg.portfolio.assessment import Data
 from lossagg.portfolio.files import LineRecords
+from lossagg.portfolio.own_data import own_data_findings
 from lossagg.portfolio.schema import LineSection, PortfolioFile
 from lossagg.records import (
-    Finding,
     Followed,
     PreparedLosses,
     Reconciliation,
@@ -59,26 +59,11 @@ def prepare_line(file: PortfolioFile, line: LineSection, records: LineRecords) -
         trend=records.index or line.trend,
         **line.preparation(),
     )
-    if not len(prepared) and line.severity.fit is not None:
-        raise RecordsError([*prepared.findings, _no_losses(line, records)])
+    own = own_data_findings(line, records.losses.table, prepared)
+    if any(finding.action == "stop" for finding in own):
+        raise RecordsError([*prepared.findings, *own])
     more = (*(records.counts.findings if records.counts else ()), *(followed.findings if followed else ()))
-    return replace(prepared, findings=(*prepared.findings, *more))
-
-
-def _no_losses(line: LineSection, records: LineRecords) -> Finding:
-    return Finding(
-        "no-losses",
-        "stop",
-        records.losses.table.file,
-        None,
-        None,
-        None,
-        "no loss of the line is left, so there is no severity to fit",
-        "Give the line a law for its severity, or put it together with similar ones.",
-        sheet=records.losses.table.sheet,
-        line=line.name,
-        count=0,
-    )
+    return replace(prepared, findings=(*prepared.findings, *more, *own))
 
 
 def follow(line: LineSection, records: LineRecords) -> Followed | None:
@@ -118,6 +103,15 @@ def history_data(prepared: PreparedLosses | None) -> Data:
         ],
         "steps": [step.to_dict() for step in prepared.steps],
     }
+
+
+def development_data(prepared: PreparedLosses | None) -> Data | None:
+    """The years at ultimate as plain data; None where there is no history, or no development of it.
+
+    Args:
+        prepared: the losses of the line.
+    """
+    return None if prepared is None or prepared.developed is None else prepared.developed.to_dict()
 
 
 def reconciliation_data(reconciliation: Reconciliation) -> Data:

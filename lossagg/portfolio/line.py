@@ -7,7 +7,8 @@ survival of the fitted severity at that year's threshold, and the rate that resu
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from collections.abc import Mapping
+from dataclasses import dataclass, field, replace
 from typing import TypeVar
 
 import numpy as np
@@ -15,6 +16,7 @@ import numpy as np
 from lossagg.arrays import FloatArray
 from lossagg.engines.book import Line
 from lossagg.errors import FitError, InputError, place
+from lossagg.families import Poisson
 from lossagg.families.base import CountLaw, SizeLaw
 from lossagg.fitting import (
     Candidates,
@@ -26,9 +28,9 @@ from lossagg.fitting import (
     compare_severities,
 )
 from lossagg.portfolio.laws import given_frequency, given_severity
-from lossagg.portfolio.prior import WeightedRate, weighted_rate
+from lossagg.portfolio.prior import UPPER_BOUND, BoundedRate, WeightedRate, bounded_rate, weighted_rate
 from lossagg.portfolio.schema import Law, LineSection
-from lossagg.records import PreparedLosses
+from lossagg.records import Finding, PreparedLosses
 
 AnyFit = TypeVar("AnyFit", bound=Fit)
 
@@ -52,6 +54,8 @@ class LineModel:
             observed, for the part that is reported, at the frequency of the forecast period, times the
             probability that a loss exceeds the threshold.
         rate: the own rate weighed against a prior; None where none is stated.
+        bound: the upper bound that is the rate where there was no loss; None where the rate is estimated.
+        sources: where given laws come from, as far as it is stated, by "frequency" and "severity".
         forecast_exposure: exposure of the forecast year.
         expense: adjustment expense that comes with every loss, as a ratio to it.
         sum_insured: of every risk of the line, where a surplus needs it.
@@ -65,6 +69,8 @@ class LineModel:
     severities: Candidates[SeverityFit] | None = None
     seen: FloatArray | None = None
     rate: WeightedRate | None = None
+    bound: BoundedRate | None = None
+    sources: Mapping[str, str] = field(default_factory=dict)
     forecast_exposure: float = 1.0
     expense: float = 0.0
     sum_insured: float | None = None
@@ -81,10 +87,25 @@ class LineModel:
         )
 
     @property
+    def findings(self) -> tuple[Finding, ...]:
+        """What reading, checking and preparing its records found; nothing where it has none."""
+        return () if self.prepared is None else self.prepared.findings
+
+    @property
+    def own_data(self) -> bool:
+        """Whether the line was observed and had losses; laws that were given without records have none to."""
+        return self.prepared is None or len(self.prepared) > 0
+
+    @property
+    def count_estimated(self) -> bool:
+        """Whether the frequency is an estimate with an error of its own: neither given nor a bound."""
+        return self.frequencies is not None and self.bound is None
+
+    @property
     def fit_notes(self) -> tuple[Note, ...]:
         """What the fits say about themselves."""
         fits = [c.chosen for c in (self.severities, self.frequencies) if c is not None]
-        spoken_for = () if self.rate is None else ("no-losses",)
+        spoken_for = () if self.own_data else ("no-losses",)  # A caution of its own says more.
         return tuple(note for fit in fits for note in fit.notes if note.code not in spoken_for)
 
 
@@ -101,7 +122,9 @@ def build_line(section: LineSection, prepared: PreparedLosses | None, key: str) 
         InputError: given parameters out of range.
     """
     model = _modelled(section, prepared, key)
-    return replace(model, expense=section.expense, sum_insured=section.sum_insured)
+    laws = {"frequency": section.frequency, "severity": section.severity}
+    sources = {name: law.source for name, law in laws.items() if law.source is not None}
+    return replace(model, expense=section.expense, sum_insured=section.sum_insured, sources=sources)
 
 
 def _modelled(section: LineSection, prepared: PreparedLosses | None, key: str) -> LineModel:
@@ -131,13 +154,23 @@ def _modelled(section: LineSection, prepared: PreparedLosses | None, key: str) -
         )
     years = prepared.years
     seen = years.forecast_exposure * survival_by_year(prepared, severity)
+    if not (seen > 0).all():
+        raise InputError(
+            "the severity has no loss above the reporting threshold, so no count says what its rate is",
+            where=place(file="portfolio.toml", key=f"{key}.severity"),
+            value=float(years.threshold.max()),
+            remedy="Lower reporting-threshold, or give a severity that reaches beyond it.",
+        )
     frequencies = compare_frequencies(years.losses, section.frequency.fit, exposure=seen)
     frequencies = _preferred(frequencies, section.frequency, f"{key}.frequency")
     exposure = section.forecast_exposure or _last_full_exposure(prepared)
-    frequency, rate = frequencies.chosen.model_for(exposure), None
+    frequency, rate, bound = frequencies.chosen.model_for(exposure), None, None
     if section.frequency.prior is not None:
         rate = weighted_rate(section.frequency.prior, frequencies.chosen, f"{key}.frequency")
         frequency = rate.law(frequencies.chosen, exposure)
+    elif not len(prepared) and section.frequency.rate_without_losses == UPPER_BOUND:
+        bound = bounded_rate(frequencies.chosen)
+        frequency = Poisson(mean=bound.rate * exposure)
     return LineModel(
         name=section.name,
         frequency=frequency,
@@ -147,6 +180,7 @@ def _modelled(section: LineSection, prepared: PreparedLosses | None, key: str) -
         severities=severities,
         seen=seen,
         rate=rate,
+        bound=bound,
         forecast_exposure=exposure,
     )
 

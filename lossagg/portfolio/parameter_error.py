@@ -70,7 +70,7 @@ def _severity_variance(model: LineModel, level: float) -> float:
 
 
 def _frequency_variance(model: LineModel, level: float) -> float:
-    if model.frequencies is None:
+    if model.frequencies is None or not model.count_estimated:
         return 0.0
     fit = model.frequencies.chosen
 

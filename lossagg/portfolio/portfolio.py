@@ -159,7 +159,7 @@ class Portfolio:
             progress("lines taken as independent", 0.95)
             apart = independent_losses(book, years=years, seed=seed, workers=workers)
         shown = evidence.result()
-        findings = [finding for model in models if model.prepared for finding in model.prepared.findings]
+        findings = [finding for model in models for finding in model.findings]
         controls = reconcile_portfolio(self.file, self.records)
         findings += controls.findings
         data: Data = {

@@ -1,14 +1,15 @@
-"""A stated prior for the rate of a line, and how it is weighed against the line's own experience.
+"""The rate of a line that its own counts do not give alone: weighed against a stated prior, or bounded.
 
-Two methods (`lossagg.fitting.credibility`): a prior worth so much exposure, weighed as Buhlmann does; or a
-standard of full credibility, by limited fluctuation. Both give the own experience a weight between 0 and 1,
-and the prior the rest.
+Weighing knows two methods (`lossagg.fitting.credibility`): a prior worth so much exposure, weighed as
+Buhlmann does; or a standard of full credibility, by limited fluctuation. Both give the own experience a
+weight between 0 and 1, and the prior the rest. Without a single loss and without a prior the rate is the one
+that would have shown none with a probability of only 5 %: an upper bound, never zero.
 """
 
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Annotated, Any
+from typing import Annotated, Any, Final
 
 import numpy as np
 from pydantic import Field, model_validator
@@ -19,6 +20,8 @@ from lossagg.fitting import FrequencyFit, full_credibility, limited_fluctuation
 from lossagg.portfolio.sections import Positive, Probability, Section
 
 FAMILIES = ("poisson", "negative-binomial")
+UPPER_BOUND: Final = "upper-bound"
+BOUND_LEVEL = 0.95
 
 
 class FullCredibilitySection(Section):
@@ -139,6 +142,39 @@ class WeightedRate:
             "rate": self.rate,
             "standard_error": self.standard_error,
         }
+
+
+@dataclass(frozen=True, kw_only=True)
+class BoundedRate:
+    """The rate of a line in whose observed years there was no loss: an upper bound.
+
+    Attributes:
+        rate: the bound, per unit of exposure: -log(1 - level) / seen (Garwood 1936, Biometrika 28).
+        seen: exposure of the forecast period that would have shown a loss.
+        level: probability with which at least one loss would have been seen at that rate.
+    """
+
+    rate: float
+    seen: float
+    level: float = BOUND_LEVEL
+
+    @property
+    def method(self) -> str:
+        """The bound in words."""
+        return f"the one-sided {self.level:.0%} upper bound {self.rate:.5g} per unit of exposure"
+
+    def to_dict(self) -> dict[str, Any]:
+        """As plain data, for assessment and report."""
+        return {"rate": self.rate, "level": self.level, "losses": 0, "exposure": self.seen}
+
+
+def bounded_rate(fit: FrequencyFit) -> BoundedRate:
+    """The upper bound of the rate of a line without a loss.
+
+    Args:
+        fit: the Poisson law of the line's counts, all zero.
+    """
+    return BoundedRate(rate=fit.upper_rate(BOUND_LEVEL), seen=fit.exposure)
 
 
 def weighted_rate(prior: PriorSection, fit: FrequencyFit, key: str) -> WeightedRate:

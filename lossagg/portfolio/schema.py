@@ -20,7 +20,7 @@ from lossagg.portfolio.control_sections import ControlKeys
 from lossagg.portfolio.dependence_sections import DependenceSection
 from lossagg.portfolio.preparing import PreparingKeys
 from lossagg.portfolio.pricing_sections import OptionGrid, OptionSection, PricingSection
-from lossagg.portfolio.prior import PriorSection
+from lossagg.portfolio.prior import UPPER_BOUND, PriorSection
 from lossagg.portfolio.sections import Amount, Name, Positive, Probability, Section, Terms, hyphenated
 from lossagg.portfolio.tower_sections import TowerSection
 
@@ -67,6 +67,7 @@ class Law(Section):
     """A law given by family and parameters, or families to be fitted to the records.
 
     Of several fitted families the one of lowest AIC is used; `choose` names another, and `reason` says why.
+    `source` says where a given law comes from; a line without losses of its own must say it.
     """
 
     model_config = ConfigDict(alias_generator=hyphenated, extra="allow", strict=True, frozen=True)
@@ -75,6 +76,7 @@ class Law(Section):
     fit: Annotated[tuple[str, ...], Field(min_length=1, strict=False)] | None = None
     choose: str | None = None
     reason: Annotated[str, Field(min_length=1)] | None = None
+    source: Annotated[str, Field(min_length=1)] | None = None
 
     @model_validator(mode="after")
     def _choice_of_a_fit(self) -> Law:
@@ -93,6 +95,10 @@ class Law(Section):
                 "a law needs either a family or a fit | "
                 'Write family = "..." with its parameters, or fit = ["...", ...].'
             )
+        if self.fit is not None and self.source is not None:
+            raise ValueError(
+                "source belongs to a given law | The source of a fit is the records; leave it out."
+            )
         if self.fit is not None and self.given:
             raise ValueError(
                 f"unknown key {next(iter(self.given))!r} beside fit | A fit takes no parameters."
@@ -106,9 +112,14 @@ class Law(Section):
 
 
 class Frequency(Law):
-    """The frequency of a line; a fit may weigh its rate against a prior."""
+    """The frequency of a line; a fit may weigh its rate against a prior.
+
+    Without a loss and without a prior a fit has the one-sided 95 % upper bound of the rate, or the mean of
+    its posterior law, as `rate-without-losses` says.
+    """
 
     prior: PriorSection | None = None
+    rate_without_losses: Literal["upper-bound", "posterior-mean"] = UPPER_BOUND
 
     @model_validator(mode="after")
     def _prior_belongs_to_a_fit(self) -> Frequency:
@@ -116,6 +127,11 @@ class Frequency(Law):
             raise ValueError(
                 "prior belongs to a fit | A given law is a judgement already; leave out the prior, or write "
                 'fit = ["..."].'
+            )
+        if "rate_without_losses" in self.model_fields_set and (self.fit is None or self.prior is not None):
+            raise ValueError(
+                "rate-without-losses belongs to a fit without a prior | Leave it out; a given law or a prior "
+                "says what the rate is without losses."
             )
         return self
 
@@ -154,11 +170,13 @@ class LineSection(FileOptions, PreparingKeys, ControlKeys):
     """`[[line]]`: one class of business, from records or from given laws.
 
     Without `forecast-exposure` the forecast year has the exposure of the last year, that of the whole year
-    also where it was observed in part.
+    also where it was observed in part. `without-losses` declares that there was none in the years observed,
+    in place of records or beside records that have headings only.
     """
 
     name: Name
     records: str | None = None
+    without_losses: bool = False
     exposure: str | None = None
     exposure_columns: dict[str, str] = Field(default_factory=dict)
     reporting_threshold: Amount | None = None
@@ -177,13 +195,24 @@ class LineSection(FileOptions, PreparingKeys, ControlKeys):
             return self.reporting_threshold
         return max(self.reporting_threshold or 0.0, self.deductible)
 
+    @property
+    def observed(self) -> bool:
+        """Whether years of the line were observed: it has records, or is declared to be without losses."""
+        return self.records is not None or self.without_losses
+
     @model_validator(mode="after")
     def _fit_needs_records(self) -> LineSection:
-        if self.records is None:
+        if self.without_losses and self.records is None and self.exposure is None and self.first_year is None:
+            raise ValueError(
+                "without-losses needs the years in which there was none | Add exposure = ... or "
+                "first-year = ..."
+            )
+        if not self.observed:
             for part, law in (("frequency", self.frequency), ("severity", self.severity)):
                 if law.fit is not None:
                     raise ValueError(
-                        f"{part} is to be fitted, but the line has no records | Add records = ..."
+                        f"{part} is to be fitted, but the line has no records | Add records = ..., or "
+                        "without-losses = true if there was no loss."
                     )
             if self.exposure is not None:
                 raise ValueError("an exposure file needs records beside it | Add records = ...")

@@ -83,7 +83,8 @@ def _line(proposal: Proposal, line: ProposedLine) -> Iterator[str]:
     yield "[[line]]"
     yield f"name = {_quoted(line.name)}"
     yield f"records = {_quoted(proposal.file)}"
-    for key, value in vars(proposal.layout).items():
+    for key in ("sheet", "encoding", "delimiter"):
+        value = getattr(proposal.layout, key)
         if value is not None:
             yield f"{key} = {_quoted(value)}"
     yield from _forms(proposal)

@@ -50,7 +50,7 @@ def drawn_lines(models: Sequence[LineModel], draws: int, seed: int) -> Iterator[
 
 def uncertain(models: Sequence[LineModel]) -> bool:
     """Whether any law was fitted, so that its parameters are uncertain."""
-    return any(model.severities is not None or model.frequencies is not None for model in models)
+    return any(model.severities is not None or model.count_estimated for model in models)
 
 
 def _drawn(model: LineModel, random: np.random.Generator) -> Line:
@@ -79,7 +79,7 @@ def _severity(model: LineModel, random: np.random.Generator) -> SizeLaw:
 
 
 def _frequency(model: LineModel, severity: SizeLaw, random: np.random.Generator) -> CountLaw:
-    if model.frequencies is None or model.prepared is None or model.seen is None:
+    if model.frequencies is None or model.prepared is None or model.seen is None or model.bound is not None:
         return model.frequency
     fit, years = model.frequencies.chosen, model.prepared.years
     survival = np.asarray(model.severity.sf(years.threshold))

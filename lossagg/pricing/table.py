@@ -11,7 +11,7 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import Any
 
-from lossagg.portfolio.assessment import number
+from lossagg.portfolio.assessment import label_of, number
 from lossagg.portfolio.line import LineModel
 from lossagg.portfolio.pricing_sections import PricingSection, RiskLoad
 from lossagg.pricing.agreement import agreement, thresholds
@@ -124,6 +124,7 @@ class OptionTable:
             "basis": _basis(self.basis),
             "subject": {
                 "lines": [line.name for line in self.lines],
+                "label": self._label(),
                 "event_cap": self.basis.event_cap,
                 "events": sum(line.frequency.mean() for line in self.lines),
                 "expected": number(self.gross.mean),
@@ -141,12 +142,16 @@ class OptionTable:
             "curves": curves_of_options(self.options, self.basis),
         }
 
+    def _label(self) -> str | None:
+        return label_of({model.name: model.own_data for model in self.models})
+
     def _nothing(self) -> Data:
         """The table without a figure."""
         return {
             "basis": _basis(self.basis),
             "subject": {
                 "lines": [line.name for line in self.lines],
+                "label": self._label(),
                 "event_cap": self.basis.event_cap,
                 "events": None,
                 "expected": None,

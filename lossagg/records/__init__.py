@@ -7,9 +7,10 @@ from lossagg.records.counts import CountTable, check_counts, read_counts
 from lossagg.records.currency import RateTable, convert_losses, read_rates
 from lossagg.records.development import Development
 from lossagg.records.exposure import ExposureTable, read_exposure
-from lossagg.records.findings import Finding, RecordsError
+from lossagg.records.findings import Action, Finding, RecordsError, counted
 from lossagg.records.index_file import read_trend_index
 from lossagg.records.money import Reconciliation
+from lossagg.records.none import no_records
 from lossagg.records.prepare import prepare_losses
 from lossagg.records.prepared import PreparedLosses
 from lossagg.records.previous import Followed, follow_claims
@@ -21,6 +22,7 @@ from lossagg.records.ultimate import Developed
 from lossagg.records.years import YearTable
 
 __all__ = [
+    "Action",
     "CheckedLosses",
     "ControlResult",
     "ControlTotal",
@@ -42,11 +44,13 @@ __all__ = [
     "check_losses",
     "control_findings",
     "convert_losses",
+    "counted",
     "follow_claims",
     "ground_up_losses",
     "largest_losses",
     "line_rows",
     "midpoint",
+    "no_records",
     "prepare_losses",
     "read_counts",
     "read_exposure",

@@ -7,17 +7,18 @@ from pathlib import Path
 from typing import Any
 
 from lossagg.errors import InputError, place
-from lossagg.records.raw import MOST_ROWS, Choose, RawTable, TableBuilder, cell_text
+from lossagg.records.raw import MOST_ROWS, Choose, Layout, RawTable, TableBuilder, cell_text
 
 MOST_BYTES = 16 * 1024**3
 _BATCH = 100_000
 
 
-def read_parquet(path: Path, choose: Choose) -> RawTable:
+def read_parquet(path: Path, layout: Layout, choose: Choose) -> RawTable:
     """Read a Parquet table.
 
     Args:
         path: the file.
+        layout: whether it may be empty.
         choose: says from the headings which columns to keep.
 
     Returns:
@@ -44,7 +45,7 @@ def read_parquet(path: Path, choose: Choose) -> RawTable:
         headings = tuple(str(name) for name in schema.names)
         positions = choose(headings, None)
         _check_types(schema, positions, path.name)
-        builder = TableBuilder(path.name, None, headings, positions)
+        builder = TableBuilder(path.name, None, headings, positions, layout.may_be_empty)
         _fill(builder, source)
     table = builder.finish()
     # What the batches and the columns that are not read took goes back to the system.

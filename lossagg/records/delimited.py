@@ -67,7 +67,7 @@ def read_delimited(data: bytes, file: str, layout: Layout, choose: Choose) -> Ra
     delimiter = layout.delimiter or _sniff(start, file)
     _check_delimiter(delimiter, file)
     headings = _headings(_reader(start, delimiter), start, delimiter, file)
-    builder = TableBuilder(file, None, headings, choose(headings, None))
+    builder = TableBuilder(file, None, headings, choose(headings, None), layout.may_be_empty)
     _note_layout(builder, coding, delimiter)
     if not body.endswith((b"\n", b"\r")):
         builder.note(

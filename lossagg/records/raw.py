@@ -31,11 +31,14 @@ class Layout:
         sheet: sheet of a workbook; None: its only visible sheet.
         encoding: encoding of a text file; None: by its byte order mark, else UTF-8.
         delimiter: delimiter of a text file; None: found if unambiguous.
+        may_be_empty: whether headings without rows are an answer; else they stop the reading, because an
+            export that failed looks the same.
     """
 
     sheet: str | None = None
     encoding: str | None = None
     delimiter: str | None = None
+    may_be_empty: bool = False
 
 
 @dataclass(frozen=True)
@@ -115,6 +118,7 @@ class TableBuilder:
     sheet: str | None
     headings: tuple[str, ...]
     positions: Mapping[str, int]
+    may_be_empty: bool = False
     findings: list[Finding] = field(default_factory=list)
     _cells: dict[str, list[Any]] = field(default_factory=dict)
     _native: dict[str, list[BoolArray]] = field(default_factory=dict)
@@ -148,26 +152,26 @@ class TableBuilder:
         """Close the table, without the blank rows at its foot.
 
         Raises:
-            InputError: no row has any content.
+            InputError: no row has any content, where the table may not be empty.
         """
         import pyarrow as pa
 
         empty = np.concatenate(self._empty) if self._empty else np.zeros(0, dtype=np.bool_)
         filled = np.flatnonzero(~empty)
-        if not filled.size:
+        if not filled.size and not self.may_be_empty:
             raise InputError(
                 "the table has headings but no rows",
                 where=place(file=self.file, sheet=self.sheet),
-                remedy="Export the records again; a portfolio without any loss needs no records file.",
+                remedy="Export it again; only a line that says without-losses = true may have such records.",
             )
-        rows = int(filled[-1]) + 1
+        rows = int(filled[-1]) + 1 if filled.size else 0
         if rows < len(empty):
             self.note(
                 "blank-foot", f"{counted(len(empty) - rows, 'blank row')} at the foot ignored", "None needed."
             )
         columns = {}
         for name in self.positions:
-            cells = pa.concat_arrays(self._cells.pop(name))[:rows]
+            cells = pa.concat_arrays(self._cells.pop(name))[:rows] if rows else pa.array([], pa.string())
             columns[name] = Column(cells, self._natives(name, rows))
         return RawTable(
             self.headings,
@@ -175,7 +179,7 @@ class TableBuilder:
             columns,
             np.arange(FIRST_ROW, FIRST_ROW + rows, dtype=np.int64),
             empty[:rows],
-            np.concatenate(self._fingerprint)[:rows],
+            np.concatenate(self._fingerprint)[:rows] if rows else np.zeros(0, dtype=np.int64),
             self._foot,
             tuple(self.findings),
             self.sheet,
@@ -184,7 +188,9 @@ class TableBuilder:
     def _natives(self, name: str, rows: int) -> BoolArray:
         chunks = self._native.pop(name, None)
         # A view of one False, not a byte for each of what may be ten million rows.
-        return np.broadcast_to(np.False_, rows) if chunks is None else np.concatenate(chunks)[:rows]
+        if chunks is None or not rows:
+            return np.broadcast_to(np.False_, rows)
+        return np.concatenate(chunks)[:rows]
 
     def note(self, code: str, message: str, remedy: str, warn: bool = False) -> None:
         """Keep a finding about the file as a whole."""

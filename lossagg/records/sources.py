@@ -63,7 +63,7 @@ def read_source(path: Path, layout: Layout, choose: Choose) -> Source:
     else:
         from lossagg.records.columnar import read_parquet
 
-        table = read_parquet(path, choose)
+        table = read_parquet(path, layout, choose)
     if _inspect(path)[1] != digest:
         raise _unsettled(path.name)
     return Source(path.name, digest, table)

@@ -110,7 +110,10 @@ def _before_checks(checked: CheckedLosses) -> list[Step]:
     recoveries = table.numbers.get("recoveries")
     recovered = 0.0 if recoveries is None else fsum(np.nan_to_num(recoveries[checked.used]).tolist())
     gross = f"; amounts are gross, recoveries of {recovered:,.2f} are kept apart" if recovered else ""
-    steps = [Step("read", read, read, sums[0], sums[0], f"rows of {table.file}{gross}")]
+    rows_of = (
+        f"rows of {table.file}" if table.headings else f"no records; {table.file} says there was no loss"
+    )
+    steps = [Step("read", read, read, sums[0], sums[0], f"{rows_of}{gross}")]
     for number, change in enumerate(table.changes):
         rows = int(np.count_nonzero(change.rows & member))
         if rows:
@@ -213,6 +216,8 @@ def window_caution(checked: CheckedLosses, first: int) -> Finding:
 def open_claims_caution(checked: CheckedLosses, years: YearTable) -> list[Finding]:
     """Caution that amounts of open claims are not final, or that it is not known which are."""
     table, count = checked.table, int(years.open.sum())
+    if not years.claims.any():
+        return []
     if "status" not in table.words:
         message = "the records do not say which claims are open; all amounts are taken as final"
         remedy = (

@@ -163,6 +163,7 @@ def read_losses(
     grouping: str = "three",
     date_format: str | None = None,
     time_zone: str | None = None,
+    may_be_empty: bool = False,
 ) -> LossTable:
     """Read loss records from a CSV, TSV, XLSX or Parquet file, one row per loss.
 
@@ -180,6 +181,8 @@ def read_losses(
         grouping: "three" digits to a group, or "indian": 12,34,567.
         date_format: format of the dates unless ISO, made of %Y, %m (or %b) and %d.
         time_zone: zone in which the day of a date-time with a zone is wanted, for example "Europe/Berlin".
+        may_be_empty: True where it is known that there was no loss: then headings without rows are read as
+            none; else they stop, because an export that failed looks the same.
 
     Returns:
         The table with the faults seen so far; check it with `check_losses`.
@@ -191,7 +194,7 @@ def read_losses(
     """
     style = NumberStyle(decimal, thousands, grouping)
     path = Path(path)
-    layout = Layout(sheet=sheet, encoding=encoding, delimiter=delimiter)
+    layout = Layout(sheet=sheet, encoding=encoding, delimiter=delimiter, may_be_empty=may_be_empty)
     source = read_source(path, layout, chooser(path.name, _WANTED, columns or {}))
     raw = source.table
     typed = type_columns(raw, COLUMNS, style, date_format, raw.empty, time_zone)

@@ -55,6 +55,8 @@ def find_totals(raw: RawTable, typed: TypedColumns, exact: Money) -> Totals:
     between = _between(exact, finite, undated, raw.columns["date"].cells)
     last = np.zeros_like(between)
     end = len(last) - 1
+    if end < 0:
+        return Totals(last, between)
     losses = np.flatnonzero(finite[:end] & ~between[:end])
     is_sum = len(losses) >= _LEAST and exact[end] != 0 and exact[end] == exact_sum(exact[losses])
     labelled = any(_TOTAL.match(cell.strip()) for cell in raw.foot)

@@ -61,17 +61,17 @@ def read_workbook(path: Path, layout: Layout, choose: Choose) -> RawTable:
         with warnings.catch_warnings():
             # A day number beyond the calendar comes as an error value, which is reported as one.
             warnings.filterwarnings("ignore", message="Cell .* is marked as a date", category=UserWarning)
-            return _read_sheet(path, sheet, marks, choose)
+            return _read_sheet(path, sheet, marks, layout, choose)
 
 
-def _read_sheet(path: Path, sheet: Any, marks: dict[str, bool], choose: Choose) -> RawTable:
+def _read_sheet(path: Path, sheet: Any, marks: dict[str, bool], layout: Layout, choose: Choose) -> RawTable:
     import pyarrow as pa
     from openpyxl.utils.datetime import CALENDAR_MAC_1904
 
     rows = sheet.iter_rows(values_only=True)
     headings = _headings(next(rows, ()), path.name, sheet.title)
     positions = choose(headings, sheet.title)
-    builder = TableBuilder(path.name, sheet.title, headings, positions)
+    builder = TableBuilder(path.name, sheet.title, headings, positions, layout.may_be_empty)
     if marks["hidden"] or sheet.sheet_state != "visible":
         builder.note(
             "hidden-cells",

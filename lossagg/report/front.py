@@ -32,6 +32,7 @@ def headline(assessment: Assessment) -> dict[str, Any]:
         "engine": entry["engine"],
         "less_mean": show(tables.totals.less_mean(assessment), "money"),
         "sentence": headline_sentence(entry, currency, view.text, period, level) if found else "",
+        "label": entry.get("label") or "",
     }
 
 
@@ -134,7 +135,7 @@ def _finding_status(assessment: Assessment) -> str:
 def _reach(years: float | None, level: float) -> str:
     period = 1 / (1 - level)
     if years is None:
-        return "no records: every law was given"
+        return "no line has losses of its own"
     text = (
         f"the shortest record covers {digits.significant(years, 4)} years; "
         f"the capital level is {digits.return_period(period)}"

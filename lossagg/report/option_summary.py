@@ -52,7 +52,8 @@ def summarise_options(options: Entry, out: Path | None) -> Summary:
 
 def _headline(options: Entry) -> list[str]:
     lines = ", ".join(options["subject"]["lines"])
-    texts = [f"{len(options['options'])} options for {lines}"]
+    label = options["subject"].get("label")
+    texts = [f"{len(options['options'])} options for {lines}" + (f" [{label}]" if label else "")]
     if options["withheld"]:
         return [f"Options for {lines}: WITHHELD", options["withheld"]]
     if not options["agrees"]:

@@ -179,14 +179,20 @@ def line_section(line: Entry, index: int, currency: str, extra: Sequence[Table] 
 
 def _line_facts(line: Entry, currency: str) -> list[tuple[str, str]]:
     size, exposure = line["severity"], line["exposure"]
-    facts = [
+    facts = [("Label", line["label"])] if line.get("label") else []
+    facts += [
         ("Frequency", tables.lines.law_text(line["frequency"])),
         ("Severity", tables.lines.law_text(size)),
     ]
+    laws = (("frequency", line["frequency"]), ("severity", size))
+    facts += [
+        (f"Source of the {name}", law["stated_source"]) for name, law in laws if law.get("stated_source")
+    ]
     if line["source"] == "given":
         return [*facts, ("Source", tables.lines.GIVEN)]
-    laws = (("frequency", line["frequency"]), ("severity", size))
     facts += [(f"Why this {name}", text) for name, law in laws if (text := _choice_text(law))]
+    if bound := line["frequency"].get("bound"):
+        facts.append(("Rate without losses", _bound_text(bound)))
     if weighed := _credibility_text(line["frequency"]):
         facts.append(("Credibility of the rate", weighed))
     threshold = size["threshold"]
@@ -230,6 +236,15 @@ def _jump_text(jump: float) -> str:
     if abs(jump - 1.0) < SMOOTH:
         return "continuous"
     return f"jumps: just above the threshold it is {digits.significant(jump, 3)} times that just below"
+
+
+def _bound_text(bound: Entry) -> str:
+    """What the rate of a line is that had no loss."""
+    rate, seen = digits.significant(bound["rate"], 5), digits.significant(bound["exposure"], 6)
+    return (
+        f"{rate} per unit of exposure, the one-sided {bound['level']:.0%} upper bound: no loss in {seen} of "
+        "it; a higher rate would have shown one with more than that probability"
+    )
 
 
 def _credibility_text(law: Entry) -> str:

@@ -116,13 +116,15 @@ def _footnote(cell: Absent | Ranged) -> str:
 
 
 def years_observed(assessment: Assessment) -> float | None:
-    """Years in the shortest record behind the total, or `None` when every line was given its laws.
+    """Years in the shortest record behind the total, or `None` when no line has losses of its own.
 
     The shortest record decides, because the total can be supported by data only where all its
-    lines are.
+    lines are. Years without a single loss support no size.
     """
     spans = [
-        sum(row["fraction"] for row in line["by_year"]) for line in assessment["lines"] if line["by_year"]
+        sum(row["fraction"] for row in line["by_year"])
+        for line in assessment["lines"]
+        if any(row["losses"] for row in line["by_year"])
     ]
     return min(spans) if spans else None
 

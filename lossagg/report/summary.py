@@ -63,6 +63,8 @@ def summarise(assessment: Assessment, out: Path | None) -> Summary:
 def _headline(assessment: Assessment) -> list[str]:
     view, currency = front.headline(assessment), assessment["portfolio"]["currency"]
     subject = f"Capital figure, {view['measure']} at {view['level']} ({view['period']}), {view['subject']}"
+    if view["label"]:
+        subject += f" [{view['label']}]"
     if view["withheld"]:
         return [f"{subject}: WITHHELD", view["reason"], *front.crosscheck(assessment)["spreads"]]
     if not view["found"]:

@@ -75,15 +75,18 @@ def test_33_the_year_of_the_valuation_date_counts_in_part(tmp_path: Path) -> Non
 
 
 def test_35_no_claims_at_all(tmp_path: Path) -> None:
-    """Headings alone stop: a line without a loss takes a given law, which the report then names."""
+    """Headings alone stop: they may be an export that failed. A line without a loss takes a given severity
+    with its source, a bound or a prior for its rate, and is labelled: `test_without_losses.py`."""
     found = said(portfolio(tmp_path / "empty", rows=[]), "file")
     assert (found["severity"], found["message"]) == ("stop", "the table has headings but no rows")
     nil = portfolio(tmp_path / "nil", rows=["1,2022-05-01,0"])
     assert said(nil, "nil-claim")["message"].startswith("the amount is zero: closed without payment")
     found = said(nil, "no-losses")
     assert (found["severity"], found["file"]) == ("stop", "losses.csv")
-    assert found["message"] == "no loss of the line is left, so there is no severity to fit"
-    with pytest.raises(InputError, match=r"no loss of the line is left.*Give the line a law"):
+    assert found["message"] == "no loss of the line is left, so there is no severity to fit: it must be given"
+    with pytest.raises(
+        InputError, match=r"no loss of the line is left.*In place of its fit write a prior law"
+    ):
         read_portfolio(nil).models()
 
 

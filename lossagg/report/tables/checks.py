@@ -28,7 +28,7 @@ def windows(lines: Sequence[Entry], currency: str) -> Table:
                 window["years"],
                 window["events"],
                 window["complete_above"] or Absent("none"),
-                round(window["supported_level"], 4),
+                round(window["supported_level"], 4) if window["events"] else Absent("no own data"),
                 line["exposure"] or Absent("none"),
             )
         )

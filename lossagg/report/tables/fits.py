@@ -36,11 +36,14 @@ def parameters(lines: Sequence[Entry]) -> Table:
     notes = (
         "Below a value: its 95 % interval from the standard error, on the logarithmic scale where only "
         "positive values make sense. It tells the error of the parameter, given that the law is right.",
+        *(f"{line['name']}: {line['label']}." for line in lines if line.get("label")),
     )
     return Table("Parameters", "Parameters", columns, tuple(rows), notes if any(rows) else ())
 
 
 def _no_error(law: Entry) -> str:
+    if law.get("bound"):
+        return f"{law['bound']['level']:.0%} upper bound, not estimated"
     return GIVEN if law["source"] == "given" else "fixed, not estimated"
 
 

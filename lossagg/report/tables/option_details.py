@@ -314,7 +314,8 @@ def basis(options: Entry) -> Table:
     rows = tuple((name.replace("_", "-"), _stated(value)) for name, value in options["basis"].items())
     subject = options["subject"]
     cap = "none" if subject["event_cap"] is None else f"{subject['event_cap']:,.2f}"
-    extra = (("lines", ", ".join(subject["lines"])), ("event-cap", cap))
+    label = (("label", subject["label"]),) if subject.get("label") else ()
+    extra = (*label, ("lines", ", ".join(subject["lines"])), ("event-cap", cap))
     return Table("Option basis", "What the table rests on", (Column("Key"), Column("Value")), (*extra, *rows))
 
 

@@ -51,6 +51,7 @@ def headline(assessment: Assessment) -> Table:
         less_mean(assessment),
         entry["engine"],
         assessment["crosscheck"]["verdict"],
+        entry.get("label") or "",
     )
     columns = (
         Column("Portfolio"),
@@ -62,6 +63,7 @@ def headline(assessment: Assessment) -> Table:
         Column(f"Capital less expected, {currency}", "money", ranged=True),
         Column("Engine"),
         Column("Crosscheck"),
+        Column("Label"),
     )
     return Table("Headline", f"Headline, {currency}", columns, (cells,), reasons(cells))
 
