@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 from lossagg.batch.failure import explain
 from lossagg.batch.run import PORTFOLIO_FILE, find_portfolios
 from lossagg.batch.single import Progress, silent
+from lossagg.batch.twins import twins_of
 from lossagg.version import __version__
 
 if TYPE_CHECKING:
@@ -81,7 +82,7 @@ def _check_all(folder: Path, progress: Progress) -> dict[str, Any]:
     for place, name in enumerate(names):
         progress(f"{place} of {len(names)} portfolios", place / len(names))
         parts.append({"folder": name, **_checked(folder / name)})
-    _warn_of_one_name(parts)
+    _stop_twins(folder, parts)
     statuses = [part["status"] for part in parts]
     return {
         "format": "lossagg.check-folder/1",
@@ -92,33 +93,28 @@ def _check_all(folder: Path, progress: Progress) -> dict[str, Any]:
     }
 
 
-def _warn_of_one_name(parts: list[dict[str, Any]]) -> None:
-    """Warn of portfolios that bear one name: one may be a copy, and would count twice in any sum."""
+def _stop_twins(folder: Path, parts: list[dict[str, Any]]) -> None:
+    """Stop portfolios that bear one name: a batch would not begin."""
     from lossagg.records import Finding
 
-    folders: dict[str, list[str]] = {}
+    twins = twins_of(folder, [part["folder"] for part in parts], PORTFOLIO_FILE)
     for part in parts:
-        folders.setdefault(str(part["portfolio"]["name"]).casefold(), []).append(part["folder"])
-    for part in parts:
-        others = [
-            name for name in folders[str(part["portfolio"]["name"]).casefold()] if name != part["folder"]
-        ]
+        others = [f"{name}/{PORTFOLIO_FILE}" for name in twins.get(part["folder"], ())]
         if others:
-            more = f" and {len(others) - 1} more" if len(others) > 1 else ""
             found = Finding(
                 "same-name",
-                "warn",
+                "stop",
                 PORTFOLIO_FILE,
                 None,
                 None,
-                others[0],
-                f"the portfolio bears the name of that in folder {others[0]}{more}",
+                part["portfolio"]["name"],
+                f"the portfolio bears the name of that in {' and '.join(others)}",
                 "Give each its own name; if one is a copy, take it out of the folder.",
                 count=0,
             )
-            last = sum(part["counts"][severity] for severity in ("stop", "set aside", "warning"))
-            part["findings"].insert(last, found.to_dict())
-            part["counts"]["warning"] += 1
+            part["findings"].insert(part["counts"]["stop"], found.to_dict())
+            part["counts"]["stop"] += 1
+            part["status"] = "stopped"
 
 
 def _checked(path: Path) -> dict[str, Any]:

@@ -27,10 +27,17 @@ def slug(name: str) -> str:
 
 
 def result_names(names: Iterable[str]) -> dict[str, str]:
-    """The result folder of each name; names that reduce to the same get a piece of their hash."""
-    slugs = {name: slug(name) for name in names}
-    seen = Counter(slugs.values())
-    return {
-        name: short if seen[short] == 1 else f"{short}-{hashlib.sha256(name.encode()).hexdigest()[:8]}"
-        for name, short in slugs.items()
-    }
+    """The result folder of each name; names that reduce to the same get a piece of their hash, and all of it
+    where another name looks like that."""
+    found = {name: slug(name) for name in names}
+    for digits in (8, 64):
+        seen = Counter(found.values())
+        found = {
+            name: result if seen[result] == 1 else f"{slug(name)}-{_digest(name)[:digits]}"
+            for name, result in found.items()
+        }
+    return found
+
+
+def _digest(name: str) -> str:
+    return hashlib.sha256(name.encode()).hexdigest()

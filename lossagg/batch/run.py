@@ -19,6 +19,7 @@ from lossagg.batch.names import result_names
 from lossagg.batch.processes import Job, ending, run_jobs
 from lossagg.batch.record import BatchRecord, Entry, check_batch_folder, entries_of, write_record
 from lossagg.batch.single import Progress, silent
+from lossagg.batch.twins import refuse_twins
 from lossagg.errors import InputError
 from lossagg.report.folder import check_destination, disk_errors
 
@@ -90,11 +91,12 @@ def run_batch(
         worker: command of the process that does one portfolio; a JSON request is added to it.
 
     Raises:
-        InputError: nothing to run, or `out` holds files of someone else.
+        InputError: nothing to run, two portfolios of one name, or `out` holds files of someone else.
         EnvironmentFault: `out` cannot be written.
     """
     source, target = Path(folder), Path(out)
     names = find_portfolios(source)
+    refuse_twins(source, names, PORTFOLIO_FILE)
     check_batch_folder(target)
     record = BatchRecord(entries_of(names, result_names(names)), seed, years)
     write_record(target, record)

@@ -9,6 +9,7 @@ from __future__ import annotations
 import os
 import signal
 import sys
+import tomllib
 from pathlib import Path
 from types import SimpleNamespace
 from typing import Any
@@ -22,7 +23,7 @@ from lossagg.errors import InputError
 
 
 def read_portfolio(folder: str, pricer: object = None) -> SimpleNamespace:
-    fault = (Path(folder) / "portfolio.toml").read_text().strip()
+    fault = tomllib.loads((Path(folder) / "portfolio.toml").read_text())["portfolio"]["description"]
     match fault:
         case "broken":
             raise InputError(

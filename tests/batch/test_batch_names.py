@@ -39,6 +39,13 @@ def test_result_names_are_safe_unique_and_free_of_order(names: set[str]) -> None
         assert result not in RESERVED
 
 
+def test_a_name_made_like_a_result_folder_of_others_gets_its_own() -> None:
+    taken = result_names(["Pool", "pool"])["pool"]
+    found = result_names(["Pool", "pool", taken])
+    assert len(set(found.values())) == 3
+    assert found["Pool"].startswith("pool-")
+
+
 def test_names_that_differ_in_case_only_are_kept_apart() -> None:
     found = result_names(["Pool", "pool", "POOL"])
     assert len({name.lower() for name in found.values()}) == 3

@@ -13,6 +13,7 @@ import pytest
 from lossagg.batch import run_batch
 from lossagg.batch.processes import Job, ending, run_jobs
 from lossagg.batch.record import BatchRecord, Entry, write_record
+from lossagg.batch.twins import twins_of
 from lossagg.errors import InputError
 
 WORKER = (sys.executable, str(Path(__file__).with_name("stand_in_worker.py")))
@@ -20,9 +21,19 @@ WORKER = (sys.executable, str(Path(__file__).with_name("stand_in_worker.py")))
 
 def portfolios(folder: Path, **faults: str) -> Path:
     for name, fault in faults.items():
-        (folder / name).mkdir(parents=True)
-        (folder / name / "portfolio.toml").write_text(fault)
+        write_portfolio(folder / name, name, fault)
     return folder
+
+
+def write_portfolio(folder: Path, name: str, fault: str) -> None:
+    """A portfolio file of one given line, the fault that the stand-in worker plays as its description."""
+    folder.mkdir(parents=True, exist_ok=True)
+    (folder / "portfolio.toml").write_text(
+        f'[portfolio]\nname = "{name}"\ndescription = "{fault}"\n'
+        'currency = "EUR"\nvaluation-date = 2025-12-31\n'
+        '[[line]]\nname = "Fire"\nfrequency = { family = "poisson", mean = 2 }\n'
+        'severity = { family = "exponential", mean = 5000 }\n'
+    )
 
 
 def contents(out: Path) -> dict[str, bytes]:
@@ -104,7 +115,7 @@ def test_earlier_result_of_a_portfolio_that_fails_now_is_gone(tmp_path: Path) ->
     source = portfolios(tmp_path / "in", alder="", birch="")
     assert run_batch(source, tmp_path / "out", worker=WORKER).exit_code == 0
     assert (tmp_path / "out" / "birch" / "report.html").is_file()
-    (source / "birch" / "portfolio.toml").write_text("broken")
+    write_portfolio(source / "birch", "birch", "broken")
     assert run_batch(source, tmp_path / "out", worker=WORKER).exit_code == 1
     assert not (tmp_path / "out" / "birch").exists()
 
@@ -131,6 +142,36 @@ def test_nothing_to_run_and_taken_folders_are_refused(tmp_path: Path) -> None:
     with pytest.raises(InputError, match="no batch of lossagg wrote"):
         run_batch(source, tmp_path / "taken")
     assert not (tmp_path / "out").exists()
+
+
+def test_two_portfolios_of_one_name_stop_the_batch_before_anything_runs(tmp_path: Path) -> None:
+    source = portfolios(tmp_path / "in", alder="", birch="", cedar="", oak="", pine="")
+    write_portfolio(source / "cedar", " Alder", "")
+    write_portfolio(source / "pine", "oak", "")
+    with pytest.raises(InputError) as error:
+        run_batch(source, tmp_path / "out", worker=WORKER)
+    text = str(error.value)
+    assert "2 portfolios of the folder bear the same name" in text
+    assert "alder/portfolio.toml and cedar/portfolio.toml" in text
+    assert "also: oak/portfolio.toml, pine/portfolio.toml" in text
+    assert "birch" not in text
+    assert not (tmp_path / "out").exists()
+
+
+def test_a_broken_file_has_no_name_and_stops_itself_only(tmp_path: Path) -> None:
+    source = portfolios(tmp_path / "in", alder="", birch="")
+    for name, content in (("cedar", b"name = "), ("oak", b"\xff\xfe"), ("pine", b"portfolio = 3")):
+        (source / name).mkdir()
+        (source / name / "portfolio.toml").write_bytes(content)
+    assert twins_of(source, ["alder", "birch", "cedar", "oak", "pine", "none"], "portfolio.toml") == {}
+    outcome = run_batch(source, tmp_path / "out", worker=WORKER)
+    assert [entry.status for entry in outcome.record.entries] == [
+        "done",
+        "done",
+        "failed",
+        "failed",
+        "failed",
+    ]
 
 
 def test_interruption_kills_what_runs_and_is_recorded(tmp_path: Path) -> None:

@@ -164,7 +164,8 @@ def test_control_totals_that_are_not_met_are_told_apart(tmp_path: Path) -> None:
 def test_a_hundred_portfolios_one_bad_within_a_minute(tmp_path: Path) -> None:
     first = recorded_portfolio(tmp_path / "all" / "p000")
     for k in range(1, 100):
-        shutil.copytree(first, tmp_path / "all" / f"p{k:03}")
+        copy = shutil.copytree(first, tmp_path / "all" / f"p{k:03}")
+        (copy / "portfolio.toml").write_text(RECORDS.replace("From records", f"Portfolio {k}"))
     (tmp_path / "all" / "p000" / "portfolio.toml").write_text("not a portfolio")
     (tmp_path / "all" / "p050" / "losses.csv").unlink()
     began = time.process_time()
@@ -212,7 +213,7 @@ def test_a_portfolio_that_breaks_the_check_itself_stops_no_other(
 
     monkeypatch.setattr(checking, "check_portfolio", breaking)
     for name in ("a", "b"):
-        recorded_portfolio(tmp_path / name)
+        recorded_portfolio(tmp_path / name, RECORDS.replace("From records", name))
     result = run("check", tmp_path)
     assert result.exit_code == 1
     assert "1 usable, 1 stopped" in result.output

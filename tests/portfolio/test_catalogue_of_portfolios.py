@@ -7,6 +7,7 @@ from folders import GIVEN, RECORDS, given_portfolio, recorded_portfolio
 
 from lossagg.batch.checks import check_folder
 from lossagg.batch.names import result_names
+from lossagg.batch.run import run_batch
 from lossagg.errors import FitError, InputError
 from lossagg.portfolio import read_portfolio
 from lossagg.portfolio.checking import check_portfolio
@@ -134,19 +135,23 @@ def test_51_a_link_out_of_the_folder_is_refused(tmp_path: Path) -> None:
         read_portfolio(folder)
 
 
-def test_61_two_portfolios_of_one_name_are_named_and_do_not_share_a_folder(tmp_path: Path) -> None:
-    """What tells portfolios apart are their folders; results of equal slugs go to different places."""
+def test_61_two_portfolios_of_one_name_stop_and_none_shares_a_folder(tmp_path: Path) -> None:
+    """A batch of them does not begin (tests/batch); results of equal slugs go to different places."""
     for name in ("a", "b"):
         given_portfolio(tmp_path / name)
     given_portfolio(tmp_path / "c", GIVEN.replace("Two lines", "Others"))
     check, _ = check_folder(tmp_path)
     found = {part["folder"]: part["findings"] for part in check["portfolios"]}
     assert [found["a"][0]["message"], found["b"][0]["message"], found["c"]] == [
-        "the portfolio bears the name of that in folder b",
-        "the portfolio bears the name of that in folder a",
+        "the portfolio bears the name of that in b/portfolio.toml",
+        "the portfolio bears the name of that in a/portfolio.toml",
         [],
     ]
-    assert [part["counts"]["warning"] for part in check["portfolios"]] == [1, 1, 0]
+    assert [part["counts"]["stop"] for part in check["portfolios"]] == [1, 1, 0]
+    assert [part["status"] for part in check["portfolios"]] == ["stopped", "stopped", "usable"]
+    with pytest.raises(InputError, match="2 portfolios of the folder bear the same name"):
+        run_batch(tmp_path, tmp_path / "out")
+    assert not (tmp_path / "out").exists()
     assert len(set(result_names(["Pool A", "pool-a", "POOL_A"]).values())) == 3
 
 

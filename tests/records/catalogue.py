@@ -469,7 +469,7 @@ ELSEWHERE = {
             (38, "constant_counts_have_no_negative_binomial"),
             (40, "a_tail_without_a_mean_is_said"),
             (51, "a_link_out_of_the_folder_is_refused"),
-            (61, "two_portfolios_of_one_name_are_named_and_do_not_share_a_folder"),
+            (61, "two_portfolios_of_one_name_stop_and_none_shares_a_folder"),
             (67, "probabilities_that_do_not_sum_to_one_stop"),
         )
     },
