@@ -16,7 +16,13 @@ from lossagg.families.mixture import Mixture
 from lossagg.families.negative_binomial import NegativeBinomial
 from lossagg.families.pareto import Pareto
 from lossagg.families.poisson import Poisson
-from lossagg.families.registry import COUNT_FAMILIES, SIZE_FAMILIES, make_count_law, make_size_law
+from lossagg.families.registry import (
+    COUNT_FAMILIES,
+    SIZE_FAMILIES,
+    make_count_law,
+    make_size_law,
+    with_parameters,
+)
 from lossagg.families.size_table import SizeTable
 from lossagg.families.spliced import Spliced
 from lossagg.families.weibull import Weibull
@@ -50,4 +56,5 @@ __all__ = [
     "ZeroModified",
     "make_count_law",
     "make_size_law",
+    "with_parameters",
 ]

@@ -91,6 +91,45 @@ def make_size_law(family: str, **parameters: Any) -> SizeLaw:
     return _made(_found(family, SIZE_FAMILIES, "size"), {k: _inner(v) for k, v in parameters.items()})
 
 
+def with_parameters(law: Mapping[str, Any], values: Mapping[str, float]) -> dict[str, Any]:
+    """A law as plain data with some of its parameters replaced.
+
+    Args:
+        law: what `to_dict` gives.
+        values: parameters by the names of the law's `parameters`; a dotted name reaches into the laws it is
+            made of. Weights of a mixture that are not named share what is left in proportion.
+    """
+    changed = dict(law)
+    inside: dict[str, dict[str, float]] = {}
+    for name, value in values.items():
+        part, _, rest = name.partition(".")
+        if rest:
+            inside.setdefault(part, {})[rest] = value
+        else:
+            changed[part] = value
+    for part, own in inside.items():
+        if part == "weight":
+            changed["weights"] = _reweighted(changed["weights"], own)
+        elif part == "part":
+            changed["parts"] = [
+                with_parameters(
+                    old,
+                    {n.partition(".")[2]: v for n, v in own.items() if n.partition(".")[0] == str(place)},
+                )
+                for place, old in enumerate(changed["parts"], start=1)
+            ]
+        else:
+            changed[part] = with_parameters(changed[part], own)
+    return changed
+
+
+def _reweighted(weights: Sequence[float], named: Mapping[str, float]) -> list[float]:
+    new = {int(place) - 1: value for place, value in named.items()}
+    others = sum(weight for place, weight in enumerate(weights) if place not in new)
+    ratio = (1.0 - sum(new.values())) / others if others else 1.0
+    return [new.get(place, weight * ratio) for place, weight in enumerate(weights)]
+
+
 def _base(value: Any) -> Any:
     if not isinstance(value, Mapping):
         return value

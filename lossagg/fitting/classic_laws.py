@@ -46,6 +46,9 @@ class ExponentialLikelihood(SizeLikelihood):
     def log_density(self, inner: tuple[Jet, ...], sample: Sample) -> Jet:
         return -(sample.count * log(inner[0]) + sample.sum / inner[0])
 
+    def log_density_at(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
+        return -(points / inner[0] + log(inner[0]))
+
     def log_survival(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
         return -(points / inner[0])
 
@@ -126,6 +129,11 @@ class GammaLikelihood(SizeLikelihood):
         known = self.sums(sample)
         per_loss = log_gamma_function(shape) + shape * log(scale)
         return (shape - 1.0) * known.log_sum - known.count * per_loss - known.sum / scale - known.jacobian
+
+    def log_density_at(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
+        shape, scale = inner
+        constant = log_gamma_function(shape) + shape * log(scale)
+        return (shape - 1.0) * np.log(points) - points / scale - constant
 
     def log_survival(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
         return log_gamma_survival(inner[0], np.log(points) - log(inner[1]))

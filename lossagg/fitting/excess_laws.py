@@ -143,6 +143,11 @@ class WeibullLikelihood(SizeLikelihood):
     def log_density(self, inner: tuple[Jet, ...], sample: Sample) -> Jet:
         return self._density(inner, sample) - sample.count * exp(inner[1])
 
+    def log_density_at(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
+        logs = np.log(points)
+        log_w = (logs - self.reference) * inner[0] + inner[1]
+        return log(inner[0]) + log_w - exp(log_w) - logs
+
     def log_survival(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
         return -exp((np.log(points) - self.reference) * inner[0] + inner[1])
 

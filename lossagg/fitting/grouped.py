@@ -18,12 +18,14 @@ from lossagg.families.base import SizeLaw
 from lossagg.fitting.jet_functions import log_one_minus_exp
 from lossagg.fitting.jets import Jet, variables
 from lossagg.fitting.likelihood import SizeLikelihood
+from lossagg.fitting.mixtures import MIXTURES
 from lossagg.fitting.refit import law_at
 from lossagg.fitting.sample import sample_of
 from lossagg.fitting.severity import climb, likelihood_of, natural_parameters
 
 FAMILIES = (
     *("exponential", "lognormal", "lomax", "gamma", "weibull", "inverse-gaussian", "burr", "log-logistic"),
+    *MIXTURES,
 )
 
 

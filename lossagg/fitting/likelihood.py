@@ -10,7 +10,7 @@ method with exact derivatives.
 from __future__ import annotations
 
 from abc import ABC, abstractmethod
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from functools import reduce
 from operator import add
 from typing import ClassVar, Literal
@@ -20,6 +20,7 @@ import numpy as np
 from lossagg.arrays import FloatArray
 from lossagg.families.base import SizeLaw
 from lossagg.fitting.jets import Jet
+from lossagg.fitting.maximise import Maximum
 from lossagg.fitting.sample import Sample, Weighted
 
 BLOCK = 8192
@@ -72,6 +73,18 @@ class SizeLikelihood(ABC):
             if len(group.points):
                 total = total + sign * summed(lambda points: self.log_survival(inner, points), group)
         return total
+
+    def log_density_at(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
+        """log f at each point, for a family that may be part of a mixture."""
+        raise NotImplementedError(f"the {self.law.family} law is no part of a fitted mixture")
+
+    def model(self, values: Mapping[str, float]) -> SizeLaw:
+        """The law of parameters by name, those held fixed included."""
+        return self.law(**values)
+
+    def ordered(self, maximum: Maximum) -> Maximum:
+        """The same maximum where parts that can change places have theirs."""
+        return maximum
 
     def fixed(self, scale: float) -> dict[str, float]:
         """Parameters of the law that are not estimated, in money."""

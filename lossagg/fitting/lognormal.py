@@ -62,6 +62,11 @@ class LognormalLikelihood(SizeLikelihood):
     def log_density(self, inner: tuple[Jet, ...], sample: Sample) -> Jet:
         return self._density(inner, sample) - sample.count * self._depth(inner)
 
+    def log_density_at(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
+        logs = np.log(points)
+        z = self._standardised(inner, logs)
+        return 0.5 * log(inner[1]) - 0.5 * (z * z) - logs - _HALF_LOG_TWO_PI
+
     def log_survival(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
         return log_normal_survival(self._standardised(inner, np.log(points)))
 

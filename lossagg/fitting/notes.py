@@ -9,6 +9,7 @@ import numpy as np
 from scipy import special
 
 from lossagg.arrays import FloatArray
+from lossagg.families import Mixture
 from lossagg.families.base import SizeLaw
 from lossagg.fitting.sample import Sample
 
@@ -54,6 +55,8 @@ def severity_notes(
             "parameter in AIC and BIC, and its error is not in the standard errors."
         )
         notes.append(Note("borrowed-parameter", text))
+    if isinstance(model, Mixture):
+        notes.append(_parts_note(model, sample))
     if sample.count < FEW:
         text = (
             f"Only {sample.count} uncensored losses: standard errors and intervals rest on "
@@ -70,6 +73,23 @@ def severity_notes(
             )
             notes.append(Note("little-seen", text))
     return (*notes, *_loose(values, covariance))
+
+
+def _parts_note(model: Mixture, sample: Sample) -> Note:
+    seen = np.array(
+        [
+            weight * float(part.sf(sample.floor * sample.scale))
+            for weight, part in zip(model.weights, model.parts, strict=True)
+        ]
+    )
+    losses = sample.observations * float(np.min(seen) / np.sum(seen))
+    text = (
+        f"The smaller part of the mixture stands for about {losses:.0f} of the {sample.observations:g} "
+        "losses. A second part gains more likelihood by chance than AIC takes off for its parameters "
+        "(McLachlan & Peel 2000, Finite Mixture Models, ch. 6): use a single law unless its figures show "
+        "that it does not fit."
+    )
+    return Note("mixture-parts", text)
 
 
 def _repeated(sample: Sample) -> list[Note]:

@@ -62,11 +62,11 @@ def _refitted(
         maximum = climb(objective, [solution.maximum.point], count, family, likelihood)
     except FitError:
         maximum = climb(objective, likelihood.starts(sample), count, family, likelihood, most=1)
-    return law_at(likelihood, maximum.point, sample.scale)
+    return law_at(likelihood, likelihood.ordered(maximum).point, sample.scale)
 
 
 def law_at(likelihood: SizeLikelihood, point: FloatArray, scale: float) -> SizeLaw:
     """The law of a family at coordinates of its likelihood."""
     free = likelihood.natural(likelihood.inner(variables(np.asarray(point))), scale)
     values = {name: float(jet.value[0]) for name, jet in zip(likelihood.ranges, free, strict=True)}
-    return likelihood.law(**values, **likelihood.fixed(scale))
+    return likelihood.model({**values, **likelihood.fixed(scale)})

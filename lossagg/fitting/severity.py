@@ -26,6 +26,7 @@ from lossagg.fitting.likelihood import SizeLikelihood, log_likelihood
 from lossagg.fitting.log_laws import LogGammaLikelihood, LogLogisticLikelihood
 from lossagg.fitting.lognormal import LognormalLikelihood
 from lossagg.fitting.maximise import Maximum, Objective, evaluate, maximise
+from lossagg.fitting.mixtures import MIXTURES, mixture_likelihood
 from lossagg.fitting.notes import severity_notes, tail_index_interval
 from lossagg.fitting.results import SeverityFit
 from lossagg.fitting.sample import Sample, checked_losses, checked_weights, sample_of
@@ -43,6 +44,7 @@ FAMILIES = (
     "burr",
     "log-logistic",
     "log-gamma",
+    *MIXTURES,
 )
 _ORIGINS = {"pareto": "minimum", "generalized-pareto": "threshold", "log-gamma": "minimum"}
 _HELD = {**_ORIGINS, "gamma": "shape"}
@@ -70,7 +72,9 @@ def fit_severity(
     Args:
         losses: amounts above 0, shape (n,); for a censored loss, the amount at which it stopped.
         family: "exponential", "lognormal", "pareto", "lomax", "generalized-pareto", "gamma",
-            "weibull", "inverse-gaussian", "burr", "log-logistic" or "log-gamma".
+            "weibull", "inverse-gaussian", "burr", "log-logistic" or "log-gamma"; or a mixture of two laws,
+            "exponential-mixture", "lognormal-mixture", "gamma-mixture", "weibull-mixture" or
+            "gamma-lognormal-mixture".
         truncation: the reporting threshold, one number or one per loss; None or 0 where every loss
             was recorded. A loss equal to its threshold counts as recorded.
         censored: one boolean per loss, True where the amount stopped at a policy limit.
@@ -97,20 +101,21 @@ def fit_severity(
     require_support(sample, family, len(likelihood.ranges))
     origin = held.get(_ORIGINS.get(family, ""), 0.0)
     _require_excess(amounts, np.maximum(thresholds, origin))
-    maximum = climb(
+    highest = climb(
         lambda point: log_likelihood(likelihood, sample, point),
         _starts(likelihood, sample, family),
         sample.observations,
         family,
         likelihood,
     )
+    maximum = likelihood.ordered(highest)
     inner = likelihood.inner(variables(maximum.point))
     parameters, covariance = natural_parameters(likelihood.natural(inner, sample.scale), maximum)
     names = [*likelihood.ranges, *held]
     complete = np.zeros((len(names), len(names)))
     complete[: len(covariance), : len(covariance)] = covariance
     values = dict(zip(names, [*parameters, *held.values()], strict=True))
-    model = likelihood.law(**values)
+    model = likelihood.model(values)
     solution = Solution(likelihood, sample, maximum)
     span = index_interval(solution, values, complete)
     return SeverityFit(
@@ -176,6 +181,8 @@ def likelihood_of(family: str, sample: Sample, fixed: Mapping[str, float]) -> tu
         return _with_origin(family, sample, fixed)
     if family == "gamma" and fixed:
         return GammaOfShapeLikelihood(require_positive(fixed["shape"], "shape")), False
+    if family in MIXTURES:
+        return mixture_likelihood(family, sample), False
     makers: dict[str, Callable[[], SizeLikelihood]] = {
         "exponential": ExponentialLikelihood,
         "lognormal": lambda: LognormalLikelihood.about(sample),

@@ -16,6 +16,7 @@ from lossagg.errors import InputError, place
 from lossagg.fitting.empirical import EMPIRICAL
 from lossagg.fitting.frequency import FAMILIES as COUNT_FAMILIES
 from lossagg.fitting.severity import FAMILIES as SIZE_FAMILIES
+from lossagg.fitting.spliced import BODIES
 from lossagg.portfolio.assessment import Data
 from lossagg.portfolio.dependences import assumed
 from lossagg.portfolio.files import PORTFOLIO_FILE, LineRecords, portfolio_file, read_records
@@ -268,8 +269,8 @@ def _check_laws(line: LineSection, key: str) -> None:
     if line.severity.fit is None:
         given_severity(line.severity, f"{key}.severity")
     else:
-        bodies = () if line.severity.tail_threshold is None else (EMPIRICAL,)
-        _require_known(line.severity.fit, (*SIZE_FAMILIES, *bodies), f"{key}.severity.fit")
+        known = SIZE_FAMILIES if line.severity.tail_threshold is None else (*BODIES, EMPIRICAL)
+        _require_known(line.severity.fit, known, f"{key}.severity.fit")
 
 
 def _require_known(families: Collection[str], known: Collection[str], key: str) -> None:

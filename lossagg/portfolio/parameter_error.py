@@ -19,7 +19,7 @@ from scipy import special
 
 from lossagg.engines import Fourier
 from lossagg.errors import EngineError, LossaggError
-from lossagg.families import make_count_law, make_size_law
+from lossagg.families import make_count_law, make_size_law, with_parameters
 from lossagg.families.base import CountLaw, SizeLaw
 from lossagg.fitting import Fit
 from lossagg.portfolio.assessment import Data, number
@@ -98,12 +98,6 @@ def _variance(fit: Fit, law: Data, at: Callable[[Data], float]) -> float:
     for place, (name, estimate) in enumerate(fit.parameters.items()):
         step = _STEP * fit.standard_errors[name]
         if step > 0:
-            ends = [at(_replaced(law, name, estimate + sign * step)) for sign in (1.0, -1.0)]
+            ends = [at(with_parameters(law, {name: estimate + sign * step})) for sign in (1.0, -1.0)]
             slopes[place] = (ends[0] - ends[1]) / (2.0 * step)
     return max(float(slopes @ fit.covariance @ slopes), 0.0)
-
-
-def _replaced(law: Data, name: str, value: float) -> Data:
-    """A law as plain data with one parameter replaced; a dotted name reaches into the laws it is made of."""
-    part, _, rest = name.partition(".")
-    return {**law, part: _replaced(law[part], rest, value) if rest else value}

@@ -11,7 +11,6 @@ losses that only a heavy one needs, and the range would be far too wide.
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
-from typing import Any
 
 import numpy as np
 from scipy import special
@@ -20,7 +19,7 @@ from lossagg.arrays import FloatArray
 from lossagg.engines.book import Line
 from lossagg.engines.streams import line_key
 from lossagg.errors import LossaggError
-from lossagg.families import make_count_law, make_size_law
+from lossagg.families import make_count_law, make_size_law, with_parameters
 from lossagg.families.base import CountLaw, SizeLaw
 from lossagg.fitting import Fit
 from lossagg.portfolio.line import LineModel
@@ -72,7 +71,7 @@ def _severity(model: LineModel, random: np.random.Generator) -> SizeLaw:
     fit = model.severities.chosen
     for _ in range(100):
         try:
-            return make_size_law(**_replaced(fit.model.to_dict(), moved(fit, random)))
+            return make_size_law(**with_parameters(fit.model.to_dict(), moved(fit, random)))
         except LossaggError:
             continue
     return model.severity
@@ -89,7 +88,7 @@ def _frequency(model: LineModel, severity: SizeLaw, random: np.random.Generator)
         return model.frequency
     for _ in range(100):
         try:
-            law = make_count_law(**_replaced(fit.model.to_dict(), moved(fit, random)))
+            law = make_count_law(**with_parameters(fit.model.to_dict(), moved(fit, random)))
             if model.rate is not None:
                 own = law.with_exposure(float(np.sum(model.seen)) / seen)
                 return model.rate.redrawn(own, model.forecast_exposure)
@@ -129,12 +128,3 @@ def _step(kind: str, value: float, step: float) -> float:
     if kind == "positive":
         return value * float(np.exp(step))
     return float(special.expit(special.logit(value) + step)) if kind == "probability" else value + step
-
-
-def _replaced(law: dict[str, Any], parameters: dict[str, float]) -> dict[str, Any]:
-    """A law as plain data with parameters replaced; dotted names reach into the laws it is made of."""
-    changed = dict(law)
-    for name, value in parameters.items():
-        part, _, rest = name.partition(".")
-        changed[part] = _replaced(changed[part], {rest: value}) if rest else value
-    return changed

@@ -11,6 +11,7 @@ from hypothesis import strategies as st
 from lossagg.errors import FitError
 from lossagg.fitting import fit_frequency, fit_severity, fit_spliced
 from lossagg.fitting.frequency import FAMILIES as COUNT_FAMILIES
+from lossagg.fitting.mixtures import MIXTURES
 from lossagg.fitting.severity import FAMILIES
 from lossagg.fitting.spliced import BODIES
 
@@ -45,10 +46,24 @@ def check(fit):
     for name in fit.parameters:
         low, high = fit.interval(name)
         assert low <= fit.parameters[name] <= high
-    assert dict(fit.model.parameters) == pytest.approx(dict(fit.parameters))
+    own = fit.model.parameters
+    assert {name: own[name] for name in fit.parameters} == pytest.approx(dict(fit.parameters))
+    assert set(own) - set(fit.parameters) <= {"weight.2"}  # what the first leaves
 
 
-@pytest.mark.parametrize("family", FAMILIES)
+@pytest.mark.parametrize("family", MIXTURES)
+@settings(settings.get_profile("fitting"), max_examples=8)
+@given(sample=samples())
+def test_mixtures(family, sample):
+    losses, thresholds, marks = sample
+    try:
+        fit = fit_severity(losses, family, thresholds, marks)
+    except FitError:
+        return
+    check(fit)
+
+
+@pytest.mark.parametrize("family", [name for name in FAMILIES if name not in MIXTURES])
 @settings(settings.get_profile("fitting"), max_examples=25)
 @given(sample=samples())
 def test_sizes(family, sample):

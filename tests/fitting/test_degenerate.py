@@ -9,7 +9,7 @@ import numpy as np
 import pytest
 
 from lossagg.errors import FitError
-from lossagg.families import make_size_law
+from lossagg.families import make_size_law, with_parameters
 from lossagg.fitting import fit_frequency, fit_severity, fit_spliced
 from lossagg.fitting.frequency import FAMILIES as COUNT_FAMILIES
 from lossagg.fitting.severity import FAMILIES
@@ -93,7 +93,7 @@ def check_certified(fit, losses, thresholds, stopped):
             factor = np.exp(min(0.5 * error / value, 1.0))
             sides = (value / factor, value * factor)
         for side in sides:
-            law = make_size_law(fit.family, **{**fit.parameters, name: side})
+            law = make_size_law(**with_parameters(fit.model.to_dict(), {name: side}))
             assert not law_log_likelihood(law, losses, thresholds, stopped) > here + 1e-7 * abs(here)
 
 
