@@ -8,6 +8,7 @@ of survival, so an interval far in the tail keeps its digits.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -24,7 +25,17 @@ from lossagg.fitting.sample import sample_of
 from lossagg.fitting.severity import climb, likelihood_of, natural_parameters
 
 FAMILIES = (
-    *("exponential", "lognormal", "lomax", "gamma", "weibull", "inverse-gaussian", "burr", "log-logistic"),
+    *(
+        "exponential",
+        "lognormal",
+        "lomax",
+        "gamma",
+        "weibull",
+        "inverse-gaussian",
+        "burr",
+        "log-logistic",
+        "log-gamma",
+    ),
     *MIXTURES,
 )
 
@@ -36,8 +47,8 @@ class GroupedFit:
     Attributes:
         family: its name.
         model: the fitted law, ground-up.
-        parameters: estimates by name.
-        covariance: inverse of the observed information, shape (k, k), in the order of the parameters.
+        parameters: estimates by name, those held fixed last.
+        covariance: inverse of the observed information, shape (k, k), of the k estimates in their order.
         log_likelihood: at the estimates, of the intervals.
         expected: expected number of losses in each interval, shape (m,).
         chi_square: sum of (count - expected)**2 / expected over the intervals.
@@ -54,7 +65,9 @@ class GroupedFit:
     observations: float
 
 
-def fit_grouped(edges: Floats, counts: Floats, family: str) -> GroupedFit:
+def fit_grouped(
+    edges: Floats, counts: Floats, family: str, *, fixed: Mapping[str, float] | None = None
+) -> GroupedFit:
     """Fit a size law to the number of losses in each interval.
 
     Args:
@@ -62,10 +75,13 @@ def fit_grouped(edges: Floats, counts: Floats, family: str) -> GroupedFit:
             the last may be `inf`.
         counts: losses in each interval, at or above 0, shape (m,). Weights need not be whole.
         family: "exponential", "lognormal", "lomax", "gamma", "weibull", "inverse-gaussian",
-            "burr" or "log-logistic".
+            "burr", "log-logistic" or "log-gamma"; or a mixture, see `fit_severity`.
+        fixed: {"minimum": m} for "log-gamma", below the end of the first interval with losses; without it the
+            first edge, where that is above 0.
 
     Raises:
-        InputError: edges that do not ascend, counts that do not match them, an unknown family.
+        InputError: edges that do not ascend, counts that do not match them, an unknown family, a minimum
+            above losses.
         FitError: fewer intervals with losses than parameters and one, or no maximum.
     """
     ends, weights = _checked(edges, counts)
@@ -73,9 +89,10 @@ def fit_grouped(edges: Floats, counts: Floats, family: str) -> GroupedFit:
         raise InputError(
             "unknown family for grouped losses", value=family, remedy=f"Choose one of {', '.join(FAMILIES)}."
         )
-    stand_in = _stand_in(ends, weights)
+    held = _held(ends, weights, family, fixed or {})
+    stand_in = _stand_in(np.maximum(ends, held.get("minimum", 0.0)), weights)
     sample = sample_of(stand_in, np.zeros(stand_in.shape), np.zeros(stand_in.shape, dtype=np.bool_))
-    likelihood, _ = likelihood_of(family, sample, {})
+    likelihood, _ = likelihood_of(family, sample, held)
     filled = int((weights > 0).sum())
     if filled <= len(likelihood.ranges):
         raise FitError(
@@ -99,7 +116,7 @@ def fit_grouped(edges: Floats, counts: Floats, family: str) -> GroupedFit:
     return GroupedFit(
         family=family,
         model=model,
-        parameters=dict(zip(likelihood.ranges, values, strict=True)),
+        parameters={**dict(zip(likelihood.ranges, values, strict=True)), **likelihood.fixed(sample.scale)},
         covariance=covariance,
         log_likelihood=maximum.value,
         expected=expected,
@@ -123,6 +140,21 @@ def _checked(edges: Floats, counts: Floats) -> tuple[FloatArray, FloatArray]:
             remedy=f"Give {len(ends) - 1} counts.",
         )
     return ends, weights
+
+
+def _held(ends: FloatArray, weights: FloatArray, family: str, fixed: Mapping[str, float]) -> dict[str, float]:
+    """The parameters held fixed: the minimum of the log-gamma law."""
+    if family != "log-gamma":
+        return dict(fixed)
+    minimum = float(fixed.get("minimum", ends[0]))
+    lowest = float(ends[1:][weights > 0][0])
+    if not 0 < minimum < lowest:
+        raise InputError(
+            "the log-gamma law needs a minimum above 0 and below the end of the first interval with losses",
+            value=minimum,
+            remedy=f'Give fixed={{"minimum": m}} with m below {lowest:g}.',
+        )
+    return {**fixed, "minimum": minimum}
 
 
 def _stand_in(ends: FloatArray, weights: FloatArray) -> FloatArray:

@@ -2,7 +2,7 @@
 
 import numpy as np
 import pytest
-from scipy import optimize
+from scipy import optimize, stats
 
 from lossagg import Pareto
 from lossagg.errors import FitError, InputError
@@ -100,3 +100,56 @@ def test_groups_that_cannot_be_fitted():
         fit_grouped([0, 1, 2], [3, 4, 5], "gamma")
     with pytest.raises(InputError, match="unknown family for grouped losses"):
         fit_grouped([0, 1, 2], [3, 4], "pareto")
+
+
+def test_log_gamma_against_a_naive_likelihood():
+    """The minimum below the first edge, at it, and within the first interval: the parameters of a Nelder-Mead
+    climb on a likelihood of the intervals written from scipy's gamma law, and its curvature."""
+    losses = 800 * np.exp(stats.gamma(2.5, scale=1 / 2.2).ppf(np.random.default_rng(21).random(1_500)))
+    for first, minimum in ((1_000.0, 800.0), (800.0, None), (0.0, 800.0)):
+        edges = np.array([first, 1_500, 2_500, 4_000, 7_000, 15_000, 50_000, np.inf])
+        counts, _ = np.histogram(losses, edges)
+        held = None if minimum is None else {"minimum": minimum}
+        fit = fit_grouped(edges, counts, "log-gamma", fixed=held)
+
+        def log_likelihood(shape, rate, edges=edges, counts=counts):
+            y = np.log(np.maximum(edges / 800.0, 1.0))
+            survival = stats.gamma(shape, scale=1 / rate).sf(y)
+            return float(np.sum(counts * np.log(-np.diff(survival) / survival[0])))
+
+        found = optimize.minimize(
+            lambda p, target=log_likelihood: -target(*np.exp(p)),
+            np.log([2.0, 2.0]),
+            method="Nelder-Mead",
+            options={"xatol": 1e-9, "fatol": 1e-12},
+        )
+        assert [fit.parameters[name] for name in ("shape", "rate")] == pytest.approx(
+            np.exp(found.x), rel=1e-6
+        )
+        assert fit.parameters["minimum"] == 800.0
+        assert fit.log_likelihood == pytest.approx(-found.fun, abs=1e-9)
+        at, errors = np.exp(found.x), np.sqrt(np.diag(fit.covariance))
+        for name, truth, error in zip(("shape", "rate"), (2.5, 2.2), errors, strict=True):
+            assert abs(fit.parameters[name] - truth) < 4 * error
+        steps = 0.02 * np.diag(errors)
+        curvature = [
+            [
+                log_likelihood(*(at + a - b))
+                + log_likelihood(*(at - a + b))
+                - log_likelihood(*(at + a + b))
+                - log_likelihood(*(at - a - b))
+                for b in steps
+            ]
+            for a in steps
+        ]
+        ours = np.linalg.inv(fit.covariance) * np.outer(errors, errors)
+        assert np.array(curvature) / (4 * 0.02**2) == pytest.approx(ours, rel=1e-3)
+
+
+def test_a_log_gamma_law_without_a_place_to_begin():
+    with pytest.raises(InputError, match="needs a minimum above 0 and below the end of the first interval"):
+        fit_grouped([0, 1_000, 3_000, np.inf], [9, 6, 5], "log-gamma")
+    with pytest.raises(InputError, match="with m below 3000"):
+        fit_grouped([500, 1_000, 3_000, 9_000, np.inf], [0, 6, 5, 4], "log-gamma", fixed={"minimum": 3_000})
+    with pytest.raises(InputError, match="none of its parameters fixed"):
+        fit_grouped(EDGES, COUNTS, "weibull", fixed={"minimum": 1.0})
