@@ -24,7 +24,6 @@ import numpy as np
 
 from lossagg.arrays import FloatArray
 from lossagg.engines.bound import MOMENTS
-from lossagg.engines.running import running_sums
 
 
 @dataclass(frozen=True, eq=False)
@@ -46,11 +45,11 @@ class LimitedMeans:
     @classmethod
     def of(cls, step: float, least: FloatArray, most: FloatArray, gap: FloatArray) -> LimitedMeans:
         """From bounds of P(D > kh) and a bound of the last term above at each point, in steps."""
-        low, high = (
-            step * np.concatenate(([0.0], running_sums(survival)[:-1])) for survival in (least, most)
-        )
-        low, line = low * (1.0 - MOMENTS), high * (1.0 + MOMENTS)
-        return cls(step, low, line + step * np.maximum(gap, 0.0), line)
+        from lossagg.kernels.bounds import limited_means
+
+        low, high, line = (np.empty(len(gap)) for _ in range(3))
+        limited_means((least, most), gap, step, MOMENTS, (low, high, line))
+        return cls(step, low, high, line)
 
     @property
     def top(self) -> float:
@@ -97,24 +96,11 @@ class LimitedMeans:
         Args:
             rounded: about the number of payments a year that do not lie on the lattice.
         """
-        points = len(self.least)
-        index = np.arange(points)
-        reach = self._chords(rounded)
-        back, ahead = np.minimum(reach, index), np.minimum(reach, points - 1 - index)
-        high, low = np.ones(points), np.zeros(points)
-        np.divide(self.most - self.least[index - back], self.step * back, out=high, where=back > 0)
-        np.divide(self.least[index + ahead] - self.most, self.step * ahead, out=low, where=ahead > 0)
-        low, high = np.append(np.clip(low[1:], 0.0, 1.0), 0.0), np.clip(high, 0.0, 1.0)
-        return np.maximum.accumulate(low[::-1])[::-1], np.minimum.accumulate(high)
+        from lossagg.kernels.bounds import chord_slopes, chord_steps
 
-    def _chords(self, rounded: float) -> np.ndarray:
-        """The number of steps d that about balances 2 gap / d against the density times d."""
         points = len(self.least)
-        gaps = (self.most - self.least) / self.step
         middle = int(np.clip(np.sqrt(rounded), 1, max(points // 64, 1)))
-        slope = np.diff(self.line, append=2.0 * self.line[-1] - self.line[-2]) / self.step
-        padded = np.concatenate((np.full(middle, slope[0]), slope, np.full(middle, slope[-1])))
-        density = (padded[: -2 * middle] - padded[2 * middle :]) / (2.0 * middle)
-        steps = np.full(points, points / 4.0)
-        np.sqrt(2.0 * gaps / np.maximum(density, 1e-300), out=steps, where=density > 0)
-        return np.asarray(np.clip(steps, 1.0, max(points // 4, 1)), dtype=np.int64)
+        reach, low, high = (np.empty(points) for _ in range(3))
+        chord_steps(self.least, self.most, self.line, self.step, middle, reach)
+        chord_slopes(self.least, self.most, self.step, reach, low, high)
+        return low, high

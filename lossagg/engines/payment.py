@@ -147,6 +147,8 @@ class PaymentLaw(Payment):
 
     def continuous_sf(self, y: FloatArray) -> FloatArray:
         """P(Y > y and Y is no atom), for increasing y >= 0, shape (n,)."""
+        if len(self.stretches) == 1:
+            return self.stretches[0].sf(y)
         return sum((stretch.sf(y) for stretch in self.stretches), start=np.zeros(y.shape))
 
     def continuous_areas(self, edges: FloatArray) -> FloatArray:

@@ -11,6 +11,9 @@ from lossagg.engines.payment import Payment
 from lossagg.engines.span import places
 
 _NEVER = 1e-30
+# Sixth differences, relative to the value, that leave an average exact to 1e-14.
+_SMOOTH = 3e-12
+_FEW_BLOCKS = 16
 _FIRST = 64
 _NODES, _SHARES = (part / 2.0 for part in np.polynomial.legendre.leggauss(12))
 _NODES = _NODES + 0.5
@@ -85,7 +88,20 @@ class Masses:
 
     @cached_property
     def _averages(self) -> FloatArray:
-        return self._shared(self._payment.continuous_areas(self._edges)) / self._step
+        """The average of the survival function over each cell: from its values at the points where it is
+        smooth, else the law's own integral, which loses digits where the cell is short against the amount."""
+        from lossagg.kernels.cells import BLOCK, cell_averages
+
+        survival = self._survival
+        averages = np.empty(len(survival) - 1)
+        bends = np.ones(-(-len(averages) // BLOCK), dtype=np.bool_)
+        if len(bends) > _FEW_BLOCKS:
+            cell_averages(survival, _SMOOTH, averages, bends)
+        turns = np.flatnonzero(np.diff(bends, prepend=False, append=False)) * BLOCK
+        for first, last in np.minimum(turns, len(averages)).reshape(-1, 2):
+            areas = self._payment.continuous_areas(self._edges[first : last + 1])
+            averages[first:last] = self._shared(areas) / self._step
+        return averages
 
     @cached_property
     def _sampled(self) -> tuple[FloatArray, FloatArray]:

@@ -15,13 +15,19 @@ import numpy as np
 from lossagg.arrays import FloatArray
 from lossagg.engines.compound import CompoundSum
 from lossagg.engines.running import running_sums
-from lossagg.engines.transform import LatticeTransform
+from lossagg.engines.transform import ComplexArray, LatticeTransform
 
 _SAME = 1e-12
 
 
 class TailShares(LatticeTransform):
     """The parts of a sum on a lattice that reaches its quantile."""
+
+    def _product(self, parts: list[ComplexArray]) -> ComplexArray:
+        total = np.ones(self.length // 2 + 1, dtype=np.complex128)
+        for part in parts:
+            total *= part
+        return total
 
     def expected_in_tail(self, level: float, step: float) -> FloatArray:
         """E[X_l; S in the worst 1 - level of years] of every part, the atom at the quantile split fairly.
@@ -38,9 +44,10 @@ class TailShares(LatticeTransform):
         """
         clusters = self._compound.clusters
         counts = [[line.frequency for line in self._of(cluster)] for cluster in clusters]
-        arguments = [[self._even_of(line) for line in self._of(cluster)] for cluster in clusters]
+        everywhere = slice(0, self.length // 2 + 1)
+        arguments = [[self._even_of(line)(everywhere) for line in self._of(cluster)] for cluster in clusters]
         joint = [cluster.pgf(counts[k], arguments[k]) for k, cluster in enumerate(clusters)]
-        total = self._back(self._product([part.copy() for part in joint]), below=True)
+        total = self._back(self._product(joint), below=True)
         below = total.below[0] + running_sums(total.probabilities)
         place = int(np.searchsorted(below, level - _SAME))
         atom = total.probabilities[place]
@@ -49,12 +56,12 @@ class TailShares(LatticeTransform):
         index = np.arange(self.points, dtype=np.float64)
         for own, cluster in enumerate(clusters):
             lines = self._of(cluster)
-            others = self._product([part.copy() for k, part in enumerate(joint) if k != own])
+            others = self._product([part for k, part in enumerate(joint) if k != own])
             for member, (line, part) in enumerate(zip(lines, cluster.members, strict=True)):
                 masses = line.masses
-                biased = self._transform(index * (masses.even + masses.atoms_even))
+                found = index * (masses.even + masses.atoms_even)
+                biased = self._transform(found, below=-masses.under[0])
                 biased = np.zeros_like(others) if biased is None else biased
-                biased -= masses.under[0] / self._shift
                 slope = cluster.slope(counts[own], arguments[own], member, joint[own])
                 brought = self._back(others * biased * slope, below=True)
                 inside = brought.below[0] + float(running_sums(brought.probabilities[: place + 1])[-1])

@@ -16,7 +16,7 @@ here:
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from functools import cached_property
 from typing import NamedTuple
@@ -29,7 +29,6 @@ from lossagg.arrays import FloatArray
 from lossagg.engines.clusters import Cluster, Mixed
 from lossagg.engines.compound import CompoundSum, Part
 from lossagg.engines.limited import LimitedMeans
-from lossagg.engines.running import running_sums
 from lossagg.engines.sampling import Masses, severity_masses
 from lossagg.engines.size_biased import size_biased
 from lossagg.families.base import CountLaw
@@ -41,6 +40,8 @@ _WRAPPED = 1e-15
 _MOST_TILT = 34.0
 _EPSILON = float(np.finfo(float).eps)
 _BINS = 2048
+# Frequencies taken together.
+_AT_ONCE = 2**14
 
 
 @dataclass(frozen=True)
@@ -76,6 +77,32 @@ class Spread(NamedTuple):
         return self.frequency.mean() * float(total)
 
 
+@dataclass(frozen=True)
+class Argument:
+    """The transform of one payment above zero, to be taken piece by piece.
+
+    Attributes:
+        none: probability of no payment.
+        part: transform of masses on the lattice; None where there are none.
+        moved: transform of others that may still be moved; None where there are none.
+        shift: transform of how far they are moved; None where they stay.
+    """
+
+    none: float
+    part: ComplexArray | None
+    moved: ComplexArray | None = None
+    shift: ComplexArray | None = None
+
+    def __call__(self, piece: slice) -> ComplexArray:
+        """Its values at some of the frequencies."""
+        total = np.full(piece.stop - piece.start, self.none, dtype=np.complex128)
+        if self.part is not None:
+            total += self.part[piece]
+        if self.moved is not None:
+            total += self.moved[piece] if self.shift is None else self.moved[piece] * self.shift[piece]
+        return total
+
+
 class LatticeTransform:
     """The transforms of all lines of a sum on one lattice.
 
@@ -103,90 +130,91 @@ class LatticeTransform:
 
     @cached_property
     def _shift(self) -> ComplexArray:
-        """The transform of one step."""
-        angles = np.arange(self.length // 2 + 1) * (-2j * np.pi / self.length)
-        return np.asarray(np.exp(-self._tilt) * exponential(angles))
+        """The transform of one step: a product of two short tables."""
+        near = np.arange(_AT_ONCE) * (-2j * np.pi / self.length)
+        far = np.arange(0, self.length // 2 + 1, _AT_ONCE) * (-2j * np.pi / self.length)
+        table = np.exp(far - self._tilt)[:, None] * exponential(near)
+        return np.asarray(table.reshape(-1)[: self.length // 2 + 1])
 
     def down(self) -> LatticeSum:
         """The sum of payments rounded down."""
-        return self._back(
-            self._product(
-                self._joint(
-                    lambda line: self._total(
-                        line.none,
-                        self._transform(line.masses.down),
-                        self._transform(line.masses.atoms_down),
-                    )
-                )
-            )
-        )
+        lines = [(line.none, line.masses) for line in self.lines]
+        parts = [(none, self._transform(masses.down + masses.atoms_down)) for none, masses in lines]
+        return self._back(self._joint([Argument(*part) for part in parts]))
 
     def sides(self) -> tuple[LatticeSum, LatticeSum]:
         """The sums of payments rounded down and rounded up."""
-        downs, ups = [], []
-        for cluster in self._compound.clusters:
-            lines, lowered, raised = self._of(cluster), [], []
-            for line in lines:
-                masses = line.masses
-                continuous, atoms = self._transform(masses.down), self._transform(masses.atoms_down)
-                lowered.append(self._total(line.none, continuous, atoms))
-                if not np.array_equal(masses.atoms_down, masses.atoms_up):
-                    atoms = self._transform(masses.atoms_up)
-                if continuous is not None:
-                    continuous *= self._shift
-                raised.append(self._total(line.none, continuous, atoms))
-            counts = [line.frequency for line in lines]
-            downs.append(cluster.pgf(counts, lowered))
-            ups.append(cluster.pgf(counts, raised))
-        return self._back(self._product(downs)), self._back(self._product(ups))
+        lowered, raised = [], []
+        for line in self.lines:
+            masses = line.masses
+            continuous, atoms = self._transform(masses.down), self._transform(masses.atoms_down)
+            lowered.append(Argument(line.none, atoms, continuous))
+            if not np.array_equal(masses.atoms_down, masses.atoms_up):
+                atoms = self._transform(masses.atoms_up)
+            raised.append(Argument(line.none, atoms, continuous, self._shift))
+        down = self._back(self._joint(lowered))
+        return down, self._back(self._joint(raised))
 
     def even(self) -> LatticeSum:
         """The sum of payments with their means kept and the sampling corrected."""
-        return self._back(self._product(self._joint(self._even_of)), below=True)
+        return self._back(self._joint([self._even_of(line) for line in self.lines]), below=True)
 
     def limited(self, step: float) -> LimitedMeans | None:
         """Bounds of the limited means from payments moved to the two nearest points with their means kept.
         None where nothing is moved, where the derivative of a count's generating function is not known,
         and for factors that are integrated numerically, whose derivative would take too long.
+
+        What is added to the upper bound may be too large but not too small, so that it may wrap around: half
+        the length is enough, which is every other frequency.
         """
         if not any(line.masses.bulge.any() for line in self.lines):
             return None
-        products: list[ComplexArray] = []
-        rising = np.zeros(0, dtype=np.complex128)
-        mean, spread = 0.0, 0.0
-        for cluster in self._compound.clusters:
-            lines = self._of(cluster)
-            counts = [line.frequency for line in lines]
-            if isinstance(cluster, Mixed) or any(size_biased(count) is None for count in counts):
-                return None
-            ones = [
-                self._total(line.none, self._transform(line.masses.spread + line.masses.atoms_even))
-                for line in lines
-            ]
-            pgf = cluster.pgf(counts, ones)
-            own = np.zeros_like(pgf)
-            for member, line in enumerate(lines):
-                bulge = self._transform(line.masses.bulge)
-                if bulge is not None:
-                    bulge *= cluster.slope(counts, ones, member, pgf)
-                    own += bulge
-            rising = rising * pgf + products[-1] * own if products else own
-            products = [products[-1] * pgf if products else pgf]
-            expected = sum(count.mean() for count in counts)
-            mean += expected
-            spread += float(cluster.covariances(counts, np.ones(len(counts))).sum()) / expected
-        tilted = np.asarray(fft.irfft(rising, self.length, overwrite_x=True))
-        off = self._relative(mean + spread) * _norm(tilted)
-        total = self._back(products[-1])
-        least, most = bounded_survivals(total, self.wrapped)
+        clusters = self._compound.clusters
+        counts = [[line.frequency for line in self._of(cluster)] for cluster in clusters]
+        if any(isinstance(cluster, Mixed) for cluster in clusters) or any(
+            size_biased(count) is None for own in counts for count in own
+        ):
+            return None
+        ones = [
+            Argument(line.none, self._transform(line.masses.spread + line.masses.atoms_even))
+            for line in self.lines
+        ]
+        every = 1 if self.length % 2 else 2
+        length = self.length // every
+        bulges = [self._transform(line.masses.bulge, length) for line in self.lines]
+        joint = np.ones(self.length // 2 + 1, dtype=np.complex128)
+        rising = np.zeros(length // 2 + 1, dtype=np.complex128)
+        for piece in self._pieces():
+            own = slice(-(-piece.start // every), -(-piece.stop // every))
+            total, slope = joint[piece], rising[own]
+            for cluster, laws in zip(clusters, counts, strict=True):
+                arguments = [ones[place](piece) for place in cluster.members]
+                pgf = cluster.pgf(laws, arguments)
+                few, one = pgf[::every], [argument[::every] for argument in arguments]
+                slope *= few
+                for member, place in enumerate(cluster.members):
+                    bulge = bulges[place]
+                    if bulge is not None:
+                        brought = cluster.slope(laws, one, member, few)
+                        slope += bulge[own] * brought * total[::every]
+                total *= pgf
+        tilted = np.asarray(fft.irfft(rising, length, overwrite_x=True))
+        off = self._relative(sum(self._seen(cluster) for cluster in clusters)) * _norm(tilted)
+        least, most = bounded_survivals(self._back(joint), self.wrapped)
         return LimitedMeans.of(step, least, most, (tilted[: self.points] + off) / self._weights)
+
+    def _seen(self, cluster: Cluster) -> float:
+        """Expected number of losses of a year, and of the others beside one of them."""
+        counts = [line.frequency for line in self._of(cluster)]
+        expected = sum(count.mean() for count in counts)
+        return expected + float(cluster.covariances(counts, np.ones(len(counts))).sum()) / expected
 
     def atoms(self) -> tuple[FloatArray, float]:
         """Probabilities of sums made of atoms alone, shape (n,), and the probability of any other sum."""
         log_atoms = self._log_joint([line.none + line.atom for line in self.lines])
         if any(line.masses.atoms_even.any() for line in self.lines):
-            parts = self._joint(lambda line: self._total(line.none, self._transform(line.masses.atoms_even)))
-            alone = self._back(self._product(parts)).probabilities
+            parts = [Argument(line.none, self._transform(line.masses.atoms_even)) for line in self.lines]
+            alone = self._back(self._joint(parts)).probabilities
             alone = np.where(alone > _EPSILON, alone, 0.0)
         else:
             alone = np.zeros(self.points)
@@ -194,19 +222,24 @@ class LatticeTransform:
         continuous = any(line.masses.even.any() for line in self.lines)
         return alone, float(-np.expm1(log_atoms)) if continuous else 0.0
 
-    def _joint(self, argument: Callable[[Spread], ComplexArray]) -> list[ComplexArray]:
-        """The joint generating function of every cluster, at a transform for each of its lines."""
-        joint = []
-        for cluster in self._compound.clusters:
-            lines = self._of(cluster)
-            joint.append(cluster.pgf([line.frequency for line in lines], [argument(line) for line in lines]))
+    def _pieces(self) -> Iterator[slice]:
+        """Frequencies in pieces that stay in the cache from the transform of payments to that of the sum."""
+        last = self.length // 2 + 1
+        return (slice(first, min(first + _AT_ONCE, last)) for first in range(0, last, _AT_ONCE))
+
+    def _joint(self, arguments: Sequence[Argument]) -> ComplexArray:
+        """The transform of the sum, from that of one payment of each line."""
+        joint = np.ones(self.length // 2 + 1, dtype=np.complex128)
+        clusters = [(one, [line.frequency for line in self._of(one)]) for one in self._compound.clusters]
+        for piece in self._pieces():
+            total = joint[piece]
+            for cluster, counts in clusters:
+                total *= cluster.pgf(counts, [arguments[place](piece) for place in cluster.members])
         return joint
 
-    def _even_of(self, line: Spread) -> ComplexArray:
-        one = self._total(line.none, self._transform(line.masses.even + line.masses.atoms_even))
-        if line.masses.under[0] != 0.0:
-            one += line.masses.under[0] / self._shift
-        return one
+    def _even_of(self, line: Spread) -> Argument:
+        masses = line.masses
+        return Argument(line.none, self._transform(masses.even + masses.atoms_even, below=masses.under[0]))
 
     def _of(self, cluster: Cluster) -> list[Spread]:
         return [self.lines[place] for place in cluster.members]
@@ -223,30 +256,17 @@ class LatticeTransform:
             for cluster in self._compound.clusters
         )
 
-    def _total(self, none: float, *parts: ComplexArray | None) -> ComplexArray:
-        """The transform of one payment: the probability of none and what is on the lattice."""
-        given = [part for part in parts if part is not None]
-        if not given:
-            return np.full(self.length // 2 + 1, none, dtype=np.complex128)
-        total = given[0] + given[1] if len(given) > 1 else given[0] + none
-        if len(given) > 1 and none != 0.0:
-            total += none
-        return np.asarray(total)
-
-    def _product(self, parts: Sequence[ComplexArray]) -> ComplexArray:
-        """The product of transforms; 1 where there are none."""
-        if not parts:
-            return np.ones(self.length // 2 + 1, dtype=np.complex128)
-        total = np.asarray(parts[0])
-        for part in parts[1:]:
-            total = np.multiply(total, part, out=total)
-        return total
-
-    def _transform(self, masses: FloatArray) -> ComplexArray | None:
-        """The transform of masses on the lattice; None where there are none."""
-        if not masses.any():
+    def _transform(
+        self, masses: FloatArray, length: int | None = None, *, below: float = 0.0
+    ) -> ComplexArray | None:
+        """The transform of masses on the lattice, and of one a step below it; None where there are none."""
+        if below == 0.0 and not masses.any():
             return None
-        return np.asarray(fft.rfft(masses * self._weights, self.length))
+        padded = np.zeros(length or self.length)
+        np.multiply(masses, self._weights, out=padded[: self.points])
+        if below != 0.0:
+            padded[-1] = below * np.exp(self._tilt)
+        return np.asarray(fft.rfft(padded, overwrite_x=True))
 
     def _back(self, product: ComplexArray, *, below: bool = False) -> LatticeSum:
         tilted = np.asarray(fft.irfft(product, self.length, overwrite_x=True))
@@ -271,7 +291,8 @@ class LatticeTransform:
         against recursions in extended precision.
         """
         count = sum(line.frequency.mean() for line in self.lines)
-        return np.asarray(self._relative(count) * _norm(tilted) * self._growth + self._lacking)
+        slack = self._relative(count) * _norm(tilted) * self._growth
+        return np.asarray(slack + self._lacking) if np.any(self._lacking) else slack
 
     def _relative(self, count: float) -> float:
         return 4.0 * _EPSILON * float(np.log2(self.length) + count)
@@ -311,18 +332,15 @@ def bounded_survivals(total: LatticeSum, wrapped: float) -> tuple[FloatArray, Fl
     Wrapped mass adds to the probabilities on the lattice, so it can only lower the survival function:
     an upper bound must allow for it.
     """
-    survival = running_sums(total.probabilities)
-    np.subtract(1.0, survival, out=survival)
-    least = survival - total.slack
-    np.minimum.accumulate(np.clip(least, 0.0, 1.0, out=least), out=least)
-    survival += total.slack
-    survival += wrapped
-    most = np.clip(survival, 0.0, 1.0, out=survival)[::-1]
-    return least, np.maximum.accumulate(most)[::-1]
+    from lossagg.kernels.bounds import survival_bounds
+
+    least, most = np.empty(len(total.slack)), np.empty(len(total.slack))
+    survival_bounds(total.probabilities, total.slack, wrapped, least, most)
+    return least, most
 
 
 def _norm(values: FloatArray) -> float:
-    return float(np.sqrt(np.dot(values, values)))
+    return float(np.sqrt(np.einsum("i,i", values, values)))
 
 
 def _spread(part: Part, step: float, points: int) -> Spread:

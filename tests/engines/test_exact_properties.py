@@ -173,7 +173,9 @@ def test_two_engines_on_one_lattice(cover):
         assert sums[0][seen] == pytest.approx(sums[1][seen], rel=1e-6)
     for name in ("least", "most"):
         ours, theirs = (getattr(loss.limited, name) for loss in (fourier, panjer))
-        assert ours == pytest.approx(theirs, rel=2e-9)
+        # What the transform adds to the upper bound may wrap around: too large by this much at most.
+        assert ours == pytest.approx(theirs, rel=1e-8)
+        assert ours[1:] == pytest.approx(theirs[1:], rel=2e-9)
     gaps = [loss.limited.most - loss.limited.line for loss in (fourier, panjer)]
     assert gaps[0] == pytest.approx(gaps[1], rel=1e-6, abs=1e-8 * gaps[1].max())
     for level in (0.5, 0.9, 0.99, 0.995):
