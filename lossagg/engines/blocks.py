@@ -70,12 +70,12 @@ class PreparedLine:
 
 
 def prepare_line(line: Line, book: Book, subjects: tuple[Subject, ...]) -> PreparedLine:
-    """Samplers and columns of a line of a book."""
-    return prepare_columns(line, line_columns(book, line.name, subjects))
+    """Tables and columns of a line of a book."""
+    return prepare_sums(line, line_columns(book, line.name, subjects))
 
 
-def prepare_columns(line: Line, columns: LineColumns) -> PreparedLine:
-    """Samplers of a line, with the columns to add up."""
+def prepare_sums(line: Line, columns: LineColumns) -> PreparedLine:
+    """Tables of a line, for whatever is to be added up of its losses."""
     return PreparedLine(
         line.name,
         line_key(line.name),

@@ -13,7 +13,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from lossagg.arrays import FloatArray
-from lossagg.engines.blocks import PreparedLine, line_sums, prepare_columns
+from lossagg.engines.blocks import PreparedLine, line_sums, prepare_sums
 from lossagg.engines.book import Book, Line
 from lossagg.engines.executors import UNDER_WAY, on_executor
 from lossagg.engines.sampled import SimulatedAnnualLoss
@@ -148,7 +148,7 @@ class _Columns:
     def line(self, number: int, line: Line) -> PreparedLine:
         rows = [row for events, k in self.place.items() for row in ramps(events[number], k)]
         columns = LineColumns({}, np.array(rows, dtype=np.float64).reshape(-1, 5), self.count)
-        return prepare_columns(line, columns)
+        return prepare_sums(line, columns)
 
 
 class _Room:
