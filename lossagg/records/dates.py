@@ -25,6 +25,7 @@ DateArray = npt.NDArray[np.datetime64]
 
 _TIME = r"(?P<time>[T ]\d{2}:\d{2}(?::\d{2}(?:[.,]\d+)?)?)?(?P<zone> ?(?:Z|[+-]\d{2}:?\d{2}))?"
 _ISO = r"^(?P<year>\d{4})-(?P<month>\d{2})-(?P<day>\d{2})" + _TIME + "$"
+_NO_TIME = r"^.(2[4-9]|[3-9]\d):|:[6-9]\d"  # 24:00 too: it may be either of two days
 _MONTHS = ("jan", "feb", "mar", "apr", "may", "jun", "jul", "aug", "sep", "oct", "nov", "dec")
 _PARTS = {
     "%Y": r"(?P<year>\d{4})",
@@ -41,7 +42,7 @@ class Dates:
     Args:
         values: days; NaT where there is no date.
         missing: True where the cell is empty or carries a marker for "not known".
-        impossible: True where year, month and day are given but there is no such day.
+        impossible: True where year, month and day are given but there is no such day, or no such time of it.
         zoned: True where the cell is a date-time with a zone, and none is declared.
         moved: True where the day is that of the declared zone.
         timed: True where the cell had a time of day, which is let go.
@@ -118,6 +119,7 @@ def _parse_texts(texts: Any, pattern: str | None, zone: ZoneInfo | None) -> Date
     zoned = as_mask(pc.not_equal(parts["zone"], ""))
     year, month, day = (_integers(parts[name]) for name in ("year", "month", "day"))
     values, possible = _days(year, month, day)
+    possible &= as_mask(pc.invert(pc.match_substring_regex(parts["time"], pattern=_NO_TIME)))
     good = matched & possible & ~zoned
     values[~good] = np.datetime64("NaT")
     moved = zoned & possible if zone is not None and pattern is None else np.zeros(len(values), np.bool_)
@@ -191,6 +193,8 @@ def _extract(text: Any, pattern: str) -> dict[str, Any]:
     if "name" in parts:
         number = pc.add(pc.index_in(pc.utf8_lower(parts.pop("name")), value_set=pa.array(_MONTHS)), 1)
         parts["month"] = pc.cast(pc.fill_null(number, 0), pa.string())
+        # A month that is no English abbreviation is of another format, not a day that does not exist.
+        parts["year"] = pc.if_else(pc.is_null(number), "", parts["year"])
     return parts
 
 

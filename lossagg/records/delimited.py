@@ -179,6 +179,13 @@ def _headings(reader: Reader, text: str, delimiter: str, file: str) -> tuple[str
             where=place(file=file, row=None if headings is None else 1),
             remedy="The first row must hold the headings.",
         )
+    if headings[0].lower().startswith("sep="):
+        raise InputError(
+            "the first line tells a spreadsheet the delimiter and holds no headings",
+            where=place(file=file, row=1),
+            value=f"sep={delimiter}",
+            remedy="Delete that line: the first row must hold the headings.",
+        )
     return tuple(heading.strip() for heading in headings)
 
 

@@ -32,7 +32,7 @@ _NUMBER_REMEDY = (
     'Write plain numbers with a decimal point, or declare the marks of the file: decimal = "," or '
     'thousands = ",". Units, signs and brackets are not guessed.'
 )
-_DATE_REMEDY = 'Write dates as YYYY-MM-DD, or declare the format, for example date_format = "%d/%m/%Y".'
+_DATE_REMEDY = 'Write dates as YYYY-MM-DD, or declare the format, for example date-format = "%d/%m/%Y".'
 
 
 @dataclass
@@ -134,7 +134,7 @@ def _date(
             "set aside",
             name,
             dates.impossible & live,
-            f"the {name} names a day that does not exist",
+            f"the {name} names a day, or a time, that does not exist",
             "Correct the date.",
         ),
         Fault(
@@ -143,7 +143,7 @@ def _date(
             name,
             dates.zoned & live,
             f"the {name} carries a time zone, so its day here is not known",
-            "Export local dates without a zone, or declare time_zone, the zone the days are meant in.",
+            "Export local dates without a zone, or declare time-zone, the zone the days are meant in.",
         ),
         Fault(
             "time-of-day",

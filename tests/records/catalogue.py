@@ -89,6 +89,14 @@ TEXT_CASES = [
         "stop",
         "the delimiter is ambiguous: comma and semicolon both divide the rows alike",
     ),
+    Case(
+        4,
+        "a first line for spreadsheets",
+        "sep=;\n" + _table(GOOD).replace(",", ";"),
+        "stop",
+        "the first line tells a spreadsheet the delimiter and holds no headings, in file losses.csv, row 1; "
+        "seen: 'sep=;'. Delete that line",
+    ),
     *(
         Case(5, f"decimal comma {cell}", _with(cell), "stop", f"{PLAIN_NUMBER}'{cell}'")
         for cell in ("1.234,56", "1,234")
@@ -208,7 +216,19 @@ TEXT_CASES = [
     Case(19, "year 0205", _with("0205-03-04", "date"), "set aside", "the date is before March 1900"),
     Case(19, "year 2925", _with("2925-03-04", "date"), "set aside", "the date is after the valuation date"),
     Case(19, "a future loss", _with("2026-03-04", "date"), "set aside", "the date is after the valuation"),
-    Case(20, "31 February", _with("2024-02-31", "date"), "set aside", "the date names a day that does not"),
+    Case(
+        17,
+        "a month in another language",
+        _table("7,01 Mar 2024\n8,02 Dez 2024"),
+        "stop",
+        "the date is not in the declared format '%d %b %Y', in file losses.csv, row 3",
+        options={"date_format": "%d %b %Y"},
+    ),
+    *(
+        Case(20, f"the time {time}", _with(f"2024-03-02T{time}", "date"), "set aside", "that does not exist")
+        for time in ("24:00", "25:10:00", "23:60", "23:59:60")
+    ),
+    Case(20, "31 February", _with("2024-02-31", "date"), "set aside", "the date names a day, or a time,"),
     Case(
         20,
         "a zone undeclared",

@@ -52,7 +52,7 @@ def test_the_error_names_row_column_value_remedy_and_every_place(read) -> None:
         'plain numbers with a decimal point, or declare the marks of the file: decimal = "," or thousands = '
         '",". Units, signs and brackets are not guessed. 3 rows have this fault: rows 2, 3, 4. Also: the '
         "date is not a date written YYYY-MM-DD (row 3). Write dates as YYYY-MM-DD, or declare the format, "
-        'for example date_format = "%d/%m/%Y".'
+        'for example date-format = "%d/%m/%Y".'
     )
     assert [finding.row for finding in error.value.findings] == [2, 3, 4, 3]
     assert error.value.exit_code == 2
@@ -149,7 +149,7 @@ def test_digits_beyond_float64_are_counted_and_warned_of(check) -> None:
 def test_dates_in_other_forms_stop(read, text: str) -> None:
     with pytest.raises(RecordsError, match=r"the date is not a date written YYYY-MM-DD, in .*row 2") as error:
         read(f"amount,date\n1,{text}\n")
-    assert "date_format" in str(error.value)
+    assert "date-format" in str(error.value)
 
 
 @pytest.mark.parametrize(
