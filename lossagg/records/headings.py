@@ -15,6 +15,10 @@ MOST_COLUMNS = 10_000
 INVISIBLE = re.compile("[\u200b\u200c\u200d\u2060\ufeff\u00ad]")
 _LIKE_DATA = re.compile(r"^[+-]?\d[\d.,]*$|^\d{1,4}[-/.]\d{1,2}[-/.]\d{1,4}")
 
+_NO_HEADINGS = (
+    "No cell of the first row is like a heading known here: remove notes above the headings, or add headings."
+)
+
 
 @dataclass(frozen=True)
 class Wanted:
@@ -82,7 +86,7 @@ def locate_columns(
             positions[key] = position
     for name in wanted.required:
         if name not in positions:
-            raise _missing(name, headings, where)
+            raise _missing(name, headings, wanted, where)
     return positions
 
 
@@ -163,13 +167,23 @@ def _mapped(name: str, heading: str, headings: Sequence[str], wanted: Wanted, wh
         f"the column mapping names a heading for {name!r} that is not in the file",
         where=where,
         value=heading,
-        remedy=nearest(heading, headings),
+        remedy=nearest(heading, headings) if _has_headings(headings, wanted) else _NO_HEADINGS,
     )
 
 
-def _missing(name: str, headings: Sequence[str], where: str) -> InputError:
+def _has_headings(headings: Sequence[str], wanted: Wanted) -> bool:
+    """Whether some cell of the first row is like a name that is understood; else it is a note or a record,
+    and what is personal in it must not be repeated."""
+    return any(
+        get_close_matches(heading_key(heading), wanted.kinds, n=1, cutoff=0.75) for heading in headings
+    )
+
+
+def _missing(name: str, headings: Sequence[str], wanted: Wanted, where: str) -> InputError:
     if any(_LIKE_DATA.match(heading) for heading in headings):
         remedy = "The first row looks like data: add a row of headings above it."
+    elif not _has_headings(headings, wanted):
+        remedy = f'{_NO_HEADINGS} If they are headings, map them: {name} = "...".'
     else:
         remedy = f'{nearest(name, headings)} Rename the heading or map it: {name} = "...".'
     return InputError(f"the required column {name!r} is missing", where=where, remedy=remedy)

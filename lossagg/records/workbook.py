@@ -79,6 +79,13 @@ def _read_sheet(path: Path, sheet: Any, marks: dict[str, bool], layout: Layout, 
             "Unhide them and check that they belong to the records.",
             warn=True,
         )
+    if marks["connected"]:
+        builder.note(
+            "data-connection",
+            "the workbook fetches data from elsewhere; the values stored in it are read, whatever their age",
+            "Refresh and save it, or paste the values.",
+            warn=True,
+        )
     if hidden := _hidden_sheets(sheet):
         builder.note(
             "hidden-sheets",
@@ -238,12 +245,14 @@ def _choose_sheet(book: Any, wanted: str | None, file: str) -> Any:
 
 
 def _marks(path: Path, sheet: Any) -> dict[str, bool]:
-    """Look into the stored sheet for what the fast reader hides: formulas, merged and hidden cells."""
+    """Look for what the fast reader hides: formulas, merged and hidden cells, connections."""
     found = {"formula": False, "merged": False, "hidden": False}
     patterns = {"formula": _FORMULA, "merged": _MERGED, "hidden": _HIDDEN}
     for window in _windows(path, sheet._worksheet_path):
         for name, pattern in patterns.items():
             found[name] = found[name] or pattern.search(window) is not None
+    with zipfile.ZipFile(path) as package:
+        found["connected"] = any(name.lower() == "xl/connections.xml" for name in package.namelist())
     return found
 
 

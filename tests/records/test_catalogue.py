@@ -67,6 +67,14 @@ def notes(path: Path, **options: object) -> list[tuple[str, str]]:
     return [(finding.code, str(finding)) for finding in checked.findings]
 
 
+def test_49_a_workbook_that_fetches_its_data_is_read_as_stored_and_said(tmp_path: Path) -> None:
+    path = repacked(
+        workbook(tmp_path / "a.xlsx", [[5, DAY], [6, DAY]]), xl__connections_dot_xml=b"<connections/>"
+    )
+    found = dict(notes(path))["data-connection"]
+    assert found.startswith("the workbook fetches data from elsewhere; the values stored in it are read")
+
+
 def test_13_whole_numbers_of_a_parquet_file_become_floats(tmp_path: Path) -> None:
     """An integer grid truncates silently later on; the table is all float64 and the sum exact."""
     amounts = pa.array([7, 2**53 + 1], pa.int64())

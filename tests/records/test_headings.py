@@ -53,6 +53,18 @@ def test_file_without_headings_is_recognised_and_its_data_not_echoed(read) -> No
     assert "Miller" not in str(error.value)
 
 
+@pytest.mark.parametrize("columns", [{}, {"amount": "Cost"}])
+def test_a_first_row_that_is_a_note_or_a_record_is_not_echoed(read, columns) -> None:
+    """Nothing in it is like a heading, so it may be about a person."""
+    for first in ("Extract for Jane Miller,x", "Jane Miller,12 Main Street"):
+        with pytest.raises(InputError, match="No cell of the first row is like a heading") as error:
+            read(f"{first}\nJohn Smith,y\n", columns=columns)
+        assert "Miller" not in str(error.value)
+        assert "Street" not in str(error.value)
+    with pytest.raises(InputError, match="There are 'date', 'cost'"):
+        read("date,cost\n2024-01-01,5\n")
+
+
 def test_empty_heading_stops(read) -> None:
     with pytest.raises(InputError, match=r"the heading of column 2 of 3 is empty, in file losses.csv, row 1"):
         read("amount, ,date\n1,2,2024-01-01\n")
