@@ -62,6 +62,11 @@ class Schedule:
         return self.starts == (0.0,) and self.slopes == (1.0,) and self.values == (0.0,)
 
     @property
+    def is_proportional(self) -> bool:
+        """Whether every loss is paid in the same proportion."""
+        return self.starts == (0.0,) and self.values == (0.0,)
+
+    @property
     def most(self) -> float:
         """The largest payment possible, `inf` where it grows with the loss."""
         if self.slopes[-1] > 0:

@@ -20,8 +20,9 @@ from lossagg.engines.book import Book, Line, Subject
 from lossagg.engines.joint import ALONE, JointBlock, joint_block
 from lossagg.engines.quantile_table import QuantileTable, quantile_table
 from lossagg.engines.search_table import CountSampler, count_sampler
+from lossagg.engines.shocks import ShockLosses, joint_payments, shock_losses
 from lossagg.engines.streams import BLOCK_YEARS, block_entropy, block_state, line_key
-from lossagg.engines.yearly import LOSS, LineColumns, annual_amounts, line_columns
+from lossagg.engines.yearly import LARGEST, LOSS, LineColumns, annual_amounts, line_columns
 from lossagg.families import Poisson
 from lossagg.families.base import CountLaw
 from lossagg.kernels.simulation import (
@@ -45,6 +46,7 @@ from lossagg.kernels.simulation import (
 )
 
 NOTES = 2**13
+YearSums = dict[tuple[str, str], FloatArray]
 MOST_SCATTERED = 1.0  # losses a year up to which scattering them is the faster way, with several covers too
 
 
@@ -103,13 +105,38 @@ def run_block(
 ) -> dict[Subject, FloatArray]:
     """Simulate one block of years: the annual amount of every subject, shape (years,)."""
     joint = joint_block(book.lines, book.dependences, seed=seed, block=block)
-    sums = {}
+    sums: dict[str, YearSums] = {}
     for line in lines:
         annual = line_sums(line, joint, seed=seed, block=block, years=years)
         if line.name in joint.ranks:
             annual = annual[:, joint.source(line.name, annual[line.columns.column[LOSS]])]
         sums[line.name] = {key: annual[column] for key, column in line.columns.column.items()}
-    return annual_amounts(book, subjects, sums)
+    if not joint.shocks:
+        return annual_amounts(book, subjects, sums)
+    tables = {line.name: line.sizes for line in lines}
+    shocks = shock_losses(book, tables, joint, seed=seed, block=block)
+    together = [_add_shocks(book, own.between(0, years), sums, years) for own in shocks]
+    return annual_amounts(book, subjects, sums, together)
+
+
+def _add_shocks(book: Book, shock: ShockLosses, sums: dict[str, YearSums], years: int) -> FloatArray:
+    """Add the events of a common shock to the sums of its lines; the largest cost of one in each year."""
+    payments, costs = joint_payments(book, shock.losses), np.zeros(shock.year.size)
+    for name in sorted(shock.losses):
+        cost = book.line(name).cost(shock.losses[name])
+        costs += cost
+        for key, before in sums[name].items():
+            kind, cover = key
+            if key == LARGEST:
+                largest = before.copy()
+                np.maximum.at(largest, shock.year, shock.losses[name])
+                sums[name][key] = largest
+                continue
+            own = cost if key == LOSS else getattr(payments[cover], kind)[name]
+            sums[name][key] = before + np.bincount(shock.year, own, years)
+    largest = np.zeros(years)
+    np.maximum.at(largest, shock.year, costs)
+    return largest
 
 
 def numbered_block(
@@ -151,7 +178,7 @@ def line_sums(
 def block_events(
     line: PreparedLine, joint: JointBlock = ALONE, *, seed: int, block: int, first: int, last: int
 ) -> tuple[IntArray, FloatArray]:
-    """The very losses that `line_sums` adds up, for a replay of single years.
+    """The very losses that `line_sums` adds up, for a replay of single years; without common shocks.
 
     Args:
         line: the line.

@@ -13,7 +13,14 @@ from dataclasses import dataclass, replace
 from functools import cached_property
 
 from lossagg.cover import Schedule
-from lossagg.engines.dependence import Dependence, check_dependences, independent, marginal_frequency, tied
+from lossagg.engines.dependence import (
+    CommonShock,
+    Dependence,
+    check_dependences,
+    independent,
+    marginal_frequency,
+    tied,
+)
 from lossagg.engines.placed import GROSS, NET, Line, PlacedCover, Subject, check_lines, check_places
 from lossagg.errors import EngineError
 
@@ -118,6 +125,23 @@ class Book:
         """Covers named in `after` whose payment is taken off the year, not off single events."""
         return tuple(self.cover(name) for name in cover.after if self.cover(name).terms.has_annual_terms)
 
+    def shock_across(self, cover: PlacedCover) -> CommonShock | None:
+        """The common shock of which a cover, or one before it, sees several lines' losses as one event.
+
+        None too where it pays in proportion, so that the losses might as well come one by one.
+        """
+        for before in (self.cover(name) for name in cover.after):
+            earlier = None if before.terms.has_annual_terms else self.shock_across(before)
+            if earlier is not None and any(self.covers_line(cover, name) for name in earlier.lines):
+                return earlier
+        for shock in self.dependences:
+            if isinstance(shock, CommonShock):
+                own = [self.event_payment(cover, name) for name in shock.lines]
+                paid = [schedule for schedule in own if schedule is not None]
+                if len(paid) > 1 and not all(schedule.is_proportional for schedule in paid):
+                    return shock
+        return None
+
     def event_net(self, line: str) -> Schedule:
         """What all covers without annual terms leave of one event of a line and its expense."""
         left = self.line(line).cost
@@ -140,6 +164,7 @@ class Book:
         if subject == NET:
             return self._net_plan()
         cover = self.cover(subject.name)
+        self.require_single_events(subject, cover)
         if cover.terms.retained_cap < float("inf"):
             raise _simulated_only(subject, "a retained cap depends on two annual sums at once")
         events = {
@@ -157,7 +182,22 @@ class Book:
             seen = seen - earlier.annual
         return Plan(events, cover.terms.annual_schedule().after(seen))
 
+    def require_single_events(self, subject: Subject, *covers: PlacedCover) -> None:
+        """Refuse covers that see the losses of several lines as one event: no schedule by line says that.
+
+        Raises:
+            EngineError: with the name of the shock.
+        """
+        for cover in covers:
+            shock = self.shock_across(cover)
+            if shock is not None:
+                raise _simulated_only(
+                    subject,
+                    f"{cover.name!r} sees what {shock.name!r} costs several lines as one event",
+                )
+
     def _net_plan(self) -> Plan:
+        self.require_single_events(NET, *self.covers)
         events = {line.name: self.event_net(line.name) for line in self.lines}
         annual = Schedule.identity()
         for cover in self.covers:

@@ -3,10 +3,10 @@
 Three kinds. A shared factor multiplies, year by year, the expected number of losses of several lines or
 the size of every loss: what goes wrong with one then goes wrong with all (Wang 1998, "Aggregation of
 correlated risk portfolios", Proceedings of the Casualty Actuarial Society 85). A common shock is an event
-that costs several lines a loss each (Lindskog and McNeil 2003, "Common Poisson shock models", ASTIN
-Bulletin 33). A copula ties the annual totals by their ranks (Embrechts, McNeil and Straumann 2002,
-"Correlation and dependence in risk management"). Shocks and copulas leave each line by itself as it is; a
-factor keeps the mean of each line and adds to its spread.
+that costs several lines a loss each, one event to the covers (Lindskog and McNeil 2003, "Common Poisson
+shock models", ASTIN Bulletin 33). A copula ties the annual totals by their ranks (Embrechts, McNeil and
+Straumann 2002, "Correlation and dependence in risk management"). Shocks and copulas leave each line by
+itself as it is; a factor keeps the mean of each line and adds to its spread.
 """
 
 from __future__ import annotations
@@ -88,8 +88,8 @@ class SharedFactor:
 class CommonShock:
     """Events that cost each of several lines one loss.
 
-    They are part of what the frequency of each line says, which therefore stays as it is. Covers see the
-    loss of each line by itself.
+    They are part of what the frequency of each line says, which therefore stays as it is. A cover of several
+    of these lines sees one event: its deductible and limit act on the sum of what the event costs them.
 
     Args:
         name: its name in reports; the stream of its random numbers derives from it.

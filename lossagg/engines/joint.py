@@ -32,8 +32,9 @@ class JointBlock:
     """One block of years: what its dependences say of each line.
 
     Attributes:
-        counts: per line whose count depends on others, its counts, shape (BLOCK_YEARS,).
-        shocks: per line hit by common shocks, how many of these counts are shocks: the first of the year.
+        counts: per line whose count depends on others, its counts, shape (BLOCK_YEARS,), without the
+            common shocks that hit it.
+        shocks: per line hit by common shocks, their number in each year, shape (BLOCK_YEARS,).
         scale: per line under inflation, the factor on every loss of each year, shape (BLOCK_YEARS,).
         factors: per shared factor, its value in each year, shape (BLOCK_YEARS,).
         ranks: per line under a copula, its scores; the years of the block come in their order.
@@ -87,7 +88,7 @@ def joint_block(
             for name in dependence.lines:
                 own = _Stream(seed, f"other losses\0{name}", block)
                 others = _poisson(np.full(BLOCK_YEARS, max(laws[name].mean() - dependence.rate, 0.0)), own)
-                drawn.counts[name], drawn.shocks[name] = others + shocks, shocks
+                drawn.counts[name], drawn.shocks[name] = others, shocks
         else:
             _share(dependence, laws, drawn, stream, seed=seed, block=block)
     return drawn

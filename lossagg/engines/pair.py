@@ -68,6 +68,7 @@ def pair_plan(book: Book, subject: Subject) -> PairPlan | None:
         EngineError: a retained cap among terms that leave more than two annual sums.
     """
     if subject == NET:
+        book.require_single_events(NET, *book.covers)
         return _net(book)
     if subject.kind != "cover":
         return None
@@ -75,6 +76,7 @@ def pair_plan(book: Book, subject: Subject) -> PairPlan | None:
     terms = cover.terms.year_terms
     if terms.kept is None:
         return None
+    book.require_single_events(subject, cover)
     if book.annual_covers_before(cover):
         raise _too_many(subject, "it comes after a cover with annual terms")
     paid, held = _sums(book, cover)

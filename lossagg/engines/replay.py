@@ -21,6 +21,7 @@ from lossagg.cover.schedule import Schedule
 from lossagg.engines.blocks import PreparedLine, block_events, line_sums, prepare_line, run_block
 from lossagg.engines.book import Book, PlacedCover, Subject
 from lossagg.engines.joint import JointBlock, joint_block
+from lossagg.engines.shocks import JointPayment, ShockLosses, joint_payments, shock_losses
 from lossagg.engines.streams import BLOCK_YEARS
 from lossagg.engines.yearly import LOSS, annual_amounts
 from lossagg.errors import InputError
@@ -50,16 +51,36 @@ class Payment:
 
 
 @dataclass(frozen=True)
-class Event:
-    """One loss of the year.
+class Part:
+    """What an event that hit several lines cost one of them.
 
     Attributes:
-        line: its line.
-        number: 1, 2, ... within the line and year, in the order in which they were drawn.
+        line: the line.
+        size: its loss, without adjustment expense.
+        cost: its loss with its adjustment expense.
+        paid: by cover of the line, its part of what the event adds to the cover's year.
+        kept: by cover of the line, its part of what the cover's deductible keeps of the event.
+    """
+
+    line: str
+    size: float
+    cost: float
+    paid: Mapping[str, float]
+    kept: Mapping[str, float]
+
+
+@dataclass(frozen=True)
+class Event:
+    """One event of the year: a loss of a line, or of several lines at once.
+
+    Attributes:
+        line: its line; the names of all it hit, joined by " + ", where these are several.
+        number: 1, 2, ... within `line` and the year, in the order in which they were drawn.
         size: the loss, without adjustment expense.
         cost: the loss with its adjustment expense.
-        shock: whether it is part of an event that also hit other lines.
-        payments: by cover of the line.
+        shock: whether it hit several lines at once.
+        payments: by cover of any of its lines.
+        parts: what it cost each line where it hit several.
     """
 
     line: str
@@ -68,6 +89,13 @@ class Event:
     cost: float
     shock: bool
     payments: tuple[Payment, ...]
+    parts: tuple[Part, ...] = ()
+
+    def cost_of(self, line: str) -> float:
+        """What it cost a line."""
+        if not self.parts:
+            return self.cost if self.line == line else 0.0
+        return sum(part.cost for part in self.parts if part.line == line)
 
 
 @dataclass(frozen=True)
@@ -76,7 +104,7 @@ class ReplayedYear:
 
     Attributes:
         year: its number, from 1.
-        events: line by line.
+        events: line by line, then those that hit several lines.
         covers: what each cover paid of the year.
         amounts: the annual amount of every subject of the book.
         factors: the value of each shared factor.
@@ -124,11 +152,12 @@ class Replay:
         for line in self._lines:
             source = int(self._sources(block, line)[place])
             _, sizes = block_events(line, joint, seed=self.seed, block=block, first=source, last=source + 1)
-            shocks = int(joint.shocks[line.name][source]) if line.name in joint.shocks else 0
             terms, cost = _event_terms(book, line.name), book.line(line.name).cost
             events += [
-                _event(cost, terms, line.name, k, float(size), k <= shocks) for k, size in enumerate(sizes, 1)
+                _event(cost, terms, line.name, k, float(size)) for k, size in enumerate(sizes, start=1)
             ]
+        for shock in self._shocks(block):
+            events += shocked_events(book, shock.between(place, place + 1))
         amounts = annual_amounts(book, book.subjects, _sums(book, events))
         return ReplayedYear(
             year=number,
@@ -153,6 +182,17 @@ class Replay:
     @cached_property
     def _lines(self) -> tuple[PreparedLine, ...]:
         return tuple(prepare_line(line, self.book, self.book.subjects) for line in self.book.lines)
+
+    def _shocks(self, block: int) -> tuple[ShockLosses, ...]:
+        if block not in self._drawn:
+            tables = {line.name: line.sizes for line in self._lines}
+            joint = self._joint(block)
+            self._drawn[block] = shock_losses(self.book, tables, joint, seed=self.seed, block=block)
+        return self._drawn[block]
+
+    @cached_property
+    def _drawn(self) -> dict[int, tuple[ShockLosses, ...]]:
+        return {}
 
     @cached_property
     def _found(self) -> dict[tuple[int, str], IntArray]:
@@ -211,11 +251,52 @@ def _event_terms(book: Book, line: str) -> tuple[_EventTerms, ...]:
     return tuple(_terms_of(book, cover, line) for cover in book.covers if book.covers_line(cover, line))
 
 
-def _event(
-    cost: Schedule, terms: tuple[_EventTerms, ...], line: str, number: int, size: float, shock: bool
-) -> Event:
+def _event(cost: Schedule, terms: tuple[_EventTerms, ...], line: str, number: int, size: float) -> Event:
     payments = tuple(own.payment(size) for own in terms)
-    return Event(line, number, size, _at(cost, size), shock, payments)
+    return Event(line, number, size, _at(cost, size), False, payments)
+
+
+def shocked_events(book: Book, shock: ShockLosses) -> list[Event]:
+    """The events of a common shock: what each cost its lines, and what the covers paid of the whole of it."""
+    payments = joint_payments(book, shock.losses)
+    found = []
+    for k in range(shock.year.size):
+        parts = tuple(
+            Part(
+                name,
+                float(own[k]),
+                _at(book.line(name).cost, float(own[k])),
+                {cover: float(paid.paid[name][k]) for cover, paid in payments.items() if name in paid.paid},
+                {cover: float(paid.kept[name][k]) for cover, paid in payments.items() if name in paid.kept},
+            )
+            for name, own in shock.losses.items()
+        )
+        paid = tuple(_joint_payment(book, book.cover(name), own, k) for name, own in payments.items())
+        size, cost = sum(part.size for part in parts), sum(part.cost for part in parts)
+        found.append(Event(" + ".join(shock.shock.lines), k + 1, size, cost, True, paid, parts))
+    return found
+
+
+def _joint_payment(book: Book, cover: PlacedCover, payment: JointPayment, k: int) -> Payment:
+    """What a cover paid of event k of a common shock, term by term."""
+    terms = cover.terms
+    seen, brought, paid = (
+        sum(float(own[k]) for own in parts.values())
+        for parts in (payment.seen, payment.brought, payment.paid)
+    )
+    lines = " + ".join(payment.seen)
+    before = [name for name in cover.after if not book.cover(name).terms.has_annual_terms]
+    steps = [Step(f"left by {', '.join(before)} of {lines}" if before else lines, seen)]
+    if not np.isclose(brought, seen, rtol=1e-12):
+        steps.append(Step(WORDS["surplus"] if terms.surplus is not None else "with expense", brought))
+    stated = stated_terms(terms)
+    for place, operation in enumerate(terms.event_order, start=1):
+        if operation in stated:
+            left = through(terms, Schedule.identity(), terms.event_order[:place])
+            steps.append(Step(WORDS[operation], _at(left, brought)))
+    if not np.isclose(paid, steps[-1].amount, rtol=1e-12):
+        steps.append(Step("with expense", paid))
+    return Payment(cover.name, tuple(steps), paid)
 
 
 def _terms_of(book: Book, cover: PlacedCover, line: str) -> _EventTerms:
@@ -273,21 +354,26 @@ def _paid_by(cover: str, events: list[Event]) -> float:
 
 
 def _kept_under(book: Book, cover: PlacedCover, events: list[Event]) -> float:
-    kept = {line: book.event_retained(cover, line) for line in {event.line for event in events}}
-    under = ((kept[event.line], event.size) for event in events)
-    return sum(0.0 if schedule is None else _at(schedule, size) for schedule, size in under)
+    single = [event for event in events if not event.parts]
+    kept = {line: book.event_retained(cover, line) for line in {event.line for event in single}}
+    under = ((kept[event.line], event.size) for event in single)
+    together = sum(part.kept.get(cover.name, 0.0) for event in events for part in event.parts)
+    return together + sum(0.0 if schedule is None else _at(schedule, size) for schedule, size in under)
 
 
 def _sums(book: Book, events: list[Event]) -> dict[str, dict[tuple[str, str], FloatArray]]:
     """The year's sums by line, as the simulation adds them up for a whole block."""
     sums: dict[str, dict[tuple[str, str], FloatArray]] = {}
     for line in book.lines:
-        own = [event for event in events if event.line == line.name]
-        sums[line.name] = {LOSS: np.array([sum(event.cost for event in own)])}
+        own = [event for event in events if event.line == line.name and not event.parts]
+        parts = [part for event in events for part in event.parts if part.line == line.name]
+        sums[line.name] = {LOSS: np.array([sum(event.cost_of(line.name) for event in events)])}
         for cover in book.covers:
             if book.covers_line(cover, line.name):
-                sums[line.name]["paid", cover.name] = np.array([_paid_by(cover.name, own)])
-                sums[line.name]["kept", cover.name] = np.array([_kept_under(book, cover, own)])
+                paid = _paid_by(cover.name, own) + sum(part.paid[cover.name] for part in parts)
+                kept = _kept_under(book, cover, own) + sum(part.kept[cover.name] for part in parts)
+                sums[line.name]["paid", cover.name] = np.array([paid])
+                sums[line.name]["kept", cover.name] = np.array([kept])
     return sums
 
 

@@ -8,7 +8,7 @@ portfolio lists them does not reach the last digit.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -102,7 +102,10 @@ def needed_covers(book: Book, subjects: tuple[Subject, ...]) -> tuple[PlacedCove
 
 
 def annual_amounts(
-    book: Book, subjects: tuple[Subject, ...], sums: Mapping[str, Mapping[tuple[str, str], FloatArray]]
+    book: Book,
+    subjects: tuple[Subject, ...],
+    sums: Mapping[str, Mapping[tuple[str, str], FloatArray]],
+    together: Sequence[FloatArray] = (),
 ) -> dict[Subject, FloatArray]:
     """The annual amount of every subject.
 
@@ -110,6 +113,7 @@ def annual_amounts(
         book: lines and covers.
         subjects: the subjects asked for.
         sums: per line and column key, the year's sum over events, shape (years,).
+        together: the largest cost of a year's events that hit several lines at once, shape (years,) each.
     """
     amounts: dict[Subject, FloatArray] = {
         Subject("line", line): own[LOSS] for line, own in sums.items() if LOSS in own
@@ -134,7 +138,7 @@ def annual_amounts(
     largest = {line: book.line(line).cost(own[LARGEST]) for line, own in sums.items() if LARGEST in own}
     amounts |= {Subject("largest", line): own for line, own in largest.items()}
     if LARGEST_GROSS in subjects:
-        amounts[LARGEST_GROSS] = np.maximum.reduce(list(largest.values()))
+        amounts[LARGEST_GROSS] = np.maximum.reduce([*largest.values(), *together])
     return {subject: amounts[subject] for subject in subjects}
 
 

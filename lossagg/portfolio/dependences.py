@@ -30,7 +30,6 @@ NO_EVIDENCE = (
     "no evidence is stated for it. Until there is, the figure without credit for diversification is the "
     "sum of the lines' own figures, printed beside."
 )
-SHOCKS = "covers see the loss of each line of a common shock by itself, not as one event."
 DEPENDENT = (
     "How the lines depend on each other is an assumption, listed with its evidence; so is the independence "
     "of all that is not listed. Compare the figures without it: lines independent, and the sum of the lines' "
@@ -86,7 +85,6 @@ def dependence_cautions(found: Sequence[Assumed]) -> list[dict[str, str]]:
         notes = (
             ("gaussian-copula", GAUSSIAN, copula and own.kind == "gaussian-copula"),
             ("dependence-without-evidence", NO_EVIDENCE, not own.evidence),
-            ("common-shock", SHOCKS, own.kind == "common-shock"),
             ("nearest-correlation", f"{own.change}.", bool(own.change)),
         )
         for code, message, applies in notes:

@@ -159,6 +159,7 @@ def _event(event: Event) -> Data:
         "cost": event.cost,
         "shock": event.shock,
         "payments": [_payment(payment) for payment in event.payments],
+        "parts": [{"line": part.line, "size": part.size, "cost": part.cost} for part in event.parts],
     }
 
 

@@ -107,7 +107,7 @@ def test_every_annual_figure_is_met_to_the_cent(run, year):
     for subject, amount in again.amounts.items():
         assert abs(amount - annual[subject][year - 1]) < 0.005, subject
     for line in book.lines:
-        own = [event.cost for event in again.events if event.line == line.name]
+        own = [event.cost_of(line.name) for event in again.events]
         assert sum(own) == pytest.approx(annual[Subject("line", line.name)][year - 1], abs=0.005)
     assert sum(event.cost for event in again.events) == pytest.approx(annual[GROSS][year - 1], abs=0.005)
     paid = {payment.cover: payment.paid for payment in again.covers}
@@ -180,8 +180,14 @@ def test_factors_and_shocks_are_told(run):
         return
     assert set(again[0].factors) == {"activity", "prices"}
     for year in again:
-        shocks = {name: sum(e.shock for e in year.events if e.line == name) for name in ("crew", "ferry")}
-        assert shocks["crew"] == shocks["ferry"]
+        for event in year.events:
+            assert event.shock == (event.line == "crew + ferry") == bool(event.parts)
+            if event.shock:
+                assert [part.line for part in event.parts] == ["crew", "ferry"]
+                assert sum(part.cost for part in event.parts) == pytest.approx(event.cost)
+                for payment in event.payments:
+                    parts = sum(part.paid.get(payment.cover, 0.0) for part in event.parts)
+                    assert parts == pytest.approx(payment.paid)
     assert any(event.shock for year in again for event in year.events)
 
 

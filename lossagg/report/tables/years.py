@@ -100,8 +100,10 @@ def _event_rows(year: Entry, covers: Sequence[str]) -> list[tuple[Cell, ...]]:
     rows: list[tuple[Cell, ...]] = []
     for event in year["events"]:
         paid = {payment["cover"]: payment["paid"] for payment in event["payments"]}
-        name = clean(event["line"]) + (" (common shock)" if event["shock"] else "")
+        name = clean(event["line"]) + (" (one event)" if event["shock"] else "")
         rows.append((name, event["number"], event["cost"], *(paid.get(c, NOT_COVERED) for c in covers)))
+        for part in event.get("parts", ()):
+            rows.append((f"of it {clean(part['line'])}", "", part["cost"], *("" for _ in covers)))
     smaller = year["smaller"]
     if smaller["events"]:
         words = f"{smaller['events']:,} smaller events"
