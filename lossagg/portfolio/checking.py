@@ -6,6 +6,8 @@ read apart from each other, so that one round of repairs is enough.
 
 from __future__ import annotations
 
+import re
+from ast import literal_eval
 from collections.abc import Callable, Collection, Iterator
 from dataclasses import replace
 from functools import partial
@@ -43,6 +45,12 @@ LARGEST = 3
 USABLE, WITHHELD, STOPPED = "usable", "withheld", "stopped"
 _ORDER = {severity: place for place, severity in enumerate(SEVERITY.values())}
 _LONGEST_VALUE = 60
+_QUOTED = r"""('(?:[^'\\]|\\.)*'|"(?:[^"\\]|\\.)*")"""
+_PLACE = re.compile(
+    rf"(.*?)(?:, sheet {_QUOTED})?(?:, row (\d+))?(?:, column {_QUOTED})?",
+    re.DOTALL,
+)
+"""A place in words, as `lossagg.errors.place` makes it: file, sheet, row and column; the rest is file."""
 
 Made = TypeVar("Made")
 
@@ -233,15 +241,19 @@ class _Check:
 def _stop(error: InputError, code: str, line: str | None) -> Finding:
     """The finding that an error amounts to, on one line."""
     value = None if error.value is None else " ".join(str(error.value).split())[:_LONGEST_VALUE]
+    found = _PLACE.fullmatch((error.where or PORTFOLIO_FILE).removeprefix("file "))
+    assert found is not None
+    file, sheet, row, column = found.groups()
     return Finding(
         code,
         "stop",
-        (error.where or PORTFOLIO_FILE).removeprefix("file "),
-        None,
-        None,
+        file,
+        None if row is None else int(row),
+        None if column is None else str(literal_eval(column)),
         value,
         error.what,
         " ".join((error.remedy or "").split()),
+        sheet=None if sheet is None else str(literal_eval(sheet)),
         line=line,
         count=0,
     )

@@ -195,7 +195,8 @@ def _native_numbers(column: Column) -> Numbers:
 
 def _lossy_natives(cells: Any, values: FloatArray) -> BoolArray:
     lossy = np.zeros(len(cells), dtype=np.bool_)
-    for at in np.flatnonzero(np.abs(values) > _CERTAIN).tolist():
+    scale = max(getattr(cells.type, "scale", 0), 0)  # Digits behind the point count like those before it.
+    for at in np.flatnonzero(np.abs(values) > _CERTAIN / 10.0**scale).tolist():
         lossy[at] = Decimal(repr(float(values[at]))) != Decimal(cells[at].as_py())
     return lossy
 

@@ -14,6 +14,8 @@ from folders import GIVEN, RECORDS, given_portfolio, recorded_portfolio
 from typer.testing import CliRunner
 
 from lossagg.commands.app import build_app
+from lossagg.errors import InputError, place
+from lossagg.portfolio.checking import _stop
 
 ROOT = Path(__file__).resolve().parents[2]
 DEMOS = ROOT / "portfolios"
@@ -245,3 +247,24 @@ def test_checking_loads_no_engine(tmp_path: Path) -> None:
     )
     done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=False)
     assert "LOADED []" in done.stdout, done.stdout + done.stderr
+
+
+@pytest.mark.parametrize(
+    ("where", "file", "sheet", "row", "column"),
+    [
+        (place(file="a.csv", row=3, column="it's"), "a.csv", None, 3, "it's"),
+        (place(file="a, row 7.xlsx", sheet="x, row 2", row=1), "a, row 7.xlsx", "x, row 2", 1, None),
+        (place(file="a.csv", column="b\\n\"c'"), "a.csv", None, None, "b\\n\"c'"),
+        (
+            place(file="portfolio.toml", key="line[1].records"),
+            "portfolio.toml, key 'line[1].records'",
+            *[None] * 3,
+        ),
+        (place(file="a.csv", row=4) + ", line 9", "a.csv, row 4, line 9", *[None] * 3),
+        (None, "portfolio.toml", *[None] * 3),
+    ],
+)
+def test_what_stops_carries_file_sheet_row_and_column_apart(where, file, sheet, row, column) -> None:
+    finding = _stop(InputError("wrong", where=where), "file", None)
+    assert (finding.file, finding.sheet, finding.row, finding.column) == (file, sheet, row, column)
+    assert where is None or finding.where == where

@@ -41,7 +41,7 @@ def rows(number: int, amount: float = 0.0) -> list[str]:
 def test_30_a_year_without_exposure_stops(tmp_path: Path) -> None:
     found = said(portfolio(tmp_path, exposure=EXPOSURE.replace("2022,100\n", "")), "preparing")
     assert found["severity"] == "stop"
-    assert (found["file"], found["value"]) == ("exposure.csv, column 'exposure'", "[2022]")
+    assert (found["file"], found["column"], found["value"]) == ("exposure.csv", "exposure", "[2022]")
     assert found["message"] == "the exposure file has no row for 1 of the years observed"
 
 

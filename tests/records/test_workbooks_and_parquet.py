@@ -2,6 +2,7 @@
 
 import datetime as dt
 import zipfile
+from decimal import Decimal
 from pathlib import Path
 
 import numpy as np
@@ -265,3 +266,14 @@ def test_parquet_without_rows_stops(tmp_path) -> None:
 def test_exposures_from_a_workbook(tmp_path) -> None:
     path = as_workbook(tmp_path / "e.xlsx", [[2024, 10.5], [2025, 11]], ["year", "exposure"])
     assert np.array_equal(read_exposure(path).exposure, [10.5, 11.0])
+
+
+def test_decimals_of_more_digits_than_a_float64_keeps_are_told(tmp_path: Path) -> None:
+    """Behind the point as before it: as text would be; the sum stays exact."""
+    digits = [Decimal("1.12345678901234567890"), Decimal("1.5"), Decimal("12345.67890000000000000001")]
+    table = {"amount": pa.array(digits, pa.decimal128(30, 20)), "date": [dt.date(2024, 1, 1)] * 3}
+    pq.write_table(pa.table(table), tmp_path / "a.parquet")
+    read = read_losses(tmp_path / "a.parquet")
+    (lossy,) = (fault.mask.tolist() for fault in read.faults if fault.code == "precision")
+    assert lossy == [True, False, True]
+    assert read.exact.total() == sum(digits)
