@@ -185,7 +185,7 @@ def _of_forms(proposal: Proposal) -> Iterator[Assumption]:
 def _of_lines(proposal: Proposal) -> Iterator[Assumption]:
     for line in proposal.lines:
         said = "By the line column." if "line" in proposal.columns else "No column tells lines apart."
-        yield Assumption("line", f"{line.name}: {line.rows:,} rows", said)
+        yield Assumption("line", f"{line.name}: {line.rows:,} row{'' if line.rows == 1 else 's'}", said)
         if proposal.thresholds_recorded:
             continue
         smallest = "" if line.smallest is None else f"The smallest loss is {line.smallest:,.2f}"

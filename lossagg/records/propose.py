@@ -235,7 +235,8 @@ class _Mapping:
         return InputError(
             f"no heading says which column holds the {what} of the losses",
             where=self.where,
-            value=", ".join(heading[:40] for heading in self.raw.headings[:20]),
+            # A first row without any heading known may be a note or a record, and personal.
+            value=", ".join(heading[:40] for heading in self.raw.headings[:20]) if self.headings else None,
             remedy=f"Name that column {name!r}.",
         )
 

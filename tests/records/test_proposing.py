@@ -132,6 +132,7 @@ def test_what_cannot_be_a_table_of_losses_is_refused_without_repeating_its_cells
     for rows, said in (
         (["Anna Muster,1200.50,2024-01-05", "Bo Beispiel,100,2024-02-05"], "looks like data"),
         (["Name,When,Incurred", "Anna Muster,yesterday,100"], "no heading says"),
+        (["Anna Muster,Ringstrasse", "Bo Beispiel,Markt"], "no heading says"),
         (["Name,Date,Incurred", "Anna Muster,01/02/24,100"], "are not dates"),
     ):
         with pytest.raises(InputError, match=said) as caught:
