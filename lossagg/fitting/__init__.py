@@ -37,6 +37,7 @@ from lossagg.fitting.parameter_bootstrap import (
     bootstrap_frequency,
     bootstrap_severity,
 )
+from lossagg.fitting.predictive import PredictiveQuantile, predictive_quantile
 from lossagg.fitting.regression import PoissonRegression, poisson_regression
 from lossagg.fitting.results import Fit, FrequencyFit, SeverityFit
 from lossagg.fitting.severity import fit_severity
@@ -61,6 +62,7 @@ __all__ = [
     "ParameterBootstrap",
     "PoissonRegression",
     "PosteriorRate",
+    "PredictiveQuantile",
     "QuantilePoints",
     "SeverityFit",
     "SizeCountTest",
@@ -88,6 +90,7 @@ __all__ = [
     "overdispersion",
     "poisson_regression",
     "posterior_rate",
+    "predictive_quantile",
     "quantile_points",
     "size_count_test",
     "survival_points",

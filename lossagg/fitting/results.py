@@ -149,6 +149,12 @@ class SeverityFit(Fit):
     solution: Solution
     tail_prefix: str = ""
 
+    @property
+    def complete_lognormal(self) -> bool:
+        """Whether it is lognormal and every loss was recorded and uncensored: exact theory holds then."""
+        complete = self.truncation is None and self.censored == 0 and not self.fixed
+        return self.family == "lognormal" and complete and self.observations > 1
+
     def profile_interval(self, name: str, level: float = 0.95) -> tuple[float, float]:
         """Interval of one parameter from the profile likelihood; prefer it to `interval` for few losses.
 

@@ -25,6 +25,7 @@ from lossagg.portfolio.by_line import by_line_of
 from lossagg.portfolio.dependences import bounds_data, independent_data
 from lossagg.portfolio.evidence import line_evidence
 from lossagg.portfolio.line import LineModel
+from lossagg.portfolio.predictive import predictive_data
 from lossagg.portfolio.sanity import sanity_data
 from lossagg.portfolio.years import years_near
 
@@ -75,9 +76,11 @@ def figures(
     years: int,
     seed: int,
     apart: Mapping[Subject, AnnualLoss] | None = None,
+    models: Sequence[LineModel] = (),
 ) -> Data:
     """Lines (with their `evidence_of`), gross, net, covers, crosscheck and headline of the assessment; the
-    years nearest to it, and gross and net of independent lines (`apart`) where the book has dependences.
+    years nearest to it, and gross and net of independent lines (`apart`) where the book has dependences; the
+    headline with the parameters drawn, where `models` gives the fits.
     """
     asked = tuple(sorted({*levels, capital_level}))
     check = crosscheck(book, results, asked)
@@ -131,6 +134,7 @@ def figures(
             seed=seed,
             years=years,
         ),
+        "predictive": predictive_data(book, models, reported, asked, seed=seed, withheld=withheld),
         "dependence_bounds": bounds_data(
             book,
             reported,

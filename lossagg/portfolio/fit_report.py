@@ -2,12 +2,16 @@
 
 from __future__ import annotations
 
+from dataclasses import asdict
+
+from lossagg.fitting import predictive_quantile
 from lossagg.portfolio.assess import Progress, silent
 from lossagg.portfolio.assessment import Data
 from lossagg.portfolio.cautions import cautions
 from lossagg.portfolio.estimates import estimates
 from lossagg.portfolio.evidence import line_evidence
 from lossagg.portfolio.evidence_cautions import evidence_cautions, tail_cautions
+from lossagg.portfolio.fit_tests import stream_of
 from lossagg.portfolio.line import LineModel
 from lossagg.portfolio.parameter_error import parameter_error
 from lossagg.portfolio.portfolio import Portfolio
@@ -16,6 +20,7 @@ from lossagg.version import __version__
 
 FIT_FORMAT = "lossagg.fit/1"
 _DRAWS, _THRESHOLDS, _TAIL_DRAWS = 199, 20, 39
+_SIZE_LEVELS, _SIZE_DRAWS = (0.9, 0.99), 100
 
 
 def fit_report(portfolio: Portfolio, *, draws: int = _DRAWS, progress: Progress = silent) -> Data:
@@ -64,6 +69,15 @@ def fit_report(portfolio: Portfolio, *, draws: int = _DRAWS, progress: Progress 
     }
 
 
+def _size_quantiles(model: LineModel, level: float) -> list[Data]:
+    """Quantiles of one loss as fitted and with the parameters uncertain; none where the severity is given."""
+    if model.severities is None:
+        return []
+    fit, seed = model.severities.chosen, stream_of(model.name)
+    levels = sorted({*_SIZE_LEVELS, level})
+    return [asdict(predictive_quantile(fit, each, draws=_SIZE_DRAWS, seed=seed)) for each in levels]
+
+
 def _line(model: LineModel, level: float, draws: int) -> Data:
     entry = line_evidence(model, draws, _THRESHOLDS, min(draws, _TAIL_DRAWS))
     fitted = model.severities is not None and model.prepared is not None
@@ -72,6 +86,7 @@ def _line(model: LineModel, level: float, draws: int) -> Data:
         **entry,
         "level": level,
         "estimates": estimates(model, draws),
+        "size_quantiles": _size_quantiles(model, level),
         "parameter_error": parameter_error(model, level) if uncertain else None,
         "sensitivity": sensitivity(model, entry["tail"], level) if fitted else [],
         "influence": influence(model, level) if fitted else [],

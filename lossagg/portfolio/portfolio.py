@@ -176,6 +176,7 @@ class Portfolio:
                 years=years,
                 seed=seed,
                 apart=apart,
+                models=models,
             ),
             "dependence": dependence_data(shared),
             "model": book_data(book),

@@ -13,6 +13,7 @@ from typing import Any
 
 from lossagg.portfolio.assessment import label_of, number
 from lossagg.portfolio.line import LineModel
+from lossagg.portfolio.parameter_draws import drawn_lines, uncertain
 from lossagg.portfolio.pricing_sections import PricingSection, RiskLoad
 from lossagg.pricing.agreement import agreement, thresholds
 from lossagg.pricing.beating import beat_by_years, beats_data, paid_of
@@ -33,7 +34,6 @@ from lossagg.pricing.frontier import Position, choose, dominators
 from lossagg.pricing.grid import Grid
 from lossagg.pricing.history import as_if
 from lossagg.pricing.option import Option
-from lossagg.pricing.parameters import drawn_lines, uncertain
 from lossagg.pricing.row_data import row_data
 from lossagg.pricing.rows import (
     WITHHELD,

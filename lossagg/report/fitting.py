@@ -56,6 +56,7 @@ def fit_tables(fits: Entry) -> tuple[Table, ...]:
         tables.fit_tests.goodness(lines),
         tables.fit_tests.frequency(lines),
         tables.fit_tests.tail_rules(lines, currency),
+        tables.fit_tests.size_quantiles(lines, currency),
         tables.fit_tests.parameter_error(lines, currency),
         tables.fit_tests.sensitivity(lines, currency),
         tables.fit_tests.influence(lines, currency),
@@ -98,6 +99,7 @@ def render_fit(fits: Entry) -> str:
 def _extra(line: Entry, currency: str) -> tuple[Table, ...]:
     return (
         tables.fits.estimates([line]),
+        tables.fit_tests.size_quantiles([line], currency),
         tables.fit_tests.parameter_error([line], currency),
         tables.fit_tests.sensitivity([line], currency),
         tables.fit_tests.influence([line], currency),

@@ -94,9 +94,16 @@ def status(assessment: Assessment) -> list[tuple[str, str, int]]:
         ("Data", _data_status(assessment), 5),
         ("Findings", _finding_status(assessment), 6),
         ("Reach of the data", _reach(years, level), 1),
+        *_predictive_status(assessment),
         *_option_status(assessment),
         ("Cautions", _caution_status(assessment), 7),
     ]
+
+
+def _predictive_status(assessment: Assessment) -> list[tuple[str, str, int]]:
+    """What the uncertainty of the parameters adds to the capital figure; empty where nothing is known."""
+    text = tables.predictive.sentence(assessment)
+    return [("Parameter uncertainty", text, 1)] if text else []
 
 
 def _option_status(assessment: Assessment) -> list[tuple[str, str, int]]:

@@ -81,6 +81,7 @@ def render_report(assessment: Assessment) -> str:
         "moments": tables.totals.moments(assessment),
         "curve": figures.exceedance_figure(assessment),
         "supported": years_observed(assessment),
+        "predictive": _filled(tables.predictive.predictive(assessment)),
         "lines": tables.lines.overview(assessment),
         "line_levels": tables.lines.levels(assessment),
         "sanity": _filled(tables.sanity.sanity_of_gross(assessment)),

@@ -12,9 +12,10 @@ import pytest
 import lossagg
 from lossagg.batch.pricing import grid_of
 from lossagg.errors import InputError
+from lossagg.fitting.draws import moved
+from lossagg.portfolio.parameter_draws import drawn_lines
 from lossagg.pricing import price_options
 from lossagg.pricing.frontier import Position, choose, dominators
-from lossagg.pricing.parameters import drawn_lines, moved
 from lossagg.pricing.table import LEAST_DRAWS
 
 HEAD = """

@@ -13,22 +13,22 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 
 import numpy as np
-from scipy import special
 
-from lossagg.arrays import FloatArray
 from lossagg.engines.book import Line
 from lossagg.engines.streams import line_key
 from lossagg.errors import LossaggError
 from lossagg.families import make_count_law, make_size_law, with_parameters
 from lossagg.families.base import CountLaw, SizeLaw
 from lossagg.fitting import Fit
+from lossagg.fitting.draws import Normals, Stratified, moved
 from lossagg.portfolio.line import LineModel
 
 _STREAM = 0x70726963
-_FARTHEST = 30.0
 
 
-def drawn_lines(models: Sequence[LineModel], draws: int, seed: int) -> Iterator[tuple[Line, ...]]:
+def drawn_lines(
+    models: Sequence[LineModel], draws: int, seed: int, *, stratified: bool = False
+) -> Iterator[tuple[Line, ...]]:
     """The lines under other parameters that the records allow, one tuple per draw.
 
     Lines whose laws are given stay as they are. A draw that is no law (a probability of 1, say) is
@@ -38,13 +38,24 @@ def drawn_lines(models: Sequence[LineModel], draws: int, seed: int) -> Iterator[
         models: the lines with their fits.
         draws: how many.
         seed: seed; every line has its own stream, so other lines change nothing.
+        stratified: spread the draws evenly, for averages over all of them.
     """
-    streams = [
+    streams: list[np.random.Generator] = [
         np.random.default_rng(np.random.SeedSequence(seed, spawn_key=(_STREAM, *line_key(model.name))))
         for model in models
     ]
+    if not stratified:
+        for _ in range(draws):
+            yield tuple(_drawn(model, random) for model, random in zip(models, streams, strict=True))
+        return
+    spread = [
+        Stratified(random, draws, sum(len(fit.parameters) - len(fit.fixed) for fit in _fits(model)))
+        for model, random in zip(models, streams, strict=True)
+    ]
     for _ in range(draws):
-        yield tuple(_drawn(model, random) for model, random in zip(models, streams, strict=True))
+        for own in spread:
+            own.next_draw()
+        yield tuple(_drawn(model, own) for model, own in zip(models, spread, strict=True))
 
 
 def uncertain(models: Sequence[LineModel]) -> bool:
@@ -52,7 +63,11 @@ def uncertain(models: Sequence[LineModel]) -> bool:
     return any(model.severities is not None or model.count_estimated for model in models)
 
 
-def _drawn(model: LineModel, random: np.random.Generator) -> Line:
+def _fits(model: LineModel) -> list[Fit]:
+    return [tried.chosen for tried in (model.severities, model.frequencies) if tried is not None]
+
+
+def _drawn(model: LineModel, random: Normals) -> Line:
     line = model.line
     severity = _severity(model, random)
     frequency = _frequency(model, severity, random)
@@ -65,7 +80,7 @@ def _drawn(model: LineModel, random: np.random.Generator) -> Line:
     )
 
 
-def _severity(model: LineModel, random: np.random.Generator) -> SizeLaw:
+def _severity(model: LineModel, random: Normals) -> SizeLaw:
     if model.severities is None:
         return model.severity
     fit = model.severities.chosen
@@ -77,7 +92,7 @@ def _severity(model: LineModel, random: np.random.Generator) -> SizeLaw:
     return model.severity
 
 
-def _frequency(model: LineModel, severity: SizeLaw, random: np.random.Generator) -> CountLaw:
+def _frequency(model: LineModel, severity: SizeLaw, random: Normals) -> CountLaw:
     if model.frequencies is None or model.prepared is None or model.seen is None or model.bound is not None:
         return model.frequency
     fit, years = model.frequencies.chosen, model.prepared.years
@@ -96,35 +111,3 @@ def _frequency(model: LineModel, severity: SizeLaw, random: np.random.Generator)
         except LossaggError:
             continue
     return model.frequency
-
-
-def moved(fit: Fit, random: np.random.Generator) -> dict[str, float]:
-    """Parameters drawn around the estimates; those held fixed stay."""
-    names = [name for name in fit.parameters if name not in fit.fixed]
-    index = [list(fit.parameters).index(name) for name in names]
-    estimates = np.array([fit.parameters[name] for name in names])
-    slopes = np.array([_slope(fit.ranges.get(n, "real"), v) for n, v in zip(names, estimates, strict=True)])
-    covariance = fit.covariance[np.ix_(index, index)] * np.outer(slopes, slopes)
-    steps = np.clip(_root(covariance) @ random.standard_normal(len(names)), -_FARTHEST, _FARTHEST)
-    return {
-        name: _step(fit.ranges.get(name, "real"), value, step)
-        for name, value, step in zip(names, estimates.tolist(), steps.tolist(), strict=True)
-    }
-
-
-def _root(covariance: FloatArray) -> FloatArray:
-    """A square root of a covariance, also where it has no full rank."""
-    values, vectors = np.linalg.eigh((covariance + covariance.T) / 2.0)
-    return np.asarray(vectors * np.sqrt(np.maximum(values, 0.0)))
-
-
-def _slope(kind: str, value: float) -> float:
-    if kind == "positive":
-        return 1.0 / value
-    return 1.0 / (value * (1.0 - value)) if kind == "probability" else 1.0
-
-
-def _step(kind: str, value: float, step: float) -> float:
-    if kind == "positive":
-        return value * float(np.exp(step))
-    return float(special.expit(special.logit(value) + step)) if kind == "probability" else value + step
