@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 from scipy import special
 
+from lossagg.arrays import FloatArray
 from lossagg.errors import FitError, InputError
 from lossagg.families import Binomial
 from lossagg.fitting.count_solution import CountSolution
@@ -12,11 +13,14 @@ from lossagg.fitting.counts import Counts
 from lossagg.fitting.jet_functions import log_shares
 from lossagg.fitting.jets import Jet, exp, variables
 from lossagg.fitting.maximise import Maximum
-from lossagg.fitting.negative_binomial import JUST_EQUAL, rising_by_terms
+from lossagg.fitting.negative_binomial import JUST_EQUAL, TABLE, rising_by_terms
 from lossagg.fitting.notes import Note
 from lossagg.fitting.results import FrequencyFit
 
 _MOST_TRIALS = 2.0**40
+_SLIM, _TERMS = 0.05, 14  # 0.05**14 is below rounding
+_ROUNDING = 1e-15  # of a log-likelihood, per loss
+_FEW_LEFT = 50  # from here on Stirling's series of three terms is exact to rounding
 
 
 def fit_binomial(sample: Counts, held: float | None) -> FrequencyFit:
@@ -114,18 +118,19 @@ def _estimated_trials(sample: Counts) -> int:
             remedy='Check the counts; fit "poisson" if they are right.',
         )
     step = 1
-    while step < _MOST_TRIALS and _gain(sample, low + 2 * step) > _gain(sample, low + step):
+    rises = _rises_by_slope if low > TABLE else _rises
+    while step < _MOST_TRIALS and rises(sample, low + step, low + 2 * step):
         step *= 2
     first, last = low + step // 2, low + 2 * step
-    if _gain(sample, low) >= _gain(sample, low + 1):
+    if not rises(sample, low, low + 1):
         first = last = low
     while first < last:
         middle = (first + last) // 2
-        if _gain(sample, middle) < _gain(sample, middle + 1):
+        if rises(sample, middle, middle + 1):
             first = middle + 1
         else:
             last = middle
-    if _gain(sample, first) <= JUST_EQUAL:
+    if step >= _MOST_TRIALS or _gain(sample, first) <= JUST_EQUAL + _ROUNDING * sample.losses:
         raise FitError(
             "the counts vary at least as much as Poisson counts, so the binomial fit ends at endless trials",
             value=f"{sample.losses} losses in {sample.years} years",
@@ -133,6 +138,42 @@ def _estimated_trials(sample: Counts) -> int:
             tried=(f"trials from {low} to {low + 2 * step}",),
         )
     return first
+
+
+def _rises(sample: Counts, trials: int, more: int) -> bool:
+    return _gain(sample, more) > _gain(sample, trials)
+
+
+def _rises_by_slope(sample: Counts, trials: int, more: int) -> bool:
+    """Whether the likelihood still rises halfway between the two, by its slope in the trials.
+
+    Of millions of losses the likelihood itself has lost the digits in which neighbours differ.
+    """
+    at = 0.5 * (trials + more)
+    ways = special.digamma(at + 1.0) - special.digamma(at - sample.numbers + 1.0)
+    return bool(np.sum(sample.weights * ways) + sample.years * np.log1p(-sample.rate / at) > 0)
+
+
+def log_falling(numbers: FloatArray, trials: float) -> FloatArray:
+    """Sum of log(1 - k / trials), k = 0 .. n-1, for counts n of thousands or more, at or below the trials.
+
+    By Stirling's series of both factorials (Abramowitz & Stegun 1964, 6.1.41), in which with u = n / trials
+    what would cancel is trials * ((1 - u) log(1 - u) + u), a power series where u is small.
+    """
+    left = trials - numbers
+    u = numbers / trials
+    slim = np.where(u < _SLIM, u, 0.0)
+    powers = sum(slim**k / (k * (k - 1)) for k in range(2, _TERMS))
+    with np.errstate(divide="ignore", invalid="ignore"):
+        logs = np.log1p(-u)
+        bulk = np.where(u < _SLIM, powers, special.xlog1py(1.0 - u, -u) + u)
+        far = -trials * bulk - 0.5 * logs + _stirling(trials) - _stirling(left)
+    near = special.gammaln(trials + 1.0) - special.gammaln(left + 1.0) - numbers * np.log(trials)
+    return np.asarray(np.where(left < _FEW_LEFT, near, far))
+
+
+def _stirling(x: FloatArray | float) -> FloatArray | float:
+    return 1 / (12 * x) - 1 / (360 * x**3) + 1 / (1260 * x**5)
 
 
 def _gain(sample: Counts, trials: int) -> float:
@@ -143,6 +184,8 @@ def _gain(sample: Counts, trials: int) -> float:
     """
     mean = sample.rate
     chance = mean / trials
-    ways = rising_by_terms(-1.0 / trials, sample.numbers, sample.weights)[0]
+    small = sample.numbers <= TABLE
+    ways = rising_by_terms(-1.0 / trials, sample.numbers[small], sample.weights[small])[0]
+    ways += float(np.sum(sample.weights[~small] * log_falling(sample.numbers[~small], trials)))
     none = trials * (special.log1p(-chance) + chance)
     return float(ways + sample.years * none - sample.losses * special.log1p(-chance))

@@ -21,7 +21,7 @@ from lossagg.fitting.maximise import Maximum, evaluate, maximise
 from lossagg.fitting.notes import Note
 from lossagg.fitting.results import FrequencyFit
 
-_TABLE = 4096  # counts up to here sum log(1 + d k) term by term; above, gamma functions do
+TABLE = 4096  # counts up to here sum log(1 + d k) term by term; above, gamma functions do
 JUST_EQUAL = 1e-6  # a gain in log-likelihood below this cannot be told from none
 
 
@@ -110,7 +110,7 @@ def negative_binomial_jet(point: tuple[Jet, ...], sample: Counts) -> Jet:
 def _rising(dispersion: Jet, sample: Counts) -> Jet:
     """Weighted sum over the years of log(1 + d k), k = 0 .. n-1, without cancellation at small d."""
     d = float(dispersion.value[0])
-    small = sample.numbers <= _TABLE
+    small = sample.numbers <= TABLE
     parts = rising_by_terms(d, sample.numbers[small], sample.weights[small])
     parts = parts + _rising_by_gamma(d, sample.numbers[~small], sample.weights[~small])
     return compose((dispersion,), float(parts[0]), parts[1:2], parts[2:3, None])

@@ -1,5 +1,7 @@
 """Frequency fits against statsmodels and scipy, with exposure, and what a fit of counts answers."""
 
+import math
+
 import numpy as np
 import pytest
 import statsmodels.api as sm
@@ -7,6 +9,7 @@ from scipy import optimize, stats
 
 from lossagg import Binomial, NegativeBinomial, Poisson
 from lossagg.fitting import compare_frequencies, count_points, fit_frequency, overdispersion
+from lossagg.fitting.binomial import log_falling
 
 COUNTS = np.array([12, 7, 19, 4, 15, 9, 28, 11, 6, 17])
 EXPOSURE = np.array([90.0, 95.0, 100.0, 70.0, 110.0, 118.0, 125.0, 131.0, 50.0, 140.0])
@@ -146,3 +149,30 @@ def test_count_points_follow_the_exposure():
     assert points.low == pytest.approx(stats.poisson(expected).ppf(0.025))
     assert points.high == pytest.approx(stats.poisson(expected).ppf(0.975))
     assert points.to_frame().columns.tolist() == ["observed", "fitted", "low", "high"]
+
+
+@pytest.mark.parametrize("trials", [5_000, 5_020, 5_060, 7_000, 99_999, 10**6, 10**9])
+def test_falling_factorials_term_by_term(trials):
+    """The closed sum against its terms, from as many trials as losses to next to endless."""
+    terms = math.fsum(math.log1p(-k / trials) for k in range(5_000))
+    assert float(log_falling(np.array([5_000.0]), trials)[0]) == pytest.approx(terms, rel=1e-11, abs=1e-12)
+
+
+def test_binomial_fits_of_millions_of_losses():
+    """Ten years of 4 million trials at 30 %, in which as many terms were added up for each trial before: the
+    likelihood of scipy falls to both sides of the trials, and they come back within four standard errors."""
+    truth, chance = 4_000_000, 0.3
+    counts = np.random.default_rng(9).binomial(truth, chance, 4_000)
+    fit = fit_frequency(counts, "binomial")
+    trials = int(fit.parameters["trials"])
+
+    def log_likelihood(at):
+        return float(np.sum(stats.binom.logpmf(counts, at, counts.mean() / at)))
+
+    here = log_likelihood(trials)
+    assert here == pytest.approx(fit.log_likelihood, rel=1e-7)
+    for step in (20_000, -20_000):
+        assert log_likelihood(trials + step) < here
+    # The variance n p (1 - p) has relative error sqrt(2 / 4000): dp is that times (1 - p), dn / n is dp / p.
+    error = truth * (1 - chance) / chance * np.sqrt(2 / 4_000)
+    assert abs(trials - truth) < 4 * error
