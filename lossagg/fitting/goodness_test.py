@@ -55,6 +55,7 @@ def goodness_test(
     censored: object = None,
     *,
     draws: int | None = None,
+    enough: int = _ENOUGH,
     seed: int = 0,
 ) -> GoodnessTest:
     """Distances of losses from the law fitted to them, with p-values.
@@ -63,15 +64,18 @@ def goodness_test(
         losses, truncation, censored: as given to the fit.
         fit: the fit to test.
         draws: most bootstrap draws; by default 199, down to 39 for many losses so that time stays bounded.
+        enough: drawing ends once each distance was reached by so many draws.
         seed: of the draws; the same seed gives the same p-values.
 
     Raises:
-        InputError: unusable losses, or fewer than one draw.
+        InputError: unusable losses, fewer than one draw, or `enough` below 1.
     """
     amounts, thresholds, marks = checked_losses(losses, truncation, censored)
     count = draws if draws is not None else min(_MOST, max(_FEWEST, _WORK // amounts.size))
     if count < 1:
         raise InputError("draws must be at least 1", value=draws, remedy="Give 199 or more for a p-value.")
+    if enough < 1:
+        raise InputError("enough must be at least 1", value=enough, remedy="Give 10, say.")
     seen = distances(amounts, thresholds, marks, fit.model)
     further, entered, refused = np.zeros(3), 0, 0
     for one in replicates(fit, amounts, thresholds, marks, count=count, seed=seed):
@@ -81,7 +85,7 @@ def goodness_test(
         entered += 1
         drawn = distances(one.amounts, thresholds, one.censored, one.law)
         further += np.array(_values(drawn)) >= np.array(_values(seen))
-        if further.min() >= _ENOUGH:
+        if further.min() >= enough:
             break
     if refused > _MOST_REFUSED * (entered + refused):
         reason = f"{refused} of {entered + refused} draws from the fitted law have no fit of the same family"

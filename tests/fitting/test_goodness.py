@@ -204,3 +204,22 @@ def test_draws_below_one_are_refused():
     losses = [1.0, 2.0, 4.0]
     with pytest.raises(InputError, match="draws must be at least 1"):
         goodness_test(losses, fit_severity(losses, "exponential"), draws=0)
+
+
+def test_a_law_that_fits_is_drawn_from_no_longer_than_needed():
+    """Drawing ends at the draw at which the last distance was reached `enough` times (Besag & Clifford 1991),
+    and a law that does not fit is drawn from to the end."""
+    losses = np.exp(8 + np.random.default_rng(21).standard_normal(80))
+    fit = fit_severity(losses, "lognormal")
+    few, more = (goodness_test(losses, fit, draws=199, enough=enough, seed=4) for enough in (5, 10))
+    assert few.replicates < more.replicates < 199
+    for test, enough in ((few, 5), (more, 10)):
+        reached = [
+            round(p * (1 + test.replicates)) - 1
+            for p in (test.kolmogorov_smirnov, test.anderson_darling, test.upper_tail)
+        ]
+        assert min(reached) == enough
+    wrong = fit_severity(losses**2, "exponential")
+    assert goodness_test(losses**2, wrong, draws=60, enough=5).replicates == 60
+    with pytest.raises(InputError, match="enough must be at least 1"):
+        goodness_test(losses, fit, enough=0)
