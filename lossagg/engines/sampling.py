@@ -17,6 +17,7 @@ _FEW_BLOCKS = 16
 _FIRST = 64
 _NODES, _SHARES = (part / 2.0 for part in np.polynomial.legendre.leggauss(12))
 _NODES = _NODES + 0.5
+_PANELS = 2.0 ** np.arange(-60.0, 1.0)
 
 
 class Masses:
@@ -153,13 +154,19 @@ def _sampled(
     A payment at position u of its cell has gained the variance u (1 - u) h**2 by moving to the ends. Half of
     its mean over the cell, taken off as second differences at the two ends, takes it off again. Where the
     density is smooth that is a twelfth of the weight, and makes samples of a density of the weights; in the
-    cells next to zero, where it may be steep, the mean is computed.
+    cells next to zero, where it may be steep, the mean is computed. In the first one, which holds nearly all
+    payments where many small ones make a year, by ever shorter panels towards zero: among a million payments
+    the variance of the sum hangs on its digits.
     """
     taken = weights / 12.0
     first = min(_FIRST, len(weights) - 1)
     places = step * (np.arange(float(first))[:, None] + _NODES[None, :])
     above = payment.continuous_sf(places.reshape(-1)).reshape(places.shape)
     gained = above @ (_SHARES * (1.0 - 2.0 * _NODES)) / share
+    lengths = np.diff(np.append(0.0, _PANELS))
+    inside = ((_PANELS - lengths)[:, None] + lengths[:, None] * _NODES).reshape(-1)
+    weighed = (lengths[:, None] * _SHARES).reshape(-1) * (1.0 - 2.0 * inside)
+    gained[:1] = payment.continuous_sf(step * inside) @ weighed / share
     taken[:first] = (gained + np.concatenate(([0.0], gained[:-1]))) / 4.0
     padded = np.concatenate(([0.0], taken, [taken[-1]]))
     return weights - np.diff(padded, 2), np.array([-taken[0]])
