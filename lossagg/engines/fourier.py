@@ -189,8 +189,7 @@ def _survival_of(compound: CompoundSum) -> Callable[[float, int], FloatArray]:
 
 def survival(compound: CompoundSum, step: float, points: int) -> FloatArray:
     """P(S > kh) on a lattice as it comes, without bracket, shape (points,)."""
-    even = LatticeTransform(compound, step, points).even()
-    return 1.0 - even.below[0] - running_sums(even.probabilities)
+    return 1.0 - running_sums(LatticeTransform(compound, step, points).kept().probabilities)
 
 
 def _far_points(quantiles: Quantiles, step: float) -> int:

@@ -7,7 +7,9 @@ here:
 
 * wrap-around: payments beyond the lattice are left out, which changes no probability on it; sums that
   still run over twice the lattice are bounded by Chernoff's inequality, and the sequence is tilted by
-  exp(-theta k) just enough to bring them below the round-off. More tilt would amplify round-off instead.
+  exp(-theta k) just enough to bring them below the round-off. More tilt would amplify round-off instead:
+  what it is about the mean, it is exp(theta) times as large a step further out. A tilt that makes it no more
+  than e times as large on the way to the end is always taken, since it keeps round-off off the sums below.
 * the density is sampled: mean-preserving weights (Gerber 1982) spread each payment over a triangle, in
   the frequency domain the factor (sin(wh/2) / (wh/2))**2; taking off a twelfth of the second difference
   undoes it to fourth order. It is done to the continuous part only; atoms stay where they are.
@@ -42,6 +44,7 @@ _EPSILON = float(np.finfo(float).eps)
 _BINS = 2048
 # Frequencies taken together.
 _AT_ONCE = 2**14
+_NEAR = 256
 
 
 @dataclass(frozen=True)
@@ -122,11 +125,13 @@ class LatticeTransform:
         self._lacking = compound.slack(step, points)
         self.lines = [_spread(part, step, points) for part in compound.parts]
         self.length = int(fft.next_fast_len(2 * points, real=True))
-        reachable = self._chernoff()
-        total_tilt = min(float(np.log(max(reachable / _WRAPPED, 1.0))), _MOST_TILT)
+        reachable, index = self._chernoff(), np.arange(float(points))
+        beyond = points - sum(line.expected_rounded(index, False) for line in self.lines)
+        harmless = self.length / max(beyond, 1.0)
+        total_tilt = min(max(float(np.log(max(reachable / _WRAPPED, 1.0))), harmless), _MOST_TILT)
         self.wrapped = float(np.exp(-total_tilt)) * reachable
         self._tilt = total_tilt / self.length
-        self._weights = np.exp(-self._tilt * np.arange(points))
+        self._weights = np.exp(-self._tilt * index)
 
     @cached_property
     def _shift(self) -> ComplexArray:
@@ -155,6 +160,11 @@ class LatticeTransform:
         down = self._back(self._joint(lowered))
         return down, self._back(self._joint(raised))
 
+    def kept(self) -> LatticeSum:
+        """The sum of payments moved to the two nearest points with their means kept: never narrower than the
+        truth, however long the step."""
+        return self._back(self._joint([self._kept_of(line) for line in self.lines]))
+
     def even(self) -> LatticeSum:
         """The sum of payments with their means kept and the sampling corrected."""
         return self._back(self._joint([self._even_of(line) for line in self.lines]), below=True)
@@ -175,10 +185,7 @@ class LatticeTransform:
             size_biased(count) is None for own in counts for count in own
         ):
             return None
-        ones = [
-            Argument(line.none, self._transform(line.masses.spread + line.masses.atoms_even))
-            for line in self.lines
-        ]
+        ones = [self._kept_of(line) for line in self.lines]
         every = 1 if self.length % 2 else 2
         length = self.length // every
         bulges = [self._transform(line.masses.bulge, length) for line in self.lines]
@@ -236,6 +243,9 @@ class LatticeTransform:
             for cluster, counts in clusters:
                 total *= cluster.pgf(counts, [arguments[place](piece) for place in cluster.members])
         return joint
+
+    def _kept_of(self, line: Spread) -> Argument:
+        return Argument(line.none, self._transform(line.masses.spread + line.masses.atoms_even))
 
     def _even_of(self, line: Spread) -> Argument:
         masses = line.masses
@@ -356,10 +366,14 @@ def _spread(part: Part, step: float, points: int) -> Spread:
 
 
 def _binned(masses: Masses) -> tuple[FloatArray, FloatArray]:
-    """One payment rounded up, gathered in bins: their highest indices and probabilities."""
+    """One payment rounded up, gathered in bins: their highest indices and probabilities.
+
+    A bin is a 256th of its index wide, up to a 2,048th of the lattice: among many losses nearly all are far
+    smaller than that, and each counted as so much would bound nothing.
+    """
     up = np.append(0.0, masses.down) + np.append(masses.atoms_up, 0.0)
     width = -(-len(up) // _BINS)
-    padded = np.zeros(width * -(-len(up) // width))
-    padded[: len(up)] = up
-    binned = padded.reshape(-1, width).sum(axis=1)
-    return np.minimum(width * np.arange(1.0, len(binned) + 1.0) - 1.0, len(up) - 1.0), binned
+    near = np.rint(np.geomspace(_NEAR, max(_NEAR * width, _NEAR), max(int(_NEAR * np.log(width)), 1) + 1))
+    edges = np.concatenate((np.arange(_NEAR), near, np.arange(_NEAR * width, len(up), width)))
+    starts = np.unique(edges[edges < len(up)].astype(np.int64))
+    return np.append(starts[1:], len(up)) - 1.0, np.add.reduceat(up, starts)
