@@ -20,6 +20,7 @@ from lossagg.engines.bound import MOMENTS, LatticeBound
 from lossagg.engines.compound import CompoundSum
 from lossagg.engines.limited import LimitedMeans
 from lossagg.engines.pair import PairPlan, pair_plan
+from lossagg.engines.resources import Resources
 from lossagg.engines.result import AnnualLoss, BookResult, TransformedAnnualLoss
 from lossagg.engines.tied import annual_sum
 from lossagg.errors import EngineError
@@ -42,6 +43,36 @@ class ExactEngine(ABC):
             EngineError: a count law outside the engine's domain, or a lattice beyond its resources.
         """
 
+    @abstractmethod
+    def expected(self, compound: CompoundSum) -> Resources:
+        """What `solve` is expected to take.
+
+        Raises:
+            EngineError: as `solve`, where it is known before the work.
+        """
+
+    def resources(self, frequency: CountLaw, severity: SizeLaw, cover: Cover | None = None) -> Resources:
+        """What `annual_loss` of the same will take: points, memory and time, before the work is done.
+
+        Args:
+            frequency: law of the number of losses in a year.
+            severity: law of the size of one loss.
+            cover: terms of a cover, or None.
+
+        Returns:
+            The first lattice, its memory and time, and about how wide the bracket will be.
+
+        Raises:
+            EngineError: as `solve`; and a retained cap, whose parts are not estimated beforehand.
+        """
+        book, subject = _alone(frequency, severity, cover)
+        if pair_plan(book, subject) is not None:
+            raise EngineError(
+                "what a retained cap takes is not estimated before the work",
+                remedy="Ask for the cover without it; with it the work is some tens of times as long.",
+            )
+        return self.expected(CompoundSum.of(book.lines, book.plan(subject).events))
+
     def solve_pair(self, lines: tuple[Line, ...], plan: PairPlan) -> AnnualLoss:
         """The distribution of a function of two annual sums, `plan.beyond` not yet applied.
 
@@ -60,10 +91,7 @@ class ExactEngine(ABC):
         Raises:
             EngineError: as `solve` and, for a retained cap, `solve_pair`.
         """
-        line = Line(name="loss", frequency=frequency, severity=severity)
-        covers = () if cover is None else (PlacedCover(name="cover", terms=cover),)
-        book = Book(lines=(line,), covers=covers)
-        subject = Subject("line", "loss") if cover is None else Subject("cover", "cover")
+        book, subject = _alone(frequency, severity, cover)
         pair = pair_plan(book, subject)
         if pair is not None:
             return _paid(self.solve_pair(book.lines, pair), pair.beyond)
@@ -107,6 +135,15 @@ class ExactEngine(ABC):
         events = plan.events
         compound = annual_sum(book, events)
         return frozenset(events.items()), lambda: self.solve(compound), plan.annual
+
+
+def _alone(frequency: CountLaw, severity: SizeLaw, cover: Cover | None) -> tuple[Book, Subject]:
+    """A book of one line and one cover or none, and the subject wanted of it."""
+    line = Line(name="loss", frequency=frequency, severity=severity)
+    covers = () if cover is None else (PlacedCover(name="cover", terms=cover),)
+    return Book(lines=(line,), covers=covers), (
+        Subject("line", "loss") if cover is None else Subject("cover", "cover")
+    )
 
 
 def _outcome(task: Callable[[], AnnualLoss]) -> AnnualLoss | EngineError:

@@ -8,6 +8,7 @@ wanted. The bracket reached is then measured, and the step refined where it fall
 
 from __future__ import annotations
 
+import logging
 import warnings
 from collections.abc import Callable, Iterator
 from concurrent.futures import ThreadPoolExecutor
@@ -25,39 +26,28 @@ from lossagg.engines.pair import PairPlan
 from lossagg.engines.pair_sum import paired_loss
 from lossagg.engines.placed import Line
 from lossagg.engines.quantiles import LEAST_REACH, LEVELS, REACHES, Quantiles
+from lossagg.engines.resources import BracketWarning, OutOfReachError, Resources, expected_width
 from lossagg.engines.result import AnnualLoss
 from lossagg.engines.running import running_sums
 from lossagg.engines.span import arithmetic_span, fitting_step
 from lossagg.engines.transform import LatticeTransform, bounded_survivals
-from lossagg.errors import EngineError, InputError, LossaggWarning
+from lossagg.errors import EngineError, InputError
 
 MOST_POINTS = 2**22
-BYTES_PER_POINT = 250
+BYTES_PER_POINT = 300
 _COARSE_POINTS = 2**13
 _LEAST_POINTS = 2**15
 _EASY_POINTS = 2**18
 _PASSES = 4
-_CLOSE = 1.0
+_ACCURACY = 1e-3
+# A bracket so many times as wide as asked is refused before the work: it would be narrower than expected, but
+# not by that much.
+_FORESEEN = 4.0
+# Seconds for a point in one transform, its share of everything else included.
+_TRANSFORM = 1.5e-7
+_WORTH_A_NOTE = 5.0
 
-
-class BracketWarning(LossaggWarning):
-    """The bracket is wider than asked for, because the lattice may not grow further.
-
-    Attributes:
-        level: the level at which it is widest, against what was asked.
-        asked: relative width asked for at this level.
-        width: relative width reached.
-        points: number of lattice points used.
-        step: lattice step used.
-    """
-
-    def __init__(self, level: float, asked: float, width: float, points: int, step: float) -> None:
-        self.level, self.asked, self.width, self.points, self.step = level, asked, width, points, step
-        super().__init__(
-            f"The bracket of the value at risk at {100 * level:g} % is {width:.2%} wide, {asked:.2%} was "
-            f"asked for; the lattice has {points:,} points of step {step:.6g}, the most allowed is "
-            f"{MOST_POINTS:,}. The value itself is far more accurate than its guaranteed bracket."
-        )
+log = logging.getLogger(__name__)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -69,8 +59,9 @@ class Fourier(ExactEngine):
         step: distance of the lattice points, in money; by default chosen from the accuracy, such that
             deductibles, limits and tabulated sizes fall on lattice points where they can.
         accuracy: width asked of the bracket of VaR 99.5 %, relative to it; VaR 99.9 % may take twice
-            that. Not used when both `points` and `step` are given. Where a quantile is below a 2,000th
-            of the amount exceeded once in 10,000 years, the width is relative to a hundredth of that.
+            that. Where a quantile is below a 2,000th of the amount exceeded once in 10,000 years, the width
+            is relative to a hundredth of that. What is asked for is kept or refused; by default 0.001 is
+            aimed at, and a `BracketWarning` states the width where the points allowed do not give it.
 
     Raises:
         InputError: a setting outside its range.
@@ -78,7 +69,7 @@ class Fourier(ExactEngine):
 
     points: int | None = None
     step: float | None = None
-    accuracy: float = 1e-3
+    accuracy: float | None = None
 
     def __post_init__(self) -> None:
         if self.points is not None and not (
@@ -91,7 +82,7 @@ class Fourier(ExactEngine):
             )
         if self.step is not None:
             require_positive(self.step, "step")
-        if not 0 < require_positive(self.accuracy, "accuracy") < 1:
+        if self.accuracy is not None and not 0 < require_positive(self.accuracy, "accuracy") < 1:
             raise InputError("accuracy must be below 1", value=self.accuracy, remedy="Write 0.001 for 0.1 %.")
 
     @property
@@ -103,32 +94,58 @@ class Fourier(ExactEngine):
         """The distribution of an annual sum of payments.
 
         Warns:
-            BracketWarning: the accuracy asked for needs more points than allowed.
+            BracketWarning: the accuracy aimed at by default needs more points than allowed.
 
         Raises:
+            OutOfReachError: the accuracy asked for cannot be had; before the work where that is foreseen.
             EngineError: a step so small that the lattice would not reach the quantiles.
         """
         if not compound.parts:
             return _Pass.over(compound, 1.0, 2).loss()
         compound = compound.settled(survival)
-        coarse = (
-            None
-            if self.points and self.step
-            else Quantiles.located(compound, _COARSE_POINTS, _survival_of(compound))
-        )
-        if coarse is None or self.points or self.step:
-            return _Pass.over(compound, *self._given(compound, coarse)).loss()
-        span = arithmetic_span(compound)
-        if span is not None and coarse.points(span, LEAST_REACH) <= MOST_POINTS:
-            return _Pass.over(compound, span, _far_points(coarse, span)).loss()
-        best = self._refined(compound, coarse)
-        missed = [miss for miss in best.widths(coarse) if miss[1] > _CLOSE * miss[2] * self.accuracy]
-        if missed:
-            level, width, factor = max(missed, key=lambda miss: miss[1] / miss[2])
-            warnings.warn(
-                BracketWarning(level, factor * self.accuracy, width, best.points, best.step), stacklevel=4
-            )
+        if self.points and self.step and self.accuracy is None:
+            return _Pass.over(compound, self.step, self.points).loss()
+        coarse = Quantiles.located(compound, _COARSE_POINTS, _survival_of(compound))
+        expected, exact = self._plan(compound, coarse)
+        if expected.seconds > _WORTH_A_NOTE:
+            log.info("the Fourier engine needs %s", expected)
+        first = expected.step, expected.points
+        if exact:
+            return _Pass.over(compound, *first).loss()
+        if self.points or self.step:
+            best = _Pass.over(compound, *first)
+        else:
+            self._require_foreseeable(compound, coarse)
+            best = self._refined(compound, coarse, first)
+        self._judge(best, coarse)
         return best.loss()
+
+    def expected(self, compound: CompoundSum) -> Resources:
+        """What `solve` will take, see `ExactEngine.resources`."""
+        if not compound.parts:
+            return Resources(engine="fourier", points=2, step=1.0, width=0.0, memory=0.0, seconds=0.0)
+        compound = compound.settled(survival)
+        coarse = Quantiles.located(compound, _COARSE_POINTS, _survival_of(compound))
+        return self._plan(compound, coarse)[0]
+
+    def _plan(self, compound: CompoundSum, coarse: Quantiles) -> tuple[Resources, bool]:
+        """The first pass, and whether its step is the span of all payments, so that nothing is rounded."""
+        span = None if self.points or self.step else arithmetic_span(compound)
+        exact = False
+        if span is not None and coarse.points(span, LEAST_REACH) <= MOST_POINTS:
+            step, points, exact = span, _far_points(coarse, span), True
+        else:
+            step, points = self._lattice(compound, coarse)
+        load = float(points * compound.load)
+        plan = Resources(
+            engine="fourier",
+            points=points,
+            step=step,
+            width=0.0 if exact else expected_width(coarse, step),
+            memory=BYTES_PER_POINT * load,
+            seconds=_TRANSFORM * (6 + 4 * len(compound.parts)) * load,
+        )
+        return plan, exact
 
     def solve_pair(self, lines: tuple[Line, ...], plan: PairPlan) -> AnnualLoss:
         """The distribution of a function of two annual sums, by conditioning on the large events.
@@ -138,49 +155,112 @@ class Fourier(ExactEngine):
         """
         return paired_loss(self.name, self.solve, lines, plan)
 
-    def _given(self, compound: CompoundSum, coarse: Quantiles | None) -> tuple[float, int]:
-        """Step and points where at least one of them is given."""
-        if coarse is None:
-            return float(self.step or 0.0), int(self.points or 0)
-        if self.step is None:
-            points = int(self.points or 0)
-            reach = coarse.reach(LEAST_REACH)
-            return fitting_step(compound, reach / (points - 1), longer=True), points
-        points = coarse.points(self.step, LEAST_REACH)
-        if points > MOST_POINTS:
-            raise EngineError(
-                f"a lattice of this step needs {points:,} points ({points * BYTES_PER_POINT / 1e9:.1f} GB) "
-                f"to reach the amount exceeded once in 10,000 years; the most allowed is {MOST_POINTS:,}",
-                value=self.step,
-                remedy=f"Give a step of at least {self.step * points / MOST_POINTS:.6g}, or leave it out.",
-            )
-        return self.step, max(_far_points(coarse, self.step), 2)
+    @property
+    def _aim(self) -> float:
+        return _ACCURACY if self.accuracy is None else self.accuracy
 
-    def _refined(self, compound: CompoundSum, coarse: Quantiles) -> _Pass:
-        """The pass on the coarsest lattice that gives the accuracy asked for, or the best allowed."""
-        most = MOST_POINTS // compound.load
+    def _lattice(self, compound: CompoundSum, coarse: Quantiles) -> tuple[float, int]:
+        """Step and points of the first pass: as given, or from the accuracy."""
+        if self.points and self.step:
+            return self.step, self.points
+        if self.points:
+            return fitting_step(
+                compound, coarse.reach(LEAST_REACH) / (self.points - 1), longer=True
+            ), self.points
+        if self.step:
+            return self.step, _affordable(coarse, self.step)
         reach = coarse.reach(LEAST_REACH)
-        rounded, limited = (coarse.step_for(self.accuracy, limited=flag) for flag in (False, True))
-        step = min(max(rounded, min(limited, reach / _EASY_POINTS)), reach / _LEAST_POINTS)
-        best, shortfall = None, np.inf
+        rounded, limited = (coarse.step_for(self._aim, limited=flag) for flag in (False, True))
+        return _fitted(
+            compound, coarse, min(max(rounded, min(limited, reach / _EASY_POINTS)), reach / _LEAST_POINTS)
+        )
+
+    def _refined(self, compound: CompoundSum, coarse: Quantiles, first: tuple[float, int]) -> _Pass:
+        """The pass on the coarsest lattice that gives the accuracy aimed at, or the best allowed."""
+        best, shortfall, lattice = None, np.inf, first
         for _ in range(_PASSES):
-            step = max(step, coarse.reach(REACHES[-1]) / (most - 2))
-            fitted = fitting_step(compound, step)
-            if coarse.points(fitted, REACHES[-1]) > most:
-                fitted = step
-            current = _Pass.over(compound, fitted, _far_points(coarse, fitted))
-            worst = max(width / (factor * self.accuracy) for _, width, factor in current.widths(coarse))
-            if best is not None and worst > max(0.8 * shortfall, _CLOSE):
+            current = _Pass.over(compound, *lattice)
+            worst = max(width / (factor * self._aim) for _, width, factor in current.widths(coarse))
+            if best is not None and worst > max(0.8 * shortfall, 1.0):
                 return best if worst >= shortfall else current
             power = 1.0
             if best is not None and worst < shortfall:
                 # The width falls with the step, but often more slowly: as fast as from pass to pass.
                 power = np.log(best.step / current.step) / np.log(shortfall / worst)
             best, shortfall = current, worst
-            if worst <= _CLOSE or current.points > 0.9 * most:
+            if worst <= 1.0 or current.points > 0.9 * _most(compound):
                 return current
-            step = current.step * (0.9 / worst) ** float(np.clip(power, 1.0, 3.0))
+            lattice = _fitted(
+                compound, coarse, current.step * (0.9 / worst) ** float(np.clip(power, 1.0, 3.0))
+            )
         return best if best is not None else current
+
+    def _require_foreseeable(self, compound: CompoundSum, coarse: Quantiles) -> None:
+        """Refuse an accuracy asked for that is out of reach by far, before the work."""
+        if self.accuracy is None:
+            return
+        most, reach = _most(compound), coarse.reach(REACHES[-1])
+        width = expected_width(coarse, reach / (most - 2))
+        if width > _FORESEEN * self.accuracy:
+            level, factor = LEVELS[0]
+            needed = reach / coarse.step_for(self.accuracy, limited=True)
+            raise OutOfReachError(
+                level=level,
+                asked=factor * self.accuracy,
+                width=width,
+                needed=needed,
+                allowed=_allowed(most),
+                foreseen=True,
+            )
+
+    def _judge(self, best: _Pass, coarse: Quantiles) -> None:
+        """Refuse a bracket wider than asked for; say so where it is only wider than by default."""
+        missed = [miss for miss in best.widths(coarse) if miss[1] > miss[2] * self._aim]
+        if not missed or (self.accuracy is None and (self.points or self.step)):
+            return
+        level, width, factor = max(missed, key=lambda miss: miss[1] / miss[2])
+        asked, most = factor * self._aim, _most(best.compound)
+        if self.accuracy is None:
+            warning = BracketWarning(level, asked, width, best.points, best.step, most)
+            warnings.warn(warning, stacklevel=5)
+            return
+        given = f"the lattice given has {best.points:,}" if self.points or self.step else _allowed(most)
+        needed = best.points * width / asked
+        raise OutOfReachError(
+            level=level, asked=asked, width=width, needed=needed, allowed=given, foreseen=False
+        )
+
+
+def _most(compound: CompoundSum) -> int:
+    """The most points of a lattice of this sum."""
+    return MOST_POINTS // compound.load
+
+
+def _allowed(most: int) -> str:
+    return f"{most:,} ({most * BYTES_PER_POINT / 1e9:.1f} GB) are allowed"
+
+
+def _affordable(coarse: Quantiles, step: float) -> int:
+    """Points of a lattice of a given step."""
+    points = coarse.points(step, LEAST_REACH)
+    if points > MOST_POINTS:
+        raise EngineError(
+            f"a lattice of this step needs {points:,} points ({points * BYTES_PER_POINT / 1e9:.1f} GB) "
+            f"to reach the amount exceeded once in 10,000 years; the most allowed is {MOST_POINTS:,}",
+            value=step,
+            remedy=f"Give a step of at least {step * points / MOST_POINTS:.6g}, or leave it out.",
+        )
+    return max(_far_points(coarse, step), 2)
+
+
+def _fitted(compound: CompoundSum, coarse: Quantiles, step: float) -> tuple[float, int]:
+    """The lattice of a step, or of one not much longer, that is as long as it should and may be."""
+    most = _most(compound)
+    step = max(step, coarse.reach(REACHES[-1]) / (most - 2))
+    fitted = fitting_step(compound, step)
+    if coarse.points(fitted, REACHES[-1]) > most:
+        fitted = step
+    return fitted, _far_points(coarse, fitted)
 
 
 def _survival_of(compound: CompoundSum) -> Callable[[float, int], FloatArray]:
@@ -193,7 +273,7 @@ def survival(compound: CompoundSum, step: float, points: int) -> FloatArray:
 
 
 def _far_points(quantiles: Quantiles, step: float) -> int:
-    most = MOST_POINTS // quantiles.compound.load
+    most = _most(quantiles.compound)
     easy = max(min(_EASY_POINTS, most), int(1.25 * quantiles.points(step, LEAST_REACH)))
     return min(quantiles.far_points(step, easy=easy, most=most), most)
 

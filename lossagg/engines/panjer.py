@@ -24,6 +24,7 @@ from lossagg.engines.limited import LimitedMeans
 from lossagg.engines.pooled import pooled
 from lossagg.engines.quantiles import LEAST_REACH, REACHES, Quantiles
 from lossagg.engines.recursive import Lines
+from lossagg.engines.resources import Resources, expected_width
 from lossagg.engines.running import running_sums
 from lossagg.engines.span import arithmetic_span, fitting_step
 from lossagg.errors import EngineError, InputError
@@ -37,6 +38,11 @@ _WORK = 2.0**26
 _ACCURACY = 0.005
 _LEAST_EXCEEDANCE = 7e-4
 _NEGLIGIBLE = 1e-17
+# For the estimate of resources: recursions of one result, seconds for a product and for a point.
+_RECURSIONS = 8.0
+_PRODUCT = 3e-10
+_POINT = 4e-7
+_BYTES_PER_POINT = 200
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -106,6 +112,24 @@ class Panjer(ExactEngine):
             limited=limited,
         )
 
+    def expected(self, compound: CompoundSum) -> Resources:
+        """What `solve` will take, see `ExactEngine.resources`."""
+        compound = pooled(compound)
+        _require_recursion(compound)
+        if not compound.parts:
+            return Resources(engine="panjer", points=2, step=1.0, width=0.0, memory=0.0, seconds=0.0)
+        quantiles = Quantiles.located(compound, _COARSE_POINTS, _survival_of(compound))
+        step, points = self._lattice(compound)
+        products = _share(compound, step * points) * float(points) ** 2
+        return Resources(
+            engine="panjer",
+            points=points,
+            step=step,
+            width=0.0 if step == arithmetic_span(compound) else expected_width(quantiles, step),
+            memory=float(_BYTES_PER_POINT * points * len(compound.parts)),
+            seconds=_RECURSIONS * (_PRODUCT * products + _POINT * points),
+        )
+
     def _lattice(self, compound: CompoundSum) -> tuple[float, int]:
         """Step and points: as given, or chosen from where the quantiles lie."""
         if self.points is not None and self.step is not None:
@@ -172,8 +196,13 @@ def _affordable(quantiles: Quantiles, step: float) -> int:
 
 
 def _most_points(compound: CompoundSum, reach: float) -> int:
-    """Points at which one recursion or convolution stays within the work allowed: their square times
-    the part of the lattice that single payments cover."""
+    """Points at which one recursion or convolution stays within the work allowed."""
+    return int(min(np.sqrt(_WORK / _share(compound, reach)), MOST_POINTS))
+
+
+def _share(compound: CompoundSum, reach: float) -> float:
+    """Products of one recursion or convolution over the square of its points: the part of the lattice that
+    single payments cover."""
     share = 0.0
     for count, payment in compound.parts:
         width = min(payment.upper(min(_NEGLIGIBLE / count.mean(), 0.5)) / reach, 1.0)
@@ -181,7 +210,7 @@ def _most_points(compound: CompoundSum, reach: float) -> int:
     others = sum(not isinstance(part.frequency, Poisson) for part in compound.parts)
     if len(compound.parts) > 1:
         share = max(share, 0.25 * min(others, 4))
-    return int(min(np.sqrt(_WORK / max(share, 1e-6)), MOST_POINTS))
+    return max(share, 1e-6)
 
 
 def _require_recursion(compound: CompoundSum) -> None:

@@ -17,6 +17,7 @@ import numpy as np
 
 from lossagg.arrays import BoolArray, FloatArray
 from lossagg.engines import Fourier
+from lossagg.engines.resources import OutOfReachError
 from lossagg.errors import EngineError, FitError
 from lossagg.families import SizeTable, Spliced
 from lossagg.families.base import CountLaw, SizeLaw
@@ -43,7 +44,11 @@ def value_at_risk(frequency: CountLaw, severity: SizeLaw, level: float) -> float
     Raises:
         EngineError: a line beyond its reach.
     """
-    return float(_ENGINE.annual_loss(frequency, severity).value_at_risk(level))
+    try:
+        loss = _ENGINE.annual_loss(frequency, severity)
+    except OutOfReachError:
+        loss = Fourier().annual_loss(frequency, severity)
+    return float(loss.value_at_risk(level))
 
 
 def sensitivity(model: LineModel, tail: Data, level: float) -> list[Data]:

@@ -7,7 +7,7 @@ from lossagg.cover import Cover
 from lossagg.engines.annual import annual_loss
 from lossagg.engines.book import GROSS, NET, Book, Line, PlacedCover, Subject
 from lossagg.engines.crosscheck import crosscheck
-from lossagg.engines.fourier import BracketWarning, Fourier
+from lossagg.engines.fourier import Fourier
 from lossagg.engines.panjer import Panjer
 from lossagg.engines.recursive import severity_masses as panjer_masses
 from lossagg.engines.result import TransformedAnnualLoss
@@ -144,18 +144,6 @@ def test_the_bracket_asked_for_is_reached():
         for level, width in ((0.995, 1.1e-3), (0.999, 2.2e-3)):
             low, high = loss.accuracy("value_at_risk", level)
             assert high - low <= width * loss.value_at_risk(level)
-
-
-def test_a_bracket_out_of_reach_is_said(monkeypatch):
-    """Beyond the lattice allowed: a warning that carries the widths and the points, and a value as well."""
-    monkeypatch.setattr("lossagg.engines.fourier.MOST_POINTS", 2**16)
-    with pytest.warns(BracketWarning, match="asked for") as caught:
-        loss = Fourier(accuracy=1e-7).annual_loss(Poisson(mean=2), Exponential(mean=1.0))
-    warning = caught[0].message
-    assert warning.width > warning.asked
-    assert warning.asked in (1e-7, 2e-7)
-    assert warning.points == loss.points
-    assert warning.level in (0.995, 0.999)
 
 
 def test_a_step_that_would_need_too_many_points():
