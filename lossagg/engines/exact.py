@@ -22,6 +22,7 @@ from lossagg.engines.limited import LimitedMeans
 from lossagg.engines.pair import PairPlan, pair_plan
 from lossagg.engines.resources import Resources
 from lossagg.engines.result import AnnualLoss, BookResult, TransformedAnnualLoss
+from lossagg.engines.running import product_sum
 from lossagg.engines.tied import annual_sum
 from lossagg.errors import EngineError
 from lossagg.families.base import CountLaw, SizeLaw
@@ -208,10 +209,10 @@ def bracket(
     if compound.variance == np.inf:
         squares = (np.inf, np.inf)
     else:
-        odd = step**2 * (2.0 * np.arange(points) + 1.0)
+        odd = np.asarray(step**2 * (2.0 * np.arange(points) + 1.0), dtype=np.float64)
         squares = (
-            max(compound.second_moment - float(odd @ most) - 2.0 * top * means[1], 0.0),
-            max(compound.second_moment - float(odd @ least) - 2.0 * top * means[0], 0.0),
+            max(compound.second_moment - product_sum(odd, most) - 2.0 * top * means[1], 0.0),
+            max(compound.second_moment - product_sum(odd, least) - 2.0 * top * means[0], 0.0),
         )
     return (
         LatticeBound(engine, compound, False, step, least, means[0], squares[0]),

@@ -30,7 +30,7 @@ from lossagg.engines.resources import BracketWarning, OutOfReachError, Resources
 from lossagg.engines.result import AnnualLoss
 from lossagg.engines.running import running_sums
 from lossagg.engines.span import arithmetic_span, fitting_step
-from lossagg.engines.transform import LatticeTransform, bounded_survivals
+from lossagg.engines.transform import LatticeSum, LatticeTransform, bounded_survivals
 from lossagg.errors import EngineError, InputError
 
 MOST_POINTS = 2**22
@@ -104,16 +104,16 @@ class Fourier(ExactEngine):
             return _Pass.over(compound, 1.0, 2).loss()
         compound = compound.settled(survival)
         if self.points and self.step and self.accuracy is None:
-            return _Pass.over(compound, self.step, self.points).loss()
+            return _Pass.over(compound, self.step, self.points, last=True).loss()
         coarse = Quantiles.located(compound, _COARSE_POINTS, _survival_of(compound))
         expected, exact = self._plan(compound, coarse)
         if expected.seconds > _WORTH_A_NOTE:
             log.info("the Fourier engine needs %s", expected)
         first = expected.step, expected.points
         if exact:
-            return _Pass.over(compound, *first).loss()
+            return _Pass.over(compound, *first, last=True).loss()
         if self.points or self.step:
-            best = _Pass.over(compound, *first)
+            best = _Pass.over(compound, *first, last=True)
         else:
             self._require_foreseeable(compound, coarse)
             best = self._refined(compound, coarse, first)
@@ -289,21 +289,34 @@ class _Pass:
     low: LatticeBound
     high: LatticeBound
     limited: LimitedMeans | None
+    even: LatticeSum | None
 
     @classmethod
-    def over(cls, compound: CompoundSum, step: float, points: int) -> _Pass:
+    def over(cls, compound: CompoundSum, step: float, points: int, *, last: bool = False) -> _Pass:
+        """Compute it on two threads.
+
+        Args:
+            compound: the sum.
+            step: distance of the lattice points.
+            points: their number.
+            last: whether this is the pass that will be kept, so that the distribution itself is wanted.
+        """
         transform = LatticeTransform(compound, step, points)
         with ThreadPoolExecutor(max_workers=1) as pool:
             beside = pool.submit(transform.limited, step)
+            lowered, raised = transform.rounded()
+            above = pool.submit(transform.sum_of, raised) if last else None
+            below = transform.sum_of(lowered)
+            even = transform.even() if last else None
+            sums = (below, transform.sum_of(raised) if above is None else above.result())
             index = np.arange(float(points))
             rounded = []
-            for total, upward in zip(transform.sides(), (False, True), strict=True):
+            for total, upward in zip(sums, (False, True), strict=True):
                 inside = sum(line.expected_rounded(index, upward) for line in transform.lines)
-                least, most = bounded_survivals(total, transform.wrapped)
-                rounded.append(Rounded(least, most, step * inside))
+                rounded.append(Rounded(*bounded_survivals(total, transform.wrapped), step * inside))
             limited = beside.result()
         low, high = bracket("fourier", compound, step, rounded[0], rounded[1], limited)
-        return cls(compound, step, points, transform, low, high, limited)
+        return cls(compound, step, points, transform, low, high, limited, even)
 
     def widths(self, coarse: Quantiles) -> Iterator[tuple[float, float, float]]:
         """(level, relative width of the bracket, how many times the accuracy it may be)."""
@@ -313,7 +326,7 @@ class _Pass:
 
     def loss(self) -> LatticeLoss:
         """The annual loss on this lattice."""
-        even = self.transform.even()
+        even = self.even or self.transform.even()
         atoms, continuous = self.transform.atoms()
         return LatticeLoss(
             engine="fourier",

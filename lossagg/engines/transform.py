@@ -31,6 +31,7 @@ from lossagg.arrays import FloatArray
 from lossagg.engines.clusters import Cluster, Mixed
 from lossagg.engines.compound import CompoundSum, Part
 from lossagg.engines.limited import LimitedMeans
+from lossagg.engines.running import product_sum
 from lossagg.engines.sampling import Masses, severity_masses
 from lossagg.engines.size_biased import size_biased
 from lossagg.families.base import CountLaw
@@ -74,10 +75,10 @@ class Spread(NamedTuple):
         """Expected yearly sum of the lattice indices of the payments on the lattice."""
         masses = self.masses
         if upward:
-            total = (index[1:] @ masses.down[:-1]) + index @ masses.atoms_up
+            total = product_sum(index[1:], masses.down[:-1]) + product_sum(index, masses.atoms_up)
         else:
-            total = index @ masses.down + index @ masses.atoms_down
-        return self.frequency.mean() * float(total)
+            total = product_sum(index, masses.down) + product_sum(index, masses.atoms_down)
+        return self.frequency.mean() * total
 
 
 @dataclass(frozen=True)
@@ -145,10 +146,15 @@ class LatticeTransform:
         """The sum of payments rounded down."""
         lines = [(line.none, line.masses) for line in self.lines]
         parts = [(none, self._transform(masses.down + masses.atoms_down)) for none, masses in lines]
-        return self._back(self._joint([Argument(*part) for part in parts]))
+        return self.sum_of([Argument(*part) for part in parts])
 
     def sides(self) -> tuple[LatticeSum, LatticeSum]:
         """The sums of payments rounded down and rounded up."""
+        lowered, raised = self.rounded()
+        return self.sum_of(lowered), self.sum_of(raised)
+
+    def rounded(self) -> tuple[list[Argument], list[Argument]]:
+        """The transforms of one payment of each line rounded down and rounded up."""
         lowered, raised = [], []
         for line in self.lines:
             masses = line.masses
@@ -157,8 +163,16 @@ class LatticeTransform:
             if not np.array_equal(masses.atoms_down, masses.atoms_up):
                 atoms = self._transform(masses.atoms_up)
             raised.append(Argument(line.none, atoms, continuous, self._shift))
-        down = self._back(self._joint(lowered))
-        return down, self._back(self._joint(raised))
+        return lowered, raised
+
+    def sum_of(self, arguments: Sequence[Argument], *, below: bool = False) -> LatticeSum:
+        """The sum of payments with these transforms.
+
+        Args:
+            arguments: one payment of each line.
+            below: whether some of them are put below zero.
+        """
+        return self._back(self._joint(arguments), below=below)
 
     def kept(self) -> LatticeSum:
         """The sum of payments moved to the two nearest points with their means kept: never narrower than the
@@ -167,7 +181,7 @@ class LatticeTransform:
 
     def even(self) -> LatticeSum:
         """The sum of payments with their means kept and the sampling corrected."""
-        return self._back(self._joint([self._even_of(line) for line in self.lines]), below=True)
+        return self.sum_of([self._even_of(line) for line in self.lines], below=True)
 
     def limited(self, step: float) -> LimitedMeans | None:
         """Bounds of the limited means from payments moved to the two nearest points with their means kept.
@@ -221,7 +235,7 @@ class LatticeTransform:
         log_atoms = self._log_joint([line.none + line.atom for line in self.lines])
         if any(line.masses.atoms_even.any() for line in self.lines):
             parts = [Argument(line.none, self._transform(line.masses.atoms_even)) for line in self.lines]
-            alone = self._back(self._joint(parts)).probabilities
+            alone = self.sum_of(parts).probabilities
             alone = np.where(alone > _EPSILON, alone, 0.0)
         else:
             alone = np.zeros(self.points)
@@ -290,7 +304,7 @@ class LatticeTransform:
         """Moments of order 0, 1, 2 of what lies at negative indices, the far end of the transform."""
         index = np.arange(-(self.points // 4 + 1), 0.0)
         negative = tilted[len(tilted) - len(index) :] * np.exp(self._tilt * index)
-        return float(negative.sum()), float(index @ negative), float(index**2 @ negative)
+        return float(negative.sum()), product_sum(index, negative), product_sum(index**2, negative)
 
     def _slack(self, tilted: FloatArray) -> FloatArray:
         """Round-off of the running sums: relative errors of the transform, by Cauchy and Schwarz; and what
@@ -350,7 +364,7 @@ def bounded_survivals(total: LatticeSum, wrapped: float) -> tuple[FloatArray, Fl
 
 
 def _norm(values: FloatArray) -> float:
-    return float(np.sqrt(np.einsum("i,i", values, values)))
+    return float(np.sqrt(product_sum(values, values)))
 
 
 def _spread(part: Part, step: float, points: int) -> Spread:
@@ -371,9 +385,11 @@ def _binned(masses: Masses) -> tuple[FloatArray, FloatArray]:
     A bin is a 256th of its index wide, up to a 2,048th of the lattice: among many losses nearly all are far
     smaller than that, and each counted as so much would bound nothing.
     """
-    up = np.append(0.0, masses.down) + np.append(masses.atoms_up, 0.0)
-    width = -(-len(up) // _BINS)
+    points = len(masses.down)
+    width = -(-points // _BINS)
     near = np.rint(np.geomspace(_NEAR, max(_NEAR * width, _NEAR), max(int(_NEAR * np.log(width)), 1) + 1))
-    edges = np.concatenate((np.arange(_NEAR), near, np.arange(_NEAR * width, len(up), width)))
-    starts = np.unique(edges[edges < len(up)].astype(np.int64))
-    return np.append(starts[1:], len(up)) - 1.0, np.add.reduceat(up, starts)
+    edges = np.concatenate((np.arange(_NEAR), near, np.arange(_NEAR * width, points, width)))
+    starts = np.unique(edges[edges < points].astype(np.int64))
+    last = np.append(starts[1:], points) - 1.0
+    binned = [np.add.reduceat(part, starts) for part in (masses.down, masses.atoms_up)]
+    return np.concatenate((last + 1.0, last)), np.concatenate(binned)
