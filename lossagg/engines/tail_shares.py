@@ -14,8 +14,9 @@ import numpy as np
 
 from lossagg.arrays import FloatArray
 from lossagg.engines.compound import CompoundSum
+from lossagg.engines.folded import ComplexArray
 from lossagg.engines.running import running_sums
-from lossagg.engines.transform import ComplexArray, LatticeTransform
+from lossagg.engines.transform import LatticeTransform
 
 _SAME = 1e-12
 
@@ -24,7 +25,7 @@ class TailShares(LatticeTransform):
     """The parts of a sum on a lattice that reaches its quantile."""
 
     def _product(self, parts: list[ComplexArray]) -> ComplexArray:
-        total = np.ones(self.length // 2 + 1, dtype=np.complex128)
+        total = np.ones(self._transforms.frequencies, dtype=np.complex128)
         for part in parts:
             total *= part
         return total
@@ -44,7 +45,7 @@ class TailShares(LatticeTransform):
         """
         clusters = self._compound.clusters
         counts = [[line.frequency for line in self._of(cluster)] for cluster in clusters]
-        everywhere = slice(0, self.length // 2 + 1)
+        everywhere = slice(0, self._transforms.frequencies)
         arguments = [[self._even_of(line)(everywhere) for line in self._of(cluster)] for cluster in clusters]
         joint = [cluster.pgf(counts[k], arguments[k]) for k, cluster in enumerate(clusters)]
         total = self._back(self._product(joint), below=True)

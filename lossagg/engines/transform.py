@@ -24,20 +24,16 @@ from functools import cached_property
 from typing import NamedTuple
 
 import numpy as np
-import numpy.typing as npt
-from scipy import fft
 
 from lossagg.arrays import FloatArray
 from lossagg.engines.clusters import Cluster, Mixed
 from lossagg.engines.compound import CompoundSum, Part
+from lossagg.engines.folded import ComplexArray, Folded, transforms_of
 from lossagg.engines.limited import LimitedMeans
 from lossagg.engines.running import product_sum
 from lossagg.engines.sampling import Masses, severity_masses
 from lossagg.engines.size_biased import size_biased
 from lossagg.families.base import CountLaw
-from lossagg.families.polar import exponential
-
-ComplexArray = npt.NDArray[np.complex128]
 
 _WRAPPED = 1e-15
 _MOST_TILT = 34.0
@@ -125,7 +121,8 @@ class LatticeTransform:
         self._compound = compound
         self._lacking = compound.slack(step, points)
         self.lines = [_spread(part, step, points) for part in compound.parts]
-        self.length = int(fft.next_fast_len(2 * points, real=True))
+        self._transforms = transforms_of(2 * points)
+        self.length = self._transforms.length
         reachable, index = self._chernoff(), np.arange(float(points))
         beyond = points - sum(line.expected_rounded(index, False) for line in self.lines)
         harmless = self.length / max(beyond, 1.0)
@@ -136,11 +133,8 @@ class LatticeTransform:
 
     @cached_property
     def _shift(self) -> ComplexArray:
-        """The transform of one step: a product of two short tables."""
-        near = np.arange(_AT_ONCE) * (-2j * np.pi / self.length)
-        far = np.arange(0, self.length // 2 + 1, _AT_ONCE) * (-2j * np.pi / self.length)
-        table = np.exp(far - self._tilt)[:, None] * exponential(near)
-        return np.asarray(table.reshape(-1)[: self.length // 2 + 1])
+        """The transform of one step."""
+        return np.asarray(np.exp(-self._tilt) * self._transforms.step())
 
     def down(self) -> LatticeSum:
         """The sum of payments rounded down."""
@@ -200,29 +194,32 @@ class LatticeTransform:
         ):
             return None
         ones = [self._kept_of(line) for line in self.lines]
-        every = 1 if self.length % 2 else 2
-        length = self.length // every
-        bulges = [self._transform(line.masses.bulge, length) for line in self.lines]
-        joint = np.ones(self.length // 2 + 1, dtype=np.complex128)
-        rising = np.zeros(length // 2 + 1, dtype=np.complex128)
+        whole = self._transforms
+        few = whole.half() if whole.halves else whole
+        bulges = [self._transform(line.masses.bulge, few) for line in self.lines]
+        joint = np.ones(whole.frequencies, dtype=np.complex128)
+        rising = np.zeros(few.frequencies, dtype=np.complex128)
+        done = 0
         for piece in self._pieces():
-            own = slice(-(-piece.start // every), -(-piece.stop // every))
-            total, slope = joint[piece], rising[own]
+            total = joint[piece]
+            chosen = (lambda values: values) if few is whole else whole.every_other
+            own = slice(done, done + len(chosen(total)))
+            slope, done = rising[own], own.stop
             for cluster, laws in zip(clusters, counts, strict=True):
                 arguments = [ones[place](piece) for place in cluster.members]
                 pgf = cluster.pgf(laws, arguments)
-                few, one = pgf[::every], [argument[::every] for argument in arguments]
-                slope *= few
+                some, one = chosen(pgf), [chosen(argument) for argument in arguments]
+                slope *= some
                 for member, place in enumerate(cluster.members):
                     bulge = bulges[place]
                     if bulge is not None:
-                        brought = cluster.slope(laws, one, member, few)
-                        slope += bulge[own] * brought * total[::every]
+                        brought = cluster.slope(laws, one, member, some)
+                        slope += bulge[own] * brought * chosen(total)
                 total *= pgf
-        tilted = np.asarray(fft.irfft(rising, length, overwrite_x=True))
-        off = self._relative(sum(self._seen(cluster) for cluster in clusters)) * _norm(tilted)
+        tilted = few.inverse(rising, self.points)
+        off = self._relative(sum(self._seen(cluster) for cluster in clusters)) * tilted.norm
         least, most = bounded_survivals(self._back(joint), self.wrapped)
-        return LimitedMeans.of(step, least, most, (tilted[: self.points] + off) / self._weights)
+        return LimitedMeans.of(step, least, most, (tilted.first + off) / self._weights)
 
     def _seen(self, cluster: Cluster) -> float:
         """Expected number of losses of a year, and of the others beside one of them."""
@@ -245,12 +242,12 @@ class LatticeTransform:
 
     def _pieces(self) -> Iterator[slice]:
         """Frequencies in pieces that stay in the cache from the transform of payments to that of the sum."""
-        last = self.length // 2 + 1
+        last = self._transforms.frequencies
         return (slice(first, min(first + _AT_ONCE, last)) for first in range(0, last, _AT_ONCE))
 
     def _joint(self, arguments: Sequence[Argument]) -> ComplexArray:
         """The transform of the sum, from that of one payment of each line."""
-        joint = np.ones(self.length // 2 + 1, dtype=np.complex128)
+        joint = np.ones(self._transforms.frequencies, dtype=np.complex128)
         clusters = [(one, [line.frequency for line in self._of(one)]) for one in self._compound.clusters]
         for piece in self._pieces():
             total = joint[piece]
@@ -281,41 +278,39 @@ class LatticeTransform:
         )
 
     def _transform(
-        self, masses: FloatArray, length: int | None = None, *, below: float = 0.0
+        self, masses: FloatArray, transforms: Folded | None = None, *, below: float = 0.0
     ) -> ComplexArray | None:
         """The transform of masses on the lattice, and of one a step below it; None where there are none."""
         if below == 0.0 and not masses.any():
             return None
-        padded = np.zeros(length or self.length)
-        np.multiply(masses, self._weights, out=padded[: self.points])
-        if below != 0.0:
-            padded[-1] = below * np.exp(self._tilt)
-        return np.asarray(fft.rfft(padded, overwrite_x=True))
+        one_below = float(below * np.exp(self._tilt))
+        return (transforms or self._transforms).forward(masses * self._weights, one_below)
 
     def _back(self, product: ComplexArray, *, below: bool = False) -> LatticeSum:
-        tilted = np.asarray(fft.irfft(product, self.length, overwrite_x=True))
+        tilted = self._transforms.inverse(product, self.points, self.points // 4 + 1 if below else 0)
         return LatticeSum(
-            np.asarray(tilted[: self.points] / self._weights),
-            self._below(tilted) if below else (0.0, 0.0, 0.0),
-            self._slack(tilted),
+            np.asarray(tilted.first / self._weights), self._below(tilted.last), self._slack(tilted.norm)
         )
 
     def _below(self, tilted: FloatArray) -> tuple[float, float, float]:
         """Moments of order 0, 1, 2 of what lies at negative indices, the far end of the transform."""
-        index = np.arange(-(self.points // 4 + 1), 0.0)
-        negative = tilted[len(tilted) - len(index) :] * np.exp(self._tilt * index)
+        index = np.arange(-float(len(tilted)), 0.0)
+        negative = tilted * np.exp(self._tilt * index)
         return float(negative.sum()), product_sum(index, negative), product_sum(index**2, negative)
 
-    def _slack(self, tilted: FloatArray) -> FloatArray:
+    def _slack(self, norm: float) -> FloatArray:
         """Round-off of the running sums: relative errors of the transform, by Cauchy and Schwarz; and what
         a rule for the factors that lines share may still lack.
 
         Each transform is off by a few log2(length) roundings, and the count multiplies a relative
         error of one payment's transform by at most its mean. An estimate by norms, not a proof; tested
         against recursions in extended precision.
+
+        Args:
+            norm: the norm of the tilted sequence.
         """
         count = sum(line.frequency.mean() for line in self.lines)
-        slack = self._relative(count) * _norm(tilted) * self._growth
+        slack = self._relative(count) * norm * self._growth
         return np.asarray(slack + self._lacking) if np.any(self._lacking) else slack
 
     def _relative(self, count: float) -> float:
@@ -361,10 +356,6 @@ def bounded_survivals(total: LatticeSum, wrapped: float) -> tuple[FloatArray, Fl
     least, most = np.empty(len(total.slack)), np.empty(len(total.slack))
     survival_bounds(total.probabilities, total.slack, wrapped, least, most)
     return least, most
-
-
-def _norm(values: FloatArray) -> float:
-    return float(np.sqrt(product_sum(values, values)))
 
 
 def _spread(part: Part, step: float, points: int) -> Spread:
