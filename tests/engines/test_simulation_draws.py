@@ -9,6 +9,8 @@ from lossagg.engines.search_table import count_sampler
 from lossagg.engines.streams import block_state
 from lossagg.errors import EngineError
 from lossagg.families import (
+    COUNT_FAMILIES,
+    SIZE_FAMILIES,
     Binomial,
     Burr,
     CountTable,
@@ -16,6 +18,8 @@ from lossagg.families import (
     Gamma,
     GeneralizedPareto,
     InverseGaussian,
+    LogGamma,
+    LogLogistic,
     Lognormal,
     Lomax,
     Mixture,
@@ -25,6 +29,8 @@ from lossagg.families import (
     SizeTable,
     Spliced,
     Weibull,
+    ZeroInflated,
+    ZeroModified,
 )
 from lossagg.kernels.simulation import draw_bits, draw_sizes, draw_uniforms
 
@@ -48,6 +54,8 @@ CONTINUOUS = {
     "weibull": Weibull(shape=0.7, scale=900.0),
     "inverse gaussian": InverseGaussian(mean=1000.0, shape=300.0),
     "burr": Burr(alpha=2.0, gamma=1.5, scale=800.0),
+    "log-gamma": LogGamma(shape=2.5, rate=3.2, minimum=1000.0),
+    "log-logistic": LogLogistic(gamma=1.3, scale=10.0),
     "spliced": SPLICED,
     "mixture": Mixture(weights=[0.7, 0.3], parts=[Exponential(mean=100.0), Pareto(alpha=2.0, minimum=500.0)]),
 }
@@ -163,7 +171,16 @@ COUNTS = {
     "negative binomial, wide": NegativeBinomial(mean=3000.0, dispersion=2.0),
     "binomial": Binomial(trials=20, probability=0.1),
     "table": CountTable(probabilities=[0.1, 0.0, 0.6, 0.3]),
+    "zero-modified": ZeroModified(base=Poisson(mean=2.0), zero_probability=0.5),
+    "zero-inflated": ZeroInflated(base=NegativeBinomial(mean=4.0, dispersion=0.5), extra_zeros=0.2),
 }
+
+
+def test_no_law_is_left_out_here():
+    """Every law of the public surface is drawn in these tests; a new one must be added to them."""
+    sizes = {law.family for law in CONTINUOUS.values()} | {SizeTable.family}
+    assert sizes == set(SIZE_FAMILIES)
+    assert {law.family for law in COUNTS.values()} == set(COUNT_FAMILIES)
 
 
 @pytest.mark.parametrize("name", COUNTS)
