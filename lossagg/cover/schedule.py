@@ -77,6 +77,8 @@ class Schedule:
 
     def __call__(self, losses: FloatArray) -> FloatArray:
         """The payment for each loss."""
+        if self.is_proportional:
+            return np.asarray(self.slopes[0] * np.maximum(losses, 0.0))
         starts, values, slopes = self.arrays()
         piece = np.maximum(np.searchsorted(starts, losses, side="left") - 1, 0)
         return np.where(losses > 0, values[piece] + slopes[piece] * (losses - starts[piece]), 0.0)

@@ -57,7 +57,10 @@ class LargestYears:
         """
         chosen = np.arange(ranked.size)
         if ranked.size > self._number:
-            chosen = np.sort(np.argsort(-ranked, kind="stable")[: self._number])
+            place = ranked.size - self._number
+            least = np.partition(ranked, place)[place]
+            above, equal = np.flatnonzero(ranked > least), np.flatnonzero(ranked == least)
+            chosen = np.sort(np.concatenate((above, equal[: self._number - above.size])))
         with self._lock:
             if self._years.size == self._number:
                 # Equal amounts may still win by an earlier year.
