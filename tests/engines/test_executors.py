@@ -13,7 +13,7 @@ from lossagg.commands.app import build_app
 from lossagg.cover import Cover
 from lossagg.engines import executors
 from lossagg.engines.book import Book, Line, PlacedCover
-from lossagg.engines.dependence import Copula, SharedFactor
+from lossagg.engines.dependence import CommonShock, Copula, SharedFactor
 from lossagg.engines.executors import UNDER_WAY, cluster, installed_version, on_executor
 from lossagg.engines.simulation import Simulation
 from lossagg.engines.streams import BLOCK_YEARS
@@ -32,10 +32,13 @@ BOOK = Book(
         Line(name="crew", frequency=Poisson(mean=6.0), severity=Lognormal(mu=8.0, sigma=0.9)),
         Line(name="quay", frequency=Poisson(mean=0.4), severity=Lognormal(mu=11.0, sigma=1.0)),
         Line(name="cargo", frequency=Poisson(mean=1.0), severity=Lognormal(mu=9.5, sigma=1.0)),
+        Line(name="tug", frequency=Poisson(mean=0.5), severity=Lognormal(mu=9.0, sigma=1.0)),
+        Line(name="ferry", frequency=Poisson(mean=1.5), severity=Lognormal(mu=8.5, sigma=1.0)),
     ),
     covers=(PlacedCover(name="excess", terms=Cover(deductible=20_000.0, limit=1e5, annual_limit=2.5e5)),),
     dependences=(
         SharedFactor(name="activity", lines=("hull", "crew"), on="frequency", variance=0.1),
+        CommonShock(name="gale", lines=("tug", "ferry"), rate=0.3),
         Copula(name="harbour", lines=("quay", "cargo"), correlation=0.4, degrees_of_freedom=3.0),
     ),
 )

@@ -41,6 +41,14 @@ lines = ["Theft", "Fire"]
 correlation = [[1, 0.5], [0.5, 1]]
 evidence-years = 10
 """
+SHOCK = """
+[[dependence]]
+name = "Storm"
+kind = "common-shock"
+lines = ["Fire", "Theft"]
+rate = 2.5
+evidence = "invented for this test"
+"""
 
 
 def written(folder: Path, text: str) -> dict:
@@ -53,6 +61,12 @@ def written(folder: Path, text: str) -> dict:
 def factor(tmp_path_factory: pytest.TempPathFactory) -> tuple[Path, dict]:
     folder = tmp_path_factory.mktemp("factor")
     return folder, written(folder, POISSONS + FACTOR)
+
+
+@pytest.fixture(scope="module")
+def shock(tmp_path_factory: pytest.TempPathFactory) -> tuple[Path, dict]:
+    folder = tmp_path_factory.mktemp("shock")
+    return folder, written(folder, POISSONS + SHOCK)
 
 
 @pytest.fixture(scope="module")
@@ -187,7 +201,7 @@ def test_the_report_shows_dependence_and_the_years_near_capital(factor: tuple[Pa
         assert f"Year {year['year']:,}" in page
 
 
-@pytest.mark.parametrize("which", ["factor", "copula"])
+@pytest.mark.parametrize("which", ["factor", "copula", "shock"])
 def test_the_years_near_capital_are_the_nearest(which: str, request: pytest.FixtureRequest) -> None:
     """Their net is next to the figure; their events, with the smaller ones, add up to the gross."""
     _, data = request.getfixturevalue(which)
@@ -204,7 +218,7 @@ def test_the_years_near_capital_are_the_nearest(which: str, request: pytest.Fixt
         assert abs(amounts["gross"] - paid - amounts["net"]) < 0.005
 
 
-@pytest.mark.parametrize("which", ["factor", "copula"])
+@pytest.mark.parametrize("which", ["factor", "copula", "shock"])
 def test_any_year_from_the_file_alone(which: str, request: pytest.FixtureRequest) -> None:
     """Rebuilt from assessment.json, a year has the annual figures of the run, to the cent."""
     folder, data = request.getfixturevalue(which)
@@ -217,6 +231,30 @@ def test_any_year_from_the_file_alone(which: str, request: pytest.FixtureRequest
         year = replay_assessment(read, number)
         for subject, amount in year.amounts.items():
             assert abs(amount - run.losses[subject].annual[number - 1]) < 0.005
+
+
+def test_a_shock_is_one_event_to_the_cover_of_its_lines(shock: tuple[Path, dict]) -> None:
+    """Lines and gross stay exact; the layer and the net are simulated and say why; a replayed year shows the
+    event with its parts, and the layer acts on their sum."""
+    folder, data = shock
+    assert not [own for own in data["cautions"] if own["code"] == "common-shock"]
+    text = json.dumps(data)
+    assert "'Layer' sees what 'Storm' costs several lines as one event" in text
+    events = [event for year in data["years_near_capital"]["years"] for event in year["events"]]
+    both = [event for event in events if event["shock"]]
+    assert both
+    for event in both:
+        assert event["line"] == "Fire + Theft"
+        assert abs(sum(part["cost"] for part in event["parts"]) - event["cost"]) < 0.005
+        layer = event["payments"][0]
+        assert abs(layer["paid"] - min(max(event["cost"] - 10_000, 0), 50_000)) < 0.005
+    year = str(data["years_near_capital"]["years"][0]["year"])
+    result = CliRunner().invoke(build_app(), ["replay", str(folder / "out"), "--year", year])
+    assert result.exit_code == 0, result.output
+    for words in ("Fire + Theft", "(one event)", "of it Fire", "of it Theft"):
+        assert words in result.output
+    page = (folder / "out" / "report.html").read_text(encoding="utf-8")
+    assert "Fire + Theft (one event)" in page
 
 
 def test_the_command_prints_events_payments_and_reasons(factor: tuple[Path, dict]) -> None:
