@@ -1,4 +1,4 @@
-"""Brackets that hold the truth and are narrow also for many losses, and round-off within its bound."""
+"""Brackets that hold the truth and are narrow also for many losses."""
 
 import importlib.util
 import sys
@@ -8,16 +8,12 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from lossagg.cover import Cover, Schedule
-from lossagg.engines.book import Line
-from lossagg.engines.compound import CompoundSum
+from lossagg.cover import Cover
 from lossagg.engines.far_tail import FarTail
 from lossagg.engines.fourier import BracketWarning, Fourier
 from lossagg.engines.panjer import Panjer
 from lossagg.engines.pgf_slope import pgf_slope
-from lossagg.engines.running import running_sums
 from lossagg.engines.size_biased import size_biased
-from lossagg.engines.transform import LatticeTransform
 from lossagg.families import (
     Binomial,
     CountTable,
@@ -189,45 +185,3 @@ def test_the_count_seen_from_one_loss(count):
         exact = np.sum(numbers[1:] * chances[1:] * z ** numbers[:-1])
         assert pgf_slope(count, np.array([z]))[0] == pytest.approx(exact, rel=1e-12)
         assert count.mean() * size_biased(count).pgf(z) == pytest.approx(exact, rel=1e-12)
-
-
-def extended(count, masses, points):
-    """Panjer's recursion in extended precision, as the books write it."""
-    a, b = (np.longdouble(value) for value in count.recursion)
-    f = masses.astype(np.longdouble)
-    result = np.zeros(points, dtype=np.longdouble)
-    if a == 0:
-        result[0] = np.exp(-b * (1 - f[0]))
-    else:
-        result[0] = ((1 - a) / (1 - a * f[0])) ** ((a + b) / a)
-    j = np.arange(points, dtype=np.longdouble)
-    for n in range(1, points):
-        terms = (a + b * j[1 : n + 1] / n) * f[1 : n + 1] * result[n - 1 :: -1][:n]
-        result[n] = terms.sum() / (1 - a * f[0])
-    return result
-
-
-@pytest.mark.skipif(np.finfo(np.longdouble).eps > 1e-18, reason="long double is no longer than double here")
-def test_round_off_of_the_transform_stays_within_its_bound():
-    """The bound of the round-off in running sums is an estimate by norms: against a recursion with 64-bit
-    mantissa on random laws, counts from 0.1 to 2,000, the actual error never exceeds it."""
-    random = np.random.default_rng(5)
-    for _ in range(25):
-        points = int(random.integers(60, 500))
-        mean = float(np.exp(random.uniform(np.log(0.1), np.log(2000.0))))
-        count = Poisson(mean=mean) if random.random() < 0.5 else NegativeBinomial(mean=mean, dispersion=0.3)
-        places = np.arange(0.0, float(random.integers(2, 40)))
-        chances = random.dirichlet(np.full(len(places), 0.3))
-        size = SizeTable(sizes=places.tolist(), probabilities=chances.tolist())
-        compound = CompoundSum.of(
-            (Line(name="x", frequency=count, severity=size),), {"x": Schedule.identity()}
-        )
-        if not compound.parts:
-            continue
-        transform = LatticeTransform(compound, 1.0, points)
-        masses = np.zeros(points)
-        masses[: len(places)] = np.asarray(chances / chances.sum())[:points]
-        exact = np.cumsum(extended(count, masses, points))
-        total, _ = transform.sides()
-        error = np.abs(running_sums(total.probabilities) - exact).astype(float)
-        assert (error <= total.slack + transform.wrapped + 2e-16).all()
