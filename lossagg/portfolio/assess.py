@@ -9,6 +9,7 @@ from lossagg.engines import Fourier, Panjer, Simulation
 from lossagg.engines.book import GROSS, NET, Book, Subject
 from lossagg.engines.crosscheck import crosscheck
 from lossagg.engines.result import AnnualLoss, BookResult
+from lossagg.portfolio.alarms import alarms_data
 from lossagg.portfolio.allocating import allocation_data
 from lossagg.portfolio.assessment import (
     WITHHELD,
@@ -80,7 +81,7 @@ def figures(
 ) -> Data:
     """Lines (with their `evidence_of`), gross, net, covers, crosscheck and headline of the assessment; the
     years nearest to it, and gross and net of independent lines (`apart`) where the book has dependences; the
-    headline with the parameters drawn, where `models` gives the fits.
+    headline with the parameters drawn and the means that may not exist, where `models` gives the fits.
     """
     asked = tuple(sorted({*levels, capital_level}))
     check = crosscheck(book, results, asked)
@@ -134,7 +135,13 @@ def figures(
             seed=seed,
             years=years,
         ),
-        "predictive": predictive_data(book, models, reported, asked, seed=seed, withheld=withheld),
+        "alarms": alarms_data(book, models),
+        "predictive": predictive_data(
+            *(book, models, reported, asked),
+            simulated=results["simulation"].losses,
+            seed=seed,
+            withheld=withheld,
+        ),
         "dependence_bounds": bounds_data(
             book,
             reported,

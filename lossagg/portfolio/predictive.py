@@ -26,7 +26,7 @@ from lossagg.engines.fourier import survival
 from lossagg.engines.pair import pair_plan
 from lossagg.engines.result import AnnualLoss, TransformedAnnualLoss
 from lossagg.engines.tied import annual_sum
-from lossagg.errors import EngineError
+from lossagg.errors import DoesNotExistError, EngineError
 from lossagg.portfolio.assessment import Data, number
 from lossagg.portfolio.line import LineModel
 from lossagg.portfolio.parameter_draws import drawn_lines, uncertain
@@ -43,6 +43,7 @@ def predictive_data(
     losses: Mapping[Subject, AnnualLoss],
     levels: Sequence[float],
     *,
+    simulated: Mapping[Subject, AnnualLoss] | None = None,
     seed: int,
     withheld: str = "",
 ) -> Data:
@@ -53,6 +54,7 @@ def predictive_data(
         models: the lines with their fits.
         losses: gross and net as reported; net is taken, and gross where net cannot be followed.
         levels: ascending.
+        simulated: gross and net as simulated, whose intervals stand beside those of the parameters.
         seed: of the draws.
         withheld: why every figure is; empty where none is.
     """
@@ -68,7 +70,8 @@ def predictive_data(
         except EngineError as refusal:
             entry["reason"] = entry["reason"] or f"{subject.kind}: {refusal.what}"
             continue
-        rows = [_row(tails, step, level, loss) for level in levels]
+        beside = (simulated or {}).get(subject)
+        rows = [_row(tails, step, level, loss) | _by_simulation(beside, level) for level in levels]
         return {**entry, "subject": subject.kind, "draws": DRAWS, "levels": rows}
     return entry
 
@@ -111,8 +114,8 @@ def _tails(sums: Sequence[CompoundSum], start: float, least: float) -> tuple[flo
 
 
 def _row(tails: FloatArray, step: float, level: float, loss: AnnualLoss) -> Data:
-    """One level: the figure as fitted, the predictive one with its interval, and how often a year exceeds the
-    first when the parameters are uncertain."""
+    """One level: the figure as fitted, the range of the drawn laws' own figures, the predictive one with its
+    interval, and how often a year exceeds the first when the parameters are uncertain."""
     fitted, drawn = tails[0], tails[1:]
     mixed = drawn.mean(axis=0)
     allowed = 1.0 - level
@@ -127,14 +130,28 @@ def _row(tails: FloatArray, step: float, level: float, loss: AnnualLoss) -> Data
 
     error = _WIDTH * float(np.std(_between(drawn, at), ddof=1)) / np.sqrt(len(drawn))
     ends = [_quantile(mixed, allowed + error), _quantile(mixed, max(allowed - error, mixed[-1]))]
+    own_of_draws = [_quantile(one, allowed) for one in drawn]
+    span = np.quantile(own_of_draws, [0.025, 0.975]).tolist()
     return {
         "level": level,
         "fitted": number(loss.value_at_risk(level)),
         "predictive": number(figure(at)),
         "low": number(figure(ends[0])),
         "high": number(figure(ends[1])),
+        "parameters": [number(figure(end)) for end in span],
         "exceedance_of_fitted": float(_between(drawn, own).mean()),
     }
+
+
+def _by_simulation(loss: AnnualLoss | None, level: float) -> Data:
+    """The 95 % interval of the simulation, which more simulated years narrow; None where there is none."""
+    if loss is None:
+        return {"simulation": None}
+    try:
+        low, high = loss.accuracy("value_at_risk", level)
+    except DoesNotExistError:
+        return {"simulation": None}
+    return {"simulation": [number(low), number(high)]}
 
 
 def _base(loss: AnnualLoss) -> AnnualLoss:

@@ -8,7 +8,7 @@ with it; how many digits are shown follows from the accuracy, by one rule (see `
 from __future__ import annotations
 
 import re
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
 from lossagg.report import digits
@@ -45,21 +45,24 @@ class Absent:
 class Ranged:
     """A figure with the range that travels with it: a guaranteed bracket or a statistical interval.
 
-    `reason` says why a figure that should have a range has none.
+    `reason` says why a figure that should have a range has none; `mark` stands beside the figure and is
+    explained at the foot of the table.
     """
 
     value: float
     low: float | None
     high: float | None
     reason: str | None = None
+    mark: str = ""
 
 
 @dataclass(frozen=True)
 class Estimated:
-    """A figure with its standard error; an error of `None` means that none can be stated."""
+    """A figure with its standard error; an error of `None` means that none can be stated. `mark` as above."""
 
     value: float
     error: float | None
+    mark: str = ""
 
 
 Cell = str | int | float | Absent | Ranged | Estimated
@@ -110,11 +113,15 @@ def show(cell: Cell, kind: Kind) -> Shown:
     if isinstance(cell, str):
         return Shown(clean(cell))
     if isinstance(cell, Ranged):
-        return _show_ranged(cell)
+        return _marked(_show_ranged(cell), cell.mark)
     if isinstance(cell, Estimated):
         text = digits.estimated(cell.value, cell.error, probability=kind == "probability")
-        return Shown(text, full=repr(float(cell.value)), numeric=True)
+        return _marked(Shown(text, full=repr(float(cell.value)), numeric=True), cell.mark)
     return Shown(_show_number(cell, kind), full=repr(cell), numeric=True)
+
+
+def _marked(shown: Shown, mark: str) -> Shown:
+    return replace(shown, text=f"{shown.text} {mark}") if mark else shown
 
 
 def _show_ranged(cell: Ranged) -> Shown:

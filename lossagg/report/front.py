@@ -6,7 +6,7 @@ from typing import Any
 
 from lossagg.report import digits, tables
 from lossagg.report.cells import Absent, show
-from lossagg.report.reading import Assessment, Entry, engine_range_name, every_caution, years_observed
+from lossagg.report.reading import Assessment, Entry, doubts, engine_range_name, every_caution, years_observed
 from lossagg.report.wording import MEASURES, headline_sentence
 
 FINDING_ORDER = ("stop", "set aside", "warning", "normalised")
@@ -94,10 +94,17 @@ def status(assessment: Assessment) -> list[tuple[str, str, int]]:
         ("Data", _data_status(assessment), 5),
         ("Findings", _finding_status(assessment), 6),
         ("Reach of the data", _reach(years, level), 1),
+        *_doubt_status(assessment),
         *_predictive_status(assessment),
         *_option_status(assessment),
         ("Cautions", _caution_status(assessment), 7),
     ]
+
+
+def _doubt_status(assessment: Assessment) -> list[tuple[str, str, int]]:
+    """That means and tail values at risk may not exist; empty where nothing speaks for that."""
+    text = doubts(assessment, [entry["subject"] for entry in assessment.get("alarms") or ()])
+    return [("Means in doubt", text[0], 2)] if text else []
 
 
 def _predictive_status(assessment: Assessment) -> list[tuple[str, str, int]]:

@@ -8,9 +8,10 @@ not there (no limit). Which of these it is follows from the entry and from the r
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from typing import Any
 
-from lossagg.report.cells import Absent, Cell, Estimated, Ranged
+from lossagg.report.cells import Absent, Cell, Estimated, Ranged, clean
 from lossagg.report.wording import STANDING_CAUTIONS
 
 Entry = Mapping[str, Any]
@@ -21,6 +22,7 @@ EXACT_ENGINES = ("fourier", "panjer")
 DOES_NOT_EXIST = "does not exist"
 WITHHELD = "withheld"
 NOT_COMPUTED = "not computed"
+DOUBT = "†"
 NO_INTERVAL = "the accuracy of this figure cannot be stated"
 
 
@@ -37,11 +39,6 @@ def absent(reason: str | None) -> Absent:
 def missing(assessment: Assessment) -> Absent:
     """The words for a missing moment: withheld when the headline is, else it does not exist."""
     return Absent(WITHHELD if assessment["headline"]["withheld"] else DOES_NOT_EXIST)
-
-
-def existing(value: float | None, missing: Absent) -> Cell:
-    """A number, or the words for its absence."""
-    return missing if value is None else value
 
 
 def computed(value: float | None) -> Cell:
@@ -64,6 +61,33 @@ def ranged(figure: Entry) -> Cell:
     return Ranged(figure["value"], low, high)
 
 
+def doubted(assessment: Assessment, subject: str) -> tuple[str, ...]:
+    """The lines whose losses do not rule out that the mean of a subject is infinite."""
+    for entry in assessment.get("alarms") or ():
+        if entry["subject"] == subject:
+            return tuple(entry["lines"])
+    return ()
+
+
+def marked(cell: Cell, assessment: Assessment, subject: str) -> Cell:
+    """A mean or tail value at risk with a mark where it may not exist."""
+    if isinstance(cell, Ranged | Estimated) and doubted(assessment, subject):
+        return replace(cell, mark=DOUBT)
+    return cell
+
+
+def doubts(assessment: Assessment, subjects: Sequence[str]) -> tuple[str, ...]:
+    """What the mark stands for, at the foot of a table of these subjects; empty where nothing is marked."""
+    lines = dict.fromkeys(line for subject in subjects for line in doubted(assessment, subject))
+    if not lines:
+        return ()
+    return (
+        f"{DOUBT} The losses of {', '.join(clean(line) for line in lines)} do not rule out an infinite mean: "
+        "the 95 % interval of the tail index reaches 1. The figure is that of the fitted law; lean on it "
+        "only under a limit.",
+    )
+
+
 def moment(assessment: Assessment, subject: str, measure: str, value: float | None, engine: str) -> Cell:
     """A mean or standard deviation with the accuracy that the crosscheck states for it.
 
@@ -74,6 +98,10 @@ def moment(assessment: Assessment, subject: str, measure: str, value: float | No
         value: the figure, `None` where there is none.
         engine: the engine it comes from.
     """
+    return marked(_moment(assessment, subject, measure, value, engine), assessment, subject)
+
+
+def _moment(assessment: Assessment, subject: str, measure: str, value: float | None, engine: str) -> Cell:
     if value is None:
         return missing(assessment)
     for row in assessment["crosscheck"]["comparisons"]:

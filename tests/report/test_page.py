@@ -268,3 +268,32 @@ def test_simulated_figure_without_an_interval_keeps_two_digits_and_says_why() ->
     text = Page(render_report(assessment)).text
     assert "13,000,000 no interval" in text
     assert "no interval: the variance is infinite" in text
+
+
+def test_means_that_may_not_exist_are_marked_beside_the_figure() -> None:
+    """Expected annual loss and tail value at risk carry the mark, value at risk does not; the foot of every
+    such table and the first page say why."""
+    from lossagg.report import tables
+    from lossagg.report.cells import show
+
+    assessment = sample_assessment()
+    line = assessment["lines"][0]["name"]
+    assessment["alarms"] = [
+        {"subject": "gross", "lines": [line]},
+        {"subject": f"line {line}", "lines": [line]},
+    ]
+    text = f"† The losses of {line} do not rule out an infinite mean"
+    levels = tables.totals.levels(assessment)
+    for row in levels.rows:
+        shown = [show(cell, "money").text for cell in row[2:]]
+        assert [word.endswith(" †") for word in shown] == [False, True, False, False]
+    assert any(note.startswith(text) for note in levels.notes)
+    moments = tables.totals.moments(assessment)
+    assert show(moments.rows[0][1], "money").text.endswith(" †")
+    assert not show(moments.rows[1][1], "money").text.endswith(" †")
+    overview = tables.lines.overview(assessment)
+    assert [show(row[4], "money").text.endswith(" †") for row in overview.rows] == [True, False, False]
+    page = render_report(assessment)
+    assert "Means in doubt" in page
+    assert page.count(text) >= 4
+    assert "†" not in render_report(sample_assessment())

@@ -6,7 +6,7 @@ from typing import Any
 
 from lossagg.report import digits
 from lossagg.report.cells import Absent, Cell, Column, Table, clean
-from lossagg.report.reading import Assessment, chance, missing, moment, reasons
+from lossagg.report.reading import Assessment, chance, doubts, missing, moment, reasons
 from lossagg.report.tables.totals import level_row
 
 CANNOT_EXHAUST = "cannot be exhausted"
@@ -133,6 +133,7 @@ def results(assessment: Assessment) -> Table:
         "Expected annual cost is what the cover pays on average in a year, without expenses or loadings. "
         "Attachment: the cover pays at all in a year. Exhaustion: it pays its annual limit in full; without "
         "one, some event uses up the limit per event.",
+        *doubts(assessment, [f"cover {cover['name']}" for cover in assessment["covers"]]),
         *_reinstatement_notes(assessment["covers"]),
     )
     return Table("Covers", f"Covers: cost, {currency} a year", columns, tuple(rows), notes)
@@ -142,7 +143,9 @@ def levels(assessment: Assessment) -> Table:
     """What each cover pays in a bad year, by level."""
     currency = assessment["portfolio"]["currency"]
     rows = tuple(
-        (cover["name"], *level_row(row)) for cover in assessment["covers"] for row in cover["levels"]
+        (cover["name"], *level_row(row, assessment, f"cover {cover['name']}"))
+        for cover in assessment["covers"]
+        for row in cover["levels"]
     )
     columns = (
         Column("Cover"),
@@ -151,5 +154,6 @@ def levels(assessment: Assessment) -> Table:
         Column("VaR of payments", "money", ranged=True),
         Column("TVaR of payments", "money", ranged=True),
     )
-    notes = reasons([cell for row in rows for cell in row])
+    subjects = [f"cover {cover['name']}" for cover in assessment["covers"]]
+    notes = (*reasons([cell for row in rows for cell in row]), *doubts(assessment, subjects))
     return Table("Cover levels", f"Covers by level, {currency}", columns, rows, notes)

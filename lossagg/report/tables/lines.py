@@ -3,8 +3,8 @@
 from __future__ import annotations
 
 from lossagg.report import digits
-from lossagg.report.cells import Absent, Cell, Column, Estimated, Table, clean
-from lossagg.report.reading import Assessment, Entry, existing, moment, reasons
+from lossagg.report.cells import Absent, Cell, Column, Estimated, Ranged, Table, clean
+from lossagg.report.reading import Assessment, Entry, doubts, marked, moment, reasons
 from lossagg.report.tables.totals import level_row
 
 GIVEN = "given, not estimated"
@@ -34,7 +34,7 @@ def overview(assessment: Assessment) -> Table:
                 law_text(count),
                 law_text(size),
                 Estimated(count["mean"], (count["standard_errors"] or {}).get("mean")),
-                existing(size["mean"], Absent("does not exist")),
+                _mean_loss(assessment, line),
                 moment(assessment, subject, "mean", line["mean"], engine),
                 moment(assessment, subject, "sd", line["sd"], engine),
                 _tail(size),
@@ -53,9 +53,16 @@ def overview(assessment: Assessment) -> Table:
     notes = (
         f"Amounts in {currency}, gross, at the exposure of the forecast period. ± is one standard error.",
         "Tail index: moments of this order and above do not exist.",
+        *doubts(assessment, [f"line {line['name']}" for line in assessment["lines"]]),
         *_expenses(assessment["lines"]),
     )
     return Table("Lines", f"Lines, {currency}", columns, tuple(rows), notes)
+
+
+def _mean_loss(assessment: Assessment, line: Entry) -> Cell:
+    if line["severity"]["mean"] is None:
+        return Absent("does not exist")
+    return marked(Ranged(line["severity"]["mean"], None, None), assessment, f"line {line['name']}")
 
 
 def _expenses(entries: list[Entry]) -> tuple[str, ...]:
@@ -79,7 +86,11 @@ def _tail(size: Entry) -> Cell:
 def levels(assessment: Assessment) -> Table:
     """Value at risk and tail value at risk of each line by itself, gross."""
     currency = assessment["portfolio"]["currency"]
-    rows = tuple((line["name"], *level_row(row)) for line in assessment["lines"] for row in line["levels"])
+    rows = tuple(
+        (line["name"], *level_row(row, assessment, f"line {line['name']}"))
+        for line in assessment["lines"]
+        for row in line["levels"]
+    )
     columns = (
         Column("Line"),
         Column("Level", "level"),
@@ -87,5 +98,9 @@ def levels(assessment: Assessment) -> Table:
         Column("VaR", "money", ranged=True),
         Column("TVaR", "money", ranged=True),
     )
-    notes = (*reasons([cell for row in rows for cell in row]), "Lines stand alone here; they do not add up.")
+    notes = (
+        *reasons([cell for row in rows for cell in row]),
+        *doubts(assessment, [f"line {line['name']}" for line in assessment["lines"]]),
+        "Lines stand alone here; they do not add up.",
+    )
     return Table("Line levels", f"Lines by level, gross, {currency}", columns, rows, notes)

@@ -8,7 +8,9 @@ from lossagg.report.reading import (
     Assessment,
     Entry,
     absent,
+    doubts,
     engine_range_name,
+    marked,
     moment,
     ranged,
     reasons,
@@ -23,7 +25,9 @@ def headline_figure(assessment: Assessment) -> Cell:
     headline = assessment["headline"]
     if headline["withheld"]:
         return Absent("withheld", headline["reason"])
-    return ranged(headline)
+    if headline["measure"] == "value_at_risk":
+        return ranged(headline)
+    return marked(ranged(headline), assessment, headline["subject"])
 
 
 def less_mean(assessment: Assessment) -> Cell:
@@ -33,7 +37,8 @@ def less_mean(assessment: Assessment) -> Cell:
         return absent(entry["reason"] if entry["withheld"] else None)
     if entry["low"] is None or entry["high"] is None:
         return Ranged(entry["less_mean"], None, None, NO_INTERVAL)
-    return Ranged(entry["less_mean"], entry["low"] - entry["mean"], entry["high"] - entry["mean"])
+    found = Ranged(entry["less_mean"], entry["low"] - entry["mean"], entry["high"] - entry["mean"])
+    return marked(found, assessment, entry["subject"])
 
 
 def headline(assessment: Assessment) -> Table:
@@ -65,12 +70,19 @@ def headline(assessment: Assessment) -> Table:
         Column("Crosscheck"),
         Column("Label"),
     )
-    return Table("Headline", f"Headline, {currency}", columns, (cells,), reasons(cells))
+    return Table(
+        "Headline",
+        f"Headline, {currency}",
+        columns,
+        (cells,),
+        (*reasons(cells), *doubts(assessment, (entry["subject"],))),
+    )
 
 
-def level_row(row: Entry) -> tuple[Cell, ...]:
-    """Level, return period, value at risk and tail value at risk of one entry of `levels`."""
-    return (row["level"], row["return_period"], ranged(row["var"]), ranged(row["tvar"]))
+def level_row(row: Entry, assessment: Assessment, subject: str) -> tuple[Cell, ...]:
+    """Level, return period, value at risk and tail value at risk of one entry of a subject's `levels`."""
+    tail = marked(ranged(row["tvar"]), assessment, subject)
+    return (row["level"], row["return_period"], ranged(row["var"]), tail)
 
 
 def levels(assessment: Assessment) -> Table:
@@ -78,7 +90,7 @@ def levels(assessment: Assessment) -> Table:
     currency = assessment["portfolio"]["currency"]
     rows: list[tuple[Cell, ...]] = []
     for gross, net in zip(assessment["gross"]["levels"], assessment["net"]["levels"], strict=True):
-        rows.append((*level_row(gross), *level_row(net)[2:]))
+        rows.append((*level_row(gross, assessment, "gross"), *level_row(net, assessment, "net")[2:]))
     columns = (
         Column("Level", "level"),
         Column("Return period", "period"),
@@ -87,7 +99,8 @@ def levels(assessment: Assessment) -> Table:
         Column("Net VaR", "money", ranged=True),
         Column("Net TVaR", "money", ranged=True),
     )
-    notes = (*reasons([cell for row in rows for cell in row]), *_range_notes(assessment))
+    doubtful = doubts(assessment, ("gross", "net"))
+    notes = (*reasons([cell for row in rows for cell in row]), *doubtful, *_range_notes(assessment))
     return Table("Levels", f"Annual loss by level, {currency}", columns, tuple(rows), notes)
 
 
@@ -122,7 +135,7 @@ def moments(assessment: Assessment) -> Table:
         Column("Kind"),
         Column("Note"),
     )
-    notes = reasons([cell for row in rows for cell in row])
+    notes = (*reasons([cell for row in rows for cell in row]), *doubts(assessment, ("gross", "net")))
     return Table("Moments", f"Expected annual loss, {currency}", columns, tuple(rows), notes)
 
 
