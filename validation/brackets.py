@@ -6,13 +6,15 @@ engine, 256 to 1,024 for Panjer's), where they have something to hold. The truth
 
 * a closed form, where sums of a given number of sizes have one (exponential, gamma, inverse Gaussian): the
   distributions of 0, 1, 2, ... losses mixed by the probabilities of the count, with scipy;
-* otherwise the value on a lattice of at least 65,536 points, itself no better than its own bracket: a bracket
-  that misses the value but not the finer bracket is counted apart.
+* otherwise the value on a lattice of 65,536 points, itself no better than its own bracket. Where that value
+  is outside a bracket but the two brackets overlap, it is not known well enough to tell (sizes of a table
+  that lie between lattice points are moved by up to a step, which narrow brackets feel): it is computed
+  again on 16 and on 64 times as many points, until the bracket holds it or misses all that is known of it.
 
     python validation/brackets.py [--models 1000] [--seed 1] [--write]
 
-Prints a table; with --write keeps it as validation/brackets.md. Leaves with exit code 1 when a bracket
-misses.
+Prints a table; with --write keeps it as validation/brackets.md. Leaves with exit code 1 unless every
+bracket holds the truth.
 """
 
 from __future__ import annotations
@@ -28,7 +30,7 @@ import numpy as np
 from scipy import optimize, stats
 
 import lossagg
-from lossagg.engines.fourier import BracketWarning
+from lossagg.engines.fourier import MOST_POINTS, BracketWarning
 from lossagg.engines.result import BracketedAnnualLoss
 from lossagg.families.base import CountLaw, SizeLaw
 
@@ -198,36 +200,78 @@ def figures_of(model: Model, random: Random, finer: int = 2**16) -> list[Figure]
         engines[engine.name] = engine.annual_loss(model.count, model.size, model.cover)  # type: ignore[assignment]
     simple = isinstance(model.size, (lossagg.Exponential, lossagg.Gamma, lossagg.InverseGaussian))
     closed = ClosedForm(model.count, model.size) if simple and model.cover is None else None
-    fine = None
-    if closed is None:
-        fine = lossagg.Fourier(points=finer).annual_loss(model.count, model.size, model.cover)
+    fine = Finer(model, finer)
     return [
         figure
         for measure in MEASURES
         for level in LEVELS
-        for figure in _compared(model, engines, closed, fine, measure, level)
+        for name, loss in engines.items()
+        for figure in _compared(model, (name, loss), closed or fine, measure, level)
     ]
 
 
+class Finer:
+    """The value on a finer lattice, with its bracket; on a still finer one where that does not decide.
+
+    Args:
+        model: the model.
+        points: of the first lattice.
+    """
+
+    def __init__(self, model: Model, points: int) -> None:
+        self.model, self.points = model, points
+        self._found: dict[int, BracketedAnnualLoss] = {}
+
+    def on(self, times: int) -> BracketedAnnualLoss:
+        """The annual loss on so many times the points, at most the most that the engine allows."""
+        points, model = min(self.points * times, MOST_POINTS), self.model
+        if points not in self._found:
+            engine = lossagg.Fourier(points=points)
+            self._found[points] = engine.annual_loss(model.count, model.size, model.cover)  # type: ignore[assignment]
+        return self._found[points]
+
+
+def _known(
+    reference: ClosedForm | Finer, measure: str, level: float, bracket: tuple[float, float]
+) -> tuple[float | None, tuple[float, float]]:
+    """The truth and what is known of it: refined until the bracket holds it or misses all that is known."""
+    if isinstance(reference, ClosedForm):
+        truth = getattr(reference, measure)(level)
+        return truth, (truth, truth)
+    for times in (1, 16, 64):
+        loss = reference.on(times)
+        value, known = loss.measure(measure, level), loss.accuracy(measure, level)
+        if _inside(bracket, value) or _missed(bracket, known):
+            break
+    return value, known
+
+
+def _inside(bracket: tuple[float, float], value: float) -> bool:
+    slack = ROUND_OFF * abs(value) if np.isfinite(value) else 0.0
+    return bool(bracket[0] - slack <= value <= bracket[1] + slack)
+
+
+def _missed(bracket: tuple[float, float], known: tuple[float, float]) -> bool:
+    slack = ROUND_OFF * abs(known[0]) if np.isfinite(known[0]) else 0.0
+    return bool(known[1] < bracket[0] - slack or known[0] > bracket[1] + slack)
+
+
 def _compared(
-    model: Model, engines: Engines, closed: object, fine: object, measure: str, level: float
+    model: Model,
+    engine: tuple[str, BracketedAnnualLoss],
+    reference: ClosedForm | Finer,
+    measure: str,
+    level: float,
 ) -> list[Figure]:
-    if closed is not None:
-        truth = getattr(closed, measure)(level)
-        known = (truth, truth)
-    else:
-        truth, known = fine.measure(measure, level), fine.accuracy(measure, level)  # type: ignore[attr-defined]
+    name, loss = engine
+    low, high = loss.accuracy(measure, level)
+    truth, known = _known(reference, measure, level, (low, high))
     if truth is None:
         return []
-    found = []
-    for name, loss in engines.items():
-        low, high = loss.accuracy(measure, level)
-        slack = ROUND_OFF * abs(truth) if np.isfinite(truth) else 0.0
-        inside = low - slack <= truth <= high + slack
-        missed = known[1] < low - slack or known[0] > high + slack
-        width = (high - low) / truth if 0 < truth < np.inf else np.nan
-        found.append(Figure(name, model.count.family, measure, closed is not None, width, inside, missed))
-    return found
+    inside, missed = _inside((low, high), truth), _missed((low, high), known)
+    width = (high - low) / truth if 0 < truth < np.inf else np.nan
+    closed = isinstance(reference, ClosedForm)
+    return [Figure(name, model.count.family, measure, closed, width, inside, missed)]
 
 
 def experiment(models: int, seed: int, finer: int = 2**16) -> list[Figure]:
@@ -247,8 +291,7 @@ def table(found: list[Figure], models: int, seed: int) -> str:
         "",
         "Made by `validation/brackets.py`: what the columns mean stands there.",
         "",
-        "| engine | count | measure | brackets | closed form | held | not held, finer bracket overlaps "
-        "| missed | median width |",
+        "| engine | count | measure | brackets | closed form | held | not decided | missed | median width |",
         "|---|---|---|---|---|---|---|---|---|",
     ]
     keys = sorted({(f.engine, f.count, f.measure) for f in found})
@@ -273,7 +316,7 @@ def _row(names: list[str], own: list[Figure]) -> str:
 
 
 def main() -> int:
-    """Run the experiment; 1 when a bracket misses."""
+    """Run the experiment; 1 unless every bracket holds the truth."""
     parser = argparse.ArgumentParser(description=__doc__.splitlines()[0])  # type: ignore[union-attr]
     parser.add_argument("--models", type=int, default=1000)
     parser.add_argument("--seed", type=int, default=1)
@@ -284,7 +327,7 @@ def main() -> int:
     print(text)
     if given.write:
         Path(__file__).with_suffix(".md").write_text(text)
-    return int(any(figure.missed for figure in found))
+    return int(not all(figure.inside for figure in found))
 
 
 if __name__ == "__main__":

@@ -10,13 +10,16 @@ Tolerances, beside the engine they belong to:
   Quantiles by the number of simulated years beyond the bracket, which is binomial whatever the tail.
 """
 
+import dataclasses
 import itertools
+from pathlib import Path
 
 import numpy as np
 import oracle
 import pytest
 
-from lossagg.cover import Cover
+import lossagg
+from lossagg.cover import Corridor, Cover, Reinstatements
 from lossagg.engines.fourier import Fourier
 from lossagg.engines.panjer import Panjer
 from lossagg.engines.simulation import Simulation
@@ -43,6 +46,7 @@ from lossagg.families import (
     ZeroInflated,
     ZeroModified,
 )
+from lossagg.families.base import CountLaw, SizeLaw
 
 COUNTS = {
     "poisson": Poisson(mean=3.0),
@@ -85,6 +89,23 @@ COVERS = {
     "annual terms": Cover(deductible=250.0, limit=2000.0, annual_retention=1000.0, annual_limit=6000.0),
     "share": Cover(limit=3000.0, share=0.4),
 }
+# Terms of other kinds: with every count and size through the exact engines; through all in test_terms_agree.
+MORE_COVERS = {
+    "disappearing": Cover(deductible=400.0, disappears_at=1500.0, limit=5000.0),
+    "inclusive": Cover(deductible=400.0, limit=3000.0, limit_includes_deductible=True),
+    "share first": Cover(deductible=300.0, limit=1500.0, share=0.6, order=["share", "deductible", "limit"]),
+    "corridor": Cover(corridor=Corridor(low=3000.0, high=6000.0, share=0.7), annual_limit=12_000.0),
+    "reinstatements": Cover(
+        deductible=500.0, limit=1500.0, reinstatements=Reinstatements(number=1), annual_retention=300.0
+    ),
+    "self-insured": Cover(deductible=500.0, limit=2000.0, share=0.8, self_insured=True),
+}
+# Terms that need more than a count and a size (a sum insured, an expense) or follow two annual sums.
+ELSEWHERE = {
+    "surplus": "test_terms_agree.py",
+    "expense_basis": "test_terms_agree.py",
+    "retained_cap": "test_retained_cap.py",
+}
 # A third of all pairs of size and cover, every one with two of the other or more; the counts take turns.
 CASES = [
     (list(COUNTS)[(i + j) % len(COUNTS)], size, cover)
@@ -107,15 +128,36 @@ def test_the_engines_agree(count, size, cover):
     agree_by_chance(fourier, Simulation(years=YEARS, seed=11).annual_loss(*model))
 
 
-@pytest.mark.parametrize("cover", COVERS)
+def test_the_contract_covers_the_public_surface():
+    """Every public count law, size law and term of a cover is in the tables above: a new one fails here until
+    it is put there."""
+    public = [getattr(lossagg, name) for name in lossagg.__all__]
+    laws = [kind for kind in public if isinstance(kind, type)]
+    for base, tested in ((CountLaw, COUNTS), (SizeLaw, SIZES)):
+        assert {kind for kind in laws if issubclass(kind, base)} == {type(law) for law in tested.values()}
+    tried = {
+        term.name
+        for cover in (*COVERS.values(), *MORE_COVERS.values())
+        if cover is not None
+        for term in dataclasses.fields(Cover)
+        if getattr(cover, term.name) != term.default
+    }
+    assert tried | ELSEWHERE.keys() == {term.name for term in dataclasses.fields(Cover)}
+    for term, file in ELSEWHERE.items():
+        assert f"{term}=" in (Path(__file__).parent / file).read_text()
+
+
+@pytest.mark.parametrize("cover", COVERS | MORE_COVERS)
 @pytest.mark.parametrize("size", SIZES)
 def test_every_count_size_and_cover(size, cover):
     """Every count law of the public surface with every size law and cover, the exact engines on coarse
     lattices: the brackets overlap, the better known value lies inside the wider bracket."""
-    place = Fourier(points=128).annual_loss(COUNTS["negative binomial"], SIZES[size], COVERS[cover])
+    place = Fourier(points=128).annual_loss(
+        COUNTS["negative binomial"], SIZES[size], (COVERS | MORE_COVERS)[cover]
+    )
     step = getattr(place, "base", place).step
     for count in COUNTS.values():
-        model = count, SIZES[size], COVERS[cover]
+        model = count, SIZES[size], (COVERS | MORE_COVERS)[cover]
         losses = (engine(points=256, step=step).annual_loss(*model) for engine in (Fourier, Panjer))
         agree_exactly(*losses, levels=(0.5, 0.99))
 

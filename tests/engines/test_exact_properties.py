@@ -183,6 +183,29 @@ def test_two_engines_on_one_lattice(cover):
         assert ours == pytest.approx(theirs, abs=50.0)
 
 
+@pytest.mark.parametrize(
+    "count",
+    [
+        Poisson(mean=0.05),
+        Poisson(mean=6),
+        NegativeBinomial(mean=30, dispersion=0.4),
+        Binomial(trials=40, probability=0.3),
+    ],
+    ids=lambda count: f"{count.family} {count.mean():g}",
+)
+def test_two_engines_on_one_lattice_far_out(count):
+    """Where the sizes lie on the lattice the exceedance probabilities themselves are equal to 1e-6 relative
+    down to 1e-9, by transform and by recursion."""
+    size = SizeTable(sizes=[1, 2, 5, 11, 40], probabilities=[0.4, 0.3, 0.2, 0.08, 0.02])
+    x = np.arange(3000.0) + 0.5
+    fourier, panjer = (
+        engine(points=3000, step=1.0).annual_loss(count, size).sf(x) for engine in (Fourier, Panjer)
+    )
+    seen = panjer > 1e-9
+    assert panjer[seen].min() < 1e-8
+    assert fourier[seen] == pytest.approx(panjer[seen], rel=1e-6)
+
+
 def test_beyond_the_lattice_the_bracket_still_holds():
     """A lattice that ends at the 90 % quantile: bounds from the largest loss and from Markov's inequality
     hold, and the mean beyond is counted; with an infinite mean the upper bound is infinite."""
