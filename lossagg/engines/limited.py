@@ -8,7 +8,7 @@ for every x, with Jensen's inequality once in each direction,
 
 The last term adds up over the payments: a payment in the cell from kh on at position u (0 to 1) moves to
 kh with 1 - u and to (k + 1)h with u, and contributes u (1 - u) h exactly where the others together with kh
-make x. It is one more transform (see `LatticeTransform.dispersed`) and of order n h**2. Nothing beyond x
+make x. It is one more transform (see `LatticeTransform.limited`) and of order n h**2. Nothing beyond x
 enters, so means need not exist.
 
 Between these bounds E[min(S, x)] is concave, so its slope P(S > x) lies between chords: from the upper

@@ -39,7 +39,7 @@ class Masses:
     @cached_property
     def down(self) -> FloatArray:
         """The continuous part rounded down; shifted by one step it is the part rounded up."""
-        return self._padded(-np.diff(self._survival))
+        return self._padded(self._survival[:-1] - self._survival[1:])
 
     @cached_property
     def spread(self) -> FloatArray:

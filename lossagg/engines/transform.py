@@ -95,9 +95,10 @@ class Argument:
 
     def __call__(self, piece: slice) -> ComplexArray:
         """Its values at some of the frequencies."""
-        total = np.full(piece.stop - piece.start, self.none, dtype=np.complex128)
         if self.part is not None:
-            total += self.part[piece]
+            total = self.part[piece] + self.none
+        else:
+            total = np.full(piece.stop - piece.start, self.none, dtype=np.complex128)
         if self.moved is not None:
             total += self.moved[piece] if self.shift is None else self.moved[piece] * self.shift[piece]
         return total
@@ -129,7 +130,8 @@ class LatticeTransform:
         total_tilt = min(max(float(np.log(max(reachable / _WRAPPED, 1.0))), harmless), _MOST_TILT)
         self.wrapped = float(np.exp(-total_tilt)) * reachable
         self._tilt = total_tilt / self.length
-        self._weights = np.exp(-self._tilt * index)
+        self._weights = -self._tilt * index
+        np.exp(self._weights, out=self._weights)
 
     @cached_property
     def _shift(self) -> ComplexArray:
@@ -250,9 +252,9 @@ class LatticeTransform:
         joint = np.ones(self._transforms.frequencies, dtype=np.complex128)
         clusters = [(one, [line.frequency for line in self._of(one)]) for one in self._compound.clusters]
         for piece in self._pieces():
-            total = joint[piece]
-            for cluster, counts in clusters:
-                total *= cluster.pgf(counts, [arguments[place](piece) for place in cluster.members])
+            for k, (cluster, counts) in enumerate(clusters):
+                own = cluster.pgf(counts, [arguments[place](piece) for place in cluster.members])
+                joint[piece] = joint[piece] * own if k > 0 else own
         return joint
 
     def _kept_of(self, line: Spread) -> Argument:
