@@ -13,7 +13,7 @@ from lossagg.engines.span import places
 _NEVER = 1e-30
 # Sixth differences, relative to the value, that leave an average exact to 1e-14.
 _SMOOTH = 3e-12
-_FEW_BLOCKS = 16
+_FEW_BLOCKS = 4
 _FIRST = 64
 _NODES, _SHARES = (part / 2.0 for part in np.polynomial.legendre.leggauss(12))
 _NODES = _NODES + 0.5
