@@ -22,6 +22,7 @@ from lossagg.records import (
     CheckedLosses,
     CountTable,
     ExposureTable,
+    Finding,
     LossTable,
     RateTable,
     TrendIndex,
@@ -138,6 +139,8 @@ def _as_modelled(
     """The table in the currency of the portfolio and from the ground up, before it is checked."""
     if rates is not None and "currency" in table.words:
         table = convert_losses(table, rates, file.portfolio.currency)
+    elif rates is not None:
+        table = replace(table, findings=(*table.findings, _unconverted(table, file.portfolio.currency)))
     for line in sharers:
         if line.amount_basis == "excess":
             rows = line_rows(table, line.name if len(sharers) > 1 else None)
@@ -146,6 +149,21 @@ def _as_modelled(
     if all(line.amount_basis is None for line in sharers):
         table = replace(table, findings=(*table.findings, *undeclared_deductibles(table)))
     return table
+
+
+def _unconverted(table: LossTable, currency: str) -> Finding:
+    return Finding(
+        "no-currency-column",
+        "warn",
+        table.file,
+        None,
+        None,
+        None,
+        f"the portfolio has rates, but these records name no currency: every amount is taken as {currency}",
+        "None needed if that is so; else map the column that names the currency.",
+        sheet=table.sheet,
+        count=0,
+    )
 
 
 def _check(

@@ -108,7 +108,17 @@ def undeclared_deductibles(table: LossTable) -> list[Finding]:
 
 
 def net_amounts(table: LossTable) -> FloatArray:
-    """Amounts less recoveries, never below zero; rows without a recovery as they are; shape (rows,)."""
+    """Amounts less recoveries, never below zero; rows without a recovery as they are; shape (rows,).
+
+    Raises:
+        InputError: the records have no column of recoveries, so that nothing would be net.
+    """
+    if "recoveries" not in table.numbers:
+        raise InputError(
+            "losses are to be modelled net of recoveries, but the records have no recoveries",
+            where=place(file=table.file, sheet=table.sheet),
+            remedy="Map the column that holds them, or leave net-of-recoveries out.",
+        )
     recovered = np.maximum(np.nan_to_num(table.number("recoveries")), 0.0)
     net = table.amount - recovered
     near = np.rint(net * 100.0) / 100.0

@@ -76,13 +76,20 @@ def prepare_losses(
         RecordsError: too much lies below the threshold.
         InputError: arguments out of range, no window because there is neither a loss, an exposure
             nor a first year, years without exposure, several lines at once, an index or a history that
-            does not reach, open claims to be developed without factors.
+            does not reach, events or recoveries that the records do not tell, open claims to be developed
+            without factors.
     """
     _require_one_line(checked)
     trend, frequency_trend = check_trend(trend), _rate(frequency_trend)
     check_open_claims(checked, open_claims, development)
     default = require_positive(reporting_threshold or 0.0, "reporting_threshold", zero=True)
     table = checked.table
+    if hours_window is not None and "event" not in table.words:
+        raise InputError(
+            "events are to be parted by hours, but the records do not say which claims are of one event",
+            where=place(file=table.file, sheet=table.sheet),
+            remedy="Map the column that names the event, or leave hours-window out.",
+        )
     net = net_amounts(table) if net_of_recoveries else None
     window, found = _window(checked, exposure)
     factors = factors_of(checked, window, development, default, hours_window, net)

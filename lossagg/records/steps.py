@@ -218,7 +218,7 @@ def open_claims_caution(checked: CheckedLosses, years: YearTable) -> list[Findin
     table, count = checked.table, int(years.open.sum())
     if not years.claims.any():
         return []
-    if "status" not in table.words:
+    if not (table.word("status")[checked.used] != "").any():
         message = "the records do not say which claims are open; all amounts are taken as final"
         remedy = (
             "Give the status of each claim; open claims tend to grow, and late ones are not yet reported."

@@ -32,6 +32,14 @@ def status_faults(table: LossTable, live: BoolArray) -> list[Fault]:
             f"Use {', '.join((*OPEN, *CLOSED))}.",
         ),
         Fault(
+            "missing-status",
+            "warn",
+            "status",
+            live & (status == ""),
+            "the status is missing and counts as not open",
+            "Supply it: open claims are not final, and without it they pass for closed.",
+        ),
+        Fault(
             "closed-with-reserve",
             "warn",
             "outstanding",

@@ -47,7 +47,7 @@ def history_portfolio(folder: Path, text: str = HISTORY) -> Path:
     """60 invented claims of five years, valued at the end of each, some in dollars, net of 500."""
     folder.mkdir(parents=True, exist_ok=True)
     (folder / "portfolio.toml").write_text(text, encoding="utf-8")
-    rows = ["claim,valuation,date,amount,status,currency"]
+    rows = ["claim,valuation,date,amount,status,currency,event"]
     for k in range(60):
         year = 2020 + k % 5
         amount = 300 + 61 * ((k * 7919) % 97)
@@ -56,7 +56,8 @@ def history_portfolio(folder: Path, text: str = HISTORY) -> Path:
             status = "open" if age < k % 3 else "closed"
             grown = amount * (1 + 0.2 * min(age, k % 3))
             currency = "USD" if k % 10 == 0 else "EUR"
-            rows.append(f"C{k},{valued}-12-31,{year}-{1 + k % 12:02d}-10,{grown:.2f},{status},{currency}")
+            day = f"{year}-{1 + k % 12:02d}-10"
+            rows.append(f"C{k},{valued}-12-31,{day},{grown:.2f},{status},{currency},E{k}")
     (folder / "losses.csv").write_text("\n".join(rows) + "\n", encoding="utf-8")
     index = ["year,wages", *(f"{year},{100 + 3 * (year - 2020)}" for year in range(2020, 2026))]
     (folder / "index.csv").write_text("\n".join(index) + "\n", encoding="utf-8")
@@ -272,6 +273,26 @@ severity = { family = "exponential", mean = 5000 }
     (tmp_path / "portfolio.toml").write_text(text)
     with pytest.raises(InputError, match=r"hours-window needs records.*Add records"):
         read_portfolio(tmp_path)
+
+
+def test_a_key_that_the_records_cannot_follow_stops(tmp_path: Path) -> None:
+    """What is asked for and cannot be done must not pass for done."""
+    for key, message in (
+        ("hours-window = 72", "do not say which claims are of one event, in file losses.csv"),
+        ("net-of-recoveries = true", "but the records have no recoveries, in file losses.csv"),
+    ):
+        folder = recorded_portfolio(tmp_path, RECORDS.replace("trend = 0.03", key))
+        with pytest.raises(InputError, match=message):
+            read_portfolio(folder).models()
+
+
+def test_rates_beside_records_that_name_no_currency_are_said(tmp_path: Path) -> None:
+    text = RECORDS.replace("capital-level", 'rates = "rates.csv"\ncapital-level')
+    folder = recorded_portfolio(tmp_path, text)
+    (folder / "rates.csv").write_text("date,currency,rate\n2019-12-31,USD,0.9\n")
+    found = {f.code: f for f in read_portfolio(folder).records["Fire"].losses.findings}["no-currency-column"]
+    assert found.action == "warn"
+    assert found.message.endswith("every amount is taken as EUR")
 
 
 def test_rates_must_lie_in_the_folder(tmp_path: Path) -> None:

@@ -280,6 +280,14 @@ TEXT_CASES = [
         "the claim is open but nothing is outstanding",
     ),
     Case(
+        22,
+        "no status where others have one",
+        _table(f"{GOOD},open\n10,2024-03-02,", "amount,date,status"),
+        "warn",
+        "the status is missing and counts as not open, in file losses.csv, row 3, column 'status'; seen: ''",
+        2,
+    ),
+    Case(
         23,
         "parts that do not add up",
         _table(f"{GOOD},10.5,0\n10,2024-03-01,4,6.02", "amount,date,paid,outstanding"),
