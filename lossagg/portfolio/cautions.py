@@ -18,8 +18,8 @@ STANDING = {
     "model-error": "The laws of frequency and severity are choices. Other laws that fit the same "
     "records can give very different figures beyond the largest losses seen.",
     "parameter-error": "The figures take the fitted parameters as known. Brackets and intervals bound"
-    " the error of the calculation only, not that of the parameters: see the "
-    "standard errors of each fit.",
+    " the error of the calculation only, not that of the parameters: the predictive value at risk "
+    "counts that, and each fit states its standard errors.",
     "changed-world": "Past terms, reporting practice, inflation and exposure differ from those to "
     "come; only the trend and exposure stated for each line are adjusted for.",
 }
