@@ -25,6 +25,7 @@ from lossagg.fitting.results import SeverityFit
 
 _HALVINGS = 60
 _TRIES = 20
+_TINY = float(np.finfo(float).tiny)
 
 
 @dataclass(frozen=True)
@@ -47,13 +48,14 @@ class PredictiveQuantile:
 
 
 def predictive_quantile(
-    fit: SeverityFit, level: float, *, draws: int = 200, seed: int = 0
+    fit: SeverityFit, level: float, *, above: float = 0.0, draws: int = 200, seed: int = 0
 ) -> PredictiveQuantile:
     """The size a further loss exceeds with probability 1 - level, the parameters uncertain.
 
     Args:
         fit: of the losses.
         level: inside (0, 1).
+        above: among losses above this amount, such as the reporting threshold.
         draws: laws to average over where there is no closed form, at least 20.
         seed: 0 or above; the same seed gives the same figure.
 
@@ -63,20 +65,25 @@ def predictive_quantile(
     require_probability(level, "level", open_low=True, open_high=True)
     if draws < _TRIES:
         raise InputError("too few draws", value=draws, remedy=f"Draw {_TRIES} times or more.")
-    fitted = float(fit.model.isf(1.0 - level))
+    fitted = _isf(fit.model, 1.0 - level, above)
     n = fit.observations
-    if fit.complete_lognormal:
+    if fit.complete_lognormal and above <= 0:
         student = float(special.stdtrit(n - 1.0, level))
         width = fit.parameters["sigma"] * student * np.sqrt((n + 1.0) / (n - 1.0))
         return PredictiveQuantile(level, fitted, float(np.exp(fit.parameters["mu"] + width)), True, 0)
-    laws = drawn_laws(fit, draws, seed)
-    ends = np.log(np.maximum([float(law.isf(1.0 - level)) for law in laws], np.finfo(float).tiny))
+    seen = [(law, share) for law in drawn_laws(fit, draws, seed) if (share := float(law.sf(above))) > 0]
+    ends = np.log([max(_isf(law, 1.0 - level, above), _TINY) for law, _ in seen])
     low, high = float(ends.min()), float(ends.max())
     for _ in range(_HALVINGS):
         middle = 0.5 * (low + high)
-        above = np.mean([float(law.sf(np.exp(middle))) for law in laws]) > 1.0 - level
-        low, high = (middle, high) if above else (low, middle)
+        chance = np.mean([float(law.sf(np.exp(middle))) / share for law, share in seen])
+        low, high = (middle, high) if chance > 1.0 - level else (low, middle)
     return PredictiveQuantile(level, fitted, float(np.exp(high)), False, draws)
+
+
+def _isf(law: SizeLaw, chance: float, above: float) -> float:
+    """The size exceeded with this chance by a loss above an amount."""
+    return float(law.isf(chance * float(law.sf(above))))
 
 
 def drawn_laws(fit: SeverityFit, draws: int, seed: int) -> list[SizeLaw]:

@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from itertools import zip_longest
 from typing import Any
 
 import numpy as np
 
 from lossagg.arrays import FloatArray
-from lossagg.families import SizeTable, Spliced
+from lossagg.families import Mixture, SizeTable, Spliced
 from lossagg.families.base import SizeLaw
 from lossagg.fitting import Candidates, Fit, FrequencyFit, count_points, quantile_points, survival_points
 from lossagg.portfolio.assessment import NO_OWN_DATA, Data, number
@@ -113,8 +113,10 @@ def _severity(model: LineModel, draws: int) -> Data:
     if tried is not None and prepared is not None:
         fit = tried.chosen
         entry |= {
-            "standard_errors": fit.standard_errors,
-            "intervals": _intervals(model, fit),
+            "standard_errors": _with_rest(fit.standard_errors, law, lambda error: error),
+            "intervals": _with_rest(
+                _intervals(model, fit), law, lambda ends: [1.0 - end for end in ends[::-1]]
+            ),
             "threshold": float(prepared.threshold.min()) if prepared.threshold.size else None,
             "observations": fit.observations,
             "censored": fit.censored,
@@ -124,6 +126,13 @@ def _severity(model: LineModel, draws: int) -> Data:
             "notes": [str(note) for note in fit.notes],
         }
     return entry
+
+
+def _with_rest(known: Data, law: SizeLaw, rest: Callable[[Any], Any]) -> Data:
+    """What is known of the parameters, that of the second weight of a mixture of two from the first's."""
+    if isinstance(law, Mixture) and len(law.weights) == 2 and "weight.1" in known:
+        return {**known, "weight.2": rest(known["weight.1"])}
+    return known
 
 
 def _jump(law: SizeLaw) -> float | None:

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from dataclasses import asdict
 
+import numpy as np
+
 from lossagg.fitting import predictive_quantile
 from lossagg.portfolio.assess import Progress, silent
 from lossagg.portfolio.assessment import Data
@@ -70,12 +72,15 @@ def fit_report(portfolio: Portfolio, *, draws: int = _DRAWS, progress: Progress 
 
 
 def _size_quantiles(model: LineModel, level: float) -> list[Data]:
-    """Quantiles of one loss as fitted and with the parameters uncertain; none where the severity is given."""
-    if model.severities is None:
+    """Quantiles of one loss above the reporting threshold, as fitted and with the parameters uncertain."""
+    if model.severities is None or model.prepared is None:
         return []
+    above = float(np.nextafter(model.prepared.threshold.min(), 0.0))
     fit, seed = model.severities.chosen, stream_of(model.name)
     levels = sorted({*_SIZE_LEVELS, level})
-    return [asdict(predictive_quantile(fit, each, draws=_SIZE_DRAWS, seed=seed)) for each in levels]
+    return [
+        asdict(predictive_quantile(fit, each, above=above, draws=_SIZE_DRAWS, seed=seed)) for each in levels
+    ]
 
 
 def _line(model: LineModel, level: float, draws: int) -> Data:

@@ -105,6 +105,10 @@ def test_truncated_lognormal_losses_are_averaged_and_wider_than_as_fitted():
     laws = drawn_laws(fit, 200, 1)
     assert np.mean([law.sf(found.predictive) for law in laws]) == pytest.approx(1 - LEVEL, rel=1e-9)
     assert predictive_quantile(fit, LEVEL, seed=1) == found
+    seen = predictive_quantile(fit, LEVEL, above=4_000, seed=1)
+    chances = [law.sf(seen.predictive) / law.sf(4_000) for law in laws]
+    assert np.mean(chances) == pytest.approx(1 - LEVEL, rel=1e-9)
+    assert float(fit.model.sf(seen.fitted) / fit.model.sf(4_000)) == pytest.approx(1 - LEVEL, rel=1e-9)
 
 
 def test_drawn_laws_of_complete_lognormal_losses_mix_to_the_exact_quantile():

@@ -189,6 +189,7 @@ def size_quantiles(lines: Sequence[Entry], currency: str) -> Table:
         Column("Predictive by"),
     )
     notes = (
+        "Of the losses above the reporting threshold, where there is one. "
         "A further loss exceeds the size as fitted more often than its level says, because parameters are "
         "estimates; the predictive size allows for that (Gerrard & Tsanakas 2011, Risk Analysis 31). Exact "
         "for lognormal losses that are complete; otherwise as good as large-sample theory.",
@@ -201,7 +202,7 @@ def sensitivity(lines: Sequence[Entry], currency: str) -> Table:
     rows: list[tuple[Cell, ...]] = []
     for line in lines:
         for row in line.get("sensitivity") or ():
-            name = row["basis"]
+            name = row["basis"].replace("-", "−")
             amount: Cell = "" if row["threshold"] is None else row["threshold"]
             shape: Cell = "" if row["shape"] is None else row["shape"]
             rows.append((line["name"], name, amount, shape, *_moved(row)))
