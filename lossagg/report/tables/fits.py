@@ -91,7 +91,8 @@ def estimates(lines: Sequence[Entry]) -> Table:
                 cells = tuple(Absent("none") if other is None else other for other in others)
                 own: Cell = value if low is None else Ranged(value, low, high)
                 rows.append((line["name"], title, name, own, found["draws"], *cells))
-            reasons += [f"{line['name']}, {title.lower()}: {reason}." for reason in found["reasons"]]
+            told = [reason.rstrip(".") for reason in found["reasons"]]
+            reasons += [f"{line['name']}, {title.lower()}: {reason}." for reason in told]
     columns = (
         Column("Line"),
         Column("Law of"),
