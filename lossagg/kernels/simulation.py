@@ -17,7 +17,12 @@ through a buffer that stays in the cache nearest the processor. A payment schedu
 ramps, its rising pieces: a ramp adds slope * (min(x, end) - start) and a jump where x exceeds the
 start; each is one pass over the buffer, so a second cover costs a pass, not a second simulation.
 
-One file on purpose: the cache on disk notices a change of this file, not of a file it calls.
+Where losses are rare, sorting years costs more than the losses do. Poisson losses are then drawn strip by
+strip of 2,048 years: their number first, and each one's year by the eleven low bits of its draw, which no
+size uses.
+
+In this order: bits, counts, sizes, what a ramp pays, years sorted into rectangles, strips, and the entry of
+each. One file on purpose: the cache on disk notices a change of this file, not of a file it calls.
 """
 
 from __future__ import annotations
