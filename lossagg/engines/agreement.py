@@ -145,7 +145,7 @@ def sd_test(
     if not np.isfinite(centre):
         return None
     if error is None:
-        return "not compared with the simulation: its standard error does not exist"
+        return "not compared with the simulation: single enormous years decide it"
     apart = _apart(name, reference, abs(value - centre), error, ROUND_OFF * abs(centre))
     if apart.fault is not None:
         fault = f"{name} {value:.6g} is {apart.fault} from {reference} {centre:.6g}"

@@ -31,10 +31,12 @@ from lossagg.engines.result import AnnualLoss, BookResult, BracketedAnnualLoss
 # Relative width of a bracket up to which averages are compared.
 TIGHT = 0.1
 TOLERANCE = (
-    "brackets of exact engines overlap, the better known value inside the wider bracket; simulation within "
-    f"{STANDARD_ERRORS:g} standard errors, "
-    f"its mean and TVaR up to the amount that {YEARS_BEYOND} simulated years are expected to exceed, or as "
-    f"far as the bracket of the exact engine is within {TIGHT:.0%}"
+    "an exact engine gives each figure with a range that is certain to hold it; the ranges of two exact "
+    "engines must overlap, and the figure with the narrower range must lie inside the wider. A simulation is "
+    f"a sample of years: it must be within {STANDARD_ERRORS:g} standard errors, which chance exceeds about "
+    "once in 16,000 comparisons. Its means and tail values at risk are compared up to the amount that "
+    f"{YEARS_BEYOND} of its years are expected to exceed, or less far where the exact range is wider than "
+    f"{TIGHT:.0%}: beyond that, single years decide the average"
 )
 
 

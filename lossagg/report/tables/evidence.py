@@ -13,9 +13,10 @@ ENGINES = ("fourier", "panjer", "simulation")
 TOTALS = ("gross", "net")
 
 FURTHEST = (
-    "Furthest apart: the pair of engines that used most of its tolerance, and what that is. Below 100% they "
-    "agree. A simulated VaR is tested by the number of simulated years beyond the other engine's figure, an "
-    "exact figure by how far it lies on the way to the end of the other engine's bracket."
+    "Furthest apart: the two engines that came closest to disagreeing. Tolerance used: their difference as a "
+    "part of what is allowed; below 100% they agree. A simulated value at risk is tested by how many of the "
+    "simulated years lie above the exact figure, against how many should; an exact figure by how far it lies "
+    "on the way from the other engine's figure to the end of its range."
 )
 
 
@@ -94,13 +95,15 @@ def _closest(entry: Entry) -> tuple[Cell, Cell]:
     if not tests:
         return Absent("not tested"), Absent("n/a")
     worst = max(tests, key=lambda test: test["used"])
-    pair = f"{worst['engine']} from {worst['reference']}"
+    pair = f"{worst['engine']} and {worst['reference']}"
     if worst["unit"] == "standard errors":
-        words = f"{pair}: {worst['difference']:.1f} of {worst['allowed']:g} standard errors"
+        words = f"{pair}: {worst['difference']:.1f} standard errors, {worst['allowed']:g} allowed"
     elif worst["unit"] == "years beyond":
-        words = f"{pair}: {worst['difference']:,.0f} of {worst['allowed']:,.0f} years beyond"
+        years = f"{worst['difference']:,.0f} simulated years too many or too few"
+        words = f"{pair}: {years}, {worst['allowed']:,.0f} allowed"
     else:
-        words = f"{pair}: {'inside' if worst['used'] < 1 else 'OUTSIDE'} its bracket"
+        side = "inside" if worst["used"] < 1 else "OUTSIDE"
+        words = f"{worst['engine']} is {side} the range of {worst['reference']}"
     return words, worst["used"]
 
 
