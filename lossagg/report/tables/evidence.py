@@ -99,8 +99,7 @@ def _closest(entry: Entry) -> tuple[Cell, Cell]:
     if worst["unit"] == "standard errors":
         words = f"{pair}: {worst['difference']:.1f} standard errors, {worst['allowed']:g} allowed"
     elif worst["unit"] == "years beyond":
-        years = f"{worst['difference']:,.0f} simulated years too many or too few"
-        words = f"{pair}: {years}, {worst['allowed']:,.0f} allowed"
+        words = f"{pair}: {worst['difference']:,.0f} years off, {worst['allowed']:,.0f} allowed"
     else:
         side = "inside" if worst["used"] < 1 else "OUTSIDE"
         words = f"{worst['engine']} is {side} the range of {worst['reference']}"
