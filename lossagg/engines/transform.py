@@ -124,9 +124,13 @@ class LatticeTransform:
         self.lines = [_spread(part, step, points) for part in compound.parts]
         self._transforms = transforms_of(2 * points)
         self.length = self._transforms.length
-        reachable, index = self._chernoff(), np.arange(float(points))
-        beyond = points - sum(line.expected_rounded(index, False) for line in self.lines)
-        harmless = self.length / max(beyond, 1.0)
+        binned = [_binned(line.masses) for line in self.lines]
+        reachable, index = self._chernoff(binned), np.arange(float(points))
+        means = [
+            line.frequency.mean() * (tops @ chances)
+            for line, (tops, chances) in zip(self.lines, binned, strict=True)
+        ]
+        harmless = self.length / max(points - sum(means), 1.0)
         total_tilt = min(max(float(np.log(max(reachable / _WRAPPED, 1.0))), harmless), _MOST_TILT)
         self.wrapped = float(np.exp(-total_tilt)) * reachable
         self._tilt = total_tilt / self.length
@@ -328,10 +332,10 @@ class LatticeTransform:
         terms /= self._weights
         return terms
 
-    def _chernoff(self) -> float:
-        """Bound of the probability that payments on the lattice add up to its transform length."""
+    def _chernoff(self, binned: Sequence[tuple[FloatArray, FloatArray]]) -> float:
+        """Bound of the probability that payments on the lattice add up to its transform length, from one
+        payment of each line in bins."""
         bound = 0.0
-        binned = [_binned(line.masses) for line in self.lines]
         for scale in (1.0, 2.0, 4.0, 8.0, 16.0, 32.0, 64.0, 128.0):
             rate = scale / self.points
             exponent = -rate * self.length
