@@ -61,8 +61,9 @@ class BracketWarning(LossaggWarning):
 
     def __init__(self, level: float, asked: float, width: float, points: int, step: float, most: int) -> None:
         self.level, self.asked, self.width, self.points, self.step = level, asked, width, points, step
+        wide = f"is {width:.2%} wide" if np.isfinite(width) else "has no upper end"
         super().__init__(
-            f"The bracket of the value at risk at {100 * level:g} % is {width:.2%} wide, {asked:.2%} was "
+            f"The bracket of the value at risk at {100 * level:g} % {wide}, {asked:.2%} was "
             f"asked for; the lattice has {points:,} points of step {step:.6g}, the most allowed is "
             f"{most:,}. The value itself is far more accurate than its guaranteed bracket."
         )
