@@ -86,7 +86,7 @@ def test_averages_against_the_integrals_of_the_law(law, cover):
     masses = Masses(payment, step, points)
     edges = step * np.arange(len(masses._averages) + 1.0)
     exact = payment.continuous_areas(edges) / step
-    lost = 1e-15 * (edges[1:] / step) * payment.continuous_sf(edges[:-1]) + 1e-15
+    lost = 1e-15 * (edges[1:] / step) * payment.sf(edges[:-1]) + 1e-15
     assert (np.abs(masses._averages - exact) <= 50.0 * lost + 1e-14 * exact).all()
     whole = float(payment.continuous_areas(edges[[0, -1]])[0])
     assert step * masses._averages.sum() == pytest.approx(whole, rel=3e-13)
