@@ -1,3 +1,3 @@
 """The version of lossagg, as printed in every report."""
 
-__version__ = "0.1.0"
+__version__ = "0.2.0"

@@ -124,14 +124,18 @@ def _row(tails: FloatArray, step: float, level: float, loss: AnnualLoss) -> Data
 
     def figure(place: float) -> float:
         amount = base * place / own if own > 0 else step * place
-        if isinstance(loss, TransformedAnnualLoss):
-            return float(loss.payment(np.array([amount]))[0])
-        return amount
+        if not isinstance(loss, TransformedAnnualLoss):
+            return amount
+        return float(loss.payment(np.array([amount]))[0]) if np.isfinite(amount) else loss.payment.most
 
     error = _WIDTH * float(np.std(_between(drawn, at), ddof=1)) / np.sqrt(len(drawn))
     ends = [_quantile(mixed, allowed + error), _quantile(mixed, max(allowed - error, mixed[-1]))]
-    own_of_draws = [_quantile(one, allowed) for one in drawn]
-    span = np.quantile(own_of_draws, [0.025, 0.975]).tolist()
+    places = np.array([_quantile(one, allowed) for one in drawn])
+    # An order statistic at either end: between two of them one may be infinite.
+    span = (
+        float(np.quantile(places, 0.025, method="lower")),
+        float(np.quantile(places, 0.975, method="higher")),
+    )
     return {
         "level": level,
         "fitted": number(loss.value_at_risk(level)),
@@ -159,7 +163,10 @@ def _base(loss: AnnualLoss) -> AnnualLoss:
 
 
 def _quantile(tail: FloatArray, allowed: float) -> float:
-    """Where a tail falls to `allowed`, in steps, straight in its logarithm between lattice points."""
+    """Where a tail falls to `allowed`, in steps, straight in its logarithm between lattice points; infinite
+    where it does not on the lattice."""
+    if tail[-1] > allowed:
+        return np.inf
     place = int(np.argmax(tail <= allowed))
     if place == 0:
         return 0.0

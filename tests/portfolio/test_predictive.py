@@ -13,7 +13,7 @@ from lossagg.engines import Fourier
 from lossagg.engines.book import GROSS, NET, Book, PlacedCover
 from lossagg.fitting import compare_severities
 from lossagg.portfolio.line import LineModel
-from lossagg.portfolio.predictive import DRAWS, predictive_data
+from lossagg.portfolio.predictive import DRAWS, _row, predictive_data
 from lossagg.report.tables.predictive import predictive, sentence
 
 ONCE = lossagg.CountTable(probabilities=[0.0, 1.0])
@@ -148,3 +148,12 @@ def test_more_simulated_years_narrow_the_interval_of_the_simulation_and_not_that
     assert low < rows[0]["fitted"] < high
     error = model.severity.sigma * np.sqrt((1 + special.ndtri(0.995) ** 2 / 2) / 60)
     assert np.log(high / low) == pytest.approx(2 * 1.96 * error, rel=0.25)
+
+
+def test_a_draw_whose_tail_outruns_the_lattice_has_no_figure_there():
+    """It is a large figure that is not known, not none: the lower end stays, the upper one is open."""
+    tails = np.array([[0.5, 0.1, 0.01, 0.001]] * 61 + [[0.9, 0.5, 0.1, 0.02]] * 4)
+    model = LineModel(name="line", frequency=ONCE, severity=lossagg.Exponential(mean=2.0))
+    loss = Fourier(accuracy=0.02).book(Book(lines=(model.line,))).losses[GROSS]
+    row = _row(tails, 1.0, 0.99, loss)
+    assert row["parameters"] == [pytest.approx(row["fitted"]), None]
