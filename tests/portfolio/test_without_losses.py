@@ -13,8 +13,8 @@ from lossagg.portfolio import read_portfolio
 from lossagg.portfolio.checking import check_portfolio
 from lossagg.portfolio.evidence import line_evidence
 from lossagg.portfolio.fit_report import fit_report
+from lossagg.portfolio.parameter_draws import uncertain
 from lossagg.pricing import price_options
-from lossagg.pricing.parameters import uncertain
 from lossagg.report.fitting import fit_tables, render_fit
 from lossagg.report.option_summary import summarise_options
 from lossagg.report.options import render_options

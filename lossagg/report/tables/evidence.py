@@ -101,8 +101,8 @@ def _closest(entry: Entry) -> tuple[Cell, Cell]:
     elif worst["unit"] == "years beyond":
         words = f"{pair}: {worst['difference']:,.0f} years off, {worst['allowed']:,.0f} allowed"
     else:
-        side = "inside" if worst["used"] < 1 else "OUTSIDE"
-        words = f"{worst['engine']} is {side} the range of {worst['reference']}"
+        side = "in" if worst["used"] < 1 else "OUTSIDE"
+        words = f"{worst['engine']} {side} {worst['reference']}'s range"
     return words, worst["used"]
 
 
