@@ -40,6 +40,7 @@ from lossagg.kernels.simulation import (
     begin_years,
     draw_bits,
     half_probability,
+    scatter_blocks,
     scatter_losses,
     sizes_of_bits,
     whole_lanes,
@@ -57,7 +58,7 @@ class PreparedLine:
     Attributes:
         name: the line's name.
         key: of its streams.
-        counts: draws the losses of a year.
+        counts: draws the losses of a year; None where they are scattered.
         strips: draws the losses of a whole strip of years where they are scattered; None elsewhere.
         sizes: draws sizes.
         columns: what is added up.
@@ -65,7 +66,7 @@ class PreparedLine:
 
     name: str
     key: tuple[int, int]
-    counts: CountSampler
+    counts: CountSampler | None
     strips: CountSampler | None
     sizes: QuantileTable
     columns: LineColumns
@@ -78,11 +79,12 @@ def prepare_line(line: Line, book: Book, subjects: tuple[Subject, ...]) -> Prepa
 
 def prepare_sums(line: Line, columns: LineColumns) -> PreparedLine:
     """Tables of a line, for whatever is to be added up of its losses."""
+    strips = _strip_sampler(line.frequency)
     return PreparedLine(
         line.name,
         line_key(line.name),
-        count_sampler(line.frequency, f"line {line.name!r}"),
-        _strip_sampler(line.frequency),
+        count_sampler(line.frequency, f"line {line.name!r}") if strips is None else None,
+        strips,
         quantile_table(line.severity),
         columns,
     )
@@ -102,12 +104,24 @@ def run_block(
     seed: int,
     block: int,
     years: int,
+    room: FloatArray | None = None,
 ) -> dict[Subject, FloatArray]:
-    """Simulate one block of years: the annual amount of every subject, shape (years,)."""
+    """Simulate one block of years: the annual amount of every subject, shape (years,).
+
+    Args:
+        book: lines and covers.
+        subjects: whose annual amounts are computed.
+        lines: the lines as the kernels take them.
+        seed: the seed of the run.
+        block: number of the block.
+        years: how many of its years.
+        room: zeros, shape (years,), that the sums of a single line's single column may be added up in.
+    """
     joint = joint_block(book.lines, book.dependences, seed=seed, block=block)
     sums: dict[str, YearSums] = {}
     for line in lines:
-        annual = line_sums(line, joint, seed=seed, block=block, years=years)
+        place = room if len(lines) == 1 else None
+        annual = line_sums(line, joint, seed=seed, block=block, years=years, room=place)
         if line.name in joint.ranks:
             annual = annual[:, joint.source(line.name, annual[line.columns.column[LOSS]])]
         sums[line.name] = {key: annual[column] for key, column in line.columns.column.items()}
@@ -117,6 +131,53 @@ def run_block(
     shocks = shock_losses(book, tables, joint, seed=seed, block=block)
     together = [_add_shocks(book, own.between(0, years), sums, years) for own in shocks]
     return annual_amounts(book, subjects, sums, together)
+
+
+def scatters_alone(book: Book, lines: tuple[PreparedLine, ...]) -> bool:
+    """Whether a book is one column of one line with few losses a year, and nothing else."""
+    return (
+        len(lines) == 1
+        and lines[0].strips is not None
+        and lines[0].columns.count == 1
+        and not book.dependences
+    )
+
+
+def scatter_alone(
+    book: Book,
+    subjects: tuple[Subject, ...],
+    line: PreparedLine,
+    room: FloatArray,
+    *,
+    seed: int,
+    blocks: range,
+) -> dict[Subject, FloatArray]:
+    """What `run_block` gives for some consecutive whole blocks, without the interpreter between them.
+
+    Args:
+        book: one line and covers, see `scatters_alone`.
+        subjects: whose annual amounts are computed.
+        line: the line as the kernels take it.
+        room: zeros, shape (years of the blocks,), that the sums are added up in.
+        seed: the seed of the run.
+        blocks: numbers of the blocks.
+    """
+    strips = line.strips
+    assert strips is not None
+    annual = room.reshape(1, -1)
+    sums = Sums(line.columns.ramps, line.columns.largest, np.empty(0), annual)
+    entropies = np.array([block_entropy(seed, line.key, block) for block in blocks])
+    state = np.empty((4, LANES), dtype=np.uint64)
+    totals = np.empty(BLOCK_YEARS // STRIP, dtype=np.int64)
+    notes, cursor = _notes(len(blocks)), np.zeros(4, dtype=np.int64)
+    table = line.sizes.arrays
+    while cursor[0] < len(blocks):
+        found = scatter_blocks(
+            entropies, state, strips.guide, strips.survival, table, sums, totals, cursor, notes
+        )
+        _answer(line, notes, found, sums)
+    own = {key: annual[column] for key, column in line.columns.column.items()}
+    return annual_amounts(book, subjects, {line.name: own})
 
 
 def _add_shocks(book: Book, shock: ShockLosses, sums: dict[str, YearSums], years: int) -> FloatArray:
@@ -156,22 +217,30 @@ def numbered_block(
 
 
 def line_sums(
-    line: PreparedLine, joint: JointBlock = ALONE, *, seed: int, block: int, years: int
+    line: PreparedLine,
+    joint: JointBlock = ALONE,
+    *,
+    seed: int,
+    block: int,
+    years: int,
+    room: FloatArray | None = None,
 ) -> FloatArray:
-    """Annual sums of a line's columns in one block, shape (columns, years), before a copula moves years."""
+    """Annual sums of a line's columns in one block, shape (columns, years), before a copula moves years; in
+    `room`, zeros of shape (years,), where that has the shape the kernels take."""
     nothing = np.empty(0)
     kept = Kept(0, 0, np.empty(0, dtype=np.int64), nothing)
-    annual = np.zeros((line.columns.count, whole_tiles(years)))
+    shape = line.columns.count, whole_tiles(years)
+    annual = np.zeros(shape) if room is None or shape != (1, years) else room.reshape(shape)
     if not line.columns.count:
         return annual[:, :years]
     sums = Sums(line.columns.ramps, line.columns.largest, joint.scale.get(line.name, nothing), annual)
     if line.strips is not None and line.name not in joint.counts:
         _scatter(line, line.strips, sums, years, seed=seed, block=block)
-    elif line.name in joint.counts or not line.counts.guide.size:
+    elif line.name not in joint.counts and line.counts is not None and line.counts.guide.size:
+        _simulate_alone(line, line.counts, sums, years, kept, seed=seed, block=block)
+    else:
         state = block_state(seed, line.key, block)
         _simulate_years(line, state, sums, _counts(line, joint, state)[: annual.shape[1]], years, kept)
-    else:
-        _simulate_alone(line, sums, years, kept, seed=seed, block=block)
     return annual[:, :years]
 
 
@@ -212,7 +281,10 @@ def block_events(
 def _counts(line: PreparedLine, joint: JointBlock, state: np.ndarray) -> IntArray:
     """Losses of each year of a block: those the dependences say, or the line's own."""
     given = joint.counts.get(line.name)
-    return line.counts.draw(state, BLOCK_YEARS) if given is None else given
+    if given is None:
+        assert line.counts is not None
+        return line.counts.draw(state, BLOCK_YEARS)
+    return given
 
 
 def _scatter(
@@ -256,15 +328,16 @@ def _scattered(
     return found[by_year], np.concatenate(sizes)[by_year]
 
 
-def _simulate_alone(line: PreparedLine, sums: Sums, years: int, kept: Kept, *, seed: int, block: int) -> None:
+def _simulate_alone(
+    line: PreparedLine, law: CountSampler, sums: Sums, years: int, kept: Kept, *, seed: int, block: int
+) -> None:
     """A block of a line whose counts are its own and come from a table, begun by a single call."""
     state = np.empty((4, LANES), dtype=np.uint64)
     counts = np.empty(BLOCK_YEARS, dtype=np.int64)
     notes, cursor = _notes(), np.zeros(3, dtype=np.int64)
     entropy = block_entropy(seed, line.key, block)
-    guide, survival = line.counts.guide, line.counts.survival
     found = begin_years(
-        entropy, state, guide, survival, line.sizes.arrays, sums, counts, years, cursor, notes, kept
+        entropy, state, law.guide, law.survival, line.sizes.arrays, sums, counts, years, cursor, notes, kept
     )
     _answer(line, notes, found, sums)
     _simulate_years(line, state, sums, counts[: sums.annual.shape[1]], years, kept, cursor)
@@ -289,8 +362,8 @@ def _simulate_years(
     return np.concatenate([year for year, _ in answered]), np.concatenate([size for _, size in answered])
 
 
-def _notes() -> Notes:
-    return Notes(np.empty(NOTES, dtype=np.int64), np.empty(NOTES))
+def _notes(blocks: int = 1) -> Notes:
+    return Notes(np.empty(blocks * NOTES, dtype=np.int64), np.empty(blocks * NOTES))
 
 
 def _answer(line: PreparedLine, notes: Notes, found: int, sums: Sums) -> tuple[IntArray, FloatArray]:

@@ -55,7 +55,7 @@ class Collected:
         """Say how many years are to come in all, before their blocks do."""
         self._years = years
         if self.whole and years > self._room.shape[1]:
-            grown = np.empty((len(self.orders), years))
+            grown = np.zeros((len(self.orders), years))
             grown[:, : self._room.shape[1]] = self._room
             self._room = grown
 
@@ -67,12 +67,19 @@ class Collected:
             part = room[:, block * BLOCK_YEARS : min((block + 1) * BLOCK_YEARS, years)]
             self.add(block, dict(zip(self.orders, part, strict=True)))
 
+    def room(self, block: int, years: int) -> FloatArray | None:
+        """Where the amounts of the only subject may be computed in place, zeros as yet; else None."""
+        first = block * BLOCK_YEARS
+        return self._room[0, first : first + years] if self.whole and len(self.orders) == 1 else None
+
     def add(self, block: int, amounts: Amounts) -> None:
         """Take in one block; each block once."""
         first = block * BLOCK_YEARS
         if self.whole:
             for row, subject in enumerate(self.orders):
-                self._room[row, first : first + amounts[subject].size] = amounts[subject]
+                place = self._room[row, first : first + amounts[subject].size]
+                if not np.shares_memory(place, amounts[subject]):
+                    place[:] = amounts[subject]
             return
         for subject, reduction in self._reductions.items():
             reduction.add(block, amounts[subject])

@@ -22,6 +22,7 @@ CELLS = 2048
 SMALLEST = 2.0**-54
 LONGEST_TABLE = 2**18
 MOST_IN_A_YEAR = 2.0**40
+_USUAL, _AT_ONCE = 14, 66  # doublings, and counts between them, that are tried in one call
 
 
 def search_table(survival: FloatArray) -> tuple[IntArray, FloatArray]:
@@ -89,20 +90,25 @@ def count_guide(survival: FloatArray) -> tuple[np.ndarray, FloatArray]:
 
 def _highest_count(law: CountLaw, where: str) -> int:
     """A count that is not exceeded with a probability a 53-bit draw can see."""
-    highest = 1.0
-    while float(law.sf(highest)) > SMALLEST:
-        highest *= 2.0
-        if highest > MOST_IN_A_YEAR:
-            raise EngineError(
-                "the number of losses in a year may exceed 10**12",
-                where=where,
-                value=law.mean(),
-                remedy="Simulate fewer, larger losses: raise the threshold from which losses are modelled.",
-            )
-    low, high = highest / 2.0, highest
+    ends = 2.0 ** np.arange(np.log2(MOST_IN_A_YEAR) + 1.0)
+    for part in (ends[:_USUAL], ends[_USUAL:]):
+        enough = np.flatnonzero(np.asarray(law.sf(part)) <= SMALLEST)
+        if enough.size:
+            break
+    else:
+        raise EngineError(
+            "the number of losses in a year may exceed 10**12",
+            where=where,
+            value=law.mean(),
+            remedy="Simulate fewer, larger losses: raise the threshold from which losses are modelled.",
+        )
+    low, high = part[enough[0]] / 2.0, part[enough[0]]
     while high - low > 1.0:
-        middle = np.floor((low + high) / 2.0)
-        low, high = (middle, high) if float(law.sf(middle)) > SMALLEST else (low, middle)
+        between = np.floor(np.linspace(low, high, _AT_ONCE))
+        between = between[(between > low) & (between < high)]
+        enough = np.flatnonzero(np.asarray(law.sf(between)) <= SMALLEST)
+        first = enough[0] if enough.size else between.size
+        low, high = np.concatenate(([low], between, [high]))[first : first + 2]
     return int(high)
 
 

@@ -29,6 +29,8 @@ from lossagg.engines.blocks import (
     numbered_block,
     prepare_line,
     run_block,
+    scatter_alone,
+    scatters_alone,
 )
 from lossagg.engines.book import GROSS, NET, Book, Line, PlacedCover, Subject
 from lossagg.engines.by_line import detail_subjects
@@ -49,13 +51,14 @@ from lossagg.engines.yearly import growth
 from lossagg.errors import EngineError, InputError
 from lossagg.families.base import CountLaw, SizeLaw
 from lossagg.kernels.compile import awaits_compilation
-from lossagg.kernels.simulation import add_years, begin_strips
+from lossagg.kernels.simulation import add_years, begin_strips, scatter_blocks
 
 __all__ = ["PreparedLine", "Simulation", "block_events", "line_sums", "prepare_line", "run_block"]
 
 MOST_YEARS = 10**10
 MOST_LOSSES = 1e13
 TIMED_FROM = 10_000_000  # years from which on a pilot block says how long the run will take
+MOST_IN_A_CALL = 32  # blocks of scattered losses that take one call
 MOST_TOGETHER = 8  # blocks that a thread takes at once: waking it costs as much as a short one
 T = TypeVar("T")
 log = logging.getLogger(__name__)
@@ -186,7 +189,9 @@ class Run:
         self.settings, self.book, self.subjects, self.capital = settings, book, subjects, capital
         self.progress, self.every_year = progress, every_year
         self.lines = tuple(prepare_line(line, book, subjects) for line in book.lines)
-        if any(awaits_compilation(add_years if line.strips is None else begin_strips) for line in self.lines):
+        whole = settings.years >= BLOCK_YEARS and scatters_alone(book, self.lines)
+        rare = scatter_blocks if whole else begin_strips
+        if any(awaits_compilation(add_years if line.strips is None else rare) for line in self.lines):
             log.info("compiling the simulation for this machine; later runs start at once")
         self.orders = {s: (_moment_order(book, s), _most(book, s)) for s in subjects}
         self.workers = settings.workers or available_cores()
@@ -250,9 +255,9 @@ class Run:
         for_every_block(one, range(blocks), self.workers)
         return pilot.loss(self.capital), (time.perf_counter() - start) / (blocks * BLOCK_YEARS)
 
-    def _block(self, block: int, years: int) -> dict[Subject, FloatArray]:
+    def _block(self, block: int, years: int, room: FloatArray | None = None) -> dict[Subject, FloatArray]:
         return run_block(
-            self.book, self.subjects, self.lines, seed=self.settings.seed, block=block, years=years
+            self.book, self.subjects, self.lines, seed=self.settings.seed, block=block, years=years, room=room
         )
 
     def _fill(self, collected: Collected, done: int, years: int, goal: int) -> None:
@@ -264,9 +269,12 @@ class Run:
             self._fill_elsewhere(self.settings.executor, collected, blocks, years, goal)
             return
 
+        if collected.whole and not self.every_year and scatters_alone(self.book, self.lines):
+            blocks = self._fill_alone(collected, blocks, years, goal)
+
         def one(block: int) -> dict[Subject, FloatArray] | None:
-            first = block * BLOCK_YEARS
-            amounts = self._block(block, min(BLOCK_YEARS, years - first))
+            own = min(BLOCK_YEARS, years - block * BLOCK_YEARS)
+            amounts = self._block(block, own, collected.room(block, own))
             collected.add(block, amounts)
             return amounts if self.every_year else None
 
@@ -277,6 +285,29 @@ class Run:
                 self.progress(min((block + 1) * BLOCK_YEARS / goal, 1.0))
 
         for_every_block(one, blocks, self.workers, after, together=1 if self.every_year else MOST_TOGETHER)
+
+    def _fill_alone(self, collected: Collected, blocks: range, years: int, goal: int) -> range:
+        """The whole blocks of a single line with few losses a year, several in one call; the blocks left."""
+        whole = range(blocks.start, years // BLOCK_YEARS)
+        size = min(max(len(whole) // (4 * self.workers), 1), MOST_IN_A_CALL)
+        groups = range(-(-len(whole) // size))
+
+        def one(group: int) -> None:
+            own = whole[group * size : (group + 1) * size]
+            room = collected.room(own.start, len(own) * BLOCK_YEARS)
+            room = np.zeros(len(own) * BLOCK_YEARS) if room is None else room
+            amounts = scatter_alone(
+                self.book, self.subjects, self.lines[0], room, seed=self.settings.seed, blocks=own
+            )
+            collected.add(own.start, amounts)
+
+        def after(group: int, _: None) -> None:
+            if self.progress:
+                done = whole.start + min((group + 1) * size, len(whole))
+                self.progress(done * BLOCK_YEARS / goal)
+
+        for_every_block(one, groups, self.workers, after)
+        return range(whole.stop, blocks.stop)
 
     def _fill_elsewhere(
         self, executor: Executor, collected: Collected, blocks: range, years: int, goal: int
@@ -399,7 +430,7 @@ def for_every_block(
         after: receives the number of each block and its result.
         together: most blocks handed to a thread at once, where there are plenty.
     """
-    if workers == 1 or len(blocks) == 1:
+    if workers == 1 or len(blocks) <= 1:
         for block in blocks:
             result = work(block)
             if after:

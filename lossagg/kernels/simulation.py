@@ -855,6 +855,56 @@ def begin_strips(
 
 
 @compiled
+def scatter_blocks(
+    entropies: np.ndarray,
+    lanes: np.ndarray,
+    guide: IntArray,
+    survival: FloatArray,
+    table: SizeArrays,
+    sums: Sums,
+    totals: IntArray,
+    cursor: IntArray,
+    notes: Notes,
+) -> int:
+    """Scatter the losses of consecutive blocks, until they are done or the notes are nearly full: the same as
+    `begin_strips` and `scatter_losses` for each, in one call.
+
+    Args:
+        entropies: as for `seed_lanes`, a row for each block.
+        lanes: the generator, overwritten.
+        guide: as for `draw_counts`, of the losses of a strip.
+        survival: as for `draw_counts`.
+        table: as for `scatter_losses`.
+        sums: what is added up, for the years of all blocks; no factors on losses.
+        totals: of the strips of the block under way.
+        cursor: where to go on: block, strip, losses done there, and whether the block has begun. Zeros to
+            begin with; the first entry is the number of blocks at the end.
+        notes: receives losses to be evaluated exactly, as many of each block as when it is scattered alone.
+
+    Returns:
+        How many losses are in the notes.
+    """
+    found = 0
+    years, each = totals.shape[0] * STRIP, notes.year.shape[0] // entropies.shape[0]
+    while cursor[0] < entropies.shape[0]:
+        if cursor[3] == 0:
+            seed_lanes(entropies[cursor[0]], lanes)
+            draw_counts(lanes, guide, survival, totals)
+            cursor[1], cursor[2], cursor[3] = 0, 0, 1
+        first = cursor[0] * years
+        own = Sums(sums.ramps, sums.largest, sums.scale, sums.annual[:, first : first + years])
+        room = Notes(notes.year[found : found + each], notes.probability[found : found + each])
+        more = scatter_losses(lanes, table, own, totals, cursor[1:3], room)
+        for i in range(more):
+            room.year[i] += first
+        found += more
+        if cursor[1] < totals.shape[0]:
+            return found
+        cursor[0], cursor[3] = cursor[0] + 1, 0
+    return found
+
+
+@compiled
 def begin_years(
     entropy: np.ndarray,
     lanes: np.ndarray,

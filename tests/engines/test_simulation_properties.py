@@ -15,7 +15,7 @@ from lossagg.cover import Cover
 from lossagg.engines.simulation import Simulation
 from lossagg.families import GeneralizedPareto, Lognormal, Pareto, Poisson, Weibull
 from lossagg.kernels.compile import awaits_compilation
-from lossagg.kernels.simulation import add_years, begin_strips
+from lossagg.kernels.simulation import add_years, begin_strips, scatter_blocks
 
 ENGINE = Simulation(years=3000, workers=1)
 SIZES = st.sampled_from(
@@ -87,11 +87,13 @@ def test_more_risk_never_needs_less_capital(mean, severity, level):
     assert more.accuracy("value_at_risk", level)[1] >= base
 
 
-@pytest.mark.parametrize(("mean", "first"), [(0.5, begin_strips), (5.0, add_years)])
-def test_the_first_run_on_a_machine_says_that_it_compiles(mean, first, monkeypatch, caplog):
+@pytest.mark.parametrize(
+    ("mean", "years", "first"), [(0.5, 10, begin_strips), (0.5, 40_000, scatter_blocks), (5.0, 10, add_years)]
+)
+def test_the_first_run_on_a_machine_says_that_it_compiles(mean, years, first, monkeypatch, caplog):
     monkeypatch.setattr(simulation, "awaits_compilation", lambda kernel: kernel is first)
     with caplog.at_level(logging.INFO, logger="lossagg"):
-        Simulation(years=10).annual_loss(Poisson(mean=mean), Lognormal(mu=1.0, sigma=1.0))
+        Simulation(years=years).annual_loss(Poisson(mean=mean), Lognormal(mu=1.0, sigma=1.0))
     assert caplog.messages == ["compiling the simulation for this machine; later runs start at once"]
 
 

@@ -7,13 +7,21 @@ import pytest
 from scipy import stats
 
 from lossagg.cover import Cover
-from lossagg.engines.blocks import MOST_SCATTERED, block_events, line_sums, prepare_line
+from lossagg.engines.blocks import (
+    MOST_SCATTERED,
+    block_events,
+    line_sums,
+    prepare_line,
+    run_block,
+    scatters_alone,
+)
 from lossagg.engines.book import Book, Line, PlacedCover, Subject
 from lossagg.engines.by_line import LARGEST_GROSS
 from lossagg.engines.dependence import SharedFactor
 from lossagg.engines.joint import joint_block
+from lossagg.engines.search_table import count_guide
 from lossagg.engines.simulation import Simulation
-from lossagg.engines.streams import BLOCK_YEARS, block_state
+from lossagg.engines.streams import BLOCK_YEARS, block_entropy, block_state
 from lossagg.engines.yearly import LARGEST, LOSS
 from lossagg.families import Lognormal, Poisson, SizeTable
 from lossagg.kernels import compile as compile_module
@@ -165,3 +173,55 @@ def test_losses_of_few_sizes():
     assert abs(annual.mean() - 0.8 * 11.0) < 4.5 * np.sqrt(0.8 * second / annual.size)
     squares = (annual - 8.8) ** 2
     assert abs(squares.mean() - 0.8 * second) < 4.5 * squares.std() / np.sqrt(annual.size)
+
+
+@pytest.mark.parametrize("workers", [1, 2, 7])
+@pytest.mark.parametrize("terms", [None, {"deductible": 5e3}, {"deductible": 5e3, "annual_limit": 4e4}])
+def test_blocks_in_one_call_are_those_of_a_call_each(workers, terms):
+    """Bit for bit, a last incomplete block and annual terms among them."""
+    years = 5 * BLOCK_YEARS + 777
+    cover = None if terms is None else Cover(**terms)
+    together = Simulation(years=years, seed=6, workers=workers).annual_loss(Poisson(mean=0.6), SIZE, cover)
+    line = Line(name="loss", frequency=Poisson(mean=0.6), severity=SIZE)
+    covers = () if cover is None else (PlacedCover(name="cover", terms=cover),)
+    book = Book(lines=(line,), covers=covers)
+    subject = Subject("line", "loss") if cover is None else Subject("cover", "cover")
+    own = prepare_line(line, book, (subject,))
+    assert scatters_alone(book, (own,))
+    one = [
+        run_block(book, (subject,), (own,), seed=6, block=k, years=min(BLOCK_YEARS, years - k * BLOCK_YEARS))
+        for k in range(6)
+    ]
+    np.testing.assert_array_equal(together.annual, np.concatenate([part[subject] for part in one]))
+
+
+def in_blocks(module, blocks, capacity):
+    """Sums and notes of consecutive blocks in one call, each with room for `capacity` notes."""
+    guide, survival = count_guide(np.asarray(Poisson(mean=700.0).sf(np.arange(1200.0))))
+    totals, cursor = np.empty(BLOCK_YEARS // kernels.STRIP, np.int64), np.zeros(4, np.int64)
+    sums = module.Sums(
+        np.array([[0, 0.0, np.inf, 1.0, 0.0]]), -1, np.empty(0), np.zeros((1, len(blocks) * BLOCK_YEARS))
+    )
+    entropies = np.array([block_entropy(7, (1, 2), block) for block in blocks])
+    lanes, noted = np.empty((4, kernels.LANES), np.uint64), []
+    while cursor[0] < len(blocks):
+        room = len(blocks) * capacity
+        notes = module.Notes(np.empty(room, np.int64), np.empty(room))
+        table = module.SizeArrays(*flagging_table())
+        found = module.scatter_blocks(entropies, lanes, guide, survival, table, sums, totals, cursor, notes)
+        noted += list(zip(notes.year[:found].tolist(), notes.probability[:found].tolist(), strict=True))
+    return sums.annual[0], noted
+
+
+def test_blocks_in_one_call_with_full_notes():
+    """A table that hands back most losses: each block alone, several together, and room for few notes."""
+    whole, noted = in_blocks(kernels, range(3, 6), 2**15)
+    assert len(noted) > 10_000
+    few, noted_few = in_blocks(kernels, range(3, 6), kernels.BUFFER + 9)
+    np.testing.assert_array_equal(whole, few)
+    assert noted == noted_few
+    for k, block in enumerate(range(3, 6)):
+        alone, own = in_blocks(kernels, range(block, block + 1), 2**15)
+        np.testing.assert_array_equal(alone, whole[k * BLOCK_YEARS : (k + 1) * BLOCK_YEARS])
+        shifted = [(year + k * BLOCK_YEARS, p) for year, p in own]
+        assert shifted == [n for n in noted if k * BLOCK_YEARS <= n[0] < (k + 1) * BLOCK_YEARS]
