@@ -11,6 +11,8 @@ carries chance: it must lie within four standard errors of the reference.
   exceed: E[min((S - v)+, c - v)], with v zero or the reference's VaR. It is estimated without bias, and
   its variance exists and follows from the reference's moments. Beyond c a single year can carry the
   whole average: under a heavy tail the full average says nothing, or raises false alarms.
+* So is a simulated standard deviation: that of min(S, c), its error from the reference's fourth moment. The
+  sample's own is far too small under a long tail: where the largest years are missing, so is their share.
 """
 
 from __future__ import annotations
@@ -27,6 +29,7 @@ from lossagg.errors import DoesNotExistError
 STANDARD_ERRORS = 4.0
 YEARS_BEYOND = 20
 ROUND_OFF = 1e-9
+_CELLS = 4096
 
 BRACKET = "of the way from the figure to the end of its bracket"
 
@@ -138,19 +141,44 @@ def average_test(
 
 
 def sd_test(
-    simulated: tuple[str, float], exact: tuple[str, float], error: float | None
-) -> Tested | str | None:
-    """A simulated standard deviation, or why it cannot be compared; `error` is the sample's."""
-    (name, value), (reference, centre) = simulated, exact
-    if not np.isfinite(centre):
-        return None
-    if error is None:
-        return "not compared with the simulation: single enormous years decide it"
-    apart = _apart(name, reference, abs(value - centre), error, ROUND_OFF * abs(centre))
+    simulated: tuple[str, AnnualLoss], exact: tuple[str, BracketedAnnualLoss], cap: float
+) -> tuple[Tested | str | None, float | None]:
+    """A simulated standard deviation of min(S, cap), with the standard error it is measured in; or, with no
+    standard error, why there is nothing to compare."""
+    (name, loss), (reference, known) = simulated, exact
+    years = loss.years  # type: ignore[attr-defined]
+    if years < 2 * YEARS_BEYOND:
+        return f"not compared with the simulation: it has only {years:.3g} years", None
+    variance, error = _moments_up_to(known, cap, years)
+    if cap <= 0 or variance <= 0:
+        return None, 0.0
+    value = loss.layer_second_moment(0.0, cap) - loss.layer_mean(0.0, cap) ** 2
+    means, squares = zip(
+        *((bound.layer_mean(0.0, cap), bound.layer_second_moment(0.0, cap)) for bound in known.bounds()),
+        strict=True,
+    )
+    low = min(min(squares) - max(means) ** 2, variance)
+    high = max(max(squares) - min(means) ** 2, variance)
+    gap, sd = max(low - value, value - high, 0.0), float(np.sqrt(variance))
+    apart = _apart(name, reference, gap, error, ROUND_OFF * variance)
     if apart.fault is not None:
-        fault = f"{name} {value:.6g} is {apart.fault} from {reference} {centre:.6g}"
-        apart = apart._replace(fault=fault)
-    return apart
+        figures = f"{np.sqrt(max(value, 0.0)):.6g}, not {sd:.6g}"
+        apart = apart._replace(fault=f"{name} is {apart.fault} from {reference}, up to {cap:.6g}: {figures}")
+    return apart, error / (2.0 * sd)
+
+
+def _moments_up_to(known: BracketedAnnualLoss, cap: float, years: int) -> tuple[float, float]:
+    """Variance of min(S, cap), and the standard error of its estimate from so many years: from the fourth
+    central moment (Kendall & Stuart, The Advanced Theory of Statistics, vol. 1, ch. 10), on a fine grid."""
+    mean = known.layer_mean(0.0, cap)
+    variance = max(known.layer_second_moment(0.0, cap) - mean**2, 0.0)
+    edges = np.linspace(0.0, cap, _CELLS + 1)
+    above = np.asarray(known.sf(edges), dtype=np.float64)
+    middles = 0.5 * (edges[1:] + edges[:-1]) - mean
+    fourth = float(
+        (1.0 - above[0]) * mean**4 + (above[:-1] - above[1:]) @ middles**4 + above[-1] * (cap - mean) ** 4
+    )
+    return variance, float(np.sqrt(max(fourth - variance**2, 0.0) / years))
 
 
 def _apart(name: str, reference: str, gap: float, error: float, slack: float) -> Tested:

@@ -34,9 +34,9 @@ TOLERANCE = (
     "an exact engine gives each figure with a range that is certain to hold it; the ranges of two exact "
     "engines must overlap, and the figure with the narrower range must lie inside the wider. A simulation is "
     f"a sample of years: it must be within {STANDARD_ERRORS:g} standard errors, which chance exceeds about "
-    "once in 16,000 comparisons. Its means and tail values at risk are compared up to the amount that "
-    f"{YEARS_BEYOND} of its years are expected to exceed, or less far where the exact range is wider than "
-    f"{TIGHT:.0%}: beyond that, single years decide the average"
+    "once in 16,000 comparisons. Its means, deviations and tail values at risk are compared up to the "
+    f"amount that {YEARS_BEYOND} of its years are expected to exceed, or less far where the exact range is "
+    f"wider than {TIGHT:.0%}: beyond that, single years decide"
 )
 
 
@@ -170,7 +170,8 @@ def _compare(
             elif measure == "value_at_risk" and level is not None:
                 found = quantile_test(name, loss, reference, brackets[reference], level)
             elif measure == "sd":
-                found = sd_test((name, values[name]), (reference, values[reference]), error)
+                cap = caps.get((name, reference), 0.0)
+                found, error = sd_test((name, loss), (reference, known), cap)
             else:
                 cap = caps.get((name, reference), 0.0)
                 found, error = average_test((name, loss), (reference, known), level, cap)
