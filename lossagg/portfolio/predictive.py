@@ -34,7 +34,7 @@ from lossagg.portfolio.parameter_draws import drawn_lines, uncertain
 DRAWS = 64
 _POINTS, _REACH, _LONGER, _TRIES = 2**11, 6.0, 6.0, 3
 _WIDTH = float(special.ndtri(0.975))
-GIVEN = "every law was given, so no parameter is uncertain"
+GIVEN = "no parameter was estimated from losses, so nothing tells how uncertain they are"
 
 
 def predictive_data(

@@ -98,7 +98,9 @@ def test_laws_that_are_given_have_no_uncertain_parameters():
     assert {GROSS, NET} <= set(losses)
     entry = predictive_data(book, [model], losses, (0.99,), seed=1)
     assert entry["levels"] == []
-    assert entry["reason"] == "every law was given, so no parameter is uncertain"
+    assert (
+        entry["reason"] == "no parameter was estimated from losses, so nothing tells how uncertain they are"
+    )
     assert predictive_data(book, [model], losses, (0.99,), seed=1, withheld="why")["reason"] == "why"
 
 
