@@ -12,7 +12,7 @@ from collections.abc import Iterable
 from dataclasses import dataclass, replace
 from functools import cached_property
 
-from lossagg.cover import Schedule
+from lossagg.cover import Cover, Schedule
 from lossagg.engines.dependence import (
     CommonShock,
     Dependence,
@@ -23,8 +23,9 @@ from lossagg.engines.dependence import (
 )
 from lossagg.engines.placed import GROSS, NET, Line, PlacedCover, Subject, check_lines, check_places
 from lossagg.errors import EngineError
+from lossagg.families.base import CountLaw, SizeLaw
 
-__all__ = ["GROSS", "NET", "Book", "Line", "PlacedCover", "Plan", "Subject"]
+__all__ = ["GROSS", "NET", "Book", "Line", "PlacedCover", "Plan", "Subject", "single_line"]
 
 
 @dataclass(frozen=True)
@@ -234,6 +235,15 @@ class Book:
         if expense == 0.0 or cover.terms.expense_basis == "outside":
             return replace(cover.terms, expense_basis=None).event_schedule(0.0, sum_insured).after(left)
         return cover.terms.event_schedule(expense, sum_insured).after(left).scaled(1.0 / (1.0 + expense))
+
+
+def single_line(frequency: CountLaw, severity: SizeLaw, cover: Cover | None) -> tuple[Book, Subject]:
+    """A book of one line and one cover or none, and the subject wanted of it: what `annual_loss` computes."""
+    line = Line(name="loss", frequency=frequency, severity=severity)
+    if cover is None:
+        return Book(lines=(line,)), Subject("line", "loss")
+    placed = PlacedCover(name="cover", terms=cover)
+    return Book(lines=(line,), covers=(placed,)), Subject("cover", "cover")
 
 
 def _not_independent(why: str) -> EngineError:

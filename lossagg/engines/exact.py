@@ -15,7 +15,7 @@ import numpy as np
 
 from lossagg.arrays import FloatArray
 from lossagg.cover import Cover, Schedule
-from lossagg.engines.book import Book, Line, PlacedCover, Subject
+from lossagg.engines.book import Book, Line, Subject, single_line
 from lossagg.engines.bound import MOMENTS, LatticeBound
 from lossagg.engines.compound import CompoundSum
 from lossagg.engines.limited import LimitedMeans
@@ -66,7 +66,7 @@ class ExactEngine(ABC):
         Raises:
             EngineError: as `solve`; and a retained cap, whose parts are not estimated beforehand.
         """
-        book, subject = _alone(frequency, severity, cover)
+        book, subject = single_line(frequency, severity, cover)
         if pair_plan(book, subject) is not None:
             raise EngineError(
                 "what a retained cap takes is not estimated before the work",
@@ -92,7 +92,7 @@ class ExactEngine(ABC):
         Raises:
             EngineError: as `solve` and, for a retained cap, `solve_pair`.
         """
-        book, subject = _alone(frequency, severity, cover)
+        book, subject = single_line(frequency, severity, cover)
         pair = pair_plan(book, subject)
         if pair is not None:
             return _paid(self.solve_pair(book.lines, pair), pair.beyond)
@@ -136,15 +136,6 @@ class ExactEngine(ABC):
         events = plan.events
         compound = annual_sum(book, events)
         return frozenset(events.items()), lambda: self.solve(compound), plan.annual
-
-
-def _alone(frequency: CountLaw, severity: SizeLaw, cover: Cover | None) -> tuple[Book, Subject]:
-    """A book of one line and one cover or none, and the subject wanted of it."""
-    line = Line(name="loss", frequency=frequency, severity=severity)
-    covers = () if cover is None else (PlacedCover(name="cover", terms=cover),)
-    return Book(lines=(line,), covers=covers), (
-        Subject("line", "loss") if cover is None else Subject("cover", "cover")
-    )
 
 
 def _outcome(task: Callable[[], AnnualLoss]) -> AnnualLoss | EngineError:

@@ -27,7 +27,7 @@ import numpy as np
 
 from lossagg.arrays import FloatArray, IntArray
 from lossagg.cover import Cover, Schedule
-from lossagg.engines.book import Book, Line, PlacedCover, Plan, Subject
+from lossagg.engines.book import Book, Line, Plan, Subject, single_line
 from lossagg.engines.conditional import ConditionalAnnualLoss, LineOut, TransformedConditional
 from lossagg.engines.quantile_table import QuantileTable, quantile_table
 from lossagg.engines.result import AnnualLoss, BookResult
@@ -88,10 +88,7 @@ class FarTail:
         Raises:
             EngineError: a cover with event terms or a retained cap; more losses than can be drawn.
         """
-        line = Line(name="loss", frequency=frequency, severity=severity)
-        covers = () if cover is None else (PlacedCover(name="cover", terms=cover),)
-        book = Book(lines=(line,), covers=covers)
-        subject = Subject("line", "loss") if cover is None else Subject("cover", "cover")
+        book, subject = single_line(frequency, severity, cover)
         return self._solved(book, subject, _whole_losses(book, subject), {})
 
     def book(self, book: Book) -> BookResult:

@@ -32,7 +32,7 @@ from lossagg.engines.blocks import (
     scatter_alone,
     scatters_alone,
 )
-from lossagg.engines.book import GROSS, NET, Book, Line, PlacedCover, Subject
+from lossagg.engines.book import GROSS, NET, Book, Subject, single_line
 from lossagg.engines.by_line import detail_subjects
 from lossagg.engines.collected import MOST_WHOLE, MOST_WHOLE_BYTES, Amounts, Collected, bytes_needed
 from lossagg.engines.executors import on_executor
@@ -128,10 +128,7 @@ class Simulation:
         Raises:
             EngineError: more years, losses or time than the machine can give.
         """
-        line = Line(name="loss", frequency=frequency, severity=severity)
-        covers = () if cover is None else (PlacedCover(name="cover", terms=cover),)
-        subject = Subject("line", "loss") if cover is None else Subject("cover", "cover")
-        book = Book(lines=(line,), covers=covers)
+        book, subject = single_line(frequency, severity, cover)
         collected, miss = Run(self, book, (subject,), subject).simulate(())
         return collected.loss(subject, miss)
 

@@ -115,7 +115,8 @@ def simulate_options(
             progress((number + 1) / len(blocks))
 
     with ThreadPoolExecutor(workers or available_cores()) as pool:
-        on_executor(pool, block, blocks, finished, under_way=_under_way(len(options)))
+        under_way = _under_way(len(options)) if every_year else UNDER_WAY
+        on_executor(pool, block, blocks, finished, under_way=under_way)
     return room.tallies(lines)
 
 
