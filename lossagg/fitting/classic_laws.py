@@ -24,13 +24,13 @@ from lossagg.fitting.jet_functions import (
     log_one_minus_exp,
 )
 from lossagg.fitting.jets import Jet, exp, log
-from lossagg.fitting.likelihood import NEGLIGIBLE, Range, SizeLikelihood
+from lossagg.fitting.likelihood import NEGLIGIBLE, PartLikelihood, Range, SizeLikelihood
 from lossagg.fitting.sample import Sample
 
 _HALF_LOG_TWO_PI = float(0.5 * np.log(2 * np.pi))
 
 
-class ExponentialLikelihood(SizeLikelihood):
+class ExponentialLikelihood(PartLikelihood):
     """S(x) = exp(-x / mean). Coordinate: log mean; the maximum is closed."""
 
     law: ClassVar[type[SizeLaw]] = Exponential
@@ -105,7 +105,7 @@ class ParetoLikelihood(SizeLikelihood):
         return [np.log([sample.count / risk])]
 
 
-class GammaLikelihood(SizeLikelihood):
+class GammaLikelihood(PartLikelihood):
     """Coordinates: log shape and log mean, which are orthogonal for complete losses."""
 
     law: ClassVar[type[SizeLaw]] = Gamma

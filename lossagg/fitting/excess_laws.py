@@ -20,7 +20,7 @@ from lossagg.families import Burr, GeneralizedPareto, Lomax, Weibull
 from lossagg.families.base import SizeLaw
 from lossagg.fitting.jet_functions import excess_partials, log_excess
 from lossagg.fitting.jets import Jet, compose, exp, log
-from lossagg.fitting.likelihood import NEGLIGIBLE, Range, SizeLikelihood
+from lossagg.fitting.likelihood import NEGLIGIBLE, PartLikelihood, Range, SizeLikelihood
 from lossagg.fitting.sample import Sample
 
 _LARGEST_LOG = 500.0  # of a scale in units of order one: beyond, it leaves the range of float64
@@ -110,7 +110,7 @@ class LomaxLikelihood(GeneralizedParetoLikelihood):
 
 
 @dataclass(frozen=True)
-class WeibullLikelihood(SizeLikelihood):
+class WeibullLikelihood(PartLikelihood):
     """S(x) = exp(-(x / scale)**shape). Coordinates: log shape and level, where log w = shape * (log x -
     reference) + level.
 

@@ -25,17 +25,15 @@ from lossagg.fitting.sample import sample_of
 from lossagg.fitting.severity import climb, likelihood_of, natural_parameters
 
 FAMILIES = (
-    *(
-        "exponential",
-        "lognormal",
-        "lomax",
-        "gamma",
-        "weibull",
-        "inverse-gaussian",
-        "burr",
-        "log-logistic",
-        "log-gamma",
-    ),
+    "exponential",
+    "lognormal",
+    "lomax",
+    "gamma",
+    "weibull",
+    "inverse-gaussian",
+    "burr",
+    "log-logistic",
+    "log-gamma",
     *MIXTURES,
 )
 

@@ -74,10 +74,6 @@ class SizeLikelihood(ABC):
                 total = total + sign * summed(lambda points: self.log_survival(inner, points), group)
         return total
 
-    def log_density_at(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
-        """log f at each point, for a family that may be part of a mixture."""
-        raise NotImplementedError(f"the {self.law.family} law is no part of a fitted mixture")
-
     def model(self, values: Mapping[str, float]) -> SizeLaw:
         """The law of parameters by name, those held fixed included."""
         return self.law(**values)
@@ -105,6 +101,14 @@ class SizeLikelihood(ABC):
     def objection(self, inner: tuple[Jet, ...]) -> str:
         """Why a maximum at these parameters is no law of the family; empty where it is one."""
         return self.runaway(inner)
+
+
+class PartLikelihood(SizeLikelihood):
+    """The likelihood of a family that may be part of a mixture."""
+
+    @abstractmethod
+    def log_density_at(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
+        """log f at each point."""
 
 
 def summed(function: Callable[[FloatArray], Jet], group: Weighted) -> Jet:

@@ -22,14 +22,14 @@ from lossagg.families import Lognormal
 from lossagg.families.base import SizeLaw
 from lossagg.fitting.jet_functions import log_normal_survival, mills_parts
 from lossagg.fitting.jets import Jet, compose, exp, log
-from lossagg.fitting.likelihood import BLOCK, NEGLIGIBLE, Range, SizeLikelihood
+from lossagg.fitting.likelihood import BLOCK, NEGLIGIBLE, PartLikelihood, Range
 from lossagg.fitting.sample import Sample, Weighted
 
 _HALF_LOG_TWO_PI = float(0.5 * np.log(2 * np.pi))
 
 
 @dataclass(frozen=True)
-class LognormalLikelihood(SizeLikelihood):
+class LognormalLikelihood(PartLikelihood):
     """log X is normal. Inner parameters: slope (mu - reference) / sigma**2 and precision 1 / sigma**2, the
     natural ones of the exponential family. Coordinates: slope and log precision in units of the spread.
 

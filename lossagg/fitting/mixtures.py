@@ -27,7 +27,7 @@ from lossagg.fitting.classic_laws import ExponentialLikelihood, GammaLikelihood
 from lossagg.fitting.excess_laws import WeibullLikelihood
 from lossagg.fitting.jet_functions import log_shares, log_sum_exp
 from lossagg.fitting.jets import Jet, compose, lift, variables
-from lossagg.fitting.likelihood import BLOCK, Range, SizeLikelihood
+from lossagg.fitting.likelihood import BLOCK, PartLikelihood, Range, SizeLikelihood
 from lossagg.fitting.lognormal import LognormalLikelihood
 from lossagg.fitting.maximise import Maximum
 from lossagg.fitting.sample import Sample, Weighted
@@ -52,7 +52,7 @@ class MixtureLikelihood(SizeLikelihood):
     law: ClassVar[type[SizeLaw]] = Mixture
     nearest: ClassVar[str] = "one law alone, such as that of a part, or a splice with tail-threshold"
 
-    parts: tuple[SizeLikelihood, SizeLikelihood]
+    parts: tuple[PartLikelihood, PartLikelihood]
     floor: float
     observations: float
 
@@ -88,9 +88,6 @@ class MixtureLikelihood(SizeLikelihood):
             if len(group.points):
                 total = total + sign * self._summed(inner, group, density=False)
         return total
-
-    def log_density_at(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
-        return log_sum_exp(*self._weighted(inner, points, density=True))
 
     def log_survival(self, inner: tuple[Jet, ...], points: FloatArray) -> Jet:
         return log_sum_exp(*self._weighted(inner, points, density=False))
@@ -237,7 +234,7 @@ class MixtureLikelihood(SizeLikelihood):
         return coordinates
 
 
-def _spread(part: SizeLikelihood, own: tuple[Jet, ...]) -> float:
+def _spread(part: PartLikelihood, own: tuple[Jet, ...]) -> float:
     """Standard deviation of the logarithm of a loss of a part."""
     if isinstance(part, LognormalLikelihood):
         return float(own[1].value[0] ** -0.5)
@@ -247,7 +244,7 @@ def _spread(part: SizeLikelihood, own: tuple[Jet, ...]) -> float:
     return float(np.pi / np.sqrt(6)) / power
 
 
-def _closed(part: SizeLikelihood, sample: Sample) -> FloatArray:
+def _closed(part: PartLikelihood, sample: Sample) -> FloatArray:
     """Coordinates of a part from a weighted, complete sample: its maximum, or nearly."""
     if not isinstance(part, LognormalLikelihood):
         return part.starts(sample)[0]
@@ -256,7 +253,7 @@ def _closed(part: SizeLikelihood, sample: Sample) -> FloatArray:
     return np.array([slope * part.spread, np.log(part.spread**2 / variance)])
 
 
-def _ranges(first: type[SizeLikelihood], second: type[SizeLikelihood]) -> dict[str, Range]:
+def _ranges(first: type[PartLikelihood], second: type[PartLikelihood]) -> dict[str, Range]:
     named: dict[str, Range] = {"weight.1": "probability"}
     for place, part in enumerate((first, second), start=1):
         named |= {f"part.{place}.{name}": kind for name, kind in part.ranges.items()}
@@ -293,7 +290,7 @@ class GammaLognormalMixtureLikelihood(MixtureLikelihood):
     ranges: ClassVar[dict[str, Range]] = _ranges(GammaLikelihood, LognormalLikelihood)
 
 
-_KINDS: dict[str, tuple[type[MixtureLikelihood], tuple[type[SizeLikelihood], type[SizeLikelihood]]]] = {
+_KINDS: dict[str, tuple[type[MixtureLikelihood], tuple[type[PartLikelihood], type[PartLikelihood]]]] = {
     "exponential-mixture": (ExponentialMixtureLikelihood, (ExponentialLikelihood, ExponentialLikelihood)),
     "lognormal-mixture": (LognormalMixtureLikelihood, (LognormalLikelihood, LognormalLikelihood)),
     "gamma-mixture": (GammaMixtureLikelihood, (GammaLikelihood, GammaLikelihood)),
@@ -309,5 +306,5 @@ def mixture_likelihood(family: str, sample: Sample) -> MixtureLikelihood:
     return kind((_about(first, sample), _about(second, sample)), sample.floor, sample.observations)
 
 
-def _about(part: type[SizeLikelihood], sample: Sample) -> SizeLikelihood:
+def _about(part: type[PartLikelihood], sample: Sample) -> PartLikelihood:
     return part.about(sample) if issubclass(part, LognormalLikelihood | WeibullLikelihood) else part()
